@@ -1,0 +1,72 @@
+"""Numerical kernels; arrays are aligned float64 of any strides, columns are independent."""
+
+import numpy as np
+import numpy.typing as npt
+
+__all__ = [
+    "chi_square_tail",
+    "effective_size",
+    "influence",
+    "largest_share",
+    "ln_gamma",
+    "log_sum_exp",
+    "long_run_variance",
+    "mean_square",
+    "normal_cdf",
+    "normal_quantile",
+    "normalise",
+    "pareto_fit",
+    "quantile",
+    "resample",
+    "set_threads",
+    "shortest_interval",
+    "signed_tail_shape",
+    "smooth",
+    "tail_shape",
+    "threads",
+    "weighted_mean",
+]
+
+def log_sum_exp(x: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def normalise(
+    x: npt.NDArray[np.float64], out: npt.NDArray[np.float64]
+) -> npt.NDArray[np.float64]: ...
+def effective_size(x: npt.NDArray[np.float64], entropy: bool) -> npt.NDArray[np.float64]: ...
+def largest_share(x: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def smooth(
+    x: npt.NDArray[np.float64],
+    relative_efficiency: npt.NDArray[np.float64],
+    out: npt.NDArray[np.float64],
+) -> npt.NDArray[np.float64]: ...
+def tail_shape(
+    x: npt.NDArray[np.float64], relative_efficiency: npt.NDArray[np.float64]
+) -> npt.NDArray[np.float64]: ...
+def signed_tail_shape(
+    z: npt.NDArray[np.float64], relative_efficiency: npt.NDArray[np.float64]
+) -> npt.NDArray[np.float64]: ...
+def pareto_fit(x: npt.NDArray[np.float64]) -> tuple[float, float]: ...
+def long_run_variance(
+    z: npt.NDArray[np.float64], starts: npt.NDArray[np.int64], split: bool
+) -> npt.NDArray[np.float64]: ...
+def mean_square(z: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def weighted_mean(
+    f: npt.NDArray[np.float64], w: npt.NDArray[np.float64]
+) -> npt.NDArray[np.float64]: ...
+def quantile(
+    x: npt.NDArray[np.float64], w: npt.NDArray[np.float64], probs: npt.NDArray[np.float64]
+) -> npt.NDArray[np.float64]: ...
+def shortest_interval(
+    x: npt.NDArray[np.float64], w: npt.NDArray[np.float64], mass: float
+) -> npt.NDArray[np.float64]: ...
+def resample(
+    w: npt.NDArray[np.float64], size: int, method: str, key: bytes
+) -> npt.NDArray[np.int64]: ...
+def influence(
+    loglik: npt.NDArray[np.float64], f: npt.NDArray[np.float64]
+) -> npt.NDArray[np.float64]: ...
+def chi_square_tail(q: npt.NDArray[np.float64], df: float) -> npt.NDArray[np.float64]: ...
+def normal_cdf(x: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def normal_quantile(p: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def ln_gamma(x: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def set_threads(n: int) -> None: ...
+def threads() -> int: ...

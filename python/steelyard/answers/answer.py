@@ -1,0 +1,478 @@
+"""The Answer: everything that the weighted draws say of a target."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Iterable, Mapping
+from dataclasses import dataclass
+from functools import cached_property
+from html import escape
+from types import MappingProxyType
+from typing import TYPE_CHECKING, Any, Literal
+
+import numpy as np
+
+from steelyard.answers.estimate import Estimate
+from steelyard.answers.estimating import Scale, mean_of, sd_of
+from steelyard.answers.probabilities import probability_of
+from steelyard.answers.quantiles import quantile_of, shortest_of
+from steelyard.answers.quantities import Quantity, event_mask, labelled, read_quantity
+from steelyard.answers.shifts import log_evidence_ratio_of, shift_of
+from steelyard.answers.tabulate import tabulate
+from steelyard.base import Base, Draws
+from steelyard.base.draws import Array
+from steelyard.changes import Change, Target
+from steelyard.digits import short
+from steelyard.errors import ArgumentError, ArgumentTypeError, QuantityError
+from steelyard.table import Table
+from steelyard.verdicts import Finding, Verdict
+from steelyard.weighing.bounds import largest_ratio
+from steelyard.weighing.resampling import Method, resample
+from steelyard.weighing.summaries import probabilities
+from steelyard.weighing.weigh import Weights
+
+if TYPE_CHECKING:
+    from steelyard.show.answer_plots import AnswerPlots
+
+__all__ = ["Answer"]
+
+
+@dataclass(frozen=True, eq=False)
+class Answer:
+    """
+    What the draws of a fit say under a change.
+
+    Made by ``Fit.reweigh``, ``Fit.base`` and :func:`steelyard.weigh`.
+
+    A **quantity** is a name (``"mu"``, ``"rate[3]"``), an array shaped like the draws, a callable
+    that gets ``{name: (n, *shape)}``, or ``{label: quantity}``; without one, all parameters. For
+    several quantities the result is a dictionary of Estimates. An **event** is a boolean array or
+    a callable that returns one, or a text such as ``"rate[3] > 0.12"``.
+
+    Attributes
+    ----------
+    verdict : Verdict
+        Judges base, support and weights; the verdict of an estimate is never better.
+    log_weights, weights : numpy.ndarray
+        Smoothed and normalised, base weights included; ``(chain, draw)`` or ``(n,)``.
+    effective_size, entropy_size, largest_share : float
+        Of those weights.
+    tail_shape : float
+        Of the raw weights.
+    terms : mapping of str to numpy.ndarray
+        Target minus base, term by term, on the log scale, before smoothing.
+    change : Change or None
+        The change; None for the base.
+
+    Examples
+    --------
+    >>> import numpy as np, steelyard as sy
+    >>> rng = np.random.default_rng(2)
+    >>> draws = {"rate": rng.normal(0.10, 0.02, size=(4, 1000))}
+    >>> fit = sy.Fit(draws, prior={"rate": sy.Normal(0.1, 0.1)})
+    >>> answer = fit.reweigh(sy.swap_prior(rate=sy.Normal(0.08, 0.05)))
+    >>> answer.mean("rate").verdict.is_sound
+    True
+    """
+
+    _base: Base
+    _weights: Weights
+    _base_weights: Weights
+    _findings: tuple[Finding, ...]
+    change: Change | None = None
+    _target: Target | None = None
+
+    @cached_property
+    def _scale(self) -> Scale:
+        return Scale(self._base, self._weights, self._base_weights, self._findings)
+
+    @property
+    def draws(self) -> Draws:
+        """The draws, as the base has them; their weights are :attr:`weights`."""
+        return self._base.draws
+
+    @property
+    def verdict(self) -> Verdict:
+        """What may be said of the answer as a whole."""
+        return Verdict(self._findings)
+
+    @property
+    def log_weights(self) -> Array:
+        """Smoothed, normalised natural log weights, base weights included."""
+        return self._base.draws.shaped(self._weights.log)
+
+    @property
+    def weights(self) -> Array:
+        """Smoothed, normalised weights, base weights included."""
+        return self._base.draws.shaped(self._weights.linear)
+
+    @property
+    def effective_size(self) -> float:
+        """``1/Σw²``."""
+        return self._weights.effective_size
+
+    @property
+    def entropy_size(self) -> float:
+        """``exp(−Σ w log w)``."""
+        return self._weights.entropy_size
+
+    @property
+    def largest_share(self) -> float:
+        """Share of the heaviest draw."""
+        return self._weights.largest_share
+
+    @property
+    def tail_shape(self) -> float:
+        """Tail shape of the raw weights."""
+        return self._weights.tail_shape
+
+    @property
+    def terms(self) -> Mapping[str, Array]:
+        """Target minus base, term by term, on the natural log scale."""
+        terms = {} if self._target is None else self._target.terms
+        return MappingProxyType({k: self._base.draws.shaped(v) for k, v in terms.items()})
+
+    def mean(self, quantity: Any = None) -> Any:
+        """
+        Mean under the target.
+
+        Parameters
+        ----------
+        quantity : str, array_like, callable or mapping, optional
+            What to estimate; all parameters by default.
+
+        Returns
+        -------
+        Estimate or dict of Estimate
+            In the quantity's own shape.
+
+        Raises
+        ------
+        UnknownNameError, QuantityError, ShapeError
+            Where the quantity cannot be evaluated on the draws.
+
+        Notes
+        -----
+        ``μ̂ = Σ w f``; ``error² = LRV(z)/S`` with ``z_s = S w_s (f_s − μ̂)`` [1]_.
+
+        References
+        ----------
+        .. [1] Geyer (1992), Statistical Science 7; Jones et al. (2006), JASA 101.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> sy.weigh(np.zeros(4)).mean([1.0, 2.0, 3.0, 4.0]).value
+        2.5
+        """
+        return self._each(quantity, lambda q: mean_of(self._scale, q))
+
+    def sd(self, quantity: Any = None) -> Any:
+        """
+        Standard deviation under the target.
+
+        Parameters
+        ----------
+        quantity : str, array_like, callable or mapping, optional
+            What to estimate; all parameters by default.
+
+        Returns
+        -------
+        Estimate or dict of Estimate
+            ``sqrt(Σ w (f − μ̂)²)``, in the quantity's own shape.
+
+        Raises
+        ------
+        UnknownNameError, QuantityError, ShapeError
+            As for :meth:`mean`.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> sy.weigh(np.zeros(2)).sd([1.0, 3.0]).value
+        1.0
+        """
+        return self._each(quantity, lambda q: sd_of(self._scale, q))
+
+    def quantile(self, quantity: Any = None, probs: Any = (0.05, 0.5, 0.95)) -> Any:
+        """
+        Quantiles under the target.
+
+        Parameters
+        ----------
+        quantity : str, array_like, callable or mapping, optional
+            What to estimate; all parameters by default.
+        probs : float or array_like
+            Probabilities in [0, 1].
+
+        Returns
+        -------
+        Estimate or dict of Estimate
+            Shape ``(*probs.shape, *shape)``. The error is +inf, and the level refit, where the
+            probability is within its own error of 0 or 1.
+
+        Raises
+        ------
+        ArgumentError
+            For a probability outside [0, 1].
+        UnknownNameError, QuantityError, ShapeError
+            As for :meth:`mean`.
+
+        See Also
+        --------
+        steelyard.weights.quantile : The same for arrays, with the equation.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> sy.weigh(np.zeros(101)).quantile(np.arange(101.0), 0.5).value
+        50.0
+        """
+        p = probabilities(probs)
+        return self._each(quantity, lambda q: quantile_of(self._scale, q, p))
+
+    def interval(
+        self,
+        quantity: Any = None,
+        mass: float = 0.95,
+        kind: Literal["central", "shortest"] = "central",
+    ) -> Any:
+        """
+        Interval that holds a given probability under the target.
+
+        Parameters
+        ----------
+        quantity : str, array_like, callable or mapping, optional
+            What to estimate; all parameters by default.
+        mass : float
+            Probability inside, in (0, 1).
+        kind : {"central", "shortest"}
+            Equal tails, or the shortest interval.
+
+        Returns
+        -------
+        Estimate or dict of Estimate
+            Shape ``(2, *shape)``: lower and upper limit, each with its Monte Carlo error.
+
+        Raises
+        ------
+        ArgumentError
+            For a mass outside (0, 1) or another kind.
+        UnknownNameError, QuantityError, ShapeError
+            As for :meth:`mean`.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> x = np.random.default_rng(1).normal(size=4000)
+        >>> sy.weigh(np.zeros(4000)).interval(x, 0.9).value.shape
+        (2,)
+        """
+        if not isinstance(mass, int | float | np.floating) or not 0 < mass < 1:
+            raise ArgumentError("mass", "a number between 0 and 1", repr(mass), "Write 0.95.")
+        if kind not in ("central", "shortest"):
+            raise ArgumentError("kind", "'central' or 'shortest'", repr(kind), "Choose one.")
+        if kind == "shortest":
+            return self._each(quantity, lambda q: shortest_of(self._scale, q, float(mass)))
+        tails = np.array([(1 - mass) / 2, (1 + mass) / 2])
+        return self._each(quantity, lambda q: quantile_of(self._scale, q, tails, ("interval",)))
+
+    def prob(self, event: Any, level: float | None = None) -> Any:
+        """
+        Probability of an event under the target.
+
+        Parameters
+        ----------
+        event : str, array_like, callable or mapping
+            A text (``"rate[3] > 0.12 and mu < 0.2"``), a boolean array shaped like the draws, a
+            callable that returns one, or ``{label: event}``.
+        level : float, optional
+            A level in (0, 1) that the probability is held against; the estimate's `decision` then
+            says on which side it lies and how surely.
+
+        Returns
+        -------
+        Estimate or dict of Estimate
+            Where no draw lies in the event the value is NaN and `upper_bound` is set; where none
+            lies outside, `lower_bound`.
+
+        Raises
+        ------
+        QuantityError
+            For an event that is not boolean, or a text that does not parse.
+        ArgumentError
+            For a level outside (0, 1).
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rate = np.random.default_rng(4).normal(0.12, 0.01, size=(4, 500))
+        >>> fit = sy.Fit({"rate": rate}, prior={"rate": sy.Normal(0.1, 0.1)})
+        >>> fit.base.prob("rate > 0.12", level=0.8).decision.above
+        False
+        """
+        if isinstance(event, Mapping):
+            return {str(k): self.prob(v, level) for k, v in event.items()}
+        if event is None:
+            raise QuantityError("event", "an event", "None", 'Write "rate[3] > 0.12".')
+        if level is not None and (
+            isinstance(level, bool) or not isinstance(level, int | float | np.floating)
+        ):
+            raise ArgumentTypeError("level", "a number in (0, 1)", repr(level), "Write 0.8.")
+        bound = largest_ratio(self._base, self._target, self._weights.log_mean_ratio)
+        return probability_of(self._scale, event_mask(event, self._base), level, bound)
+
+    def shift(self, quantity: Any = None, of: Any = "mean") -> Any:
+        """
+        Difference from the base, with the error of the paired difference.
+
+        Parameters
+        ----------
+        quantity : str, array_like, callable or mapping, optional
+            What to compare; all parameters by default. A boolean array or callable gives the
+            shift of a probability.
+        of : {"mean", "sd"} or tuple
+            What of it: ``"mean"``, ``"sd"`` or ``("quantile", p)``.
+
+        Returns
+        -------
+        Estimate or dict of Estimate
+            Target minus base.
+
+        Raises
+        ------
+        ArgumentError
+            For another `of`, or a probability outside (0, 1).
+        UnknownNameError, QuantityError, ShapeError
+            As for :meth:`mean`.
+
+        Notes
+        -----
+        One influence series for the pair, ``S w (f − μ₁) − S v (f − μ₀)`` with the base weights v:
+        the noise that target and base share cancels.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> x = np.random.default_rng(1).normal(size=2000)
+        >>> answer = sy.weigh(0.2 * x, {"x": x})
+        >>> answer.shift("x").error < answer.mean("x").error
+        True
+        """
+        return self._each(quantity, lambda q: shift_of(self._scale, q, of))
+
+    @property
+    def log_evidence_ratio(self) -> Estimate:
+        """
+        Natural log of the target's normalising constant over the base's.
+
+        For a swapped prior with normalised densities this is the log Bayes factor of the new
+        prior against the old one; for dropped data, the log probability of the rest against all.
+        Callables and arrays are taken to be normalised.
+
+        Raises
+        ------
+        PriorError
+            Where a changed prior term is improper, or taken to a power.
+        """
+        return log_evidence_ratio_of(self._scale, self._target)
+
+    def table(self, quantities: Any = None, probs: Iterable[float] = (0.05, 0.5, 0.95)) -> Table:
+        """
+        One row for each element of each quantity.
+
+        Parameters
+        ----------
+        quantities : str, array_like, callable or mapping, optional
+            What to tabulate; all parameters by default.
+        probs : iterable of float
+            Probabilities of the quantile columns.
+
+        Returns
+        -------
+        Table
+            Columns ``quantity``, one for each dimension, ``mean``, ``error``, ``sd``, quantiles,
+            ``tail_shape`` (of the mean), ``level`` (the worst in the row) and ``reasons``.
+
+        Raises
+        ------
+        ArgumentError
+            For a probability outside [0, 1].
+        UnknownNameError, QuantityError, ShapeError
+            As for :meth:`mean`.
+        """
+        if isinstance(quantities, list | tuple) and all(isinstance(q, str) for q in quantities):
+            quantities = {q: q for q in quantities}
+        several = labelled(quantities, self._base)
+        if several is None:
+            one = read_quantity(quantities, self._base)
+            several = {one.label: one}
+        return tabulate(self._scale, several, probabilities(np.asarray(list(probs))))
+
+    def resample(self, size: int, method: Method = "systematic", *, rng: Any = None) -> Draws:
+        """
+        Equally weighted draws.
+
+        Parameters
+        ----------
+        size : int
+            How many.
+        method : str, optional
+            As for :func:`steelyard.weights.resample`.
+        rng : None, int or numpy.random.Generator, optional
+            Seed or generator (SPEC 7).
+
+        Returns
+        -------
+        Draws
+            In the order of the base, so that chains stay recognisable.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError
+            As for :func:`steelyard.weights.resample`.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> x = np.random.default_rng(1).normal(size=1000)
+        >>> sy.weigh(x, {"x": x}).resample(100, rng=7).size
+        100
+        """
+        rows = resample(self._weights.log, size, method, rng=rng)
+        return self._base.draws.take(rows)
+
+    @property
+    def plot(self) -> AnswerPlots:
+        """Plots of the answer; call it for the default one."""
+        from steelyard.show.answer_plots import AnswerPlots
+
+        return AnswerPlots(self)
+
+    def _each(self, quantity: Any, work: Callable[[Quantity], Estimate]) -> Any:
+        several = labelled(quantity, self._base)
+        if several is not None:
+            return {label: work(q) for label, q in several.items()}
+        return work(read_quantity(quantity, self._base))
+
+    def _figures(self) -> str:
+        count = self._base.draws.size
+        shape = "none" if math.isinf(self.tail_shape) else short(self.tail_shape)
+        return (
+            f"{count} draws, effective size {short(round(self.effective_size, 1))}, "
+            f"largest share {short(self.largest_share)}, tail shape {shape}"
+        )
+
+    def __str__(self) -> str:
+        change = "the base itself" if self.change is None else str(self.change)
+        return f"change: {change}\nweights: {self._figures()}\nverdict: {self.verdict}"
+
+    def __repr__(self) -> str:
+        return f"<Answer {self.verdict.level}: {self._figures()}>"
+
+    def _repr_html_(self) -> str:
+        change = "the base itself" if self.change is None else str(self.change)
+        head = f"<p>Change: {escape(change)}<br>Weights: {escape(self._figures())}</p>"
+        rows = sum(v[0].size for v in self._base.draws.values())
+        table = self.table()._repr_html_() if 0 < rows <= 60 else ""
+        return head + self.verdict._repr_html_() + table

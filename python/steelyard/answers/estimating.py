@@ -1,0 +1,229 @@
+"""Means, standard deviations, probabilities and shifts from weighted draws, errors included."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from steelyard import _core
+from steelyard.answers.estimate import Estimate
+from steelyard.answers.quantities import Quantity
+from steelyard.base import Base
+from steelyard.base.draws import Array
+from steelyard.verdicts import Finding, Verdict, judge, shape_limit
+from steelyard.weighing.series import chains_p_value, relative_efficiency, standard_error
+from steelyard.weighing.weigh import Weights
+
+__all__ = [
+    "Scale",
+    "Series",
+    "column_blocks",
+    "finish",
+    "mean_of",
+    "moments",
+    "sd_of",
+    "shift_series",
+    "study",
+]
+
+# Columns of a quantity that are worked on at a time.
+_WIDTH = 64
+
+
+@dataclass(frozen=True, eq=False)
+class Scale:
+    """What an estimate is weighed with: the base, its own weights, and the target's."""
+
+    base: Base
+    weights: Weights
+    base_weights: Weights
+    findings: tuple[Finding, ...]
+
+    @property
+    def count(self) -> int:
+        return self.base.draws.size
+
+
+@dataclass(frozen=True, eq=False)
+class Series:
+    """What the influence series of columns show, one entry a column."""
+
+    error: Array
+    shape: Array
+    p_value: Array
+
+
+def column_blocks(columns: Array) -> Iterator[tuple[slice, Array]]:
+    """Blocks of columns, so that work arrays stay small for long vectors of parameters."""
+    for start in range(0, columns.shape[1], _WIDTH):
+        part = slice(start, min(start + _WIDTH, columns.shape[1]))
+        yield part, columns[:, part]
+
+
+def study(
+    scale: Scale, psi: Array, weights: Array | None = None, raw: Array | None = None
+) -> Series:
+    """
+    Errors and tail shapes of weighted means of `psi` ``(n, k)``, centred influence values.
+
+    ``z_s = S w_s ψ_s`` and ``error² = LRV(z)/S``; the tail shape is fitted to each sign of the
+    series on unsmoothed weights, and the larger one counts.
+    """
+    draws, ordered = scale.base.draws, scale.base.ordered
+    w = scale.weights.linear if weights is None else weights
+    r = scale.weights.raw if raw is None else raw
+    z = draws.size * w[:, None] * psi
+    z_raw = draws.size * r[:, None] * psi
+    efficiency = relative_efficiency(z_raw, draws, ordered)
+    return Series(
+        standard_error(z, draws, ordered),
+        _core.signed_tail_shape(z_raw, efficiency),
+        chains_p_value(psi, w, draws) if ordered else np.ones(psi.shape[1]),
+    )
+
+
+def moments(scale: Scale, f: Array, weights: Array | None = None) -> tuple[Array, Array]:
+    """Weighted mean and standard deviation of the columns of `f`."""
+    w = scale.weights.linear if weights is None else weights
+    mean = _core.weighted_mean(f, w)
+    return mean, np.sqrt(_core.weighted_mean((f - mean) ** 2, w))
+
+
+def mean_of(scale: Scale, quantity: Quantity) -> Estimate:
+    """Weighted mean."""
+
+    def work(f: Array) -> tuple[Array, Series, Array]:
+        mean, sd = moments(scale, f)
+        return mean, study(scale, f - mean), sd**2
+
+    return _over_columns(scale, quantity, work)
+
+
+def sd_of(scale: Scale, quantity: Quantity) -> Estimate:
+    """Weighted standard deviation; influence ``((f − μ)² − σ²)/2σ``."""
+
+    def work(f: Array) -> tuple[Array, Series, Array]:
+        mean, sd = moments(scale, f)
+        psi = ((f - mean) ** 2 - sd**2) / np.where(sd > 0, 2 * sd, 1.0)
+        spread = _core.weighted_mean(psi**2, scale.weights.linear)
+        return sd, study(scale, psi), spread
+
+    return _over_columns(scale, quantity, work)
+
+
+def shift_series(scale: Scale, psi_target: Array, psi_base: Array) -> Series:
+    """
+    Error of a difference between target and base over the same draws.
+
+    One series for the pair, ``S w ψ₁ − S v ψ₀``: the noise that both share cancels.
+    """
+    draws, ordered, count = scale.base.draws, scale.base.ordered, scale.count
+    base = scale.base_weights
+
+    def pair(w: Array, v: Array) -> Array:
+        return count * (w[:, None] * psi_target - v[:, None] * psi_base)
+
+    z, z_raw = pair(scale.weights.linear, base.linear), pair(scale.weights.raw, base.raw)
+    efficiency = relative_efficiency(z_raw, draws, ordered)
+    equal = np.full(count, 1 / count)
+    return Series(
+        standard_error(z, draws, ordered),
+        _core.signed_tail_shape(z_raw, efficiency),
+        chains_p_value(z, equal, draws) if ordered else np.ones(z.shape[1]),
+    )
+
+
+def _over_columns(
+    scale: Scale, quantity: Quantity, work: Callable[[Array], tuple[Array, Series, Array]]
+) -> Estimate:
+    columns = quantity.columns
+    value, variance = np.empty(columns.shape[1]), np.empty(columns.shape[1])
+    parts = []
+    for part, f in column_blocks(columns):
+        value[part], series, variance[part] = work(f)
+        parts.append(series)
+    return finish(scale, quantity, value, joined(parts), variance)
+
+
+def joined(parts: list[Series]) -> Series:
+    """Series of blocks of columns put together."""
+    return Series(
+        np.concatenate([p.error for p in parts]),
+        np.concatenate([p.shape for p in parts]),
+        np.concatenate([p.p_value for p in parts]),
+    )
+
+
+def finish(
+    scale: Scale,
+    quantity: Quantity,
+    value: Array,
+    series: Series,
+    variance: Array | None,
+    *,
+    lead: tuple[int, ...] = (),
+    extra: tuple[Finding, ...] = (),
+    lead_dims: tuple[str, ...] = (),
+    **fields: Any,
+) -> Estimate:
+    """
+    An Estimate from flat figures: shapes put back, reasons added to those of the answer.
+
+    `variance` is that of the influence of one draw; without it effective draws are NaN. Figures
+    in `extra` come flat and are shaped here; `lead` are axes in front of the quantity's own.
+    """
+    shape = (*lead, *quantity.shape)
+
+    def shaped(flat: Array) -> Any:
+        return flat.reshape(shape) if shape else float(flat.reshape(()))
+
+    with np.errstate(invalid="ignore", divide="ignore"):
+        effective = (
+            np.full(value.shape, math.nan)
+            if variance is None
+            else np.where(series.error > 0, variance / series.error**2, float(scale.count))
+        )
+    own = [
+        judge("quantity_shape", series.shape, strained=shape_limit(scale.count)),
+        judge("chains_disagree", series.p_value),
+        *extra,
+    ]
+    findings = [*scale.findings, *(_shaped(f, shape) for f in own)]
+    return Estimate(
+        shaped(_frozen(value)),
+        shaped(_frozen(series.error)),
+        shaped(_frozen(series.shape)),
+        Verdict(findings, shape),
+        shaped(_frozen(effective)),
+        label=quantity.label,
+        dims=(*lead_dims, *quantity.dims),
+        labels=quantity.labels,
+        **{k: v if not isinstance(v, np.ndarray) else shaped(v) for k, v in fields.items()},
+    )
+
+
+def _frozen(values: Array) -> Array:
+    values.flags.writeable = False
+    return values
+
+
+def _shaped(finding: Finding, shape: tuple[int, ...]) -> Finding:
+    size = math.prod(shape)
+
+    def put(values: Any) -> Any:
+        return values.reshape(shape) if values.size == size and values.ndim else values
+
+    return Finding(
+        finding.code,
+        put(finding.figure) if shape else finding.figure.reshape(()),
+        finding.strained,
+        finding.refit,
+        finding.words,
+        finding.spoken
+        if finding.spoken is None
+        else (put(finding.spoken) if shape else finding.spoken.reshape(())),
+    )

@@ -1,0 +1,202 @@
+"""Events as text: comparisons, and, or, not, arithmetic; parsed here, never run as code."""
+
+from __future__ import annotations
+
+import operator
+import re
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Any, NoReturn
+
+import numpy as np
+
+from steelyard.base import Draws
+from steelyard.errors import QuantityError
+
+__all__ = ["evaluate_event", "is_expression"]
+
+_TOKEN = re.compile(
+    r"""\s*(?:
+      (?P<number>(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)
+    | (?P<quoted>"[^"]*"|'[^']*')
+    | (?P<name>[^\W\d][\w.]*(?:\[[^\[\]]*\])?)
+    | (?P<sign><=|>=|==|!=|<|>|\*\*|[-+*/()])
+    )""",
+    re.VERBOSE,
+)
+_COMPARE: dict[str, Callable[[Any, Any], Any]] = {
+    "<": operator.lt,
+    "<=": operator.le,
+    ">": operator.gt,
+    ">=": operator.ge,
+    "==": operator.eq,
+    "!=": operator.ne,
+}
+_WORDS = ("and", "or", "not")
+_DEEPEST = 50
+
+
+@dataclass(frozen=True)
+class _Token:
+    kind: str
+    text: str
+    place: int
+
+
+def is_expression(text: str) -> bool:
+    """Whether a text compares something, rather than being a name alone."""
+    return any(sign in text for sign in ("<", ">", "==", "!="))
+
+
+def evaluate_event(text: str, draws: Draws) -> Any:
+    """
+    Evaluate an event text on the draws: a boolean array ``(n, *shape)``.
+
+    Names are parameters or elements of them; a name with other characters goes in quotes.
+
+    Raises
+    ------
+    QuantityError
+        Where the text does not parse (the position is shown) or is not an event.
+    """
+    parser = _Parser(text, _tokens(text), draws)
+    value = parser.either()
+    if parser.at < len(parser.tokens):
+        parser.fail("the end of the event, or an operator")
+    if np.asarray(value).dtype != np.bool_:
+        _fail(text, 0, "a comparison", "arithmetic alone")
+    return value
+
+
+def _tokens(text: str) -> list[_Token]:
+    tokens, at = [], 0
+    while text[at:].strip():
+        match = _TOKEN.match(text, at)
+        if match is None or match.lastgroup is None:
+            at += len(text[at:]) - len(text[at:].lstrip())
+            _fail(text, at, "a name, a number, a comparison or arithmetic", repr(text[at]))
+        kind, word = match.lastgroup, match[match.lastgroup]
+        if kind == "name" and word in _WORDS:
+            kind = "sign"
+        tokens.append(_Token(kind, word, match.start(match.lastgroup)))
+        at = match.end()
+    return tokens
+
+
+def _fail(text: str, place: int, expected: str, came: str) -> NoReturn:
+    raise QuantityError(
+        "event",
+        expected,
+        f"{came} at position {place} of {text!r}",
+        'Events compare parameters and numbers, as in "rate[3] > 0.12 and mu < 0.2".',
+    )
+
+
+class _Parser:
+    """Recursive descent, loosest operator first."""
+
+    def __init__(self, text: str, tokens: list[_Token], draws: Draws) -> None:
+        self.text, self.tokens, self.draws = text, tokens, draws
+        self.at = 0
+        self.depth = 0
+
+    def peek(self) -> str:
+        token = self.tokens[self.at] if self.at < len(self.tokens) else None
+        return token.text if token is not None and token.kind == "sign" else ""
+
+    def take(self, *texts: str) -> str:
+        found = self.peek()
+        if found in texts and found:
+            self.at += 1
+            return found
+        return ""
+
+    def fail(self, expected: str) -> NoReturn:
+        if self.at < len(self.tokens):
+            token = self.tokens[self.at]
+            _fail(self.text, token.place, expected, repr(token.text))
+        _fail(self.text, len(self.text), expected, "the end")
+
+    def either(self) -> Any:
+        value = self.both()
+        while self.take("or"):
+            value = self._truth(value) | self._truth(self.both())
+        return value
+
+    def both(self) -> Any:
+        value = self.negation()
+        while self.take("and"):
+            value = self._truth(value) & self._truth(self.negation())
+        return value
+
+    def negation(self) -> Any:
+        self.depth += 1
+        if self.depth > _DEEPEST:
+            _fail(self.text, 0, f"at most {_DEEPEST} nested parts", "more")
+        value = ~self._truth(self.negation()) if self.take("not") else self.comparison()
+        self.depth -= 1
+        return value
+
+    def comparison(self) -> Any:
+        left, result = self.total(), None
+        while sign := self.take(*_COMPARE):
+            right = self.total()
+            self._numbers(left, right)
+            part = _COMPARE[sign](left, right)
+            result = part if result is None else result & part
+            left = right
+        return left if result is None else result
+
+    def total(self) -> Any:
+        value = self.product()
+        while sign := self.take("+", "-"):
+            other = self.product()
+            self._numbers(value, other)
+            value = value + other if sign == "+" else value - other
+        return value
+
+    def product(self) -> Any:
+        value = self.signed()
+        while sign := self.take("*", "/"):
+            other = self.signed()
+            self._numbers(value, other)
+            with np.errstate(divide="ignore", invalid="ignore"):
+                value = value * other if sign == "*" else np.divide(value, other)
+        return value
+
+    def signed(self) -> Any:
+        if self.take("-"):
+            value = self.signed()
+            self._numbers(value)
+            return -value
+        base = self.atom()
+        if self.take("**"):
+            exponent = self.signed()
+            self._numbers(base, exponent)
+            with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+                return np.asarray(base, dtype=np.float64) ** exponent
+        return base
+
+    def atom(self) -> Any:
+        if self.take("("):
+            value = self.either()
+            if not self.take(")"):
+                self.fail("a closing bracket")
+            return value
+        if self.at >= len(self.tokens) or self.tokens[self.at].kind == "sign":
+            self.fail("a name or a number")
+        token = self.tokens[self.at]
+        self.at += 1
+        if token.kind == "number":
+            return np.float64(token.text)
+        name = token.text[1:-1] if token.kind == "quoted" else token.text
+        return self.draws.look_up(name, f"event, position {token.place}")
+
+    def _truth(self, value: Any) -> Any:
+        if np.asarray(value).dtype != np.bool_:
+            self.fail("comparisons on both sides of and, or, not")
+        return value
+
+    def _numbers(self, *values: Any) -> None:
+        if any(np.asarray(v).dtype == np.bool_ for v in values):
+            self.fail("numbers; write 'and' between comparisons, and brackets around them")

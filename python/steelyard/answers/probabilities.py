@@ -1,0 +1,115 @@
+"""Probabilities of events: draws are counted on both sides, and none is never a zero."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+import numpy.typing as npt
+
+from steelyard import _core
+from steelyard.answers.estimate import Decision, Estimate
+from steelyard.answers.estimating import Scale, column_blocks, finish, joined, study
+from steelyard.answers.quantities import Quantity
+from steelyard.base.draws import Array
+from steelyard.errors import ArgumentError
+from steelyard.verdicts import judge
+
+__all__ = ["probability_of"]
+
+Mask = npt.NDArray[np.bool_]
+
+
+def probability_of(
+    scale: Scale, event: Quantity, level: float | None, largest_ratio: float
+) -> Estimate:
+    """
+    Probability of an event under the target.
+
+    Parameters
+    ----------
+    scale : Scale
+        What it is weighed with.
+    event : Quantity
+        0 and 1 for each draw.
+    level : float or None
+        A level to hold it against.
+    largest_ratio : float
+        Supremum of target over base density, normalised; +inf where not known.
+
+    Returns
+    -------
+    Estimate
+        Where no draw lies in the event (or outside it) the value is NaN and a bound is given.
+    """
+    if level is not None and not 0 < level < 1:
+        raise ArgumentError("level", "a probability between 0 and 1", f"{level!r}", "Write 0.8.")
+    columns = event.columns
+    value = np.empty(columns.shape[1])
+    inside, outside = np.empty_like(value), np.empty_like(value)
+    parts = []
+    for part, f in column_blocks(columns):
+        value[part] = _core.weighted_mean(f, scale.weights.linear)
+        parts.append(study(scale, f - value[part]))
+        inside[part] = _draws_within(scale, f)
+        outside[part] = _draws_within(scale, 1 - f)
+    series = joined(parts)
+    upper, lower = _bounds(scale, inside == 0, outside == 0, largest_ratio)
+    settled = (inside > 0) & (outside > 0)
+    decision = _decision(event, value, series.error, settled, level)
+    spread = value * (1 - value)
+    error = np.where(settled, series.error, math.nan)
+    shown = np.where(settled, value, math.nan)
+    found = type(series)(error, series.shape, series.p_value)
+    extra = (
+        judge("event_draws", inside, side="inside"),
+        judge("event_draws", outside, side="outside"),
+    )
+    return finish(
+        scale,
+        event,
+        shown,
+        found,
+        spread,
+        extra=extra,
+        upper_bound=upper,
+        lower_bound=lower,
+        decision=decision,
+    )
+
+
+def _draws_within(scale: Scale, f: Array) -> Array:
+    """Effective draws inside an event: ``(Σ w)²/Σ w²`` over its draws."""
+    w = scale.weights.linear[:, None]
+    total, squares = (w * f).sum(axis=0), (w**2 * f).sum(axis=0)
+    return np.where(squares > 0, total**2 / np.where(squares > 0, squares, 1.0), 0.0)
+
+
+def _bounds(
+    scale: Scale, none_inside: Mask, none_outside: Mask, largest_ratio: float
+) -> tuple[Array | None, Array | None]:
+    """
+    ``3/ESS_base × sup ratio``: the probability of no draw at all is then e^-3, 5 %.
+
+    The effective number of base draws is that of the base weights; a bound of 1 or more is none.
+    """
+    bound = 3 / scale.base_weights.effective_size * largest_ratio
+    known = bound if bound < 1 else math.nan
+    upper = np.where(none_inside, known, math.nan) if none_inside.any() else None
+    lower = np.where(none_outside, 1 - known, math.nan) if none_outside.any() else None
+    return upper, lower
+
+
+def _decision(
+    event: Quantity, value: Array, error: Array, settled: Mask, level: float | None
+) -> Decision | None:
+    """``Φ(|P̂ − γ|/error)``: how surely the side of the level is the right one."""
+    if level is None:
+        return None
+    with np.errstate(invalid="ignore", divide="ignore"):
+        distance = np.abs(value - level) / error
+    right = np.where(settled, _core.normal_cdf(np.nan_to_num(distance, nan=0.0)), math.nan)
+    above = value > level
+    if not event.shape:
+        return Decision(float(level), bool(above[0]), float(right[0]))
+    return Decision(float(level), above.reshape(event.shape), right.reshape(event.shape))

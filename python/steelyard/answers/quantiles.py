@@ -1,0 +1,135 @@
+"""Quantiles and intervals from weighted draws."""
+
+from __future__ import annotations
+
+import math
+from itertools import pairwise
+
+import numpy as np
+
+from steelyard import _core
+from steelyard.answers.estimate import Estimate
+from steelyard.answers.estimating import Scale, Series, column_blocks, finish, joined, study
+from steelyard.answers.quantities import Quantity
+from steelyard.base.draws import Array
+from steelyard.verdicts import judge
+
+__all__ = ["quantile_of", "quantile_pair", "shortest_of"]
+
+# Batches and replicates of the bootstrap that gives the errors of a shortest interval.
+_BATCHES = 40
+_REPLICATES = 100
+_BOOTSTRAP_KEY = 20_261_201
+
+
+def quantile_of(
+    scale: Scale, quantity: Quantity, probs: Array, lead_dims: tuple[str, ...] = ("quantile",)
+) -> Estimate:
+    """
+    Quantiles at `probs`, axes of `probs` first.
+
+    The error inverts that of the distribution function: with ``p± = p ± error(F at q̂)`` it is
+    half the difference of the quantiles at p+ and p−; where either leaves (0, 1) it is +inf.
+    """
+    flat = probs.reshape(-1)
+    columns = quantity.columns
+    width = columns.shape[1]
+    value, error = np.empty((flat.size, width)), np.empty((flat.size, width))
+    shape, p_value = np.empty_like(value), np.empty_like(value)
+    spread = np.empty_like(value)
+    for part, f in column_blocks(columns):
+        for row, p in enumerate(flat):
+            q, series, variance = quantile_pair(scale, f, float(p))
+            value[row, part], error[row, part] = q, series.error
+            shape[row, part], p_value[row, part] = series.shape, series.p_value
+            spread[row, part] = variance
+    reach = np.isinf(error)
+    series = Series(error.reshape(-1), shape.reshape(-1), p_value.reshape(-1))
+    beyond = judge("quantile_reach", np.zeros(reach.size), spoken=reach.reshape(-1))
+    return finish(
+        scale,
+        quantity,
+        value.reshape(-1),
+        series,
+        spread.reshape(-1),
+        lead=probs.shape,
+        extra=(beyond,),
+        lead_dims=lead_dims if probs.ndim == 1 else ("",) * probs.ndim,
+    )
+
+
+def quantile_pair(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Array]:
+    """One quantile of each column of `f`: its value, its series, the variance of its influence."""
+    w = scale.weights.linear
+    width = f.shape[1]
+    q = _core.quantile(f, w, np.full((1, width), p))[0]
+    below = np.where(f == q, 0.5, (f < q).astype(np.float64))
+    inside = _core.weighted_mean(below, w)
+    series = study(scale, below - inside)
+    low, high = p - series.error, p + series.error
+    reached = (low > 0) & (high < 1)
+    ends = np.clip(np.stack([low, high]), 0.0, 1.0)
+    at = _core.quantile(f, w, np.where(np.isnan(ends), p, ends))
+    error = np.where(reached, (at[1] - at[0]) / 2, math.inf)
+    constant = (f == f[:1]).all(axis=0)
+    error = np.where(constant, 0.0, error)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        # Effective draws are those of the distribution function at the quantile.
+        variance = np.where(series.error > 0, p * (1 - p) / series.error**2 * error**2, 0.0)
+    return q, Series(error, series.shape, series.p_value), variance
+
+
+def shortest_of(scale: Scale, quantity: Quantity, mass: float) -> Estimate:
+    """
+    Shortest interval that holds `mass`; errors of both ends by a block bootstrap.
+
+    Blocks are stretches of the chains, so that autocorrelation within them is kept.
+    """
+    w = scale.weights.linear
+    columns = quantity.columns
+    ends, errors = np.empty((2, columns.shape[1])), np.empty((2, columns.shape[1]))
+    for part, f in column_blocks(columns):
+        ends[:, part] = _core.shortest_interval(f, w, mass)
+        errors[:, part] = _bootstrap(scale, f, mass)
+    parts = []
+    for end in ends:
+        for part, f in column_blocks(columns):
+            below = (f <= end[part]).astype(np.float64)
+            parts.append(study(scale, below - _core.weighted_mean(below, w)))
+    found = joined(parts)
+    series = Series(errors.reshape(-1), found.shape, found.p_value)
+    return finish(
+        scale, quantity, ends.reshape(-1), series, None, lead=(2,), lead_dims=("interval",)
+    )
+
+
+def _bootstrap(scale: Scale, f: Array, mass: float) -> Array:
+    """
+    Errors of both ends by a block bootstrap over stretches of the chains.
+
+    The ends of a shortest interval converge slower than a mean and are not smooth in the weights:
+    a jackknife over the same batches gave twice the true error and varied as much (4,000
+    independent normal draws), the bootstrap 1.05 times with a spread of a quarter.
+    """
+    draws = scale.base.draws
+    per_chain = max(1, -(-_BATCHES // draws.chains))
+    edges = np.unique(
+        np.concatenate(
+            [
+                np.linspace(start, stop, min(per_chain, stop - start) + 1).astype(np.int64)
+                for start, stop in pairwise(draws.starts.tolist())
+            ]
+        )
+    )
+    lengths = np.diff(edges)
+    if len(lengths) < 2:
+        return np.full((2, f.shape[1]), math.inf)
+    # A fixed stream: the same answer asked twice has the same error.
+    rng = np.random.default_rng(_BOOTSTRAP_KEY)
+    ends = []
+    for _ in range(_REPLICATES):
+        picked = np.bincount(rng.integers(0, len(lengths), len(lengths)), minlength=len(lengths))
+        w = scale.weights.linear * np.repeat(picked, lengths)
+        if w.sum() > 0:
+            ends.append(_core.shortest_interval(f, w, mass))
+    return np.asarray(np.std(ends, axis=0, ddof=1), dtype=np.float64)

@@ -1,0 +1,148 @@
+"""Quantities and events: names, arrays, callables and mappings become draws of what is asked."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from types import MappingProxyType
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from steelyard.answers.events import evaluate_event, is_expression
+from steelyard.base import Base
+from steelyard.base.draws import Array, element
+from steelyard.base.shapes import stacked
+from steelyard.errors import ArgumentTypeError, QuantityError
+
+__all__ = ["Quantity", "event_mask", "labelled", "read_quantity"]
+
+
+@dataclass(frozen=True, eq=False)
+class Quantity:
+    """
+    Draws of something asked for.
+
+    Attributes
+    ----------
+    label : str
+        What it is called.
+    values : numpy.ndarray
+        ``(n, *shape)`` float64.
+    dims : tuple of str
+        Names of the trailing dimensions; empty texts where they have none.
+    labels : mapping of str to numpy.ndarray
+        Labels along named dimensions.
+    """
+
+    label: str
+    values: Array
+    dims: tuple[str, ...] = ()
+    labels: Mapping[str, npt.NDArray[Any]] = field(default_factory=dict)
+
+    @property
+    def shape(self) -> tuple[int, ...]:
+        """Shape without the draw axis."""
+        return self.values.shape[1:]
+
+    @property
+    def columns(self) -> Array:
+        """The values as ``(n, k)``."""
+        return self.values.reshape(len(self.values), -1)
+
+
+def labelled(quantity: Any, base: Base) -> dict[str, Quantity] | None:
+    """Several quantities by label, for a mapping or for None (all parameters); else None."""
+    if quantity is None:
+        return {name: read_quantity(name, base) for name in base.parameters}
+    if isinstance(quantity, Mapping):
+        if not quantity:
+            raise QuantityError("quantity", "at least one", "an empty mapping", "Name one.")
+        return {str(k): _renamed(read_quantity(v, base), str(k)) for k, v in quantity.items()}
+    return None
+
+
+def _renamed(quantity: Quantity, label: str) -> Quantity:
+    return Quantity(label, quantity.values, quantity.dims, quantity.labels)
+
+
+def read_quantity(quantity: Any, base: Base, argument: str = "quantity") -> Quantity:
+    """Draws of one quantity: a name, an array shaped like the draws, or a callable."""
+    draws = base.draws
+    if isinstance(quantity, str):
+        return _named(quantity, base, argument)
+    if callable(quantity) and not hasattr(quantity, "shape"):
+        label = getattr(quantity, "__name__", "quantity")
+        label = "quantity" if label == "<lambda>" else label
+        quantity = quantity(MappingProxyType(dict(draws.values_by_name)))
+    elif hasattr(quantity, "shape") or isinstance(quantity, list | tuple):
+        label = "quantity"
+    else:
+        raise ArgumentTypeError(
+            argument,
+            "a parameter's name, an array shaped like the draws, a callable, or a mapping of those",
+            type(quantity).__name__,
+            f"Known parameters: {', '.join(draws) or 'none'}.",
+        )
+    values = np.require(stacked(quantity, draws, argument), np.float64, ["C", "A"])
+    _refuse_bad_values(values, base, argument)
+    return Quantity(label, values, ("",) * (values.ndim - 1))
+
+
+def _named(text: str, base: Base, argument: str) -> Quantity:
+    draws = base.draws
+    if not len(draws):
+        raise QuantityError(
+            argument,
+            "an array or a callable, since the answer holds no draws",
+            repr(text),
+            "Pass draws= to weigh() to name parameters.",
+        )
+    found = draws.find(text, argument)
+    values = element(draws.values_by_name[found.name], found.index)
+    names = draws.dims.get(found.name, ("",) * (values.ndim - 1 + len(found.index)))
+    dims = names[len(found.index) :]
+    labels = {d: draws.labels[d] for d in dims if d in draws.labels}
+    return Quantity(text, np.require(values, np.float64, ["C", "A"]), dims, labels)
+
+
+def _refuse_bad_values(values: Array, base: Base, argument: str) -> None:
+    bad = np.isnan(values) | np.isinf(values)
+    if bad.any():
+        rows = np.flatnonzero(bad.reshape(len(values), -1).any(axis=1))
+        raise QuantityError(
+            argument,
+            "finite values",
+            f"{int(bad.sum())} NaN or infinite, first at {base.draws.where(int(rows[0]))}",
+            "A mean over them has no value; ask for the probability of an event instead.",
+        )
+
+
+def event_mask(event: Any, base: Base) -> Quantity:
+    """Draws of an event as 0 and 1: a text, a boolean array, or a callable that returns one."""
+    draws = base.draws
+    label = "event"
+    if isinstance(event, str):
+        if not is_expression(event):
+            raise QuantityError(
+                "event",
+                'a comparison, such as "rate[3] > 0.12"',
+                repr(event),
+                "A name alone is a quantity, not an event.",
+            )
+        label, event = event, evaluate_event(event, draws)
+    elif callable(event) and not hasattr(event, "shape"):
+        name = getattr(event, "__name__", "event")
+        label = "event" if name == "<lambda>" else name
+        event = event(MappingProxyType(dict(draws.values_by_name)))
+    values = np.asarray(event)
+    if values.dtype != np.bool_:
+        raise QuantityError(
+            "event",
+            "True or False for each draw",
+            f"dtype {values.dtype}",
+            'Compare with something, as in lambda d: d["mu"] > 0.1.',
+        )
+    rows = np.require(stacked(event, draws, "event"), np.float64, ["C", "A"])
+    return Quantity(label, rows, ("",) * (rows.ndim - 1))

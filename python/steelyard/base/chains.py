@@ -1,0 +1,135 @@
+"""Which leading axes are chain and draw, told or inferred; doubt is an error, not a guess."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from steelyard.errors import DrawsError, ShapeError
+
+__all__ = ["Chains", "infer_chains"]
+
+
+@dataclass(frozen=True)
+class Chains:
+    """Where chains start in the stack, and whether the input had a chain axis."""
+
+    starts: npt.NDArray[np.int64]
+    has_chain_axis: bool
+    chain_names: tuple[Any, ...] = ()
+
+
+def infer_chains(
+    arrays: Mapping[str, npt.NDArray[Any]],
+    has_chain_axis: bool | None,
+    chain: npt.NDArray[Any] | None,
+    argument: str,
+) -> Chains:
+    """
+    Chain structure of arrays that share their leading axes.
+
+    Arrays of one axis are stacked draws. Otherwise the first two axes are (chain, draw) where
+    all arrays agree on both; more chains than draws are refused, since swapped or stacked axes
+    look just like that.
+    """
+    for name, array in arrays.items():
+        if array.ndim == 0:
+            raise DrawsError(
+                f"{argument}[{name!r}]", "an array of draws", "a single number", "Pass all draws."
+            )
+    first_name, first = next(iter(arrays.items()))
+    lengths = {name: array.shape[0] for name, array in arrays.items()}
+    for name, length in lengths.items():
+        if length != first.shape[0]:
+            raise ShapeError(
+                f"{argument}[{name!r}]",
+                f"the leading axis of {first_name!r}, whose shape is {first.shape}",
+                f"shape {arrays[name].shape}",
+                "All parameters need the same draws in the same order.",
+            )
+    if has_chain_axis is None:
+        has_chain_axis = chain is None and _agree_on_two_axes(arrays)
+    if has_chain_axis:
+        return _with_axis(arrays, first_name, chain, argument)
+    count = first.shape[0]
+    _refuse_too_few(count, argument)
+    if chain is None:
+        return Chains(np.array([0, count], dtype=np.int64), False)
+    return _from_index(chain, count)
+
+
+def _agree_on_two_axes(arrays: Mapping[str, npt.NDArray[Any]]) -> bool:
+    seconds = {array.shape[1] if array.ndim > 1 else None for array in arrays.values()}
+    return len(seconds) == 1 and None not in seconds
+
+
+def _with_axis(
+    arrays: Mapping[str, npt.NDArray[Any]],
+    first_name: str,
+    chain: npt.NDArray[Any] | None,
+    argument: str,
+) -> Chains:
+    shape = arrays[first_name].shape[:2]
+    for name, array in arrays.items():
+        if array.shape[:2] != shape:
+            raise ShapeError(
+                f"{argument}[{name!r}]",
+                f"the chain and draw axes of {first_name!r}, {shape}",
+                str(array.shape[:2]),
+                "All parameters need the same draws in the same order.",
+            )
+    if chain is not None:
+        raise DrawsError(
+            "chain",
+            "nothing, since the draws have a chain axis",
+            f"an array of shape {chain.shape}",
+            "Leave chain= out, or pass stacked draws of shape (n, …).",
+        )
+    chains, length = shape
+    _refuse_too_few(chains * length, argument)
+    if chains > length:
+        raise DrawsError(
+            argument,
+            "(chain, draw, …) arrays with at least as many draws as chains",
+            f"{chains} chains of {length} draws from shape {arrays[first_name].shape}",
+            "If the axes are swapped, swap them back; if the draws are stacked as (n, …) in one "
+            f"chain, pass chain=np.zeros({chains}, int), else the chain of each draw.",
+        )
+    starts = np.arange(chains + 1, dtype=np.int64) * length
+    return Chains(starts, True, tuple(range(chains)))
+
+
+def _refuse_too_few(count: int, argument: str) -> None:
+    if count < 2:
+        raise DrawsError(
+            argument,
+            "at least two draws",
+            "no draw" if count == 0 else "one draw, which has no Monte Carlo error",
+            "Pass all draws of the fit.",
+        )
+
+
+def _from_index(chain: npt.NDArray[Any], count: int) -> Chains:
+    if chain.shape != (count,):
+        raise ShapeError(
+            "chain",
+            f"the chain of each of {count} draws, shape ({count},)",
+            f"shape {chain.shape}",
+            "Give one entry a draw.",
+        )
+    breaks = np.flatnonzero(chain[1:] != chain[:-1]) + 1
+    starts = np.concatenate([[0], breaks, [count]]).astype(np.int64)
+    names = [chain[i].item() for i in starts[:-1]]
+    scattered = sorted({str(n) for n in names if names.count(n) > 1})
+    if scattered:
+        raise DrawsError(
+            "chain",
+            "the draws of each chain together, in the order they were drawn",
+            f"rows of chain {', '.join(scattered[:5])} in several places",
+            "Sort by chain, keeping the order within each; or pass ordered=False if there is none.",
+        )
+    return Chains(starts, False, tuple(names))

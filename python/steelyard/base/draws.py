@@ -1,0 +1,190 @@
+"""Draws: named arrays `(n, *shape)`, stacked chain after chain."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from steelyard.base.names import Reference, close_names, find
+from steelyard.errors import UnknownNameError
+
+__all__ = ["Array", "Draws", "element"]
+
+Array = npt.NDArray[np.float64]
+
+
+@dataclass(frozen=True, eq=False)
+class Draws(Mapping[str, Array]):
+    """
+    Named posterior draws.
+
+    A read-only mapping from parameter names to arrays ``(n, *shape)``, chain after chain. It is
+    built by :class:`steelyard.Fit` or by ``Answer.resample``, not by hand.
+
+    Attributes
+    ----------
+    values_by_name : mapping of str to numpy.ndarray
+        Read-only float64 arrays of shape ``(n, *shape)``.
+    starts : numpy.ndarray
+        Where each chain starts in the stack, and n at the end; shape ``(chains + 1,)``.
+    has_chain_axis : bool
+        Whether results are shown as ``(chain, draw, …)``: the input had a chain axis and the
+        chains are equally long.
+    dims : mapping of str to tuple of str
+        Names of the trailing dimensions of a parameter, where the input named them.
+    labels : mapping of str to numpy.ndarray
+        Labels along a named dimension.
+    chain_names : tuple
+        What the input called the chains.
+    """
+
+    values_by_name: Mapping[str, Array]
+    starts: npt.NDArray[np.int64]
+    has_chain_axis: bool = False
+    dims: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
+    labels: Mapping[str, npt.NDArray[Any]] = field(default_factory=dict)
+    chain_names: tuple[Any, ...] = ()
+
+    def __getitem__(self, name: str) -> Array:
+        if name in self.values_by_name:
+            return self.values_by_name[name]
+        return self.look_up(name)
+
+    def __iter__(self) -> Iterator[str]:
+        return iter(self.values_by_name)
+
+    def __len__(self) -> int:
+        return len(self.values_by_name)
+
+    def __contains__(self, name: object) -> bool:
+        return name in self.values_by_name
+
+    @property
+    def size(self) -> int:
+        """Number of draws n, all chains together."""
+        return int(self.starts[-1])
+
+    @property
+    def chains(self) -> int:
+        """Number of chains."""
+        return len(self.starts) - 1
+
+    @property
+    def chain(self) -> npt.NDArray[np.int64]:
+        """Position of the chain that each draw belongs to, shape ``(n,)``."""
+        return np.repeat(np.arange(self.chains), np.diff(self.starts))
+
+    def find(self, name: str, argument: str = "name") -> Reference:
+        """The parameter, or the element of one, that a text names."""
+        shapes = {k: v.shape[1:] for k, v in self.values_by_name.items()}
+        return find(name, shapes, self.dims, self.labels, argument)
+
+    def look_up(self, name: str, argument: str = "name") -> Array:
+        """
+        Draws of a parameter (``"rate"``) or of an element (``"rate[3]"``).
+
+        Parameters
+        ----------
+        name : str
+            The name; integers in brackets are positions from 0.
+        argument : str
+            What an error calls it.
+
+        Returns
+        -------
+        numpy.ndarray
+            Shape ``(n, *shape)``.
+
+        Raises
+        ------
+        UnknownNameError
+            Where there is no such parameter or position.
+        AmbiguousNameError
+            Where an integer could be a position or a label.
+        """
+        found = self.find(name, argument)
+        return element(self.values_by_name[found.name], found.index)
+
+    def shaped(self, values: Array) -> Array:
+        """`(n, …)` shown as `(chain, draw, …)` where the chains allow it."""
+        if not self.has_chain_axis:
+            return values
+        return values.reshape(self.chains, -1, *values.shape[1:])
+
+    def where(self, draw: int) -> str:
+        """Words for the place of one draw of the stack."""
+        chain = int(np.searchsorted(self.starts, draw, side="right")) - 1
+        if self.chains == 1:
+            return f"draw {draw}"
+        return f"chain {chain}, draw {draw - int(self.starts[chain])}"
+
+    def take(self, rows: npt.NDArray[np.int64]) -> Draws:
+        """The draws at ascending positions `rows`, chains kept, as a new stack."""
+        counts = np.bincount(self.chain[rows], minlength=self.chains)
+        kept = np.flatnonzero(counts)
+        starts = np.concatenate([[0], np.cumsum(counts[kept])]).astype(np.int64)
+        names = self.chain_names or tuple(range(self.chains))
+        values = {k: _read_only(v[rows]) for k, v in self.values_by_name.items()}
+        return Draws(
+            values, starts, False, self.dims, self.labels, tuple(names[int(c)] for c in kept)
+        )
+
+    def to_xarray(self) -> Any:
+        """
+        The draws as an xarray Dataset.
+
+        Returns
+        -------
+        xarray.Dataset
+            Dimensions ``chain`` and ``draw`` where the chains are equally long and the input had
+            a chain axis, else ``draw`` with a coordinate ``chain``.
+
+        Raises
+        ------
+        MissingExtraError
+            Without xarray.
+        """
+        from steelyard.base.optional import xarray
+
+        lead = ("chain", "draw") if self.has_chain_axis else ("draw",)
+        variables = {
+            name: ((*lead, *self.dims_of(name)), self.shaped(values))
+            for name, values in self.values_by_name.items()
+        }
+        coords: dict[str, Any] = dict(self.labels)
+        if not self.has_chain_axis:
+            coords["chain"] = ("draw", self.chain)
+        return xarray().Dataset(variables, coords=coords)
+
+    def dims_of(self, name: str) -> tuple[str, ...]:
+        """Names of a parameter's trailing dimensions, made up where the input gave none."""
+        if name not in self.values_by_name:
+            raise UnknownNameError(
+                "name", "a parameter", repr(name), close_names(name, self.values_by_name)
+            )
+        axes = self.values_by_name[name].ndim - 1
+        return self.dims.get(name, tuple(f"{name}_{axis}" for axis in range(axes)))
+
+    def __repr__(self) -> str:
+        shapes = ", ".join(
+            f"{name}{list(v.shape[1:]) if v.ndim > 1 else ''}"
+            for name, v in self.values_by_name.items()
+        )
+        chains = "1 chain" if self.chains == 1 else f"{self.chains} chains"
+        return f"<Draws: {self.size} in {chains}: {shapes}>"
+
+
+def element(values: Array, index: tuple[int, ...]) -> Array:
+    """Draws of one element of a parameter; all of it for an empty index."""
+    place: tuple[Any, ...] = (slice(None), *index)
+    return np.asarray(values[place])
+
+
+def _read_only(values: Array) -> Array:
+    view = values.view()
+    view.flags.writeable = False
+    return view

@@ -1,0 +1,223 @@
+"""Prior terms: a distribution, a frozen scipy distribution, a callable, or an array."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from types import MappingProxyType
+from typing import Any
+
+import numpy as np
+
+from steelyard.base.draws import Array, Draws
+from steelyard.base.names import close_names
+from steelyard.base.shapes import draw_rows
+from steelyard.densities import Distribution
+from steelyard.errors import ArgumentTypeError, PriorError, UnknownNameError
+
+__all__ = ["PriorTerm", "read_prior"]
+
+Key = str | tuple[str, ...]
+
+
+@dataclass(frozen=True, eq=False)
+class PriorTerm:
+    """
+    One prior term: what it is about, and its density.
+
+    Attributes
+    ----------
+    key : str or tuple of str
+        As the user wrote it.
+    density : Distribution, frozen scipy distribution, callable or numpy.ndarray
+        As the user gave it; arrays are ``(n,)``, summed over trailing axes.
+    """
+
+    key: Key
+    density: Any
+
+    @property
+    def label(self) -> str:
+        """The key as text."""
+        return self.key if isinstance(self.key, str) else ", ".join(self.key)
+
+    @property
+    def is_distribution(self) -> bool:
+        return isinstance(self.density, Distribution)
+
+    @property
+    def is_proper(self) -> bool:
+        """Whether the density is known to be improper (callables and arrays are taken at word)."""
+        return not self.is_distribution or bool(self.density.is_proper)
+
+    def value(self, draws: Draws) -> Array:
+        """Draws of what the term is about: ``(n, *shape)``, or ``(n, d)`` for a joint term."""
+        if isinstance(self.key, str):
+            return draws.look_up(self.key, "prior")
+        parts = [draws.look_up(name, "prior") for name in self.key]
+        return np.concatenate([p.reshape(len(p), -1) for p in parts], axis=1)
+
+    def log_density(self, draws: Draws) -> Array:
+        """Log density at every draw, summed over trailing axes, shape ``(n,)``."""
+        density = self.density
+        if isinstance(density, np.ndarray):
+            return density
+        if callable(density) and not _is_frozen(density):
+            density = density(MappingProxyType(dict(draws.values_by_name)))
+        if isinstance(density, Distribution):
+            out = density.log_density(self.value(draws), look_up=draws.look_up)
+        elif _is_frozen(density):
+            out = _frozen_log_density(density, self.value(draws))
+        else:
+            return draw_rows(density, draws, f"prior[{self.label!r}]")
+        return np.asarray(out.reshape(draws.size, -1).sum(axis=1))
+
+    def log_density_checked(self, draws: Draws) -> Array:
+        """The same, refusing NaN and +inf, which no density has at a draw."""
+        out = self.log_density(draws)
+        bad = np.isnan(out) | (out == np.inf)
+        if bad.any():
+            first = int(np.argmax(bad))
+            raise PriorError(
+                f"prior[{self.label!r}]",
+                "log densities that are finite or −inf",
+                f"{int(bad.sum())} of {len(out)} NaN or +inf, first {out[first]} at "
+                f"{draws.where(first)}",
+                "Check the density at that draw.",
+            )
+        return out
+
+
+def _is_frozen(density: Any) -> bool:
+    return not isinstance(density, Distribution) and (
+        hasattr(density, "logpdf") or hasattr(density, "logpmf")
+    )
+
+
+def _frozen_log_density(density: Any, value: Array) -> Array:
+    evaluate = density.logpdf if hasattr(density, "logpdf") else density.logpmf
+    try:
+        return np.asarray(evaluate(value), dtype=np.float64)
+    except AttributeError:  # discrete frozen distributions carry logpdf in name only
+        return np.asarray(density.logpmf(value), dtype=np.float64)
+
+
+def read_prior(prior: Any, draws: Draws) -> dict[str, PriorTerm] | None:
+    """
+    Read the prior terms of a fit and hold the draws against their supports.
+
+    ``None`` and an empty mapping mean that the prior is not stated.
+    """
+    if prior is None:
+        return None
+    if not isinstance(prior, Mapping):
+        raise ArgumentTypeError(
+            "prior",
+            "a mapping from parameters to prior terms",
+            type(prior).__name__,
+            'Write for instance {"mu": sy.Normal(0, 1)}.',
+        )
+    terms = {}
+    for key, density in prior.items():
+        term = read_term(key, density, draws, "prior")
+        if isinstance(term.density, Distribution):
+            _refuse_outside(term, draws)
+        terms[term.label] = term
+    _refuse_overlap(terms, draws)
+    return terms or None
+
+
+def read_term(key: Any, density: Any, draws: Draws, argument: str) -> PriorTerm:
+    """One prior term, its names resolved and its kind checked."""
+    if not (isinstance(key, str) or (isinstance(key, tuple) and all_text(key))):
+        raise ArgumentTypeError(
+            argument, "a name or a tuple of names as key", repr(key), "Name parameters."
+        )
+    where = f"{argument}[{key!r}]"
+    if isinstance(density, Distribution) or _is_frozen(density):
+        for name in (key,) if isinstance(key, str) else key:
+            draws.find(name, argument)
+        if isinstance(density, Distribution):
+            for name in density.names:
+                draws.find(name, where)
+        return PriorTerm(key, density)
+    if callable(density):
+        return PriorTerm(key, density)
+    if hasattr(density, "__array__") or isinstance(density, list | tuple):
+        return PriorTerm(key, draw_rows(density, draws, where))
+    raise ArgumentTypeError(
+        where,
+        "a distribution, a frozen scipy.stats distribution, a callable or an array",
+        type(density).__name__,
+        'Write for instance sy.Normal(0, 1), or Normal("mu", "tau") with names of parameters.',
+    )
+
+
+def all_text(values: tuple[Any, ...]) -> bool:
+    """Whether every entry is a text."""
+    return len(values) > 0 and all(isinstance(v, str) for v in values)
+
+
+def _refuse_outside(term: PriorTerm, draws: Draws) -> None:
+    impossible = term.log_density_checked(draws) == -np.inf
+    if impossible.any():
+        raise PriorError(
+            f"prior[{term.label!r}]",
+            f"draws inside the support of {term.density}",
+            f"{int(impossible.sum())} of {draws.size} outside, first at "
+            f"{draws.where(int(np.argmax(impossible)))}",
+            "The draws did not come from this prior: state the one that was fitted.",
+        )
+
+
+def _refuse_overlap(terms: Mapping[str, PriorTerm], draws: Draws) -> None:
+    """A parameter with two distributions would have its prior counted twice."""
+    seen: dict[str, tuple[str, tuple[int, ...]]] = {}
+    for label, term in terms.items():
+        if not (term.is_distribution or _is_frozen(term.density)):
+            continue
+        for name in (term.key,) if isinstance(term.key, str) else term.key:
+            found = draws.find(name)
+            for other, (parameter, index) in seen.items():
+                short = min(len(index), len(found.index))
+                if parameter == found.name and index[:short] == found.index[:short]:
+                    raise PriorError(
+                        f"prior[{label!r}]",
+                        "each parameter in one term",
+                        f"{name!r} stated here and in {other!r}",
+                        "State one of them.",
+                    )
+            seen[label if isinstance(term.key, str) else f"{label}: {name}"] = (
+                found.name,
+                found.index,
+            )
+
+
+def stated_prior(terms: Mapping[str, PriorTerm] | None, argument: str) -> Mapping[str, PriorTerm]:
+    """The prior terms, or an error that says that none was stated."""
+    if not terms:
+        raise PriorError(
+            argument,
+            "a fit whose prior is stated",
+            "a fit without prior",
+            "Pass prior={…} to Fit; a flat prior is sy.Flat().",
+        )
+    return terms
+
+
+def known_term(key: str, terms: Mapping[str, Any], argument: str, kind: str) -> None:
+    """Refuse a term that the base does not state."""
+    if key not in terms:
+        raise UnknownNameError(
+            argument, f"a stated {kind} term", repr(key), close_names(key, terms)
+        )
+
+
+def same_density(one: Any, other: Any) -> bool:
+    """Whether two terms are the same object or equal distributions."""
+    if one is other:
+        return True
+    return isinstance(one, Distribution) and isinstance(other, Distribution) and one == other
+
+
+__all__ += ["known_term", "read_term", "same_density", "stated_prior"]

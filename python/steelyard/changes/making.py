@@ -1,0 +1,332 @@
+"""How changes are stated: one function for each kind of edit."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+import numpy as np
+
+from steelyard.changes.edits import (
+    AddTerm,
+    Change,
+    Drop,
+    LogRatio,
+    Power,
+    SwapLoglik,
+    SwapPrior,
+    WeighData,
+)
+from steelyard.errors import ArgumentError, ArgumentTypeError, ChangeError
+
+__all__ = ["add", "drop", "log_ratio", "power", "swap_loglik", "swap_prior", "weigh_data"]
+
+
+def swap_prior(mapping: Mapping[Any, Any] | None = None, /, **terms: Any) -> Change:
+    """
+    Replace prior terms.
+
+    Parameters
+    ----------
+    mapping : mapping, optional
+        From the keys of the fit's prior to new terms: distributions, frozen scipy.stats
+        distributions, callables that get ``{name: (n, *shape)}``, or arrays of log densities.
+        For keys that are not Python names, such as ``("a", "b")``.
+    **terms
+        The same by keyword.
+
+    Returns
+    -------
+    Change
+        The change.
+
+    Raises
+    ------
+    ChangeError
+        Where nothing is named, or one term twice.
+
+    Notes
+    -----
+    ``Δ = log π_new(θ) − log π_old(θ)`` for each term.
+
+    Examples
+    --------
+    >>> import steelyard as sy
+    >>> sy.swap_prior(tau=sy.HalfCauchy(0.05))
+    <Change: prior of tau becomes HalfCauchy(0.05)>
+    """
+    pairs = _pairs(mapping, terms, "swap_prior", "prior")
+    return Change(tuple(SwapPrior(key, density) for key, density in pairs))
+
+
+def swap_loglik(terms: Any) -> Change:
+    """
+    Replace likelihood terms.
+
+    Parameters
+    ----------
+    terms : array_like, callable or mapping
+        New log likelihood of the only term, aligned with the draws; or ``{term: array}``.
+
+    Returns
+    -------
+    Change
+        The change.
+
+    Raises
+    ------
+    ChangeError
+        Where nothing is named.
+
+    Notes
+    -----
+    ``Δ = Σ_i (L'_si − L_si)``. The new term needs the observations of the old one, so that other
+    edits (dropping, weighing) keep their meaning; a total may replace a term and be replaced.
+
+    Examples
+    --------
+    >>> import numpy as np, steelyard as sy
+    >>> sy.swap_loglik({"gauge A": np.zeros((4, 100, 12))})
+    <Change: likelihood of gauge A replaced>
+    """
+    if isinstance(terms, Mapping):
+        pairs = _pairs(terms, {}, "swap_loglik", "likelihood")
+        return Change(tuple(SwapLoglik(str(name), source) for name, source in pairs))
+    return Change((SwapLoglik(None, terms),))
+
+
+def add(terms: Mapping[str, Any]) -> Change:
+    """
+    Add data: likelihood terms under new names.
+
+    Parameters
+    ----------
+    terms : mapping
+        ``{new_name: log likelihood}``, each aligned with the draws or a callable.
+
+    Returns
+    -------
+    Change
+        The change.
+
+    Raises
+    ------
+    ArgumentTypeError
+        Where `terms` is not a mapping.
+
+    Notes
+    -----
+    ``Δ = Σ_i L_si`` of the new observations.
+
+    Examples
+    --------
+    >>> import numpy as np, steelyard as sy
+    >>> sy.add({"spring survey": np.zeros((4, 100))})
+    <Change: data spring survey added>
+    """
+    if not isinstance(terms, Mapping):
+        raise ArgumentTypeError(
+            "add", "{new name: log likelihood}", type(terms).__name__, "Give the new data a name."
+        )
+    pairs = _pairs(terms, {}, "add", "likelihood")
+    return Change(tuple(AddTerm(str(name), source) for name, source in pairs))
+
+
+def drop(what: Any = None, /, *, label: Any = None, position: Any = None, **dims: Any) -> Change:
+    """
+    Leave out data.
+
+    Parameters
+    ----------
+    what : str, int, sequence or mapping, optional
+        A likelihood term (``"gauge B"``), a label, positions from 0 (``[3, 17]``), or
+        ``{term: positions}``.
+    label, position : optional
+        The same with integers said to be labels, or positions; needed where a dimension has
+        integer labels that differ from positions.
+    **dims
+        Labels along a named dimension of the log likelihood: ``drop(rig="B")``.
+
+    Returns
+    -------
+    Change
+        The change.
+
+    Raises
+    ------
+    ChangeError
+        Where nothing is named, or the same in two ways.
+
+    Notes
+    -----
+    Dropping is a factor of 0 on the observation: ``Δ = −Σ_{i dropped} L_si``. It does not undo
+    scalings or priors that were computed from the dropped data.
+
+    Examples
+    --------
+    >>> import steelyard as sy
+    >>> sy.drop({"gauge A": [0, 4]})
+    <Change: without gauge A: [0, 4]>
+    """
+    given = [(kind, v) for kind, v in (("", what), ("label", label), ("position", position))]
+    given = [(kind, value) for kind, value in given if value is not None]
+    if len(given) + bool(dims) != 1:
+        raise ChangeError(
+            "drop",
+            "one way of saying what to leave out",
+            f"{len(given) + bool(dims)}",
+            'Write drop("term"), drop([3, 17]), drop(label=…), drop(position=…) or drop(dim=…).',
+        )
+    if dims:
+        return Change((Drop(by_dim=tuple(dims.items())),))
+    return Change((Drop(given[0][1], given[0][0]),))
+
+
+def weigh_data(terms: Mapping[str, Any]) -> Change:
+    """
+    Give observations another weight in the likelihood.
+
+    Parameters
+    ----------
+    terms : mapping
+        ``{term: factor}`` with one factor, or one for each observation; not negative.
+
+    Returns
+    -------
+    Change
+        The change.
+
+    Raises
+    ------
+    ArgumentTypeError
+        Where `terms` is not a mapping of numbers.
+    ArgumentError
+        For a negative factor.
+
+    Notes
+    -----
+    ``Δ = Σ_i (a_i − 1) L_si``; factors of several changes multiply.
+
+    Examples
+    --------
+    >>> import steelyard as sy
+    >>> sy.weigh_data({"gauge B": 0.5})
+    <Change: data gauge B weighed by 0.5>
+    """
+    if not isinstance(terms, Mapping):
+        raise ArgumentTypeError(
+            "weigh_data", "{term: factor}", type(terms).__name__, "Name the term."
+        )
+    pairs = _pairs(terms, {}, "weigh_data", "likelihood")
+    return Change(tuple(WeighData(str(k), _factor(v, f"weigh_data[{k!r}]")) for k, v in pairs))
+
+
+def power(prior: Any = 1, likelihood: Any = 1) -> Change:
+    """
+    Take the prior, the likelihood, or terms of them to a power.
+
+    Parameters
+    ----------
+    prior : float or mapping, optional
+        One power for all prior terms, or ``{term: power}``; not negative.
+    likelihood : float or mapping, optional
+        The same for likelihood terms.
+
+    Returns
+    -------
+    Change
+        The change.
+
+    Raises
+    ------
+    ArgumentTypeError, ArgumentError
+        For anything but numbers that are not negative.
+
+    Notes
+    -----
+    ``Δ = (α − 1) Σ log π + (β − 1) Σ L`` (power scaling: Kallioinen, Paananen, Bürkner, Vehtari
+    2024). A power of 0 leaves the support as it was.
+
+    Examples
+    --------
+    >>> import steelyard as sy
+    >>> sy.power(likelihood=0.5)
+    <Change: likelihood to the power 0.5>
+    """
+
+    def read(value: Any, argument: str) -> Any:
+        if isinstance(value, Mapping):
+            return {k: float(_scalar(v, f"{argument}[{k!r}]")) for k, v in value.items()}
+        return float(_scalar(value, argument))
+
+    return Change((Power(read(prior, "power: prior"), read(likelihood, "power: likelihood")),))
+
+
+def log_ratio(source: Any) -> Change:
+    """
+    Multiply the target by any ratio.
+
+    Parameters
+    ----------
+    source : array_like or callable
+        Log ratio at each draw, ``(n,)`` or ``(chain, draw)``; or a callable that gets
+        ``{name: (n, *shape)}`` and returns it.
+
+    Returns
+    -------
+    Change
+        The change.
+
+    Notes
+    -----
+    ``Δ = log q(θ) − log p(θ)`` up to a constant. −inf is a weight of zero; NaN and +inf are
+    errors when the change is weighed.
+
+    Examples
+    --------
+    >>> import steelyard as sy
+    >>> sy.log_ratio(lambda draws: -draws["mu"] ** 2)
+    <Change: target times a given ratio>
+    """
+    return Change((LogRatio(source),))
+
+
+def _pairs(
+    mapping: Mapping[Any, Any] | None, terms: Mapping[str, Any], argument: str, kind: str
+) -> list[tuple[Any, Any]]:
+    if mapping is not None and not isinstance(mapping, Mapping):
+        raise ArgumentTypeError(
+            argument, "a mapping, or terms by keyword", type(mapping).__name__, "Name the term."
+        )
+    mapping = dict(mapping or {})
+    twice = sorted(set(map(str, mapping)) & set(terms))
+    if twice:
+        raise ChangeError(argument, "each term once", f"{twice} twice", "Keep one of them.")
+    pairs = [*mapping.items(), *terms.items()]
+    if not pairs:
+        raise ChangeError(argument, f"at least one {kind} term", "none", "Name the term to change.")
+    return pairs
+
+
+def _scalar(value: Any, argument: str) -> Any:
+    number = _factor(value, argument)
+    if np.ndim(number):
+        raise ArgumentTypeError(
+            argument, "one number", f"shape {np.shape(number)}", "Use weigh_data for observations."
+        )
+    return number
+
+
+def _factor(value: Any, argument: str) -> Any:
+    array = np.asarray(value)
+    if array.dtype.kind not in "fiu":
+        raise ArgumentTypeError(argument, "a number", repr(value), "Give a number.")
+    bad = ~(np.isfinite(array) & (array >= 0))
+    if bad.any():
+        raise ArgumentError(
+            argument,
+            "finite numbers that are not negative",
+            f"{np.asarray(array)[bad].flat[0]:g}",
+            "A factor of 0 leaves the term out, 1 leaves it as it is.",
+        )
+    return float(array) if array.ndim == 0 else array.astype(np.float64)

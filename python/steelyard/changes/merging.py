@@ -1,0 +1,195 @@
+"""Edits merged into a draft of the target: one density and one factor for each term."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+
+from steelyard.base import Base
+from steelyard.base.likelihood import LoglikTerm, read_loglik_term
+from steelyard.base.priors import PriorTerm, known_term, read_term, same_density, stated_prior
+from steelyard.changes.edits import (
+    AddTerm,
+    Change,
+    Drop,
+    LogRatio,
+    Power,
+    SwapLoglik,
+    SwapPrior,
+    WeighData,
+)
+from steelyard.changes.selection import selected
+from steelyard.errors import ChangeError, LikelihoodError, ShapeError
+
+__all__ = ["Draft", "LoglikTarget", "PriorTarget", "merge"]
+
+
+@dataclass(frozen=True, eq=False)
+class PriorTarget:
+    """What becomes of one prior term: another density, a factor, or both."""
+
+    base: PriorTerm
+    density: PriorTerm
+    factor: float = 1.0
+
+    @property
+    def is_swapped(self) -> bool:
+        return not same_density(self.base.density, self.density.density)
+
+
+@dataclass(frozen=True, eq=False)
+class LoglikTarget:
+    """What becomes of one likelihood term; `factor` is one number, or one an observation."""
+
+    base: LoglikTerm | None
+    density: LoglikTerm
+    factor: Any = 1.0
+
+
+@dataclass
+class Draft:
+    """The target while edits are merged into it."""
+
+    base: Base
+    prior: dict[str, PriorTarget] = field(default_factory=dict)
+    loglik: dict[str, LoglikTarget] = field(default_factory=dict)
+    swapped: set[str] = field(default_factory=set)
+    ratios: list[Any] = field(default_factory=list)
+
+
+def merge(base: Base, change: Change) -> Draft:
+    """Merge the edits of a change; replacements first, then factors, so that order is no matter."""
+    draft = Draft(base)
+    replacing = (SwapPrior, SwapLoglik, AddTerm)
+    for edit in sorted(change.edits, key=lambda e: not isinstance(e, replacing)):
+        _MERGE[type(edit)](draft, edit)
+    return draft
+
+
+def _merge_swap_prior(draft: Draft, edit: SwapPrior) -> None:
+    stated = stated_prior(draft.base.prior, "swap_prior")
+    label = edit.key if isinstance(edit.key, str) else ", ".join(map(str, edit.key))
+    known_term(label, stated, "swap_prior", "prior")
+    if label in draft.prior:
+        raise ChangeError(
+            f"swap_prior[{label!r}]", "each term replaced once", "twice", "Keep one replacement."
+        )
+    new = read_term(stated[label].key, edit.density, draft.base.draws, "swap_prior")
+    draft.prior[label] = PriorTarget(stated[label], new)
+
+
+def _merge_power(draft: Draft, edit: Power) -> None:
+    prior, likelihood = edit.prior, edit.likelihood
+    if isinstance(prior, Mapping) or prior != 1:
+        stated = stated_prior(draft.base.prior, "power: prior")
+        powers = prior if isinstance(prior, Mapping) else dict.fromkeys(stated, prior)
+        for label, factor in powers.items():
+            known_term(label, stated, "power: prior", "prior")
+            old = draft.prior.get(label, PriorTarget(stated[label], stated[label]))
+            draft.prior[label] = PriorTarget(old.base, old.density, old.factor * factor)
+    if isinstance(likelihood, Mapping) or likelihood != 1:
+        # Added terms belong to the target's likelihood, so a common power takes them too.
+        names = {**_stated(draft.base, "power: likelihood"), **draft.loglik}
+        powers = likelihood if isinstance(likelihood, Mapping) else dict.fromkeys(names, likelihood)
+        for name, factor in powers.items():
+            _multiply(draft, name, factor, "power: likelihood")
+
+
+def _stated(base: Base, argument: str) -> Mapping[str, LoglikTerm]:
+    if not base.loglik:
+        raise LikelihoodError(
+            argument,
+            "a fit whose log likelihood is stated",
+            "a fit without",
+            "Pass loglik=… to Fit.",
+        )
+    return base.loglik
+
+
+def _merge_swap_loglik(draft: Draft, edit: SwapLoglik) -> None:
+    stated = _stated(draft.base, "swap_loglik")
+    if edit.name is None and len(stated) > 1:
+        raise ChangeError(
+            "swap_loglik",
+            f"the term to replace, one of {', '.join(stated)}",
+            "an array without a name",
+            "Write swap_loglik({term: array}).",
+        )
+    name = next(iter(stated)) if edit.name is None else edit.name
+    known_term(name, stated, "swap_loglik", "likelihood")
+    if name in draft.swapped:
+        raise ChangeError(
+            f"swap_loglik[{name!r}]", "each term replaced once", "twice", "Keep one replacement."
+        )
+    old = stated[name]
+    new = read_loglik_term(name, edit.source, draft.base.draws, f"swap_loglik[{name!r}]")
+    if new.obs_shape != old.obs_shape and not (new.is_total or old.is_total):
+        raise ShapeError(
+            f"swap_loglik[{name!r}]",
+            f"the observations of the old term, shape {old.obs_shape}",
+            str(new.obs_shape),
+            "Give one value an observation, in the same order, or a total.",
+        )
+    draft.swapped.add(name)
+    draft.loglik[name] = LoglikTarget(old, new)
+
+
+def _merge_add(draft: Draft, edit: AddTerm) -> None:
+    if edit.name in (draft.base.loglik or {}) or edit.name in draft.loglik:
+        raise ChangeError(
+            f"add[{edit.name!r}]",
+            "a name that no likelihood term has",
+            f"{edit.name!r}, which one has",
+            "Choose another name, or replace the term with swap_loglik.",
+        )
+    new = read_loglik_term(edit.name, edit.source, draft.base.draws, f"add[{edit.name!r}]")
+    draft.loglik[edit.name] = LoglikTarget(None, new)
+
+
+def _merge_drop(draft: Draft, edit: Drop) -> None:
+    stated = _stated(draft.base, "drop")
+    for name, mask in selected(edit, stated).items():
+        if not mask.shape:
+            _multiply(draft, name, 0.0, "drop")
+        else:
+            _multiply(draft, name, np.where(mask, 0.0, 1.0), "drop")
+
+
+def _merge_weigh_data(draft: Draft, edit: WeighData) -> None:
+    _multiply(draft, edit.name, edit.factor, "weigh_data")
+
+
+def _merge_log_ratio(draft: Draft, edit: LogRatio) -> None:
+    draft.ratios.append(edit.source)
+
+
+_MERGE: dict[type, Any] = {
+    SwapPrior: _merge_swap_prior,
+    SwapLoglik: _merge_swap_loglik,
+    AddTerm: _merge_add,
+    Drop: _merge_drop,
+    WeighData: _merge_weigh_data,
+    Power: _merge_power,
+    LogRatio: _merge_log_ratio,
+}
+
+
+def _multiply(draft: Draft, name: str, factor: Any, argument: str) -> None:
+    if name not in draft.loglik:
+        stated = _stated(draft.base, argument)
+        known_term(name, stated, argument, "likelihood")
+        draft.loglik[name] = LoglikTarget(stated[name], stated[name])
+    old = draft.loglik[name]
+    shape = np.shape(factor)
+    wanted = old.density.obs_shape
+    if shape and shape != wanted:
+        raise ShapeError(
+            f"{argument}[{name!r}]",
+            f"one factor, or one an observation, shape {wanted}",
+            str(shape),
+            "Match the observations; a total takes one factor only.",
+        )
+    draft.loglik[name] = LoglikTarget(old.base, old.density, old.factor * factor)

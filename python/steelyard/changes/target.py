@@ -1,0 +1,132 @@
+"""Target minus base: edits are merged first, and only then is one Δ formed for each term."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from types import MappingProxyType
+from typing import Any
+
+import numpy as np
+
+from steelyard.base import Base
+from steelyard.base.draws import Array
+from steelyard.base.record import refuse_bad_ratio
+from steelyard.base.shapes import stacked
+from steelyard.changes.edits import Change
+from steelyard.changes.merging import LoglikTarget, PriorTarget, merge
+from steelyard.errors import ArgumentTypeError, RatioError, ShapeError
+
+__all__ = ["Target", "form_target"]
+
+
+@dataclass(frozen=True, eq=False)
+class Target:
+    """
+    The target: edited terms, and target minus base term by term.
+
+    Attributes
+    ----------
+    prior : mapping of str to PriorTarget
+        Edited prior terms.
+    loglik : mapping of str to LoglikTarget
+        Edited likelihood terms.
+    terms : mapping of str to numpy.ndarray
+        Δ of every term that changed, ``(n,)`` each.
+    log_ratio : numpy.ndarray
+        Their sum.
+    """
+
+    prior: Mapping[str, PriorTarget]
+    loglik: Mapping[str, LoglikTarget]
+    terms: Mapping[str, Array]
+    log_ratio: Array
+    ratios: int = 0
+
+
+def form_target(base: Base, change: Change) -> Target:
+    """Merge the edits of a change into the target and form target minus base."""
+    if not isinstance(change, Change):
+        raise ArgumentTypeError(
+            "change",
+            "a change",
+            type(change).__name__,
+            "Make one with swap_prior, swap_loglik, drop, add, weigh_data, power or log_ratio.",
+        )
+    draft = merge(base, change)
+    terms: dict[str, Array] = {}
+    for label, prior in draft.prior.items():
+        _put(terms, f"prior: {label}", _prior_delta(prior, base), base)
+    for name, loglik in draft.loglik.items():
+        _put(terms, f"likelihood: {name}", _loglik_delta(loglik, base), base)
+    for number, source in enumerate(draft.ratios, start=1):
+        label = "log ratio" if number == 1 else f"log ratio {number}"
+        _put(terms, label, _given_ratio(source, base), base)
+    total = np.zeros(base.draws.size)
+    # A fixed order of summation: a & b and b & a agree to the last bit.
+    for label in sorted(terms):
+        total = total + terms[label]
+    return Target(draft.prior, draft.loglik, terms, total, len(draft.ratios))
+
+
+def _put(terms: dict[str, Array], label: str, delta: Array | None, base: Base) -> None:
+    if delta is None or not np.any(delta):
+        return
+    refuse_bad_ratio(delta, base.draws, label)
+    delta.flags.writeable = False
+    terms[label] = delta
+
+
+def _prior_delta(target: PriorTarget, base: Base) -> Array | None:
+    if not target.is_swapped and target.factor == 1:
+        return None
+    old = target.base.log_density_checked(base.draws)
+    if (old == -np.inf).any():
+        first = int(np.argmax(old == -np.inf))
+        raise RatioError(
+            f"prior: {target.base.label}",
+            "draws inside the support of the stated prior",
+            f"log density −inf at {base.draws.where(first)}",
+            "The draws did not come from this prior: state the one that was fitted.",
+        )
+    if target.factor == 0:
+        return -old
+    new = target.density.log_density_checked(base.draws) if target.is_swapped else old
+    return target.factor * new - old
+
+
+def _loglik_delta(target: LoglikTarget, base: Base) -> Array | None:
+    """``Σ_i (a_i L'_si − L_si)`` over the observations that the change touches."""
+    draws, new, old = base.draws, target.density, target.base
+    factor = np.broadcast_to(np.asarray(target.factor), new.obs_shape).reshape(-1)
+    delta = np.zeros(draws.size)
+    if old is new:
+        touched = np.flatnonzero(factor != 1)
+        if touched.size:
+            for part, block in new.blocks(draws):
+                # Σ (a − 1) L, never a L − L: 0 · −inf is no weight at all, not NaN.
+                delta[part] = ((factor[touched] - 1) * block[:, touched]).sum(axis=1)
+        return delta if touched.size else None
+    kept = np.flatnonzero(factor)
+    for part, block in new.blocks(draws):
+        delta[part] += (factor[kept] * block[:, kept]).sum(axis=1)
+    if old is not None:
+        for part, block in old.blocks(draws):
+            with np.errstate(invalid="ignore"):
+                delta[part] -= block.sum(axis=1)
+    return delta
+
+
+def _given_ratio(source: Any, base: Base) -> Array:
+    draws = base.draws
+    if callable(source) and not hasattr(source, "shape"):
+        source = source(MappingProxyType(dict(draws.values_by_name)))
+    rows = stacked(source, draws, "log_ratio")
+    if rows.ndim != 1:
+        raise ShapeError(
+            "log_ratio",
+            f"one number a draw, shape ({draws.size},)",
+            str(rows.shape),
+            "Sum the log ratio over its trailing axes first.",
+        )
+    return np.array(rows, dtype=np.float64)

@@ -1,0 +1,46 @@
+"""How numbers are printed: no digit that the error does not support."""
+
+from __future__ import annotations
+
+import math
+
+__all__ = ["rounded", "short"]
+
+
+def short(value: float) -> str:
+    """A figure for a sentence: three significant digits, no trailing noise."""
+    if not math.isfinite(value):
+        return {math.inf: "inf", -math.inf: "-inf"}.get(value, "nan")
+    if value == int(value) and abs(value) < 1e6:
+        return str(int(value))
+    return f"{value:.3g}"
+
+
+def decimals_of(error: float) -> int | None:
+    """
+    Decimal places that an error supports: its first digit, or two where that digit is a 1.
+
+    None where the error says nothing (zero, infinite, not a number).
+    """
+    if not (math.isfinite(error) and error > 0):
+        return None
+    place = -math.floor(math.log10(error))
+    leading = error * 10.0**place
+    if round(leading) >= 10:
+        place -= 1
+        leading = 1.0
+    return place + 1 if leading < 1.95 else place
+
+
+def rounded(value: float, error: float) -> str:
+    """`value` to the digits that `error` supports; five significant digits without an error."""
+    if not math.isfinite(value):
+        return short(value)
+    if math.isinf(error):
+        return f"{value:.1g}"
+    decimals = decimals_of(error)
+    if decimals is None:
+        return f"{value:.5g}"
+    if decimals > 12:
+        return f"{value:.12g}"
+    return f"{round(value, decimals):.{max(decimals, 0)}f}"

@@ -1,0 +1,186 @@
+"""The reasons a verdict can have: limits, sentence, next step and source, in one table."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Literal
+
+__all__ = ["RULES", "Rule"]
+
+
+@dataclass(frozen=True)
+class Rule:
+    """One reason: its limits, what it says, what to do, and where the limits come from."""
+
+    strained: float
+    refit: float
+    worse: Literal["above", "below", "always", "note"]
+    sentence: str
+    next_step: str
+    source: str
+
+
+_REFIT = "Refit under the change, or state a smaller change."
+_MORE = "Ask for a smaller change, bring more draws, or refit."
+
+RULES: Mapping[str, Rule] = {
+    "support_gap": Rule(
+        math.nan,
+        math.nan,
+        "always",
+        "The new prior of {term} reaches {new}, the old one only {old}: no draw can lie there.",
+        "Refit with the new prior, or restrict it to the old support with Flat or a callable.",
+        "exact: weights of draws that cannot occur are never seen",
+    ),
+    "prior_widened": Rule(
+        0.5,
+        1.0,
+        "above",
+        "Widening the prior of {term} gives weights whose tail shape is {figure} by algebra "
+        "(normal posterior); from 0.5 on their variance is infinite.",
+        "Widen the prior less, or refit: from the broader prior the narrower one is reachable.",
+        "derived; the limit 1/2 is exact for normal posteriors",
+    ),
+    "likelihood_loosened": Rule(
+        0.5,
+        1.0,
+        "above",
+        "Taking the likelihood to the power {power} gives weights whose tail shape is {figure} "
+        "where the data dominate; from 0.5 on their variance is infinite.",
+        "Keep the power above one half, or refit with the weaker likelihood.",
+        "derived; the limit 1/2 is exact for normal posteriors",
+    ),
+    "weight_shape": Rule(
+        0.7,
+        1.0,
+        "above",
+        "The tail shape of the weights is {figure}, above {limit}: {meaning}.",
+        _MORE,
+        "Vehtari, Simpson, Gelman, Yao, Gabry (2024), JMLR 25",
+    ),
+    "quantity_shape": Rule(
+        0.7,
+        1.0,
+        "above",
+        "The tail shape of this quantity's contributions is {figure}, above {limit}: "
+        "its Monte Carlo error cannot be relied on.",
+        "Ask for a less tail-bound quantity (a median, a probability), a smaller change, or refit.",
+        "limits as for the weights (Vehtari et al. 2024); ours for quantities",
+    ),
+    "few_effective": Rule(
+        100.0,
+        25.0,
+        "below",
+        "The effective size of the weights is {figure}, below {limit}.",
+        _MORE,
+        "ours",
+    ),
+    "few_effective_entropy": Rule(
+        50.0,
+        20.0,
+        "below",
+        "The entropy form of the effective size is {figure}, below {limit}.",
+        _MORE,
+        "ours",
+    ),
+    "few_carry": Rule(
+        0.1,
+        0.3,
+        "above",
+        "One draw carries a share of {figure} of all weight, above {limit}.",
+        "Look at that draw; ask for a smaller change, bring more draws, or refit.",
+        "ours",
+    ),
+    "chains_disagree": Rule(
+        1e-3,
+        1e-6,
+        "below",
+        "The chains disagree about this quantity once reweighted (p = {figure}, below {limit}).",
+        "Look at the answer chain by chain; run the base longer, or refit.",
+        "chi-square test of the chain means; limits ours",
+    ),
+    "chain_share": Rule(
+        1e-3,
+        1e-6,
+        "below",
+        "The chains hold unequal shares of the weight (p = {figure}, below {limit}).",
+        "Look at the answer chain by chain; run the base longer, or refit.",
+        "chi-square test of the chain means; limits ours",
+    ),
+    "event_draws": Rule(
+        10.0,
+        3.0,
+        "below",
+        "Only {figure} effective draws lie {side} the event, below {limit}.",
+        "Choose a less extreme event, bring more draws, or refit.",
+        "ours",
+    ),
+    "quantile_reach": Rule(
+        math.nan,
+        math.nan,
+        "always",
+        "This quantile's probability is within its own Monte Carlo error of 0 or 1.",
+        "Ask for a less extreme quantile, or bring more draws.",
+        "ours",
+    ),
+    "saturated_divergence": Rule(
+        0.6,
+        0.75,
+        "above",
+        "The divergence of target from base measures {figure} of the largest value that this "
+        "number of draws can show, above {limit}: it is not measured but capped.",
+        _REFIT,
+        "about exp(divergence) draws are needed (Chatterjee & Diaconis 2018); limits ours",
+    ),
+    "autocorrelated_tail": Rule(
+        10.0,
+        3.0,
+        "below",
+        "The largest weights come from {figure} separate excursions of the chains, below {limit}.",
+        "Run the base longer, or refit: neighbouring draws repeat the same information.",
+        "ours",
+    ),
+    "edge_pressure": Rule(
+        math.nan,
+        math.nan,
+        "note",
+        "The base density of {term} at the moved limit {edge} is {figure} per base sd: "
+        "the answer moves that much faster the more mass stands there.",
+        "A figure near 0 means that little is expected beyond the limit, if no other mode is.",
+        "derivative of an expectation in its limit; estimated from the draws near the edge",
+    ),
+    "draws_lost": Rule(
+        math.nan,
+        math.nan,
+        "note",
+        "A share of {figure} of the draws lies outside the target's support and has no weight.",
+        "Nothing to do if that is what the change means.",
+        "counted",
+    ),
+    "support_unknown": Rule(
+        math.nan,
+        math.nan,
+        "note",
+        "Whether the target of {term} reaches beyond the base's support cannot be seen.",
+        "State both terms as distributions to have their supports compared.",
+        "exact",
+    ),
+    "no_change": Rule(
+        math.nan,
+        math.nan,
+        "note",
+        "No change: target and base are the same.",
+        "If a change was meant, look whether it was wired to the right term.",
+        "exact",
+    ),
+    "base_unverified": Rule(
+        math.nan,
+        math.nan,
+        "note",
+        "That the stated terms are the ones the draws came from has not been tested.",
+        "Compare a known posterior summary of the fit with the base answer.",
+        "exact",
+    ),
+}

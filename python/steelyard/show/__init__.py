@@ -1,0 +1,1 @@
+"""Plots, in a style of our own."""

@@ -1,0 +1,240 @@
+"""What may be said of an answer: three levels, and the reasons for them in one table."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
+from html import escape
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from steelyard.digits import short
+from steelyard.errors import TruthValueError
+from steelyard.levels import LEVELS, Level, needed_draws, rank_of, shape_limit
+from steelyard.rules import RULES
+
+__all__ = ["Finding", "Level", "Reason", "Verdict", "judge", "needed_draws", "shape_limit"]
+
+
+@dataclass(frozen=True)
+class Reason:
+    """
+    One reason behind a verdict.
+
+    Attributes
+    ----------
+    code : str
+        Short name, as in the table of rules.
+    figure : float
+        The figure that was judged.
+    limit : float
+        The limit that it was held against; NaN where there is none.
+    level : Level
+        The level that this reason alone would give; a note has ``"sound"``.
+    sentence : str
+        The reason in words.
+    next_step : str
+        What to do about it.
+    """
+
+    code: str
+    figure: float
+    limit: float
+    level: Level
+    sentence: str
+    next_step: str
+
+    def __str__(self) -> str:
+        return f"{self.sentence} {self.next_step}"
+
+
+@dataclass(frozen=True, eq=False)
+class Finding:
+    """A rule held against figures, one per element of a quantity (or one for all)."""
+
+    code: str
+    figure: npt.NDArray[np.float64]
+    strained: float
+    refit: float
+    words: Mapping[str, str] = field(default_factory=dict)
+    # True where the rule speaks at all; a figure inside its limits is silent.
+    spoken: npt.NDArray[np.bool_] | None = None
+
+    @property
+    def rank(self) -> npt.NDArray[np.int8]:
+        worse = RULES[self.code].worse
+        rank = np.full(self.figure.shape, 2, dtype=np.int8)
+        if worse == "always":
+            rank[...] = 0
+        elif worse in ("above", "below"):
+            sign = 1.0 if worse == "above" else -1.0
+            strained, refit = sign * self.strained, sign * self.refit
+            figure = sign * self.figure
+            # The upper limits of shapes are closed: a shape of exactly 1 has no finite mean.
+            rank[(figure > strained) | np.isnan(figure)] = 1
+            beyond = figure >= refit if worse == "above" else figure > refit
+            rank[beyond | np.isnan(figure)] = 0
+        if self.spoken is not None:
+            rank[~self.spoken] = 2
+        return rank
+
+    def at(self, index: Any, shape: tuple[int, ...]) -> Finding:
+        def cut(values: npt.NDArray[Any]) -> npt.NDArray[Any]:
+            return np.asarray(np.broadcast_to(values, shape)[index])
+
+        return Finding(
+            self.code,
+            cut(self.figure),
+            self.strained,
+            self.refit,
+            self.words,
+            None if self.spoken is None else cut(self.spoken),
+        )
+
+    def reason(self, figure: float, rank: int) -> Reason:
+        rule = RULES[self.code]
+        limit = self.refit if rank == 0 else self.strained
+        words = {"figure": short(figure), "limit": short(limit), **self.words}
+        if "{meaning}" in rule.sentence:
+            words["meaning"] = (
+                "their mean is not finite"
+                if figure >= 1
+                else f"such weights ask for about {short(needed_draws(figure))} draws"
+            )
+        return Reason(
+            self.code,
+            figure,
+            limit if rule.worse in ("above", "below") else math.nan,
+            Level(LEVELS[rank]),
+            rule.sentence.format(**words),
+            rule.next_step,
+        )
+
+
+def judge(
+    code: str,
+    figure: npt.ArrayLike = math.nan,
+    *,
+    strained: float | None = None,
+    refit: float | None = None,
+    spoken: npt.NDArray[np.bool_] | None = None,
+    **words: str,
+) -> Finding:
+    """Hold figures against the rule named `code`, with its own limits unless others are given."""
+    rule = RULES[code]
+    return Finding(
+        code,
+        np.asarray(figure, dtype=np.float64),
+        rule.strained if strained is None else strained,
+        rule.refit if refit is None else refit,
+        words,
+        spoken,
+    )
+
+
+class Verdict:
+    """
+    Whether an answer can be used, and why.
+
+    Attributes
+    ----------
+    level : Level or numpy.ndarray of Level
+        ``"refit" < "strained" < "sound"``; an array for a quantity that is one.
+    is_sound : bool or numpy.ndarray of bool
+        Whether the level is ``"sound"``.
+    reasons : tuple of Reason
+        The reasons, worst first; notes (which leave the level alone) last. For an array, the
+        worst case of each reason; index the verdict for the reasons of one element.
+
+    Examples
+    --------
+    >>> import numpy as np, steelyard as sy
+    >>> rng = np.random.default_rng(1)
+    >>> answer = sy.weigh(0.1 * rng.normal(size=1000))
+    >>> answer.verdict.is_sound
+    True
+    """
+
+    __slots__ = ("_findings", "_shape")
+
+    def __init__(self, findings: Iterable[Finding], shape: tuple[int, ...] = ()) -> None:
+        self._findings = tuple(findings)
+        self._shape = shape
+
+    @property
+    def findings(self) -> tuple[Finding, ...]:
+        """All rules that were held against figures, including the silent ones."""
+        return self._findings
+
+    @property
+    def level(self) -> Any:
+        """The level, or an array of levels."""
+        rank = np.full(self._shape, 2, dtype=np.int8)
+        for finding in self._findings:
+            rank = np.minimum(rank, finding.rank)
+        if not self._shape:
+            return Level(LEVELS[int(rank)])
+        levels = np.array([Level(name) for name in LEVELS], dtype=object)
+        return levels[rank]
+
+    @property
+    def is_sound(self) -> Any:
+        """Whether the level is ``"sound"``; an array of bool for an array of levels."""
+        return self.level == "sound"
+
+    @property
+    def reasons(self) -> tuple[Reason, ...]:
+        """The reasons, worst first, notes last."""
+        found = []
+        for finding in self._findings:
+            rank = finding.rank
+            is_note = RULES[finding.code].worse == "note"
+            if rank.size == 0 or (not is_note and rank.min() == 2):
+                continue
+            worst = int(np.argmin(rank))
+            found.append(finding.reason(float(finding.figure.flat[worst]), int(rank.flat[worst])))
+        return tuple(sorted(found, key=lambda reason: rank_of(str(reason.level))))
+
+    def __getitem__(self, index: Any) -> Verdict:
+        if not self._shape:
+            raise TypeError("this verdict is a single one and cannot be indexed")
+        shape = np.empty(self._shape, dtype=np.bool_)[index].shape
+        return Verdict((f.at(index, self._shape) for f in self._findings), shape)
+
+    def __bool__(self) -> bool:
+        raise TruthValueError(
+            "verdict",
+            "a question about it",
+            "bool(verdict)",
+            "Write verdict.is_sound, or compare verdict.level with 'sound', 'strained' or 'refit'.",
+        )
+
+    def __str__(self) -> str:
+        level = self.level
+        head = str(level) if isinstance(level, Level) else _counted(level)
+        lines = [head, *(f"  {r.level}: {r}" for r in self.reasons if r.level < "sound")]
+        lines += [f"  note: {r}" for r in self.reasons if r.level == "sound"]
+        return "\n".join(lines)
+
+    def __repr__(self) -> str:
+        codes = ", ".join(r.code for r in self.reasons)
+        level = self.level
+        head = str(level) if isinstance(level, Level) else _counted(level)
+        return f"<Verdict {head}{': ' + codes if codes else ''}>"
+
+    def _repr_html_(self) -> str:
+        items = "".join(
+            f"<li>{'note' if r.level == 'sound' else r.level}: {escape(str(r))}</li>"
+            for r in self.reasons
+        )
+        level = self.level
+        head = str(level) if isinstance(level, Level) else _counted(level)
+        return f"<p><b>{escape(head)}</b></p><ul>{items}</ul>"
+
+
+def _counted(levels: npt.NDArray[Any]) -> str:
+    counts = [(name, int(np.sum(levels == name))) for name in reversed(LEVELS)]
+    return ", ".join(f"{count} {name}" for name, count in counts if count)

@@ -1,0 +1,1 @@
+"""Weights, preflight, and what the verdict rests on."""
