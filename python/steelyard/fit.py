@@ -125,7 +125,7 @@ class Fit:
         >>> import numpy as np, steelyard as sy
         >>> rng = np.random.default_rng(1)
         >>> fit = sy.Fit({"mu": rng.normal(size=(4, 500))}, prior={"mu": sy.Normal(0, 2)})
-        >>> print(fit.reweigh(sy.swap_prior(mu=sy.StudentT(5, 0, 2))).verdict.level)
+        >>> print(fit.reweigh(sy.swap_prior(mu=sy.Normal(0.5, 1))).verdict.level)
         sound
         """
         return reweigh(self._record, change, smooth=smooth)

@@ -39,9 +39,9 @@ RULES: Mapping[str, Rule] = {
         1.0,
         "above",
         "Widening the prior of {term} gives weights whose tail shape is {figure} by algebra "
-        "(normal posterior); from 0.5 on their variance is infinite.",
+        "({posterior} posterior); from 0.5 on their variance is infinite.",
         "Widen the prior less, or refit: from the broader prior the narrower one is reachable.",
-        "derived; the limit 1/2 is exact for normal posteriors",
+        "derived; the limit 1/2 is exact for normal, gamma and beta posteriors",
     ),
     "likelihood_loosened": Rule(
         0.5,

@@ -21,7 +21,7 @@ MARKERS = {"sound": "o", "strained": "D", "refit": "x"}
 FILLS = {"sound": INK, "strained": "white", "refit": INK}
 LINES: dict[str, Any] = {"sound": "-", "strained": (0, (2, 2))}
 TITLE = "Does quay 4 lose more than 0.12 mm a year?"
-SUBTITLE = "Invented readings at nine invented quays; the same 4,000 draws in every row"
+SUBTITLE = "Invented readings at nine invented quays; the same draws in every row"
 FOOT = (
     "Bars: 95 % Monte Carlo intervals. Refit: the draws cannot answer, so no interval is drawn; "
     "do not quote the number.\n"

@@ -99,7 +99,7 @@ class _Model:
     def log_density_of_log_scales(self, log_scales: Array, squares: Array) -> Array:
         """Conditional log densities of log sd_a, log sd_b, log tau, up to constants."""
         scales = np.exp(log_scales)
-        density = log_scales * (1 - self.rows_per_scale) - 0.5 * squares / scales**2
+        density: Array = log_scales * (1 - self.rows_per_scale) - 0.5 * squares / scales**2
         shape, rate = NOISE_PRIOR
         density[:, :2] += (shape - 1) * log_scales[:, :2] - rate * scales[:, :2]
         density[:, 2] -= 0.5 * (scales[:, 2] / SPREAD_PRIOR_SCALE) ** 2

@@ -36,7 +36,7 @@ class HalfCauchy(Distribution):
     --------
     >>> import steelyard as sy
     >>> float(sy.HalfCauchy(0.05).log_density(0.05).round(6))
-    1.851003
+    1.851002
     """
 
     scale: Hyperparameter

@@ -57,7 +57,7 @@ class Columns:
 
     def restore(self, columns: Array) -> Array:
         """`(draws, columns)` in the shape of the input."""
-        shaped = columns.reshape(*self.drawn_shape, *self.kept_shape)
+        shaped = columns.reshape((*self.drawn_shape, *self.kept_shape))
         return np.moveaxis(shaped, range(len(self.axes)), self.axes)
 
 

@@ -2,8 +2,7 @@
 
 from __future__ import annotations
 
-import math
-from collections.abc import Iterator, Mapping
+from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
@@ -12,10 +11,11 @@ from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.changes.merging import PriorTarget
 from steelyard.changes.target import Target
-from steelyard.densities import Distribution, Normal
+from steelyard.densities import Beta, Distribution, Gamma, Normal
 from steelyard.verdicts import Finding, judge
+from steelyard.weighing.supports import support_findings
 
-__all__ = ["preflight", "support_findings"]
+__all__ = ["preflight"]
 
 # Above this many parameters the covariance of the draws is too costly to be worth it.
 _MOST_PARAMETERS = 500
@@ -24,80 +24,10 @@ _MOST_PARAMETERS = 500
 def preflight(base: Base, target: Target) -> list[Finding]:
     """Findings about supports, widened normal priors and weakened likelihoods."""
     findings = list(support_findings(base, target))
-    findings += _prior_widened(base, target.prior)
+    findings += _normal_widened(base, target.prior)
+    findings += _gamma_or_beta_widened(base, target.prior)
     findings += _likelihood_loosened(base, target)
     return findings
-
-
-def support_findings(base: Base, target: Target) -> Iterator[Finding]:
-    """Support gaps of swapped priors, and pressure of the base at a limit that moved."""
-    for prior in target.prior.values():
-        if not prior.is_swapped:
-            continue
-        old_limits, new_limits = _support(prior.base, base), _support(prior.density, base)
-        if old_limits is not None and _covers_the_line(old_limits):
-            continue
-        if old_limits is None or new_limits is None:
-            yield judge("support_unknown", term=prior.base.label)
-            continue
-        gaps = [
-            ("lower", old_limits[0], new_limits[0] < old_limits[0]),
-            ("upper", old_limits[1], new_limits[1] > old_limits[1]),
-        ]
-        if not any(bool(np.any(gap)) for _, _, gap in gaps):
-            continue
-        old_text, new_text = _interval(*old_limits), _interval(*new_limits)
-        yield judge("support_gap", term=prior.base.label, old=old_text, new=new_text)
-        for side, edge, gap in gaps:
-            if np.any(gap):
-                yield from _edge_pressure(prior, base, edge, side)
-
-
-def _support(term: Any, base: Base) -> tuple[Array, Array] | None:
-    """Limits of a term's density; None where they are not known."""
-    density = term.density
-    if isinstance(density, Distribution):
-        value = term.value(base.draws)
-        return density.support(value.shape, look_up=base.draws.look_up)
-    if hasattr(density, "support") and callable(density.support):
-        low, high = density.support()
-        return np.asarray(low, dtype=np.float64), np.asarray(high, dtype=np.float64)
-    if hasattr(density, "dim"):  # frozen multivariate normal and Student-t: the whole space
-        name = type(density).__name__
-        if name.startswith(("multivariate_normal", "multivariate_t")):
-            return np.asarray(-math.inf), np.asarray(math.inf)
-    return None
-
-
-def _covers_the_line(limits: tuple[Array, Array]) -> bool:
-    return bool(np.all(limits[0] == -math.inf) and np.all(limits[1] == math.inf))
-
-
-def _interval(low: Array, high: Array) -> str:
-    def limit(values: Array) -> str:
-        spread = np.unique(values)
-        return f"{spread[0]:g}" if spread.size == 1 else f"{spread[0]:g}…{spread[-1]:g}"
-
-    return f"from {limit(low)} to {limit(high)}"
-
-
-def _edge_pressure(prior: PriorTarget, base: Base, edge: Array, side: str) -> Iterator[Finding]:
-    """Density of the base at a limit, in units of one over the base sd, from the draws near it."""
-    value = prior.base.value(base.draws)
-    limit = np.broadcast_to(edge, value.shape)
-    if not np.isfinite(limit).all():
-        return
-    distance = (value - limit if side == "lower" else limit - value).reshape(base.draws.size, -1)
-    sd = value.reshape(base.draws.size, -1).std(axis=0)
-    sd = np.where(sd > 0, sd, 1.0)
-    width = 0.2
-    density = ((distance / sd) < width).mean(axis=0) / width
-    yield judge(
-        "edge_pressure",
-        float(density.max()),
-        term=prior.base.label,
-        edge=f"{np.unique(limit)[0]:g}",
-    )
 
 
 def _tail_precision(density: Any, shape: tuple[int, ...]) -> Array | None:
@@ -112,7 +42,7 @@ def _tail_precision(density: Any, shape: tuple[int, ...]) -> Array | None:
     return None
 
 
-def _prior_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:
+def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:
     """
     Tail shape of the weights by algebra where normal priors are widened.
 
@@ -142,7 +72,45 @@ def _prior_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Findin
     covariance = np.atleast_2d(np.cov(stacked, rowvar=False, aweights=_base_weights(base)))
     root = np.linalg.cholesky(covariance + 1e-12 * np.trace(covariance) * np.eye(len(covariance)))
     shape_by_algebra = np.linalg.eigvalsh(root.T @ (np.concatenate(loosened)[:, None] * root))[-1]
-    return [judge("prior_widened", float(shape_by_algebra), term=", ".join(labels))]
+    return [
+        judge("prior_widened", float(shape_by_algebra), term=", ".join(labels), posterior="normal")
+    ]
+
+
+def _gamma_or_beta_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:
+    """
+    The same for gamma and beta priors, whose posterior is matched by its mean and variance.
+
+    A gamma posterior (A, B) whose prior loses a in shape and b in rate has weights of tail shape
+    ``max(a/A, b/B)``; a beta posterior (A, B) whose prior loses a and b the same. Exact where the
+    prior is conjugate, and then derived in one line from the density of the weights.
+    """
+    findings = []
+    for label, prior in priors.items():
+        old, new = prior.base.density, prior.density.density
+        if type(old) is not type(new) or not isinstance(old, Gamma | Beta):
+            continue
+        if old.names or new.names or prior.factor != 1:
+            continue
+        value, weights = prior.base.value(base.draws), _base_weights(base)
+        mean = np.average(value, axis=0, weights=weights)
+        variance = np.average((value - mean) ** 2, axis=0, weights=weights)
+        if not np.all(variance > 0):
+            continue
+        if isinstance(old, Gamma):
+            first, second, name = mean**2 / variance, mean / variance, "gamma"
+        else:
+            size = mean * (1 - mean) / variance - 1
+            first, second, name = size * mean, size * (1 - mean), "beta"
+        lost = [
+            np.asarray(getattr(old, field)) - np.asarray(getattr(new, field))
+            for field in old.domains
+        ]
+        shape = np.maximum(lost[0] / first, lost[1] / second)
+        if np.any(shape > 0):
+            figure = float(np.max(shape))
+            findings.append(judge("prior_widened", figure, term=label, posterior=name))
+    return findings
 
 
 def _base_weights(base: Base) -> Array | None:

@@ -79,7 +79,7 @@ def quantile(x: npt.ArrayLike, log_weights: npt.ArrayLike, probs: npt.ArrayLike)
     for part, block in columns.blocks():
         wide = np.repeat(p.reshape(-1, 1), block.shape[1], axis=1)
         out[:, part] = _core.quantile(block, w, wide)
-    shaped = out.reshape(*p.shape, *columns.kept_shape)
+    shaped = out.reshape((*p.shape, *columns.kept_shape))
     return shaped if shaped.ndim else float(shaped)
 
 
@@ -90,7 +90,7 @@ def _linear(log_weights: npt.ArrayLike, count: int, shape: tuple[int, ...]) -> A
             "log_weights", f"shape ({count},) for draws of shape {shape}", str(logs.shape), "Match."
         )
     refuse_bad_log_weights(logs[:, None], "log_weights")
-    return np.exp(logs - logs.max())
+    return np.asarray(np.exp(logs - logs.max()))
 
 
 def influence(loglik: npt.ArrayLike, quantities: npt.ArrayLike) -> Array:
@@ -148,4 +148,4 @@ def influence(loglik: npt.ArrayLike, quantities: npt.ArrayLike) -> Array:
         out[part] = _core.influence(block, values)
     with np.errstate(invalid="ignore", divide="ignore"):
         scaled = out / np.where(sd > 0, sd, np.nan)
-    return np.asarray(scaled.reshape(*columns.kept_shape, *f.kept_shape))
+    return np.asarray(scaled.reshape((*columns.kept_shape, *f.kept_shape)))
