@@ -225,7 +225,7 @@ class Answer:
         Examples
         --------
         >>> import numpy as np, steelyard as sy
-        >>> sy.weigh(np.zeros(101)).quantile(np.arange(101.0), 0.5).value
+        >>> round(sy.weigh(np.zeros(101)).quantile(np.arange(101.0), 0.5).value, 9)
         50.0
         """
         p = probabilities(probs)
