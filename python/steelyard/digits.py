@@ -12,7 +12,9 @@ def short(value: float) -> str:
     if not math.isfinite(value):
         return {math.inf: "inf", -math.inf: "-inf"}.get(value, "nan")
     if value == int(value) and abs(value) < 1e6:
-        return str(int(value))
+        return f"{int(value):,}" if abs(value) >= 1e4 else str(int(value))
+    if 1000 <= abs(value) < 1e9:
+        return f"{float(f'{value:.3g}'):,.0f}"
     return f"{value:.3g}"
 
 

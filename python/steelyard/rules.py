@@ -20,6 +20,8 @@ class Rule:
     sentence: str
     next_step: str
     source: str
+    # What to do from the refit limit on, where that differs.
+    next_step_refit: str = ""
 
 
 _REFIT = "Refit under the change, or state a smaller change."
@@ -59,6 +61,7 @@ RULES: Mapping[str, Rule] = {
         "The tail shape of the weights is {figure}, above {limit}: {meaning}.",
         _MORE,
         "Vehtari, Simpson, Gelman, Yao, Gabry (2024), JMLR 25",
+        _REFIT,
     ),
     "quantity_shape": Rule(
         0.7,
@@ -68,6 +71,7 @@ RULES: Mapping[str, Rule] = {
         "its Monte Carlo error cannot be relied on.",
         "Ask for a less tail-bound quantity (a median, a probability), a smaller change, or refit.",
         "limits as for the weights (Vehtari et al. 2024); ours for quantities",
+        "Ask for a less tail-bound quantity (a median, a probability), or refit.",
     ),
     "few_effective": Rule(
         100.0,

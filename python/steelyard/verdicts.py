@@ -110,7 +110,7 @@ class Finding:
             limit if rule.worse in ("above", "below") else math.nan,
             Level(LEVELS[rank]),
             rule.sentence.format(**words),
-            rule.next_step,
+            rule.next_step_refit if rank == 0 and rule.next_step_refit else rule.next_step,
         )
 
 

@@ -329,8 +329,8 @@ class Answer:
         Parameters
         ----------
         quantity : str, array_like, callable or mapping, optional
-            What to compare; all parameters by default. A boolean array or callable gives the
-            shift of a probability.
+            What to compare; all parameters by default. An event (also as text) gives the shift
+            of its probability, NaN where no draw lies inside or outside of it.
         of : {"mean", "sd"} or tuple
             What of it: ``"mean"``, ``"sd"`` or ``("quantile", p)``.
 
@@ -359,7 +359,7 @@ class Answer:
         >>> answer.shift("x").error < answer.mean("x").error
         True
         """
-        return self._each(quantity, lambda q: shift_of(self._scale, q, of))
+        return self._each(quantity, lambda q: shift_of(self._scale, q, of), events=True)
 
     @property
     def log_evidence_ratio(self) -> Estimate:
@@ -449,11 +449,13 @@ class Answer:
 
         return AnswerPlots(self)
 
-    def _each(self, quantity: Any, work: Callable[[Quantity], Estimate]) -> Any:
-        several = labelled(quantity, self._base)
+    def _each(
+        self, quantity: Any, work: Callable[[Quantity], Estimate], *, events: bool = False
+    ) -> Any:
+        several = labelled(quantity, self._base, events=events)
         if several is not None:
             return {label: work(q) for label, q in several.items()}
-        return work(read_quantity(quantity, self._base))
+        return work(read_quantity(quantity, self._base, events=events))
 
     def _figures(self) -> str:
         count = self._base.draws.size

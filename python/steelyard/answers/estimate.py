@@ -31,7 +31,8 @@ class Decision:
     above : bool or numpy.ndarray
         Whether the probability is above it.
     right : float or numpy.ndarray
-        Monte Carlo probability that this side is the right one.
+        Monte Carlo probability that this side is the right one; NaN where the estimate is not
+        sound, since the error that it rests on is not.
     """
 
     level: float
@@ -42,7 +43,10 @@ class Decision:
         if np.ndim(self.above):
             return f"{int(np.sum(self.above))} of {np.size(self.above)} above {self.level:g}"
         side = "above" if self.above else "not above"
-        return f"{side} {self.level:g}, right with Monte Carlo probability {short(self.right)}"
+        if math.isnan(self.right):
+            return f"{side} {self.level:g}, how surely is not known"
+        right = "over 0.999" if self.right > 0.999 else short(self.right)
+        return f"{side} {self.level:g}, right with Monte Carlo probability {right}"
 
 
 @dataclass(frozen=True, eq=False)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 import numpy as np
 import numpy.typing as npt
@@ -13,9 +14,9 @@ from steelyard.answers.estimating import Scale, column_blocks, finish, joined, s
 from steelyard.answers.quantities import Quantity
 from steelyard.base.draws import Array
 from steelyard.errors import ArgumentError
-from steelyard.verdicts import judge
+from steelyard.verdicts import Finding, judge
 
-__all__ = ["probability_of"]
+__all__ = ["draws_within", "event_findings", "probability_of"]
 
 Mask = npt.NDArray[np.bool_]
 
@@ -51,38 +52,37 @@ def probability_of(
     for part, f in column_blocks(columns):
         value[part] = _core.weighted_mean(f, scale.weights.linear)
         parts.append(study(scale, f - value[part]))
-        inside[part] = _draws_within(scale, f)
-        outside[part] = _draws_within(scale, 1 - f)
+        inside[part] = draws_within(scale, f)
+        outside[part] = draws_within(scale, 1 - f)
     series = joined(parts)
     upper, lower = _bounds(scale, inside == 0, outside == 0, largest_ratio)
     settled = (inside > 0) & (outside > 0)
-    decision = _decision(event, value, series.error, settled, level)
     spread = value * (1 - value)
     error = np.where(settled, series.error, math.nan)
     shown = np.where(settled, value, math.nan)
     found = type(series)(error, series.shape, series.p_value)
-    extra = (
-        judge("event_draws", inside, side="inside"),
-        judge("event_draws", outside, side="outside"),
+    extra = event_findings(inside, outside)
+    estimate = finish(
+        scale, event, shown, found, spread, extra=extra, upper_bound=upper, lower_bound=lower
     )
-    return finish(
-        scale,
-        event,
-        shown,
-        found,
-        spread,
-        extra=extra,
-        upper_bound=upper,
-        lower_bound=lower,
-        decision=decision,
-    )
+    if level is None:
+        return estimate
+    return replace(estimate, decision=_decision(estimate, value, series.error, float(level)))
 
 
-def _draws_within(scale: Scale, f: Array) -> Array:
+def draws_within(scale: Scale, f: Array) -> Array:
     """Effective draws inside an event: ``(Σ w)²/Σ w²`` over its draws."""
     w = scale.weights.linear[:, None]
     total, squares = (w * f).sum(axis=0), (w**2 * f).sum(axis=0)
     return np.where(squares > 0, total**2 / np.where(squares > 0, squares, 1.0), 0.0)
+
+
+def event_findings(inside: Array, outside: Array) -> tuple[Finding, Finding]:
+    """Effective draws inside and outside of an event, judged."""
+    return (
+        judge("event_draws", inside, side="inside"),
+        judge("event_draws", outside, side="outside"),
+    )
 
 
 def _bounds(
@@ -100,16 +100,14 @@ def _bounds(
     return upper, lower
 
 
-def _decision(
-    event: Quantity, value: Array, error: Array, settled: Mask, level: float | None
-) -> Decision | None:
-    """``Φ(|P̂ − γ|/error)``: how surely the side of the level is the right one."""
-    if level is None:
-        return None
+def _decision(estimate: Estimate, value: Array, error: Array, level: float) -> Decision:
+    """``Φ(|P̂ − γ|/error)``: how surely the side of the level is the right one, where sound."""
     with np.errstate(invalid="ignore", divide="ignore"):
-        distance = np.abs(value - level) / error
-    right = np.where(settled, _core.normal_cdf(np.nan_to_num(distance, nan=0.0)), math.nan)
+        distance = np.nan_to_num(np.abs(value - level) / error, nan=0.0)
+    shape = np.shape(estimate.value)
+    sound = np.broadcast_to(estimate.verdict.is_sound, shape).reshape(-1)
+    right = np.where(sound, _core.normal_cdf(distance), math.nan)
     above = value > level
-    if not event.shape:
-        return Decision(float(level), bool(above[0]), float(right[0]))
-    return Decision(float(level), above.reshape(event.shape), right.reshape(event.shape))
+    if not shape:
+        return Decision(level, bool(above[0]), float(right[0]))
+    return Decision(level, above.reshape(shape), right.reshape(shape))

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from types import MappingProxyType
 from typing import Any
 
@@ -34,12 +34,15 @@ class Quantity:
         Names of the trailing dimensions; empty texts where they have none.
     labels : mapping of str to numpy.ndarray
         Labels along named dimensions.
+    is_event : bool
+        Whether the values are the 0 and 1 of an event.
     """
 
     label: str
     values: Array
     dims: tuple[str, ...] = ()
     labels: Mapping[str, npt.NDArray[Any]] = field(default_factory=dict)
+    is_event: bool = False
 
     @property
     def shape(self) -> tuple[int, ...]:
@@ -52,42 +55,61 @@ class Quantity:
         return self.values.reshape(len(self.values), -1)
 
 
-def labelled(quantity: Any, base: Base) -> dict[str, Quantity] | None:
+def labelled(quantity: Any, base: Base, *, events: bool = False) -> dict[str, Quantity] | None:
     """Several quantities by label, for a mapping or for None (all parameters); else None."""
     if quantity is None:
         return {name: read_quantity(name, base) for name in base.parameters}
     if isinstance(quantity, Mapping):
         if not quantity:
             raise QuantityError("quantity", "at least one", "an empty mapping", "Name one.")
-        return {str(k): _renamed(read_quantity(v, base), str(k)) for k, v in quantity.items()}
+        return {
+            str(label): replace(read_quantity(one, base, events=events), label=str(label))
+            for label, one in quantity.items()
+        }
     return None
 
 
-def _renamed(quantity: Quantity, label: str) -> Quantity:
-    return Quantity(label, quantity.values, quantity.dims, quantity.labels)
-
-
-def read_quantity(quantity: Any, base: Base, argument: str = "quantity") -> Quantity:
+def read_quantity(
+    quantity: Any, base: Base, argument: str = "quantity", *, events: bool = False
+) -> Quantity:
     """Draws of one quantity: a name, an array shaped like the draws, or a callable."""
     draws = base.draws
     if isinstance(quantity, str):
+        if is_expression(quantity) and quantity not in draws:
+            return _event_as_quantity(quantity, base, argument, events)
         return _named(quantity, base, argument)
+    label = "quantity"
     if callable(quantity) and not hasattr(quantity, "shape"):
-        label = getattr(quantity, "__name__", "quantity")
-        label = "quantity" if label == "<lambda>" else label
+        label = _name_of(quantity, label)
         quantity = quantity(MappingProxyType(dict(draws.values_by_name)))
-    elif hasattr(quantity, "shape") or isinstance(quantity, list | tuple):
-        label = "quantity"
-    else:
+    elif not (hasattr(quantity, "shape") or isinstance(quantity, list | tuple)):
         raise ArgumentTypeError(
             argument,
             "a parameter's name, an array shaped like the draws, a callable, or a mapping of those",
             type(quantity).__name__,
             f"Known parameters: {', '.join(draws) or 'none'}.",
         )
+    if np.asarray(quantity).dtype == np.bool_:
+        return replace(_event_as_quantity(quantity, base, argument, events), label=label)
     values = np.require(stacked(quantity, draws, argument), np.float64, ["C", "A"])
     _refuse_bad_values(values, base, argument)
     return Quantity(label, values, ("",) * (values.ndim - 1))
+
+
+def _event_as_quantity(event: Any, base: Base, argument: str, events: bool) -> Quantity:
+    if not events:
+        raise QuantityError(
+            argument,
+            "numbers",
+            f"an event ({event!r})" if isinstance(event, str) else "True and False",
+            "Use prob(event), which counts the draws on both sides; shift() takes events too.",
+        )
+    return event_mask(event, base)
+
+
+def _name_of(function: Any, otherwise: str) -> str:
+    name = str(getattr(function, "__name__", otherwise))
+    return otherwise if name == "<lambda>" else name
 
 
 def _named(text: str, base: Base, argument: str) -> Quantity:
@@ -133,8 +155,7 @@ def event_mask(event: Any, base: Base) -> Quantity:
             )
         label, event = event, evaluate_event(event, draws)
     elif callable(event) and not hasattr(event, "shape"):
-        name = getattr(event, "__name__", "event")
-        label = "event" if name == "<lambda>" else name
+        label = _name_of(event, label)
         event = event(MappingProxyType(dict(draws.values_by_name)))
     values = np.asarray(event)
     if values.dtype != np.bool_:
@@ -145,4 +166,4 @@ def event_mask(event: Any, base: Base) -> Quantity:
             'Compare with something, as in lambda d: d["mu"] > 0.1.',
         )
     rows = np.require(stacked(event, draws, "event"), np.float64, ["C", "A"])
-    return Quantity(label, rows, ("",) * (rows.ndim - 1))
+    return Quantity(label, rows, ("",) * (rows.ndim - 1), is_event=True)

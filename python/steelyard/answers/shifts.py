@@ -18,6 +18,7 @@ from steelyard.answers.estimating import (
     moments,
     shift_series,
 )
+from steelyard.answers.probabilities import draws_within, event_findings
 from steelyard.answers.quantities import Quantity
 from steelyard.base.draws import Array
 from steelyard.changes import Target
@@ -29,13 +30,24 @@ __all__ = ["log_evidence_ratio_of", "shift_of"]
 def shift_of(scale: Scale, quantity: Quantity, of: Any) -> Estimate:
     """Target minus base of a mean, an sd, or a quantile, with the error of the pair."""
     work = _read_kind(of)
+    if quantity.is_event and of != "mean":
+        raise ArgumentError("of", "'mean' for an event", repr(of), "A probability is a mean.")
     columns = quantity.columns
     value, variance = np.empty(columns.shape[1]), np.empty(columns.shape[1])
     parts = []
     for part, f in column_blocks(columns):
         value[part], series, variance[part] = work(scale, f)
         parts.append(series)
-    return finish(scale, quantity, value, joined(parts), variance)
+    series = joined(parts)
+    if not quantity.is_event:
+        return finish(scale, quantity, value, series, variance)
+    inside, outside = draws_within(scale, columns), draws_within(scale, 1 - columns)
+    settled = (inside > 0) & (outside > 0)
+    series = Series(np.where(settled, series.error, math.nan), series.shape, series.p_value)
+    extra = event_findings(inside, outside)
+    return finish(
+        scale, quantity, np.where(settled, value, math.nan), series, variance, extra=extra
+    )
 
 
 def _read_kind(of: Any) -> Any:
