@@ -1,0 +1,51 @@
+# The one list of commands. CI calls these targets and nothing else; `make help` lists them.
+SHELL := /bin/bash
+.SHELLFLAGS := -eu -o pipefail -c
+PYTHON ?= python3
+VENV ?= .venv
+RUN := $(VENV)/bin/python
+
+.PHONY: help demo test test-python test-rust lint format develop
+
+help: ## what there is
+	@grep -hE '^[a-z-]+:.*##' $(MAKEFILE_LIST) | sed -E 's/:.*##/:/'
+
+$(VENV)/bin/pip:
+	$(PYTHON) -m venv $(VENV)
+	$(RUN) -m pip install --quiet --upgrade pip
+
+demo: $(VENV)/bin/pip ## install and run the main job on the embedded demo data
+	$(RUN) -m pip install --quiet ".[plot]"
+	$(RUN) -m steelyard
+
+test: test-rust test-python ## install and pass all tests
+
+test-python: $(VENV)/bin/pip
+	$(RUN) -m pip install --quiet --group test ".[all]"
+	$(RUN) -m pytest -q tests
+	$(RUN) -m pytest -q --pyargs steelyard --doctest-modules
+
+test-rust:
+	cargo test --quiet --no-default-features
+	cargo test --quiet
+
+lint: $(VENV)/bin/pip ## rustfmt, clippy, ruff, mypy, stubtest, numpydoc
+	$(RUN) -m pip install --quiet --group lint --group test ".[all]"
+	cargo fmt --all --check
+	cargo clippy --quiet --all-targets -- -D warnings
+	cargo clippy --quiet --all-targets --no-default-features -- -D warnings
+	$(RUN) -m ruff check .
+	$(RUN) -m ruff format --check .
+	$(RUN) -m mypy
+	$(RUN) -m mypy.stubtest steelyard._core
+	$(RUN) -m numpydoc.hooks.validate_docstrings $$(git ls-files 'python/steelyard/*.py')
+
+format: $(VENV)/bin/pip ## rewrite the sources in the house format
+	$(RUN) -m pip install --quiet --group lint
+	cargo fmt --all
+	$(RUN) -m ruff check --fix --quiet . || true
+	$(RUN) -m ruff format .
+
+develop: $(VENV)/bin/pip ## editable install for daily work
+	$(RUN) -m pip install --quiet "maturin>=1.9.4,<2" --group lint --group test
+	$(VENV)/bin/maturin develop --release --extras all

@@ -1,0 +1,40 @@
+//! Means.
+
+use numpy::{IntoPyArray, PyArray1, PyReadonlyArray1, PyReadonlyArray2};
+use pyo3::prelude::*;
+
+use super::arrays::{matrix, vector};
+use super::errors::detached;
+use crate::kernels::columns::{expect_shape, map_columns};
+use crate::kernels::mean;
+
+/// Mean square about the mean of every column of `z`, `(n, k)`: `(k,)`.
+#[pyfunction]
+pub fn mean_square<'py>(
+    py: Python<'py>,
+    z: PyReadonlyArray2<'py, f64>,
+) -> PyResult<Bound<'py, PyArray1<f64>>> {
+    let z = matrix("z", &z)?;
+    let squares = detached(py, |interrupt| {
+        map_columns(z, interrupt, |column, _| Ok(mean::mean_square(column)))
+    })?;
+    Ok(squares.into_pyarray(py))
+}
+
+/// `Σ w f` of every column of `f`, `(n, k)`, with weights `w`, `(n,)`: `(k,)`.
+#[pyfunction]
+pub fn weighted_mean<'py>(
+    py: Python<'py>,
+    f: PyReadonlyArray2<'py, f64>,
+    w: PyReadonlyArray1<'py, f64>,
+) -> PyResult<Bound<'py, PyArray1<f64>>> {
+    let f = matrix("f", &f)?;
+    let w = vector("w", &w)?;
+    expect_shape("w", &[f.nrows()], &[w.len()])?;
+    let means = detached(py, |interrupt| {
+        map_columns(f, interrupt, |column, _| {
+            Ok(mean::weighted_mean(column, &w))
+        })
+    })?;
+    Ok(means.into_pyarray(py))
+}

@@ -1,0 +1,49 @@
+//! The module `steelyard._core`: convert, detach from the interpreter, call a kernel, map errors.
+
+mod arrays;
+mod effective;
+mod errors;
+mod influence;
+mod interval;
+mod log_sum;
+mod long_run;
+mod mean;
+mod ordered;
+mod pareto;
+mod quantile;
+mod resample;
+mod signed_tail;
+mod smooth;
+mod special;
+
+use pyo3::prelude::*;
+
+#[pymodule]
+mod _core {
+    #[pymodule_export]
+    use super::effective::{effective_size, largest_share};
+    #[pymodule_export]
+    use super::influence::influence;
+    #[pymodule_export]
+    use super::interval::shortest_interval;
+    #[pymodule_export]
+    use super::log_sum::{log_sum_exp, normalise};
+    #[pymodule_export]
+    use super::long_run::long_run_variance;
+    #[pymodule_export]
+    use super::mean::{mean_square, weighted_mean};
+    #[pymodule_export]
+    use super::ordered::{set_threads, threads};
+    #[pymodule_export]
+    use super::pareto::pareto_fit;
+    #[pymodule_export]
+    use super::quantile::quantile;
+    #[pymodule_export]
+    use super::resample::resample;
+    #[pymodule_export]
+    use super::signed_tail::signed_tail_shape;
+    #[pymodule_export]
+    use super::smooth::{smooth, tail_shape};
+    #[pymodule_export]
+    use super::special::{chi_square_tail, ln_gamma, normal_cdf, normal_quantile};
+}

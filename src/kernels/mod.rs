@@ -1,0 +1,21 @@
+//! Kernels: plain numerical functions on slices and array views, which know no Python.
+//!
+//! `columns` applies a kernel for one column to every column of an array, `ordered` runs the tasks
+//! on threads without letting their number show in the result.
+
+pub mod columns;
+pub mod effective;
+pub mod error;
+pub mod influence;
+pub mod interval;
+pub mod log_sum;
+pub mod long_run;
+pub mod mean;
+pub mod ordered;
+pub mod pareto;
+pub mod quantile;
+pub mod resample;
+pub mod signed_tail;
+pub mod smooth;
+pub mod special;
+pub mod tail;

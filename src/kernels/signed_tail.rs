@@ -1,0 +1,37 @@
+//! The tail shape of influence values, which may be heavy on either side.
+
+use super::pareto::FEWEST;
+use super::tail::{fit_tail, tail_length};
+
+/// Tail shape of influence values `z`, shape `(n,)`, natural scale, any sign.
+///
+/// Each sign is a side of its own: its absolute values above 0, `S` of them, with a tail of
+/// `M = ⌈min(S/5, 3 √(S/e))⌉`, fitted as weights are in [`super::smooth::smooth`]. A side with
+/// fewer than 5 tail draws does not count; a constant tail has `−inf`. The result is the larger
+/// shape of the sides that count, `−inf` if none does. It does not change with the unit of `z`.
+/// NaN or an infinite entry gives NaN.
+pub fn signed_tail_shape(z: &[f64], relative_efficiency: f64) -> f64 {
+    if z.iter().any(|entry| !entry.is_finite()) {
+        return f64::NAN;
+    }
+    let upper = side_shape(z, 1.0, relative_efficiency);
+    let lower = side_shape(z, -1.0, relative_efficiency);
+    upper.max(lower)
+}
+
+fn side_shape(z: &[f64], sign: f64, relative_efficiency: f64) -> f64 {
+    let mut side: Vec<f64> = z
+        .iter()
+        .map(|entry| sign * entry)
+        .filter(|&entry| entry > 0.0)
+        .collect();
+    let length = tail_length(side.len(), relative_efficiency);
+    if length < FEWEST {
+        return f64::NEG_INFINITY;
+    }
+    let largest = side.iter().copied().fold(0.0, f64::max);
+    for entry in &mut side {
+        *entry /= largest;
+    }
+    fit_tail(&side, length, |value| value, |value, cutoff| value - cutoff).shape()
+}

@@ -1,0 +1,24 @@
+//! Every kernel against its plain twin: slow, obvious code that shares nothing with it.
+//!
+//! Property tests run on a fixed seed, so that a run says the same thing every time.
+
+#![allow(clippy::expect_used, clippy::panic, clippy::unwrap_used)]
+
+mod kernels {
+    mod columns;
+    mod effective;
+    mod error;
+    mod influence;
+    mod interval;
+    mod log_sum;
+    mod long_run;
+    mod mean;
+    mod ordered;
+    mod pareto;
+    mod quantile;
+    mod resample;
+    mod signed_tail;
+    mod smooth;
+    mod special;
+    mod support;
+}
