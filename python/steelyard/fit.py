@@ -42,6 +42,13 @@ class Fit:
         For stacked draws the chain of each, chains together; for a frame the name of a column.
     derived : iterable of str, or mapping, optional
         Names of draws that are not parameters, or ``{new name: callable}``.
+    predictive : mapping, optional
+        ``{name of predictive draws: likelihood term whose model made them}``: they are refused
+        where a change replaces that model without bringing their own ratio.
+    approximation : array_like or callable, optional
+        Log density of the distribution that the draws really came from, where that is an
+        approximation of the posterior (complete or up to a constant); the base is then weighted
+        by posterior over approximation, and these weights are smoothed and judged like any.
     ordered : bool, optional
         False for draws without time order (shuffled, nested sampling, independent): errors are
         then those of independent draws.
@@ -73,6 +80,8 @@ class Fit:
         names: Iterable[str] | None = None,
         chain: Any = None,
         derived: Iterable[str] | Mapping[str, Callable[..., Any]] = (),
+        predictive: Mapping[str, str] | None = None,
+        approximation: Any = None,
         ordered: bool = True,
     ) -> None:
         self._record: Base = read_base(
@@ -85,6 +94,8 @@ class Fit:
             chain=chain,
             derived=derived,
             ordered=ordered,
+            predictive=predictive,
+            approximation=approximation,
         )
 
     @property

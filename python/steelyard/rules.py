@@ -16,7 +16,8 @@ class Rule:
 
     strained: float
     refit: float
-    worse: Literal["above", "below", "always", "note"]
+    # "from" is "above" with the limits themselves included.
+    worse: Literal["above", "from", "below", "always", "note"]
     sentence: str
     next_step: str
     source: str
@@ -39,7 +40,7 @@ RULES: Mapping[str, Rule] = {
     "prior_widened": Rule(
         0.5,
         1.0,
-        "above",
+        "from",
         "Widening the prior of {term} gives weights whose tail shape is {figure} by algebra "
         "({posterior} posterior); from 0.5 on their variance is infinite.",
         "Widen the prior less, or refit: from the broader prior the narrower one is reachable.",
@@ -48,7 +49,7 @@ RULES: Mapping[str, Rule] = {
     "likelihood_loosened": Rule(
         0.5,
         1.0,
-        "above",
+        "from",
         "Taking the likelihood to the power {power} gives weights whose tail shape is {figure} "
         "where the data dominate; from 0.5 on their variance is infinite.",
         "Keep the power above one half, or refit with the weaker likelihood.",

@@ -12,8 +12,9 @@ from importlib.util import find_spec
 from pathlib import Path
 from typing import Any, Literal
 
+from steelyard.arrays import ReadOnly
 from steelyard.digits import rounded, short
-from steelyard.errors import ArgumentError, MissingExtraError, UnknownNameError
+from steelyard.errors import ArgumentError, MissingExtraError, ShapeError, UnknownNameError
 
 __all__ = ["Table"]
 
@@ -47,6 +48,13 @@ class Table:
     columns: Mapping[str, Sequence[Any]]
     errors: Mapping[str, str] = field(default_factory=dict)
     title: str = ""
+
+    def __post_init__(self) -> None:
+        columns = ReadOnly({name: tuple(column) for name, column in self.columns.items()})
+        lengths = {name: len(column) for name, column in columns.items()}
+        if len(set(lengths.values())) > 1:
+            raise ShapeError("columns", "columns of equal length", str(lengths), "Fill them up.")
+        object.__setattr__(self, "columns", columns)
 
     def __len__(self) -> int:
         return len(next(iter(self.columns.values()), ()))

@@ -11,6 +11,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from steelyard.arrays import frozen
 from steelyard.digits import short
 from steelyard.errors import TruthValueError
 from steelyard.levels import LEVELS, Level, needed_draws, rank_of, shape_limit
@@ -69,14 +70,10 @@ class Finding:
         rank = np.full(self.figure.shape, 2, dtype=np.int8)
         if worse == "always":
             rank[...] = 0
-        elif worse in ("above", "below"):
-            sign = 1.0 if worse == "above" else -1.0
-            strained, refit = sign * self.strained, sign * self.refit
-            figure = sign * self.figure
-            # The upper limits of shapes are closed: a shape of exactly 1 has no finite mean.
-            rank[(figure > strained) | np.isnan(figure)] = 1
-            beyond = figure >= refit if worse == "above" else figure > refit
-            rank[beyond | np.isnan(figure)] = 0
+        elif worse != "note":
+            rank[_beyond(self.figure, self.strained, worse, closed=worse == "from")] = 1
+            # A shape of exactly 1 has no finite mean: upper refit limits are closed.
+            rank[_beyond(self.figure, self.refit, worse, closed=worse != "below")] = 0
         if self.spoken is not None:
             rank[~self.spoken] = 2
         return rank
@@ -107,11 +104,20 @@ class Finding:
         return Reason(
             self.code,
             figure,
-            limit if rule.worse in ("above", "below") else math.nan,
+            limit if rule.worse in ("above", "from", "below") else math.nan,
             Level(LEVELS[rank]),
             rule.sentence.format(**words),
             rule.next_step_refit if rank == 0 and rule.next_step_refit else rule.next_step,
         )
+
+
+def _beyond(
+    figure: npt.NDArray[np.float64], limit: float, worse: str, *, closed: bool
+) -> npt.NDArray[np.bool_]:
+    """Where figures are beyond a limit; one that is not a number is beyond every limit."""
+    sign = -1.0 if worse == "below" else 1.0
+    past = sign * figure >= sign * limit if closed else sign * figure > sign * limit
+    return np.asarray(past | np.isnan(figure))
 
 
 def judge(
@@ -178,7 +184,7 @@ class Verdict:
         if not self._shape:
             return Level(LEVELS[int(rank)])
         levels = np.array([Level(name) for name in LEVELS], dtype=object)
-        return levels[rank]
+        return frozen(levels[rank])
 
     @property
     def is_sound(self) -> Any:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterable, Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from functools import cached_property
 from html import escape
@@ -377,7 +377,7 @@ class Answer:
         """
         return log_evidence_ratio_of(self._scale, self._target)
 
-    def table(self, quantities: Any = None, probs: Iterable[float] = (0.05, 0.5, 0.95)) -> Table:
+    def table(self, quantities: Any = None, probs: Any = (0.05, 0.5, 0.95)) -> Table:
         """
         One row for each element of each quantity.
 
@@ -385,7 +385,7 @@ class Answer:
         ----------
         quantities : str, array_like, callable or mapping, optional
             What to tabulate; all parameters by default.
-        probs : iterable of float
+        probs : float or array_like
             Probabilities of the quantile columns.
 
         Returns
@@ -407,7 +407,7 @@ class Answer:
         if several is None:
             one = read_quantity(quantities, self._base)
             several = {one.label: one}
-        return tabulate(self._scale, several, probabilities(np.asarray(list(probs))))
+        return tabulate(self._scale, several, probabilities(probs))
 
     def resample(self, size: int, method: Method = "systematic", *, rng: Any = None) -> Draws:
         """

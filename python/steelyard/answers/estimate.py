@@ -12,6 +12,7 @@ import numpy as np
 import numpy.typing as npt
 
 from steelyard import _core
+from steelyard.arrays import Frozen
 from steelyard.digits import rounded, short
 from steelyard.errors import ArgumentError, TruthValueError
 from steelyard.verdicts import Level, Verdict
@@ -20,7 +21,7 @@ __all__ = ["Decision", "Estimate"]
 
 
 @dataclass(frozen=True)
-class Decision:
+class Decision(Frozen):
     """
     On which side of a level a probability lies, and how surely.
 
@@ -50,7 +51,7 @@ class Decision:
 
 
 @dataclass(frozen=True, eq=False)
-class Estimate:
+class Estimate(Frozen):
     """
     An estimate from weighted draws.
 

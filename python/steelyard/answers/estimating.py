@@ -194,21 +194,16 @@ def finish(
     ]
     findings = [*scale.findings, *(_shaped(f, shape) for f in own)]
     return Estimate(
-        shaped(_frozen(value)),
-        shaped(_frozen(series.error)),
-        shaped(_frozen(series.shape)),
+        shaped(value),
+        shaped(series.error),
+        shaped(series.shape),
         Verdict(findings, shape),
-        shaped(_frozen(effective)),
+        shaped(effective),
         label=quantity.label,
         dims=(*lead_dims, *quantity.dims),
         labels=quantity.labels,
         **{k: v if not isinstance(v, np.ndarray) else shaped(v) for k, v in fields.items()},
     )
-
-
-def _frozen(values: Array) -> Array:
-    values.flags.writeable = False
-    return values
 
 
 def _shaped(finding: Finding, shape: tuple[int, ...]) -> Finding:

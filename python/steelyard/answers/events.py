@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import operator
 import re
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass
 from typing import Any, NoReturn
 
 import numpy as np
 
-from steelyard.base import Draws
+from steelyard.base.draws import Array
 from steelyard.errors import QuantityError
 
 __all__ = ["evaluate_event", "is_expression"]
@@ -34,6 +35,8 @@ _COMPARE: dict[str, Callable[[Any, Any], Any]] = {
 }
 _WORDS = ("and", "or", "not")
 _DEEPEST = 50
+# Draws of a name, and what an error calls it.
+LookUp = Callable[[str, str], Array]
 
 
 @dataclass(frozen=True)
@@ -48,7 +51,7 @@ def is_expression(text: str) -> bool:
     return any(sign in text for sign in ("<", ">", "==", "!="))
 
 
-def evaluate_event(text: str, draws: Draws) -> Any:
+def evaluate_event(text: str, look_up: LookUp) -> Any:
     """
     Evaluate an event text on the draws: a boolean array ``(n, *shape)``.
 
@@ -59,7 +62,7 @@ def evaluate_event(text: str, draws: Draws) -> Any:
     QuantityError
         Where the text does not parse (the position is shown) or is not an event.
     """
-    parser = _Parser(text, _tokens(text), draws)
+    parser = _Parser(text, _tokens(text), look_up)
     value = parser.either()
     if parser.at < len(parser.tokens):
         parser.fail("the end of the event, or an operator")
@@ -95,8 +98,8 @@ def _fail(text: str, place: int, expected: str, came: str) -> NoReturn:
 class _Parser:
     """Recursive descent, loosest operator first."""
 
-    def __init__(self, text: str, tokens: list[_Token], draws: Draws) -> None:
-        self.text, self.tokens, self.draws = text, tokens, draws
+    def __init__(self, text: str, tokens: list[_Token], look_up: LookUp) -> None:
+        self.text, self.tokens, self.look_up = text, tokens, look_up
         self.at = 0
         self.depth = 0
 
@@ -120,30 +123,29 @@ class _Parser:
     def either(self) -> Any:
         value = self.both()
         while self.take("or"):
-            value = self._truth(value) | self._truth(self.both())
+            one, other = self._aligned(self._truth(value), self._truth(self.both()))
+            value = one | other
         return value
 
     def both(self) -> Any:
         value = self.negation()
         while self.take("and"):
-            value = self._truth(value) & self._truth(self.negation())
+            one, other = self._aligned(self._truth(value), self._truth(self.negation()))
+            value = one & other
         return value
 
     def negation(self) -> Any:
-        self.depth += 1
-        if self.depth > _DEEPEST:
-            _fail(self.text, 0, f"at most {_DEEPEST} nested parts", "more")
-        value = ~self._truth(self.negation()) if self.take("not") else self.comparison()
-        self.depth -= 1
-        return value
+        with self._nested():
+            return ~self._truth(self.negation()) if self.take("not") else self.comparison()
 
     def comparison(self) -> Any:
         left, result = self.total(), None
         while sign := self.take(*_COMPARE):
             right = self.total()
             self._numbers(left, right)
-            part = _COMPARE[sign](left, right)
-            result = part if result is None else result & part
+            self._no_nan(left, right)
+            part = _COMPARE[sign](*self._aligned(left, right))
+            result = part if result is None else operator.and_(*self._aligned(result, part))
             left = right
         return left if result is None else result
 
@@ -152,6 +154,7 @@ class _Parser:
         while sign := self.take("+", "-"):
             other = self.product()
             self._numbers(value, other)
+            value, other = self._aligned(value, other)
             value = value + other if sign == "+" else value - other
         return value
 
@@ -160,19 +163,25 @@ class _Parser:
         while sign := self.take("*", "/"):
             other = self.signed()
             self._numbers(value, other)
-            with np.errstate(divide="ignore", invalid="ignore"):
+            value, other = self._aligned(value, other)
+            with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
                 value = value * other if sign == "*" else np.divide(value, other)
         return value
 
     def signed(self) -> Any:
-        if self.take("-"):
-            value = self.signed()
-            self._numbers(value)
-            return -value
+        with self._nested():
+            if self.take("-"):
+                value = self.signed()
+                self._numbers(value)
+                return -value
+            return self.power()
+
+    def power(self) -> Any:
         base = self.atom()
         if self.take("**"):
             exponent = self.signed()
             self._numbers(base, exponent)
+            base, exponent = self._aligned(base, exponent)
             with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
                 return np.asarray(base, dtype=np.float64) ** exponent
         return base
@@ -190,7 +199,32 @@ class _Parser:
         if token.kind == "number":
             return np.float64(token.text)
         name = token.text[1:-1] if token.kind == "quoted" else token.text
-        return self.draws.look_up(name, f"event, position {token.place}")
+        return self.look_up(name, f"event, position {token.place}")
+
+    @contextmanager
+    def _nested(self) -> Iterator[None]:
+        self.depth += 1
+        if self.depth > _DEEPEST:
+            _fail(self.text, 0, f"at most {_DEEPEST} nested parts", "more")
+        yield
+        self.depth -= 1
+
+    def _aligned(self, one: Any, other: Any) -> tuple[Any, Any]:
+        """Both sides with the draw axis first; axes that one lacks come after it."""
+        a, b = np.asarray(one), np.asarray(other)
+        if a.ndim and b.ndim and a.ndim != b.ndim:
+            most = max(a.ndim, b.ndim)
+            a, b = (v.reshape(v.shape[:1] + (1,) * (most - v.ndim) + v.shape[1:]) for v in (a, b))
+        try:
+            np.broadcast_shapes(a.shape, b.shape)
+        except ValueError:
+            self.fail(f"shapes that go together, not {a.shape[1:]} and {b.shape[1:]}")
+        return a, b
+
+    def _no_nan(self, *values: Any) -> None:
+        bad = sum(int(np.isnan(v).sum()) for v in values)
+        if bad:
+            _fail(self.text, 0, "arithmetic that has a value at every draw", f"{bad} times NaN")
 
     def _truth(self, value: Any) -> Any:
         if np.asarray(value).dtype != np.bool_:

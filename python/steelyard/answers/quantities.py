@@ -2,17 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field, replace
-from types import MappingProxyType
 from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
 from steelyard.answers.events import evaluate_event, is_expression
+from steelyard.arrays import plain_array
 from steelyard.base import Base
 from steelyard.base.draws import Array, element
+from steelyard.base.predictive import refuse_withheld
 from steelyard.base.shapes import stacked
 from steelyard.errors import ArgumentTypeError, QuantityError
 
@@ -81,7 +82,7 @@ def read_quantity(
     label = "quantity"
     if callable(quantity) and not hasattr(quantity, "shape"):
         label = _name_of(quantity, label)
-        quantity = quantity(MappingProxyType(dict(draws.values_by_name)))
+        quantity = quantity(base.visible())
     elif not (hasattr(quantity, "shape") or isinstance(quantity, list | tuple)):
         raise ArgumentTypeError(
             argument,
@@ -89,7 +90,8 @@ def read_quantity(
             type(quantity).__name__,
             f"Known parameters: {', '.join(draws) or 'none'}.",
         )
-    if np.asarray(quantity).dtype == np.bool_:
+    quantity = quantity if hasattr(quantity, "dims") else plain_array(quantity, argument)
+    if quantity.dtype == np.bool_:
         return replace(_event_as_quantity(quantity, base, argument, events), label=label)
     values = np.require(stacked(quantity, draws, argument), np.float64, ["C", "A"])
     _refuse_bad_values(values, base, argument)
@@ -122,6 +124,8 @@ def _named(text: str, base: Base, argument: str) -> Quantity:
             "Pass draws= to weigh() to name parameters.",
         )
     found = draws.find(text, argument)
+    if found.name in base.withheld:
+        refuse_withheld(found.name, argument)
     values = element(draws.values_by_name[found.name], found.index)
     names = draws.dims.get(found.name, ("",) * (values.ndim - 1 + len(found.index)))
     dims = names[len(found.index) :]
@@ -141,6 +145,15 @@ def _refuse_bad_values(values: Array, base: Base, argument: str) -> None:
         )
 
 
+def _look_up(base: Base) -> Callable[[str, str], Array]:
+    def look_up(name: str, argument: str) -> Array:
+        if base.draws.find(name, argument).name in base.withheld:
+            refuse_withheld(name, argument)
+        return base.draws.look_up(name, argument)
+
+    return look_up
+
+
 def event_mask(event: Any, base: Base) -> Quantity:
     """Draws of an event as 0 and 1: a text, a boolean array, or a callable that returns one."""
     draws = base.draws
@@ -153,11 +166,11 @@ def event_mask(event: Any, base: Base) -> Quantity:
                 repr(event),
                 "A name alone is a quantity, not an event.",
             )
-        label, event = event, evaluate_event(event, draws)
+        label, event = event, evaluate_event(event, _look_up(base))
     elif callable(event) and not hasattr(event, "shape"):
         label = _name_of(event, label)
-        event = event(MappingProxyType(dict(draws.values_by_name)))
-    values = np.asarray(event)
+        event = event(base.visible())
+    values = event if hasattr(event, "dims") else plain_array(event, "event")
     if values.dtype != np.bool_:
         raise QuantityError(
             "event",

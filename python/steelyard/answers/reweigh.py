@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -22,7 +23,7 @@ __all__ = ["base_answer", "reweigh", "weigh"]
 
 def base_answer(base: Base) -> Answer:
     """The answer without a change."""
-    weights = base_weights(base.log_weights, base.draws)
+    weights = base_weights(base)
     findings = [judge("base_unverified")]
     if base.log_weights is not None:
         findings += weight_findings(weights, base.draws, base.ordered)
@@ -32,7 +33,8 @@ def base_answer(base: Base) -> Answer:
 def reweigh(base: Base, change: Change, *, smooth: bool = True) -> Answer:
     """The answer under a change; see ``Fit.reweigh``."""
     target = form_target(base, change)
-    own = base_weights(base.log_weights, base.draws)
+    base = replace(base, withheld=target.withheld)
+    own = base_weights(base)
     notes = [judge("base_unverified")]
     if not target.terms:
         unchanged = base_answer(base)
@@ -98,7 +100,7 @@ def weigh(log_ratio: Any, draws: Any = None, *, smooth: bool = True) -> Answer:
         judge("support_unknown", term="the ratio"),
     )
     own = tuple(weight_findings(weights, base.draws, True))
-    return Answer(base, weights, base_weights(None, base.draws), (*own, *shared))
+    return Answer(base, weights, base_weights(base), (*own, *shared))
 
 
 def _bare_draws(log_ratio: Any) -> Draws:

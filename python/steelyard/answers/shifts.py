@@ -30,7 +30,7 @@ __all__ = ["log_evidence_ratio_of", "shift_of"]
 def shift_of(scale: Scale, quantity: Quantity, of: Any) -> Estimate:
     """Target minus base of a mean, an sd, or a quantile, with the error of the pair."""
     work = _read_kind(of)
-    if quantity.is_event and of != "mean":
+    if quantity.is_event and work is not _mean_shift:
         raise ArgumentError("of", "'mean' for an event", repr(of), "A probability is a mean.")
     columns = quantity.columns
     value, variance = np.empty(columns.shape[1]), np.empty(columns.shape[1])
@@ -51,10 +51,8 @@ def shift_of(scale: Scale, quantity: Quantity, of: Any) -> Estimate:
 
 
 def _read_kind(of: Any) -> Any:
-    if of == "mean":
-        return _mean_shift
-    if of == "sd":
-        return _sd_shift
+    if isinstance(of, str) and of in ("mean", "sd"):
+        return _mean_shift if of == "mean" else _sd_shift
     if isinstance(of, tuple) and len(of) == 2 and of[0] == "quantile":
         p = of[1]
         if isinstance(p, int | float | np.floating) and 0 < p < 1:

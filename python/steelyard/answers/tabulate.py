@@ -12,6 +12,7 @@ from steelyard.answers.estimating import Scale, mean_of, sd_of
 from steelyard.answers.quantiles import quantile_of
 from steelyard.answers.quantities import Quantity
 from steelyard.base.draws import Array
+from steelyard.errors import ArgumentError
 from steelyard.table import Table
 from steelyard.verdicts import Verdict
 
@@ -20,6 +21,11 @@ __all__ = ["tabulate"]
 
 def tabulate(scale: Scale, quantities: Mapping[str, Quantity], probs: Array) -> Table:
     """Means, errors, sds and quantiles of quantities, with the worst level of each row."""
+    probs = probs.reshape(-1)
+    if len({f"{p:g}" for p in probs}) < probs.size:
+        raise ArgumentError(
+            "probs", "each probability once", "one twice (to six digits)", "Name each once."
+        )
     dims = _dimension_columns(quantities)
     names = ["quantity", *dims, "mean", "error", "sd", *(f"q{p:g}" for p in probs)]
     columns: dict[str, list[Any]] = {n: [] for n in [*names, "tail_shape", "level", "reasons"]}

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from steelyard.arrays import Frozen, ReadOnly
 from steelyard.base.names import Reference, close_names, find
 from steelyard.errors import UnknownNameError
 
@@ -18,7 +19,7 @@ Array = npt.NDArray[np.float64]
 
 
 @dataclass(frozen=True, eq=False)
-class Draws(Mapping[str, Array]):
+class Draws(Frozen, Mapping[str, Array]):
     """
     Named posterior draws.
 
@@ -49,6 +50,11 @@ class Draws(Mapping[str, Array]):
     labels: Mapping[str, npt.NDArray[Any]] = field(default_factory=dict)
     chain_names: tuple[Any, ...] = ()
 
+    def __post_init__(self) -> None:
+        super().__post_init__()
+        for name in ("values_by_name", "labels"):
+            object.__setattr__(self, name, ReadOnly(getattr(self, name)))
+
     def __getitem__(self, name: str) -> Array:
         if name in self.values_by_name:
             return self.values_by_name[name]
@@ -59,6 +65,13 @@ class Draws(Mapping[str, Array]):
 
     def __len__(self) -> int:
         return len(self.values_by_name)
+
+    def get(self, name: str, default: Any = None) -> Any:
+        """Draws of a parameter or an element, or `default` where there is none."""
+        try:
+            return self[name]
+        except UnknownNameError:
+            return default
 
     def __contains__(self, name: object) -> bool:
         return name in self.values_by_name
@@ -128,7 +141,7 @@ class Draws(Mapping[str, Array]):
         kept = np.flatnonzero(counts)
         starts = np.concatenate([[0], np.cumsum(counts[kept])]).astype(np.int64)
         names = self.chain_names or tuple(range(self.chains))
-        values = {k: _read_only(v[rows]) for k, v in self.values_by_name.items()}
+        values = {k: v[rows] for k, v in self.values_by_name.items()}
         return Draws(
             values, starts, False, self.dims, self.labels, tuple(names[int(c)] for c in kept)
         )
@@ -182,9 +195,3 @@ def element(values: Array, index: tuple[int, ...]) -> Array:
     """Draws of one element of a parameter; all of it for an empty index."""
     place: tuple[Any, ...] = (slice(None), *index)
     return np.asarray(values[place])
-
-
-def _read_only(values: Array) -> Array:
-    view = values.view()
-    view.flags.writeable = False
-    return view

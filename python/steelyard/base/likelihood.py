@@ -10,6 +10,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from steelyard.arrays import plain_array
 from steelyard.base.draws import Array, Draws
 from steelyard.base.shapes import has_two_axes
 from steelyard.errors import ArgumentTypeError, LikelihoodError, ShapeError
@@ -148,19 +149,33 @@ def read_loglik_term(name: str, source: Any, draws: Draws, argument: str) -> Log
     labels: dict[str, npt.NDArray[Any]] = {}
     if hasattr(source, "dims") and hasattr(source, "transpose"):
         source, dims, labels = _from_xarray(source, argument)
-    elif not hasattr(source, "shape"):
-        source = np.asarray(source)
-    kind = getattr(np.dtype(source.dtype), "kind", "O")
-    if kind not in "fiu":
+    elif hasattr(source, "columns") or hasattr(source, "__arrow_c_stream__"):
         raise ArgumentTypeError(
-            argument, "real numbers", f"dtype {source.dtype}", "Convert to float64 or float32."
+            argument,
+            "an array, draws first",
+            f"a {type(source).__name__}",
+            "Pass frame.to_numpy(), its rows in the order of the stacked draws.",
         )
+    elif isinstance(source, np.ma.MaskedArray) or not hasattr(source, "shape"):
+        source = plain_array(source, argument, "fiu")
+    _refuse_other_numbers(source, argument)
     shape = tuple(int(s) for s in source.shape)
     two = has_two_axes(shape, draws, argument)
     obs_shape = shape[2:] if two else shape[1:]
     if 0 in obs_shape:
         raise ShapeError(argument, "at least one observation", str(shape), "Leave the term out.")
     return LoglikTerm(name, source, obs_shape, two, dims, labels)
+
+
+def _refuse_other_numbers(source: Any, argument: str) -> None:
+    """Whatever keeps its values elsewhere (a memmap, dask) is judged by its dtype alone."""
+    try:
+        kind = np.dtype(source.dtype).kind
+    except (TypeError, AttributeError):
+        kind = "O"
+    if kind not in "fiu":
+        came = f"dtype {getattr(source, 'dtype', type(source).__name__)}"
+        raise ArgumentTypeError(argument, "real numbers", came, "Convert to float64 or float32.")
 
 
 def _from_xarray(source: Any, argument: str) -> tuple[Any, tuple[str, ...], dict[str, Any]]:

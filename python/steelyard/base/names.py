@@ -27,6 +27,11 @@ class Reference:
     name: str
     index: tuple[int, ...] = ()
 
+    def overlaps(self, other: Reference) -> bool:
+        """Whether the two share an element."""
+        common = min(len(self.index), len(other.index))
+        return self.name == other.name and self.index[:common] == other.index[:common]
+
 
 def close_names(name: str, known: Iterable[str]) -> str:
     """A next step that offers the nearest names, or all of them."""

@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 
 from steelyard.base.draws import Array, Draws
-from steelyard.base.names import close_names
+from steelyard.base.names import Reference, close_names
 from steelyard.base.shapes import draw_rows
 from steelyard.densities import Distribution
 from steelyard.errors import ArgumentTypeError, PriorError, UnknownNameError
@@ -102,7 +102,9 @@ def _frozen_log_density(density: Any, value: Array) -> Array:
         return np.asarray(density.logpmf(value), dtype=np.float64)
 
 
-def read_prior(prior: Any, draws: Draws) -> dict[str, PriorTerm] | None:
+def read_prior(
+    prior: Any, draws: Draws, *, must_contain: bool = True
+) -> dict[str, PriorTerm] | None:
     """
     Read the prior terms of a fit and hold the draws against their supports.
 
@@ -120,11 +122,16 @@ def read_prior(prior: Any, draws: Draws) -> dict[str, PriorTerm] | None:
     terms = {}
     for key, density in prior.items():
         term = read_term(key, density, draws, "prior")
-        if isinstance(term.density, Distribution):
+        if must_contain and not callable_or_array(term.density):
             _refuse_outside(term, draws)
         terms[term.label] = term
     _refuse_overlap(terms, draws)
     return terms or None
+
+
+def callable_or_array(density: Any) -> bool:
+    """Whether a term has no support that is known before it is evaluated."""
+    return not (isinstance(density, Distribution) or _is_frozen(density))
 
 
 def read_term(key: Any, density: Any, draws: Draws, argument: str) -> PriorTerm:
@@ -134,6 +141,10 @@ def read_term(key: Any, density: Any, draws: Draws, argument: str) -> PriorTerm:
             argument, "a name or a tuple of names as key", repr(key), "Name parameters."
         )
     where = f"{argument}[{key!r}]"
+    if isinstance(density, type):
+        raise ArgumentTypeError(
+            where, "a term", f"the class {density.__name__}", "Give it its hyperparameters."
+        )
     if isinstance(density, Distribution) or _is_frozen(density):
         for name in (key,) if isinstance(key, str) else key:
             draws.find(name, argument)
@@ -172,25 +183,21 @@ def _refuse_outside(term: PriorTerm, draws: Draws) -> None:
 
 def _refuse_overlap(terms: Mapping[str, PriorTerm], draws: Draws) -> None:
     """A parameter with two distributions would have its prior counted twice."""
-    seen: dict[str, tuple[str, tuple[int, ...]]] = {}
+    seen: list[tuple[str, Reference]] = []
     for label, term in terms.items():
-        if not (term.is_distribution or _is_frozen(term.density)):
+        if callable_or_array(term.density):
             continue
         for name in (term.key,) if isinstance(term.key, str) else term.key:
             found = draws.find(name)
-            for other, (parameter, index) in seen.items():
-                short = min(len(index), len(found.index))
-                if parameter == found.name and index[:short] == found.index[:short]:
+            for other, before in seen:
+                if found.overlaps(before):
                     raise PriorError(
                         f"prior[{label!r}]",
                         "each parameter in one term",
                         f"{name!r} stated here and in {other!r}",
                         "State one of them.",
                     )
-            seen[label if isinstance(term.key, str) else f"{label}: {name}"] = (
-                found.name,
-                found.index,
-            )
+            seen.append((label, found))
 
 
 def stated_prior(terms: Mapping[str, PriorTerm] | None, argument: str) -> Mapping[str, PriorTerm]:

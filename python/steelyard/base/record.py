@@ -10,14 +10,23 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from steelyard.base.approximation import correct_approximation
 from steelyard.base.draws import Array, Draws
 from steelyard.base.likelihood import LoglikTerm, read_loglik
+from steelyard.base.predictive import Visible, read_predictive
 from steelyard.base.priors import PriorTerm, read_prior
+from steelyard.base.ratios import refuse_bad_ratio
 from steelyard.base.reading import read_draws
 from steelyard.base.shapes import draw_rows, stacked
-from steelyard.errors import ArgumentError, ArgumentTypeError, RatioError, UnknownNameError
+from steelyard.errors import (
+    ArgumentError,
+    ArgumentTypeError,
+    DrawsError,
+    RatioError,
+    UnknownNameError,
+)
 
-__all__ = ["Base", "read_base", "read_log_weights", "refuse_bad_ratio"]
+__all__ = ["Base", "read_base", "read_log_weights"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -41,6 +50,12 @@ class Base:
         Names that are not parameters, and how to recompute them where that is known.
     ordered : bool
         Whether the draws of a chain stand in the order they were drawn.
+    predictive : mapping of str to str
+        Names of predictive draws, and the likelihood term whose model made them.
+    is_approximate : bool
+        Whether the draws came from an approximation, which `log_weights` correct.
+    withheld : frozenset of str
+        Predictive draws that the change at hand makes unusable.
     """
 
     draws: Draws
@@ -50,11 +65,20 @@ class Base:
     stored_log_density: Array | None = None
     derived: Mapping[str, Callable[..., Any] | None] = field(default_factory=dict)
     ordered: bool = True
+    predictive: Mapping[str, str] = field(default_factory=dict)
+    is_approximate: bool = False
+    withheld: frozenset[str] = frozenset()
 
     @property
     def parameters(self) -> tuple[str, ...]:
         """Names of the draws that are parameters."""
-        return tuple(name for name in self.draws if name not in self.derived)
+        others = {*self.derived, *self.predictive}
+        return tuple(name for name in self.draws if name not in others)
+
+    def visible(self) -> Mapping[str, Array]:
+        """The draws as callables receive them: read-only, withheld ones refused."""
+        values = dict(self.draws.values_by_name)
+        return Visible(values, self.withheld) if self.withheld else MappingProxyType(values)
 
 
 def read_base(
@@ -68,6 +92,8 @@ def read_base(
     chain: Any = None,
     derived: Iterable[str] | Mapping[str, Callable[..., Any]] = (),
     ordered: bool = True,
+    predictive: Mapping[str, str] | None = None,
+    approximation: Any = None,
 ) -> Base:
     """Read everything that `Fit` takes into one record; see there."""
     if not isinstance(ordered, bool | np.bool_):
@@ -77,15 +103,28 @@ def read_base(
     stored = None
     if stored_log_density is not None:
         stored = draw_rows(stored_log_density, read, "stored_log_density")
+    terms, likelihood = _prior(prior, read, approximation), read_loglik(loglik, read)
+    weights = None if log_weights is None else read_log_weights(log_weights, read)
+    if approximation is not None:
+        correction = correct_approximation(approximation, terms, likelihood, read)
+        weights = correction if weights is None else correction + weights
+        refuse_bad_ratio(weights, read, "approximation")
     return Base(
         read,
-        read_prior(prior, read),
-        read_loglik(loglik, read),
-        None if log_weights is None else read_log_weights(log_weights, read),
+        terms,
+        likelihood,
+        weights,
         stored,
         recipes,
         bool(ordered),
+        read_predictive(predictive, read, likelihood),
+        approximation is not None,
     )
+
+
+def _prior(prior: Any, draws: Draws, approximation: Any) -> dict[str, PriorTerm] | None:
+    # Draws of an approximation may leave the prior's support: they then weigh nothing.
+    return read_prior(prior, draws, must_contain=approximation is None)
 
 
 def read_log_weights(log_weights: Any, draws: Draws) -> Array:
@@ -100,30 +139,13 @@ def read_log_weights(log_weights: Any, draws: Draws) -> Array:
     return out
 
 
-def refuse_bad_ratio(log_ratio: Array, draws: Draws, argument: str) -> None:
-    """NaN and +inf are errors, and so is −inf everywhere."""
-    bad = np.isnan(log_ratio) | (log_ratio == np.inf)
-    if bad.any():
-        first = int(np.argmax(bad))
-        raise RatioError(
-            argument,
-            "log ratios that are finite or −inf (a weight of zero)",
-            f"{int(bad.sum())} of {len(log_ratio)} NaN or +inf, first {log_ratio[first]} at "
-            f"{draws.where(first)}",
-            "Look at target and base there: +inf says that the base cannot make that draw.",
-        )
-    if (log_ratio == -np.inf).all():
-        raise RatioError(
-            argument,
-            "a draw with a finite log ratio",
-            "−inf for every draw",
-            "No draw lies in the target's support: refit, or mend the change.",
-        )
-
-
 def _with_derived(draws: Draws, derived: Any) -> tuple[Draws, dict[str, Callable[..., Any] | None]]:
     if isinstance(derived, str):
         derived = (derived,)
+    if not isinstance(derived, Iterable):
+        raise ArgumentTypeError(
+            "derived", "names, or {new name: callable}", repr(derived), "Name derived quantities."
+        )
     if not isinstance(derived, Mapping):
         recipes: dict[str, Callable[..., Any] | None] = {str(name): None for name in derived}
         for name in recipes:
@@ -151,9 +173,15 @@ def _with_derived(draws: Draws, derived: Any) -> tuple[Draws, dict[str, Callable
         rows = stacked(
             recipe(MappingProxyType(dict(draws.values_by_name))), draws, f"derived[{name!r}]"
         )
-        view = np.require(rows, np.float64, ["C", "A"]).view()
-        view.flags.writeable = False
-        values[name] = view
+        out = np.require(rows, np.float64, ["C", "A"])
+        if not np.isfinite(out).all():
+            raise DrawsError(
+                f"derived[{name!r}]",
+                "finite values",
+                f"{int((~np.isfinite(out)).sum())} NaN or infinite",
+                "Mend the callable where it has no value.",
+            )
+        values[name] = out
     made = Draws(
         values, draws.starts, draws.has_chain_axis, draws.dims, draws.labels, draws.chain_names
     )

@@ -7,8 +7,9 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from steelyard.arrays import plain_array
 from steelyard.base.draws import Array, Draws
-from steelyard.errors import ArgumentTypeError, ShapeError
+from steelyard.errors import ShapeError
 
 __all__ = ["draw_rows", "has_two_axes", "stacked"]
 
@@ -49,11 +50,7 @@ def stacked(values: Any, draws: Draws, argument: str) -> npt.NDArray[Any]:
     if dims is not None and "draw" in dims:
         lead = ("chain", "draw") if "chain" in dims else ("draw",)
         values = values.transpose(*lead, ...)
-    array = np.asarray(values)
-    if array.dtype.kind not in "fiub":
-        raise ArgumentTypeError(
-            argument, "real numbers", f"dtype {array.dtype}", "Convert to float64 or bool."
-        )
+    array = plain_array(values, argument)
     if has_two_axes(array.shape, draws, argument):
         return array.reshape(draws.size, *array.shape[2:])
     return array

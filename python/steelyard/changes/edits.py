@@ -17,6 +17,7 @@ __all__ = [
     "Edit",
     "LogRatio",
     "Power",
+    "RaiseNoise",
     "SwapLoglik",
     "SwapPrior",
     "WeighData",
@@ -86,6 +87,18 @@ class WeighData(Edit):
 
 
 @dataclass(frozen=True, eq=False)
+class RaiseNoise(Edit):
+    """Multiply the sd of normal errors of the term `name` by `factor`; `sd` is what it was."""
+
+    name: str
+    factor: float
+    sd: Any
+
+    def __str__(self) -> str:
+        return f"noise of {self.name} times {self.factor:g}"
+
+
+@dataclass(frozen=True, eq=False)
 class Power(Edit):
     """Take prior or likelihood, or terms of them, to a power."""
 
@@ -103,12 +116,18 @@ class Power(Edit):
 
 @dataclass(frozen=True, eq=False)
 class LogRatio(Edit):
-    """Multiply the target by any function of the draws, given as log values."""
+    """
+    Multiply the target by any function of the draws, given as log values.
+
+    `predictive` names the predictive draws whose own ratio this is.
+    """
 
     source: Any
+    predictive: str | None = None
 
     def __str__(self) -> str:
-        return "target times a given ratio"
+        whose = f" of predictive draws {self.predictive}" if self.predictive else ""
+        return f"target times a given ratio{whose}"
 
 
 @dataclass(frozen=True, eq=False)

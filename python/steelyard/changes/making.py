@@ -7,19 +7,30 @@ from typing import Any
 
 import numpy as np
 
+from steelyard.arrays import plain_array
 from steelyard.changes.edits import (
     AddTerm,
     Change,
     Drop,
     LogRatio,
     Power,
+    RaiseNoise,
     SwapLoglik,
     SwapPrior,
     WeighData,
 )
 from steelyard.errors import ArgumentError, ArgumentTypeError, ChangeError
 
-__all__ = ["add", "drop", "log_ratio", "power", "swap_loglik", "swap_prior", "weigh_data"]
+__all__ = [
+    "add",
+    "drop",
+    "log_ratio",
+    "power",
+    "raise_noise",
+    "swap_loglik",
+    "swap_prior",
+    "weigh_data",
+]
 
 
 def swap_prior(mapping: Mapping[Any, Any] | None = None, /, **terms: Any) -> Change:
@@ -177,6 +188,8 @@ def drop(what: Any = None, /, *, label: Any = None, position: Any = None, **dims
             f"{len(given) + bool(dims)}",
             'Write drop("term"), drop([3, 17]), drop(label=…), drop(position=…) or drop(dim=…).',
         )
+    if isinstance(what, Mapping) and not what:
+        raise ChangeError("drop", "at least one term", "an empty mapping", "Name one.")
     if dims:
         return Change((Drop(by_dim=tuple(dims.items())),))
     return Change((Drop(given[0][1], given[0][0]),))
@@ -256,13 +269,58 @@ def power(prior: Any = 1, likelihood: Any = 1) -> Change:
 
     def read(value: Any, argument: str) -> Any:
         if isinstance(value, Mapping):
-            return {k: float(_scalar(v, f"{argument}[{k!r}]")) for k, v in value.items()}
+            pairs = _pairs(value, {}, argument, "model")
+            return {k: float(_scalar(v, f"{argument}[{k!r}]")) for k, v in pairs}
         return float(_scalar(value, argument))
 
     return Change((Power(read(prior, "power: prior"), read(likelihood, "power: likelihood")),))
 
 
-def log_ratio(source: Any) -> Change:
+def raise_noise(term: str, factor: float, sd: Any) -> Change:
+    """
+    Multiply the standard deviation of normal measurement errors.
+
+    Parameters
+    ----------
+    term : str
+        Likelihood term, by observation, whose errors are normal.
+    factor : float
+        What the sd is multiplied by, positive; below 1 for less noise.
+    sd : float, array_like, str or callable
+        The sd that the log likelihood was computed with: a number, one an observation, the name
+        of a parameter, or a callable that gets ``{name: (n, *shape)}`` and returns ``(n,)`` or
+        ``(n, *obs)``.
+
+    Returns
+    -------
+    Change
+        The change.
+
+    Raises
+    ------
+    ArgumentError, ArgumentTypeError
+        For a factor that is not positive, or an sd of a wrong type.
+
+    Notes
+    -----
+    ``L' = (L + log s + c)/f² − log(f s) − c`` with ``c = ½ log 2π``. Where the data dominate, the
+    weights have infinite variance from ``f = √2`` on, in any dimension.
+
+    Examples
+    --------
+    >>> import steelyard as sy
+    >>> sy.raise_noise("gauge B", 1.2, sd="sd_b")
+    <Change: noise of gauge B times 1.2>
+    """
+    if not isinstance(term, str):
+        raise ArgumentTypeError("raise_noise: term", "a name", repr(term), "Name the term.")
+    number = float(_scalar(factor, "raise_noise: factor"))
+    if number == 0:
+        raise ArgumentError("raise_noise: factor", "a positive number", "0", "Use drop instead.")
+    return Change((RaiseNoise(term, number, sd),))
+
+
+def log_ratio(source: Any, *, predictive: str | None = None) -> Change:
     """
     Multiply the target by any ratio.
 
@@ -271,11 +329,19 @@ def log_ratio(source: Any) -> Change:
     source : array_like or callable
         Log ratio at each draw, ``(n,)`` or ``(chain, draw)``; or a callable that gets
         ``{name: (n, *shape)}`` and returns it.
+    predictive : str, optional
+        Name of predictive draws whose own ratio ``p_new(ỹ|θ)/p_old(ỹ|θ)`` this is, where their
+        model is changed as well; without it they are refused under such a change.
 
     Returns
     -------
     Change
         The change.
+
+    Raises
+    ------
+    ArgumentTypeError
+        For a `predictive` that is not a name.
 
     Notes
     -----
@@ -288,7 +354,11 @@ def log_ratio(source: Any) -> Change:
     >>> sy.log_ratio(lambda draws: -draws["mu"] ** 2)
     <Change: target times a given ratio>
     """
-    return Change((LogRatio(source),))
+    if predictive is not None and not isinstance(predictive, str):
+        raise ArgumentTypeError(
+            "log_ratio: predictive", "a name", repr(predictive), "Name the predictive draws."
+        )
+    return Change((LogRatio(source, predictive),))
 
 
 def _pairs(
@@ -302,10 +372,19 @@ def _pairs(
     twice = sorted(set(map(str, mapping)) & set(terms))
     if twice:
         raise ChangeError(argument, "each term once", f"{twice} twice", "Keep one of them.")
+    for key in mapping:
+        if not (isinstance(key, str) or (isinstance(key, tuple) and _all_text(key))):
+            raise ArgumentTypeError(
+                argument, "names, or tuples of names, as keys", repr(key), "Name the term."
+            )
     pairs = [*mapping.items(), *terms.items()]
     if not pairs:
         raise ChangeError(argument, f"at least one {kind} term", "none", "Name the term to change.")
     return pairs
+
+
+def _all_text(key: tuple[Any, ...]) -> bool:
+    return len(key) > 0 and all(isinstance(part, str) for part in key)
 
 
 def _scalar(value: Any, argument: str) -> Any:
@@ -318,9 +397,7 @@ def _scalar(value: Any, argument: str) -> Any:
 
 
 def _factor(value: Any, argument: str) -> Any:
-    array = np.asarray(value)
-    if array.dtype.kind not in "fiu":
-        raise ArgumentTypeError(argument, "a number", repr(value), "Give a number.")
+    array = plain_array(value, argument, "fiu")
     bad = ~(np.isfinite(array) & (array >= 0))
     if bad.any():
         raise ArgumentError(

@@ -17,14 +17,24 @@ from steelyard.changes.edits import (
     Drop,
     LogRatio,
     Power,
+    RaiseNoise,
     SwapLoglik,
     SwapPrior,
     WeighData,
 )
+from steelyard.changes.noise import raised
 from steelyard.changes.selection import selected
 from steelyard.errors import ChangeError, LikelihoodError, ShapeError
 
 __all__ = ["Draft", "LoglikTarget", "PriorTarget", "merge"]
+
+
+def _product(factors: tuple[Any, ...]) -> Any:
+    """Product in an order that depends on the factors alone: edits commute to the last bit."""
+    out: Any = 1.0
+    for factor in sorted(factors, key=lambda f: (np.ndim(f), np.asarray(f).tobytes())):
+        out = out * factor
+    return out
 
 
 @dataclass(frozen=True, eq=False)
@@ -33,7 +43,12 @@ class PriorTarget:
 
     base: PriorTerm
     density: PriorTerm
-    factor: float = 1.0
+    factors: tuple[float, ...] = ()
+
+    @property
+    def factor(self) -> float:
+        """Product of the factors, in an order of their own."""
+        return float(_product(self.factors))
 
     @property
     def is_swapped(self) -> bool:
@@ -46,7 +61,12 @@ class LoglikTarget:
 
     base: LoglikTerm | None
     density: LoglikTerm
-    factor: Any = 1.0
+    factors: tuple[Any, ...] = ()
+
+    @property
+    def factor(self) -> Any:
+        """Product of the factors, one number or one an observation."""
+        return _product(self.factors)
 
 
 @dataclass
@@ -58,12 +78,22 @@ class Draft:
     loglik: dict[str, LoglikTarget] = field(default_factory=dict)
     swapped: set[str] = field(default_factory=set)
     ratios: list[Any] = field(default_factory=list)
+    # Predictive draws whose own ratio the change brings.
+    answered: set[str] = field(default_factory=set)
+
+    @property
+    def withheld(self) -> frozenset[str]:
+        """Predictive draws whose model is changed while their own ratio is missing."""
+        predictive = self.base.predictive
+        return (
+            frozenset(n for n, term in predictive.items() if term in self.swapped) - self.answered
+        )
 
 
 def merge(base: Base, change: Change) -> Draft:
     """Merge the edits of a change; replacements first, then factors, so that order is no matter."""
     draft = Draft(base)
-    replacing = (SwapPrior, SwapLoglik, AddTerm)
+    replacing = (SwapPrior, SwapLoglik, RaiseNoise, AddTerm)
     for edit in sorted(change.edits, key=lambda e: not isinstance(e, replacing)):
         _MERGE[type(edit)](draft, edit)
     return draft
@@ -86,10 +116,11 @@ def _merge_power(draft: Draft, edit: Power) -> None:
     if isinstance(prior, Mapping) or prior != 1:
         stated = stated_prior(draft.base.prior, "power: prior")
         powers = prior if isinstance(prior, Mapping) else dict.fromkeys(stated, prior)
-        for label, factor in powers.items():
+        for key, factor in powers.items():
+            label = key if isinstance(key, str) else ", ".join(key)
             known_term(label, stated, "power: prior", "prior")
             old = draft.prior.get(label, PriorTarget(stated[label], stated[label]))
-            draft.prior[label] = PriorTarget(old.base, old.density, old.factor * factor)
+            draft.prior[label] = PriorTarget(old.base, old.density, (*old.factors, factor))
     if isinstance(likelihood, Mapping) or likelihood != 1:
         # Added terms belong to the target's likelihood, so a common power takes them too.
         names = {**_stated(draft.base, "power: likelihood"), **draft.loglik}
@@ -137,6 +168,23 @@ def _merge_swap_loglik(draft: Draft, edit: SwapLoglik) -> None:
     draft.loglik[name] = LoglikTarget(old, new)
 
 
+def _merge_raise_noise(draft: Draft, edit: RaiseNoise) -> None:
+    stated = _stated(draft.base, "raise_noise")
+    known_term(edit.name, stated, "raise_noise", "likelihood")
+    if edit.name in draft.swapped:
+        raise ChangeError(
+            f"raise_noise[{edit.name!r}]",
+            "each term replaced once",
+            "a term that is replaced already",
+            "Put the noise into the replacement.",
+        )
+    if edit.factor == 1:
+        return
+    draft.swapped.add(edit.name)
+    new = raised(stated[edit.name], edit.factor, edit.sd, draft.base.draws)
+    draft.loglik[edit.name] = LoglikTarget(stated[edit.name], new)
+
+
 def _merge_add(draft: Draft, edit: AddTerm) -> None:
     if edit.name in (draft.base.loglik or {}) or edit.name in draft.loglik:
         raise ChangeError(
@@ -163,12 +211,20 @@ def _merge_weigh_data(draft: Draft, edit: WeighData) -> None:
 
 
 def _merge_log_ratio(draft: Draft, edit: LogRatio) -> None:
+    if edit.predictive is not None:
+        known_term(edit.predictive, draft.base.predictive, "log_ratio", "predictive")
+        if edit.predictive in draft.answered:
+            raise ChangeError(
+                f"log_ratio[{edit.predictive!r}]", "each ratio once", "twice", "Keep one of them."
+            )
+        draft.answered.add(edit.predictive)
     draft.ratios.append(edit.source)
 
 
 _MERGE: dict[type, Any] = {
     SwapPrior: _merge_swap_prior,
     SwapLoglik: _merge_swap_loglik,
+    RaiseNoise: _merge_raise_noise,
     AddTerm: _merge_add,
     Drop: _merge_drop,
     WeighData: _merge_weigh_data,
@@ -192,4 +248,4 @@ def _multiply(draft: Draft, name: str, factor: Any, argument: str) -> None:
             str(shape),
             "Match the observations; a total takes one factor only.",
         )
-    draft.loglik[name] = LoglikTarget(old.base, old.density, old.factor * factor)
+    draft.loglik[name] = LoglikTarget(old.base, old.density, (*old.factors, factor))

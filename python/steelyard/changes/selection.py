@@ -8,8 +8,9 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from steelyard.arrays import plain_array
 from steelyard.base.likelihood import LoglikTerm
-from steelyard.base.names import close_names, label_position, refuse_if_ambiguous
+from steelyard.base.names import close_names, refuse_if_ambiguous
 from steelyard.changes.edits import Drop
 from steelyard.errors import (
     AmbiguousNameError,
@@ -31,6 +32,8 @@ def selected(edit: Drop, terms: Mapping[str, LoglikTerm]) -> dict[str, Mask]:
     if isinstance(what, str) and edit.kind != "position":
         return _by_text(what, edit.kind, terms)
     if isinstance(what, Mapping):
+        if not what:
+            raise ChangeError("drop", "at least one term", "an empty mapping", "Name one.")
         out: dict[str, Mask] = {}
         for name, part in what.items():
             if name not in terms:
@@ -97,47 +100,61 @@ def _by_dim(
                 repr(dim),
                 close_names(dim, known),
             )
-    out = {}
-    missing: list[UnknownNameError] = []
-    for name, term in terms.items():
-        if not set(dims) <= set(term.dims):
-            continue
-        try:
-            mask = np.ones(term.obs_shape, dtype=np.bool_)
-            for dim, labels in dims.items():
-                listed = [labels] if np.ndim(labels) == 0 else list(labels)
-                mask &= _along(term, dim, listed)
-            out[name] = mask
-        except UnknownNameError as error:
-            missing.append(error)
-    if not out:
-        if missing:
-            raise missing[0]
+    holders = {n: t for n, t in terms.items() if set(dims) <= set(t.dims)}
+    if not holders:
         raise ChangeError(
             "drop",
             f"one term with all of the dimensions {sorted(dims)}",
             "none",
             "Name the dimensions of one term.",
         )
-    return out
+    for dim, labels in dims.items():
+        _refuse_unknown_labels(dim, _listed(labels), list(holders.values()))
+    masks = {}
+    for name, term in holders.items():
+        mask = np.ones(term.obs_shape, dtype=np.bool_)
+        for dim, labels in dims.items():
+            mask &= _along(term, dim, _listed(labels))
+        if mask.any():
+            masks[name] = mask
+    if not masks:
+        raise ChangeError(
+            "drop", "labels that occur together", "none that do", "Drop them one after the other."
+        )
+    return masks
+
+
+def _listed(labels: Any) -> list[Any]:
+    listed = [labels] if np.ndim(labels) == 0 else list(labels)
+    if not listed:
+        raise ChangeError("drop", "at least one label", "none", "Name what to leave out.")
+    return listed
+
+
+def _refuse_unknown_labels(dim: str, labels: list[Any], terms: list[LoglikTerm]) -> None:
+    """Every label must stand in one of the terms, else it would be passed over in silence."""
+    known = {str(v) for t in terms if dim in t.labels for v in t.labels[dim].tolist()}
+    for label in labels:
+        if str(label) not in known:
+            raise UnknownNameError(
+                f"drop: {dim}",
+                f"a label of dimension {dim!r}",
+                repr(label),
+                close_names(str(label), known),
+            )
 
 
 def _along(term: LoglikTerm, dim: str, labels: list[Any]) -> Mask:
+    """Observations of a term whose label along `dim` is one of `labels`."""
     axis = term.dims.index(dim)
-    mask = np.zeros(term.obs_shape[axis], dtype=np.bool_)
-    for label in labels:
-        stored = term.labels.get(dim)
-        hits = (
-            np.array([str(v) == str(label) for v in stored.tolist()], dtype=np.bool_)
-            if stored is not None
-            else np.zeros(0, dtype=np.bool_)
-        )
-        if not hits.any():
-            label_position(label, stored, f"drop: {dim} of {term.name!r}", dim)
-        mask |= hits
+    wanted = {str(label) for label in labels}
+    stored = term.labels[dim].tolist() if dim in term.labels else []
+    hits = np.array([str(v) in wanted for v in stored], dtype=np.bool_)
+    if not len(hits):
+        hits = np.zeros(term.obs_shape[axis], dtype=np.bool_)
     shape = [1] * len(term.obs_shape)
     shape[axis] = -1
-    return np.broadcast_to(mask.reshape(shape), term.obs_shape).copy()
+    return np.broadcast_to(hits.reshape(shape), term.obs_shape).copy()
 
 
 def _positions(what: Any, kind: str, term: LoglikTerm, argument: str) -> Mask:
@@ -148,18 +165,20 @@ def _positions(what: Any, kind: str, term: LoglikTerm, argument: str) -> Mask:
             f"{term.name!r}, which is a total",
             "Give the log likelihood by observation, or drop the whole term by its name.",
         )
-    array = np.asarray(what)
+    array = plain_array(what, argument, "fiubUS")
     if array.dtype == np.bool_ and array.shape == term.obs_shape:
         return array.copy()
     one_axis = len(term.obs_shape) == 1
     dim = term.dims[0] if term.dims else ""
     labels = term.labels.get(dim) if one_axis else None
-    if kind == "label" or array.dtype.kind in "US":
+    if kind == "label" or (array.dtype.kind in "US" and not kind):
         if not one_axis or labels is None:
             raise UnknownNameError(
                 argument, "labelled observations on one axis", repr(what), "Use positions."
             )
-        return _along(term, dim, [what] if array.ndim == 0 else list(np.asarray(what).tolist()))
+        listed = _listed(what)
+        _refuse_unknown_labels(dim, listed, [term])
+        return _along(term, dim, listed)
     if array.dtype.kind not in "iu" or array.ndim > 1 or array.size == 0:
         raise ArgumentTypeError(
             argument,

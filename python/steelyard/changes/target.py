@@ -8,10 +8,11 @@ from types import MappingProxyType
 from typing import Any
 
 import numpy as np
+import numpy.typing as npt
 
 from steelyard.base import Base
 from steelyard.base.draws import Array
-from steelyard.base.record import refuse_bad_ratio
+from steelyard.base.ratios import refuse_bad_ratio
 from steelyard.base.shapes import stacked
 from steelyard.changes.edits import Change
 from steelyard.changes.merging import LoglikTarget, PriorTarget, merge
@@ -42,6 +43,8 @@ class Target:
     terms: Mapping[str, Array]
     log_ratio: Array
     ratios: int = 0
+    # Names of predictive draws that the change makes unusable.
+    withheld: frozenset[str] = frozenset()
 
 
 def form_target(base: Base, change: Change) -> Target:
@@ -59,18 +62,29 @@ def form_target(base: Base, change: Change) -> Target:
         _put(terms, f"prior: {label}", _prior_delta(prior, base), base)
     for name, loglik in draft.loglik.items():
         _put(terms, f"likelihood: {name}", _loglik_delta(loglik, base), base)
-    for number, source in enumerate(draft.ratios, start=1):
-        label = "log ratio" if number == 1 else f"log ratio {number}"
-        _put(terms, label, _given_ratio(source, base), base)
+    ratios = sorted((_given_ratio(source, base) for source in draft.ratios), key=np.ndarray.tobytes)
+    for number, ratio in enumerate(ratios, start=1):
+        _put(terms, "log ratio" if number == 1 else f"log ratio {number}", ratio, base)
     total = np.zeros(base.draws.size)
     # A fixed order of summation: a & b and b & a agree to the last bit.
     for label in sorted(terms):
         total = total + terms[label]
-    return Target(draft.prior, draft.loglik, terms, total, len(draft.ratios))
+    return Target(draft.prior, draft.loglik, terms, total, len(draft.ratios), draft.withheld)
+
+
+def _weighs(base: Base) -> npt.NDArray[np.bool_]:
+    """Draws with a base weight above zero."""
+    if base.log_weights is None:
+        return np.ones(base.draws.size, dtype=np.bool_)
+    return np.asarray(base.log_weights > -np.inf)
 
 
 def _put(terms: dict[str, Array], label: str, delta: Array | None, base: Base) -> None:
-    if delta is None or not np.any(delta):
+    if delta is None:
+        return
+    # A draw without base weight has none in the target either, whatever its ratio.
+    delta = np.where(_weighs(base), delta, 0.0)
+    if not np.any(delta):
         return
     refuse_bad_ratio(delta, base.draws, label)
     delta.flags.writeable = False
@@ -78,21 +92,24 @@ def _put(terms: dict[str, Array], label: str, delta: Array | None, base: Base) -
 
 
 def _prior_delta(target: PriorTarget, base: Base) -> Array | None:
-    if not target.is_swapped and target.factor == 1:
+    factor = target.factor
+    if not target.is_swapped and factor == 1:
         return None
     old = target.base.log_density_checked(base.draws)
-    if (old == -np.inf).any():
-        first = int(np.argmax(old == -np.inf))
+    impossible = (old == -np.inf) & _weighs(base)
+    if impossible.any():
+        first = int(np.argmax(impossible))
         raise RatioError(
             f"prior: {target.base.label}",
             "draws inside the support of the stated prior",
             f"log density −inf at {base.draws.where(first)}",
             "The draws did not come from this prior: state the one that was fitted.",
         )
-    if target.factor == 0:
+    if factor == 0:
         return -old
     new = target.density.log_density_checked(base.draws) if target.is_swapped else old
-    return target.factor * new - old
+    with np.errstate(invalid="ignore"):
+        return np.asarray(factor * new - old)
 
 
 def _loglik_delta(target: LoglikTarget, base: Base) -> Array | None:

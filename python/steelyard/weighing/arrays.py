@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from steelyard.arrays import plain_array
 from steelyard.errors import ArgumentError, ArgumentTypeError, RatioError, ShapeError
 
 __all__ = ["Array", "Axis", "Columns", "columns_of", "refuse_bad_log_weights", "seed_key"]
@@ -63,11 +64,7 @@ class Columns:
 
 def columns_of(x: npt.ArrayLike, axis: Axis, argument: str = "x") -> Columns:
     """See an array as columns of draws along `axis`."""
-    array = np.asarray(x)
-    if array.dtype.kind not in "fiu":
-        raise ArgumentTypeError(
-            argument, "real numbers", f"dtype {array.dtype}", "Convert to float64 or float32."
-        )
+    array = plain_array(x, argument, "fiu")
     if array.ndim == 0:
         raise ShapeError(argument, "an array of draws", "a single number", "Pass all draws.")
     axes = _axes(axis, array.ndim)

@@ -8,6 +8,7 @@ import numpy as np
 import numpy.typing as npt
 
 from steelyard import _core
+from steelyard.arrays import plain_array
 from steelyard.errors import ArgumentError, ShapeError
 from steelyard.weighing.arrays import Array, Axis, Columns, columns_of, refuse_bad_log_weights
 from steelyard.weighing.reductions import deliver
@@ -129,7 +130,7 @@ def tail_shape(
 
 
 def _efficiency(value: npt.ArrayLike, columns: Columns) -> Array:
-    array = np.asarray(value, dtype=np.float64)
+    array = plain_array(value, "relative_efficiency", "fiu").astype(np.float64)
     if array.ndim and array.shape != columns.kept_shape:
         raise ShapeError(
             "relative_efficiency",

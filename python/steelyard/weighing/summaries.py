@@ -8,6 +8,7 @@ import numpy as np
 import numpy.typing as npt
 
 from steelyard import _core
+from steelyard.arrays import plain_array
 from steelyard.errors import ArgumentError, ShapeError
 from steelyard.weighing.arrays import Array, columns_of, refuse_bad_log_weights
 
@@ -16,7 +17,9 @@ __all__ = ["influence", "probabilities", "quantile"]
 
 def probabilities(probs: npt.ArrayLike, argument: str = "probs") -> Array:
     """Probabilities as an array, each in [0, 1]."""
-    array = np.asarray(probs, dtype=np.float64)
+    array = plain_array(probs, argument, "fiu").astype(np.float64)
+    if not array.size:
+        raise ArgumentError(argument, "at least one probability", "none", "Say which.")
     bad = ~((array >= 0) & (array <= 1))
     if bad.any():
         raise ArgumentError(
@@ -71,8 +74,7 @@ def quantile(x: npt.ArrayLike, log_weights: npt.ArrayLike, probs: npt.ArrayLike)
     >>> weights.quantile([1.0, 2.0, 3.0], [0.0, 0.0, 0.0], 0.5)
     2.0
     """
-    array = np.asarray(x)
-    columns = columns_of(array, 0, "x")
+    columns = columns_of(x, 0, "x")
     w = _linear(log_weights, columns.values.shape[0], np.shape(x))
     p = probabilities(probs)
     out = np.empty((p.size, columns.count))
@@ -84,7 +86,7 @@ def quantile(x: npt.ArrayLike, log_weights: npt.ArrayLike, probs: npt.ArrayLike)
 
 
 def _linear(log_weights: npt.ArrayLike, count: int, shape: tuple[int, ...]) -> Array:
-    logs = np.asarray(log_weights, dtype=np.float64)
+    logs = plain_array(log_weights, "log_weights", "fiu").astype(np.float64)
     if logs.shape != (count,):
         raise ShapeError(
             "log_weights", f"shape ({count},) for draws of shape {shape}", str(logs.shape), "Match."

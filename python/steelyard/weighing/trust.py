@@ -50,6 +50,7 @@ def excursions(raw: Array, draws: Draws) -> float:
     efficiency = float(relative_efficiency(raw[:, None], draws, True)[0])
     tail = math.ceil(min(0.2 * draws.size, 3 * math.sqrt(draws.size / efficiency)))
     # Ties keep their order, so the choice among equal weights does not depend on the sort.
+    tail = min(tail, int((raw > 0).sum()))
     largest = np.sort(np.argsort(-raw, kind="stable")[:tail])
     gap = max(1, int(1 / efficiency))
     chain = draws.chain[largest]

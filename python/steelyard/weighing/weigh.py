@@ -8,16 +8,17 @@ from dataclasses import dataclass
 import numpy as np
 
 from steelyard import _core
-from steelyard.base import Draws
+from steelyard.arrays import Frozen
+from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
-from steelyard.base.record import refuse_bad_ratio
+from steelyard.base.ratios import refuse_bad_ratio
 from steelyard.weighing.series import relative_efficiency
 
 __all__ = ["Weights", "base_weights", "weigh_ratio"]
 
 
 @dataclass(frozen=True, eq=False)
-class Weights:
+class Weights(Frozen):
     """
     Weights of the draws.
 
@@ -47,11 +48,20 @@ class Weights:
     largest_share: float
 
 
-def base_weights(log_weights: Array | None, draws: Draws) -> Weights:
-    """The weights of the base: equal, or those that the draws came with, never smoothed."""
-    if log_weights is None:
-        log_weights = np.zeros(draws.size)
-    return _describe(log_weights, log_weights, draws, shape=None, log_mean=0.0)
+def base_weights(base: Base) -> Weights:
+    """
+    The weights of the base: equal, or those that the draws came with.
+
+    Weights that correct an approximation are smoothed like any; given ones are left as they are.
+    """
+    draws, given = base.draws, base.log_weights
+    if given is None:
+        return _describe(np.zeros(draws.size), np.zeros(draws.size), draws, -math.inf, 0.0)
+    if base.is_approximate:
+        return weigh_ratio(given, None, draws, ordered=base.ordered)
+    efficiency = relative_efficiency(np.exp(given - given.max())[:, None], draws, base.ordered)
+    shape = float(_core.tail_shape(np.ascontiguousarray(given)[:, None], efficiency)[0])
+    return _describe(given, given, draws, shape, 0.0)
 
 
 def weigh_ratio(
@@ -99,18 +109,12 @@ def weigh_ratio(
     return _describe(out[:, 0] if smooth else total, total, draws, shape, log_mean)
 
 
-def _describe(
-    log: Array, total: Array, draws: Draws, shape: float | None, log_mean: float
-) -> Weights:
+def _describe(log: Array, total: Array, draws: Draws, shape: float, log_mean: float) -> Weights:
     column = np.empty((draws.size, 1))
     _core.normalise(np.ascontiguousarray(log)[:, None], column)
     raw = np.empty((draws.size, 1))
     _core.normalise(np.ascontiguousarray(total)[:, None], raw)
-    if shape is None:
-        shape = float(_core.tail_shape(raw, np.ones(1))[0]) if np.ptp(total) > 0 else -math.inf
     linear = np.exp(column[:, 0])
-    for array in (column, raw, linear):
-        array.flags.writeable = False
     return Weights(
         column[:, 0],
         linear,

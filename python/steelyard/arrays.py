@@ -1,0 +1,125 @@
+"""Arrays at the door: nothing masked, ragged or of another kind passes unseen; frozen inside."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import fields, is_dataclass
+from typing import Any, TypeVar
+
+import numpy as np
+import numpy.typing as npt
+
+from steelyard.errors import ArgumentTypeError, ShapeError
+
+__all__ = ["Frozen", "ReadOnly", "frozen", "plain_array"]
+
+Value = TypeVar("Value")
+
+
+def plain_array(source: Any, argument: str, kinds: str = "fiub") -> npt.NDArray[Any]:
+    """
+    A numpy array of numbers, not converted yet.
+
+    Parameters
+    ----------
+    source : array_like
+        Anything that numpy reads, or that offers DLPack in the memory of the CPU.
+    argument : str
+        What an error calls it.
+    kinds : str
+        Accepted kinds of dtype, as in ``numpy.dtype.kind``.
+
+    Raises
+    ------
+    ArgumentTypeError
+        For masked values, ragged rows' objects, complex numbers, text, or memory elsewhere.
+    ShapeError
+        For ragged rows.
+    """
+    if isinstance(source, np.ma.MaskedArray):
+        masked = int(np.ma.getmaskarray(source).sum())
+        if masked:
+            raise ArgumentTypeError(
+                argument, "a value everywhere", f"{masked} masked values", "Fill or leave them out."
+            )
+        source = source.data
+    if not isinstance(source, np.ndarray) and hasattr(source, "__dlpack__"):
+        try:
+            source = np.from_dlpack(source)
+        except (BufferError, RuntimeError, TypeError) as error:
+            raise ArgumentTypeError(
+                argument, "an array in the memory of the CPU", str(error), "Copy it there first."
+            ) from error
+    try:
+        array = np.asarray(source)
+    except ValueError as error:
+        raise ShapeError(
+            argument,
+            "an array of equal rows",
+            f"ragged rows ({error})",
+            "For chains of unequal length stack the draws and pass chain= with the chain of each.",
+        ) from error
+    if array.dtype.kind not in kinds:
+        raise ArgumentTypeError(
+            argument,
+            "real numbers",
+            f"dtype {array.dtype}",
+            "Convert to float64; complex, text and object arrays are refused.",
+        )
+    return array
+
+
+def frozen(values: npt.NDArray[Any]) -> npt.NDArray[Any]:
+    """A view of the array that cannot be written to."""
+    view = values.view()
+    view.flags.writeable = False
+    return view
+
+
+class Frozen:
+    """
+    Mixin for frozen dataclasses: their arrays are read-only, also after unpickling.
+
+    numpy forgets the flag when an array is pickled.
+    """
+
+    def __post_init__(self) -> None:
+        if is_dataclass(self):
+            for field in fields(self):
+                value = getattr(self, field.name)
+                if isinstance(value, np.ndarray) and value.flags.writeable:
+                    object.__setattr__(self, field.name, frozen(value))
+
+    def __setstate__(self, state: dict[str, Any]) -> None:
+        self.__dict__.update(state)
+        for name, value in state.items():
+            if isinstance(value, np.ndarray):
+                self.__dict__[name] = frozen(value)
+
+
+class ReadOnly(Mapping[str, Value]):
+    """A mapping that cannot be changed, with read-only arrays, and that can be pickled."""
+
+    __slots__ = ("_items",)
+
+    def __init__(self, items: Mapping[str, Value]) -> None:
+        self._items = {k: _held(v) for k, v in items.items()}
+
+    def __getitem__(self, name: str) -> Value:
+        return self._items[name]
+
+    def __iter__(self) -> Iterator[str]:
+        return iter(self._items)
+
+    def __len__(self) -> int:
+        return len(self._items)
+
+    def __repr__(self) -> str:
+        return repr(self._items)
+
+    def __reduce__(self) -> tuple[type[ReadOnly[Value]], tuple[dict[str, Value]]]:
+        return ReadOnly, (self._items,)
+
+
+def _held(value: Value) -> Value:
+    return frozen(value) if isinstance(value, np.ndarray) else value  # type: ignore[return-value]
