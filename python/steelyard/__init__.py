@@ -6,7 +6,7 @@ set), and read an answer with Monte Carlo errors and a verdict on whether it can
 """
 
 from steelyard import errors, weights
-from steelyard.answers import Answer, Decision, Estimate, weigh
+from steelyard.answers import Answer, Decision, Distance, Estimate, weigh
 from steelyard.base import Draws
 from steelyard.changes import (
     Change,
@@ -40,6 +40,7 @@ __all__ = [
     "Beta",
     "Change",
     "Decision",
+    "Distance",
     "Draws",
     "Estimate",
     "Fit",

@@ -12,6 +12,8 @@ from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 
+from steelyard.answers.covariances import covariance_of
+from steelyard.answers.distances import distance_of, divergence_of
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, mean_of, sd_of
 from steelyard.answers.probabilities import probability_of
@@ -361,6 +363,80 @@ class Answer:
         """
         return self._each(quantity, lambda q: shift_of(self._scale, q, of), events=True)
 
+    def covariance(self, quantity: Any = None) -> Estimate:
+        """
+        Covariance matrix under the target.
+
+        Parameters
+        ----------
+        quantity : str, array_like, callable, mapping or list of str, optional
+            What to estimate; all parameters by default. All elements go into one matrix.
+
+        Returns
+        -------
+        Estimate
+            Shape ``(k, k)`` for k elements, labelled by their names.
+
+        Raises
+        ------
+        UnknownNameError, QuantityError, ShapeError
+            As for :meth:`mean`; also for more than 250 elements.
+
+        Notes
+        -----
+        ``Σ w (f − μ)(g − ν)``, divided by one (not by ``n − 1``).
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> x = np.random.default_rng(1).normal(size=(1000, 2))
+        >>> sy.weigh(np.zeros(1000)).covariance(x).value.shape
+        (2, 2)
+        """
+        return covariance_of(self._scale, self._several(quantity))
+
+    def distance(self, quantity: Any = None) -> Any:
+        """
+        Distances of the marginals under the target from those under the base.
+
+        Parameters
+        ----------
+        quantity : str, array_like, callable or mapping, optional
+            What to compare; all parameters by default.
+
+        Returns
+        -------
+        Distance or dict of Distance
+            Wasserstein-1 in base sd, largest gap of the distribution functions (Kolmogorov), and
+            the cumulative Jensen–Shannon distance [1]_, each an Estimate in the quantity's shape.
+
+        Raises
+        ------
+        UnknownNameError, QuantityError, ShapeError
+            As for :meth:`mean`.
+
+        References
+        ----------
+        .. [1] Nguyen, Vreeken (2015), ECML PKDD.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> x = np.random.default_rng(1).normal(size=4000)
+        >>> distance = sy.weigh(0.5 * x).distance(x)
+        >>> bool(0.4 < distance.wasserstein.value < 0.6)
+        True
+        """
+        several = labelled(quantity, self._base)
+        if several is not None:
+            return {label: distance_of(self._scale, q) for label, q in several.items()}
+        return distance_of(self._scale, read_quantity(quantity, self._base))
+
+    @property
+    def divergence(self) -> Estimate:
+        """Kullback–Leibler divergence of the target from the base, in natural units."""
+        return divergence_of(self._scale)
+
     @property
     def log_evidence_ratio(self) -> Estimate:
         """
@@ -401,13 +477,7 @@ class Answer:
         UnknownNameError, QuantityError, ShapeError
             As for :meth:`mean`.
         """
-        if isinstance(quantities, list | tuple) and all(isinstance(q, str) for q in quantities):
-            quantities = {q: q for q in quantities}
-        several = labelled(quantities, self._base)
-        if several is None:
-            one = read_quantity(quantities, self._base)
-            several = {one.label: one}
-        return tabulate(self._scale, several, probabilities(probs))
+        return tabulate(self._scale, self._several(quantities), probabilities(probs))
 
     def resample(self, size: int, method: Method = "systematic", *, rng: Any = None) -> Draws:
         """
@@ -456,6 +526,16 @@ class Answer:
         if several is not None:
             return {label: work(q) for label, q in several.items()}
         return work(read_quantity(quantity, self._base, events=events))
+
+    def _several(self, quantities: Any) -> dict[str, Quantity]:
+        """Quantities by label, also for one alone and for a list of names."""
+        if isinstance(quantities, list | tuple) and all(isinstance(q, str) for q in quantities):
+            quantities = {q: q for q in quantities}
+        several = labelled(quantities, self._base)
+        if several is not None:
+            return several
+        one = read_quantity(quantities, self._base)
+        return {one.label: one}
 
     def _figures(self) -> str:
         count = self._base.draws.size

@@ -26,8 +26,8 @@ __all__ = [
     "mean_of",
     "moments",
     "sd_of",
-    "shift_series",
     "study",
+    "study_pair",
 ]
 
 # Columns of a quantity that are worked on at a time.
@@ -115,7 +115,7 @@ def sd_of(scale: Scale, quantity: Quantity) -> Estimate:
     return _over_columns(scale, quantity, work)
 
 
-def shift_series(scale: Scale, psi_target: Array, psi_base: Array) -> Series:
+def study_pair(scale: Scale, psi_target: Array, psi_base: Array) -> Series:
     """
     Error of a difference between target and base over the same draws.
 

@@ -16,7 +16,7 @@ from steelyard.answers.estimating import (
     finish,
     joined,
     moments,
-    shift_series,
+    study_pair,
 )
 from steelyard.answers.probabilities import draws_within, event_findings
 from steelyard.answers.quantities import Quantity
@@ -63,7 +63,7 @@ def _read_kind(of: Any) -> Any:
 
 
 def _pair(scale: Scale, psi1: Array, psi0: Array) -> tuple[Series, Array]:
-    series = shift_series(scale, psi1, psi0)
+    series = study_pair(scale, psi1, psi0)
     z = scale.count * (
         scale.weights.linear[:, None] * psi1 - scale.base_weights.linear[:, None] * psi0
     )

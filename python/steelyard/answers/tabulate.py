@@ -16,7 +16,7 @@ from steelyard.errors import ArgumentError
 from steelyard.table import Table
 from steelyard.verdicts import Verdict
 
-__all__ = ["tabulate"]
+__all__ = ["element_names", "tabulate"]
 
 
 def tabulate(scale: Scale, quantities: Mapping[str, Quantity], probs: Array) -> Table:
@@ -67,6 +67,15 @@ def _place(quantity: Quantity, place: tuple[int, ...], dims: list[str]) -> dict[
         labels = quantity.labels.get(dim)
         texts[name] = str(labels[i]) if labels is not None else str(i)
     return texts
+
+
+def element_names(label: str, quantity: Quantity) -> list[str]:
+    """A name for every element: the quantity's own, with labels or positions in brackets."""
+    if not quantity.shape:
+        return [label]
+    dims = _dim_names(quantity)
+    places = (_place(quantity, place, dims) for place in np.ndindex(quantity.shape))
+    return [f"{label}[{', '.join(texts.values())}]" for texts in places]
 
 
 def _at(values: Any, place: tuple[int, ...]) -> float:

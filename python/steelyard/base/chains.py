@@ -3,15 +3,29 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
-from steelyard.errors import DrawsError, ShapeError
+from steelyard.base.names import close_names
+from steelyard.errors import AmbiguousNameError, DrawsError, ShapeError
 
-__all__ = ["Chains", "infer_chains"]
+__all__ = ["Chains", "Found", "infer_chains", "refuse_unsaid_chain", "take_chain"]
+
+
+@dataclass
+class Found:
+    """What one kind of input yields: arrays with their leading axes still on."""
+
+    arrays: dict[str, npt.NDArray[Any]]
+    dims: dict[str, tuple[str, ...]] = field(default_factory=dict)
+    labels: dict[str, npt.NDArray[Any]] = field(default_factory=dict)
+    # Whether the leading axes are (chain, draw): told by names, else to be inferred.
+    has_chain_axis: bool | None = None
+    chain: npt.NDArray[Any] | None = None
+    chain_names: tuple[Any, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -21,6 +35,38 @@ class Chains:
     starts: npt.NDArray[np.int64]
     has_chain_axis: bool
     chain_names: tuple[Any, ...] = ()
+
+
+def take_chain(columns: dict[str, Any], chain: Any, argument: str) -> npt.NDArray[Any] | None:
+    """The chain of each draw: an array as given, or the entry that `chain` names, taken out."""
+    if not isinstance(chain, str):
+        return None if chain is None else np.asarray(chain)
+    if chain not in columns:
+        raise DrawsError(
+            "chain",
+            f"an array of shape (n,), or a column of {argument}",
+            repr(chain),
+            close_names(chain, [str(name) for name in columns]),
+        )
+    return np.asarray(columns.pop(chain))
+
+
+def refuse_unsaid_chain(found: Mapping[str, npt.NDArray[Any]], argument: str) -> None:
+    """
+    Refuse an entry called "chain" of which nobody said what it is.
+
+    Taken for a parameter it would hide that there are several chains, and the Monte Carlo errors
+    would miss the differences between them; taken for the chain a parameter would be lost.
+    """
+    column = found.get("chain")
+    if column is not None and column.ndim == 1:
+        raise AmbiguousNameError(
+            "chain",
+            f"to be told what the entry 'chain' of {argument} is",
+            "nothing",
+            "Pass chain=\"chain\" if it holds the chain of each draw; if it is a parameter, rename "
+            f"it, or pass chain=np.zeros({len(column)}, int) for draws of one chain.",
+        )
 
 
 def infer_chains(
@@ -121,9 +167,10 @@ def _from_index(chain: npt.NDArray[Any], count: int) -> Chains:
             f"shape {chain.shape}",
             "Give one entry a draw.",
         )
+    _refuse_missing(chain)
     breaks = np.flatnonzero(chain[1:] != chain[:-1]) + 1
     starts = np.concatenate([[0], breaks, [count]]).astype(np.int64)
-    names = [chain[i].item() for i in starts[:-1]]
+    names = chain[starts[:-1]].tolist()
     scattered = sorted({str(n) for n in names if names.count(n) > 1})
     if scattered:
         raise DrawsError(
@@ -133,3 +180,17 @@ def _from_index(chain: npt.NDArray[Any], count: int) -> Chains:
             "Sort by chain, keeping the order within each; or pass ordered=False if there is none.",
         )
     return Chains(starts, False, tuple(names))
+
+
+def _refuse_missing(chain: npt.NDArray[Any]) -> None:
+    # None and NaN differ from themselves or from all others: each would start a chain of its own.
+    bad = np.array([entry is None for entry in chain]) if chain.dtype == np.object_ else None
+    if chain.dtype.kind in "fc":
+        bad = ~np.isfinite(chain)
+    if bad is not None and bad.any():
+        raise DrawsError(
+            "chain",
+            "a number or text for every draw",
+            f"{int(bad.sum())} missing, first at draw {int(np.argmax(bad))}",
+            "Say which chain those draws belong to.",
+        )

@@ -2,31 +2,21 @@
 
 from __future__ import annotations
 
-import sys
+import os
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass, field
-from typing import Any, Literal
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
-from steelyard.base.chains import Chains, infer_chains
+from steelyard.base.arrays import plain_array
+from steelyard.base.chains import Chains, Found, infer_chains, refuse_unsaid_chain, take_chain
 from steelyard.base.draws import Array, Draws
+from steelyard.base.frames import from_frame, looks_like_frame
+from steelyard.base.labelled import from_labelled, is_labelled
 from steelyard.errors import ArgumentError, ArgumentTypeError, DrawsError, ShapeError
 
-__all__ = ["float_array", "read_draws"]
-
-
-@dataclass
-class _Found:
-    """What one kind of input yields: arrays with their leading axes still on."""
-
-    arrays: dict[str, npt.NDArray[Any]]
-    dims: dict[str, tuple[str, ...]] = field(default_factory=dict)
-    labels: dict[str, npt.NDArray[Any]] = field(default_factory=dict)
-    # Whether the leading axes are (chain, draw): told by names, else to be inferred.
-    has_chain_axis: bool | None = None
-    chain: npt.NDArray[Any] | None = None
+__all__ = ["read_draws"]
 
 
 def read_draws(
@@ -41,9 +31,10 @@ def read_draws(
         ``(chain, draw, *shape)`` or ``(n, *shape)`` arrays; or one ``(n, d)`` or
         ``(chain, draw, d)`` array with `names`.
     names : iterable of str, optional
-        Names of the last axis of an array.
+        Names of the last axis of an array; other sources have names already.
     chain : array_like or str, optional
-        The chain of each stacked draw, shape ``(n,)``, chains contiguous; a column of a frame.
+        The chain of each stacked draw, shape ``(n,)``, chains contiguous; or the column of a
+        frame, the entry of a mapping, or the coordinate along the draws that holds it.
     argument : str
         What an error calls the source.
 
@@ -58,6 +49,8 @@ def read_draws(
         Where the source cannot be read without dropping or guessing.
     """
     if isinstance(source, Draws):
+        _refuse_unused(source, "names", names, argument)
+        _refuse_unused(source, "chain", chain, argument)
         return source
     found = _collect(source, names, chain, argument)
     if not found.arrays:
@@ -67,39 +60,56 @@ def read_draws(
             raise ArgumentTypeError(
                 f"{argument}: names", "non-empty texts", repr(name), "Rename the parameter."
             )
+    if found.chain is None and not found.has_chain_axis:
+        refuse_unsaid_chain(found.arrays, argument)
     lead = infer_chains(found.arrays, found.has_chain_axis, found.chain, argument)
     values = {k: _stack(v, lead, f"{argument}[{k!r}]") for k, v in found.arrays.items()}
-    return Draws(
-        values, lead.starts, lead.has_chain_axis, found.dims, found.labels, lead.chain_names
-    )
+    chain_names = found.chain_names or lead.chain_names
+    return Draws(values, lead.starts, lead.has_chain_axis, found.dims, found.labels, chain_names)
 
 
-def _collect(source: Any, names: Iterable[str] | None, chain: Any, argument: str) -> _Found:
-    if hasattr(source, "dims") and hasattr(source, "coords"):
-        return _from_xarray(source, chain, argument)
-    if isinstance(source, Mapping):
-        arrays = {k: _plain(v, f"{argument}[{k!r}]") for k, v in source.items()}
-        return _Found(arrays, chain=_chain_array(chain))
-    if hasattr(source, "columns") or hasattr(source, "__arrow_c_stream__"):
-        return _from_frame(source, chain, argument)
-    return _from_array(source, names, chain, argument)
-
-
-def _chain_array(chain: Any) -> npt.NDArray[Any] | None:
-    if chain is None:
-        return None
-    if isinstance(chain, str):
-        raise ArgumentError(
-            "chain",
-            "the chain of each draw, an array of shape (n,)",
-            f"{chain!r}, the name of a column",
-            "A column's name is understood only where the draws are a data frame.",
+def _collect(source: Any, names: Iterable[str] | None, chain: Any, argument: str) -> Found:
+    if isinstance(source, str | bytes | os.PathLike):
+        raise ArgumentTypeError(
+            argument, "draws", f"{source!r}, a path or a text", "Read files with sy.read(path)."
         )
-    return np.asarray(chain)
+    if is_labelled(source):
+        read = from_labelled
+    elif isinstance(source, Mapping):
+        read = _from_mapping
+    elif looks_like_frame(source):
+        read = from_frame
+    else:
+        return _from_array(source, names, chain, argument)
+    _refuse_unused(source, "names", names, argument)
+    return read(source, chain, argument)
 
 
-def _from_array(source: Any, names: Iterable[str] | None, chain: Any, argument: str) -> _Found:
-    array = _plain(source, argument)
+def _refuse_unused(source: Any, option: str, given: Any, argument: str) -> None:
+    if given is not None:
+        raise ArgumentError(
+            option,
+            f"nothing, since {argument} is a {type(source).__name__} that tells them itself",
+            repr(given) if isinstance(given, str) else type(given).__name__,
+            f"Leave {option}= out.",
+        )
+
+
+def _from_mapping(source: Mapping[str, Any], chain: Any, argument: str) -> Found:
+    entries = dict(source)
+    groups = take_chain(entries, chain, argument)
+    labelled = {k: v for k, v in entries.items() if is_labelled(v)}
+    found = from_labelled(labelled, groups, argument) if labelled else Found({}, chain=groups)
+    # The order of the caller is kept, also where only some of the arrays are labelled.
+    found.arrays = {
+        k: found.arrays[k] if k in labelled else plain_array(v, f"{argument}[{k!r}]")
+        for k, v in entries.items()
+    }
+    return found
+
+
+def _from_array(source: Any, names: Iterable[str] | None, chain: Any, argument: str) -> Found:
+    array = plain_array(source, argument)
     if names is None:
         raise ArgumentError(
             "names",
@@ -123,120 +133,8 @@ def _from_array(source: Any, names: Iterable[str] | None, chain: Any, argument: 
         twice = sorted({n for n in listed if listed.count(n) > 1})
         raise ArgumentError("names", "each name once", f"{twice} more than once", "Rename them.")
     arrays = {name: array[..., i] for i, name in enumerate(listed)}
-    return _Found(arrays, has_chain_axis=array.ndim == 3, chain=_chain_array(chain))
-
-
-def _from_xarray(source: Any, chain: Any, argument: str) -> _Found:
-    if hasattr(source, "data_vars"):
-        variables = {str(k): v for k, v in source.data_vars.items()}
-    else:
-        variables = {str(source.name or "value"): source}
-    known = {str(d) for v in variables.values() for d in v.dims}
-    draw = next((d for d in ("draw", "sample") if d in known), None)
-    if draw is None:
-        raise DrawsError(
-            argument,
-            "a dimension 'draw' (and 'chain'), or 'sample'",
-            f"dimensions {sorted(known)}",
-            "Rename the dimensions; of a tree of groups pass the posterior group.",
-        )
-    lead = ("chain", draw) if "chain" in known else (draw,)
-    found = _Found({}, has_chain_axis=len(lead) == 2, chain=_chain_array(chain))
-    for name, variable in variables.items():
-        missing = [d for d in lead if d not in variable.dims]
-        if missing:
-            raise DrawsError(
-                f"{argument}[{name!r}]",
-                f"dimensions {lead} in every variable",
-                f"{tuple(map(str, variable.dims))}",
-                "Leave out variables that are not draws.",
-            )
-        ordered = variable.transpose(*lead, ...)
-        found.arrays[name] = _plain(ordered.values, f"{argument}[{name!r}]")
-        found.dims[name] = tuple(str(d) for d in ordered.dims[len(lead) :])
-        for dim in found.dims[name]:
-            if dim in variable.coords:
-                found.labels[dim] = np.asarray(variable.coords[dim].values)
-    return found
-
-
-def _from_frame(source: Any, chain: Any, argument: str) -> _Found:
-    import narwhals as nw
-
-    try:
-        if hasattr(source, "columns"):
-            frame = nw.from_native(source, eager_only=True)
-        else:
-            frame = nw.DataFrame.from_arrow(source, backend=_frame_backend())
-    except TypeError as error:
-        raise ArgumentTypeError(
-            argument,
-            "a mapping, xarray Dataset, data frame or array",
-            type(source).__name__,
-            "Convert it to a mapping from names to arrays.",
-        ) from error
-    columns = [str(c) for c in frame.columns]
-    groups = None
-    if isinstance(chain, str):
-        if chain not in columns:
-            raise DrawsError(
-                "chain", f"a column of the frame, one of {columns}", repr(chain), "Name it."
-            )
-        groups = frame[chain].to_numpy()
-        columns.remove(chain)
-    elif chain is not None:
-        groups = _chain_array(chain)
-    arrays = {}
-    for name in columns:
-        missing = int(frame[name].null_count())
-        if missing:
-            raise DrawsError(
-                f"{argument}[{name!r}]",
-                "a number in every row",
-                f"{missing} missing values",
-                "Remove the column, or find out why the sampler left rows empty.",
-            )
-        arrays[name] = _plain(frame[name].to_numpy(), f"{argument}[{name!r}]")
-    return _Found(arrays, has_chain_axis=False, chain=groups)
-
-
-def _frame_backend() -> Literal["polars", "pandas", "pyarrow"]:
-    if "polars" in sys.modules:
-        return "polars"
-    return "pandas" if "pandas" in sys.modules else "pyarrow"
-
-
-def _plain(source: Any, argument: str) -> npt.NDArray[Any]:
-    """A numpy array of numbers, not yet converted; anything else is refused by name."""
-    if not isinstance(source, np.ndarray) and hasattr(source, "__dlpack__"):
-        try:
-            source = np.from_dlpack(source)
-        except (BufferError, RuntimeError, TypeError) as error:
-            raise ArgumentTypeError(
-                argument, "an array in the memory of the CPU", str(error), "Copy it there first."
-            ) from error
-    try:
-        array = np.asarray(source)
-    except ValueError as error:
-        raise ShapeError(
-            argument,
-            "an array of equal rows",
-            f"ragged rows ({error})",
-            "For chains of unequal length stack the draws and pass chain= with the chain of each.",
-        ) from error
-    if array.dtype.kind not in "fiub":
-        raise ArgumentTypeError(
-            argument,
-            "real numbers",
-            f"dtype {array.dtype}",
-            "Convert to float64; complex, text and object arrays are refused.",
-        )
-    return array
-
-
-def float_array(array: npt.NDArray[Any]) -> Array:
-    """Aligned native float64; a copy only where that is needed."""
-    return np.require(array, dtype=np.float64, requirements=["A"])
+    groups = take_chain({}, chain, argument)
+    return Found(arrays, has_chain_axis=array.ndim == 3, chain=groups)
 
 
 def _stack(array: npt.NDArray[Any], lead: Chains, argument: str) -> Array:
