@@ -8,6 +8,7 @@ set), and read an answer with Monte Carlo errors and a verdict on whether it can
 from steelyard import errors, weights
 from steelyard.answers import Answer, Decision, Distance, Estimate, weigh
 from steelyard.base import Draws
+from steelyard.base.files import read
 from steelyard.changes import (
     Change,
     add,
@@ -59,6 +60,7 @@ __all__ = [
     "log_ratio",
     "power",
     "raise_noise",
+    "read",
     "swap_loglik",
     "swap_prior",
     "threads",

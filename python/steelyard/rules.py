@@ -55,6 +55,15 @@ RULES: Mapping[str, Rule] = {
         "Keep the power above one half, or refit with the weaker likelihood.",
         "derived; the limit 1/2 is exact for normal posteriors",
     ),
+    "noise_raised": Rule(
+        0.5,
+        1.0,
+        "from",
+        "Noise times {factor} gives weights whose tail shape is {figure} where the data dominate; "
+        "from 0.5 on (a factor of the root of 2, in any dimension) their variance is infinite.",
+        "Keep the factor below 1.41, or refit with more noise: from there less is reachable.",
+        "derived; the limit is exact for normal posteriors that the data dominate",
+    ),
     "weight_shape": Rule(
         0.7,
         1.0,
@@ -90,6 +99,14 @@ RULES: Mapping[str, Rule] = {
         _MORE,
         "ours",
     ),
+    "few_effective_draws": Rule(
+        100.0,
+        25.0,
+        "below",
+        "This estimate is worth {figure} independent draws, below {limit}: its error is uncertain.",
+        "Bring more draws, or ask for something that more draws speak about.",
+        "limits as for the weights; ours",
+    ),
     "few_carry": Rule(
         0.1,
         0.3,
@@ -120,6 +137,14 @@ RULES: Mapping[str, Rule] = {
         "below",
         "Only {figure} effective draws lie {side} the event, below {limit}.",
         "Choose a less extreme event, bring more draws, or refit.",
+        "ours",
+    ),
+    "draws_beyond": Rule(
+        10.0,
+        3.0,
+        "below",
+        "Only {figure} effective draws lie {side} this limit, below {limit}.",
+        "Ask for a less extreme quantile, or bring more draws.",
         "ours",
     ),
     "quantile_reach": Rule(

@@ -49,9 +49,9 @@ fn of_equally_short_intervals_the_first_is_taken() {
 
 #[test]
 fn rounding_of_the_weights_does_not_cost_a_draw() {
-    // Nine tenths of ten draws are nine draws, although 9 times 0.1 is below 0.9 when added up.
-    let x: Vec<f64> = (0..10).map(f64::from).collect();
-    assert_eq!(shortest_interval(&x, &[0.1; 10], 0.9), (0.0, 8.0));
+    // Three tenths of ten draws are three draws, although 0.7 - 0.4 is below 0.3 in doubles.
+    let x = [0.0, 10.0, 20.0, 30.0, 40.0, 41.0, 42.0, 60.0, 70.0, 80.0];
+    assert_eq!(shortest_interval(&x, &[0.1; 10], 0.3), (40.0, 42.0));
 }
 
 #[test]

@@ -30,6 +30,19 @@ fn draws_without_weight_do_no_harm() {
     assert!(weighted_mean(&f, &[0.1, 0.9, 0.0, 0.0]).is_nan());
 }
 
+proptest! {
+    #![proptest_config(fixed(500))]
+
+    #[test]
+    fn the_mean_of_a_constant_is_that_constant(
+        level in prop_oneof![-1e3..1e3, -1e-300..1e-300, -1e300..1e300], count in 1..5000_usize
+    ) {
+        let z = vec![level; count];
+        prop_assert_eq!(mean(&z), level);
+        prop_assert_eq!(mean_square(&z), 0.0);
+    }
+}
+
 #[test]
 fn a_constant_series_has_no_spread_at_all() {
     // 0.1 is not exact, and 7 of them do not add up to 0.7.

@@ -155,6 +155,19 @@ fn a_quartile_of_zero_is_replaced_by_the_smallest_positive_exceedance() {
     assert!(close(found.shape, by_hand, 1e-12), "{found:?} {by_hand}");
 }
 
+#[test]
+fn a_grid_point_of_zero_is_an_exponential_distribution() {
+    // Quartile 1/3 of the largest and 22 grid points: the sixth is 1 + (1 - 2)/1 = 0, where the
+    // formula for the likelihood is 0/0. In the twin that point is moved by 1e-9.
+    let x = [1.0, 1.5, 2.0, 2.5, 3.0];
+    let by_hand = grid_fit(&x, 1.0 + 1e-9);
+    assert!(
+        close(fit(&x).shape, by_hand, 1e-7),
+        "{} {by_hand}",
+        fit(&x).shape
+    );
+}
+
 /// Shape from the grid of a given quartile.
 fn grid_fit(x: &[f64], quartile: f64) -> f64 {
     let n = x.len() as f64;

@@ -78,11 +78,22 @@ proptest! {
 
 #[test]
 fn whole_shares_are_met_exactly() {
-    let w = [0.1, 0.2, 0.0, 0.3, 0.4];
-    for method in [Method::Stratified, Method::Systematic, Method::Residual] {
+    // In doubles two of the shares of the second case fall short of their whole number.
+    let cases: [(&[f64], &[usize]); 2] = [
+        (&[0.1, 0.2, 0.0, 0.3, 0.4], &[0, 1, 1, 3, 3, 3, 4, 4, 4, 4]),
+        (&[0.01, 0.02, 0.05], &[0, 1, 1, 2, 2, 2, 2, 2]),
+    ];
+    for (w, expected) in cases {
         for seed in 0..200 {
-            let chosen = resample(&w, 10, method, key(seed)).unwrap();
-            assert_eq!(chosen, [0, 1, 1, 3, 3, 3, 4, 4, 4, 4], "{method:?} {seed}");
+            let chosen = resample(w, expected.len(), Method::Residual, key(seed)).unwrap();
+            assert_eq!(chosen, expected, "{seed}");
+        }
+    }
+    let (w, expected) = cases[0];
+    for method in [Method::Stratified, Method::Systematic] {
+        for seed in 0..200 {
+            let chosen = resample(w, expected.len(), method, key(seed)).unwrap();
+            assert_eq!(chosen, expected, "{method:?} {seed}");
         }
     }
 }

@@ -116,6 +116,12 @@ fn a_constant_tail_is_left_alone() {
 }
 
 #[test]
+fn log_weights_that_differ_by_less_than_a_weight_can_show_are_constant() {
+    let x: Vec<f64> = (0..100).map(|s| 1e-19 * f64::from(s)).collect();
+    assert_eq!(tail_shape(&x, 1.0), f64::NEG_INFINITY);
+}
+
+#[test]
 fn tied_weights_are_smoothed_in_input_order() {
     // 100 draws, 20 in the tail; six of the tail tie, and their smoothed values must rise.
     let mut x: Vec<f64> = (0..100).map(|s| f64::from(s) / 50.0).collect();

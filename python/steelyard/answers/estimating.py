@@ -190,6 +190,7 @@ def finish(
     own = [
         judge("quantity_shape", series.shape, strained=shape_limit(scale.count)),
         judge("chains_disagree", series.p_value),
+        judge("few_effective_draws", effective, spoken=~np.isnan(effective)),
         *extra,
     ]
     findings = [*scale.findings, *(_shaped(f, shape) for f in own)]

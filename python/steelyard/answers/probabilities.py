@@ -15,6 +15,7 @@ from steelyard.answers.quantities import Quantity
 from steelyard.base.draws import Array
 from steelyard.errors import ArgumentError
 from steelyard.verdicts import Finding, judge
+from steelyard.weighing.series import relative_efficiency
 
 __all__ = ["draws_within", "event_findings", "probability_of"]
 
@@ -91,13 +92,25 @@ def _bounds(
     """
     ``3/ESS_base × sup ratio``: the probability of no draw at all is then e^-3, 5 %.
 
-    The effective number of base draws is that of the base weights; a bound of 1 or more is none.
+    The effective number of base draws is that of the base weights times the least relative
+    efficiency of any parameter, since draws that repeat each other miss an event together. A
+    bound of 1 or more is none.
     """
-    bound = 3 / scale.base_weights.effective_size * largest_ratio
+    if not (none_inside.any() or none_outside.any()):
+        return None, None
+    bound = 3 / (scale.base_weights.effective_size * _least_efficiency(scale)) * largest_ratio
     known = bound if bound < 1 else math.nan
     upper = np.where(none_inside, known, math.nan) if none_inside.any() else None
     lower = np.where(none_outside, 1 - known, math.nan) if none_outside.any() else None
     return upper, lower
+
+
+def _least_efficiency(scale: Scale) -> float:
+    """Least ``var/LRV`` of the base draws over all parameters; 1 for draws without order."""
+    base = scale.base
+    columns = [values.reshape(base.draws.size, -1) for values in base.draws.values()]
+    least = [relative_efficiency(f, base.draws, base.ordered).min() for f in columns]
+    return float(min(least, default=1.0))
 
 
 def _decision(estimate: Estimate, value: Array, error: Array, level: float) -> Decision:

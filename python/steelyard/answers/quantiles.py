@@ -10,6 +10,7 @@ import numpy as np
 from steelyard import _core
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, Series, column_blocks, finish, joined, study
+from steelyard.answers.probabilities import draws_within
 from steelyard.answers.quantities import Quantity
 from steelyard.base.draws import Array
 from steelyard.verdicts import judge
@@ -36,16 +37,23 @@ def quantile_of(
     width = columns.shape[1]
     value, error = np.empty((flat.size, width)), np.empty((flat.size, width))
     shape, p_value = np.empty_like(value), np.empty_like(value)
-    spread = np.empty_like(value)
+    spread, below, above = np.empty_like(value), np.empty_like(value), np.empty_like(value)
     for part, f in column_blocks(columns):
         for row, p in enumerate(flat):
             q, series, variance = quantile_pair(scale, f, float(p))
+            below[row, part], above[row, part] = draws_beyond(scale, f, q, q)
             value[row, part], error[row, part] = q, series.error
             shape[row, part], p_value[row, part] = series.shape, series.p_value
             spread[row, part] = variance
     reach = np.isinf(error)
     series = Series(error.reshape(-1), shape.reshape(-1), p_value.reshape(-1))
-    beyond = judge("quantile_reach", np.zeros(reach.size), spoken=reach.reshape(-1))
+    moves = ~(columns == columns[:1]).all(axis=0)
+    spoken = np.broadcast_to(moves, value.shape).reshape(-1)
+    extra = (
+        judge("quantile_reach", np.zeros(reach.size), spoken=reach.reshape(-1)),
+        judge("draws_beyond", below.reshape(-1), spoken=spoken, side="below"),
+        judge("draws_beyond", above.reshape(-1), spoken=spoken, side="above"),
+    )
     return finish(
         scale,
         quantity,
@@ -53,9 +61,15 @@ def quantile_of(
         series,
         spread.reshape(-1),
         lead=probs.shape,
-        extra=(beyond,),
+        extra=extra,
         lead_dims=lead_dims if probs.ndim == 1 else ("",) * probs.ndim,
     )
+
+
+def draws_beyond(scale: Scale, f: Array, low: Array, high: Array) -> tuple[Array, Array]:
+    """Effective draws below `low` and above `high`, ties with them counted in."""
+    inside = (f <= low).astype(np.float64), (f >= high).astype(np.float64)
+    return draws_within(scale, inside[0]), draws_within(scale, inside[1])
 
 
 def quantile_pair(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Array]:
@@ -92,14 +106,30 @@ def shortest_of(scale: Scale, quantity: Quantity, mass: float) -> Estimate:
         ends[:, part] = _core.shortest_interval(f, w, mass)
         errors[:, part] = _bootstrap(scale, f, mass)
     parts = []
+    beyond = np.empty_like(ends)
+    for part, f in column_blocks(columns):
+        beyond[:, part] = draws_beyond(scale, f, ends[0, part], ends[1, part])
     for end in ends:
         for part, f in column_blocks(columns):
             below = (f <= end[part]).astype(np.float64)
             parts.append(study(scale, below - _core.weighted_mean(below, w)))
     found = joined(parts)
     series = Series(errors.reshape(-1), found.shape, found.p_value)
+    moves = ~(columns == columns[:1]).all(axis=0)
+    sides = [np.array([True, False]), np.array([False, True])]
+    extra = tuple(
+        judge("draws_beyond", beyond.reshape(-1), spoken=np.outer(at, moves).reshape(-1), side=side)
+        for at, side in zip(sides, ("below", "above"), strict=True)
+    )
     return finish(
-        scale, quantity, ends.reshape(-1), series, None, lead=(2,), lead_dims=("interval",)
+        scale,
+        quantity,
+        ends.reshape(-1),
+        series,
+        None,
+        lead=(2,),
+        extra=extra,
+        lead_dims=("interval",),
     )
 
 

@@ -16,6 +16,7 @@ from steelyard.answers.estimating import (
     finish,
     joined,
     moments,
+    study,
     study_pair,
 )
 from steelyard.answers.probabilities import draws_within, event_findings
@@ -23,6 +24,7 @@ from steelyard.answers.quantities import Quantity
 from steelyard.base.draws import Array
 from steelyard.changes import Target
 from steelyard.errors import ArgumentError, PriorError
+from steelyard.verdicts import judge
 
 __all__ = ["log_evidence_ratio_of", "shift_of"]
 
@@ -40,7 +42,8 @@ def shift_of(scale: Scale, quantity: Quantity, of: Any) -> Estimate:
         parts.append(series)
     series = joined(parts)
     if not quantity.is_event:
-        return finish(scale, quantity, value, series, variance)
+        reach = judge("quantile_reach", np.zeros(len(value)), spoken=np.isinf(series.error))
+        return finish(scale, quantity, value, series, variance, extra=(reach,))
     inside, outside = draws_within(scale, columns), draws_within(scale, 1 - columns)
     settled = (inside > 0) & (outside > 0)
     series = Series(np.where(settled, series.error, math.nan), series.shape, series.p_value)
@@ -89,26 +92,26 @@ def _quantile_shift(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Ar
     """
     Shift of a quantile; influence ``−(1{x ≤ q} − p)/density(q)``.
 
-    The density is the slope of the quantile function between p ± its own error, at least two
-    draws apart, so that the error is consistent with that of a single quantile.
+    The density is the slope of the quantile function between p ± the error of the distribution
+    function there, at least two draws apart. Where that leaves (0, 1) the error is +inf.
     """
     ends, influences = [], []
-    for w in (scale.weights.linear, scale.base_weights.linear):
-        q, slope = _quantile_and_slope(scale, f, w, p)
+    reached = np.ones(f.shape[1], dtype=np.bool_)
+    for weights in (scale.weights, scale.base_weights):
+        w = weights.linear
+        q = _core.quantile(f, w, np.full((1, f.shape[1]), p))[0]
         below = np.where(f == q, 0.5, (f < q).astype(np.float64))
+        psi = below - _core.weighted_mean(below, w)
+        half = np.maximum(study(scale, psi, w, weights.raw).error, 2 / weights.effective_size)
+        reached &= (p - half > 0) & (p + half < 1)
+        probs = np.clip(np.stack([p - half, p + half]), 0.0, 1.0)
+        low, high = _core.quantile(f, w, probs)
         ends.append(q)
-        influences.append(-slope * (below - _core.weighted_mean(below, w)))
-    return ends[0] - ends[1], *_pair(scale, influences[0], influences[1])
-
-
-def _quantile_and_slope(scale: Scale, f: Array, w: Array, p: float) -> tuple[Array, Array]:
-    size = 1 / float((w**2).sum())
-    half = max(math.sqrt(p * (1 - p) / size), 2 / size)
-    ends = np.array([max(p - half, 0.0), min(p + half, 1.0)])
-    width = f.shape[1]
-    probs = np.repeat(np.array([[p], [ends[0]], [ends[1]]]), width, axis=1)
-    q, low, high = _core.quantile(f, w, probs)
-    return q, (high - low) / (ends[1] - ends[0])
+        influences.append(-(high - low) / (probs[1] - probs[0]) * psi)
+    series, variance = _pair(scale, influences[0], influences[1])
+    constant = (f == f[:1]).all(axis=0)
+    error = np.where(reached | constant, series.error, math.inf)
+    return ends[0] - ends[1], Series(error, series.shape, series.p_value), variance
 
 
 def log_evidence_ratio_of(scale: Scale, target: Target | None) -> Estimate:

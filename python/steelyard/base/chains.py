@@ -64,7 +64,7 @@ def refuse_unsaid_chain(found: Mapping[str, npt.NDArray[Any]], argument: str) ->
             "chain",
             f"to be told what the entry 'chain' of {argument} is",
             "nothing",
-            "Pass chain=\"chain\" if it holds the chain of each draw; if it is a parameter, rename "
+            'Pass chain="chain" if it holds the chain of each draw; if it is a parameter, rename '
             f"it, or pass chain=np.zeros({len(column)}, int) for draws of one chain.",
         )
 

@@ -7,7 +7,7 @@ from typing import Any, Literal
 
 import numpy.typing as npt
 
-from steelyard.base.arrays import plain_array
+from steelyard.arrays import plain_array
 from steelyard.base.chains import Found, take_chain
 from steelyard.errors import ArgumentTypeError, DrawsError
 
@@ -49,10 +49,8 @@ def frame_columns(source: Any, chain: str | None, argument: str) -> dict[str, np
 
 
 def _refuse_bad_names(source: Any, argument: str) -> None:
-    named = getattr(source, "column_names", None)  # of pyarrow, whose `columns` are arrays
-    if named is None:
-        named = getattr(source, "columns", ())
-    names = list(named() if callable(named) else named)
+    # The `columns` of pyarrow are arrays; their names stand beside them.
+    names: list[Any] = list(getattr(source, "column_names", getattr(source, "columns", ())))
     for name in names:
         if not isinstance(name, str):
             raise ArgumentTypeError(

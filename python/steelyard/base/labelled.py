@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from steelyard.base.arrays import plain_array
+from steelyard.arrays import plain_array
 from steelyard.base.chains import Found, take_chain
 from steelyard.errors import AmbiguousNameError, DrawsError
 
@@ -95,7 +95,8 @@ def _read_chains(
     if found.has_chain_axis:
         if "chain" in coords and coords["chain"].dims == ("chain",):
             found.chain_names = tuple(coords["chain"].values.tolist())
-        found.chain = take_chain({}, chain, argument)
+        found.chain = None if isinstance(chain, str) and chain == "chain" else chain
+        found.chain = take_chain({}, found.chain, argument)
         return
     along = {k: c.values for k, c in coords.items() if tuple(map(str, c.dims)) == lead}
     if chain is None and "chain" in along:

@@ -57,19 +57,25 @@ class PriorTerm:
         parts = [draws.look_up(name, "prior") for name in self.key]
         return np.concatenate([p.reshape(len(p), -1) for p in parts], axis=1)
 
+    def resolved(self, draws: Draws) -> PriorTerm:
+        """The term with a callable replaced by what it returns: a distribution or an array."""
+        if isinstance(self.density, np.ndarray) or not callable_or_array(self.density):
+            return self
+        found = self.density(MappingProxyType(dict(draws.values_by_name)))
+        if callable_or_array(found):
+            found = draw_rows(found, draws, f"prior[{self.label!r}]")
+        return PriorTerm(self.key, found)
+
     def log_density(self, draws: Draws) -> Array:
         """Log density at every draw, summed over trailing axes, shape ``(n,)``."""
-        density = self.density
+        density = self.resolved(draws).density
         if isinstance(density, np.ndarray):
             return density
-        if callable(density) and not _is_frozen(density):
-            density = density(MappingProxyType(dict(draws.values_by_name)))
+        value = self.value(draws)
         if isinstance(density, Distribution):
-            out = density.log_density(self.value(draws), look_up=draws.look_up)
-        elif _is_frozen(density):
-            out = _frozen_log_density(density, self.value(draws))
+            out = density.log_density(value, look_up=draws.look_up)
         else:
-            return draw_rows(density, draws, f"prior[{self.label!r}]")
+            out = _frozen_log_density(density, value, f"prior[{self.label!r}]")
         return np.asarray(out.reshape(draws.size, -1).sum(axis=1))
 
     def log_density_checked(self, draws: Draws) -> Array:
@@ -94,12 +100,28 @@ def _is_frozen(density: Any) -> bool:
     )
 
 
-def _frozen_log_density(density: Any, value: Array) -> Array:
-    evaluate = density.logpdf if hasattr(density, "logpdf") else density.logpmf
+def _frozen_log_density(density: Any, value: Array, argument: str) -> Array:
     try:
-        return np.asarray(evaluate(value), dtype=np.float64)
-    except AttributeError:  # discrete frozen distributions carry logpdf in name only
-        return np.asarray(density.logpmf(value), dtype=np.float64)
+        try:
+            out = density.logpdf(value)
+        except AttributeError:  # discrete frozen distributions carry logpdf in name only
+            out = density.logpmf(value)
+    except ValueError as error:
+        raise PriorError(
+            argument,
+            f"a distribution of values of shape {value.shape[1:] or '()'}",
+            f"one that refuses them ({error})",
+            "Match the distribution's dimension; a joint prior has a tuple of names as key.",
+        ) from error
+    out = np.asarray(out, dtype=np.float64)
+    if out.ndim == 0 or out.shape[0] != value.shape[0]:
+        raise PriorError(
+            argument,
+            f"log densities for {value.shape[0]} draws",
+            f"shape {out.shape}",
+            "Match the distribution's dimension; a joint prior has a tuple of names as key.",
+        )
+    return out
 
 
 def read_prior(

@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from steelyard.base.arrays import plain_array
+from steelyard.arrays import plain_array
 from steelyard.base.chains import Chains, Found, infer_chains, refuse_unsaid_chain, take_chain
 from steelyard.base.draws import Array, Draws
 from steelyard.base.frames import from_frame, looks_like_frame

@@ -107,8 +107,9 @@ def _merge_swap_prior(draft: Draft, edit: SwapPrior) -> None:
         raise ChangeError(
             f"swap_prior[{label!r}]", "each term replaced once", "twice", "Keep one replacement."
         )
-    new = read_term(stated[label].key, edit.density, draft.base.draws, "swap_prior")
-    draft.prior[label] = PriorTarget(stated[label], new)
+    draws = draft.base.draws
+    new = read_term(stated[label].key, edit.density, draws, "swap_prior").resolved(draws)
+    draft.prior[label] = PriorTarget(stated[label].resolved(draws), new)
 
 
 def _merge_power(draft: Draft, edit: Power) -> None:
@@ -119,7 +120,8 @@ def _merge_power(draft: Draft, edit: Power) -> None:
         for key, factor in powers.items():
             label = key if isinstance(key, str) else ", ".join(key)
             known_term(label, stated, "power: prior", "prior")
-            old = draft.prior.get(label, PriorTarget(stated[label], stated[label]))
+            same = stated[label].resolved(draft.base.draws)
+            old = draft.prior.get(label, PriorTarget(same, same))
             draft.prior[label] = PriorTarget(old.base, old.density, (*old.factors, factor))
     if isinstance(likelihood, Mapping) or likelihood != 1:
         # Added terms belong to the target's likelihood, so a common power takes them too.
@@ -200,7 +202,7 @@ def _merge_add(draft: Draft, edit: AddTerm) -> None:
 def _merge_drop(draft: Draft, edit: Drop) -> None:
     stated = _stated(draft.base, "drop")
     for name, mask in selected(edit, stated).items():
-        if not mask.shape:
+        if mask.all():
             _multiply(draft, name, 0.0, "drop")
         else:
             _multiply(draft, name, np.where(mask, 0.0, 1.0), "drop")

@@ -10,6 +10,7 @@ import numpy as np
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.changes.merging import PriorTarget
+from steelyard.changes.noise import NoisyTerm
 from steelyard.changes.target import Target
 from steelyard.densities import Beta, Distribution, Gamma, Normal
 from steelyard.verdicts import Finding, judge
@@ -52,16 +53,15 @@ def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Findi
     """
     values, loosened, labels = [], [], []
     for label, prior in priors.items():
-        old = prior.base.density
-        if not isinstance(old, Normal):
+        about = _distance_from_mean(prior, base)
+        if about is None:
             continue
-        value = prior.base.value(base.draws)
-        shape = value.shape[1:]
-        before = _tail_precision(old, shape)
+        shape = about.shape[1:]
+        before = _tail_precision(prior.base.density, shape)
         after = _tail_precision(prior.density.density, shape)
         if before is None or after is None:
             continue
-        values.append(value.reshape(base.draws.size, -1))
+        values.append(about.reshape(base.draws.size, -1))
         loosened.append((before - prior.factor * after).reshape(-1))
         labels.append(label)
     if not values or not np.any(np.concatenate(loosened) > 0):
@@ -69,12 +69,40 @@ def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Findi
     stacked = np.concatenate(values, axis=1)
     if stacked.shape[1] > min(_MOST_PARAMETERS, base.draws.size // 10):
         return []
-    covariance = np.atleast_2d(np.cov(stacked, rowvar=False, aweights=_base_weights(base)))
-    root = np.linalg.cholesky(covariance + 1e-12 * np.trace(covariance) * np.eye(len(covariance)))
-    shape_by_algebra = np.linalg.eigvalsh(root.T @ (np.concatenate(loosened)[:, None] * root))[-1]
-    return [
-        judge("prior_widened", float(shape_by_algebra), term=", ".join(labels), posterior="normal")
-    ]
+    shape_by_algebra = _largest_eigenvalue(stacked, np.concatenate(loosened), _base_weights(base))
+    term = ", ".join(labels)
+    return [judge("prior_widened", shape_by_algebra, term=term, posterior="normal")]
+
+
+def _distance_from_mean(prior: PriorTarget, base: Base) -> Array | None:
+    """
+    What a normal prior is about, without a mean that is itself a parameter.
+
+    With a named mean the quadratic form is in ``value − mean``; where old and new prior name
+    different means it is joint in both, and nothing is said.
+    """
+    old, new = prior.base.density, prior.density.density
+    if not isinstance(old, Normal):
+        return None
+    value = prior.base.value(base.draws)
+    named = old.mean if isinstance(old.mean, str) else None
+    centre = getattr(new, "mean", getattr(new, "location", None))
+    if named is None and not isinstance(centre, str):
+        return value
+    if named is None or (centre is not None and centre != named):
+        return None
+    mean = base.draws.look_up(named)
+    return np.asarray(value - mean.reshape(mean.shape + (1,) * (value.ndim - mean.ndim)))
+
+
+def _largest_eigenvalue(values: Array, loosened: Array, weights: Array | None) -> float:
+    """Largest eigenvalue of ``V^½ A V^½``, in units of the draws' sds so that scale cancels."""
+    covariance = np.atleast_2d(np.cov(values, rowvar=False, aweights=weights))
+    sd = np.sqrt(np.diag(covariance))
+    unit = np.where(sd > 0, sd, 1.0)
+    eigenvalues, vectors = np.linalg.eigh(covariance / np.outer(unit, unit))
+    root = vectors * np.sqrt(np.maximum(eigenvalues, 0.0))
+    return float(np.linalg.eigvalsh(root.T @ ((loosened * unit**2)[:, None] * root))[-1])
 
 
 def _gamma_or_beta_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:
@@ -120,15 +148,26 @@ def _base_weights(base: Base) -> Array | None:
 
 
 def _likelihood_loosened(base: Base, target: Target) -> list[Finding]:
-    """A likelihood taken as a whole to a power β has tail shape 1 − β where the data dominate."""
+    """
+    Tail shape of the weights where every likelihood term loses information.
+
+    A term taken to the power β, or whose noise is multiplied by f, keeps the share β, or 1/f², of
+    its information. Where the data dominate, the shape is one less the share that is kept: at
+    least one less the largest of the terms.
+    """
     if not base.loglik or set(target.loglik) < set(base.loglik):
         return []
-    powers = []
+    kept = []
     for name, term in target.loglik.items():
-        if name not in base.loglik or term.density is not term.base or np.ndim(term.factor):
+        if name not in base.loglik or np.ndim(term.factor):
             return []
-        powers.append(float(term.factor))
-    power = max(powers)
-    if power >= 1:
+        noise = term.density.noise_factor if isinstance(term.density, NoisyTerm) else 1.0
+        if term.density is not term.base and not isinstance(term.density, NoisyTerm):
+            return []
+        kept.append((float(term.factor) / noise**2, noise, float(term.factor)))
+    share, noise, power = max(kept)
+    if share >= 1:
         return []
-    return [judge("likelihood_loosened", 1 - power, power=f"{power:g}")]
+    if noise == 1:
+        return [judge("likelihood_loosened", 1 - share, power=f"{power:g}")]
+    return [judge("noise_raised", 1 - share, factor=f"{noise:g}")]

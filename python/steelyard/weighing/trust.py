@@ -49,9 +49,11 @@ def excursions(raw: Array, draws: Draws) -> float:
     """
     efficiency = float(relative_efficiency(raw[:, None], draws, True)[0])
     tail = math.ceil(min(0.2 * draws.size, 3 * math.sqrt(draws.size / efficiency)))
-    # Ties keep their order, so the choice among equal weights does not depend on the sort.
-    tail = min(tail, int((raw > 0).sum()))
-    largest = np.sort(np.argsort(-raw, kind="stable")[:tail])
+    cut = np.partition(raw, draws.size - tail - 1)[draws.size - tail - 1]
+    largest = np.flatnonzero(raw > cut)
+    if len(largest) < max(5, tail / 2):
+        # So many draws tie at the top that there is no tail to be judged.
+        return math.inf
     gap = max(1, int(1 / efficiency))
     chain = draws.chain[largest]
     new = (np.diff(largest) > gap) | (np.diff(chain) != 0)
