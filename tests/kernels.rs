@@ -8,6 +8,7 @@ mod kernels {
     mod columns;
     mod effective;
     mod error;
+    mod f_tail;
     mod influence;
     mod interval;
     mod log_sum;

@@ -31,22 +31,22 @@ class Table:
     ----------
     columns : mapping of str to sequence
         The columns in order.
-    errors : mapping of str to str
-        For a column of numbers, the column that holds its Monte Carlo error: numbers print only
-        the digits which that error supports. Full precision stays in the columns.
+    errors : mapping of str to sequence of float
+        For a column of numbers, their Monte Carlo errors: numbers print only the digits which
+        the error supports. Full precision stays in the columns.
     title : str
         Printed above the table.
 
     Examples
     --------
     >>> from steelyard.table import Table
-    >>> print(Table({"quantity": ["mu"], "mean": [0.12345], "error": [0.003]}, {"mean": "error"}))
-    quantity   mean  error
-    mu        0.123  0.003
+    >>> print(Table({"quantity": ["mu"], "mean": [0.12345]}, {"mean": [0.003]}))
+    quantity   mean
+    mu        0.123
     """
 
     columns: Mapping[str, Sequence[Any]]
-    errors: Mapping[str, str] = field(default_factory=dict)
+    errors: Mapping[str, Sequence[float]] = field(default_factory=dict)
     title: str = ""
 
     def __post_init__(self) -> None:
@@ -134,13 +134,11 @@ class Table:
         cells = []
         numeric = []
         for name, column in self.columns.items():
-            error = self.columns.get(self.errors.get(name, ""))
+            error = self.errors.get(name)
             is_number = all(isinstance(v, int | float) for v in column) and len(column) > 0
             numeric.append(is_number)
             if is_number and error is not None:
                 cells.append([rounded(v, e) for v, e in zip(column, error, strict=True)])
-            elif is_number and name in self.errors.values():
-                cells.append([rounded(v, v) for v in column])
             elif is_number:
                 cells.append([short(v) for v in column])
             else:

@@ -96,11 +96,7 @@ class Finding:
         limit = self.refit if rank == 0 else self.strained
         words = {"figure": short(figure), "limit": short(limit), **self.words}
         if "{meaning}" in rule.sentence:
-            words["meaning"] = (
-                "their mean is not finite"
-                if figure >= 1
-                else f"such weights ask for about {short(needed_draws(figure))} draws"
-            )
+            words["meaning"] = _meaning(figure)
         return Reason(
             self.code,
             figure,
@@ -109,6 +105,14 @@ class Finding:
             rule.sentence.format(**words),
             rule.next_step_refit if rank == 0 and rule.next_step_refit else rule.next_step,
         )
+
+
+def _meaning(tail_shape: float) -> str:
+    if math.isinf(tail_shape):
+        return "there are too few draws to fit a tail"
+    if tail_shape >= 1:
+        return "their mean is not finite"
+    return f"such weights ask for about {short(needed_draws(tail_shape))} draws"
 
 
 def _beyond(

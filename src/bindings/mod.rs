@@ -3,6 +3,7 @@
 mod arrays;
 mod effective;
 mod errors;
+mod f_tail;
 mod influence;
 mod interval;
 mod log_sum;
@@ -22,6 +23,8 @@ use pyo3::prelude::*;
 mod _core {
     #[pymodule_export]
     use super::effective::{effective_size, largest_share};
+    #[pymodule_export]
+    use super::f_tail::f_tail;
     #[pymodule_export]
     use super::influence::influence;
     #[pymodule_export]

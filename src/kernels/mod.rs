@@ -6,6 +6,7 @@
 pub mod columns;
 pub mod effective;
 pub mod error;
+pub mod f_tail;
 pub mod influence;
 pub mod interval;
 pub mod log_sum;

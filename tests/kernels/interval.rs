@@ -49,9 +49,9 @@ fn of_equally_short_intervals_the_first_is_taken() {
 
 #[test]
 fn rounding_of_the_weights_does_not_cost_a_draw() {
-    // Three tenths of ten draws are three draws, although 0.7 - 0.4 is below 0.3 in doubles.
-    let x = [0.0, 10.0, 20.0, 30.0, 40.0, 41.0, 42.0, 60.0, 70.0, 80.0];
-    assert_eq!(shortest_interval(&x, &[0.1; 10], 0.3), (40.0, 42.0));
+    // Three tenths of ten draws are three draws, although 0.9 - 0.6 is below 0.3 in doubles.
+    let x = [0.0, 10.0, 20.0, 30.0, 40.0, 50.0, 60.0, 61.0, 62.0, 80.0];
+    assert_eq!(shortest_interval(&x, &[0.1; 10], 0.3), (60.0, 62.0));
 }
 
 #[test]

@@ -539,7 +539,8 @@ class Answer:
 
     def _figures(self) -> str:
         count = self._base.draws.size
-        shape = "none" if math.isinf(self.tail_shape) else short(self.tail_shape)
+        named = {math.inf: "not fitted", -math.inf: "none (no tail)"}
+        shape = named.get(self.tail_shape, short(self.tail_shape))
         return (
             f"{count} draws, effective size {short(round(self.effective_size, 1))}, "
             f"largest share {short(self.largest_share)}, tail shape {shape}"

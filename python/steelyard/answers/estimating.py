@@ -56,6 +56,22 @@ class Series:
     shape: Array
     p_value: Array
 
+    def times(self, unit: Array) -> Series:
+        """The series of values in another unit."""
+        return Series(self.error * unit, self.shape, self.p_value)
+
+
+def in_unit(f: Array) -> tuple[Array, Array]:
+    """
+    Columns in a unit in which squares neither overflow nor vanish, and that unit.
+
+    The unit is 1 but for columns beyond 1e±100, and a power of two, so that nothing is rounded.
+    """
+    top = np.abs(f).max(axis=0)
+    _, exponent = np.frexp(np.where(top > 0, top, 1.0))
+    unit = np.where(np.abs(exponent) > 330, np.ldexp(1.0, exponent), 1.0)
+    return (f / unit if (unit != 1).any() else f), unit
+
 
 def column_blocks(columns: Array) -> Iterator[tuple[slice, Array]]:
     """Blocks of columns, so that work arrays stay small for long vectors of parameters."""
@@ -97,8 +113,10 @@ def mean_of(scale: Scale, quantity: Quantity) -> Estimate:
     """Weighted mean."""
 
     def work(f: Array) -> tuple[Array, Series, Array]:
+        f, unit = in_unit(f)
         mean, sd = moments(scale, f)
-        return mean, study(scale, f - mean), sd**2
+        series = study(scale, f - mean)
+        return mean * unit, series.times(unit), (sd * unit) ** 2
 
     return _over_columns(scale, quantity, work)
 
@@ -107,10 +125,11 @@ def sd_of(scale: Scale, quantity: Quantity) -> Estimate:
     """Weighted standard deviation; influence ``((f − μ)² − σ²)/2σ``."""
 
     def work(f: Array) -> tuple[Array, Series, Array]:
+        f, unit = in_unit(f)
         mean, sd = moments(scale, f)
         psi = ((f - mean) ** 2 - sd**2) / np.where(sd > 0, 2 * sd, 1.0)
         spread = _core.weighted_mean(psi**2, scale.weights.linear)
-        return sd, study(scale, psi), spread
+        return sd * unit, study(scale, psi).times(unit), spread * unit**2
 
     return _over_columns(scale, quantity, work)
 

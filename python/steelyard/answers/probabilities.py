@@ -10,7 +10,7 @@ import numpy.typing as npt
 
 from steelyard import _core
 from steelyard.answers.estimate import Decision, Estimate
-from steelyard.answers.estimating import Scale, column_blocks, finish, joined, study
+from steelyard.answers.estimating import Scale, Series, column_blocks, finish, joined, study
 from steelyard.answers.quantities import Quantity
 from steelyard.base.draws import Array
 from steelyard.errors import ArgumentError
@@ -53,8 +53,7 @@ def probability_of(
     for part, f in column_blocks(columns):
         value[part] = _core.weighted_mean(f, scale.weights.linear)
         parts.append(study(scale, f - value[part]))
-        inside[part] = draws_within(scale, f)
-        outside[part] = draws_within(scale, 1 - f)
+        inside[part], outside[part] = draws_either_side(scale, f, value[part], parts[-1])
     series = joined(parts)
     upper, lower = _bounds(scale, inside == 0, outside == 0, largest_ratio)
     settled = (inside > 0) & (outside > 0)
@@ -76,6 +75,26 @@ def draws_within(scale: Scale, f: Array) -> Array:
     w = scale.weights.linear[:, None]
     total, squares = (w * f).sum(axis=0), (w**2 * f).sum(axis=0)
     return np.where(squares > 0, total**2 / np.where(squares > 0, squares, 1.0), 0.0)
+
+
+def draws_either_side(scale: Scale, f: Array, p: Array, series: Series) -> tuple[Array, Array]:
+    """
+    Effective draws inside and outside of an event of probability `p`.
+
+    The smaller of what the weights leave, ``(Σ w)²/Σ w²`` over the draws of that side, and that
+    side's share of the effective draws of the estimate, which knows of autocorrelation.
+    """
+    with np.errstate(divide="ignore", invalid="ignore"):
+        effective = p * (1 - p) / series.error**2
+    effective = np.where(series.error > 0, effective, float(scale.count))
+    sides = []
+    for side, share in ((f, p), (1 - f, 1 - p)):
+        counted = draws_within(scale, side)
+        held = np.where(share > 0, share, 0.0) * np.where(
+            np.isinf(effective), scale.count, effective
+        )
+        sides.append(np.where(counted > 0, np.fmin(counted, held), 0.0))
+    return sides[0], sides[1]
 
 
 def event_findings(inside: Array, outside: Array) -> tuple[Finding, Finding]:

@@ -41,7 +41,10 @@ def quantile_of(
     for part, f in column_blocks(columns):
         for row, p in enumerate(flat):
             q, series, variance = quantile_pair(scale, f, float(p))
-            below[row, part], above[row, part] = draws_beyond(scale, f, q, q)
+            counts = draws_beyond(scale, f, q, q)
+            effective = _effective(scale, series, variance)
+            below[row, part] = np.fmin(counts[0], p * effective)
+            above[row, part] = np.fmin(counts[1], (1 - p) * effective)
             value[row, part], error[row, part] = q, series.error
             shape[row, part], p_value[row, part] = series.shape, series.p_value
             spread[row, part] = variance
@@ -64,6 +67,13 @@ def quantile_of(
         extra=extra,
         lead_dims=lead_dims if probs.ndim == 1 else ("",) * probs.ndim,
     )
+
+
+def _effective(scale: Scale, series: Series, variance: Array) -> Array:
+    """Effective draws of a quantile; all draws where its error is zero, none where it is not."""
+    with np.errstate(invalid="ignore", divide="ignore"):
+        effective = variance / series.error**2
+    return np.where(series.error > 0, np.nan_to_num(effective, nan=0.0), float(scale.count))
 
 
 def draws_beyond(scale: Scale, f: Array, low: Array, high: Array) -> tuple[Array, Array]:

@@ -12,6 +12,7 @@ from steelyard.base import Base, read_base
 from steelyard.base.draws import Draws
 from steelyard.base.shapes import stacked
 from steelyard.changes import Change, form_target
+from steelyard.changes import log_ratio as changed_by
 from steelyard.errors import ArgumentTypeError, DrawsError, RatioError
 from steelyard.verdicts import judge
 from steelyard.weighing.preflight import preflight
@@ -100,7 +101,8 @@ def weigh(log_ratio: Any, draws: Any = None, *, smooth: bool = True) -> Answer:
         judge("support_unknown", term="the ratio"),
     )
     own = tuple(weight_findings(weights, base.draws, True))
-    return Answer(base, weights, base_weights(base), (*own, *shared))
+    change = changed_by(log_ratio)
+    return Answer(base, weights, base_weights(base), (*own, *shared), change)
 
 
 def _bare_draws(log_ratio: Any) -> Draws:

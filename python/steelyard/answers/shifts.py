@@ -14,12 +14,13 @@ from steelyard.answers.estimating import (
     Series,
     column_blocks,
     finish,
+    in_unit,
     joined,
     moments,
     study,
     study_pair,
 )
-from steelyard.answers.probabilities import draws_within, event_findings
+from steelyard.answers.probabilities import draws_either_side, event_findings
 from steelyard.answers.quantities import Quantity
 from steelyard.base.draws import Array
 from steelyard.changes import Target
@@ -44,7 +45,9 @@ def shift_of(scale: Scale, quantity: Quantity, of: Any) -> Estimate:
     if not quantity.is_event:
         reach = judge("quantile_reach", np.zeros(len(value)), spoken=np.isinf(series.error))
         return finish(scale, quantity, value, series, variance, extra=(reach,))
-    inside, outside = draws_within(scale, columns), draws_within(scale, 1 - columns)
+    p = _core.weighted_mean(columns, scale.weights.linear)
+    own = study(scale, columns - p)
+    inside, outside = draws_either_side(scale, columns, p, own)
     settled = (inside > 0) & (outside > 0)
     series = Series(np.where(settled, series.error, math.nan), series.shape, series.p_value)
     extra = event_findings(inside, outside)
@@ -74,18 +77,22 @@ def _pair(scale: Scale, psi1: Array, psi0: Array) -> tuple[Series, Array]:
 
 
 def _mean_shift(scale: Scale, f: Array) -> tuple[Array, Series, Array]:
+    f, unit = in_unit(f)
     one, _ = moments(scale, f)
     zero, _ = moments(scale, f, scale.base_weights.linear)
-    return one - zero, *_pair(scale, f - one, f - zero)
+    series, variance = _pair(scale, f - one, f - zero)
+    return (one - zero) * unit, series.times(unit), variance * unit**2
 
 
 def _sd_shift(scale: Scale, f: Array) -> tuple[Array, Series, Array]:
     def psi(mean: Array, sd: Array) -> Array:
         return ((f - mean) ** 2 - sd**2) / np.where(sd > 0, 2 * sd, 1.0)
 
+    f, unit = in_unit(f)
     one = moments(scale, f)
     zero = moments(scale, f, scale.base_weights.linear)
-    return one[1] - zero[1], *_pair(scale, psi(*one), psi(*zero))
+    series, variance = _pair(scale, psi(*one), psi(*zero))
+    return (one[1] - zero[1]) * unit, series.times(unit), variance * unit**2
 
 
 def _quantile_shift(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Array]:

@@ -12,6 +12,7 @@ from steelyard.answers.estimating import Scale, mean_of, sd_of
 from steelyard.answers.quantiles import quantile_of
 from steelyard.answers.quantities import Quantity
 from steelyard.base.draws import Array
+from steelyard.base.names import label_texts
 from steelyard.errors import ArgumentError
 from steelyard.table import Table
 from steelyard.verdicts import Verdict
@@ -27,8 +28,11 @@ def tabulate(scale: Scale, quantities: Mapping[str, Quantity], probs: Array) -> 
             "probs", "each probability once", "one twice (to six digits)", "Name each once."
         )
     dims = _dimension_columns(quantities)
-    names = ["quantity", *dims, "mean", "error", "sd", *(f"q{p:g}" for p in probs)]
+    quantile_names = [f"q{p:g}" for p in probs]
+    names = ["quantity", *dims, "mean", "error", "sd", *quantile_names]
     columns: dict[str, list[Any]] = {n: [] for n in [*names, "tail_shape", "level", "reasons"]}
+    # Each figure prints the digits that its own error supports.
+    errors: dict[str, list[float]] = {n: [] for n in ["mean", "error", "sd", *quantile_names]}
     for label, quantity in quantities.items():
         mean, sd = mean_of(scale, quantity), sd_of(scale, quantity)
         quantiles = quantile_of(scale, quantity, probs)
@@ -39,13 +43,16 @@ def tabulate(scale: Scale, quantities: Mapping[str, Quantity], probs: Array) -> 
             columns["mean"].append(_at(mean.value, place))
             columns["error"].append(_at(mean.error, place))
             columns["sd"].append(_at(sd.value, place))
-            for row, p in enumerate(probs):
-                columns[f"q{p:g}"].append(_at(quantiles.value, (row, *place)))
+            errors["mean"].append(_at(mean.error, place))
+            errors["error"].append(_at(mean.error, place))
+            errors["sd"].append(_at(sd.error, place))
+            for row, name in enumerate(quantile_names):
+                columns[name].append(_at(quantiles.value, (row, *place)))
+                errors[name].append(_at(quantiles.error, (row, *place)))
             columns["tail_shape"].append(_at(mean.tail_shape, place))
             level, reasons = _row_verdict(mean, sd, quantiles, place, len(probs))
             columns["level"].append(level)
             columns["reasons"].append(reasons)
-    errors = dict.fromkeys(["mean", "sd", *(f"q{p:g}" for p in probs)], "error")
     return Table(columns, errors)
 
 
@@ -56,7 +63,15 @@ def _dimension_columns(quantities: Mapping[str, Quantity]) -> list[str]:
     return names
 
 
+_TAKEN = ("quantity", "mean", "error", "sd", "tail_shape", "level", "reasons")
+
+
 def _dim_names(quantity: Quantity) -> list[str]:
+    """Columns for the dimensions; a dimension called like another column says that it is one."""
+    return [f"{n} (dimension)" if n in _TAKEN else n for n in _plain_dim_names(quantity)]
+
+
+def _plain_dim_names(quantity: Quantity) -> list[str]:
     unnamed = iter(["index", *(f"index {i}" for i in range(2, 2 + len(quantity.shape)))])
     return [dim or next(unnamed) for dim in quantity.dims]
 
@@ -65,7 +80,7 @@ def _place(quantity: Quantity, place: tuple[int, ...], dims: list[str]) -> dict[
     texts = dict.fromkeys(dims, "")
     for name, dim, i in zip(_dim_names(quantity), quantity.dims, place, strict=True):
         labels = quantity.labels.get(dim)
-        texts[name] = str(labels[i]) if labels is not None else str(i)
+        texts[name] = label_texts(labels)[i] if labels is not None else str(i)
     return texts
 
 

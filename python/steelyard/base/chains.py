@@ -99,6 +99,8 @@ def infer_chains(
             )
     if has_chain_axis is None:
         has_chain_axis = chain is None and _agree_on_two_axes(arrays)
+        if chain is None and not has_chain_axis:
+            _refuse_other_lengths(arrays, first_name, argument)
     if has_chain_axis:
         return _with_axis(arrays, first_name, chain, argument)
     count = first.shape[0]
@@ -111,6 +113,27 @@ def infer_chains(
 def _agree_on_two_axes(arrays: Mapping[str, npt.NDArray[Any]]) -> bool:
     seconds = {array.shape[1] if array.ndim > 1 else None for array in arrays.values()}
     return len(seconds) == 1 and None not in seconds
+
+
+def _refuse_other_lengths(
+    arrays: Mapping[str, npt.NDArray[Any]], first_name: str, argument: str
+) -> None:
+    """
+    Refuse (4, 250) beside (4, 200, 3): most likely chains of which some draws were left out.
+
+    Taken for a stack they would be four draws of long vectors.
+    """
+    first = arrays[first_name].shape
+    if any(array.ndim < 2 or array.shape[1] <= first[0] for array in arrays.values()):
+        return
+    other = next(name for name, array in arrays.items() if array.shape[1] != first[1])
+    raise ShapeError(
+        f"{argument}[{other!r}]",
+        f"the chain and draw axes of {first_name!r}, {first[:2]}",
+        str(arrays[other].shape),
+        "All parameters need the same draws in the same order; for stacked draws (n, …) of one "
+        f"chain pass chain=np.zeros({first[0]}, int).",
+    )
 
 
 def _with_axis(

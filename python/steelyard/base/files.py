@@ -176,7 +176,8 @@ def _read_arrays(file: Path, form: Form, kind: Kind | None, chain: Any) -> Any:
 
 
 def _zipped(file: Path) -> dict[str, npt.NDArray[Any]]:
-    with np.load(file, allow_pickle=False) as archive:
+    # Opened here, since numpy leaves a broken archive open.
+    with file.open("rb") as stream, np.load(stream, allow_pickle=False) as archive:
         names = list(archive.files)
         if len(set(names)) < len(names):
             twice = sorted({name for name in names if names.count(name) > 1})

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import sys
-from typing import Any, Literal
+from typing import Any, Literal, NoReturn
 
 import numpy.typing as npt
 
@@ -16,7 +16,8 @@ __all__ = ["frame_columns", "from_frame", "looks_like_frame"]
 
 def looks_like_frame(source: Any) -> bool:
     """Whether a source has columns, or streams them as Arrow does; single series are arrays."""
-    if hasattr(source, "columns"):
+    # Asked of the class: of a lazy frame, to name the columns may be work.
+    if hasattr(type(source), "columns"):
         return True
     return hasattr(source, "__arrow_c_stream__") and not hasattr(source, "__array__")
 
@@ -31,6 +32,8 @@ def from_frame(source: Any, chain: Any, argument: str) -> Found:
 
 def frame_columns(source: Any, chain: str | None, argument: str) -> dict[str, npt.NDArray[Any]]:
     """All columns of a frame as numpy arrays; missing values are refused."""
+    if hasattr(type(source), "collect"):
+        _refuse_kind(source, argument, None)
     _refuse_bad_names(source, argument)
     frame = _narwhals_frame(source, argument)
     _refuse_chain_in_index(frame.to_native(), chain, argument)
@@ -74,13 +77,16 @@ def _narwhals_frame(source: Any, argument: str) -> Any:
     except TypeError as error:
         if hasattr(source, "__arrow_c_stream__"):
             return nw.DataFrame.from_arrow(source, backend=_backend())
-        raise ArgumentTypeError(
-            argument,
-            "a mapping, xarray Dataset, data frame or array",
-            f"{type(source).__module__.partition('.')[0]}.{type(source).__name__}",
-            "Call .collect() on a lazy frame; convert anything else to a mapping from names to "
-            "arrays.",
-        ) from error
+        _refuse_kind(source, argument, error)
+
+
+def _refuse_kind(source: Any, argument: str, error: Exception | None) -> NoReturn:
+    raise ArgumentTypeError(
+        argument,
+        "a mapping, xarray Dataset, data frame or array",
+        f"{type(source).__module__.partition('.')[0]}.{type(source).__name__}",
+        "Call .collect() on a lazy frame; convert anything else to a mapping from names to arrays.",
+    ) from error
 
 
 def _backend() -> Literal["polars", "pandas", "pyarrow"]:

@@ -13,10 +13,20 @@ import numpy.typing as npt
 
 from steelyard.errors import AmbiguousNameError, UnknownNameError
 
-__all__ = ["Reference", "close_names", "find", "label_position", "position_in"]
+__all__ = [
+    "Reference",
+    "close_names",
+    "find",
+    "label_hits",
+    "label_position",
+    "label_texts",
+    "position_in",
+    "refuse_if_ambiguous",
+]
 
 _BRACKETS = re.compile(r"^(?P<name>.+?)\[(?P<index>[^\[\]]*)\]$")
 _INTEGER = re.compile(r"^[+-]?\d+$")
+_WHOLE = re.compile(r"^[+-]?\d+(\.0*)?$")
 _KEYWORD = re.compile(r"^(label|position)\s*=\s*(.+)$")
 
 
@@ -98,17 +108,40 @@ def position_in(
 def refuse_if_ambiguous(
     labels: npt.NDArray[Any] | None, size: int, argument: str, dim: str
 ) -> None:
-    """Refuse a bare integer where integer labels differ from positions."""
-    if labels is None or labels.dtype.kind not in "iu":
+    """Refuse a bare integer where labels that look like integers differ from positions."""
+    texts = label_texts(labels)
+    if not texts or not all(_WHOLE.match(text) for text in texts):
         return
-    if not np.array_equal(labels, np.arange(size)):
+    if [int(float(text)) for text in texts] != list(range(size)):
         raise AmbiguousNameError(
             argument,
             f"label= or position=, since dimension {dim!r} has integer labels "
-            f"{labels[0]}…{labels[-1]} that differ from positions",
+            f"{texts[0]}…{texts[-1]} that differ from positions",
             "a bare integer",
             'Write for instance "rate[label=4]" or "rate[position=3]"; drop() takes both words.',
         )
+
+
+def label_texts(labels: npt.NDArray[Any] | None) -> list[str]:
+    """Labels as texts; dates as ISO dates, with times only where they have any."""
+    if labels is None:
+        return []
+    if labels.dtype.kind == "M":
+        days = labels.astype("datetime64[D]")
+        unit = "D" if bool((days == labels).all()) else "auto"
+        return [str(text) for text in np.datetime_as_string(labels, unit)]  # type: ignore[call-overload]
+    return [str(label) for label in labels.tolist()]
+
+
+def label_hits(labels: npt.NDArray[Any] | None, label: object) -> npt.NDArray[np.bool_]:
+    """Which labels of a dimension are the one that is meant."""
+    texts = label_texts(labels)
+    if labels is not None and labels.dtype.kind == "M":
+        try:
+            return np.asarray(labels == np.datetime64(label).astype(labels.dtype))  # type: ignore[call-overload]
+        except (TypeError, ValueError):
+            return np.zeros(len(texts), dtype=np.bool_)
+    return np.array([text == str(label) for text in texts], dtype=np.bool_)
 
 
 def label_position(label: object, labels: npt.NDArray[Any] | None, argument: str, dim: str) -> int:
@@ -120,12 +153,12 @@ def label_position(label: object, labels: npt.NDArray[Any] | None, argument: str
             repr(label),
             "Count from 0, or read the draws from an xarray Dataset with coordinates.",
         )
-    hits = [i for i, known in enumerate(labels.tolist()) if str(known) == str(label)]
+    hits = np.flatnonzero(label_hits(labels, label))
     if len(hits) == 1:
-        return hits[0]
+        return int(hits[0])
     raise UnknownNameError(
         argument,
         f"one label of dimension {dim!r}",
-        repr(label) if not hits else f"{label!r}, which stands {len(hits)} times",
-        close_names(str(label), [str(v) for v in labels.tolist()]),
+        repr(label) if not len(hits) else f"{label!r}, which stands {len(hits)} times",
+        close_names(str(label), label_texts(labels)),
     )

@@ -10,7 +10,7 @@ import numpy.typing as npt
 
 from steelyard.arrays import plain_array
 from steelyard.base.likelihood import LoglikTerm
-from steelyard.base.names import close_names, refuse_if_ambiguous
+from steelyard.base.names import close_names, label_hits, label_texts, refuse_if_ambiguous
 from steelyard.changes.edits import Drop
 from steelyard.errors import (
     AmbiguousNameError,
@@ -58,7 +58,7 @@ def _by_text(what: str, kind: str, terms: Mapping[str, LoglikTerm]) -> dict[str,
         (name, dim)
         for name, term in terms.items()
         for dim in term.dims
-        if dim in term.labels and what in [str(v) for v in term.labels[dim].tolist()]
+        if label_hits(term.labels.get(dim), what).any()
     }
     if what in terms and holders and kind != "label":
         raise AmbiguousNameError(
@@ -70,7 +70,7 @@ def _by_text(what: str, kind: str, terms: Mapping[str, LoglikTerm]) -> dict[str,
     if what in terms and kind != "label":
         return {what: np.ones(terms[what].obs_shape, dtype=np.bool_)}
     if not holders:
-        known = [str(v) for t in terms.values() for d in t.labels.values() for v in d.tolist()]
+        known = [text for t in terms.values() for d in t.labels.values() for text in label_texts(d)]
         raise UnknownNameError(
             "drop",
             "a stated likelihood term or an observation's label",
@@ -133,9 +133,9 @@ def _listed(labels: Any) -> list[Any]:
 
 def _refuse_unknown_labels(dim: str, labels: list[Any], terms: list[LoglikTerm]) -> None:
     """Every label must stand in one of the terms, else it would be passed over in silence."""
-    known = {str(v) for t in terms if dim in t.labels for v in t.labels[dim].tolist()}
+    known = [text for t in terms for text in label_texts(t.labels.get(dim))]
     for label in labels:
-        if str(label) not in known:
+        if not any(label_hits(t.labels.get(dim), label).any() for t in terms):
             raise UnknownNameError(
                 f"drop: {dim}",
                 f"a label of dimension {dim!r}",
@@ -147,11 +147,11 @@ def _refuse_unknown_labels(dim: str, labels: list[Any], terms: list[LoglikTerm])
 def _along(term: LoglikTerm, dim: str, labels: list[Any]) -> Mask:
     """Observations of a term whose label along `dim` is one of `labels`."""
     axis = term.dims.index(dim)
-    wanted = {str(label) for label in labels}
-    stored = term.labels[dim].tolist() if dim in term.labels else []
-    hits = np.array([str(v) in wanted for v in stored], dtype=np.bool_)
-    if not len(hits):
-        hits = np.zeros(term.obs_shape[axis], dtype=np.bool_)
+    hits = np.zeros(term.obs_shape[axis], dtype=np.bool_)
+    for label in labels:
+        found = label_hits(term.labels.get(dim), label)
+        if len(found):
+            hits |= found
     shape = [1] * len(term.obs_shape)
     shape[axis] = -1
     return np.broadcast_to(hits.reshape(shape), term.obs_shape).copy()

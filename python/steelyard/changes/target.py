@@ -105,11 +105,11 @@ def _prior_delta(target: PriorTarget, base: Base) -> Array | None:
             f"log density −inf at {base.draws.where(first)}",
             "The draws did not come from this prior: state the one that was fitted.",
         )
-    if factor == 0:
-        return -old
     new = target.density.log_density_checked(base.draws) if target.is_swapped else old
     with np.errstate(invalid="ignore"):
-        return np.asarray(factor * new - old)
+        # To the power 0 a prior is flat on its own support, and still nothing outside of it.
+        raised = np.where(new > -np.inf, 0.0, -np.inf) if factor == 0 else factor * new
+        return np.asarray(raised - old)
 
 
 def _loglik_delta(target: LoglikTarget, base: Base) -> Array | None:

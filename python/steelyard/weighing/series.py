@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
+
 import numpy as np
 
 from steelyard import _core
@@ -48,32 +50,54 @@ def chains_p_value(f: Array, weights: Array, draws: Draws) -> Array:
     """
     Whether the chains agree about weighted means: p-values, one a column of `f` ``(n, k)``.
 
-    ``Q = Σ_c (μ_c − μ̄)²/se_c²`` against chi-square with C − 1 degrees of freedom; μ̄ is the
-    mean weighted by ``1/se_c²``. A chain's error is at least that of as many independent draws as
-    its weights are worth: a chain that never left one value has no error of its own.
+    ``Q = Σ_c (μ_c − μ̄)²/se_c²`` with μ̄ weighted by ``1/se_c²``, in Welch's form, since the
+    errors of the chains are estimated: ``Q/(C − 1)``, corrected, against an F distribution whose
+    second degrees of freedom come from the effective draws of each chain. A chain's error is at
+    least that of as many independent draws as its weights are worth: a chain that never left one
+    value has no error of its own.
+
+    References
+    ----------
+    .. [1] Welch (1951), Biometrika 38.
     """
-    columns = f.shape[1]
     if draws.chains < 2 or int(np.diff(draws.starts).min()) < 8:
-        return np.ones(columns)
+        return np.ones(f.shape[1])
     mean = _core.weighted_mean(f, weights)
     pooled = _core.weighted_mean((f - mean) ** 2, weights)
-    means, precisions = [], []
-    for chain in range(draws.chains):
-        part = slice(int(draws.starts[chain]), int(draws.starts[chain + 1]))
-        share = float(weights[part].sum())
-        if share <= 0:
-            continue
-        w = weights[part] / share
-        mu = _core.weighted_mean(f[part], w)
-        count = part.stop - part.start
-        with np.errstate(invalid="ignore"):
-            z = np.where(w[:, None] > 0, count * w[:, None] * (f[part] - mu), 0.0)
-        lrv = _core.long_run_variance(z, np.array([0, count], dtype=np.int64), True)
-        variance = np.maximum(lrv / count, pooled * float((w**2).sum()))
-        means.append(mu)
-        precisions.append(np.where(variance > 0, 1 / np.where(variance > 0, variance, 1.0), 0.0))
-    mu, precision = np.array(means), np.array(precisions)
+    found = [
+        _one_chain(f[start:stop], weights[start:stop], pooled)
+        for start, stop in pairwise(draws.starts.tolist())
+        if weights[start:stop].sum() > 0
+    ]
+    if len(found) < 2:
+        return np.ones(f.shape[1])
+    mu, precision, freedom = (np.array(part) for part in zip(*found, strict=True))
+    return _welch(mu, precision, freedom)
+
+
+def _one_chain(f: Array, weights: Array, pooled: Array) -> tuple[Array, Array, Array]:
+    """Mean, ``1/se²`` and degrees of freedom of one chain."""
+    w = weights / weights.sum()
+    mu = _core.weighted_mean(f, w)
+    count = len(w)
+    z = np.where(w[:, None] > 0, count * w[:, None] * (f - mu), 0.0)
+    lrv = _core.long_run_variance(z, np.array([0, count], dtype=np.int64), True)
+    least = pooled * float((w**2).sum())
+    variance = np.maximum(lrv / count, least)
+    precision = np.where(variance > 0, 1 / np.where(variance > 0, variance, 1.0), 0.0)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        effective = np.where(variance > 0, pooled / variance, float(count))
+    # A spectral estimate from n effective draws varies like a chi-square of about a third as many.
+    return mu, precision, np.maximum(effective / 3, 1.0)
+
+
+def _welch(mu: Array, precision: Array, freedom: Array) -> Array:
+    chains = len(mu)
     total = precision.sum(axis=0)
-    centre = (precision * mu).sum(axis=0) / np.where(total > 0, total, 1.0)
+    safe = np.where(total > 0, total, 1.0)
+    centre = (precision * mu).sum(axis=0) / safe
     q = (precision * (mu - centre) ** 2).sum(axis=0)
-    return _core.chi_square_tail(q, float(max(len(means) - 1, 1)))
+    spread = ((1 - precision / safe) ** 2 / freedom).sum(axis=0)
+    f_value = q / (chains - 1) / (1 + 2 * (chains - 2) / (chains**2 - 1) * spread)
+    second = (chains**2 - 1) / (3 * np.where(spread > 0, spread, 1.0))
+    return np.where(total > 0, _core.f_tail(f_value, float(chains - 1), second), 1.0)

@@ -9,6 +9,7 @@ import numpy as np
 
 from steelyard.base import Draws
 from steelyard.base.draws import Array
+from steelyard.rules import RULES
 from steelyard.verdicts import Finding, judge, shape_limit
 from steelyard.weighing.series import chains_p_value, relative_efficiency
 from steelyard.weighing.weigh import Weights
@@ -51,8 +52,8 @@ def excursions(raw: Array, draws: Draws) -> float:
     tail = math.ceil(min(0.2 * draws.size, 3 * math.sqrt(draws.size / efficiency)))
     cut = np.partition(raw, draws.size - tail - 1)[draws.size - tail - 1]
     largest = np.flatnonzero(raw > cut)
-    if len(largest) < max(5, tail / 2):
-        # So many draws tie at the top that there is no tail to be judged.
+    if len(largest) < max(RULES["autocorrelated_tail"].strained, tail / 2):
+        # So many draws tie at the top, or so few are there, that there is no tail to be judged.
         return math.inf
     gap = max(1, int(1 / efficiency))
     chain = draws.chain[largest]

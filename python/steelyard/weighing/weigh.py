@@ -102,7 +102,8 @@ def weigh_ratio(
         else float(_core.log_sum_exp(log_weights[:, None])[0])
     )
     log_mean = float(_core.log_sum_exp(total[:, None])[0]) - base_sum
-    raw = np.exp(total - total.max())
+    with np.errstate(over="ignore"):  # −inf is then what is meant
+        raw = np.exp(total - total.max())
     efficiency = relative_efficiency(raw[:, None], draws, ordered)
     out = np.empty((draws.size, 1))
     shape = float(_core.smooth(np.ascontiguousarray(total)[:, None], efficiency, out)[0])
