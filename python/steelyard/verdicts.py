@@ -107,6 +107,14 @@ class Finding:
         )
 
 
+def _worst(finding: Finding, rank: npt.NDArray[np.int8]) -> int:
+    """Position of the worst figure among those of the worst level."""
+    sign = -1.0 if RULES[finding.code].worse == "below" else 1.0
+    figures = np.broadcast_to(sign * finding.figure, rank.shape).reshape(-1)
+    figures = np.where(np.isnan(figures), np.inf, figures)
+    return int(np.argmax(np.where(rank.reshape(-1) == rank.min(), figures, -np.inf)))
+
+
 def _meaning(tail_shape: float) -> str:
     if math.isinf(tail_shape):
         return "there are too few draws to fit a tail"
@@ -204,7 +212,7 @@ class Verdict:
             is_note = RULES[finding.code].worse == "note"
             if rank.size == 0 or (not is_note and rank.min() == 2):
                 continue
-            worst = int(np.argmin(rank))
+            worst = _worst(finding, rank)
             found.append(finding.reason(float(finding.figure.flat[worst]), int(rank.flat[worst])))
         return tuple(sorted(found, key=lambda reason: rank_of(str(reason.level))))
 

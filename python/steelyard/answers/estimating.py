@@ -15,7 +15,12 @@ from steelyard.answers.quantities import Quantity
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.verdicts import Finding, Verdict, judge, shape_limit
-from steelyard.weighing.series import chains_p_value, relative_efficiency, standard_error
+from steelyard.weighing.series import (
+    chains_p_value,
+    relative_efficiency,
+    standard_error,
+    tail_of,
+)
 from steelyard.weighing.weigh import Weights
 
 __all__ = [
@@ -97,7 +102,7 @@ def study(
     efficiency = relative_efficiency(z_raw, draws, ordered)
     return Series(
         standard_error(z, draws, ordered),
-        _core.signed_tail_shape(z_raw, efficiency),
+        tail_of(z_raw, efficiency, draws, ordered),
         chains_p_value(psi, w, draws) if ordered else np.ones(psi.shape[1]),
     )
 
@@ -151,7 +156,7 @@ def study_pair(scale: Scale, psi_target: Array, psi_base: Array) -> Series:
     equal = np.full(count, 1 / count)
     return Series(
         standard_error(z, draws, ordered),
-        _core.signed_tail_shape(z_raw, efficiency),
+        tail_of(z_raw, efficiency, draws, ordered),
         chains_p_value(z, equal, draws) if ordered else np.ones(z.shape[1]),
     )
 

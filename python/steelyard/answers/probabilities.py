@@ -90,10 +90,7 @@ def draws_either_side(scale: Scale, f: Array, p: Array, series: Series) -> tuple
     sides = []
     for side, share in ((f, p), (1 - f, 1 - p)):
         counted = draws_within(scale, side)
-        held = np.where(share > 0, share, 0.0) * np.where(
-            np.isinf(effective), scale.count, effective
-        )
-        sides.append(np.where(counted > 0, np.fmin(counted, held), 0.0))
+        sides.append(np.where(counted > 0, np.fmin(counted, share * effective), 0.0))
     return sides[0], sides[1]
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import replace
 from typing import Any
 
@@ -11,10 +12,11 @@ from steelyard.answers.answer import Answer
 from steelyard.base import Base, read_base
 from steelyard.base.draws import Draws
 from steelyard.base.shapes import stacked
-from steelyard.changes import Change, form_target
+from steelyard.changes import Change, Target, form_target
 from steelyard.changes import log_ratio as changed_by
+from steelyard.changes.noise import NoisyTerm
 from steelyard.errors import ArgumentTypeError, DrawsError, RatioError
-from steelyard.verdicts import judge
+from steelyard.verdicts import Finding, judge
 from steelyard.weighing.preflight import preflight
 from steelyard.weighing.trust import shared_findings, weight_findings
 from steelyard.weighing.weigh import base_weights, weigh_ratio
@@ -33,10 +35,11 @@ def base_answer(base: Base) -> Answer:
 
 def reweigh(base: Base, change: Change, *, smooth: bool = True) -> Answer:
     """The answer under a change; see ``Fit.reweigh``."""
+    _refuse_text(smooth)
     target = form_target(base, change)
     base = replace(base, withheld=target.withheld)
     own = base_weights(base)
-    notes = [judge("base_unverified")]
+    notes = [judge("base_unverified"), *_unknown_supports(target)]
     if not target.terms:
         unchanged = base_answer(base)
         # A swap that equals the base on these draws may still reach beyond them.
@@ -51,6 +54,10 @@ def reweigh(base: Base, change: Change, *, smooth: bool = True) -> Answer:
         *shared_findings(weights, base.draws, base.ordered),
         *notes,
     )
+    if base.log_weights is not None:
+        # The shift compares like with like: both sides smoothed by the same function.
+        zero = np.zeros(base.draws.size)
+        own = weigh_ratio(zero, base.log_weights, base.draws, ordered=base.ordered, smooth=smooth)
     own_findings = tuple(weight_findings(weights, base.draws, base.ordered))
     return Answer(base, weights, own, (*own_findings, *shared), change, target)
 
@@ -89,6 +96,7 @@ def weigh(log_ratio: Any, draws: Any = None, *, smooth: bool = True) -> Answer:
     >>> bool(answer.shift("rate").value > 0)
     True
     """
+    _refuse_text(smooth)
     base = read_base(draws) if draws is not None else Base(_bare_draws(log_ratio))
     ratio = np.array(stacked(log_ratio, base.draws, "log_ratio"), dtype=np.float64)
     if ratio.ndim != 1:
@@ -103,6 +111,22 @@ def weigh(log_ratio: Any, draws: Any = None, *, smooth: bool = True) -> Answer:
     own = tuple(weight_findings(weights, base.draws, True))
     change = changed_by(log_ratio)
     return Answer(base, weights, base_weights(base), (*own, *shared), change)
+
+
+def _unknown_supports(target: Target) -> Iterator[Finding]:
+    """Likelihoods and ratios may vanish where nobody can see it from their values."""
+    for name, term in target.loglik.items():
+        if not (
+            term.base is None or term.density is term.base or isinstance(term.density, NoisyTerm)
+        ):
+            yield judge("support_unknown", term=f"the likelihood of {name}")
+    if target.ratios:
+        yield judge("support_unknown", term="the given ratio")
+
+
+def _refuse_text(smooth: Any) -> None:
+    if not isinstance(smooth, bool | np.bool_):
+        raise ArgumentTypeError("smooth", "True or False", repr(smooth), "Say which.")
 
 
 def _bare_draws(log_ratio: Any) -> Draws:

@@ -45,15 +45,22 @@ def shift_of(scale: Scale, quantity: Quantity, of: Any) -> Estimate:
     if not quantity.is_event:
         reach = judge("quantile_reach", np.zeros(len(value)), spoken=np.isinf(series.error))
         return finish(scale, quantity, value, series, variance, extra=(reach,))
-    p = _core.weighted_mean(columns, scale.weights.linear)
-    own = study(scale, columns - p)
-    inside, outside = draws_either_side(scale, columns, p, own)
+    inside, outside = _sides(scale, columns)
     settled = (inside > 0) & (outside > 0)
     series = Series(np.where(settled, series.error, math.nan), series.shape, series.p_value)
     extra = event_findings(inside, outside)
     return finish(
         scale, quantity, np.where(settled, value, math.nan), series, variance, extra=extra
     )
+
+
+def _sides(scale: Scale, columns: Array) -> tuple[Array, Array]:
+    """Effective draws of the target inside and outside of events."""
+    inside, outside = np.empty(columns.shape[1]), np.empty(columns.shape[1])
+    for part, f in column_blocks(columns):
+        p = _core.weighted_mean(f, scale.weights.linear)
+        inside[part], outside[part] = draws_either_side(scale, f, p, study(scale, f - p))
+    return inside, outside
 
 
 def _read_kind(of: Any) -> Any:

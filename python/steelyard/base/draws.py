@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -90,6 +91,18 @@ class Draws(Frozen, Mapping[str, Array]):
     def chain(self) -> npt.NDArray[np.int64]:
         """Position of the chain that each draw belongs to, shape ``(n,)``."""
         return np.repeat(np.arange(self.chains), np.diff(self.starts))
+
+    @cached_property
+    def repeats(self) -> npt.NDArray[np.intp] | None:
+        """Which draws are the same draw again: a number for each distinct one, or None."""
+        if not len(self.values_by_name):
+            return None
+        rows = np.concatenate(
+            [v.reshape(self.size, -1) for v in self.values_by_name.values()], axis=1
+        )
+        keys = np.ascontiguousarray(rows).view(np.dtype((np.void, rows.itemsize * rows.shape[1])))
+        _, groups = np.unique(keys.reshape(-1), return_inverse=True)
+        return groups if int(groups.max()) + 1 < self.size else None
 
     def find(self, name: str, argument: str = "name") -> Reference:
         """The parameter, or the element of one, that a text names."""

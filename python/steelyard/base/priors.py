@@ -76,7 +76,10 @@ class PriorTerm:
             out = density.log_density(value, look_up=draws.look_up)
         else:
             out = _frozen_log_density(density, value, f"prior[{self.label!r}]")
-        return np.asarray(out.reshape(draws.size, -1).sum(axis=1))
+        flat = out.reshape(draws.size, -1)
+        # +inf beside −inf has no sum, and a row with it is reported as +inf.
+        unbounded = (flat == np.inf).any(axis=1)
+        return np.where(unbounded, np.inf, np.where(flat == np.inf, 0.0, flat).sum(axis=1))
 
     def log_density_checked(self, draws: Draws) -> Array:
         """The same, refusing NaN and +inf, which no density has at a draw."""

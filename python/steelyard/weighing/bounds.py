@@ -57,8 +57,11 @@ def supremum(new: Distribution, old: Distribution) -> Array:
         peak = a / np.where(gain > 0, gain, 1.0)
     else:
         return np.asarray(math.inf)
+    same = np.logical_and.reduce(
+        [np.asarray(getattr(new, n)) == np.asarray(getattr(old, n)) for n in old.domains]
+    )
     ratio = _log_ratio_at(new, old, peak)
-    return np.where(gain > 0, ratio, math.inf)
+    return np.where(same, 0.0, np.where(gain > 0, ratio, math.inf))
 
 
 def _log_ratio_at(new: Distribution, old: Distribution, peak: Array) -> Array:

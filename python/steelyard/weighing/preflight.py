@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -14,7 +16,9 @@ from steelyard.changes.noise import NoisyTerm
 from steelyard.changes.target import Target
 from steelyard.densities import Beta, Distribution, Gamma, Normal
 from steelyard.verdicts import Finding, judge
+from steelyard.weighing.series import relative_efficiency
 from steelyard.weighing.supports import support_findings
+from steelyard.weighing.weigh import base_weights
 
 __all__ = ["preflight"]
 
@@ -23,12 +27,61 @@ _MOST_PARAMETERS = 500
 
 
 def preflight(base: Base, target: Target) -> list[Finding]:
-    """Findings about supports, widened normal priors and weakened likelihoods."""
+    """Findings about supports, widened priors and weakened likelihoods."""
     findings = list(support_findings(base, target))
+    loss = information_lost(base, target)
+    exact = _normal_throughout(base, target, loss)
+    if exact is not None:
+        return findings + exact
     findings += _normal_widened(base, target.prior)
     findings += _gamma_or_beta_widened(base, target.prior)
-    findings += _likelihood_loosened(base, target)
+    if loss is not None:
+        # How far the data dominate is not known, so that this figure is an upper one: it never
+        # condemns an answer by itself.
+        findings.append(_loosened(loss, loss.share_lost, refit=math.inf))
     return findings
+
+
+def _loosened(loss: Loss, figure: float, *, refit: float | None = None) -> Finding:
+    if loss.noise_factor == 1:
+        return judge("likelihood_loosened", figure, refit=refit, power=f"{loss.power:g}")
+    return judge("noise_raised", figure, refit=refit, factor=f"{loss.noise_factor:g}")
+
+
+def _normal_throughout(base: Base, target: Target, loss: Loss | None) -> list[Finding] | None:
+    """
+    The exact figure where every parameter has a normal prior of known sd; else None.
+
+    For a normal posterior with covariance V, prior precision P₀ and a likelihood that loses the
+    share λ of its information, the precision falls by ``λ (V⁻¹ − P₀) + P₀ − P₁``; the tail shape is
+    the largest eigenvalue of ``V^½`` times that times ``V^½``.
+    """
+    if loss is None or base.prior is None:
+        return None
+    values, before, after, named = [], [], [], set()
+    for label, term in base.prior.items():
+        prior = target.prior.get(label, PriorTarget(term, term))
+        old, new = prior.base.density, prior.density.density
+        if not isinstance(old, Normal) or not isinstance(term.key, str) or old.names:
+            return None
+        value = prior.base.value(base.draws)
+        precisions = [_tail_precision(d, value.shape[1:]) for d in (old, new)]
+        if precisions[0] is None or precisions[1] is None:
+            return None
+        values.append(value.reshape(base.draws.size, -1))
+        before.append(precisions[0].reshape(-1))
+        after.append(prior.factor * precisions[1].reshape(-1))
+        named.add(term.key)
+    if named != set(base.parameters):
+        return None
+    stacked = np.concatenate(values, axis=1)
+    root, unit = _root_covariance(stacked, base)
+    if root is None:
+        return None
+    p0, p1 = np.concatenate(before) * unit**2, np.concatenate(after) * unit**2
+    kept = np.eye(len(p0)) - root.T @ (p0[:, None] * root)
+    fall = loss.share_lost * kept + root.T @ ((p0 - p1)[:, None] * root)
+    return [_loosened(loss, float(np.linalg.eigvalsh(fall)[-1]))]
 
 
 def _tail_precision(density: Any, shape: tuple[int, ...]) -> Array | None:
@@ -66,12 +119,12 @@ def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Findi
         labels.append(label)
     if not values or not np.any(np.concatenate(loosened) > 0):
         return []
-    stacked = np.concatenate(values, axis=1)
-    if stacked.shape[1] > min(_MOST_PARAMETERS, base.draws.size // 10):
+    root, unit = _root_covariance(np.concatenate(values, axis=1), base)
+    if root is None:
         return []
-    shape_by_algebra = _largest_eigenvalue(stacked, np.concatenate(loosened), _base_weights(base))
-    term = ", ".join(labels)
-    return [judge("prior_widened", shape_by_algebra, term=term, posterior="normal")]
+    fall = root.T @ ((np.concatenate(loosened) * unit**2)[:, None] * root)
+    figure = float(np.linalg.eigvalsh(fall)[-1])
+    return [judge("prior_widened", figure, term=", ".join(labels), posterior="normal")]
 
 
 def _distance_from_mean(prior: PriorTarget, base: Base) -> Array | None:
@@ -95,14 +148,26 @@ def _distance_from_mean(prior: PriorTarget, base: Base) -> Array | None:
     return np.asarray(value - mean.reshape(mean.shape + (1,) * (value.ndim - mean.ndim)))
 
 
-def _largest_eigenvalue(values: Array, loosened: Array, weights: Array | None) -> float:
-    """Largest eigenvalue of ``V^½ A V^½``, in units of the draws' sds so that scale cancels."""
-    covariance = np.atleast_2d(np.cov(values, rowvar=False, aweights=weights))
-    sd = np.sqrt(np.diag(covariance))
+def _root_covariance(values: Array, base: Base) -> tuple[Array | None, Array]:
+    """
+    Root of the covariance of the draws in units of their sds, and these; None if not estimable.
+
+    The largest eigenvalue of a sample covariance of d columns from n effective draws comes out
+    too large by up to ``(1 + √(d/n))²``; from ``d > n/40`` on (a third) nothing is said.
+    """
+    weights = base_weights(base)
+    mean = weights.linear @ values
+    sd = np.sqrt(weights.linear @ (values - mean) ** 2)
     unit = np.where(sd > 0, sd, 1.0)
-    eigenvalues, vectors = np.linalg.eigh(covariance / np.outer(unit, unit))
-    root = vectors * np.sqrt(np.maximum(eigenvalues, 0.0))
-    return float(np.linalg.eigvalsh(root.T @ ((loosened * unit**2)[:, None] * root))[-1])
+    size, count = values.shape[1], weights.effective_size
+    if base.ordered:
+        count *= float(np.median(relative_efficiency(values, base.draws, True)))
+    if size > min(_MOST_PARAMETERS, count / 40):
+        return None, unit
+    scaled = (values - mean) / unit
+    eigenvalues, vectors = np.linalg.eigh((scaled * weights.linear[:, None]).T @ scaled)
+    unbiased = 1 - float((weights.linear**2).sum())
+    return vectors * np.sqrt(np.maximum(eigenvalues, 0.0) / unbiased), unit
 
 
 def _gamma_or_beta_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:
@@ -120,7 +185,7 @@ def _gamma_or_beta_widened(base: Base, priors: Mapping[str, PriorTarget]) -> lis
             continue
         if old.names or new.names or prior.factor != 1:
             continue
-        value, weights = prior.base.value(base.draws), _base_weights(base)
+        value, weights = prior.base.value(base.draws), base_weights(base).linear
         mean = np.average(value, axis=0, weights=weights)
         variance = np.average((value - mean) ** 2, axis=0, weights=weights)
         if not np.all(variance > 0):
@@ -141,33 +206,32 @@ def _gamma_or_beta_widened(base: Base, priors: Mapping[str, PriorTarget]) -> lis
     return findings
 
 
-def _base_weights(base: Base) -> Array | None:
-    if base.log_weights is None:
-        return None
-    return np.asarray(np.exp(base.log_weights - base.log_weights.max()))
+@dataclass(frozen=True)
+class Loss:
+    """How much of its information the likelihood loses, and by what change."""
+
+    share_lost: float
+    power: float
+    noise_factor: float
 
 
-def _likelihood_loosened(base: Base, target: Target) -> list[Finding]:
+def information_lost(base: Base, target: Target) -> Loss | None:
     """
-    Tail shape of the weights where every likelihood term loses information.
+    The share of its information that a likelihood loses as a whole; None where it loses none.
 
     A term taken to the power β, or whose noise is multiplied by f, keeps the share β, or 1/f², of
-    its information. Where the data dominate, the shape is one less the share that is kept: at
-    least one less the largest of the terms.
+    its information; of several terms the one that keeps most counts.
     """
     if not base.loglik or set(target.loglik) < set(base.loglik):
-        return []
+        return None
     kept = []
     for name, term in target.loglik.items():
         if name not in base.loglik or np.ndim(term.factor):
-            return []
+            return None
+        is_noise = isinstance(term.density, NoisyTerm)
+        if term.density is not term.base and not is_noise:
+            return None
         noise = term.density.noise_factor if isinstance(term.density, NoisyTerm) else 1.0
-        if term.density is not term.base and not isinstance(term.density, NoisyTerm):
-            return []
         kept.append((float(term.factor) / noise**2, noise, float(term.factor)))
     share, noise, power = max(kept)
-    if share >= 1:
-        return []
-    if noise == 1:
-        return [judge("likelihood_loosened", 1 - share, power=f"{power:g}")]
-    return [judge("noise_raised", 1 - share, factor=f"{noise:g}")]
+    return Loss(1 - share, power, noise) if share < 1 else None

@@ -75,7 +75,10 @@ def resample(
         )
     ((_, block),) = columns.blocks()
     refuse_bad_log_weights(block, "log_weights")
-    positive = int((block > -np.inf).sum())
+    logs = block[:, 0]
+    w = np.exp(logs - logs.max())
+    # Weights that vanish beside the largest are zero to the kernel, and so to this count.
+    positive = int((w > 0).sum())
     if method == "without_replacement" and size > positive:
         raise ArgumentError(
             "size",
@@ -83,5 +86,4 @@ def resample(
             str(size),
             "Ask for fewer, or choose a method with replacement.",
         )
-    logs = block[:, 0]
-    return _core.resample(np.exp(logs - logs.max()), int(size), method, key)
+    return _core.resample(w, int(size), method, key)

@@ -5,23 +5,69 @@ from __future__ import annotations
 from itertools import pairwise
 
 import numpy as np
+import numpy.typing as npt
 
 from steelyard import _core
 from steelyard.base import Draws
 from steelyard.base.draws import Array
 
-__all__ = ["chains_p_value", "long_run_variance", "relative_efficiency", "standard_error"]
+__all__ = [
+    "chains_p_value",
+    "long_run_variance",
+    "relative_efficiency",
+    "standard_error",
+    "tail_of",
+]
+
+# Shorter chains, or chains of fewer effective draws, know too little of their own errors.
+_SHORTEST = 50
+_FEWEST = 20
+# A spectral estimate from n effective draws varies like a chi-square of about a third as many.
+_FREEDOM = 3
+
+
+# From this many chains on, chains taken as independent units estimate a variance well enough.
+_MANY_CHAINS = 20
 
 
 def long_run_variance(z: Array, draws: Draws, ordered: bool) -> Array:
     """
     Long-run variance of the columns of `z` ``(n, k)`` over split chains.
 
-    Draws without order have their mean square instead.
+    With many chains it is at least that of chains taken as independent units, since short chains
+    cannot show their own autocorrelation. Draws without order have their mean square instead,
+    with repeated draws taken together.
     """
     if not ordered:
-        return _core.mean_square(z)
-    return _core.long_run_variance(z, draws.starts, True)
+        groups = draws.repeats
+        if groups is None:
+            return _core.mean_square(z)
+        return _grouped(z - z.mean(axis=0), groups)
+    lrv = _core.long_run_variance(z, draws.starts, True)
+    if draws.chains < _MANY_CHAINS:
+        return lrv
+    lengths = np.diff(draws.starts)
+    means = np.add.reduceat(z, draws.starts[:-1], axis=0) / lengths[:, None]
+    spread = (lengths[:, None] * (means - z.mean(axis=0)) ** 2).sum(axis=0) / draws.size
+    units = draws.size / draws.chains * draws.chains / (draws.chains - 1) * spread
+    return np.asarray(np.maximum(lrv, units))
+
+
+def _grouped(z: Array, groups: npt.NDArray[np.intp]) -> Array:
+    """Mean square of draws of which some are the same draw again."""
+    sums = np.zeros((int(groups.max()) + 1, z.shape[1]))
+    np.add.at(sums, groups, z)
+    return np.asarray((sums**2).sum(axis=0) / len(z))
+
+
+def tail_of(z: Array, efficiency: Array, draws: Draws, ordered: bool) -> Array:
+    """Tail shape of a series, repeated draws of an unordered base taken together."""
+    groups = None if ordered else draws.repeats
+    if groups is not None:
+        sums = np.zeros((int(groups.max()) + 1, z.shape[1]))
+        np.add.at(sums, groups, z)
+        z = sums
+    return _core.signed_tail_shape(z, efficiency)
 
 
 def relative_efficiency(z: Array, draws: Draws, ordered: bool) -> Array:
@@ -60,7 +106,7 @@ def chains_p_value(f: Array, weights: Array, draws: Draws) -> Array:
     ----------
     .. [1] Welch (1951), Biometrika 38.
     """
-    if draws.chains < 2 or int(np.diff(draws.starts).min()) < 8:
+    if draws.chains < 2 or int(np.diff(draws.starts).min()) < _SHORTEST:
         return np.ones(f.shape[1])
     mean = _core.weighted_mean(f, weights)
     pooled = _core.weighted_mean((f - mean) ** 2, weights)
@@ -72,7 +118,8 @@ def chains_p_value(f: Array, weights: Array, draws: Draws) -> Array:
     if len(found) < 2:
         return np.ones(f.shape[1])
     mu, precision, freedom = (np.array(part) for part in zip(*found, strict=True))
-    return _welch(mu, precision, freedom)
+    enough = np.median(freedom, axis=0) * _FREEDOM >= _FEWEST
+    return np.where(enough, _welch(mu, precision, freedom), 1.0)
 
 
 def _one_chain(f: Array, weights: Array, pooled: Array) -> tuple[Array, Array, Array]:
@@ -87,8 +134,7 @@ def _one_chain(f: Array, weights: Array, pooled: Array) -> tuple[Array, Array, A
     precision = np.where(variance > 0, 1 / np.where(variance > 0, variance, 1.0), 0.0)
     with np.errstate(invalid="ignore", divide="ignore"):
         effective = np.where(variance > 0, pooled / variance, float(count))
-    # A spectral estimate from n effective draws varies like a chi-square of about a third as many.
-    return mu, precision, np.maximum(effective / 3, 1.0)
+    return mu, precision, np.maximum(effective / _FREEDOM, 1.0)
 
 
 def _welch(mu: Array, precision: Array, freedom: Array) -> Array:

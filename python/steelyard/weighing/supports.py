@@ -14,6 +14,7 @@ from steelyard.changes.merging import PriorTarget
 from steelyard.changes.target import Target
 from steelyard.densities import Distribution
 from steelyard.verdicts import Finding, judge
+from steelyard.weighing.weigh import base_weights
 
 __all__ = ["support_findings"]
 
@@ -80,9 +81,12 @@ def _edge_pressure(prior: PriorTarget, base: Base, edge: Array, side: str) -> It
     if not np.isfinite(limit).all():
         return
     distance = (value - limit if side == "lower" else limit - value).reshape(base.draws.size, -1)
-    sd = value.reshape(base.draws.size, -1).std(axis=0)
+    weights = base_weights(base).linear
+    columns = value.reshape(base.draws.size, -1)
+    mean = weights @ columns
+    sd = np.sqrt(weights @ (columns - mean) ** 2)
     sd = np.where(sd > 0, sd, 1.0)
-    density = ((distance / sd) < _STRIP).mean(axis=0) / _STRIP
+    density = weights @ ((distance / sd) < _STRIP) / _STRIP
     yield judge(
         "edge_pressure",
         float(density.max()),
