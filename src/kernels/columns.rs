@@ -1,6 +1,6 @@
 //! A kernel for one column, applied to every column of an array of any strides.
 //!
-//! Columns are gathered in blocks of [`BLOCK`] into a contiguous buffer of the task, because one
+//! Columns are gathered in blocks of eight into a contiguous buffer of the task, because one
 //! cache line of a C-ordered array holds as many neighbours; a column that is contiguous already
 //! is used where it lies. The values a kernel sees are the same either way.
 

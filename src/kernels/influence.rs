@@ -47,10 +47,6 @@ pub fn influence(
 fn shifts(loglik: &[f64], centred: &[Vec<f64>], out: &mut [f64]) {
     let negative: Vec<f64> = loglik.iter().map(|entry| -entry).collect();
     let largest = maximum(&negative);
-    if !largest.is_finite() {
-        out.fill(f64::NAN);
-        return;
-    }
     let weights: Vec<f64> = negative
         .iter()
         .map(|entry| (entry - largest).exp())

@@ -77,11 +77,8 @@ pub fn long_run_variance(
     chains: &[Range<usize>],
     interrupt: &Interrupt<'_>,
 ) -> Result<f64, KernelError> {
-    if z.is_empty() || z.iter().any(|entry| !entry.is_finite()) {
+    if z.iter().any(|entry| !entry.is_finite()) {
         return Ok(f64::NAN);
-    }
-    if z.iter().all(|&entry| entry == z[0]) {
-        return Ok(0.0);
     }
     let mean_length = z.len() as f64 / chains.len() as f64;
     let between = between(z, chains);
@@ -119,10 +116,7 @@ fn within_chains(
     let at_lag = |lag| variance - within + centred.autocovariance(lag);
     let mut total = 0.0;
     let mut least = f64::INFINITY;
-    for lag in (0..centred.longest).step_by(2) {
-        if lag + 1 >= centred.longest {
-            break;
-        }
+    for lag in (0..centred.longest.saturating_sub(1)).step_by(2) {
         interrupt.check()?;
         let even = if lag == 0 { variance } else { at_lag(lag) };
         let pair = even + at_lag(lag + 1);

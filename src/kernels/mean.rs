@@ -14,15 +14,10 @@ pub fn weighted_mean(f: &[f64], w: &[f64]) -> f64 {
 
 /// Arithmetic mean of `z`, shape `(n,)`: exact for constant `z`, NaN without entries.
 pub fn mean(z: &[f64]) -> f64 {
-    let Some(&first) = z.first() else {
-        return f64::NAN;
-    };
-    if z.iter().all(|&entry| entry == first) {
-        return first;
-    }
     let count = z.len() as f64;
     let rough = sum_by(z.len(), |s| z[s] / count);
-    // The second pass takes out the rounding of the first: a mean far from 0 keeps its last digits.
+    // The second pass takes out the rounding of the first: a mean far from 0 keeps its last digits,
+    // and the mean of a constant is that constant. Without entries it is 0/0.
     rough + sum_by(z.len(), |s| z[s] - rough) / count
 }
 

@@ -31,7 +31,7 @@ impl Pareto {
     /// The same distribution with its shape drawn towards ½ as by 10 further exceedances,
     /// `(n k + 5) / (n + 10)`, which steadies short tails.
     ///
-    /// Source: Vehtari, Simpson, Gelman, Yao & Gabry (2024), JMLR 25, appendix.
+    /// Source: Vehtari, Simpson, Gelman, Yao & Gabry (2024), JMLR 25.
     pub fn shrunk(self, exceedances: usize) -> Self {
         let count = exceedances as f64;
         Self {
@@ -107,11 +107,7 @@ fn likely_b(x: &[f64]) -> f64 {
         .collect();
     let mut log_weights: Vec<f64> = grid.iter().map(|&b| profile(x, b)).collect();
     normalise_in_place(&mut log_weights);
-    sum_by(points, |j| {
-        let weight = log_weights[j].exp();
-        // A grid point far out may be near the largest number; 0 times it must stay 0.
-        if weight == 0.0 { 0.0 } else { weight * grid[j] }
-    })
+    sum_by(points, |j| log_weights[j].exp() * grid[j])
 }
 
 /// The exceedance of rank `⌊n/4 + ½⌋`, or the smallest positive one if that is 0.

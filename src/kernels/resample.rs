@@ -77,7 +77,7 @@ impl FromStr for Method {
 ///
 /// Sources: Kitagawa (1996), Journal of Computational and Graphical Statistics 5, 1-25; Liu & Chen
 /// (1998), JASA 93, 1032-1044; Efraimidis & Spirakis (2006), Information Processing Letters 97,
-/// 181-185, equation 3 taken to the log scale.
+/// 181-185, its keys taken to the log scale.
 pub fn resample(
     w: &[f64],
     size: usize,
@@ -148,7 +148,8 @@ fn cumulated(weights: &[f64]) -> (Vec<f64>, usize) {
 }
 
 /// Copies each index until `reached(size · C_s / C)` of them are there in all, `C_s` the weight up
-/// to and including draw `s`.
+/// to and including draw `s`. A draw of weight 0 has the share of the draw before it, so that it
+/// adds none; the last share is `size` exactly.
 fn by_position(
     weights: &[f64],
     size: usize,
@@ -156,16 +157,9 @@ fn by_position(
 ) -> Result<Vec<usize>, KernelError> {
     let mut chosen = reserved(size)?;
     let (sums, last) = cumulated(weights);
-    let total = sums[last];
-    for (index, sum) in sums.iter().enumerate().take(last + 1) {
-        let share = size as f64 * (sum / total);
-        // Rounding of the last sum must not lose or add a draw.
-        let target = if index == last {
-            size
-        } else {
-            reached(share).min(size)
-        };
-        if weights[index] > 0.0 && target > chosen.len() {
+    for (index, sum) in sums.iter().enumerate() {
+        let target = reached(size as f64 * (sum / sums[last])).min(size);
+        if target > chosen.len() {
             chosen.resize(target, index);
         }
     }
@@ -192,6 +186,8 @@ fn multinomial(
     let mut index = 0;
     for position in &sorted[..size] {
         let target = position / whole * total;
+        // `<=` passes over a leading weight of 0; the bound holds where rounding takes the target to
+        // the total.
         while index < last && sums[index] <= target {
             index += 1;
         }

@@ -20,7 +20,7 @@ pub fn signed_tail_shape(z: &[f64], relative_efficiency: f64) -> f64 {
 }
 
 fn side_shape(z: &[f64], sign: f64, relative_efficiency: f64) -> f64 {
-    let mut side: Vec<f64> = z
+    let side: Vec<f64> = z
         .iter()
         .map(|entry| sign * entry)
         .filter(|&entry| entry > 0.0)
@@ -28,10 +28,6 @@ fn side_shape(z: &[f64], sign: f64, relative_efficiency: f64) -> f64 {
     let length = tail_length(side.len(), relative_efficiency);
     if length < FEWEST {
         return f64::NEG_INFINITY;
-    }
-    let largest = side.iter().copied().fold(0.0, f64::max);
-    for entry in &mut side {
-        *entry /= largest;
     }
     fit_tail(&side, length, |value| value, |value, cutoff| value - cutoff).shape()
 }

@@ -3,10 +3,9 @@
 use super::pareto::{self, FEWEST, Pareto};
 
 /// Tail length `M = ⌈min(S/5, 3 √(S/e))⌉` of `S` draws with relative efficiency `e`, the rule of
-/// Vehtari, Simpson, Gelman, Yao & Gabry (2024), JMLR 25, section 2.
+/// Vehtari, Simpson, Gelman, Yao & Gabry (2024), JMLR 25.
 pub fn tail_length(draws: usize, relative_efficiency: f64) -> usize {
     let count = draws as f64;
-    // `S/5` and not `0.2 S`: 0.2 is a little above one fifth, and the ceiling would see it.
     (3.0 * (count / relative_efficiency).sqrt())
         .min(count / 5.0)
         .ceil() as usize
@@ -41,8 +40,8 @@ impl Tail {
     }
 }
 
-/// The `length` largest of `values`, fitted. `natural` takes a value to the natural scale, on
-/// which its largest is 1; `exceedance(value, cutoff)` is the difference there.
+/// The `length` largest of `values`, fitted. `natural` takes a value to the natural scale;
+/// `exceedance(value, cutoff)` is the difference there.
 ///
 /// `length` must leave at least one value below the tail, the cut-off; else the tail is short.
 pub fn fit_tail(
@@ -67,10 +66,6 @@ pub fn fit_tail(
         .map(|&value| exceedance(value, cutoff))
         .collect();
     let fit = pareto::fit_sorted(&exceedances).shrunk(length);
-    // Values may differ by so little that their exceedances do not.
-    if fit.shape == f64::NEG_INFINITY {
-        return Tail::Constant;
-    }
     Tail::Fitted {
         ranked,
         cutoff,
