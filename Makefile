@@ -5,7 +5,7 @@ PYTHON ?= python3
 VENV ?= .venv
 RUN := $(VENV)/bin/python
 
-.PHONY: help demo test test-python test-rust lint format develop
+.PHONY: help demo test test-python test-rust lint format develop bench
 
 help: ## what there is
 	@grep -hE '^[a-z-]+:.*##' $(MAKEFILE_LIST) | sed -E 's/:.*##/:/'
@@ -49,3 +49,7 @@ format: $(VENV)/bin/pip ## rewrite the sources in the house format
 develop: $(VENV)/bin/pip ## editable install for daily work
 	$(RUN) -m pip install --quiet "maturin>=1.9.4,<2" --group lint --group test
 	$(VENV)/bin/maturin develop --release --extras all
+
+bench: $(VENV)/bin/pip ## speed and memory against plain NumPy/SciPy scripts, verified in the same run
+	$(RUN) -m pip install --quiet --group test ".[all]"
+	env -u OPENBLAS_CORETYPE -u OPENBLAS_L2_SIZE $(RUN) benches/run.py

@@ -15,6 +15,11 @@ __all__ = ["Frozen", "ReadOnly", "frozen", "plain_array"]
 
 Value = TypeVar("Value")
 
+# Device types of the DLPack standard whose memory the CPU may read: the CPU's own, and what CUDA
+# and ROCm pin or manage for both sides.
+_READABLE = {1, 3, 11, 13}
+_DEVICES = {2: "CUDA", 4: "OpenCL", 7: "Vulkan", 8: "Metal", 10: "ROCm", 14: "oneAPI"}
+
 
 def plain_array(source: Any, argument: str, kinds: str = "fiub") -> npt.NDArray[Any]:
     """
@@ -43,13 +48,8 @@ def plain_array(source: Any, argument: str, kinds: str = "fiub") -> npt.NDArray[
                 argument, "a value everywhere", f"{masked} masked values", "Fill or leave them out."
             )
         source = source.data
-    if not isinstance(source, np.ndarray) and hasattr(source, "__dlpack__"):
-        try:
-            source = np.from_dlpack(source)
-        except (BufferError, RuntimeError, TypeError) as error:
-            raise ArgumentTypeError(
-                argument, "an array in the memory of the CPU", str(error), "Copy it there first."
-            ) from error
+    if not isinstance(source, np.ndarray | np.generic) and hasattr(source, "__dlpack__"):
+        source = _from_dlpack(source, argument)
     try:
         array = np.asarray(source)
     except ValueError as error:
@@ -67,6 +67,27 @@ def plain_array(source: Any, argument: str, kinds: str = "fiub") -> npt.NDArray[
             "Convert to float64; complex, text and object arrays are refused.",
         )
     return array
+
+
+def _from_dlpack(source: Any, argument: str) -> npt.NDArray[Any]:
+    kind, index = source.__dlpack_device__() if hasattr(source, "__dlpack_device__") else (1, 0)
+    if int(kind) not in _READABLE:
+        device = _DEVICES.get(int(kind), f"DLPack type {int(kind)}")
+        raise ArgumentTypeError(
+            argument,
+            "an array in the memory of the CPU",
+            f"one on device {device}:{index}",
+            "Copy it to the CPU first, with the .cpu() or device_get() of its library.",
+        )
+    try:
+        return np.from_dlpack(source)
+    except (BufferError, RuntimeError, TypeError, ValueError) as error:
+        raise ArgumentTypeError(
+            argument,
+            "an array that numpy can view through DLPack",
+            f"a {type(source).__name__} that refused: {error}",
+            "Detach it from gradients, convert it to float32 or float64, and copy it to the CPU.",
+        ) from error
 
 
 def frozen(values: npt.NDArray[Any]) -> npt.NDArray[Any]:

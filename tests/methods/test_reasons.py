@@ -107,6 +107,11 @@ def _loosened(power: float) -> sy.Answer:
     return fit.reweigh(sy.power(likelihood=power))
 
 
+def _noisier(factor: float) -> sy.Answer:
+    fit = sy.Fit({"x": _noise(16, N)}, loglik={"gauge A": np.full((N, 2), -1.0)})
+    return fit.reweigh(sy.raise_noise("gauge A", factor, sd=1.0))
+
+
 def _stacked(seed: int) -> sy.Fit:
     return sy.Fit({"x": _noise(seed, N)}, prior={"x": sy.Normal(0, 9)})
 
@@ -127,6 +132,7 @@ STRAINED: list[Case] = [
     ("event_draws", lambda: _event(N - 9), lambda: _event(N - 10)),
     ("prior_widened", lambda: _widened(0.51), lambda: _widened(0.49)),
     ("likelihood_loosened", lambda: _loosened(0.5), lambda: _loosened(0.51)),
+    ("noise_raised", lambda: _noisier(1.42), lambda: _noisier(1.41)),
 ]
 REFIT: list[Case] = [
     ("weight_shape", lambda: _shape(1.15), lambda: _shape(0.9)),

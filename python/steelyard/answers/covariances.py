@@ -49,7 +49,7 @@ def covariance_of(scale: Scale, quantities: Mapping[str, Quantity]) -> Estimate:
     lower, left = np.tril_indices(size)
     flat = joined(rows)
     matrices = []
-    for figures in (flat.error, flat.shape, flat.p_value):
+    for figures in (flat.error, flat.shape, flat.p_value, flat.efficiency):
         matrix = np.empty((size, size))
         matrix[lower, left] = matrix[left, lower] = figures
         matrices.append(matrix.reshape(-1))

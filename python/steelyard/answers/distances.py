@@ -4,14 +4,14 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
 
 from steelyard import _core
 from steelyard.answers.estimate import Estimate
-from steelyard.answers.estimating import Scale, Series, column_blocks, finish, joined, study_pair
+from steelyard.answers.estimating import Scale, column_blocks, finish, joined, study_pair
 from steelyard.answers.quantities import Quantity
 from steelyard.arrays import Frozen
 from steelyard.base.draws import Array
@@ -104,7 +104,7 @@ def _estimate(
         psi1, psi0 = (np.stack([row[1][which] for row in rows], axis=1) for which in (0, 1))
         parts.append(study_pair(scale, psi1, -psi0))
     found = joined(parts)
-    series = Series(np.hypot(found.error, ends), found.shape, found.p_value)
+    series = replace(found, error=np.hypot(found.error, ends))
     return finish(scale, quantity, values, series, None)
 
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -55,15 +55,21 @@ class Scale:
 
 @dataclass(frozen=True, eq=False)
 class Series:
-    """What the influence series of columns show, one entry a column."""
+    """
+    What the influence series of columns show, one entry a column.
+
+    `efficiency` is that of the base draws for the quantity, without its weights: unlike the error
+    it does not shrink where a series misses its own tail.
+    """
 
     error: Array
     shape: Array
     p_value: Array
+    efficiency: Array
 
     def times(self, unit: Array) -> Series:
         """The series of values in another unit."""
-        return Series(self.error * unit, self.shape, self.p_value)
+        return replace(self, error=self.error * unit)
 
 
 def in_unit(f: Array) -> tuple[Array, Array]:
@@ -104,6 +110,7 @@ def study(
         standard_error(z, draws, ordered),
         tail_of(z_raw, efficiency, draws, ordered),
         chains_p_value(psi, w, draws) if ordered else np.ones(psi.shape[1]),
+        relative_efficiency(psi, draws, ordered),
     )
 
 
@@ -158,6 +165,7 @@ def study_pair(scale: Scale, psi_target: Array, psi_base: Array) -> Series:
         standard_error(z, draws, ordered),
         tail_of(z_raw, efficiency, draws, ordered),
         chains_p_value(z, equal, draws) if ordered else np.ones(z.shape[1]),
+        relative_efficiency(psi_target, draws, ordered),
     )
 
 
@@ -179,6 +187,7 @@ def joined(parts: list[Series]) -> Series:
         np.concatenate([p.error for p in parts]),
         np.concatenate([p.shape for p in parts]),
         np.concatenate([p.p_value for p in parts]),
+        np.concatenate([p.efficiency for p in parts]),
     )
 
 
@@ -214,7 +223,7 @@ def finish(
     own = [
         judge("quantity_shape", series.shape, strained=shape_limit(scale.count)),
         judge("chains_disagree", series.p_value),
-        judge("few_effective_draws", effective, spoken=~np.isnan(effective)),
+        judge("few_effective_draws", scale.weights.effective_size * series.efficiency),
         *extra,
     ]
     findings = [*scale.findings, *(_shaped(f, shape) for f in own)]

@@ -53,14 +53,14 @@ def probability_of(
     for part, f in column_blocks(columns):
         value[part] = _core.weighted_mean(f, scale.weights.linear)
         parts.append(study(scale, f - value[part]))
-        inside[part], outside[part] = draws_either_side(scale, f, value[part], parts[-1])
+        inside[part], outside[part] = draws_either_side(scale, f, parts[-1])
     series = joined(parts)
     upper, lower = _bounds(scale, inside == 0, outside == 0, largest_ratio)
     settled = (inside > 0) & (outside > 0)
     spread = value * (1 - value)
     error = np.where(settled, series.error, math.nan)
     shown = np.where(settled, value, math.nan)
-    found = type(series)(error, series.shape, series.p_value)
+    found = replace(series, error=error)
     extra = event_findings(inside, outside)
     estimate = finish(
         scale, event, shown, found, spread, extra=extra, upper_bound=upper, lower_bound=lower
@@ -77,21 +77,18 @@ def draws_within(scale: Scale, f: Array) -> Array:
     return np.where(squares > 0, total**2 / np.where(squares > 0, squares, 1.0), 0.0)
 
 
-def draws_either_side(scale: Scale, f: Array, p: Array, series: Series) -> tuple[Array, Array]:
+def draws_either_side(scale: Scale, f: Array, series: Series) -> tuple[Array, Array]:
     """
-    Effective draws inside and outside of an event of probability `p`.
+    Effective draws inside and outside of an event.
 
-    The smaller of what the weights leave, ``(Σ w)²/Σ w²`` over the draws of that side, and that
-    side's share of the effective draws of the estimate, which knows of autocorrelation.
+    What the weights leave, ``(Σ w)²/Σ w²`` over the draws of that side, times the efficiency of
+    the base draws for the event. The estimate's own error is not asked: it is too small just where
+    draws are missing.
     """
-    with np.errstate(divide="ignore", invalid="ignore"):
-        effective = p * (1 - p) / series.error**2
-    effective = np.where(series.error > 0, effective, float(scale.count))
-    sides = []
-    for side, share in ((f, p), (1 - f, 1 - p)):
-        counted = draws_within(scale, side)
-        sides.append(np.where(counted > 0, np.fmin(counted, share * effective), 0.0))
-    return sides[0], sides[1]
+    return (
+        draws_within(scale, f) * series.efficiency,
+        draws_within(scale, 1 - f) * series.efficiency,
+    )
 
 
 def event_findings(inside: Array, outside: Array) -> tuple[Finding, Finding]:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from itertools import pairwise
 
 import numpy as np
@@ -34,26 +35,20 @@ def quantile_of(
     """
     flat = probs.reshape(-1)
     columns = quantity.columns
-    width = columns.shape[1]
-    value, error = np.empty((flat.size, width)), np.empty((flat.size, width))
-    shape, p_value = np.empty_like(value), np.empty_like(value)
+    value = np.empty((flat.size, columns.shape[1]))
     spread, below, above = np.empty_like(value), np.empty_like(value), np.empty_like(value)
+    found: list[list[Series]] = [[] for _ in flat]
     for part, f in column_blocks(columns):
         for row, p in enumerate(flat):
-            q, series, variance = quantile_pair(scale, f, float(p))
-            counts = draws_beyond(scale, f, q, q)
-            effective = _effective(scale, series, variance)
-            below[row, part] = np.fmin(counts[0], p * effective)
-            above[row, part] = np.fmin(counts[1], (1 - p) * effective)
-            value[row, part], error[row, part] = q, series.error
-            shape[row, part], p_value[row, part] = series.shape, series.p_value
-            spread[row, part] = variance
-    reach = np.isinf(error)
-    series = Series(error.reshape(-1), shape.reshape(-1), p_value.reshape(-1))
+            q, series, spread[row, part] = quantile_pair(scale, f, float(p))
+            value[row, part] = q
+            below[row, part], above[row, part] = draws_beyond(scale, f, q, q, series)
+            found[row].append(series)
+    series = joined([series for row in found for series in row])
     moves = ~(columns == columns[:1]).all(axis=0)
     spoken = np.broadcast_to(moves, value.shape).reshape(-1)
     extra = (
-        judge("quantile_reach", np.zeros(reach.size), spoken=reach.reshape(-1)),
+        judge("quantile_reach", np.zeros(value.size), spoken=np.isinf(series.error)),
         judge("draws_beyond", below.reshape(-1), spoken=spoken, side="below"),
         judge("draws_beyond", above.reshape(-1), spoken=spoken, side="above"),
     )
@@ -69,17 +64,12 @@ def quantile_of(
     )
 
 
-def _effective(scale: Scale, series: Series, variance: Array) -> Array:
-    """Effective draws of a quantile; all draws where its error is zero, none where it is not."""
-    with np.errstate(invalid="ignore", divide="ignore"):
-        effective = variance / series.error**2
-    return np.where(series.error > 0, np.nan_to_num(effective, nan=0.0), float(scale.count))
-
-
-def draws_beyond(scale: Scale, f: Array, low: Array, high: Array) -> tuple[Array, Array]:
-    """Effective draws below `low` and above `high`, ties with them counted in."""
+def draws_beyond(
+    scale: Scale, f: Array, low: Array, high: Array, series: Series
+) -> tuple[Array, Array]:
+    """Effective draws at or below `low` and at or above `high`, as for events."""
     inside = (f <= low).astype(np.float64), (f >= high).astype(np.float64)
-    return draws_within(scale, inside[0]), draws_within(scale, inside[1])
+    return tuple(draws_within(scale, side) * series.efficiency for side in inside)  # type: ignore[return-value]
 
 
 def quantile_pair(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Array]:
@@ -100,7 +90,7 @@ def quantile_pair(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Arra
     with np.errstate(invalid="ignore", divide="ignore"):
         # Effective draws are those of the distribution function at the quantile.
         variance = np.where(series.error > 0, p * (1 - p) / series.error**2 * error**2, 0.0)
-    return q, Series(error, series.shape, series.p_value), variance
+    return q, replace(series, error=error), variance
 
 
 def shortest_of(scale: Scale, quantity: Quantity, mass: float) -> Estimate:
@@ -117,14 +107,12 @@ def shortest_of(scale: Scale, quantity: Quantity, mass: float) -> Estimate:
         errors[:, part] = _bootstrap(scale, f, mass)
     parts = []
     beyond = np.empty_like(ends)
-    for part, f in column_blocks(columns):
-        beyond[:, part] = draws_beyond(scale, f, ends[0, part], ends[1, part])
-    for end in ends:
+    for side, end in enumerate(ends):
         for part, f in column_blocks(columns):
             below = (f <= end[part]).astype(np.float64)
             parts.append(study(scale, below - _core.weighted_mean(below, w)))
-    found = joined(parts)
-    series = Series(errors.reshape(-1), found.shape, found.p_value)
+            beyond[side, part] = draws_beyond(scale, f, end[part], end[part], parts[-1])[side]
+    series = replace(joined(parts), error=errors.reshape(-1))
     moves = ~(columns == columns[:1]).all(axis=0)
     sides = [np.array([True, False]), np.array([False, True])]
     extra = tuple(

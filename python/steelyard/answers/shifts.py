@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -47,7 +48,7 @@ def shift_of(scale: Scale, quantity: Quantity, of: Any) -> Estimate:
         return finish(scale, quantity, value, series, variance, extra=(reach,))
     inside, outside = _sides(scale, columns)
     settled = (inside > 0) & (outside > 0)
-    series = Series(np.where(settled, series.error, math.nan), series.shape, series.p_value)
+    series = replace(series, error=np.where(settled, series.error, math.nan))
     extra = event_findings(inside, outside)
     return finish(
         scale, quantity, np.where(settled, value, math.nan), series, variance, extra=extra
@@ -59,7 +60,7 @@ def _sides(scale: Scale, columns: Array) -> tuple[Array, Array]:
     inside, outside = np.empty(columns.shape[1]), np.empty(columns.shape[1])
     for part, f in column_blocks(columns):
         p = _core.weighted_mean(f, scale.weights.linear)
-        inside[part], outside[part] = draws_either_side(scale, f, p, study(scale, f - p))
+        inside[part], outside[part] = draws_either_side(scale, f, study(scale, f - p))
     return inside, outside
 
 
@@ -125,7 +126,7 @@ def _quantile_shift(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Ar
     series, variance = _pair(scale, influences[0], influences[1])
     constant = (f == f[:1]).all(axis=0)
     error = np.where(reached | constant, series.error, math.inf)
-    return ends[0] - ends[1], Series(error, series.shape, series.p_value), variance
+    return ends[0] - ends[1], replace(series, error=error), variance
 
 
 def log_evidence_ratio_of(scale: Scale, target: Target | None) -> Estimate:

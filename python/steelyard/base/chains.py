@@ -99,6 +99,8 @@ def infer_chains(
             )
     if has_chain_axis is None:
         has_chain_axis = chain is None and _agree_on_two_axes(arrays)
+        if has_chain_axis:
+            _refuse_many_chains(arrays[first_name], argument)
         if chain is None and not has_chain_axis:
             _refuse_other_lengths(arrays, first_name, argument)
     if has_chain_axis:
@@ -108,6 +110,24 @@ def infer_chains(
     if chain is None:
         return Chains(np.array([0, count], dtype=np.int64), False)
     return _from_index(chain, count)
+
+
+# More chains than this are taken at the user's word only: a matrix of stacked draws of one vector
+# parameter looks just like them.
+_MOST_INFERRED = 64
+
+
+def _refuse_many_chains(first: npt.NDArray[Any], argument: str) -> None:
+    chains, length = first.shape[:2]
+    if _MOST_INFERRED < chains <= length:
+        raise AmbiguousNameError(
+            argument,
+            f"to be told whether shape {first.shape} is {chains} chains of {length} draws or "
+            f"{chains} stacked draws",
+            "no chain=",
+            f"For stacked draws of one chain pass chain=np.zeros({chains}, int); for chains stack "
+            "the draws and pass the chain of each.",
+        )
 
 
 def _agree_on_two_axes(arrays: Mapping[str, npt.NDArray[Any]]) -> bool:
@@ -124,9 +144,10 @@ def _refuse_other_lengths(
     Taken for a stack they would be four draws of long vectors.
     """
     first = arrays[first_name].shape
-    if any(array.ndim < 2 or array.shape[1] <= first[0] for array in arrays.values()):
+    longer = [array.ndim > 1 and array.shape[1] > first[0] for array in arrays.values()]
+    if not all(longer) and not (any(longer) and first[0] <= _MOST_INFERRED):
         return
-    other = next(name for name, array in arrays.items() if array.shape[1] != first[1])
+    other = next(name for name, array in arrays.items() if array.shape[1:2] != first[1:2])
     raise ShapeError(
         f"{argument}[{other!r}]",
         f"the chain and draw axes of {first_name!r}, {first[:2]}",
@@ -200,7 +221,7 @@ def _from_index(chain: npt.NDArray[Any], count: int) -> Chains:
             "chain",
             "the draws of each chain together, in the order they were drawn",
             f"rows of chain {', '.join(scattered[:5])} in several places",
-            "Sort by chain, keeping the order within each; or pass ordered=False if there is none.",
+            "Sort by chain, keeping the order within each; unordered draws need no chain=.",
         )
     return Chains(starts, False, tuple(names))
 

@@ -83,11 +83,24 @@ class LoglikTerm:
                     "The callable must give the same observations for every block of draws.",
                 )
         elif self.has_chain_axis:
-            values = np.asarray(self.source[chain, part.start - begin : part.stop - begin])
+            values = self._stored((chain, slice(part.start - begin, part.stop - begin)))
         else:
-            values = np.asarray(self.source[part])
+            values = self._stored(part)
         block = values.reshape(part.stop - part.start, self.observations)
         return np.require(block, np.float64, ["C", "A"])
+
+    def _stored(self, place: Any) -> npt.NDArray[Any]:
+        try:
+            return np.asarray(self.source[place])
+        except (OSError, ValueError, RuntimeError) as error:
+            if isinstance(self.source, np.ndarray):
+                raise
+            raise LikelihoodError(
+                f"loglik[{self.name!r}]",
+                "log likelihood values that can be read",
+                f"a failure to read them: {error}",
+                "The file they come from may be damaged or moved: copy it again.",
+            ) from error
 
     def _refuse_impossible(self, block: Array, draws: Draws, start: int) -> None:
         bad = np.isnan(block) | (block == np.inf)
@@ -156,7 +169,11 @@ def read_loglik_term(name: str, source: Any, draws: Draws, argument: str) -> Log
             f"a {type(source).__name__}",
             "Pass frame.to_numpy(), its rows in the order of the stacked draws.",
         )
-    elif isinstance(source, np.ma.MaskedArray) or not hasattr(source, "shape"):
+    elif (
+        isinstance(source, np.ma.MaskedArray)
+        or not hasattr(source, "shape")
+        or (hasattr(source, "__dlpack__") and not isinstance(source, np.ndarray))
+    ):
         source = plain_array(source, argument, "fiu")
     _refuse_other_numbers(source, argument)
     shape = tuple(int(s) for s in source.shape)
@@ -191,4 +208,5 @@ def _from_xarray(source: Any, argument: str) -> tuple[Any, tuple[str, ...], dict
     ordered = source.transpose(*lead, ...)
     dims = tuple(str(d) for d in ordered.dims[len(lead) :])
     labels = {d: np.asarray(source.coords[d].values) for d in dims if d in source.coords}
-    return ordered.data, dims, labels
+    # `data` would load what xarray opened lazily; a Variable is read by the block, like an array.
+    return ordered.variable if ordered.chunks is None else ordered.data, dims, labels

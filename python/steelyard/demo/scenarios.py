@@ -2,11 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from dataclasses import dataclass
-
-import numpy as np
-import numpy.typing as npt
 
 import steelyard as sy
 from steelyard.demo.model import CHANGES, EVENT, LEVEL, changes, fit
@@ -49,11 +45,6 @@ class Scenario:
         return str(self.probability.verdict.level)
 
 
-def _event_indicator(draws: Mapping[str, npt.NDArray[np.float64]]) -> npt.NDArray[np.float64]:
-    """Return 1.0 where `EVENT` holds and 0.0 elsewhere, one entry a draw."""
-    return (draws["rate"][:, 3] > 0.12).astype(np.float64)
-
-
 def answer_all() -> list[Scenario]:
     """
     Answer the base and every change from the same draws.
@@ -68,6 +59,6 @@ def answer_all() -> list[Scenario]:
     for label, change in changes().items():
         answer = base.reweigh(change)
         probability = answer.prob(EVENT, level=LEVEL)
-        shift = answer.shift(_event_indicator)
+        shift = answer.shift(EVENT)
         scenarios.append(Scenario(label, CHANGES[label], probability, shift))
     return scenarios

@@ -1,0 +1,1 @@
+"""The public contract of the package: names, signatures, shapes, order, and what stays fixed."""
