@@ -45,4 +45,5 @@ def rounded(value: float, error: float) -> str:
         return f"{value:.5g}"
     if decimals > 12:
         return f"{value:.12g}"
-    return f"{round(value, decimals):.{max(decimals, 0)}f}"
+    # Adding zero turns the negative zero that rounding leaves into zero.
+    return f"{round(value, decimals) + 0.0:.{max(decimals, 0)}f}"

@@ -17,7 +17,7 @@ from steelyard.answers.distances import distance_of, divergence_of
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, mean_of, sd_of
 from steelyard.answers.probabilities import probability_of
-from steelyard.answers.quantiles import quantile_of, shortest_of
+from steelyard.answers.quantiles import ENDS, quantile_of, shortest_of
 from steelyard.answers.quantities import Quantity, event_mask, labelled, read_quantity
 from steelyard.answers.shifts import log_evidence_ratio_of, shift_of
 from steelyard.answers.tabulate import tabulate
@@ -277,7 +277,7 @@ class Answer:
         if kind == "shortest":
             return self._each(quantity, lambda q: shortest_of(self._scale, q, float(mass)))
         tails = np.array([(1 - mass) / 2, (1 + mass) / 2])
-        return self._each(quantity, lambda q: quantile_of(self._scale, q, tails, ("interval",)))
+        return self._each(quantity, lambda q: quantile_of(self._scale, q, tails, ENDS))
 
     def prob(self, event: Any, level: float | None = None) -> Any:
         """
@@ -314,6 +314,8 @@ class Answer:
         False
         """
         if isinstance(event, Mapping):
+            if not event:
+                raise QuantityError("event", "at least one", "an empty mapping", "Name one.")
             return {str(k): self.prob(v, level) for k, v in event.items()}
         if event is None:
             raise QuantityError("event", "an event", "None", 'Write "rate[3] > 0.12".')

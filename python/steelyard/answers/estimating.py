@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
+import numpy.typing as npt
 
 from steelyard import _core
 from steelyard.answers.estimate import Estimate
@@ -200,14 +201,15 @@ def finish(
     *,
     lead: tuple[int, ...] = (),
     extra: tuple[Finding, ...] = (),
-    lead_dims: tuple[str, ...] = (),
+    lead_labels: Mapping[str, Array | npt.NDArray[Any]] | None = None,
     **fields: Any,
 ) -> Estimate:
     """
     An Estimate from flat figures: shapes put back, reasons added to those of the answer.
 
     `variance` is that of the influence of one draw; without it effective draws are NaN. Figures
-    in `extra` come flat and are shaped here; `lead` are axes in front of the quantity's own.
+    in `extra` come flat and are shaped here; `lead` are axes in front of the quantity's own, with
+    their labels in `lead_labels` by the names of their dimensions.
     """
     shape = (*lead, *quantity.shape)
 
@@ -234,8 +236,8 @@ def finish(
         Verdict(findings, shape),
         shaped(effective),
         label=quantity.label,
-        dims=(*lead_dims, *quantity.dims),
-        labels=quantity.labels,
+        dims=(*(lead_labels or ("",) * len(lead)), *quantity.dims),
+        labels={**quantity.labels, **(lead_labels or {})},
         **{k: v if not isinstance(v, np.ndarray) else shaped(v) for k, v in fields.items()},
     )
 

@@ -35,6 +35,8 @@ _COMPARE: dict[str, Callable[[Any, Any], Any]] = {
 }
 _WORDS = ("and", "or", "not")
 _DEEPEST = 50
+# Characters of an event that an error quotes.
+_LONGEST = 80
 # Draws of a name, and what an error calls it.
 LookUp = Callable[[str, str], Array]
 
@@ -47,8 +49,9 @@ class _Token:
 
 
 def is_expression(text: str) -> bool:
-    """Whether a text compares something, rather than being a name alone."""
-    return any(sign in text for sign in ("<", ">", "==", "!="))
+    """Whether a text means to compare something, rather than being a name alone."""
+    outside = re.sub(r"\[[^\[\]]*\]", "", text)
+    return any(sign in outside for sign in ("<", ">", "=", "!"))
 
 
 def evaluate_event(text: str, look_up: LookUp) -> Any:
@@ -77,6 +80,8 @@ def _tokens(text: str) -> list[_Token]:
         match = _TOKEN.match(text, at)
         if match is None or match.lastgroup is None:
             at += len(text[at:]) - len(text[at:].lstrip())
+            if text[at] == "=":
+                _fail(text, at, "a comparison; equality is ==", "a single =")
             _fail(text, at, "a name, a number, a comparison or arithmetic", repr(text[at]))
         kind, word = match.lastgroup, match[match.lastgroup]
         if kind == "name" and word in _WORDS:
@@ -90,9 +95,18 @@ def _fail(text: str, place: int, expected: str, came: str) -> NoReturn:
     raise QuantityError(
         "event",
         expected,
-        f"{came} at position {place} of {text!r}",
+        f"{came} at position {place} of {_quoted(text, place)}",
         'Events compare parameters and numbers, as in "rate[3] > 0.12 and mu < 0.2".',
     )
+
+
+def _quoted(text: str, place: int) -> str:
+    """The text, or the part of a long one that surrounds a position."""
+    if len(text) <= _LONGEST:
+        return repr(text)
+    start = max(0, min(place - _LONGEST // 2, len(text) - _LONGEST))
+    part = text[start : start + _LONGEST]
+    return repr(("…" if start else "") + part + ("…" if start + _LONGEST < len(text) else ""))
 
 
 class _Parser:
@@ -155,7 +169,8 @@ class _Parser:
             other = self.product()
             self._numbers(value, other)
             value, other = self._aligned(value, other)
-            value = value + other if sign == "+" else value - other
+            with np.errstate(invalid="ignore", over="ignore"):
+                value = value + other if sign == "+" else value - other
         return value
 
     def product(self) -> Any:

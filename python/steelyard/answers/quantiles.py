@@ -3,10 +3,13 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from dataclasses import replace
 from itertools import pairwise
+from typing import Any
 
 import numpy as np
+import numpy.typing as npt
 
 from steelyard import _core
 from steelyard.answers.estimate import Estimate
@@ -16,7 +19,7 @@ from steelyard.answers.quantities import Quantity
 from steelyard.base.draws import Array
 from steelyard.verdicts import judge
 
-__all__ = ["quantile_of", "quantile_pair", "shortest_of"]
+__all__ = ["ENDS", "quantile_of", "quantile_pair", "shortest_of"]
 
 # Batches and replicates of the bootstrap that gives the errors of a shortest interval.
 _BATCHES = 40
@@ -24,8 +27,14 @@ _REPLICATES = 100
 _BOOTSTRAP_KEY = 20_261_201
 
 
+ENDS: dict[str, npt.NDArray[Any]] = {"interval": np.array(["lower", "upper"])}
+
+
 def quantile_of(
-    scale: Scale, quantity: Quantity, probs: Array, lead_dims: tuple[str, ...] = ("quantile",)
+    scale: Scale,
+    quantity: Quantity,
+    probs: Array,
+    lead_labels: Mapping[str, npt.NDArray[Any]] | None = None,
 ) -> Estimate:
     """
     Quantiles at `probs`, axes of `probs` first.
@@ -60,7 +69,7 @@ def quantile_of(
         spread.reshape(-1),
         lead=probs.shape,
         extra=extra,
-        lead_dims=lead_dims if probs.ndim == 1 else ("",) * probs.ndim,
+        lead_labels=lead_labels or ({"quantile": probs} if probs.ndim == 1 else None),
     )
 
 
@@ -127,7 +136,7 @@ def shortest_of(scale: Scale, quantity: Quantity, mass: float) -> Estimate:
         None,
         lead=(2,),
         extra=extra,
-        lead_dims=("interval",),
+        lead_labels=ENDS,
     )
 
 

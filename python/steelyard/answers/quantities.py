@@ -59,6 +59,13 @@ class Quantity:
 def labelled(quantity: Any, base: Base, *, events: bool = False) -> dict[str, Quantity] | None:
     """Several quantities by label, for a mapping or for None (all parameters); else None."""
     if quantity is None:
+        if not base.parameters:
+            raise QuantityError(
+                "quantity",
+                "something to estimate, since the answer holds no draws of parameters",
+                "nothing",
+                "Pass draws= to weigh(), or an array shaped like the log ratios.",
+            )
         return {name: read_quantity(name, base) for name in base.parameters}
     if isinstance(quantity, Mapping):
         if not quantity:
@@ -103,7 +110,7 @@ def _event_as_quantity(event: Any, base: Base, argument: str, events: bool) -> Q
         raise QuantityError(
             argument,
             "numbers",
-            f"an event ({event!r})" if isinstance(event, str) else "True and False",
+            f"an event ({event[:80]!r})" if isinstance(event, str) else "True and False",
             "Use prob(event), which counts the draws on both sides; shift() takes events too.",
         )
     return event_mask(event, base)
@@ -163,7 +170,7 @@ def event_mask(event: Any, base: Base) -> Quantity:
             raise QuantityError(
                 "event",
                 'a comparison, such as "rate[3] > 0.12"',
-                repr(event),
+                repr(event if len(event) <= 80 else event[:80] + "…"),
                 "A name alone is a quantity, not an event.",
             )
         label, event = event, evaluate_event(event, _look_up(base))

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 
 from steelyard.answers.answer import Answer
+from steelyard.arrays import plain_array
 from steelyard.base import Base, read_base
 from steelyard.base.draws import Draws
 from steelyard.base.shapes import stacked
@@ -130,11 +131,7 @@ def _refuse_text(smooth: Any) -> None:
 
 
 def _bare_draws(log_ratio: Any) -> Draws:
-    array = np.asarray(log_ratio)
-    if array.dtype.kind not in "fiub":
-        raise ArgumentTypeError(
-            "log_ratio", "real numbers", f"dtype {array.dtype}", "Convert to float64."
-        )
+    array = plain_array(log_ratio, "log_ratio", "fiu")
     if array.ndim not in (1, 2) or array.size < 2:
         raise DrawsError(
             "log_ratio",

@@ -23,9 +23,14 @@ __all__ = ["element_names", "tabulate"]
 def tabulate(scale: Scale, quantities: Mapping[str, Quantity], probs: Array) -> Table:
     """Means, errors, sds and quantiles of quantities, with the worst level of each row."""
     probs = probs.reshape(-1)
-    if len({f"{p:g}" for p in probs}) < probs.size:
+    shown = [f"{p:g}" for p in probs]
+    twice = sorted({text for text in shown if shown.count(text) > 1})
+    if twice:
         raise ArgumentError(
-            "probs", "each probability once", "one twice (to six digits)", "Name each once."
+            "probs",
+            "each probability once, to six digits",
+            f"{', '.join(twice)} twice",
+            "Drop one.",
         )
     dims = _dimension_columns(quantities)
     quantile_names = [f"q{p:g}" for p in probs]

@@ -74,6 +74,8 @@ def infer_chains(
     has_chain_axis: bool | None,
     chain: npt.NDArray[Any] | None,
     argument: str,
+    *,
+    ordered: bool = True,
 ) -> Chains:
     """
     Chain structure of arrays that share their leading axes.
@@ -109,7 +111,7 @@ def infer_chains(
     _refuse_too_few(count, argument)
     if chain is None:
         return Chains(np.array([0, count], dtype=np.int64), False)
-    return _from_index(chain, count)
+    return _from_index(chain, count, ordered)
 
 
 # More chains than this are taken at the user's word only: a matrix of stacked draws of one vector
@@ -203,7 +205,7 @@ def _refuse_too_few(count: int, argument: str) -> None:
         )
 
 
-def _from_index(chain: npt.NDArray[Any], count: int) -> Chains:
+def _from_index(chain: npt.NDArray[Any], count: int, ordered: bool) -> Chains:
     if chain.shape != (count,):
         raise ShapeError(
             "chain",
@@ -216,12 +218,15 @@ def _from_index(chain: npt.NDArray[Any], count: int) -> Chains:
     starts = np.concatenate([[0], breaks, [count]]).astype(np.int64)
     names = chain[starts[:-1]].tolist()
     scattered = sorted({str(n) for n in names if names.count(n) > 1})
+    if scattered and not ordered:
+        # Errors of unordered draws do not ask which chain they came from.
+        return Chains(np.array([0, count], dtype=np.int64), False)
     if scattered:
         raise DrawsError(
             "chain",
             "the draws of each chain together, in the order they were drawn",
             f"rows of chain {', '.join(scattered[:5])} in several places",
-            "Sort by chain, keeping the order within each; unordered draws need no chain=.",
+            "Sort by chain, keeping the order within each; or pass ordered=False if there is none.",
         )
     return Chains(starts, False, tuple(names))
 

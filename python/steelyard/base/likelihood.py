@@ -119,7 +119,7 @@ class LoglikTerm:
 
 def _call(source: Callable[..., Any], draws: Draws, part: slice, name: str) -> npt.NDArray[Any]:
     block = {k: v[part] for k, v in draws.values_by_name.items()}
-    values = np.asarray(source(MappingProxyType(block)))
+    values = plain_array(source(MappingProxyType(block)), f"loglik[{name!r}]", "fiub")
     if values.dtype.kind not in "fiu" or values.ndim == 0:
         raise ArgumentTypeError(
             f"loglik[{name!r}]",

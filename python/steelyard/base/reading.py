@@ -20,7 +20,12 @@ __all__ = ["read_draws"]
 
 
 def read_draws(
-    source: Any, names: Iterable[str] | None = None, chain: Any = None, argument: str = "draws"
+    source: Any,
+    names: Iterable[str] | None = None,
+    chain: Any = None,
+    argument: str = "draws",
+    *,
+    ordered: bool = True,
 ) -> Draws:
     """
     Read draws from a mapping, an xarray Dataset, a data frame, an array or other draws.
@@ -37,6 +42,9 @@ def read_draws(
         frame, the entry of a mapping, or the coordinate along the draws that holds it.
     argument : str
         What an error calls the source.
+    ordered : bool
+        Whether the draws of a chain stand in the order they were drawn; unordered ones may have
+        the rows of their chains scattered.
 
     Returns
     -------
@@ -62,7 +70,7 @@ def read_draws(
             )
     if found.chain is None and not found.has_chain_axis:
         refuse_unsaid_chain(found.arrays, argument)
-    lead = infer_chains(found.arrays, found.has_chain_axis, found.chain, argument)
+    lead = infer_chains(found.arrays, found.has_chain_axis, found.chain, argument, ordered=ordered)
     values = {k: _stack(v, lead, f"{argument}[{k!r}]") for k, v in found.arrays.items()}
     chain_names = found.chain_names or lead.chain_names
     return Draws(values, lead.starts, lead.has_chain_axis, found.dims, found.labels, chain_names)
@@ -119,6 +127,8 @@ def _from_array(source: Any, names: Iterable[str] | None, chain: Any, argument: 
         )
     if isinstance(names, str):
         names = [names]
+    if not isinstance(names, Iterable):
+        raise ArgumentTypeError("names", "names for the columns", repr(names), "Pass names=[…].")
     listed = list(names)
     if array.ndim == 1 and len(listed) == 1:
         array = array[:, None]

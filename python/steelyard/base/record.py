@@ -98,7 +98,7 @@ def read_base(
     """Read everything that `Fit` takes into one record; see there."""
     if not isinstance(ordered, bool | np.bool_):
         raise ArgumentTypeError("ordered", "True or False", repr(ordered), "Say which.")
-    read = read_draws(draws, names, chain)
+    read = read_draws(draws, names, chain, ordered=bool(ordered))
     read, recipes = _with_derived(read, derived)
     stored = None
     if stored_log_density is not None:

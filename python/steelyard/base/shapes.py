@@ -51,6 +51,8 @@ def stacked(values: Any, draws: Draws, argument: str) -> npt.NDArray[Any]:
         lead = ("chain", "draw") if "chain" in dims else ("draw",)
         values = values.transpose(*lead, ...)
     array = plain_array(values, argument)
+    if array.size == 0:
+        raise ShapeError(argument, "a value for each draw", f"shape {array.shape}", "Pass values.")
     if has_two_axes(array.shape, draws, argument):
         return array.reshape(draws.size, *array.shape[2:])
     return array

@@ -183,6 +183,8 @@ class Change:
 def _text(value: Any) -> str:
     if isinstance(value, Mapping):
         return ", ".join(f"{k}: {_text(v)}" for k, v in value.items())
+    if isinstance(value, tuple):
+        return ", ".join(_text(v) for v in value)
     if isinstance(value, np.ndarray):
         return f"an array of shape {value.shape}"
     if isinstance(value, float):

@@ -177,7 +177,7 @@ def drop(what: Any = None, /, *, label: Any = None, position: Any = None, **dims
     --------
     >>> import steelyard as sy
     >>> sy.drop({"gauge A": [0, 4]})
-    <Change: without gauge A: [0, 4]>
+    <Change: without gauge A: 0, 4>
     """
     given = [(kind, v) for kind, v in (("", what), ("label", label), ("position", position))]
     given = [(kind, value) for kind, value in given if value is not None]
@@ -191,8 +191,17 @@ def drop(what: Any = None, /, *, label: Any = None, position: Any = None, **dims
     if isinstance(what, Mapping) and not what:
         raise ChangeError("drop", "at least one term", "an empty mapping", "Name one.")
     if dims:
-        return Change((Drop(by_dim=tuple(dims.items())),))
-    return Change((Drop(given[0][1], given[0][0]),))
+        return Change((Drop(by_dim=tuple((d, _kept(v)) for d, v in dims.items())),))
+    return Change((Drop(_kept(given[0][1]), given[0][0]),))
+
+
+def _kept(what: Any) -> Any:
+    """A copy that does not follow later changes of what it was made from."""
+    if isinstance(what, Mapping):
+        return {k: _kept(v) for k, v in what.items()}
+    if isinstance(what, list | tuple | np.ndarray | range | set):
+        return tuple(_kept(v) for v in what) if not isinstance(what, np.ndarray) else what.copy()
+    return what
 
 
 def weigh_data(terms: Mapping[str, Any]) -> Change:

@@ -124,7 +124,14 @@ def _loglik_delta(target: LoglikTarget, base: Base) -> Array | None:
                 # Σ (a − 1) L, never a L − L: 0 · −inf is no weight at all, not NaN.
                 delta[part] = ((factor[touched] - 1) * block[:, touched]).sum(axis=1)
         return delta if touched.size else None
-    kept = np.flatnonzero(factor)
+    whole = bool((factor != 0).all())
+    kept = slice(None) if whole else np.flatnonzero(factor)
+    if old is not None and old.obs_shape == new.obs_shape and whole:
+        # Differences first, sums after: the same values again give zero to the last bit.
+        for (part, ours), (_, theirs) in zip(new.blocks(draws), old.blocks(draws), strict=True):
+            with np.errstate(invalid="ignore"):
+                delta[part] = (factor * ours - theirs).sum(axis=1)
+        return delta
     for part, block in new.blocks(draws):
         delta[part] += (factor[kept] * block[:, kept]).sum(axis=1)
     if old is not None:

@@ -8,6 +8,7 @@ import numpy as np
 import numpy.typing as npt
 
 from steelyard import _core
+from steelyard.arrays import plain_array
 from steelyard.errors import ArgumentError, ArgumentTypeError, ShapeError
 from steelyard.weighing.arrays import columns_of, refuse_bad_log_weights, seed_key
 
@@ -68,11 +69,10 @@ def resample(
     if method not in METHODS:
         raise ArgumentError("method", f"one of {', '.join(METHODS)}", repr(method), "Choose one.")
     key = seed_key(rng)
-    columns = columns_of(log_weights, None if np.ndim(log_weights) == 1 else 0, "log_weights")
-    if np.ndim(log_weights) != 1:
-        raise ShapeError(
-            "log_weights", "shape (n,)", str(np.shape(log_weights)), "Resample one vector."
-        )
+    array = plain_array(log_weights, "log_weights", "fiu")
+    if array.ndim != 1:
+        raise ShapeError("log_weights", "shape (n,)", str(array.shape), "Resample one vector.")
+    columns = columns_of(array, None, "log_weights")
     ((_, block),) = columns.blocks()
     refuse_bad_log_weights(block, "log_weights")
     logs = block[:, 0]

@@ -110,8 +110,10 @@ def chains_p_value(f: Array, weights: Array, draws: Draws) -> Array:
         return np.ones(f.shape[1])
     mean = _core.weighted_mean(f, weights)
     pooled = _core.weighted_mean((f - mean) ** 2, weights)
+    # Differences in the last digits are rounding, not chains that disagree.
+    rounding = (1e-10 * np.abs(f).max(axis=0)) ** 2
     found = [
-        _one_chain(f[start:stop], weights[start:stop], pooled)
+        _one_chain(f[start:stop], weights[start:stop], pooled, rounding)
         for start, stop in pairwise(draws.starts.tolist())
         if weights[start:stop].sum() > 0
     ]
@@ -122,14 +124,16 @@ def chains_p_value(f: Array, weights: Array, draws: Draws) -> Array:
     return np.where(enough, _welch(mu, precision, freedom), 1.0)
 
 
-def _one_chain(f: Array, weights: Array, pooled: Array) -> tuple[Array, Array, Array]:
+def _one_chain(
+    f: Array, weights: Array, pooled: Array, rounding: Array
+) -> tuple[Array, Array, Array]:
     """Mean, ``1/se²`` and degrees of freedom of one chain."""
     w = weights / weights.sum()
     mu = _core.weighted_mean(f, w)
     count = len(w)
     z = np.where(w[:, None] > 0, count * w[:, None] * (f - mu), 0.0)
     lrv = _core.long_run_variance(z, np.array([0, count], dtype=np.int64), True)
-    least = pooled * float((w**2).sum())
+    least = np.maximum(pooled * float((w**2).sum()), rounding)
     variance = np.maximum(lrv / count, least)
     precision = np.where(variance > 0, 1 / np.where(variance > 0, variance, 1.0), 0.0)
     with np.errstate(invalid="ignore", divide="ignore"):
