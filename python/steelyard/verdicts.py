@@ -13,7 +13,7 @@ import numpy.typing as npt
 
 from steelyard.arrays import frozen
 from steelyard.digits import short
-from steelyard.errors import TruthValueError
+from steelyard.errors import ArgumentTypeError, TruthValueError
 from steelyard.levels import LEVELS, Level, needed_draws, rank_of, shape_limit
 from steelyard.rules import RULES
 
@@ -218,7 +218,9 @@ class Verdict:
 
     def __getitem__(self, index: Any) -> Verdict:
         if not self._shape:
-            raise TypeError("this verdict is a single one and cannot be indexed")
+            raise ArgumentTypeError(
+                "verdict", "no index, since it is a single one", repr(index), "Read .level at once."
+            )
         shape = np.empty(self._shape, dtype=np.bool_)[index].shape
         return Verdict((f.at(index, self._shape) for f in self._findings), shape)
 

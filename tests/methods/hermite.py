@@ -10,12 +10,11 @@ closed form.
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy import integrate, stats
+from scipy import stats
 from scipy.special import eval_hermitenorm
 
 Array = NDArray[np.float64]
@@ -65,22 +64,20 @@ def evidence_series(m: float) -> Series:
 
 
 def event_series(m: float, limit: float) -> Series:
-    """``w (1{x > limit} − P)``: ``c_k = E_q[(1{x > limit} − P) H_k]/k!`` by quadrature.
+    """``w (1{x > limit} − P)``: ``c_k = (E_q[1{x > limit} H_k] − P m^k)/k!``.
 
-    The variance is ``exp(m²) E_{N(2m, 1)}[(1{x > limit} − P)²]``.
+    ``H_k(m + y) = Σ_j C(k, j) m^(k−j) H_j(y)`` and ``∫_a^∞ φ H_j = φ(a) H_(j−1)(a)`` give the
+    expectation; the variance is ``exp(m²) E_{N(2m, 1)}[(1{x > limit} − P)²]``.
     """
     inside, doubled = (float(stats.norm.sf(limit - centre)) for centre in (m, 2 * m))
-
-    def coefficient(k: int) -> float:
-        def density(x: float) -> float:
-            return float(stats.norm.pdf(x - m) * eval_hermitenorm(k, x))
-
-        above = _integral(density, limit, m + 14)
-        below = _integral(density, m - 14, limit)
-        return ((1 - inside) * above - inside * below) / math.factorial(k)
-
+    tails = [inside]
+    for j in range(1, TERMS):
+        tails.append(float(stats.norm.pdf(limit - m) * eval_hermitenorm(j - 1, limit - m)))
+    coefficients = np.zeros(TERMS)
+    for k in range(1, TERMS):
+        above = sum(math.comb(k, j) * m ** (k - j) * tails[j] for j in range(k + 1))
+        coefficients[k] = (above - inside * m**k) / math.factorial(k)
     variance = (1 - inside) ** 2 * doubled + inside**2 * (1 - doubled)
-    coefficients = np.array([0.0] + [coefficient(k) for k in range(1, TERMS)])
     return Series(math.exp(m**2) * variance, coefficients)
 
 
@@ -90,14 +87,29 @@ def quantile_series(m: float, p: float) -> Series:
     return event_series(m, limit).scaled(1 / float(stats.norm.pdf(limit - m)))
 
 
+def sd_shift_series(m: float) -> Series:
+    """``w ((x − m)² − 1)/2 − (x² − 1)/2``: that of the sd less its second term."""
+    sd = sd_series(m)
+    series = sd.coefficients.copy()
+    series[2] -= 0.5
+    return Series(sd.variance - 0.5, series)
+
+
+def median_shift_series(m: float) -> Series:
+    """Influence of the target's median less that of the base's, for m > 0.
+
+    Under the target ``E[(1{x > m} − ½)(1{x > 0} − ½)] = (1 − Φ(m))/2``, the product of the two.
+    """
+    target, base = quantile_series(m, 0.5), quantile_series(0.0, 0.5)
+    product = 2 * math.pi * 0.5 * float(stats.norm.sf(m))
+    return Series(
+        target.variance + base.variance - 2 * product, target.coefficients - base.coefficients
+    )
+
+
 def _powers(m: float, derivative: int) -> Array:
     """Hermite coefficients of a derivative of w in m: ``c_k = m^(k−d)/(k−d)!``."""
     series = np.zeros(TERMS)
     for k in range(max(derivative, 1), TERMS):
         series[k] = m ** (k - derivative) / math.factorial(k - derivative)
     return series
-
-
-def _integral(density: Callable[[float], float], low: float, high: float) -> float:
-    value, _ = integrate.quad(density, low, high, limit=200)
-    return float(value)

@@ -8,7 +8,7 @@ N(0, 1) draws reweighted to N(1/2, 1): independent draws (4,000) and AR(1) chain
   about 1.5 % (AR: 2 %), the smoothing of weights and the truncated sequence may bias it by a few
   per cent; 10 % is what the project promises on an easy problem.
 - Coverage of 95 % intervals: at least as many of 200 as a binomial with p = 0.95 exceeds all but
-  1e-6 of the time, less one point for the 10 %; false alarm 1e-6 for each of 14 comparisons.
+  1e-6 of the time, less one point for the 10 %; false alarm 1e-6 for each of 18 comparisons.
 """
 
 from __future__ import annotations
@@ -36,6 +36,8 @@ SERIES = {
     "upper quantile": hermite.quantile_series(SHIFT, 0.9),
     "probability": hermite.event_series(SHIFT, LIMIT),
     "shift": hermite.shift_series(SHIFT),
+    "shift of the sd": hermite.sd_shift_series(SHIFT),
+    "shift of the median": hermite.median_shift_series(SHIFT),
     "log evidence ratio": hermite.evidence_series(SHIFT),
 }
 TRUTH = {
@@ -45,6 +47,8 @@ TRUTH = {
     "upper quantile": SHIFT + float(stats.norm.ppf(0.9)),
     "probability": float(stats.norm.sf(LIMIT - SHIFT)),
     "shift": SHIFT,
+    "shift of the sd": 0.0,
+    "shift of the median": SHIFT,
     "log evidence ratio": 0.0,
 }
 CASES = pytest.mark.parametrize("kind", RHO)
@@ -67,6 +71,8 @@ def _estimates(kind: str) -> dict[str, np.ndarray]:
             "upper quantile": answer.quantile("x", 0.9),
             "probability": answer.prob("x > 1"),
             "shift": answer.shift("x"),
+            "shift of the sd": answer.shift("x", "sd"),
+            "shift of the median": answer.shift("x", ("quantile", 0.5)),
             "log evidence ratio": answer.log_evidence_ratio,
         }.items():
             found[name].append((float(estimate.value), float(estimate.error)))
@@ -77,7 +83,9 @@ def _exact_error(kind: str, quantity: str) -> float:
     return math.sqrt(SERIES[quantity].long_run_variance(RHO[kind]) / 4000)
 
 
-@pytest.mark.parametrize("quantity", ["mean", "sd", "shift", "log evidence ratio"])
+@pytest.mark.parametrize(
+    "quantity", ["mean", "sd", "shift", "shift of the sd", "log evidence ratio"]
+)
 def test_the_exact_variances_agree_with_their_hermite_series(quantity: str) -> None:
     # 1e-12 relative: 24 terms of an exponential series at m = 1/2. (Those of events converge
     # slowly and are not needed: there the variance is integrated.)
@@ -103,6 +111,8 @@ def test_the_exact_long_run_variance_is_that_of_one_long_simulated_chain(quantit
         "upper quantile": w * ((x > limit) - 0.1) / density,
         "probability": w * ((x > LIMIT) - TRUTH["probability"]),
         "shift": w * (x - SHIFT) - x,
+        "shift of the sd": w * ((x - SHIFT) ** 2 - 1) / 2 - (x**2 - 1) / 2,
+        "shift of the median": (w * ((x > SHIFT) - 0.5) - ((x > 0) - 0.5)) * math.sqrt(2 * math.pi),
         "log evidence ratio": w - 1,
     }[quantity]
     simulated = 2000 * z.mean(axis=1).var(ddof=1)

@@ -18,6 +18,8 @@ from . import twins
 
 SEED = 20_261_216
 N = 1000
+# Limits that are ours and may move; the others are held to METHODS below.
+FEW, BEYOND = RULES["few_effective_draws"], RULES["draws_beyond"]
 Judged = sy.Answer | sy.Estimate
 
 
@@ -66,15 +68,17 @@ def _shares(tilt: float) -> sy.Answer:
     return sy.weigh(log_ratio, smooth=False)
 
 
-def _few(draws: int) -> sy.Estimate:
-    """Mean of so many draws without order, which are worth just their number."""
-    return sy.Fit({"x": _noise(15, draws)}, ordered=False).base.mean("x")
+def _unordered(draws: int = N) -> sy.Answer:
+    """Draws without order, each of which is worth one."""
+    return sy.Fit({"x": _noise(15, draws)}, ordered=False).base
+
+
+def _few(draws: float) -> sy.Estimate:
+    return _unordered(int(draws)).mean("x")
 
 
 def _event(inside: int) -> sy.Estimate:
-    event = np.zeros(N, dtype=bool)
-    event[:inside] = True
-    return sy.weigh(np.zeros(N)).prob(event)
+    return _unordered().prob(np.arange(N) < inside)
 
 
 def _excursions(count: int) -> sy.Answer:
@@ -87,7 +91,12 @@ def _excursions(count: int) -> sy.Answer:
 
 
 def _quantile(p: float) -> sy.Estimate:
-    return sy.weigh(np.zeros(N)).quantile(_noise(3, N), p)
+    return _unordered().quantile("x", p)
+
+
+def _beyond(draws: float) -> sy.Estimate:
+    """A quantile with so many of the 1,000 draws at or below it."""
+    return _quantile((draws - 0.5) / N)
 
 
 def _product(power: float) -> sy.Estimate:
@@ -103,8 +112,19 @@ def _prior(old: sy.Normal | sy.Flat, new: object) -> sy.Answer:
 
 
 def _loosened(power: float) -> sy.Answer:
-    fit = sy.Fit({"x": _noise(6, N)}, loglik={"gauge A": np.zeros((N, 2))})
+    """A flat prior: the data dominate, and the shape is one less the power."""
+    loglik = {"gauge A": np.full((N, 2), -1.0) + 0.01 * _noise(17, N, 2)}
+    fit = sy.Fit({"x": _noise(6, N)}, {"x": sy.Flat()}, loglik)
     return fit.reweigh(sy.power(likelihood=power))
+
+
+def _both(shape: float) -> sy.Answer:
+    """Normal throughout: ``λ(1 − V P₀) + V P₀`` for a prior widened to a flat one, λ = 0.1."""
+    x = _noise(18, N)
+    variance = (shape - 0.1) / 0.9
+    x = (x - x.mean()) / x.std(ddof=1) * np.sqrt(variance)
+    fit = sy.Fit({"x": x}, {"x": sy.Normal(0, 1)}, {"gauge A": np.full((N, 2), -1.0)})
+    return fit.reweigh(sy.power(likelihood=0.9) & sy.swap_prior(x=sy.Flat()))
 
 
 def _noisier(factor: float) -> sy.Answer:
@@ -122,16 +142,25 @@ STRAINED: list[Case] = [
     ("quantity_shape", lambda: _product(0.85), lambda: _product(0.65)),
     ("few_effective", lambda: _equal(99), lambda: _equal(100)),
     ("few_effective_entropy", lambda: _equal(49), lambda: _equal(51)),
+    ("few_effective_draws", lambda: _few(FEW.strained - 1), lambda: _few(FEW.strained + 1)),
     ("few_carry", lambda: _heavy(0.1001), lambda: _heavy(0.0999)),
     ("saturated_divergence", lambda: _equal(15), lambda: _equal(16)),
     ("autocorrelated_tail", lambda: _excursions(9), lambda: _excursions(10)),
-    ("few_effective_draws", lambda: _few(99), lambda: _few(101)),
-    ("draws_beyond", lambda: _quantile(0.0089), lambda: _quantile(0.0101)),
-    ("draws_beyond", lambda: _quantile(0.9911), lambda: _quantile(0.9899)),
-    ("event_draws", lambda: _event(9), lambda: _event(10)),
-    ("event_draws", lambda: _event(N - 9), lambda: _event(N - 10)),
+    ("event_draws", lambda: _event(9), lambda: _event(11)),
+    ("event_draws", lambda: _event(N - 9), lambda: _event(N - 11)),
+    ("draws_beyond", lambda: _beyond(BEYOND.strained - 1), lambda: _beyond(BEYOND.strained + 1)),
+    (
+        "draws_beyond",
+        lambda: _beyond(N - BEYOND.strained + 2),
+        lambda: _beyond(N - BEYOND.strained),
+    ),
     ("prior_widened", lambda: _widened(0.51), lambda: _widened(0.49)),
     ("likelihood_loosened", lambda: _loosened(0.5), lambda: _loosened(0.51)),
+    (
+        "likelihood_loosened",
+        lambda: _both(0.51),
+        lambda: _both(0.49),
+    ),
     ("noise_raised", lambda: _noisier(1.42), lambda: _noisier(1.41)),
 ]
 REFIT: list[Case] = [
@@ -139,12 +168,12 @@ REFIT: list[Case] = [
     ("quantity_shape", lambda: _product(1.3), lambda: _product(0.9)),
     ("few_effective", lambda: _equal(24), lambda: _equal(25)),
     ("few_effective_entropy", lambda: _equal(19), lambda: _equal(21)),
+    ("few_effective_draws", lambda: _few(FEW.refit - 1), lambda: _few(FEW.refit + 1)),
     ("few_carry", lambda: _heavy(0.3001), lambda: _heavy(0.2999)),
     ("saturated_divergence", lambda: _equal(5), lambda: _equal(6)),
     ("autocorrelated_tail", lambda: _excursions(2), lambda: _excursions(3)),
-    ("few_effective_draws", lambda: _few(24), lambda: _few(26)),
-    ("draws_beyond", lambda: _quantile(0.0019), lambda: _quantile(0.0031)),
-    ("event_draws", lambda: _event(2), lambda: _event(3)),
+    ("event_draws", lambda: _event(2), lambda: _event(4)),
+    ("draws_beyond", lambda: _beyond(BEYOND.refit - 1), lambda: _beyond(BEYOND.refit + 1)),
     ("chains_disagree", lambda: _apart(0.6), lambda: _apart(0.2)),
     ("chain_share", lambda: _shares(0.5), lambda: _shares(0.07)),
     ("quantile_reach", lambda: _quantile(0.0004), lambda: _quantile(0.005)),
@@ -154,7 +183,7 @@ REFIT: list[Case] = [
         lambda: _prior(sy.Flat(0, 1.1), sy.Flat(0, 1)),
     ),
     ("prior_widened", lambda: _widened(1.01), lambda: _widened(0.99)),
-    ("likelihood_loosened", lambda: _loosened(0.0), lambda: _loosened(0.01)),
+    ("likelihood_loosened", lambda: _both(1.01), lambda: _loosened(0.0)),
 ]
 NOTES: list[Case] = [
     (
@@ -187,6 +216,23 @@ def _level(judged: Judged, code: str) -> str | None:
 
 def test_every_rule_has_a_case_here() -> None:
     assert {case[0] for case in [*STRAINED, *REFIT, *NOTES]} == set(RULES)
+
+
+def test_limits_are_those_of_the_methods() -> None:
+    stated = {
+        "weight_shape": (0.7, 1.0),
+        "quantity_shape": (0.7, 1.0),
+        "few_effective": (100, 25),
+        "few_effective_entropy": (50, 20),
+        "few_carry": (0.1, 0.3),
+        "chains_disagree": (1e-3, 1e-6),
+        "chain_share": (1e-3, 1e-6),
+        "event_draws": (10, 3),
+        "prior_widened": (0.5, 1.0),
+        "likelihood_loosened": (0.5, 1.0),
+        "noise_raised": (0.5, 1.0),
+    }
+    assert {code: (RULES[code].strained, RULES[code].refit) for code in stated} == stated
 
 
 def _ids(case: object) -> str:

@@ -7,7 +7,6 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from functools import cached_property
 from html import escape
-from types import MappingProxyType
 from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
@@ -21,6 +20,7 @@ from steelyard.answers.quantiles import ENDS, quantile_of, shortest_of
 from steelyard.answers.quantities import Quantity, event_mask, labelled, read_quantity
 from steelyard.answers.shifts import log_evidence_ratio_of, shift_of
 from steelyard.answers.tabulate import tabulate
+from steelyard.arrays import ReadOnly
 from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.changes import Change, Target
@@ -132,7 +132,7 @@ class Answer:
     def terms(self) -> Mapping[str, Array]:
         """Target minus base, term by term, on the natural log scale."""
         terms = {} if self._target is None else self._target.terms
-        return MappingProxyType({k: self._base.draws.shaped(v) for k, v in terms.items()})
+        return ReadOnly({k: self._base.draws.shaped(v) for k, v in terms.items()})
 
     def mean(self, quantity: Any = None) -> Any:
         """

@@ -132,6 +132,9 @@ def _refuse_text(smooth: Any) -> None:
 
 def _bare_draws(log_ratio: Any) -> Draws:
     array = plain_array(log_ratio, "log_ratio", "fiu")
+    dims = getattr(log_ratio, "dims", ())
+    if tuple(dims) == ("draw", "chain"):
+        array = array.T
     if array.ndim not in (1, 2) or array.size < 2:
         raise DrawsError(
             "log_ratio",

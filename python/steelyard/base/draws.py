@@ -183,7 +183,8 @@ class Draws(Frozen, Mapping[str, Array]):
         }
         coords: dict[str, Any] = dict(self.labels)
         if not self.has_chain_axis:
-            coords["chain"] = ("draw", self.chain)
+            names = self.chain_names or tuple(range(self.chains))
+            coords["chain"] = ("draw", np.repeat(np.array(names), np.diff(self.starts)))
         return xarray().Dataset(variables, coords=coords)
 
     def dims_of(self, name: str) -> tuple[str, ...]:

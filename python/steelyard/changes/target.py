@@ -10,6 +10,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from steelyard.arrays import Frozen, ReadOnly
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.base.ratios import refuse_bad_ratio
@@ -22,7 +23,7 @@ __all__ = ["Target", "form_target"]
 
 
 @dataclass(frozen=True, eq=False)
-class Target:
+class Target(Frozen):
     """
     The target: edited terms, and target minus base term by term.
 
@@ -69,7 +70,9 @@ def form_target(base: Base, change: Change) -> Target:
     # A fixed order of summation: a & b and b & a agree to the last bit.
     for label in sorted(terms):
         total = total + terms[label]
-    return Target(draft.prior, draft.loglik, terms, total, len(draft.ratios), draft.withheld)
+    return Target(
+        draft.prior, draft.loglik, ReadOnly(terms), total, len(draft.ratios), draft.withheld
+    )
 
 
 def _weighs(base: Base) -> npt.NDArray[np.bool_]:
