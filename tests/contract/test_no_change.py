@@ -18,6 +18,7 @@ NO_CHANGES = {
     "factors that cancel": sy.power(likelihood=2) & sy.power(likelihood=0.5),
     "a ratio of zero": sy.log_ratio(np.zeros(400)),
     "noise as it was": sy.raise_noise("gauge A", 1, 0.1),
+    "ratios that cancel": sy.log_ratio(np.arange(400.0)) & sy.log_ratio(-np.arange(400.0)),
     "an addition of nothing": sy.add({"new": np.zeros((4, 100, 2))}),
 }
 
