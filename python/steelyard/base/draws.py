@@ -68,7 +68,21 @@ class Draws(Frozen, Mapping[str, Array]):
         return len(self.values_by_name)
 
     def get(self, name: str, default: Any = None) -> Any:
-        """Draws of a parameter or an element, or `default` where there is none."""
+        """
+        Draws of a parameter or an element, or `default` where there is none.
+
+        Parameters
+        ----------
+        name : str
+            The name.
+        default : object, optional
+            What to return where it is not there.
+
+        Returns
+        -------
+        numpy.ndarray or object
+            Shape ``(n, *shape)``, or `default`.
+        """
         try:
             return self[name]
         except UnknownNameError:
@@ -105,7 +119,21 @@ class Draws(Frozen, Mapping[str, Array]):
         return groups if int(groups.max()) + 1 < self.size else None
 
     def find(self, name: str, argument: str = "name") -> Reference:
-        """The parameter, or the element of one, that a text names."""
+        """
+        The parameter, or the element of one, that a text names.
+
+        Parameters
+        ----------
+        name : str
+            The text.
+        argument : str
+            What an error calls it.
+
+        Returns
+        -------
+        Reference
+            Name and index.
+        """
         shapes = {k: v.shape[1:] for k, v in self.values_by_name.items()}
         return find(name, shapes, self.dims, self.labels, argument)
 
@@ -136,20 +164,56 @@ class Draws(Frozen, Mapping[str, Array]):
         return element(self.values_by_name[found.name], found.index)
 
     def shaped(self, values: Array) -> Array:
-        """`(n, …)` shown as `(chain, draw, …)` where the chains allow it."""
+        """
+        Stacked values shown with a chain axis, where the chains allow it.
+
+        Parameters
+        ----------
+        values : numpy.ndarray
+            Shape ``(n, …)``.
+
+        Returns
+        -------
+        numpy.ndarray
+            A view ``(chain, draw, …)``, or the values as they are.
+        """
         if not self.has_chain_axis:
             return values
         return values.reshape(self.chains, -1, *values.shape[1:])
 
     def where(self, draw: int) -> str:
-        """Words for the place of one draw of the stack."""
+        """
+        Words for the place of one draw of the stack.
+
+        Parameters
+        ----------
+        draw : int
+            Position in the stack.
+
+        Returns
+        -------
+        str
+            Such as ``"chain 1, draw 17"``.
+        """
         chain = int(np.searchsorted(self.starts, draw, side="right")) - 1
         if self.chains == 1:
             return f"draw {draw}"
         return f"chain {chain}, draw {draw - int(self.starts[chain])}"
 
     def take(self, rows: npt.NDArray[np.int64]) -> Draws:
-        """The draws at ascending positions `rows`, chains kept, as a new stack."""
+        """
+        Some of the draws, chains kept, as a new stack.
+
+        Parameters
+        ----------
+        rows : numpy.ndarray
+            Ascending positions in the stack; a position may stand several times.
+
+        Returns
+        -------
+        Draws
+            The draws there.
+        """
         counts = np.bincount(self.chain[rows], minlength=self.chains)
         kept = np.flatnonzero(counts)
         starts = np.concatenate([[0], np.cumsum(counts[kept])]).astype(np.int64)
@@ -188,7 +252,19 @@ class Draws(Frozen, Mapping[str, Array]):
         return xarray().Dataset(variables, coords=coords)
 
     def dims_of(self, name: str) -> tuple[str, ...]:
-        """Names of a parameter's trailing dimensions, made up where the input gave none."""
+        """
+        Names of a parameter's trailing dimensions, made up where the input gave none.
+
+        Parameters
+        ----------
+        name : str
+            The parameter.
+
+        Returns
+        -------
+        tuple of str
+            One for each axis after the draws.
+        """
         if name not in self.values_by_name:
             raise UnknownNameError(
                 "name", "a parameter", repr(name), close_names(name, self.values_by_name)
