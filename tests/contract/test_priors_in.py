@@ -1,4 +1,8 @@
-"""Every kind of prior term: distributions, named hyperparameters, scipy, callables, arrays."""
+"""Every kind of prior term: distributions, named hyperparameters, scipy, callables, arrays.
+
+Sums of up to fifteen log densities of size at most a hundred are compared with scipy's at 1e-10
+to 1e-12: a few roundings of the largest of them.
+"""
 
 from __future__ import annotations
 

@@ -13,7 +13,7 @@ import numpy as np
 
 from steelyard.answers.covariances import covariance_of
 from steelyard.answers.distances import distance_of, divergence_of
-from steelyard.answers.estimate import Estimate
+from steelyard.answers.estimate import Estimate, Estimates
 from steelyard.answers.estimating import Scale, mean_of, sd_of
 from steelyard.answers.probabilities import probability_of
 from steelyard.answers.quantiles import ENDS, quantile_of, shortest_of
@@ -316,7 +316,7 @@ class Answer:
         if isinstance(event, Mapping):
             if not event:
                 raise QuantityError("event", "at least one", "an empty mapping", "Name one.")
-            return {str(k): self.prob(v, level) for k, v in event.items()}
+            return Estimates({str(k): self.prob(v, level) for k, v in event.items()})
         if event is None:
             raise QuantityError("event", "an event", "None", 'Write "rate[3] > 0.12".')
         if level is not None and (
@@ -431,7 +431,7 @@ class Answer:
         """
         several = labelled(quantity, self._base)
         if several is not None:
-            return {label: distance_of(self._scale, q) for label, q in several.items()}
+            return Estimates({k: distance_of(self._scale, q) for k, q in several.items()})
         return distance_of(self._scale, read_quantity(quantity, self._base))
 
     @property
@@ -526,13 +526,11 @@ class Answer:
     ) -> Any:
         several = labelled(quantity, self._base, events=events)
         if several is not None:
-            return {label: work(q) for label, q in several.items()}
+            return Estimates({label: work(q) for label, q in several.items()})
         return work(read_quantity(quantity, self._base, events=events))
 
     def _several(self, quantities: Any) -> dict[str, Quantity]:
         """Quantities by label, also for one alone and for a list of names."""
-        if isinstance(quantities, list | tuple) and all(isinstance(q, str) for q in quantities):
-            quantities = {q: q for q in quantities}
         several = labelled(quantities, self._base)
         if several is not None:
             return several

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from html import escape
 from typing import Any, NoReturn
 
@@ -13,11 +13,12 @@ import numpy.typing as npt
 
 from steelyard import _core
 from steelyard.arrays import Frozen
+from steelyard.base.names import label_texts
 from steelyard.digits import rounded, short
 from steelyard.errors import ArgumentError, TruthValueError
 from steelyard.verdicts import Level, Verdict
 
-__all__ = ["Decision", "Estimate"]
+__all__ = ["Decision", "Estimate", "Estimates"]
 
 
 @dataclass(frozen=True)
@@ -189,6 +190,14 @@ class Estimate(Frozen):
             "Write estimate.value, or estimate.verdict.is_sound.",
         )
 
+    def __float__(self) -> NoReturn:
+        raise TruthValueError(
+            "estimate",
+            "its .value, with its .error in mind",
+            "float(estimate)",
+            "Write float(estimate.value).",
+        )
+
     def _bound(self) -> str:
         if self.upper_bound is not None and np.ndim(self.upper_bound) == 0:
             known = not math.isnan(self.upper_bound)
@@ -216,13 +225,49 @@ class Estimate(Frozen):
         if texts.size > 40:
             return f"{head}array of shape {texts.shape}; {self.verdict!r}"
         lines = [
-            f"  [{', '.join(map(str, place))}] {texts[place]} ({Level.__str__(levels[place])})"
+            f"  [{', '.join(self._names(place))}] {texts[place]} ({Level.__str__(levels[place])})"
             for place in np.ndindex(texts.shape)
         ]
-        return "\n".join([head.rstrip(" ") or "estimate", *lines])
+        return "\n".join([head.rstrip(" "), *lines])
+
+    def _names(self, place: tuple[int, ...]) -> list[str]:
+        """Labels of one element, positions where there are none."""
+        dims = self.dims or ("",) * len(place)
+        return [
+            label_texts(self.labels[dim])[i] if dim in self.labels else str(i)
+            for dim, i in zip(dims, place, strict=True)
+        ]
 
     def __repr__(self) -> str:
         return f"<Estimate {self}>"
 
     def _repr_html_(self) -> str:
         return f"<pre>{escape(str(self))}</pre>"
+
+
+class Estimates(dict[str, Any]):
+    """
+    Several results by label: a dictionary that prints itself one a line.
+
+    Examples
+    --------
+    >>> import numpy as np, steelyard as sy
+    >>> x = np.random.default_rng(1).normal(size=1000)
+    >>> list(sy.weigh(np.zeros(1000), {"mu": x, "tau": x**2}).mean())
+    ['mu', 'tau']
+    """
+
+    def __str__(self) -> str:
+        return "\n".join(f"{label}: {_without_label(one)}" for label, one in self.items())
+
+    def __repr__(self) -> str:
+        return str(self)
+
+    def _repr_html_(self) -> str:
+        return f"<pre>{escape(str(self))}</pre>"
+
+
+def _without_label(result: Any) -> str:
+    if isinstance(result, Estimate):
+        return str(replace(result, label=""))
+    return "\n  ".join(["", *str(result).splitlines()])

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -67,6 +67,8 @@ def labelled(quantity: Any, base: Base, *, events: bool = False) -> dict[str, Qu
                 "Pass draws= to weigh(), or an array shaped like the log ratios.",
             )
         return {name: read_quantity(name, base) for name in base.parameters}
+    if isinstance(quantity, list | tuple) and quantity and all_text(quantity):
+        quantity = {name: name for name in quantity}
     if isinstance(quantity, Mapping):
         if not quantity:
             raise QuantityError("quantity", "at least one", "an empty mapping", "Name one.")
@@ -103,6 +105,11 @@ def read_quantity(
     values = np.require(stacked(quantity, draws, argument), np.float64, ["C", "A"])
     _refuse_bad_values(values, base, argument)
     return Quantity(label, values, ("",) * (values.ndim - 1))
+
+
+def all_text(values: Iterable[Any]) -> bool:
+    """Whether every entry is a text."""
+    return all(isinstance(value, str) for value in values)
 
 
 def _event_as_quantity(event: Any, base: Base, argument: str, events: bool) -> Quantity:

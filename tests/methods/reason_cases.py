@@ -1,0 +1,135 @@
+"""Answers and estimates whose judged figure is known: what the tests of the reasons hold.
+
+Weights are built so that the figure is known exactly: `count` draws of equal weight among 1,000
+have effective size `count` in both forms, largest share one over it and divergence
+log(1,000/count).
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+import steelyard as sy
+
+SEED = 20_261_216
+N = 1000
+
+
+def equal(count: int, draws: int = N) -> sy.Answer:
+    """`count` draws of equal weight, spread evenly over all; the others have none."""
+    log_ratio = np.full(draws, -np.inf)
+    log_ratio[np.linspace(0, draws - 1, count).astype(int)] = 0.0
+    return sy.weigh(log_ratio, smooth=False)
+
+
+def heavy(share: float) -> sy.Answer:
+    """One draw with this share, the others equal."""
+    log_ratio = np.zeros(N)
+    log_ratio[77] = np.log(share / (1 - share) * (N - 1))
+    return sy.weigh(log_ratio, smooth=False)
+
+
+def shape(shape: float) -> sy.Answer:
+    """Weights with that Pareto tail at evenly spaced probabilities, in random order.
+
+    METHODS' shrinkage takes k to (M k + 5)/(M + 10) with M = 190 of 4,000 draws: the shapes asked
+    for keep at least 0.05 of distance from a limit.
+    """
+    u = (np.arange(4000) + 0.5) / 4000
+    log_ratio = -shape * np.log(np.random.default_rng(SEED).permutation(u))
+    return sy.weigh(log_ratio, smooth=False)
+
+
+def noise(seed: int, *shape: int) -> np.ndarray:
+    return np.random.default_rng(SEED + seed).normal(size=shape)
+
+
+def apart(distance: float) -> sy.Estimate:
+    """Mean of four chains of independent noise, one of which sits apart."""
+    x = noise(1, 4, 500)
+    x -= x.mean(axis=1, keepdims=True)
+    x[3] += distance
+    return sy.weigh(np.zeros(x.shape)).mean(x)
+
+
+def shares(tilt: float) -> sy.Answer:
+    """Four chains, the last of which holds exp(tilt) times the weight of another."""
+    log_ratio = 0.3 * noise(2, 4, 500)
+    log_ratio -= np.log(np.exp(log_ratio).mean(axis=1, keepdims=True))
+    log_ratio[3] += tilt
+    return sy.weigh(log_ratio, smooth=False)
+
+
+def unordered(draws: int = N) -> sy.Answer:
+    """Draws without order, each of which is worth one."""
+    return sy.Fit({"x": noise(15, draws)}, ordered=False).base
+
+
+def few(draws: float) -> sy.Estimate:
+    return unordered(int(draws)).mean("x")
+
+
+def event(inside: int) -> sy.Estimate:
+    return unordered().prob(np.arange(N) < inside)
+
+
+def excursions(count: int) -> sy.Answer:
+    """The heavy fifth of one chain of 2,000 stands in `count` stretches, far apart."""
+    log_ratio = 0.01 * noise(14, 2000)
+    length = 420 // count + 1
+    for start in np.linspace(0, 2000 - length, count).astype(int):
+        log_ratio[start : start + length] += 3.0
+    return sy.weigh(log_ratio, smooth=False)
+
+
+def quantile(p: float) -> sy.Estimate:
+    return unordered().quantile("x", p)
+
+
+def beyond(draws: float) -> sy.Estimate:
+    """A quantile with so many of the 1,000 draws at or below it."""
+    return quantile((draws - 0.5) / N)
+
+
+def product(power: float) -> sy.Estimate:
+    """Mean of a quantity with a Pareto tail of that shape, under equal weights."""
+    u = (np.arange(4000) + 0.5) / 4000
+    x = np.random.default_rng(SEED + 4).permutation(u) ** -power
+    return sy.weigh(np.zeros(4000)).mean(x)
+
+
+def prior(old: sy.Normal | sy.Flat, new: object) -> sy.Answer:
+    x = np.random.default_rng(SEED + 5).uniform(size=N)
+    return sy.Fit({"x": x}, prior={"x": old}).reweigh(sy.swap_prior(x=new))
+
+
+def loosened(power: float) -> sy.Answer:
+    """A flat prior: the data dominate, and the shape is one less the power."""
+    loglik = {"gauge A": np.full((N, 2), -1.0) + 0.01 * noise(17, N, 2)}
+    fit = sy.Fit({"x": noise(6, N)}, {"x": sy.Flat()}, loglik)
+    return fit.reweigh(sy.power(likelihood=power))
+
+
+def both(shape: float) -> sy.Answer:
+    """Normal throughout: ``λ(1 − V P₀) + V P₀`` for a prior widened to a flat one, λ = 0.1."""
+    x = noise(18, N)
+    variance = (shape - 0.1) / 0.9
+    x = (x - x.mean()) / x.std(ddof=1) * np.sqrt(variance)
+    fit = sy.Fit({"x": x}, {"x": sy.Normal(0, 1)}, {"gauge A": np.full((N, 2), -1.0)})
+    return fit.reweigh(sy.power(likelihood=0.9) & sy.swap_prior(x=sy.Flat()))
+
+
+def noisier(factor: float) -> sy.Answer:
+    fit = sy.Fit({"x": noise(16, N)}, loglik={"gauge A": np.full((N, 2), -1.0)})
+    return fit.reweigh(sy.raise_noise("gauge A", factor, sd=1.0))
+
+
+def stacked(seed: int) -> sy.Fit:
+    return sy.Fit({"x": noise(seed, N)}, prior={"x": sy.Normal(0, 9)})
+
+
+def widened(shape: float) -> sy.Answer:
+    x = noise(10, N)
+    x = (x - x.mean()) / x.std(ddof=1) * np.sqrt(shape)
+    fit = sy.Fit({"x": x}, prior={"x": sy.Normal(0, 1)})
+    return fit.reweigh(sy.swap_prior(x=sy.Flat()))
