@@ -78,11 +78,10 @@ def test_an_event_is_no_quantity_except_for_a_shift(fit: sy.Fit, asked: str, eve
     assert "prob(" in told.next_step
 
 
-def test_a_list_of_names_is_a_table_but_not_one_quantity(fit: sy.Fit) -> None:
+def test_a_list_of_names_is_several_quantities_and_an_unknown_one_is_refused(fit: sy.Fit) -> None:
     assert set(fit.base.table(["mu", "tau"])["quantity"]) == {"mu", "tau"}
-    with pytest.raises(sy.errors.SteelyardError) as caught:
-        fit.base.mean(["mu", "tau"])
-    assert "quantity" in caught.value.argument
+    assert list(fit.base.mean(["mu", "tau"])) == ["mu", "tau"]
+    refused(lambda: fit.base.mean(["mu", "tav"]), UnknownNameError, "quantity", "tav")
 
 
 def test_bare_integers_in_brackets_are_refused_where_labels_differ_from_positions() -> None:
