@@ -1,10 +1,15 @@
 """Numerical kernels; arrays are aligned float64 of any strides, columns are independent."""
 
+from typing import TypeAlias
+
 import numpy as np
 import numpy.typing as npt
 
+_Numbers: TypeAlias = npt.NDArray[np.float64] | npt.NDArray[np.float32]
+
 __all__ = [
     "chi_square_tail",
+    "describe",
     "effective_size",
     "f_tail",
     "influence",
@@ -18,22 +23,22 @@ __all__ = [
     "normalise",
     "pareto_fit",
     "quantile",
+    "quantile_many",
     "resample",
     "set_threads",
     "shortest_interval",
     "signed_tail_shape",
     "smooth",
+    "sort_order",
     "tail_shape",
     "threads",
     "weighted_mean",
 ]
 
-def log_sum_exp(x: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
-def normalise(
-    x: npt.NDArray[np.float64], out: npt.NDArray[np.float64]
-) -> npt.NDArray[np.float64]: ...
-def effective_size(x: npt.NDArray[np.float64], entropy: bool) -> npt.NDArray[np.float64]: ...
-def largest_share(x: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def log_sum_exp(x: _Numbers) -> npt.NDArray[np.float64]: ...
+def normalise(x: _Numbers, out: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def effective_size(x: _Numbers, entropy: bool) -> npt.NDArray[np.float64]: ...
+def largest_share(x: _Numbers) -> npt.NDArray[np.float64]: ...
 def smooth(
     x: npt.NDArray[np.float64],
     relative_efficiency: npt.NDArray[np.float64],
@@ -54,10 +59,16 @@ def weighted_mean(
     f: npt.NDArray[np.float64], w: npt.NDArray[np.float64]
 ) -> npt.NDArray[np.float64]: ...
 def quantile(
-    x: npt.NDArray[np.float64], w: npt.NDArray[np.float64], probs: npt.NDArray[np.float64]
+    x: _Numbers,
+    w: npt.NDArray[np.float64],
+    probs: npt.NDArray[np.float64],
+    order: npt.NDArray[np.int32] | None = None,
 ) -> npt.NDArray[np.float64]: ...
 def shortest_interval(
-    x: npt.NDArray[np.float64], w: npt.NDArray[np.float64], mass: float
+    x: _Numbers,
+    w: npt.NDArray[np.float64],
+    mass: float,
+    order: npt.NDArray[np.int32] | None = None,
 ) -> npt.NDArray[np.float64]: ...
 def resample(
     w: npt.NDArray[np.float64], size: int, method: str, key: bytes
@@ -74,3 +85,11 @@ def normal_quantile(p: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
 def ln_gamma(x: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
 def set_threads(n: int) -> None: ...
 def threads() -> int: ...
+def describe(x: _Numbers) -> npt.NDArray[np.float64]: ...
+def sort_order(x: _Numbers) -> npt.NDArray[np.int32]: ...
+def quantile_many(
+    x: _Numbers,
+    w: npt.NDArray[np.float64],
+    probs: npt.NDArray[np.float64],
+    order: npt.NDArray[np.int32] | None = None,
+) -> npt.NDArray[np.float64]: ...

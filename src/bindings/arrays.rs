@@ -1,5 +1,7 @@
 //! NumPy arrays as array views whose memory may be read.
 
+use std::borrow::Cow;
+
 use ndarray::{ArrayView1, ArrayView2, ArrayViewMut2};
 use numpy::ndarray::{Dimension, Ix2};
 use numpy::{
@@ -10,14 +12,40 @@ use pyo3::prelude::*;
 
 use crate::kernels::error::KernelError;
 
+/// An array of float64, or of float32 which kernels widen where they load it.
+#[derive(FromPyObject)]
+pub enum Numbers<'py> {
+    /// float64.
+    Double(PyReadonlyArray2<'py, f64>),
+    /// float32.
+    Single(PyReadonlyArray2<'py, f32>),
+}
+
+/// The value of `$body`, in which `$view` is the view of `$numbers` in its own type.
+macro_rules! with_view {
+    ($argument:literal, $numbers:expr, |$view:ident| $body:expr) => {
+        match &$numbers {
+            $crate::bindings::arrays::Numbers::Double(array) => {
+                let $view = $crate::bindings::arrays::matrix($argument, array)?;
+                $body
+            }
+            $crate::bindings::arrays::Numbers::Single(array) => {
+                let $view = $crate::bindings::arrays::matrix($argument, array)?;
+                $body
+            }
+        }
+    };
+}
+pub(super) use with_view;
+
 /// View of `array`, shape `(n, k)`, any strides.
 ///
 /// # Errors
 /// [`KernelError::Misaligned`].
-pub fn matrix<'a>(
+pub fn matrix<'a, T: Element>(
     argument: &'static str,
-    array: &'a PyReadonlyArray2<'_, f64>,
-) -> Result<ArrayView2<'a, f64>, KernelError> {
+    array: &'a PyReadonlyArray2<'_, T>,
+) -> Result<ArrayView2<'a, T>, KernelError> {
     expect_aligned(argument, array)?;
     Ok(array.as_array())
 }
@@ -35,17 +63,19 @@ pub fn matrix_mut<'a>(
     Ok(array.as_array_mut())
 }
 
-/// Entries of `array`, shape `(n,)`, any stride, as a contiguous copy.
+/// Entries of `array`, shape `(n,)`, any stride; a copy unless they are contiguous.
 ///
 /// # Errors
 /// [`KernelError::Misaligned`].
-pub fn vector<T: Element + Copy>(
+pub fn vector<'a, T: Element + Copy>(
     argument: &'static str,
-    array: &PyReadonlyArray1<'_, T>,
-) -> Result<Vec<T>, KernelError> {
+    array: &'a PyReadonlyArray1<'_, T>,
+) -> Result<Cow<'a, [T]>, KernelError> {
     expect_aligned(argument, array)?;
-    let view: ArrayView1<'_, T> = array.as_array();
-    Ok(view.to_vec())
+    let view: ArrayView1<'a, T> = array.as_array();
+    Ok(view
+        .to_slice()
+        .map_or_else(|| Cow::Owned(view.to_vec()), Cow::Borrowed))
 }
 
 /// A view of a misaligned array is undefined behaviour, and the numpy crate makes one.

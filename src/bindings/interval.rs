@@ -4,30 +4,40 @@ use ndarray::Array2;
 use numpy::{IntoPyArray, PyArray2, PyReadonlyArray1, PyReadonlyArray2};
 use pyo3::prelude::*;
 
-use super::arrays::{matrix, vector};
+use super::arrays::{Numbers, vector, with_view};
 use super::errors::detached;
+use super::quantile::{column_of, expect_order, given_order};
 use crate::kernels::columns::{expect_shape, map_columns_into};
 use crate::kernels::interval;
 
 /// Lower and upper end of the shortest interval of every column of `x`, `(n, k)`: `(2, k)`.
+/// `order` is what `sort_order` gives for `x`.
 #[pyfunction]
+#[pyo3(signature = (x, w, mass, order=None))]
 pub fn shortest_interval<'py>(
     py: Python<'py>,
-    x: PyReadonlyArray2<'py, f64>,
+    x: Numbers<'py>,
     w: PyReadonlyArray1<'py, f64>,
     mass: f64,
+    order: Option<PyReadonlyArray2<'py, i32>>,
 ) -> PyResult<Bound<'py, PyArray2<f64>>> {
-    let x = matrix("x", &x)?;
     let w = vector("w", &w)?;
-    expect_shape("w", &[x.nrows()], &[w.len()])?;
     interval::expect_mass(mass)?;
-    let mut out = Array2::zeros((2, x.ncols()));
-    detached(py, |interrupt| {
-        map_columns_into(x, out.view_mut(), interrupt, |column, _, target| {
-            let (lower, upper) = interval::shortest_interval(column, &w, mass);
-            target.copy_from_slice(&[lower, upper]);
-            Ok(())
-        })
-    })?;
+    let order = given_order(&order)?;
+    let out = with_view!("x", x, |x| {
+        expect_shape("w", &[x.nrows()], &[w.len()])?;
+        expect_order(order, x.shape())?;
+        let mut out = Array2::zeros((2, x.ncols()));
+        detached(py, |interrupt| {
+            map_columns_into(x, out.view_mut(), interrupt, |column, index, target| {
+                let order = order.map(|order| column_of(order, index));
+                let (lower, upper) =
+                    interval::shortest_interval(column, &w, order.as_deref(), mass);
+                target.copy_from_slice(&[lower, upper]);
+                Ok(())
+            })
+        })?;
+        out
+    });
     Ok(out.into_pyarray(py))
 }

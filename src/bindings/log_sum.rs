@@ -1,40 +1,36 @@
 //! Sums of exponentials.
 
-use numpy::{IntoPyArray, PyArray1, PyReadonlyArray2, PyReadwriteArray2};
+use numpy::{IntoPyArray, PyArray1, PyReadwriteArray2};
 use pyo3::prelude::*;
 
-use super::arrays::{matrix, matrix_mut};
+use super::arrays::{Numbers, matrix_mut, with_view};
 use super::errors::detached;
-use crate::kernels::columns::{expect_shape, map_columns, map_columns_into};
-use crate::kernels::log_sum;
+use crate::kernels::reductions::{column_sums, normalise_columns};
+use crate::kernels::weight_sums::{Sums, form};
 
 /// Log-sum-exp of every column of the log weights `x`, `(n, k)`: `(k,)`.
 #[pyfunction]
-pub fn log_sum_exp<'py>(
-    py: Python<'py>,
-    x: PyReadonlyArray2<'py, f64>,
-) -> PyResult<Bound<'py, PyArray1<f64>>> {
-    let x = matrix("x", &x)?;
-    let sums = detached(py, |interrupt| {
-        map_columns(x, interrupt, |column, _| Ok(log_sum::log_sum_exp(column)))
-    })?;
-    Ok(sums.into_pyarray(py))
+pub fn log_sum_exp<'py>(py: Python<'py>, x: Numbers<'py>) -> PyResult<Bound<'py, PyArray1<f64>>> {
+    let sums = with_view!("x", x, |x| detached(py, |interrupt| {
+        column_sums::<_, { form::TOTAL }>(x, interrupt)
+    }))?;
+    Ok(sums
+        .iter()
+        .map(Sums::log_sum)
+        .collect::<Vec<f64>>()
+        .into_pyarray(py))
 }
 
 /// Writes the normalised log weights into `out`, `(n, k)`, and returns the log sums, `(k,)`.
 #[pyfunction]
 pub fn normalise<'py>(
     py: Python<'py>,
-    x: PyReadonlyArray2<'py, f64>,
+    x: Numbers<'py>,
     mut out: PyReadwriteArray2<'py, f64>,
 ) -> PyResult<Bound<'py, PyArray1<f64>>> {
-    let x = matrix("x", &x)?;
     let out = matrix_mut("out", &mut out)?;
-    expect_shape("out", x.shape(), out.shape())?;
-    let sums = detached(py, |interrupt| {
-        map_columns_into(x, out, interrupt, |column, _, target| {
-            Ok(log_sum::normalise(column, target))
-        })
-    })?;
+    let sums = with_view!("x", x, |x| detached(py, |interrupt| {
+        normalise_columns(x, out, interrupt)
+    }))?;
     Ok(sums.into_pyarray(py))
 }

@@ -22,7 +22,7 @@ use pyo3::prelude::*;
 #[pymodule]
 mod _core {
     #[pymodule_export]
-    use super::effective::{effective_size, largest_share};
+    use super::effective::{describe, effective_size, largest_share};
     #[pymodule_export]
     use super::f_tail::f_tail;
     #[pymodule_export]
@@ -40,7 +40,7 @@ mod _core {
     #[pymodule_export]
     use super::pareto::pareto_fit;
     #[pymodule_export]
-    use super::quantile::quantile;
+    use super::quantile::{quantile, quantile_many, sort_order};
     #[pymodule_export]
     use super::resample::resample;
     #[pymodule_export]

@@ -20,12 +20,6 @@ pub fn resample<'py>(
     let w = vector("w", &w)?;
     let method: kernels::resample::Method = method.parse()?;
     let key = <[u8; 32]>::try_from(key).map_err(|_| KernelError::Key { found: key.len() })?;
-    let chosen = detached(py, |_| {
-        let indices = kernels::resample::resample(&w, size, method, key)?;
-        Ok(indices
-            .into_iter()
-            .map(|index| index as i64)
-            .collect::<Vec<i64>>())
-    })?;
+    let chosen = detached(py, |_| kernels::resample::resample(&w, size, method, key))?;
     Ok(chosen.into_pyarray(py))
 }

@@ -6,6 +6,7 @@
 
 use ndarray::{ArrayView2, ArrayViewMut1, ArrayViewMut2, Axis};
 
+use super::entry::Entry;
 use super::error::KernelError;
 use super::ordered::{Interrupt, map_tasks};
 
@@ -23,12 +24,13 @@ const ROWS: usize = 256;
 ///
 /// # Errors
 /// The error of the first column that fails, or [`KernelError::Interrupted`].
-pub fn map_columns<T, F>(
-    x: ArrayView2<'_, f64>,
+pub fn map_columns<E, T, F>(
+    x: ArrayView2<'_, E>,
     interrupt: &Interrupt<'_>,
     kernel: F,
 ) -> Result<Vec<T>, KernelError>
 where
+    E: Entry,
     T: Send,
     F: Fn(&[f64], usize) -> Result<T, KernelError> + Sync,
 {
@@ -51,13 +53,14 @@ where
 ///
 /// # Errors
 /// [`KernelError::Shape`] when `out` has another number of columns; else as [`map_columns`].
-pub fn map_columns_into<T, F>(
-    x: ArrayView2<'_, f64>,
+pub fn map_columns_into<E, T, F>(
+    x: ArrayView2<'_, E>,
     mut out: ArrayViewMut2<'_, f64>,
     interrupt: &Interrupt<'_>,
     kernel: F,
 ) -> Result<Vec<T>, KernelError>
 where
+    E: Entry,
     T: Send,
     F: Fn(&[f64], usize, &mut [f64]) -> Result<T, KernelError> + Sync,
 {
@@ -113,9 +116,12 @@ enum Gathered<'a> {
 }
 
 impl<'a> Gathered<'a> {
-    fn new(view: ArrayView2<'a, f64>, interrupt: &Interrupt<'_>) -> Result<Self, KernelError> {
+    fn new<E: Entry>(
+        view: ArrayView2<'a, E>,
+        interrupt: &Interrupt<'_>,
+    ) -> Result<Self, KernelError> {
         let in_place: Option<Vec<&'a [f64]>> = (0..view.ncols())
-            .map(|column| view.index_axis_move(Axis(1), column).to_slice())
+            .map(|column| E::as_wide(view.index_axis_move(Axis(1), column).to_slice()?))
             .collect();
         if let Some(columns) = in_place {
             return Ok(Self::InPlace(columns));
@@ -126,8 +132,8 @@ impl<'a> Gathered<'a> {
             if row.is_multiple_of(ROWS) {
                 interrupt.check()?;
             }
-            for (column, &entry) in entries.iter().enumerate() {
-                buffer[column * rows + row] = entry;
+            for (column, entry) in entries.iter().enumerate() {
+                buffer[column * rows + row] = entry.wide();
             }
         }
         Ok(Self::Copied { rows, buffer })

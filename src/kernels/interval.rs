@@ -24,13 +24,14 @@ pub fn expect_mass(mass: f64) -> Result<(), KernelError> {
 ///
 /// `x` and `w` have shape `(n,)`; `w` are weights on the natural scale, not necessarily normalised.
 /// Equal values count together; draws of weight 0 are skipped. `mass` may be missed by `1e-12` of
-/// the total weight, which absorbs the rounding of sums. NaN in `x` where `w > 0`, bad weights or
+/// the total weight, which absorbs the rounding of sums. `order` are the indices of `x` in ascending
+/// order of value, where they are known. NaN in `x` where `w > 0`, bad weights or
 /// no positive weight give NaN twice.
 ///
 /// Source: Chen & Shao (1999), Journal of Computational and Graphical Statistics 8, 69-92, whose
 /// interval this is for weighted draws.
-pub fn shortest_interval(x: &[f64], w: &[f64], mass: f64) -> (f64, f64) {
-    let Some(steps) = Steps::new(x, w) else {
+pub fn shortest_interval(x: &[f64], w: &[f64], order: Option<&[u32]>, mass: f64) -> (f64, f64) {
+    let Some(steps) = Steps::new(x, w, order) else {
         return (f64::NAN, f64::NAN);
     };
     let needed = (mass - SLACK) * steps.total();

@@ -1,6 +1,7 @@
 //! Sums of exponentials, on the log scale.
 
-use super::ordered::sum_by;
+use super::reductions::slice_sums;
+use super::weight_sums::form;
 
 /// `log Σ_s exp(x_s)` of log weights `x`, shape `(n,)`, on the log scale.
 ///
@@ -8,8 +9,7 @@ use super::ordered::sum_by;
 /// largest term never underflows. No entry, or `−inf` throughout, gives `−inf`; an entry `+inf`
 /// gives `+inf`; NaN gives NaN.
 pub fn log_sum_exp(x: &[f64]) -> f64 {
-    let (maximum, log_sum) = shifted(x);
-    maximum + log_sum
+    slice_sums::<{ form::TOTAL }>(x).log_sum()
 }
 
 /// Writes `x_s − log Σ exp(x)` into `out` and returns the log sum; both on the log scale, both of
@@ -19,27 +19,22 @@ pub fn log_sum_exp(x: &[f64]) -> f64 {
 /// both, formed first, loses the digits that an offset of `1e5` pushes out. `−inf` throughout
 /// stays `−inf`; an entry `+inf` or NaN gives NaN.
 pub fn normalise(x: &[f64], out: &mut [f64]) -> f64 {
-    let (maximum, log_sum) = shifted(x);
-    if maximum == f64::NEG_INFINITY {
-        out.fill(f64::NEG_INFINITY);
-        return f64::NEG_INFINITY;
-    }
+    let sums = slice_sums::<{ form::TOTAL }>(x);
+    let (maximum, log_total) = sums.offsets();
     for (target, &entry) in out.iter_mut().zip(x) {
-        *target = (entry - maximum) - log_sum;
+        *target = (entry - maximum) - log_total;
     }
-    maximum + log_sum
+    sums.log_sum()
 }
 
 /// As [`normalise`], in place.
 pub fn normalise_in_place(x: &mut [f64]) -> f64 {
-    let (maximum, log_sum) = shifted(x);
-    if maximum == f64::NEG_INFINITY {
-        return f64::NEG_INFINITY;
-    }
+    let sums = slice_sums::<{ form::TOTAL }>(x);
+    let (maximum, log_total) = sums.offsets();
     for entry in x.iter_mut() {
-        *entry = (*entry - maximum) - log_sum;
+        *entry = (*entry - maximum) - log_total;
     }
-    maximum + log_sum
+    sums.log_sum()
 }
 
 /// Largest entry; NaN if any entry is NaN; `−inf` without entries.
@@ -51,13 +46,4 @@ pub fn maximum(x: &[f64]) -> f64 {
         any_nan |= entry.is_nan();
     }
     if any_nan { f64::NAN } else { largest }
-}
-
-/// `m = max x` and `log Σ exp(x − m)`; the latter is 0 where `m` is infinite or NaN.
-fn shifted(x: &[f64]) -> (f64, f64) {
-    let maximum = maximum(x);
-    if !maximum.is_finite() {
-        return (maximum, 0.0);
-    }
-    (maximum, sum_by(x.len(), |s| (x[s] - maximum).exp()).ln())
 }

@@ -4,7 +4,9 @@
 //! on threads without letting their number show in the result.
 
 pub mod columns;
+pub mod cumulated;
 pub mod effective;
+pub mod entry;
 pub mod error;
 pub mod f_tail;
 pub mod influence;
@@ -15,8 +17,13 @@ pub mod mean;
 pub mod ordered;
 pub mod pareto;
 pub mod quantile;
+pub mod quantile_many;
+pub mod reductions;
 pub mod resample;
 pub mod signed_tail;
 pub mod smooth;
+pub mod sorting;
 pub mod special;
 pub mod tail;
+pub mod vector;
+pub mod weight_sums;

@@ -1,6 +1,7 @@
 //! The weighted empirical distribution, and its quantiles.
 
 use super::ordered::sum_by;
+use super::sorting;
 
 /// Quantiles at `probs`, shape `(m,)`, of the draws `x` with weights `w`, both of shape `(n,)`,
 /// written into `out`, shape `(m,)`. Weights are on the natural scale, not necessarily normalised.
@@ -9,12 +10,20 @@ use super::ordered::sum_by;
 /// the sorted distinct values and is linear between them; equal values share one step, their
 /// weights added. Below the first midpoint the quantile is the smallest value, above the last the
 /// largest. Draws of weight 0 are skipped. A NaN among `x` where `w > 0`, a NaN in `probs`, bad
-/// weights or no positive weight give NaN.
+/// weights, no positive weight or an impossible order give NaN.
 ///
 /// Source: Hyndman & Fan (1996), American Statistician 50, 361-365, type 5, which this is when
 /// weights are equal and values distinct.
-pub fn quantile(x: &[f64], w: &[f64], probs: impl Iterator<Item = f64>, out: &mut [f64]) {
-    match Steps::new(x, w) {
+///
+/// `order` are the indices of `x` in ascending order of value, where they are known.
+pub fn quantile(
+    x: &[f64],
+    w: &[f64],
+    order: Option<&[u32]>,
+    probs: impl Iterator<Item = f64>,
+    out: &mut [f64],
+) {
+    match Steps::new(x, w, order) {
         None => out.fill(f64::NAN),
         Some(steps) => {
             for (target, prob) in out.iter_mut().zip(probs) {
@@ -33,11 +42,20 @@ pub(super) struct Steps {
 }
 
 impl Steps {
-    /// Nothing when a draw that counts is NaN, when a weight is negative or not finite, or when no
-    /// weight is positive.
-    pub(super) fn new(x: &[f64], w: &[f64]) -> Option<Self> {
+    /// Nothing when a draw that counts is NaN, when a weight is negative or not finite, when no
+    /// weight is positive, or when `order` leads outside.
+    pub(super) fn new(x: &[f64], w: &[f64], order: Option<&[u32]>) -> Option<Self> {
+        let found;
+        let order = match order {
+            Some(order) => order,
+            None => {
+                found = sorting::order(x);
+                &found
+            }
+        };
         let mut draws: Vec<(f64, f64)> = Vec::with_capacity(x.len());
-        for (&value, &weight) in x.iter().zip(w) {
+        for &index in order {
+            let (&value, &weight) = (x.get(index as usize)?, w.get(index as usize)?);
             if !(weight >= 0.0 && weight.is_finite()) || (weight > 0.0 && value.is_nan()) {
                 return None;
             }
@@ -45,8 +63,6 @@ impl Steps {
                 draws.push((value, weight));
             }
         }
-        // The weight breaks ties, so that the sums below do not depend on the input order.
-        draws.sort_unstable_by(|a, b| a.0.total_cmp(&b.0).then_with(|| a.1.total_cmp(&b.1)));
         let steps = Self::merged(&draws);
         let total = steps.total();
         (total > 0.0 && total.is_finite()).then_some(steps)
@@ -115,7 +131,7 @@ impl Steps {
 }
 
 /// `a + share (b − a)` for `share` in `(0, 1]`, exact at 1 and without overflow.
-fn interpolate(a: f64, b: f64, share: f64) -> f64 {
+pub(super) fn interpolate(a: f64, b: f64, share: f64) -> f64 {
     if share >= 1.0 {
         return b;
     }

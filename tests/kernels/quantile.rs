@@ -5,7 +5,7 @@ use super::support::{close, fixed, values, weighted};
 
 fn found(x: &[f64], w: &[f64], probs: &[f64]) -> Vec<f64> {
     let mut out = vec![0.0; probs.len()];
-    quantile(x, w, probs.iter().copied(), &mut out);
+    quantile(x, w, None, probs.iter().copied(), &mut out);
     out
 }
 

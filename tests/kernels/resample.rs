@@ -1,5 +1,5 @@
 use _core::kernels::error::KernelError;
-use _core::kernels::resample::{Method, resample};
+use _core::kernels::resample::{self, Method};
 use proptest::prelude::*;
 
 use super::support::{fixed, weighted};
@@ -11,6 +11,16 @@ const METHODS: [Method; 5] = [
     Method::Residual,
     Method::WithoutReplacement,
 ];
+
+fn resample(
+    w: &[f64],
+    size: usize,
+    method: Method,
+    key: [u8; 32],
+) -> Result<Vec<usize>, KernelError> {
+    let chosen = resample::resample(w, size, method, key)?;
+    Ok(chosen.iter().map(|&index| index as usize).collect())
+}
 
 fn key(number: u64) -> [u8; 32] {
     let mut key = [0; 32];

@@ -41,7 +41,7 @@ def reweigh(base: Base, change: Change, *, smooth: bool = True) -> Answer:
     base = replace(base, withheld=target.withheld)
     own = base_weights(base)
     notes = [judge("base_unverified"), *_unknown_supports(target)]
-    if not target.log_ratio.any():
+    if not target.terms:
         unchanged = base_answer(base)
         # A swap that equals the base on these draws may still reach beyond them.
         shared = (*preflight(base, target), judge("no_change"))

@@ -70,6 +70,8 @@ def form_target(base: Base, change: Change) -> Target:
     # A fixed order of summation: a & b and b & a agree to the last bit.
     for label in sorted(terms):
         total = total + terms[label]
+    if not total.any():
+        terms = {}  # edits that cancel are no change
     return Target(
         draft.prior, draft.loglik, ReadOnly(terms), total, len(draft.ratios), draft.withheld
     )
