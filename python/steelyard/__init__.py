@@ -20,6 +20,7 @@ from steelyard.changes import (
     swap_prior,
     weigh_data,
 )
+from steelyard.checking import Finding, Findings
 from steelyard.densities import (
     Beta,
     Flat,
@@ -44,6 +45,8 @@ __all__ = [
     "Distance",
     "Draws",
     "Estimate",
+    "Finding",
+    "Findings",
     "Fit",
     "Flat",
     "Gamma",

@@ -10,6 +10,7 @@ from typing import Any
 from steelyard.answers import Answer, base_answer, reweigh
 from steelyard.base import Base, Draws, read_base
 from steelyard.changes import Change
+from steelyard.checking import Findings, check
 
 __all__ = ["Fit"]
 
@@ -107,6 +108,34 @@ class Fit:
     def base(self) -> Answer:
         """The answer without a change."""
         return base_answer(self._record)
+
+    def check(self) -> Findings:
+        """
+        Is the claimed base the one that the draws came from?
+
+        Returns
+        -------
+        Findings
+            One finding a check, each ``"found"``, ``"nothing found"`` or ``"not testable"``:
+            whether the rows of draws and log likelihood are aligned (and which order fits),
+            stored against claimed log density (and which term is missing, doubled, or lacks a
+            Jacobian), hyperpriors by Stein's identity, agreement about the normalising constant,
+            supports, repeated draws, mixing, and chains of unequal quality.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> x = np.random.default_rng(1).normal(size=(4, 500))
+        >>> fit = sy.Fit(
+        ...     {"x": x},
+        ...     prior={"x": sy.Normal(0, 1)},
+        ...     loglik=np.zeros((4, 500)),
+        ...     stored_log_density=-0.5 * x**2,
+        ... )
+        >>> fit.check()[1].status
+        'nothing found'
+        """
+        return check(self._record)
 
     def reweigh(self, change: Change, *, smooth: bool = True) -> Answer:
         """
