@@ -6,6 +6,9 @@
 
 mod kernels {
     mod columns;
+    mod densities;
+    mod densities_ln;
+    mod densities_tails;
     mod effective;
     mod error;
     mod f_tail;

@@ -8,13 +8,18 @@ import numpy.typing as npt
 _Numbers: TypeAlias = npt.NDArray[np.float64] | npt.NDArray[np.float32]
 
 __all__ = [
-    "chi_square_tail",
+    "beta_tails",
     "describe",
+    "digamma",
     "effective_size",
     "f_tail",
+    "gamma_tails",
     "influence",
     "largest_share",
     "ln_gamma",
+    "log_beta",
+    "log_density",
+    "log_normal_cdf",
     "log_sum_exp",
     "long_run_variance",
     "mean_square",
@@ -28,11 +33,14 @@ __all__ = [
     "set_threads",
     "shortest_interval",
     "signed_tail_shape",
+    "skew_normal_tails",
     "smooth",
     "sort_order",
     "tail_shape",
     "threads",
+    "weighted_covariance",
     "weighted_mean",
+    "weighted_moments",
 ]
 
 def log_sum_exp(x: _Numbers) -> npt.NDArray[np.float64]: ...
@@ -73,16 +81,35 @@ def shortest_interval(
 def resample(
     w: npt.NDArray[np.float64], size: int, method: str, key: bytes
 ) -> npt.NDArray[np.int64]: ...
-def influence(
-    loglik: npt.NDArray[np.float64], f: npt.NDArray[np.float64]
-) -> npt.NDArray[np.float64]: ...
-def chi_square_tail(q: npt.NDArray[np.float64], df: float) -> npt.NDArray[np.float64]: ...
+def influence(loglik: _Numbers, f: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
 def f_tail(
     f: npt.NDArray[np.float64], first: float, second: npt.NDArray[np.float64]
 ) -> npt.NDArray[np.float64]: ...
 def normal_cdf(x: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
 def normal_quantile(p: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
 def ln_gamma(x: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def log_density(
+    family: str,
+    x: npt.NDArray[np.float64],
+    hyper: list[npt.NDArray[np.float64]],
+    repeat: int,
+    out: npt.NDArray[np.float64],
+) -> None: ...
+def digamma(x: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def log_normal_cdf(x: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def log_beta(a: npt.NDArray[np.float64], b: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def gamma_tails(
+    a: npt.NDArray[np.float64], x: npt.NDArray[np.float64]
+) -> npt.NDArray[np.float64]: ...
+def beta_tails(
+    a: npt.NDArray[np.float64],
+    b: npt.NDArray[np.float64],
+    x: npt.NDArray[np.float64],
+    y: npt.NDArray[np.float64],
+) -> npt.NDArray[np.float64]: ...
+def skew_normal_tails(
+    z: npt.NDArray[np.float64], slant: npt.NDArray[np.float64]
+) -> npt.NDArray[np.float64]: ...
 def set_threads(n: int) -> None: ...
 def threads() -> int: ...
 def describe(x: _Numbers) -> npt.NDArray[np.float64]: ...
@@ -92,4 +119,10 @@ def quantile_many(
     w: npt.NDArray[np.float64],
     probs: npt.NDArray[np.float64],
     order: npt.NDArray[np.int32] | None = None,
+) -> npt.NDArray[np.float64]: ...
+def weighted_moments(
+    f: npt.NDArray[np.float64], w: npt.NDArray[np.float64]
+) -> npt.NDArray[np.float64]: ...
+def weighted_covariance(
+    f: npt.NDArray[np.float64], w: npt.NDArray[np.float64]
 ) -> npt.NDArray[np.float64]: ...

@@ -26,12 +26,9 @@ def decimals_of(error: float) -> int | None:
     """
     if not (math.isfinite(error) and error > 0):
         return None
-    place = -math.floor(math.log10(error))
-    leading = error * 10.0**place
-    if round(leading) >= 10:
-        place -= 1
-        leading = 1.0
-    return place + 1 if leading < 1.95 else place
+    # The text of the error itself says its first digit and exponent, without overflow.
+    mantissa, _, exponent = f"{error:.1e}".partition("e")
+    return -int(exponent) + (1 if float(mantissa) < 1.95 else 0)
 
 
 def rounded(value: float, error: float) -> str:
@@ -43,7 +40,15 @@ def rounded(value: float, error: float) -> str:
     decimals = decimals_of(error)
     if decimals is None:
         return f"{value:.5g}"
-    if decimals > 12:
-        return f"{value:.12g}"
+    if decimals > 12 or decimals < -12:
+        return _in_powers(value, decimals)
     # Adding zero turns the negative zero that rounding leaves into zero.
     return f"{round(value, decimals) + 0.0:.{max(decimals, 0)}f}"
+
+
+def _in_powers(value: float, decimals: int) -> str:
+    """`value` to so many decimal places in powers of ten, for very small and very large units."""
+    if value == 0:
+        return "0"
+    digits = decimals + int(f"{value:e}".partition("e")[2])
+    return f"{value:.{digits}e}" if digits >= 0 else "0"

@@ -1,4 +1,8 @@
-"""The face on top: a fit, whose verbs are one line each."""
+"""
+The face on top: a fit, whose verbs are one line each.
+
+The file is long because the docstring of every verb stands here, where users look for it.
+"""
 
 from __future__ import annotations
 
@@ -7,10 +11,40 @@ from functools import cached_property
 from html import escape
 from typing import Any
 
-from steelyard.answers import Answer, base_answer, reweigh
+from steelyard.answers import Answer, Estimate, base_answer, reweigh
 from steelyard.base import Base, Draws, read_base
 from steelyard.changes import Change
 from steelyard.checking import Findings, check
+from steelyard.leaving_out import (
+    LeaveOut,
+    LookAhead,
+    k_fold,
+    leave_out,
+    look_ahead,
+    sampled_from,
+)
+from steelyard.planning import Triage, triage
+from steelyard.sensitivity import (
+    Bounds,
+    Local,
+    Perturbation,
+    PriorFactors,
+    Pull,
+    Reach,
+    Statements,
+    Sweep,
+    TippingPoint,
+    least_data,
+    least_perturbation,
+    local,
+    prior_factors,
+    pull,
+    resistance,
+    statements,
+    sweep,
+    tipping_point,
+    worst_case,
+)
 
 __all__ = ["Fit"]
 
@@ -53,6 +87,10 @@ class Fit:
     ordered : bool, optional
         False for draws without time order (shuffled, nested sampling, independent): errors are
         then those of independent draws.
+    sampled : {"posterior", "deletions"}, optional
+        What the draws came from: the posterior, or the mixture of the posteriors without each
+        observation, ``posterior · Σ_i exp(−L_i)`` (see ``deletion_mixture``). The latter are
+        weighed back to the posterior, and leaving out then uses bounded weights.
 
     Raises
     ------
@@ -84,8 +122,9 @@ class Fit:
         predictive: Mapping[str, str] | None = None,
         approximation: Any = None,
         ordered: bool = True,
+        sampled: str = "posterior",
     ) -> None:
-        self._record: Base = read_base(
+        record = read_base(
             draws,
             prior,
             loglik,
@@ -98,6 +137,7 @@ class Fit:
             predictive=predictive,
             approximation=approximation,
         )
+        self._record: Base = sampled_from(record, sampled)
 
     @property
     def draws(self) -> Draws:
@@ -111,7 +151,7 @@ class Fit:
 
     def check(self) -> Findings:
         """
-        Is the claimed base the one that the draws came from?
+        Check whether the claimed base is the one that the draws came from.
 
         Returns
         -------
@@ -169,6 +209,578 @@ class Fit:
         sound
         """
         return reweigh(self._record, change, smooth=smooth)
+
+    def local(self, quantities: Any = None, *, of: str = "mean") -> Local:
+        """
+        Derivative of each quantity in every hyperparameter of every prior term.
+
+        Parameters
+        ----------
+        quantities : str, list, mapping, callable or array_like, optional
+            What is asked; events count too. All parameters by default.
+        of : {"mean", "sd"}
+            What of it.
+
+        Returns
+        -------
+        Local
+            Raw derivatives, and standardised ones per natural step of the hyperparameter.
+
+        Raises
+        ------
+        PriorError
+            Where no prior is stated, or a term has no derivative at a draw.
+
+        Notes
+        -----
+        ``∂E f/∂h = Cov(f, ∂ log π_h/∂h)`` [1]_; numbers only, since a hyperparameter that is a
+        parameter has a distribution instead.
+
+        References
+        ----------
+        .. [1] Gustafson (1996), Annals of Statistics 24; Giordano, Broderick, Jordan (2018),
+           JMLR 19.
+        """
+        return local(self._record, quantities, of)
+
+    def pull(self, quantities: Any = None) -> Pull:
+        """
+        How hard prior and likelihood pull at each quantity.
+
+        Parameters
+        ----------
+        quantities : str, list, mapping, callable or array_like, optional
+            What is asked. All parameters by default.
+
+        Returns
+        -------
+        Pull
+            Pulls of prior and likelihood, whole and term by term, and a reading in words. The
+            whole prior counts all stated terms; in a hierarchy look at the terms on top.
+
+        Raises
+        ------
+        ChangeError
+            Where neither prior nor likelihood is stated.
+
+        Notes
+        -----
+        ``½ [D(1/(1+δ)) + D(1+δ)] / log2(1+δ)`` with δ = 0.01, D(α) the cumulative Jensen–Shannon
+        distance of the marginal when prior (or likelihood) is taken to the power α [1]_.
+
+        References
+        ----------
+        .. [1] Kallioinen, Paananen, Bürkner, Vehtari (2024), Statistics and Computing 34.
+        """
+        return pull(self._record, quantities)
+
+    def sweep(self, family: Callable[..., Change], grid: Any, quantities: Any = None) -> Sweep:
+        """
+        Answers over a grid of one or two hyperparameters.
+
+        Parameters
+        ----------
+        family : callable
+            Takes one or two numbers and returns a change.
+        grid : array_like or mapping
+            Nodes of one hyperparameter, or ``{name: nodes}`` for one or two; ascending.
+        quantities : str, list, mapping, callable or array_like, optional
+            What is asked; events count too. All parameters by default.
+
+        Returns
+        -------
+        Sweep
+            Values, errors and verdicts at every node, the trusted region, simultaneous bands.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError
+            For a grid that is not one, or a family that fails; the node is named.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rng = np.random.default_rng(1)
+        >>> fit = sy.Fit({"mu": rng.normal(size=(4, 500))}, {"mu": sy.Normal(0, 2)})
+        >>> fit.sweep(lambda sd: sy.swap_prior(mu=sy.Normal(0, sd)), [1.5, 2, 3]).trusted.tolist()
+        [True, True, True]
+        """
+        return sweep(self._record, family, grid, quantities)
+
+    def tipping_point(
+        self,
+        family: Callable[[float], Change],
+        event: Any,
+        level: float,
+        between: tuple[float, float],
+        start: float | None = None,
+    ) -> TippingPoint:
+        """
+        Where a decision flips along a hyperparameter.
+
+        Parameters
+        ----------
+        family : callable
+            Takes a number and returns a change.
+        event : str, callable or array_like
+            One yes or no a draw.
+        level : float
+            The decision is whether the event's probability is above it.
+        between : tuple of float
+            Where to look.
+        start : float, optional
+            From where the nearest flip is counted; by default the value nearest to the base.
+
+        Returns
+        -------
+        TippingPoint
+            Flips, holds or unknown; all crossings with errors, a confidence set by inversion, and
+            the limits of the trusted region. At most 60 reweighings.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, QuantityError
+            For a level, range, family or event that cannot be used.
+
+        Notes
+        -----
+        Root of the smoothed estimate over the same draws; error ``error(P)/|dP/dλ|``; set
+        ``{λ: |P(λ) − level| ≤ 1.96 error(P)}``.
+        """
+        return tipping_point(self._record, family, event, level, between, start)
+
+    def worst_case(
+        self, quantity: Any, *, divergence: float | None = None, ratio: float | None = None
+    ) -> Bounds:
+        """
+        Lowest and highest mean of a quantity over a class of changes.
+
+        Parameters
+        ----------
+        quantity : str, callable or array_like
+            One number, or one yes or no, a draw.
+        divergence : float, optional
+            All targets within this Kullback–Leibler divergence of the base, positive.
+        ratio : float, optional
+            All targets whose density ratio to the base has max/min of at most this, above 1; holds
+            for posteriors when it holds for priors [1]_.
+
+        Returns
+        -------
+        Bounds
+            Both ends with errors and verdicts; those of a divergence are inner bounds.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, QuantityError
+            For no class or two, a size out of range, a quantity that does not vary.
+
+        References
+        ----------
+        .. [1] DeRobertis, Hartigan (1981), Annals of Statistics 9; Csiszár (1975), Annals of
+           Probability 3.
+        """
+        return worst_case(self._record, quantity, divergence=divergence, ratio=ratio)
+
+    def least_perturbation(
+        self, quantity: Any, target: float, *, prior_of: str | None = None
+    ) -> Perturbation:
+        """
+        The least change, in Kullback–Leibler divergence, that brings a mean to a target.
+
+        Parameters
+        ----------
+        quantity : str, callable or array_like
+            One number, or one yes or no, a draw.
+        target : float
+            Mean or probability to reach, inside the range of the draws.
+        prior_of : str, optional
+            Change only the prior of this parameter; the implied prior can then be looked at.
+
+        Returns
+        -------
+        Perturbation
+            Divergence with its error, weights, factor, and the implied prior.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, PriorError, QuantityError
+            For a target out of reach, or a prior that is not a distribution of one number.
+
+        Notes
+        -----
+        In the posterior ``q ∝ p exp(t f)``; in a prior ``p exp(η m (D − target))``, where m is
+        posterior over prior and D the mean of the quantity given the parameter.
+        """
+        return least_perturbation(self._record, quantity, target, prior_of)
+
+    def resistance(self, event: Any, level: float) -> Estimate:
+        """
+        Ratio up to which no change of bounded density ratio can flip a decision.
+
+        Parameters
+        ----------
+        event : str, callable or array_like
+            One yes or no a draw.
+        level : float
+            The decision is whether the event's probability is above it.
+
+        Returns
+        -------
+        Estimate
+            ``odds(P)/odds(level)``, or its inverse below the level. Sufficient, not a probability.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, QuantityError
+            For a level outside (0, 1), or an event that does not vary.
+        """
+        return resistance(self._record, event, level)
+
+    def least_data(self, event: Any, level: float, contrary: Any, *, most: float = 100.0) -> Reach:
+        """
+        Smallest number of pseudo-observations that flips a decision.
+
+        Parameters
+        ----------
+        event : str, callable or array_like
+            One yes or no a draw.
+        level : float
+            The decision is whether the event's probability is above it.
+        contrary : callable or array_like
+            Log density of one pseudo-observation against the decision, one number a draw.
+        most : float, optional
+            How many are tried.
+
+        Returns
+        -------
+        Reach
+            The number, or how far these draws can say that the decision holds.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, QuantityError
+            As for :meth:`tipping_point`.
+        """
+        return least_data(self._record, event, level, contrary, most=most)
+
+    def state(self, stated: Mapping[Any, float]) -> Statements:
+        """
+        The least change under which events have the probabilities that an expert states.
+
+        Parameters
+        ----------
+        stated : mapping
+            ``{event: probability}``, all held at once.
+
+        Returns
+        -------
+        Statements
+            Its `change` goes to :meth:`reweigh`; weights are bounded in advance.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, QuantityError
+            For statements that contradict each other, or have no draw on one side.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rng = np.random.default_rng(1)
+        >>> fit = sy.Fit({"mu": rng.normal(size=(4, 500))})
+        >>> round(fit.reweigh(fit.state({"mu < 1": 0.8}).change).prob("mu < 1").value, 6)
+        0.8
+        """
+        return statements(self._record, stated)
+
+    def bayes_factors(
+        self, priors: Mapping[str, Change], *, against: str | None = None
+    ) -> PriorFactors:
+        """
+        Bayes factors between priors.
+
+        Parameters
+        ----------
+        priors : mapping of str to Change
+            The priors, as changes.
+        against : str, optional
+            A label; by default all are against the base.
+
+        Returns
+        -------
+        PriorFactors
+            Natural logs with errors of the pairs, and a table.
+
+        Raises
+        ------
+        PriorError
+            Where a prior is improper or taken to a power.
+        UnknownNameError, ArgumentTypeError
+            For a label that is not there, or no priors.
+        """
+        return prior_factors(self._record, priors, against)
+
+    def triage(
+        self, scenarios: Any, quantities: Any = None, event: Any = None, level: Any = None
+    ) -> Triage:
+        """
+        Answer a list of scenarios in one table in which no row is lost.
+
+        Parameters
+        ----------
+        scenarios : Plan, or mapping of str to Change
+            What is asked; a plan says its quantities itself.
+        quantities : str, list, mapping, callable or array_like, optional
+            What is asked of each. All parameters by default, none beside an event.
+        event : str, callable or array_like, optional
+            The event of a decision.
+        level : float, optional
+            The level of that decision.
+
+        Returns
+        -------
+        Triage
+            Values, paired shifts, errors, verdicts, simultaneous bands; failed scenarios stay.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, UnknownNameError, QuantityError
+            For scenarios without names, or quantities that are not there.
+        """
+        return triage(self._record, scenarios, quantities, event, level)
+
+    def leave_out(
+        self,
+        groups: Any = None,
+        *,
+        term: str | None = None,
+        conditional: Any = None,
+        quantities: Any = None,
+        sample: int | None = None,
+        surrogate: Any = None,
+        rng: Any = None,
+        progress: Any = None,
+    ) -> LeaveOut:
+        """
+        What leaving out each observation or group does.
+
+        Parameters
+        ----------
+        groups : array_like, list, mapping or str, optional
+            What goes together: a label for each observation, lists of positions (or
+            ``{name: positions}``), or a dimension of the log likelihood; each observation alone by
+            default.
+        term : str, optional
+            The likelihood term, where several have observations.
+        conditional : array_like or callable, optional
+            Log density of each group given all others and the parameters, ``(chain, draw,
+            *groups)`` or ``(n, *groups)``, where that is not the sum of its terms: for correlated
+            rows, and for groups whose own effects are integrated out.
+        quantities : str, array_like, callable or mapping, optional
+            Quantities whose influence is found in the same pass.
+        sample : int, optional
+            Leave out only so many groups, drawn at random; a surrogate stands for the others.
+        surrogate : array_like, optional
+            A cheap log score of each group for that, shape of the groups; by default the score by
+            raw weights, in a pass of its own.
+        rng : None, int or numpy.random.Generator, optional
+            For drawing that sample (SPEC 7).
+        progress : bool or callable, optional
+            True writes to standard error; a callable gets ``(done, total)``.
+
+        Returns
+        -------
+        LeaveOut
+            Log score with both errors, by group, verdicts; influence, calibration and contrasts.
+
+        Raises
+        ------
+        LikelihoodError
+            Without a log likelihood by observation, or for values that are NaN, +inf, or −inf for
+            every draw.
+        RatioError
+            For an observation that a draw with weight makes impossible.
+        ShapeError, ArgumentError, ArgumentTypeError, UnknownNameError, AmbiguousNameError
+            Where groups, terms, conditional or surrogate values do not fit, or a group holds all.
+
+        Notes
+        -----
+        The weights of a group are ``w ∝ v exp(−Σ L)`` [1]_, smoothed, with base weights v; its
+        score is ``log Σ w exp(Σ L)``. The error of the total comes from the influence series summed
+        over groups draw by draw. From a tail shape of one half on, an allowance for weight beyond
+        the heaviest draw is added to errors; from one on they are infinite.
+
+        References
+        ----------
+        .. [1] Gelfand, Dey, Chang (1992), Bayesian Statistics 4.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rng = np.random.default_rng(3)
+        >>> readings = rng.normal(0.10, 0.03, size=40)
+        >>> rate = rng.normal(readings.mean(), 0.03 / np.sqrt(40), size=(4, 500))
+        >>> loglik = -0.5 * ((readings - rate[..., None]) / 0.03) ** 2 - np.log(0.03)
+        >>> left = sy.Fit({"rate": rate}, loglik=loglik).leave_out()
+        >>> left.by_group.value.shape, str(left.verdict.level)
+        ((40,), 'sound')
+        """
+        return leave_out(
+            self._record,
+            groups,
+            term=term,
+            conditional=conditional,
+            quantities=quantities,
+            sample=sample,
+            surrogate=surrogate,
+            rng=rng,
+            progress=progress,
+        )
+
+    def k_fold(
+        self,
+        folds: Any = 10,
+        *,
+        by: str = "chance",
+        places: Any = None,
+        apart: float = 0,
+        term: str | None = None,
+        quantities: Any = None,
+        rng: Any = None,
+        progress: Any = None,
+    ) -> LeaveOut:
+        """
+        Leave out folds: at random, by blocks of time or of space, or as given.
+
+        Parameters
+        ----------
+        folds : int, array_like, list or mapping, optional
+            How many, or the folds themselves as ``groups`` of :meth:`leave_out`.
+        by : {"chance", "order", "place"}, optional
+            How a number of folds is made: at random, as blocks of consecutive observations, or as
+            cells of about equal count.
+        places : array_like, optional
+            Coordinates of the observations, ``(*obs, d)``, for cells.
+        apart : float, optional
+            Observations no further from a fold than this (positions, or distance of places) are
+            deleted with it but not scored.
+        term : str, optional
+            The likelihood term, where several have observations.
+        quantities : str, array_like, callable or mapping, optional
+            Quantities whose influence is found in the same pass.
+        rng : None, int or numpy.random.Generator, optional
+            For folds at random (SPEC 7).
+        progress : bool or callable, optional
+            As for :meth:`leave_out`.
+
+        Returns
+        -------
+        LeaveOut
+            The joint log score of each fold given the others, and all else of leaving out.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, ShapeError
+            Where folds cannot be made so, or a fold with what stands near it holds all data.
+
+        References
+        ----------
+        .. [1] Burman, Chow, Nolan (1994), Biometrika 81.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rng = np.random.default_rng(3)
+        >>> readings = rng.normal(0.10, 0.03, size=40)
+        >>> rate = rng.normal(readings.mean(), 0.03 / np.sqrt(40), size=(4, 500))
+        >>> loglik = -0.5 * ((readings - rate[..., None]) / 0.03) ** 2 - np.log(0.03)
+        >>> fit = sy.Fit({"rate": rate}, loglik=loglik)
+        >>> fit.k_fold(8, by="order", apart=1).by_group.value.shape
+        (8,)
+        """
+        return k_fold(
+            self._record,
+            folds,
+            by=by,
+            places=places,
+            apart=apart,
+            term=term,
+            quantities=quantities,
+            rng=rng,
+            progress=progress,
+        )
+
+    def look_ahead(
+        self,
+        series: Any,
+        *,
+        from_: int,
+        steps: int = 1,
+        refit: Callable[[int], tuple[Any, Any]] | None = None,
+        until: str = "refit",
+        progress: Any = None,
+    ) -> LookAhead:
+        """
+        Scores of a series ahead of the data, from a fit to its first part.
+
+        Parameters
+        ----------
+        series : array_like or callable
+            Log likelihood of the whole series in time order at these draws, ``(chain, draw, T)`` or
+            ``(n, T)``: each observation given those before.
+        from_ : int
+            How many of the observations this fit has seen: the position of the first predicted.
+        steps : int, optional
+            How many observations are predicted at a time, jointly.
+        refit : callable, optional
+            Gets a position at which a refit is due; returns ``(fit of the observations before it,
+            series at its draws)``. Without it the look-ahead goes on and says where one was due.
+        until : {"refit", "strained"}, optional
+            The level of the weights from which a refit is due.
+        progress : bool or callable, optional
+            As for :meth:`leave_out`.
+
+        Returns
+        -------
+        LookAhead
+            Log score of each point and their sum, where refits are due, and how many are needed.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, ShapeError, LikelihoodError
+            For positions beyond the series, more than one axis, or a refit of another series.
+
+        Notes
+        -----
+        Weights ``w ∝ v exp(Σ_{from ≤ j < t} L_j)`` [1]_, smoothed; the score at t is
+        ``log Σ w exp(L_t + … + L_{t + steps − 1})``. Without `refit` the number needed is a
+        forecast: each fit is taken to carry the series on in the same proportion as the first.
+
+        References
+        ----------
+        .. [1] Bürkner, Gabry, Vehtari (2020), J. Stat. Comput. Simul. 90.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rng = np.random.default_rng(3)
+        >>> readings = rng.normal(0.10, 0.03, size=60)
+        >>> seen = readings[:30]
+        >>> rate = rng.normal(seen.mean(), 0.03 / np.sqrt(30), size=(4, 500))
+        >>> series = -0.5 * ((readings - rate[..., None]) / 0.03) ** 2 - np.log(0.03)
+        >>> fit = sy.Fit({"rate": rate}, loglik=series[..., :30])
+        >>> fit.look_ahead(series, from_=30).refit_due
+        ()
+        """
+        return look_ahead(
+            self._record,
+            series,
+            from_=from_,
+            steps=steps,
+            refit=refit,
+            until=until,
+            progress=progress,
+        )
 
     def __repr__(self) -> str:
         record = self._record

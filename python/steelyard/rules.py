@@ -74,14 +74,23 @@ RULES: Mapping[str, Rule] = {
         _REFIT,
     ),
     "quantity_shape": Rule(
-        0.7,
         1.0,
-        "above",
-        "The tail shape of this quantity's contributions is {figure}, above {limit}: "
-        "its Monte Carlo error cannot be relied on.",
+        math.inf,
+        "from",
+        "The tail shape of this quantity's contributions is {figure}, not below {limit}, and fewer "
+        "than 4 draws carry it: its Monte Carlo error cannot be relied on.",
         "Ask for a less tail-bound quantity (a median, a probability), a smaller change, or refit.",
-        "limits as for the weights (Vehtari et al. 2024); ours for quantities",
-        "Ask for a less tail-bound quantity (a median, a probability), or refit.",
+        "no finite mean from 1 on; where 4 draws or more carry a quantity, and below 1, intervals "
+        "of the right degrees of freedom hold whatever the shape (make honesty); ours",
+    ),
+    "few_contributions": Rule(
+        2.0,
+        -math.inf,
+        "below",
+        "As few as {figure} draws carry this estimate on one side, below {limit}: its Monte Carlo "
+        "error cannot be relied on.",
+        "Bring more draws, ask for a less tail-bound quantity (a median, a probability), or refit.",
+        "draws over squared skewness (Cochran 1977 asks for 25 with normal quantiles); limit ours",
     ),
     "few_effective": Rule(
         100.0,
@@ -212,5 +221,54 @@ RULES: Mapping[str, Rule] = {
         "That the stated terms are the ones the draws came from has not been tested.",
         "Compare a known posterior summary of the fit with the base answer.",
         "exact",
+    ),
+    "groups_refit": Rule(
+        0.5,
+        1.0,
+        "from",
+        "The weights of {figure} of {of} {what} ask for a refit: nothing that adds them up stands.",
+        "List them with untrusted(), cure them there, or fold refits in with with_refits().",
+        "exact: a sum is no better than its parts",
+    ),
+    "groups_strained": Rule(
+        1.0,
+        math.inf,
+        "from",
+        "The weights of {figure} of {of} {what} are strained.",
+        "List them with untrusted(); a refit of those alone can be folded in by with_refits().",
+        "exact: a sum is no better than its parts",
+    ),
+    "own_latents": Rule(
+        0.5,
+        math.inf,
+        "above",
+        "Each group's density hangs on its own element of {term} (share {figure} of its variance, "
+        "above {limit}): weights that condition on a group's own effect have far too heavy a tail.",
+        "Integrate the groups' own effects out and pass those densities as conditional=.",
+        "limiting tail index 1 for a normal hierarchy; limit ours",
+    ),
+    "rows_independent": Rule(
+        math.nan,
+        math.nan,
+        "note",
+        "Deletion takes the observations as independent given the parameters.",
+        "For correlated rows pass conditional=, the log density of each given all the others.",
+        "exact",
+    ),
+    "groups_sampled": Rule(
+        math.nan,
+        math.nan,
+        "note",
+        "Only {figure} of {of} groups were left out, drawn at random; a surrogate stands for all.",
+        "The total carries an error from drawing beside its Monte Carlo error.",
+        "counted",
+    ),
+    "refits_folded": Rule(
+        math.nan,
+        math.nan,
+        "note",
+        "The log scores of {figure} groups come from fits without them.",
+        "Nothing to do if those fits can be trusted.",
+        "counted",
     ),
 }

@@ -212,6 +212,8 @@ class Verdict:
             is_note = RULES[finding.code].worse == "note"
             if rank.size == 0 or (not is_note and rank.min() == 2):
                 continue
+            if finding.spoken is not None and not finding.spoken.any():
+                continue  # a note about other elements
             worst = _worst(finding, rank)
             found.append(finding.reason(float(finding.figure.flat[worst]), int(rank.flat[worst])))
         return tuple(sorted(found, key=lambda reason: rank_of(str(reason.level))))

@@ -4,7 +4,7 @@ use ndarray::Array2;
 use numpy::{IntoPyArray, PyArray2, PyReadonlyArray2};
 use pyo3::prelude::*;
 
-use super::arrays::matrix;
+use super::arrays::{Numbers, matrix, with_view};
 use super::errors::detached;
 use crate::kernels;
 
@@ -12,14 +12,16 @@ use crate::kernels;
 #[pyfunction]
 pub fn influence<'py>(
     py: Python<'py>,
-    loglik: PyReadonlyArray2<'py, f64>,
+    loglik: Numbers<'py>,
     f: PyReadonlyArray2<'py, f64>,
 ) -> PyResult<Bound<'py, PyArray2<f64>>> {
-    let loglik = matrix("loglik", &loglik)?;
     let f = matrix("f", &f)?;
-    let mut out = Array2::zeros((loglik.ncols(), f.ncols()));
-    detached(py, |interrupt| {
-        kernels::influence::influence(loglik, f, out.view_mut().reversed_axes(), interrupt)
-    })?;
+    let out = with_view!("loglik", loglik, |loglik| {
+        let mut out = Array2::zeros((loglik.ncols(), f.ncols()));
+        detached(py, |interrupt| {
+            kernels::influence::influence(loglik, f, out.view_mut().reversed_axes(), interrupt)
+        })?;
+        out
+    });
     Ok(out.into_pyarray(py))
 }

@@ -1,12 +1,13 @@
 //! Means.
 
-use numpy::{IntoPyArray, PyArray1, PyReadonlyArray1, PyReadonlyArray2};
+use ndarray::Array2;
+use numpy::{IntoPyArray, PyArray1, PyArray2, PyReadonlyArray1, PyReadonlyArray2};
 use pyo3::prelude::*;
 
 use super::arrays::{matrix, vector};
 use super::errors::detached;
 use crate::kernels::columns::{expect_shape, map_columns};
-use crate::kernels::mean;
+use crate::kernels::{covariance, mean};
 
 /// Mean square about the mean of every column of `z`, `(n, k)`: `(k,)`.
 #[pyfunction]
@@ -37,4 +38,39 @@ pub fn weighted_mean<'py>(
         })
     })?;
     Ok(means.into_pyarray(py))
+}
+
+/// Weighted mean and weighted mean square about it of every column of `f`, `(n, k)`: `(2, k)`.
+#[pyfunction]
+pub fn weighted_moments<'py>(
+    py: Python<'py>,
+    f: PyReadonlyArray2<'py, f64>,
+    w: PyReadonlyArray1<'py, f64>,
+) -> PyResult<Bound<'py, PyArray2<f64>>> {
+    let f = matrix("f", &f)?;
+    let w = vector("w", &w)?;
+    expect_shape("w", &[f.nrows()], &[w.len()])?;
+    let moments = detached(py, |interrupt| {
+        map_columns(f, interrupt, |column, _| {
+            Ok(mean::weighted_moments(column, &w))
+        })
+    })?;
+    let out = Array2::from_shape_fn((2, moments.len()), |(moment, column)| {
+        let (mean, variance) = moments[column];
+        if moment == 0 { mean } else { variance }
+    });
+    Ok(out.into_pyarray(py))
+}
+
+/// Weighted covariance matrix of the columns of `f`, `(n, k)`: `(k, k)`.
+#[pyfunction]
+pub fn weighted_covariance<'py>(
+    py: Python<'py>,
+    f: PyReadonlyArray2<'py, f64>,
+    w: PyReadonlyArray1<'py, f64>,
+) -> PyResult<Bound<'py, PyArray2<f64>>> {
+    let f = matrix("f", &f)?;
+    let w = vector("w", &w)?;
+    let out = detached(py, |interrupt| covariance::covariance(f, &w, interrupt))?;
+    Ok(out.into_pyarray(py))
 }

@@ -1,6 +1,7 @@
 //! The module `steelyard._core`: convert, detach from the interpreter, call a kernel, map errors.
 
 mod arrays;
+mod densities;
 mod effective;
 mod errors;
 mod f_tail;
@@ -22,6 +23,10 @@ use pyo3::prelude::*;
 #[pymodule]
 mod _core {
     #[pymodule_export]
+    use super::densities::{
+        beta_tails, digamma, gamma_tails, log_beta, log_density, log_normal_cdf, skew_normal_tails,
+    };
+    #[pymodule_export]
     use super::effective::{describe, effective_size, largest_share};
     #[pymodule_export]
     use super::f_tail::f_tail;
@@ -34,7 +39,7 @@ mod _core {
     #[pymodule_export]
     use super::long_run::long_run_variance;
     #[pymodule_export]
-    use super::mean::{mean_square, weighted_mean};
+    use super::mean::{mean_square, weighted_covariance, weighted_mean, weighted_moments};
     #[pymodule_export]
     use super::ordered::{set_threads, threads};
     #[pymodule_export]
@@ -48,5 +53,5 @@ mod _core {
     #[pymodule_export]
     use super::smooth::{smooth, tail_shape};
     #[pymodule_export]
-    use super::special::{chi_square_tail, ln_gamma, normal_cdf, normal_quantile};
+    use super::special::{ln_gamma, normal_cdf, normal_quantile};
 }

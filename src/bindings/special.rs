@@ -8,17 +8,6 @@ use super::errors::detached;
 use crate::kernels::ordered::map_slice;
 use crate::kernels::special;
 
-/// Upper tail probability of chi-square with `df` degrees of freedom at every `q`.
-#[pyfunction]
-pub fn chi_square_tail<'py>(
-    py: Python<'py>,
-    q: PyReadonlyArray1<'py, f64>,
-    df: f64,
-) -> PyResult<Bound<'py, PyArray1<f64>>> {
-    special::expect_degrees(df)?;
-    each(py, "q", &q, |q| special::chi_square_tail(q, df))
-}
-
 /// Standard normal distribution function at every `x`.
 #[pyfunction]
 pub fn normal_cdf<'py>(

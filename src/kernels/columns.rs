@@ -1,17 +1,20 @@
 //! A kernel for one column, applied to every column of an array of any strides.
 //!
-//! Columns are gathered in blocks of eight into a contiguous buffer of the task, because one
-//! cache line of a C-ordered array holds as many neighbours; a column that is contiguous already
-//! is used where it lies. The values a kernel sees are the same either way.
+//! Columns are gathered in blocks into a contiguous buffer of the task, because a cache line of a
+//! C-ordered array holds eight neighbours and a page many more; a column that is contiguous
+//! already is used where it lies. The values a kernel sees are the same either way.
 
 use ndarray::{ArrayView2, ArrayViewMut1, ArrayViewMut2, Axis};
 
 use super::entry::Entry;
 use super::error::KernelError;
-use super::ordered::{Interrupt, map_tasks};
+use super::ordered::{Interrupt, map_tasks, threads};
 
-/// Columns gathered together.
-const BLOCK: usize = 8;
+/// Most columns gathered together: from 8 to 64 the time per column halves.
+const MOST_COLUMNS: usize = 64;
+
+/// Entries of a cache line; rows and columns of a tile that is turned as a whole.
+const LINE: usize = 8;
 
 /// Most entries of one task's buffer, 32 MiB, unless a single column is longer.
 const BUFFER: usize = 4 << 20;
@@ -34,7 +37,7 @@ where
     T: Send,
     F: Fn(&[f64], usize) -> Result<T, KernelError> + Sync,
 {
-    let width = block_width(x.nrows());
+    let width = block_width(x.dim());
     let blocks: Vec<_> = x.axis_chunks_iter(Axis(1), width).enumerate().collect();
     let results = map_tasks(blocks, interrupt, |(block, view)| {
         let gathered = Gathered::new(view, interrupt)?;
@@ -65,7 +68,7 @@ where
     F: Fn(&[f64], usize, &mut [f64]) -> Result<T, KernelError> + Sync,
 {
     expect_shape("out", &[out.nrows(), x.ncols()], out.shape())?;
-    let width = block_width(x.nrows());
+    let width = block_width(x.dim());
     let blocks: Vec<_> = x
         .axis_chunks_iter(Axis(1), width)
         .zip(out.axis_chunks_iter_mut(Axis(1), width))
@@ -105,8 +108,16 @@ pub fn expect_shape(
     })
 }
 
-fn block_width(rows: usize) -> usize {
-    (BUFFER / rows.max(1)).clamp(1, BLOCK)
+fn block_width((rows, columns): (usize, usize)) -> usize {
+    // Narrower where there would be too few tasks for the threads.
+    let shared = columns.div_ceil(2 * threads()).next_multiple_of(LINE);
+    (BUFFER / rows.max(1)).clamp(1, MOST_COLUMNS.min(shared.max(1)))
+}
+
+/// Distance of two columns in a buffer, an odd number of cache lines: columns a power of two apart
+/// would fall into the same few places of a cache.
+fn distance(rows: usize) -> usize {
+    LINE * (rows.div_ceil(LINE) | 1)
 }
 
 /// The columns of a block, each contiguous.
@@ -127,14 +138,13 @@ impl<'a> Gathered<'a> {
             return Ok(Self::InPlace(columns));
         }
         let rows = view.nrows();
-        let mut buffer = vec![0.0; rows * view.ncols()];
-        for (row, entries) in view.rows().into_iter().enumerate() {
-            if row.is_multiple_of(ROWS) {
+        let distance = distance(rows);
+        let mut buffer = vec![0.0; distance * view.ncols()];
+        for (part, strip) in view.axis_chunks_iter(Axis(0), LINE).enumerate() {
+            if part.is_multiple_of(ROWS / LINE) {
                 interrupt.check()?;
             }
-            for (column, entry) in entries.iter().enumerate() {
-                buffer[column * rows + row] = entry.wide();
-            }
+            gather_strip(strip, &mut buffer[part * LINE..], distance);
         }
         Ok(Self::Copied { rows, buffer })
     }
@@ -142,9 +152,43 @@ impl<'a> Gathered<'a> {
     fn column(&self, index: usize) -> &[f64] {
         match self {
             Self::InPlace(columns) => columns[index],
-            Self::Copied { rows, buffer } => &buffer[index * rows..(index + 1) * rows],
+            Self::Copied { rows, buffer } => &buffer[index * distance(*rows)..][..*rows],
         }
     }
+}
+
+/// At most [`LINE`] rows to columns, whole tiles at a time where rows are contiguous.
+fn gather_strip<E: Entry>(strip: ArrayView2<'_, E>, buffer: &mut [f64], distance: usize) {
+    let rows: Vec<&[E]> = strip
+        .outer_iter()
+        .filter_map(|row| row.to_slice())
+        .collect();
+    let whole = match <[&[E]; LINE]>::try_from(rows) {
+        Ok(rows) => gather_tiles(rows, buffer, distance),
+        Err(_) => 0,
+    };
+    for (row, entries) in strip.outer_iter().enumerate() {
+        for (column, entry) in entries.iter().enumerate().skip(whole) {
+            buffer[column * distance + row] = entry.wide();
+        }
+    }
+}
+
+/// The number of columns done.
+fn gather_tiles<E: Entry>(rows: [&[E]; LINE], buffer: &mut [f64], distance: usize) -> usize {
+    let tiles = rows.map(|row| row.as_chunks::<LINE>().0);
+    for tile in 0..tiles[0].len() {
+        let lines = tiles.map(|row| &row[tile]);
+        for column in 0..LINE {
+            let start = (tile * LINE + column) * distance;
+            if let Some(target) = buffer[start..].first_chunk_mut::<LINE>() {
+                for (target, line) in target.iter_mut().zip(lines) {
+                    *target = line[column].wide();
+                }
+            }
+        }
+    }
+    tiles[0].len() * LINE
 }
 
 /// Columns to be written, through a contiguous buffer where they are not contiguous themselves.
@@ -159,7 +203,11 @@ impl<'a> Staged<'a> {
             .columns_mut()
             .into_iter()
             .all(|mut column| column.as_slice_mut().is_some());
-        let size = if in_place { 0 } else { into.len() };
+        let size = if in_place {
+            0
+        } else {
+            distance(into.nrows()) * into.ncols()
+        };
         Self {
             into,
             buffer: vec![0.0; size],
@@ -169,7 +217,7 @@ impl<'a> Staged<'a> {
     fn fill<T>(&mut self, index: usize, write: impl FnOnce(&mut [f64]) -> T) -> T {
         let rows = self.into.nrows();
         if !self.buffer.is_empty() {
-            return write(&mut self.buffer[index * rows..(index + 1) * rows]);
+            return write(&mut self.buffer[index * distance(rows)..][..rows]);
         }
         let mut column: ArrayViewMut1<'_, f64> = self.into.column_mut(index);
         match column.as_slice_mut() {
@@ -183,15 +231,44 @@ impl<'a> Staged<'a> {
         if self.buffer.is_empty() {
             return Ok(());
         }
-        let rows = self.into.nrows();
-        for (row, mut entries) in self.into.rows_mut().into_iter().enumerate() {
-            if row.is_multiple_of(ROWS) {
+        let distance = distance(self.into.nrows());
+        let strips = self.into.axis_chunks_iter_mut(Axis(0), LINE);
+        for (part, strip) in strips.into_iter().enumerate() {
+            if part.is_multiple_of(ROWS / LINE) {
                 interrupt.check()?;
             }
-            for (column, entry) in entries.iter_mut().enumerate() {
-                *entry = self.buffer[column * rows + row];
-            }
+            spread_strip(&self.buffer[part * LINE..], distance, strip);
         }
         Ok(())
     }
+}
+
+/// Columns to at most [`LINE`] rows, whole tiles at a time where rows are contiguous.
+fn spread_strip(buffer: &[f64], distance: usize, mut strip: ArrayViewMut2<'_, f64>) {
+    let columns = strip.ncols();
+    let rows: Option<Vec<&mut [f64]>> =
+        strip.outer_iter_mut().map(|row| row.into_slice()).collect();
+    let whole = match rows.map(<[&mut [f64]; LINE]>::try_from) {
+        Some(Ok(rows)) => spread_tiles(buffer, distance, rows),
+        _ => 0,
+    };
+    for column in whole..columns {
+        for (row, mut entries) in strip.outer_iter_mut().enumerate() {
+            entries[column] = buffer[column * distance + row];
+        }
+    }
+}
+
+/// The number of columns done.
+fn spread_tiles(buffer: &[f64], distance: usize, rows: [&mut [f64]; LINE]) -> usize {
+    let count = rows[0].len() / LINE * LINE;
+    let mut rows = rows.map(|row| &mut row[..count]);
+    for column in 0..count {
+        if let Some(source) = buffer[column * distance..].first_chunk::<LINE>() {
+            for (row, entry) in rows.iter_mut().zip(source) {
+                row[column] = *entry;
+            }
+        }
+    }
+    count
 }

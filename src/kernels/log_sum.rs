@@ -1,7 +1,8 @@
 //! Sums of exponentials, on the log scale.
 
 use super::reductions::slice_sums;
-use super::weight_sums::form;
+use super::vector::{Arithmetic, Work, dispatch};
+use super::weight_sums::{form, larger};
 
 /// `log Σ_s exp(x_s)` of log weights `x`, shape `(n,)`, on the log scale.
 ///
@@ -39,11 +40,33 @@ pub fn normalise_in_place(x: &mut [f64]) -> f64 {
 
 /// Largest entry; NaN if any entry is NaN; `−inf` without entries.
 pub fn maximum(x: &[f64]) -> f64 {
-    let mut largest = f64::NEG_INFINITY;
-    let mut any_nan = false;
-    for &entry in x {
-        largest = if entry > largest { entry } else { largest };
-        any_nan |= entry.is_nan();
+    dispatch(Maximum(x))
+}
+
+struct Maximum<'a>(&'a [f64]);
+
+impl Work for Maximum<'_> {
+    type Output = f64;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> f64 {
+        let (mut most, mut nans) = ([f64::NEG_INFINITY; 32], [0.0; 32]);
+        let (chunks, rest) = self.0.as_chunks::<32>();
+        let mut last = [f64::NEG_INFINITY; 32];
+        last[..rest.len()].copy_from_slice(rest);
+        for chunk in chunks {
+            for lane in 0..32 {
+                most[lane] = larger(chunk[lane], most[lane]);
+                nans[lane] += if chunk[lane].is_nan() { 1.0 } else { 0.0 };
+            }
+        }
+        for lane in 0..32 {
+            most[lane] = larger(last[lane], most[lane]);
+            nans[lane] += if last[lane].is_nan() { 1.0 } else { 0.0 };
+        }
+        if nans.iter().any(|&count| count > 0.0) {
+            return f64::NAN;
+        }
+        most.iter().fold(f64::NEG_INFINITY, |a, &b| larger(b, a))
     }
-    if any_nan { f64::NAN } else { largest }
 }

@@ -4,13 +4,17 @@
 //! on threads without letting their number show in the result.
 
 pub mod columns;
+pub mod correlation;
+pub mod covariance;
 pub mod cumulated;
+pub mod densities;
 pub mod effective;
 pub mod entry;
 pub mod error;
 pub mod f_tail;
 pub mod influence;
 pub mod interval;
+pub mod largest;
 pub mod log_sum;
 pub mod long_run;
 pub mod mean;

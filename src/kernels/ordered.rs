@@ -131,7 +131,13 @@ where
     F: Fn(I) -> Result<T, KernelError> + Sync,
 {
     let guarded = |item| interrupt.check().and_then(|()| task(item));
-    let wanted = threads().min(items.len());
+    // A task that has tasks of its own runs them itself: were it to wait for them, all threads might.
+    let inside = rayon::current_thread_index().is_some();
+    let wanted = if inside {
+        1
+    } else {
+        threads().min(items.len())
+    };
     // A pool of the size set, not of the size wanted: else every count of tasks has its own pool.
     let pool = if wanted > 1 { pool(threads()) } else { None };
     match pool {

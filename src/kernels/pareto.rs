@@ -1,13 +1,30 @@
 //! The generalised Pareto distribution: its fit to exceedances, and its quantiles.
 
-use super::log_sum::normalise_in_place;
+use std::f64::consts::LN_2;
+
+use super::log_sum::maximum;
 use super::ordered::{sum, sum_by};
+use super::vector::exp::{MOST, exp_m1, exp_slice};
+use super::vector::ln::{ln, ln_slice};
+use super::vector::{Arithmetic, Work, dispatch};
 
 /// Fewest exceedances that are fitted.
 pub const FEWEST: usize = 5;
 
 /// Grid constant `m = 20 + ⌊√n⌋` of the paper.
 const GRID: usize = 20;
+
+/// Points of the grid that are worked on together.
+const LANES: usize = 16;
+
+/// Below this `|b|` the mean of `log1p(−b x)` is formed by its series.
+const SMALL: f64 = 0.03;
+
+/// Terms of that series: the rest is below `SMALL^12`.
+const TERMS: usize = 11;
+
+/// Added to an integer below it, leaves that integer in the last bits.
+const TWO_52: f64 = 4_503_599_627_370_496.0;
 
 /// Least quartile exceedance in units of the largest: below it `1 / x` would overflow, and the
 /// grid has long left the region that the data know.
@@ -49,6 +66,50 @@ impl Pareto {
         }
         self.scale * ((-self.shape * survival).exp_m1() / self.shape)
     }
+
+    /// `log min(1, base + quantile)` at `(z − ½)/count`, `z = 1..count`.
+    pub fn log_quantiles(self, base: f64, count: usize) -> Vec<f64> {
+        let mut values = vec![0.0; count];
+        if self.shape == 0.0 {
+            for (rank, value) in values.iter_mut().enumerate() {
+                *value = base + self.quantile((rank as f64 + 0.5) / count as f64);
+            }
+        } else {
+            dispatch(Quantiles {
+                fit: self,
+                base,
+                values: &mut values,
+            });
+        }
+        values.iter_mut().for_each(|value| *value = value.min(1.0));
+        let mut logs = vec![0.0; count];
+        ln_slice(&values, &mut logs);
+        logs
+    }
+}
+
+/// `base + quantile` at `(z − ½)/count`, for shapes other than 0.
+struct Quantiles<'a> {
+    fit: Pareto,
+    base: f64,
+    values: &'a mut [f64],
+}
+
+impl Work for Quantiles<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let count = self.values.len() as f64;
+        for (rank, value) in self.values.iter_mut().enumerate() {
+            let p = (rank as f64 + 0.5) / count;
+            // log1p(−p): the rounding of 1 − p is put back.
+            let rest = 1.0 - p;
+            let survival = ln::<A>(rest) + ((1.0 - rest) - p) / rest;
+            let power = (-self.fit.shape * survival).min(MOST);
+            *value = self.base + self.fit.scale * (exp_m1::<A>(power) / self.fit.shape);
+        }
+    }
 }
 
 /// Generalised Pareto distribution fitted to exceedances `x ≥ 0`, shape `(n,)`, natural scale, in
@@ -89,7 +150,7 @@ pub fn fit_sorted(x: &[f64]) -> Pareto {
     // In units of the largest no grid point can overflow, and the shape has no unit.
     let unit: Vec<f64> = x.iter().map(|entry| entry / largest).collect();
     let b = likely_b(&unit);
-    let shape = mean_log(&unit, b);
+    let [shape] = mean_logs(&unit, [b]);
     let scale = if b == 0.0 { mean(&unit) } else { -shape / b };
     Pareto {
         shape,
@@ -99,15 +160,32 @@ pub fn fit_sorted(x: &[f64]) -> Pareto {
 
 /// Likelihood-weighted mean of the grid `b_j` for sorted exceedances whose largest is 1.
 fn likely_b(x: &[f64]) -> f64 {
-    let count = x.len();
+    let count = x.len() as f64;
     let quartile = quartile(x);
-    let points = GRID + count.isqrt();
-    let grid: Vec<f64> = (1..=points)
+    let points = GRID + x.len().isqrt();
+    let mut grid: Vec<f64> = (1..=points)
         .map(|j| 1.0 + (1.0 - (points as f64 / (j as f64 - 0.5)).sqrt()) / (3.0 * quartile))
         .collect();
-    let mut log_weights: Vec<f64> = grid.iter().map(|&b| profile(x, b)).collect();
-    normalise_in_place(&mut log_weights);
-    sum_by(points, |j| log_weights[j].exp() * grid[j])
+    grid.resize(points.next_multiple_of(LANES), 0.0);
+    let mut shapes = Vec::with_capacity(grid.len());
+    for lanes in grid.as_chunks::<LANES>().0 {
+        shapes.extend(mean_logs(x, *lanes));
+    }
+    let ratios: Vec<f64> = grid.iter().zip(&shapes).map(|(b, k)| -b / k).collect();
+    let mut weights = vec![0.0; grid.len()];
+    ln_slice(&ratios, &mut weights);
+    weights.truncate(points);
+    for (place, weight) in weights.iter_mut().enumerate() {
+        *weight = if grid[place] == 0.0 {
+            -count * mean(x).ln() - count
+        } else {
+            count * (*weight - shapes[place] - 1.0)
+        };
+    }
+    let most = maximum(&weights);
+    weights.iter_mut().for_each(|weight| *weight -= most);
+    exp_slice(&mut weights);
+    sum_by(points, |j| weights[j] * grid[j]) / sum(&weights)
 }
 
 /// The exceedance of rank `⌊n/4 + ½⌋`, or the smallest positive one if that is 0.
@@ -122,17 +200,107 @@ fn quartile(x: &[f64]) -> f64 {
     positive.max(LEAST_QUARTILE)
 }
 
-fn profile(x: &[f64], b: f64) -> f64 {
+/// `mean log1p(−b x)` for every `b`, exceedances `x` in `[0, 1]`.
+fn mean_logs<const N: usize>(x: &[f64], b: [f64; N]) -> [f64; N] {
+    let (products, exponents) = dispatch(Products { x, b: &b });
+    let mut logs = [0.0; N];
+    ln_slice(&products, &mut logs);
     let count = x.len() as f64;
-    if b == 0.0 {
-        return -count * mean(x).ln() - count;
-    }
-    let shape = mean_log(x, b);
-    count * ((-b / shape).ln() - shape - 1.0)
+    std::array::from_fn(|lane| {
+        if b[lane] == 0.0 {
+            return 0.0;
+        }
+        if b[lane].abs() < SMALL {
+            return dispatch(SmallLogs { x, b: b[lane] }) / count;
+        }
+        (exponents[lane] * LN_2 + logs[lane]) / count
+    })
 }
 
-fn mean_log(x: &[f64], b: f64) -> f64 {
-    sum_by(x.len(), |i| (-b * x[i]).ln_1p()) / x.len() as f64
+/// `Π (1 − b x)` over `x` for every `b` as mantissa and exponent: one logarithm instead of many.
+struct Products<'a, const N: usize> {
+    x: &'a [f64],
+    b: &'a [f64; N],
+}
+
+impl<const N: usize> Work for Products<'_, N> {
+    type Output = ([f64; N], [f64; N]);
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> ([f64; N], [f64; N]) {
+        let (mut even, mut odd) = ([1.0; N], [1.0; N]);
+        let (mut exponents, b) = ([0.0; N], *self.b);
+        for group in self.x.chunks(2 * group_size(self.b)) {
+            let (pairs, rest) = group.as_chunks::<2>();
+            for [first, second] in pairs {
+                for lane in 0..N {
+                    even[lane] *= A::mul_add(-b[lane], *first, 1.0);
+                    odd[lane] *= A::mul_add(-b[lane], *second, 1.0);
+                }
+            }
+            for last in rest {
+                for lane in 0..N {
+                    even[lane] *= A::mul_add(-b[lane], *last, 1.0);
+                }
+            }
+            for lane in 0..N {
+                exponents[lane] += take_exponent(&mut even[lane]);
+                exponents[lane] += take_exponent(&mut odd[lane]);
+            }
+        }
+        for lane in 0..N {
+            even[lane] *= odd[lane];
+        }
+        (even, exponents)
+    }
+}
+
+/// Factors that can be multiplied before a product, in [1, 2) at first, leaves the normal numbers.
+#[inline(always)]
+fn group_size(b: &[f64]) -> usize {
+    let (mut least, mut most) = (1.0_f64, 1.0_f64);
+    for b in b {
+        least = least.min(1.0 - b);
+        most = most.max(1.0 - b);
+    }
+    let bits = most.log2().max(-least.log2()).max(1.0);
+    ((1000.0 / bits) as usize).clamp(1, 64)
+}
+
+/// Leaves a positive normal number in [1, 2) and returns the power of two taken out.
+#[inline(always)]
+fn take_exponent(x: &mut f64) -> f64 {
+    let bits = x.to_bits();
+    *x = f64::from_bits((bits & ((1 << 52) - 1)) | 1.0_f64.to_bits());
+    // The exponent as the last bits of 2^52, which as a number is exact.
+    f64::from_bits((bits >> 52) | TWO_52.to_bits()) - (TWO_52 + 1023.0)
+}
+
+/// `Σ log1p(−b x)` for `|b| < SMALL`, by the series: the sum is small itself, and keeps its digits.
+struct SmallLogs<'a> {
+    x: &'a [f64],
+    b: f64,
+}
+
+impl Work for SmallLogs<'_> {
+    type Output = f64;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> f64 {
+        let mut lanes = [0.0; 8];
+        for chunk in self.x.chunks(8) {
+            for (lane, x) in lanes.iter_mut().zip(chunk) {
+                let y = self.b * x;
+                let mut series = 1.0 / TERMS as f64;
+                for term in (1..TERMS).rev() {
+                    series = A::mul_add(series, y, 1.0 / term as f64);
+                }
+                *lane -= series * y;
+            }
+        }
+        ((lanes[0] + lanes[4]) + (lanes[2] + lanes[6]))
+            + ((lanes[1] + lanes[5]) + (lanes[3] + lanes[7]))
+    }
 }
 
 fn mean(x: &[f64]) -> f64 {

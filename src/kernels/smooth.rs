@@ -1,7 +1,9 @@
 //! Pareto smoothing of the largest weights.
 
-use super::log_sum::{maximum, normalise_in_place};
-use super::tail::{Tail, fit_tail, tail_length};
+use super::log_sum::maximum;
+use super::reductions::slice_sums;
+use super::tail::{Scale, Tail, fit_tail, tail_length};
+use super::weight_sums::form;
 
 /// Writes smoothed, normalised log weights into `out` and returns the tail shape `k`.
 ///
@@ -20,63 +22,76 @@ use super::tail::{Tail, fit_tail, tail_length};
 ///
 /// Source: Vehtari, Simpson, Gelman, Yao & Gabry (2024), JMLR 25.
 pub fn smooth(x: &[f64], relative_efficiency: f64, out: &mut [f64]) -> f64 {
-    let Some((shifted, tail)) = tail_of(x, relative_efficiency) else {
+    let largest = maximum(x);
+    if largest == f64::NEG_INFINITY {
+        out.fill(f64::NEG_INFINITY);
+        return f64::INFINITY;
+    }
+    if !largest.is_finite() {
         out.fill(f64::NAN);
         return f64::NAN;
-    };
-    out.copy_from_slice(&shifted);
-    if let Tail::Fitted {
+    }
+    let tail = tail_of(x, largest, relative_efficiency);
+    for (target, entry) in out.iter_mut().zip(x) {
+        *target = entry - largest;
+    }
+    let Tail::Fitted {
         ranked,
         cutoff,
         fit,
     } = &tail
-    {
-        let base = cutoff.exp();
-        let length = ranked.len() as f64;
-        for (rank, &index) in ranked.iter().enumerate() {
-            let quantile = fit.quantile((rank as f64 + 0.5) / length);
-            out[index] = (base + quantile).min(1.0).ln();
-        }
+    else {
+        let (maximum, log_total) = slice_sums::<{ form::TOTAL }>(out).offsets();
+        take_off(out, maximum, log_total);
+        return tail.shape();
+    };
+    let smoothed = fit.log_quantiles(cutoff.exp(), ranked.len());
+    // Body and tail are added up apart, so that no part is taken off again; and the smoothed
+    // weights may all lie far below the raw maximum, so that the shift is found anew.
+    for &(_, index) in ranked {
+        out[index as usize] = f64::NEG_INFINITY;
     }
-    // The smoothed weights may all lie far below the raw maximum: the shift is found anew.
-    normalise_in_place(out);
+    let body = slice_sums::<{ form::TOTAL }>(out);
+    let all = body.merge(slice_sums::<{ form::TOTAL }>(&smoothed));
+    let (maximum, log_total) = all.offsets();
+    take_off(out, maximum, log_total);
+    for (&(_, index), value) in ranked.iter().zip(&smoothed) {
+        out[index as usize] = (value - maximum) - log_total;
+    }
     tail.shape()
+}
+
+fn take_off(out: &mut [f64], maximum: f64, log_total: f64) {
+    for entry in out {
+        *entry = (*entry - maximum) - log_total;
+    }
 }
 
 /// Tail shape that [`smooth`] returns, without the smoothed weights.
 pub fn tail_shape(x: &[f64], relative_efficiency: f64) -> f64 {
-    tail_of(x, relative_efficiency).map_or(f64::NAN, |(_, tail)| tail.shape())
-}
-
-/// `x − max x` and its tail; nothing when `x` holds NaN or `+inf`.
-fn tail_of(x: &[f64], relative_efficiency: f64) -> Option<(Vec<f64>, Tail)> {
     let largest = maximum(x);
     if largest == f64::NEG_INFINITY {
-        return Some((x.to_vec(), Tail::Short));
+        return f64::INFINITY;
     }
     if !largest.is_finite() {
-        return None;
+        return f64::NAN;
     }
-    let shifted: Vec<f64> = x.iter().map(|entry| entry - largest).collect();
-    let positive = shifted.iter().filter(|&&entry| is_positive(entry)).count();
-    let length = tail_length(x.len(), relative_efficiency).min(positive.saturating_sub(1));
-    let tail = fit_tail(&shifted, length, f64::exp, difference);
-    Some((shifted, tail))
+    tail_of(x, largest, relative_efficiency).shape()
 }
 
-/// Whether `exp(entry) > 0`, without an exponential for ordinary entries.
-fn is_positive(entry: f64) -> bool {
-    entry > -700.0 || entry.exp() > 0.0
-}
-
-/// `exp(value) − exp(cutoff)` for `cutoff ≤ value ≤ 0`.
-fn difference(value: f64, cutoff: f64) -> f64 {
-    let distance = value - cutoff;
-    // Near the cut-off the difference of two exponentials cancels; far above it, from 710 on, the
-    // other form is 0 times infinity.
-    if distance < 0.5 {
-        cutoff.exp() * distance.exp_m1()
-    } else {
-        value.exp() - cutoff.exp()
+/// The tail of `x`, whose maximum is finite.
+fn tail_of(x: &[f64], largest: f64, relative_efficiency: f64) -> Tail {
+    let length = tail_length(x.len(), relative_efficiency);
+    let tail = fit_tail(x, length, Scale::Log(largest));
+    match &tail {
+        // Where the cut-off has weight every draw of the tail has.
+        Tail::Fitted { cutoff, .. } if *cutoff > -700.0 => return tail,
+        Tail::Constant => return tail,
+        _ => {}
     }
+    let positive = x.iter().filter(|&&x| (x - largest).exp() > 0.0).count();
+    if positive > length {
+        return tail;
+    }
+    fit_tail(x, positive.saturating_sub(1), Scale::Log(largest))
 }

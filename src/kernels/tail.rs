@@ -1,6 +1,9 @@
 //! The upper tail of a set of draws: how long it is, which draws lie in it, and how heavy it is.
 
+use super::largest::{Ranked, largest};
 use super::pareto::{self, FEWEST, Pareto};
+use super::vector::exp::{exp, exp_m1};
+use super::vector::{Arithmetic, Work, dispatch};
 
 /// Tail length `M = ⌈min(S/5, 3 √(S/e))⌉` of `S` draws with relative efficiency `e`, the rule of
 /// Vehtari, Simpson, Gelman, Yao & Gabry (2024), JMLR 25.
@@ -20,8 +23,8 @@ pub enum Tail {
     Constant,
     /// Draws and the distribution fitted to their exceedances over the cut-off.
     Fitted {
-        /// Indices of the tail draws in ascending order of value; ties in input order.
-        ranked: Vec<usize>,
+        /// Values and indices of the tail draws in ascending order of value; ties in input order.
+        ranked: Vec<Ranked>,
         /// Largest value that is not in the tail.
         cutoff: f64,
         /// Fit whose shape is shrunk; location 0, so that it describes exceedances.
@@ -40,31 +43,51 @@ impl Tail {
     }
 }
 
-/// The `length` largest of `values`, fitted. `natural` takes a value to the natural scale;
-/// `exceedance(value, cutoff)` is the difference there.
+/// The scale on which values come.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub enum Scale {
+    /// As they are, times the sign: 1 for the upper tail, −1 for the lower.
+    Natural(f64),
+    /// Logarithms of weights, of which the given maximum is taken off first.
+    Log(f64),
+}
+
+/// The `length` largest of `values`, fitted on the natural scale. Values must not be NaN.
 ///
 /// `length` must leave at least one value below the tail, the cut-off; else the tail is short.
-pub fn fit_tail(
-    values: &[f64],
-    length: usize,
-    natural: impl Fn(f64) -> f64,
-    exceedance: impl Fn(f64, f64) -> f64,
-) -> Tail {
-    if length < FEWEST || length >= values.len() {
+pub fn fit_tail(values: &[f64], length: usize, scale: Scale) -> Tail {
+    if length < FEWEST {
         return Tail::Short;
     }
-    let (ranked, cutoff) = largest(values, length);
-    let tail: Vec<f64> = ranked.iter().map(|&index| values[index]).collect();
-    let ends = (tail.first().copied(), tail.last().copied());
-    if let (Some(least), Some(most)) = ends
-        && natural(least) == natural(most)
-    {
+    let sign = match scale {
+        Scale::Natural(sign) => sign,
+        Scale::Log(_) => 1.0,
+    };
+    let Some((mut ranked, mut cutoff)) = largest(values, sign, length) else {
+        return Tail::Short;
+    };
+    if let Scale::Log(maximum) = scale {
+        cutoff -= maximum;
+        for (value, _) in &mut ranked {
+            *value -= maximum;
+        }
+    }
+    let mut exceedances: Vec<f64> = ranked.iter().map(|&(value, _)| value).collect();
+    let (least, most) = (ranked[0].0, ranked[length - 1].0);
+    let constant = match scale {
+        Scale::Natural(_) => least == most,
+        Scale::Log(_) => least.exp() == most.exp(),
+    };
+    if constant {
         return Tail::Constant;
     }
-    let exceedances: Vec<f64> = tail
-        .iter()
-        .map(|&value| exceedance(value, cutoff))
-        .collect();
+    match scale {
+        Scale::Natural(_) => exceedances.iter_mut().for_each(|value| *value -= cutoff),
+        Scale::Log(_) => dispatch(Differences {
+            values: &mut exceedances,
+            cutoff,
+        }),
+    }
     let fit = pareto::fit_sorted(&exceedances).shrunk(length);
     Tail::Fitted {
         ranked,
@@ -73,13 +96,25 @@ pub fn fit_tail(
     }
 }
 
-/// Indices of the `length` largest values in ascending order, and the largest value left. Among
-/// equal values the earlier index ranks lower.
-fn largest(values: &[f64], length: usize) -> (Vec<usize>, f64) {
-    let by_rank = |a: &usize, b: &usize| values[*a].total_cmp(&values[*b]).then_with(|| a.cmp(b));
-    let mut order: Vec<usize> = (0..values.len()).collect();
-    let below = values.len() - length - 1;
-    let (_, &mut cutoff, upper) = order.select_nth_unstable_by(below, by_rank);
-    upper.sort_unstable_by(by_rank);
-    (upper.to_vec(), values[cutoff])
+/// `exp(value) − exp(cutoff)` for `cutoff ≤ value ≤ 0`, in place.
+struct Differences<'a> {
+    values: &'a mut [f64],
+    cutoff: f64,
+}
+
+impl Work for Differences<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let base = self.cutoff.exp();
+        for value in self.values {
+            let distance = *value - self.cutoff;
+            // Near the cut-off the difference of two exponentials cancels; far above it, from 710
+            // on, the other form is 0 times infinity.
+            let near = base * exp_m1::<A>(distance.min(1.0));
+            let far = exp::<A>(*value) - base;
+            *value = if distance < 0.5 { near } else { far };
+        }
+    }
 }

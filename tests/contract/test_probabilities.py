@@ -145,9 +145,9 @@ def test_a_decision_tells_its_side_and_how_surely(fit: sy.Fit) -> None:
     assert decision is not None
     assert decision.level == 0.37
     assert decision.above is bool(estimate.value > 0.37)
-    want = stats.norm.cdf(abs(estimate.value - 0.37) / estimate.error)
-    # 1e-12: two normal distribution functions.
-    assert decision.right == pytest.approx(want, abs=1e-12)
+    want = stats.t.cdf(abs(estimate.value - 0.37) / estimate.error, estimate.degrees)
+    # 1e-10: two distribution functions of Student's t, through incomplete beta functions.
+    assert decision.right == pytest.approx(want, abs=1e-10)
     assert 0.5 <= decision.right <= 1
 
 

@@ -11,8 +11,22 @@ import steelyard as sy
 
 SIGNATURES = {
     "Fit": "(draws, prior=None, loglik=None, *, stored_log_density=None, log_weights=None, "
-    "names=None, chain=None, derived=(), predictive=None, approximation=None, ordered=True)",
+    "names=None, chain=None, derived=(), predictive=None, approximation=None, "
+    "ordered=True, sampled='posterior')",
     "Fit.reweigh": "(self, change, *, smooth=True)",
+    "Fit.local": "(self, quantities=None, *, of='mean')",
+    "Fit.pull": "(self, quantities=None)",
+    "Fit.sweep": "(self, family, grid, quantities=None)",
+    "Fit.tipping_point": "(self, family, event, level, between, start=None)",
+    "Fit.worst_case": "(self, quantity, *, divergence=None, ratio=None)",
+    "Fit.least_perturbation": "(self, quantity, target, *, prior_of=None)",
+    "Fit.resistance": "(self, event, level)",
+    "Fit.least_data": "(self, event, level, contrary, *, most=100.0)",
+    "Fit.state": "(self, stated)",
+    "Fit.bayes_factors": "(self, priors, *, against=None)",
+    "Fit.triage": "(self, scenarios, quantities=None, event=None, level=None)",
+    "Answer.attribute": "(self, quantity=None, *, groups=None, blocks=None)",
+    "read_plan": "(source)",
     "weigh": "(log_ratio, draws=None, *, smooth=True)",
     "read": "(path, group=None, *, chain=None, kind=None)",
     "threads": "(n)",

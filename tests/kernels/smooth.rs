@@ -1,7 +1,7 @@
 use _core::kernels::log_sum::{log_sum_exp, maximum};
 use _core::kernels::pareto::{Pareto, fit};
 use _core::kernels::smooth::{smooth, tail_shape};
-use _core::kernels::tail::{Tail, fit_tail, tail_length};
+use _core::kernels::tail::{Scale, Tail, fit_tail, tail_length};
 use proptest::prelude::*;
 
 use super::support::{assert_close, close, fixed, log_weights};
@@ -100,12 +100,7 @@ fn the_tail_is_a_fifth_of_few_draws_and_three_roots_of_many() {
 fn a_tail_without_a_value_below_it_is_short() {
     let values = [0.1, 0.2, 0.3, 0.4, 0.5, 1.0];
     for (length, fits) in [(4, false), (5, true), (6, false), (7, false)] {
-        let tail = fit_tail(
-            &values,
-            length,
-            |value| value,
-            |value, cutoff| value - cutoff,
-        );
+        let tail = fit_tail(&values, length, Scale::Natural(1.0));
         assert_eq!(matches!(tail, Tail::Fitted { .. }), fits, "{length}");
         assert_eq!(tail == Tail::Short, !fits, "{length}");
     }

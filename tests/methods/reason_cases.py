@@ -7,9 +7,12 @@ log(1,000/count).
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 
 import steelyard as sy
+from steelyard.leaving_out import LeaveOut, leave_out
 
 SEED = 20_261_216
 N = 1000
@@ -98,6 +101,15 @@ def product(power: float) -> sy.Estimate:
     return sy.weigh(np.zeros(4000)).mean(x)
 
 
+def carried(count: int) -> sy.Estimate:
+    """Mean of a quantity that `count` of 1,000 unordered draws carry alike."""
+    x = np.zeros(N)
+    x[np.linspace(10, N - 10, count).astype(int)] = 1.0
+    # A little noise keeps the draws from being repeats of each other.
+    x += 1e-9 * np.random.default_rng(SEED + 20).normal(size=N)
+    return sy.Fit({"x": x}, ordered=False).base.mean("x")
+
+
 def prior(old: sy.Normal | sy.Flat, new: object) -> sy.Answer:
     x = np.random.default_rng(SEED + 5).uniform(size=N)
     return sy.Fit({"x": x}, prior={"x": old}).reweigh(sy.swap_prior(x=new))
@@ -133,3 +145,21 @@ def widened(shape: float) -> sy.Answer:
     x = (x - x.mean()) / x.std(ddof=1) * np.sqrt(shape)
     fit = sy.Fit({"x": x}, prior={"x": sy.Normal(0, 1)})
     return fit.reweigh(sy.swap_prior(x=sy.Flat()))
+
+
+def left_out(shape: float, **arguments: Any) -> LeaveOut:
+    """Two observations left out: the weights of the first have that Pareto tail."""
+    u = (np.arange(4000) + 0.5) / 4000
+    heavy = shape * np.log(np.random.default_rng(SEED).permutation(u))
+    loglik = np.stack([heavy, 0.01 * noise(21, 4000), 0.01 * noise(22, 4000)], axis=1)
+    fit = sy.Fit({"x": noise(20, 4000)}, loglik=loglik, ordered=False)
+    return leave_out(fit._record, **arguments)
+
+
+def own_effects(share: float) -> LeaveOut:
+    """Three groups whose log density has this share of its variance from their own effect."""
+    theta, other = noise(23, 4000, 3), noise(24, 4000, 3)
+    loglik = 0.1 * (np.sqrt(share) * theta + np.sqrt(1 - share) * other)
+    one_chain = np.zeros(4000, dtype=int)
+    fit = sy.Fit({"theta": theta}, loglik=loglik, chain=one_chain, ordered=False)
+    return leave_out(fit._record)

@@ -20,14 +20,17 @@ from .reason_cases import (
     apart,
     beyond,
     both,
+    carried,
     equal,
     event,
     excursions,
     few,
     heavy,
+    left_out,
     loosened,
     noise,
     noisier,
+    own_effects,
     prior,
     product,
     quantile,
@@ -39,13 +42,14 @@ from .reason_cases import (
 
 # Limits that are ours and may move; the others are held to METHODS below.
 FEW, BEYOND = RULES["few_effective_draws"], RULES["draws_beyond"]
-Judged = sy.Answer | sy.Estimate
+Judged = sy.Answer | sy.Estimate | sy.LeaveOut
 
 
 Case = tuple[str, Callable[[], Judged], Callable[[], Judged]]
 STRAINED: list[Case] = [
     ("weight_shape", lambda: shape(0.85), lambda: shape(0.65)),
-    ("quantity_shape", lambda: product(0.85), lambda: product(0.65)),
+    ("quantity_shape", lambda: product(1.3), lambda: product(0.9)),
+    ("few_contributions", lambda: carried(1), lambda: carried(3)),
     ("few_effective", lambda: equal(99), lambda: equal(100)),
     ("few_effective_entropy", lambda: equal(49), lambda: equal(51)),
     ("few_effective_draws", lambda: few(FEW.strained - 1), lambda: few(FEW.strained + 1)),
@@ -67,11 +71,13 @@ STRAINED: list[Case] = [
         lambda: both(0.51),
         lambda: both(0.49),
     ),
+    ("groups_strained", lambda: left_out(0.85), lambda: left_out(0.4)),
+    ("own_latents", lambda: own_effects(0.55), lambda: own_effects(0.45)),
     ("noise_raised", lambda: noisier(1.42), lambda: noisier(1.41)),
 ]
 REFIT: list[Case] = [
+    ("groups_refit", lambda: left_out(1.15), lambda: left_out(0.4)),
     ("weight_shape", lambda: shape(1.15), lambda: shape(0.9)),
-    ("quantity_shape", lambda: product(1.3), lambda: product(0.9)),
     ("few_effective", lambda: equal(24), lambda: equal(25)),
     ("few_effective_entropy", lambda: equal(19), lambda: equal(21)),
     ("few_effective_draws", lambda: few(FEW.refit - 1), lambda: few(FEW.refit + 1)),
@@ -92,6 +98,13 @@ REFIT: list[Case] = [
     ("likelihood_loosened", lambda: both(1.01), lambda: loosened(0.0)),
 ]
 NOTES: list[Case] = [
+    (
+        "rows_independent",
+        lambda: left_out(0.4),
+        lambda: left_out(0.4, conditional=np.zeros((4000, 3))),
+    ),
+    ("groups_sampled", lambda: left_out(0.4, sample=2, rng=1), lambda: left_out(0.4)),
+    ("refits_folded", lambda: left_out(0.4).with_refits({0: -1.0}), lambda: left_out(0.4)),
     (
         "edge_pressure",
         lambda: prior(sy.Flat(0, 1), sy.Flat(0, 1.1)),
@@ -120,7 +133,6 @@ def test_every_rule_has_a_case_here() -> None:
 def test_limits_are_those_of_the_methods() -> None:
     stated = {
         "weight_shape": (0.7, 1.0),
-        "quantity_shape": (0.7, 1.0),
         "few_effective": (100, 25),
         "few_effective_entropy": (50, 20),
         "few_carry": (0.1, 0.3),

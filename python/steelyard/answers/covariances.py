@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import fields
 
 import numpy as np
 
@@ -49,7 +50,7 @@ def covariance_of(scale: Scale, quantities: Mapping[str, Quantity]) -> Estimate:
     lower, left = np.tril_indices(size)
     flat = joined(rows)
     matrices = []
-    for figures in (flat.error, flat.shape, flat.p_value, flat.efficiency):
+    for figures in (getattr(flat, field.name) for field in fields(flat)):
         matrix = np.empty((size, size))
         matrix[lower, left] = matrix[left, lower] = figures
         matrices.append(matrix.reshape(-1))

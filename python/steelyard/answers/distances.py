@@ -175,9 +175,9 @@ def divergence_of(scale: Scale) -> Estimate:
     Influence ``w (ℓ − E ℓ − 1) + v`` with ℓ the log of w/v. The estimate cannot exceed the log of
     the number of draws.
     """
-    w, v = scale.weights.linear, scale.base_weights.linear
-    with np.errstate(divide="ignore", invalid="ignore"):
-        ratio = np.where(w > 0, np.log(w) - np.log(v), 0.0)
+    w = scale.weights.linear
+    with np.errstate(invalid="ignore"):
+        ratio = np.where(w > 0, scale.weights.log - scale.base_weights.log, 0.0)
     value = float(_core.weighted_mean(ratio[:, None], w)[0])
     ones = np.ones((scale.count, 1))
     series = study_pair(scale, (ratio - value - 1)[:, None], -ones)

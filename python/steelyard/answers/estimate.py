@@ -11,7 +11,7 @@ from typing import Any, NoReturn
 import numpy as np
 import numpy.typing as npt
 
-from steelyard import _core
+from steelyard.answers.student import student_quantile
 from steelyard.arrays import Frozen
 from steelyard.base.names import label_texts
 from steelyard.digits import rounded, short
@@ -75,6 +75,9 @@ class Estimate(Frozen):
         The same for an event outside of which no draw lies.
     decision : Decision or None
         For a probability that was held against a level.
+    degrees : float or numpy.ndarray
+        Degrees of freedom of the error interval, at least 1: few where few draws carry the estimate
+        on one side, or where a slow chain knows little of its own error.
     label : str
         What was estimated.
     dims : tuple of str
@@ -101,6 +104,7 @@ class Estimate(Frozen):
     upper_bound: Any = None
     lower_bound: Any = None
     decision: Decision | None = None
+    degrees: Any = math.inf
     label: str = ""
     dims: tuple[str, ...] = ()
     labels: Mapping[str, npt.NDArray[Any]] = field(default_factory=dict)
@@ -126,7 +130,9 @@ class Estimate(Frozen):
 
         Notes
         -----
-        ``value ± z error`` with the normal quantile z. It says nothing about the model.
+        ``value ± t error`` with the quantile of Student's t for :attr:`degrees`: a mean of few
+        skewed contributions is not normal, and its error is not well known. It says nothing about
+        the model.
 
         Examples
         --------
@@ -137,8 +143,8 @@ class Estimate(Frozen):
         """
         if not isinstance(level, int | float | np.floating) or not 0 < level < 1:
             raise ArgumentError("level", "a number between 0 and 1", repr(level), "Write 0.95.")
-        z = float(_core.normal_quantile(np.array([0.5 + 0.5 * float(level)]))[0])
-        half = z * np.asarray(self.error)
+        with np.errstate(invalid="ignore"):
+            half = student_quantile(float(level), self.degrees) * np.asarray(self.error)
         return np.stack([np.asarray(self.value) - half, np.asarray(self.value) + half])
 
     def to_xarray(self) -> Any:

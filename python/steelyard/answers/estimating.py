@@ -15,9 +15,11 @@ from steelyard.answers.estimate import Estimate
 from steelyard.answers.quantities import Quantity
 from steelyard.base import Base
 from steelyard.base.draws import Array
-from steelyard.verdicts import Finding, Verdict, judge, shape_limit
+from steelyard.verdicts import Finding, Verdict, judge
 from steelyard.weighing.series import (
     chains_p_value,
+    contributions_of,
+    degrees_of,
     relative_efficiency,
     standard_error,
     tail_of,
@@ -35,6 +37,9 @@ __all__ = [
     "study",
     "study_pair",
 ]
+
+# From so many contributions on a heavy fitted shape says nothing more (`make honesty`), ours.
+MANY = 4.0
 
 # Columns of a quantity that are worked on at a time.
 _WIDTH = 64
@@ -60,13 +65,17 @@ class Series:
     What the influence series of columns show, one entry a column.
 
     `efficiency` is that of the base draws for the quantity, without its weights: unlike the error
-    it does not shrink where a series misses its own tail.
+    it does not shrink where a series misses its own tail. `contributions` is how many draws carry
+    the series on its heavier side, `degrees` the degrees of freedom of its interval; None where
+    there is no one series to count.
     """
 
     error: Array
     shape: Array
     p_value: Array
     efficiency: Array
+    contributions: Array | None = None
+    degrees: Array | None = None
 
     def times(self, unit: Array) -> Series:
         """The series of values in another unit."""
@@ -107,11 +116,14 @@ def study(
     z = draws.size * w[:, None] * psi
     z_raw = draws.size * r[:, None] * psi
     efficiency = relative_efficiency(z_raw, draws, ordered)
+    carried = contributions_of(z, efficiency, draws, ordered)
     return Series(
         standard_error(z, draws, ordered),
         tail_of(z_raw, efficiency, draws, ordered),
         chains_p_value(psi, w, draws) if ordered else np.ones(psi.shape[1]),
         relative_efficiency(psi, draws, ordered),
+        carried,
+        degrees_of(carried, efficiency, draws),
     )
 
 
@@ -161,12 +173,15 @@ def study_pair(scale: Scale, psi_target: Array, psi_base: Array) -> Series:
 
     z, z_raw = pair(scale.weights.linear, base.linear), pair(scale.weights.raw, base.raw)
     efficiency = relative_efficiency(z_raw, draws, ordered)
+    carried = contributions_of(z, efficiency, draws, ordered)
     equal = np.full(count, 1 / count)
     return Series(
         standard_error(z, draws, ordered),
         tail_of(z_raw, efficiency, draws, ordered),
         chains_p_value(z, equal, draws) if ordered else np.ones(z.shape[1]),
         relative_efficiency(psi_target, draws, ordered),
+        carried,
+        degrees_of(carried, efficiency, draws),
     )
 
 
@@ -189,7 +204,14 @@ def joined(parts: list[Series]) -> Series:
         np.concatenate([p.shape for p in parts]),
         np.concatenate([p.p_value for p in parts]),
         np.concatenate([p.efficiency for p in parts]),
+        _joined_known([p.contributions for p in parts]),
+        _joined_known([p.degrees for p in parts]),
     )
+
+
+def _joined_known(parts: list[Array | None]) -> Array | None:
+    known = [part for part in parts if part is not None]
+    return np.concatenate(known) if len(known) == len(parts) else None
 
 
 def finish(
@@ -222,8 +244,11 @@ def finish(
             if variance is None
             else np.where(series.error > 0, variance / series.error**2, float(scale.count))
         )
+    unknown = np.full(value.shape, math.inf)
+    carried = unknown if series.contributions is None else series.contributions
     own = [
-        judge("quantity_shape", series.shape, strained=shape_limit(scale.count)),
+        judge("quantity_shape", series.shape, spoken=~(carried >= MANY)),
+        judge("few_contributions", carried),
         judge("chains_disagree", series.p_value),
         judge("few_effective_draws", scale.weights.effective_size * series.efficiency),
         *extra,
@@ -235,6 +260,7 @@ def finish(
         shaped(series.shape),
         Verdict(findings, shape),
         shaped(effective),
+        degrees=shaped(unknown if series.degrees is None else series.degrees),
         label=quantity.label,
         dims=(*(lead_labels or ("",) * len(lead)), *quantity.dims),
         labels={**quantity.labels, **(lead_labels or {})},

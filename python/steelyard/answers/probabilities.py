@@ -12,6 +12,7 @@ from steelyard import _core
 from steelyard.answers.estimate import Decision, Estimate
 from steelyard.answers.estimating import Scale, Series, column_blocks, finish, joined, study
 from steelyard.answers.quantities import Quantity
+from steelyard.answers.student import student_cdf
 from steelyard.base.draws import Array
 from steelyard.errors import ArgumentError
 from steelyard.verdicts import Finding, judge
@@ -127,12 +128,16 @@ def _least_efficiency(scale: Scale) -> float:
 
 
 def _decision(estimate: Estimate, value: Array, error: Array, level: float) -> Decision:
-    """``Φ(|P̂ − γ|/error)``: how surely the side of the level is the right one, where sound."""
+    """
+    How surely the side of the level is the right one, where sound.
+
+    ``T(|P̂ − γ|/error)`` with Student's distribution function for the estimate's degrees.
+    """
     with np.errstate(invalid="ignore", divide="ignore"):
         distance = np.nan_to_num(np.abs(value - level) / error, nan=0.0)
     shape = np.shape(estimate.value)
     sound = np.broadcast_to(estimate.verdict.is_sound, shape).reshape(-1)
-    right = np.where(sound, _core.normal_cdf(distance), math.nan)
+    right = np.where(sound, student_cdf(distance, np.ravel(estimate.degrees)), math.nan)
     above = value > level
     if not shape:
         return Decision(level, bool(above[0]), float(right[0]))

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from steelyard.arrays import plain_array
 from steelyard.base.names import close_names
 from steelyard.errors import AmbiguousNameError, DrawsError, ShapeError
 
@@ -40,7 +41,7 @@ class Chains:
 def take_chain(columns: dict[str, Any], chain: Any, argument: str) -> npt.NDArray[Any] | None:
     """The chain of each draw: an array as given, or the entry that `chain` names, taken out."""
     if not isinstance(chain, str):
-        return None if chain is None else np.asarray(chain)
+        return None if chain is None else plain_array(chain, "chain", "fiubUSO")
     if chain not in columns:
         raise DrawsError(
             "chain",

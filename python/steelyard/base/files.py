@@ -127,7 +127,7 @@ def read(
 
 
 def _check_kind(kind: Any, form: Form) -> None:
-    if kind not in (None, "draws", "loglik"):
+    if kind is not None and (not isinstance(kind, str) or kind not in ("draws", "loglik")):
         raise ArgumentError("kind", '"draws" or "loglik"', repr(kind), "Say what the file holds.")
     if form == "npy" and kind == "draws":
         raise ArgumentError(

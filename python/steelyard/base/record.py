@@ -142,7 +142,7 @@ def read_log_weights(log_weights: Any, draws: Draws) -> Array:
 def _with_derived(draws: Draws, derived: Any) -> tuple[Draws, dict[str, Callable[..., Any] | None]]:
     if isinstance(derived, str):
         derived = (derived,)
-    if not isinstance(derived, Iterable):
+    if not isinstance(derived, Iterable) or getattr(derived, "ndim", 1) == 0:
         raise ArgumentTypeError(
             "derived", "names, or {new name: callable}", repr(derived), "Name derived quantities."
         )

@@ -324,8 +324,10 @@ def raise_noise(term: str, factor: float, sd: Any) -> Change:
     if not isinstance(term, str):
         raise ArgumentTypeError("raise_noise: term", "a name", repr(term), "Name the term.")
     number = float(_scalar(factor, "raise_noise: factor"))
-    if number == 0:
-        raise ArgumentError("raise_noise: factor", "a positive number", "0", "Use drop instead.")
+    if not 1e-100 < number < 1e100:
+        raise ArgumentError(
+            "raise_noise: factor", "from 1e-100 to 1e100", f"{number:g}", "Use drop for no data."
+        )
     return Change((RaiseNoise(term, number, sd),))
 
 

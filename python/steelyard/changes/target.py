@@ -111,7 +111,7 @@ def _prior_delta(target: PriorTarget, base: Base) -> Array | None:
             "The draws did not come from this prior: state the one that was fitted.",
         )
     new = target.density.log_density_checked(base.draws) if target.is_swapped else old
-    with np.errstate(invalid="ignore"):
+    with np.errstate(invalid="ignore", over="ignore"):
         # To the power 0 a prior is flat on its own support, and still nothing outside of it.
         raised = np.where(new > -np.inf, 0.0, -np.inf) if factor == 0 else factor * new
         return np.asarray(raised - old)
@@ -127,21 +127,23 @@ def _loglik_delta(target: LoglikTarget, base: Base) -> Array | None:
         if touched.size:
             for part, block in new.blocks(draws):
                 # Σ (a − 1) L, never a L − L: 0 · −inf is no weight at all, not NaN.
-                delta[part] = ((factor[touched] - 1) * block[:, touched]).sum(axis=1)
+                with np.errstate(over="ignore"):
+                    delta[part] = ((factor[touched] - 1) * block[:, touched]).sum(axis=1)
         return delta if touched.size else None
     whole = bool((factor != 0).all())
     kept = slice(None) if whole else np.flatnonzero(factor)
     if old is not None and old.obs_shape == new.obs_shape and whole:
         # Differences first, sums after: the same values again give zero to the last bit.
         for (part, ours), (_, theirs) in zip(new.blocks(draws), old.blocks(draws), strict=True):
-            with np.errstate(invalid="ignore"):
+            with np.errstate(invalid="ignore", over="ignore"):
                 delta[part] = (factor * ours - theirs).sum(axis=1)
         return delta
     for part, block in new.blocks(draws):
-        delta[part] += (factor[kept] * block[:, kept]).sum(axis=1)
+        with np.errstate(over="ignore"):
+            delta[part] += (factor[kept] * block[:, kept]).sum(axis=1)
     if old is not None:
         for part, block in old.blocks(draws):
-            with np.errstate(invalid="ignore"):
+            with np.errstate(invalid="ignore", over="ignore"):
                 delta[part] -= block.sum(axis=1)
     return delta
 

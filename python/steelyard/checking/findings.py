@@ -54,6 +54,13 @@ class Findings(Frozen, Sequence[Finding]):
     """
     All findings about a base, in the order of the checks.
 
+    Attributes
+    ----------
+    findings : tuple of Finding
+        One for each check.
+    found : tuple of Finding
+        Those that say that something is wrong.
+
     Examples
     --------
     >>> import numpy as np, steelyard as sy

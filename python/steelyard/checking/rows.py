@@ -40,6 +40,7 @@ def check_rows(base: Base) -> Finding:
     y = np.sum(list(totals.values()), axis=0)
     if not np.isfinite(y).all() or np.ptp(y) == 0:
         return not_testable(_NAME, "The log likelihood is constant or not finite.")
+    y = y / np.abs(y).max()
     design = _quadratic(base)
     if design is None:
         return not_testable(_NAME, "There are too many parameters for this number of draws.")

@@ -52,12 +52,13 @@ def _mixing(base: Base) -> Iterator[Finding]:
     effective = np.where(lrv > 0, base.draws.size * variance / np.where(lrv > 0, lrv, 1.0), np.inf)
     worst = int(np.argmin(effective))
     few = bool(effective[worst] < _FEW)
+    worth = round(min(float(effective[worst]), float(base.draws.size)))
     yield Finding(
         "mixing",
         "found" if few else "nothing found",
         float(effective[worst]),
         _FEW,
-        f"The draws of {names[worst]} are worth {short(round(float(effective[worst])))} "
+        f"The draws of {names[worst]} are worth {short(worth)} "
         "independent ones, fewer than those of any other parameter.",
         "Run the base longer before asking what-ifs of it." if few else "",
     )

@@ -7,14 +7,16 @@ from typing import Any, ClassVar
 
 import numpy as np
 
-from steelyard.densities.distribution import Array, Distribution, Hyperparameter
-from steelyard.densities.special import log_gamma, x_log_y
+from steelyard.densities.cumulative import Elementwise
+from steelyard.densities.hyperparameters import Array, Hyperparameter
+from steelyard.densities.special import beta_tails, digamma
+from steelyard.densities.tails import Tails, bounded
 
 __all__ = ["Beta"]
 
 
-@dataclass(frozen=True)
-class Beta(Distribution):
+@dataclass(frozen=True, repr=False)
+class Beta(Elementwise):
     """
     Beta distribution on ``[0, 1]``.
 
@@ -28,7 +30,7 @@ class Beta(Distribution):
     Raises
     ------
     ArgumentError
-        For a shape that is not positive.
+        For a hyperparameter outside its range.
 
     Notes
     -----
@@ -44,12 +46,34 @@ class Beta(Distribution):
     a: Hyperparameter
     b: Hyperparameter
     domains: ClassVar = {"a": "positive", "b": "positive"}
+    family: ClassVar = "beta"
 
-    def _log_density(self, x: Array, *hyper: Array) -> Array:
+    def _gradient(self, x: Array, *hyper: Array) -> Array:
         a, b = hyper
-        log_beta = log_gamma(a) + log_gamma(b) - log_gamma(a + b)
-        upper = np.where(b == 1, 0.0, (b - 1) * np.log1p(-x))
-        return x_log_y(a - 1, x) + upper - log_beta
+        return np.where(a == 1, 0.0, (a - 1) / x) - np.where(b == 1, 0.0, (b - 1) / (1 - x))
+
+    def _slopes(self, x: Array, *hyper: Array) -> dict[str, Array]:
+        a, b = hyper
+        both = digamma(a + b)
+        return {"a": np.log(x) - digamma(a) + both, "b": np.log1p(-x) - digamma(b) + both}
 
     def _support(self, *hyper: Array) -> tuple[Any, Any]:
         return 0.0, 1.0
+
+    def _tails(self, *hyper: Array) -> Tails:
+        a, b = hyper
+        return Tails(bounded(0.0, a - 1), bounded(1.0, b - 1))
+
+    def _sample(self, rng: np.random.Generator, shape: tuple[int, ...], *hyper: Array) -> Any:
+        return rng.beta(hyper[0], hyper[1], shape)
+
+    def _log_tails(self, x: Array, *hyper: Array) -> tuple[Array, Array]:
+        below, above, *_ = beta_tails(hyper[0], hyper[1], x, 1 - x)
+        return below, above
+
+    def _flows(self, x: Array, *hyper: Array) -> dict[str, Array]:
+        below, above, *slopes = beta_tails(hyper[0], hyper[1], x, 1 - x)
+        in_lower = below < above
+        ratio = np.exp(np.where(in_lower, below, above) - self._log_density(x, *hyper))
+        by_a, by_b = (np.where(in_lower, -slopes[i], slopes[i + 2]) for i in (0, 1))
+        return {"a": by_a * ratio, "b": by_b * ratio}

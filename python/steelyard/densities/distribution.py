@@ -2,117 +2,47 @@
 
 from __future__ import annotations
 
-import math
 from abc import ABC, abstractmethod
-from collections.abc import Callable, Mapping
-from dataclasses import dataclass, fields
-from typing import Any, ClassVar
+from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
-from steelyard.errors import ArgumentError, ArgumentTypeError, PriorError, ShapeError
+from steelyard.densities.hyperparameters import Array, Hyperparameter, LookUp
+from steelyard.densities.record import Draws, Record, Resolved
+from steelyard.densities.tails import Tails
+from steelyard.errors import ArgumentError, ShapeError
 
 __all__ = ["Array", "Distribution", "Hyperparameter"]
 
-Array = npt.NDArray[np.float64]
-# A number, nested tuples of numbers, or the name of a parameter.
-Hyperparameter = Any
 
-_DOMAINS: Mapping[str, tuple[str, Callable[[Array], npt.NDArray[np.bool_]]]] = {
-    "real": ("a finite number", np.isfinite),
-    "positive": ("a positive finite number", lambda v: np.isfinite(v) & (v > 0)),
-    "limit": ("a number, or an infinite limit", lambda v: ~np.isnan(v)),
-}
-
-
-@dataclass(frozen=True)
-class Distribution(ABC):
+@dataclass(frozen=True, repr=False)
+class Distribution(Record, ABC):
     """
     Base of all distributions.
 
     A hyperparameter is a number, an array (kept as nested tuples, so that the distribution can be
-    hashed and compared) or the name of a parameter, whose draws then stand for it.
+    hashed and compared) or the name of a parameter, whose draws then stand for it. A distribution
+    of vectors or matrices acts on the last axes of the value and returns log densities without
+    them.
     """
 
-    # Domain of each hyperparameter, in the constructor's order.
-    domains: ClassVar[Mapping[str, str]]
-
-    def __post_init__(self) -> None:
-        for name in self.domains:
-            value = _frozen_value(getattr(self, name), f"{type(self).__name__}: {name}")
-            object.__setattr__(self, name, value)
-            if not isinstance(value, str):
-                self._check(name, np.asarray(value, dtype=np.float64))
-
-    def _check(self, name: str, values: Array) -> None:
-        wanted, inside = _DOMAINS[self.domains[name]]
-        bad = ~inside(values)
-        if not np.any(bad):
-            return
-        first = np.asarray(values)[bad].flat[0]
-        raise ArgumentError(
-            f"{type(self).__name__}: {name}",
-            wanted,
-            f"{first:g}" + (f" ({int(bad.sum())} such values)" if bad.size > 1 else ""),
-            "Give a value from that range.",
-        )
-
     @property
-    def names(self) -> tuple[str, ...]:
-        """Parameters that stand for a hyperparameter."""
-        values = (getattr(self, name) for name in self.domains)
-        return tuple(v for v in values if isinstance(v, str))
+    def is_discrete(self) -> bool:
+        """Whether the distribution is one of whole numbers."""
+        return False
 
     @property
     def is_proper(self) -> bool:
         """Whether the density integrates to one."""
         return True
 
-    def resolve(
-        self,
-        shape: tuple[int, ...],
-        draws: Mapping[str, Array] | None = None,
-        look_up: Callable[[str], Array] | None = None,
-    ) -> list[Array]:
-        """Hyperparameters as arrays that broadcast against a value of shape `shape`."""
-        out = []
-        for name in self.domains:
-            value = getattr(self, name)
-            if isinstance(value, str):
-                found = _named(value, draws, look_up, f"{type(self).__name__}: {name}")
-                self._check_draws(name, value, found)
-                out.append(_align(found, shape, f"{type(self).__name__}: {name}={value!r}"))
-            else:
-                out.append(np.asarray(value, dtype=np.float64))
-        try:
-            np.broadcast_shapes(shape, *(v.shape for v in out))
-        except ValueError as error:
-            raise ShapeError(
-                str(self),
-                f"hyperparameters that broadcast against the value's shape {shape}",
-                ", ".join(str(v.shape) for v in out),
-                "Give scalars or arrays of the parameter's own trailing shape.",
-            ) from error
-        return out
-
-    def _check_draws(self, name: str, parameter: str, values: Array) -> None:
-        wanted, inside = _DOMAINS[self.domains[name]]
-        bad = ~inside(values)
-        if np.any(bad):
-            first = int(np.flatnonzero(bad.reshape(len(values), -1).any(axis=1))[0])
-            raise PriorError(
-                f"{type(self).__name__}: {name}",
-                f"draws of {parameter!r} that are each {wanted}",
-                f"{int(bad.sum())} that are not, first at draw {first}",
-                "The base prior is not the one the draws came from, or another parameter is meant.",
-            )
-
     def log_density(
         self,
         value: npt.ArrayLike,
-        draws: Mapping[str, Array] | None = None,
-        look_up: Callable[[str], Array] | None = None,
+        draws: Draws | None = None,
+        look_up: LookUp | None = None,
     ) -> Array:
         """
         Natural log density, −inf outside the support.
@@ -129,7 +59,7 @@ class Distribution(ABC):
         Returns
         -------
         numpy.ndarray
-            Log densities, shape of `value`.
+            Log densities, shape of `value` (without its last axes for vectors and matrices).
 
         Raises
         ------
@@ -138,90 +68,231 @@ class Distribution(ABC):
         ShapeError
             Where hyperparameters do not broadcast against `value`.
         """
-        x = np.asarray(value, dtype=np.float64)
+        x = self._read(value)
         hyper = self.resolve(x.shape, draws, look_up)
-        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
-            out = self._log_density(x, *hyper)
-        lower, upper = self._support(*hyper)
-        outside = ~((x >= lower) & (x <= upper))
-        out = np.where(outside, -np.inf, out)
-        return np.where(np.isnan(x), np.nan, out)
+        with _quiet():
+            return self._log_density(x, *hyper)
+
+    def gradient(
+        self,
+        value: npt.ArrayLike,
+        draws: Draws | None = None,
+        look_up: LookUp | None = None,
+    ) -> Array:
+        """
+        Derivative of the log density in the value.
+
+        Parameters
+        ----------
+        value, draws, look_up : array_like, mapping, callable
+            As for `log_density`.
+
+        Returns
+        -------
+        numpy.ndarray
+            Shape of `value`; NaN outside the support. Entries of vectors and matrices count as
+            free, whatever ties them together.
+
+        Raises
+        ------
+        ArgumentError
+            For a discrete distribution.
+        PriorError, ShapeError
+            As `log_density`.
+        """
+        if self.is_discrete:
+            raise ArgumentError(
+                "gradient", "a continuous distribution", str(self), "Use differences instead."
+            )
+        x = self._read(value)
+        hyper = self.resolve(x.shape, draws, look_up)
+        with _quiet():
+            return self._inside(x, self._gradient(x, *hyper), hyper, self.event_axes)
+
+    def hyper_gradient(
+        self,
+        value: npt.ArrayLike,
+        draws: Draws | None = None,
+        look_up: LookUp | None = None,
+    ) -> dict[str, Array]:
+        """
+        Derivative of the log density in each hyperparameter.
+
+        Parameters
+        ----------
+        value, draws, look_up : array_like, mapping, callable
+            As for `log_density`.
+
+        Returns
+        -------
+        dict of str to numpy.ndarray
+            In the constructor's order. Each array has the shape of the log density, and a
+            vector's or matrix's own axes after it; NaN outside the support. The derivative in a
+            number that several entries share is the sum of theirs. Hyperparameters of parts are
+            written as in Python: ``"d.mean"``, ``"components[0].sd"``.
+
+        Raises
+        ------
+        PriorError, ShapeError
+            As `log_density`.
+        """
+        x = self._read(value)
+        hyper = self.resolve(x.shape, draws, look_up)
+        with _quiet():
+            slopes = self._slopes(x, *hyper)
+            batch = x.ndim - self.event_axes
+            return {
+                name: self._inside(x, slope, hyper, max(np.ndim(slope) - batch, 0))
+                for name, slope in slopes.items()
+            }
+
+    def _read(self, value: npt.ArrayLike) -> Array:
+        x = np.asarray(value, dtype=np.float64)
+        self._expect_axes(x.shape, "value")
+        return x
+
+    def _expect_axes(self, shape: tuple[int, ...], argument: str) -> None:
+        if len(shape) < self.event_axes:
+            raise ShapeError(
+                argument,
+                f"a shape that ends with the {self.event_axes} axes of {self}",
+                str(shape),
+                "Give whole vectors or matrices.",
+            )
+
+    def _inside(self, x: Array, slope: Array, hyper: Resolved, own: int) -> Array:
+        """NaN where the density is 0 or the value NaN, in the full shape."""
+        outside = ~(self._log_density(x, *hyper) > -np.inf)
+        outside = outside.reshape(outside.shape + (1,) * own)
+        slope = np.broadcast_to(slope, np.broadcast_shapes(np.shape(slope), outside.shape))
+        return np.where(outside, np.nan, slope)
 
     def support(
         self,
         shape: tuple[int, ...] = (),
-        draws: Mapping[str, Array] | None = None,
-        look_up: Callable[[str], Array] | None = None,
+        draws: Draws | None = None,
+        look_up: LookUp | None = None,
     ) -> tuple[Array, Array]:
-        """Lower and upper limit of the support, as arrays that broadcast against `shape`."""
+        """
+        Lower and upper limit of the support of each entry.
+
+        Parameters
+        ----------
+        shape : tuple of int, optional
+            Shape of the value.
+        draws, look_up : mapping, callable, optional
+            As for `log_density`.
+
+        Returns
+        -------
+        tuple of numpy.ndarray
+            Limits as arrays that broadcast against `shape`.
+
+        Raises
+        ------
+        PriorError, ShapeError
+            As `log_density`.
+        """
         lower, upper = self._support(*self.resolve(shape, draws, look_up))
         return np.asarray(lower, dtype=np.float64), np.asarray(upper, dtype=np.float64)
 
+    def tails(
+        self,
+        shape: tuple[int, ...] = (),
+        draws: Draws | None = None,
+        look_up: LookUp | None = None,
+    ) -> Tails:
+        """
+        How fast the density falls at both ends; of vectors and matrices, each entry's marginal.
+
+        Parameters
+        ----------
+        shape : tuple of int, optional
+            Shape of the value.
+        draws, look_up : mapping, callable, optional
+            As for `log_density`.
+
+        Returns
+        -------
+        Tails
+            Lower and upper `Tail`, whose arrays broadcast against `shape`.
+
+        Raises
+        ------
+        PriorError, ShapeError
+            As `log_density`.
+        """
+        hyper = self.resolve(shape, draws, look_up)
+        with _quiet():
+            return self._tails(*hyper)
+
+    def sample(
+        self,
+        size: int | tuple[int, ...] = (),
+        *,
+        rng: np.random.Generator | int | None = None,
+        draws: Draws | None = None,
+        look_up: LookUp | None = None,
+    ) -> Array:
+        """
+        Draw random values.
+
+        Parameters
+        ----------
+        size : int or tuple of int, optional
+            Shape of the result, with the own axes of vectors and matrices last, and the number of
+            draws first where hyperparameters are named.
+        rng : numpy.random.Generator or int, optional
+            Random generator or seed.
+        draws, look_up : mapping, callable, optional
+            As for `log_density`.
+
+        Returns
+        -------
+        numpy.ndarray
+            Independent draws, shape `size`.
+
+        Raises
+        ------
+        ArgumentError
+            For an improper density.
+        PriorError, ShapeError
+            As `log_density`.
+        """
+        shape = (size,) if isinstance(size, int | np.integer) else tuple(size)
+        self._expect_axes(shape, "size")
+        if not self.is_proper:
+            raise ArgumentError(
+                "sample", "a proper density", str(self), "Give finite limits or another prior."
+            )
+        hyper = self.resolve(shape, draws, look_up)
+        with _quiet():
+            return np.asarray(self._sample(np.random.default_rng(rng), shape, *hyper), np.float64)
+
     @abstractmethod
-    def _log_density(self, x: Array, *hyper: Array) -> Array: ...
+    def _log_density(self, x: Array, *hyper: Any) -> Array:
+        """Log density; −inf outside the support, NaN at NaN."""
 
-    def _support(self, *hyper: Array) -> tuple[Any, Any]:
-        return -math.inf, math.inf
+    @abstractmethod
+    def _gradient(self, x: Array, *hyper: Any) -> Array:
+        """Derivative in the value, anything outside the support."""
 
-    def __str__(self) -> str:
-        return f"{type(self).__name__}({', '.join(_text(v) for v in self._values())})"
+    @abstractmethod
+    def _slopes(self, x: Array, *hyper: Any) -> dict[str, Array]:
+        """Derivatives in the hyperparameters, anything outside the support."""
 
-    def _values(self) -> list[Any]:
-        return [getattr(self, f.name) for f in fields(self)]
+    @abstractmethod
+    def _support(self, *hyper: Any) -> tuple[Any, Any]:
+        """Lower and upper limit."""
 
+    @abstractmethod
+    def _tails(self, *hyper: Any) -> Tails:
+        """Both ends."""
 
-def _text(value: Any) -> str:
-    if isinstance(value, str):
-        return value
-    if isinstance(value, tuple):
-        return "[" + ", ".join(_text(v) for v in value) + "]"
-    return f"{value:g}"
-
-
-def _frozen_value(value: Any, argument: str) -> Any:
-    if isinstance(value, str):
-        return value
-    array = np.asarray(value)
-    if array.dtype.kind not in "fiu" or isinstance(value, bool):
-        raise ArgumentTypeError(
-            argument,
-            "a number, an array of numbers, or the name of a parameter",
-            f"{type(value).__name__} of dtype {array.dtype}" if array.ndim else repr(value),
-            "Convert it, or pass a callable as the prior term.",
-        )
-
-    def freeze(item: Any) -> Any:
-        return tuple(freeze(v) for v in item) if isinstance(item, list) else float(item)
-
-    return freeze(array.tolist())
+    @abstractmethod
+    def _sample(self, rng: np.random.Generator, shape: tuple[int, ...], *hyper: Any) -> Any:
+        """Independent draws of that shape."""
 
 
-def _named(
-    name: str,
-    draws: Mapping[str, Array] | None,
-    look_up: Callable[[str], Array] | None,
-    argument: str,
-) -> Array:
-    if look_up is not None:
-        return look_up(name)
-    if draws is None or name not in draws:
-        raise PriorError(
-            argument,
-            f"draws of the parameter {name!r}",
-            "none" if draws is None else f"draws of {', '.join(draws)}",
-            "Pass draws= with that parameter, or give a number.",
-        )
-    return np.asarray(draws[name], dtype=np.float64)
-
-
-def _align(values: Array, shape: tuple[int, ...], argument: str) -> Array:
-    """Insert axes after the draw axis so that `(n, *h)` broadcasts against `(n, *shape)`."""
-    if values.ndim > len(shape) or (shape and values.shape[0] != shape[0]):
-        raise ShapeError(
-            argument,
-            f"draws that broadcast against a parameter of shape {shape}",
-            str(values.shape),
-            'Name an element ("tau[0]") or pass a callable as the prior term.',
-        )
-    middle = (1,) * (len(shape) - values.ndim)
-    return values.reshape(values.shape[:1] + middle + values.shape[1:])
+def _quiet() -> Any:
+    return np.errstate(all="ignore")  # infinities and NaN at the edges of a support are meant

@@ -4,18 +4,18 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import Any, ClassVar
+from typing import ClassVar
 
 import numpy as np
 
-from steelyard.densities.distribution import Array, Distribution, Hyperparameter
-from steelyard.errors import ArgumentError
+from steelyard.densities.hyperparameters import Hyperparameter
+from steelyard.densities.limits import Between
 
 __all__ = ["Flat"]
 
 
-@dataclass(frozen=True)
-class Flat(Distribution):
+@dataclass(frozen=True, repr=False)
+class Flat(Between):
     """
     Constant density between two limits, or everywhere.
 
@@ -49,28 +49,10 @@ class Flat(Distribution):
     lower: Hyperparameter = -math.inf
     upper: Hyperparameter = math.inf
     domains: ClassVar = {"lower": "limit", "upper": "limit"}
-
-    def __post_init__(self) -> None:
-        super().__post_init__()
-        limits = (self.lower, self.upper)
-        if not any(isinstance(v, str) for v in limits) and np.any(
-            np.asarray(self.lower) >= np.asarray(self.upper)
-        ):
-            raise ArgumentError(
-                "Flat: upper",
-                f"a limit above lower={self.lower}",
-                str(self.upper),
-                "Give the lower limit first.",
-            )
+    family: ClassVar = "flat"
 
     @property
     def is_proper(self) -> bool:
         """Whether both limits are finite (a named limit is: it has draws)."""
-        return all(isinstance(v, str) or bool(np.all(np.isfinite(v))) for v in self._values())
-
-    def _log_density(self, x: Array, *hyper: Array) -> Array:
-        width = hyper[1] - hyper[0]
-        return np.broadcast_to(np.where(np.isfinite(width), -np.log(width), 0.0), x.shape)
-
-    def _support(self, *hyper: Array) -> tuple[Any, Any]:
-        return hyper[0], hyper[1]
+        limits = (self.lower, self.upper)
+        return all(isinstance(v, str) or bool(np.all(np.isfinite(v))) for v in limits)

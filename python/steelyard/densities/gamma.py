@@ -8,14 +8,16 @@ from typing import Any, ClassVar
 
 import numpy as np
 
-from steelyard.densities.distribution import Array, Distribution, Hyperparameter
-from steelyard.densities.special import log_gamma, x_log_y
+from steelyard.densities.cumulative import Elementwise
+from steelyard.densities.hyperparameters import Array, Hyperparameter
+from steelyard.densities.special import digamma, gamma_tails
+from steelyard.densities.tails import Tails, bounded, infinite
 
 __all__ = ["Gamma"]
 
 
-@dataclass(frozen=True)
-class Gamma(Distribution):
+@dataclass(frozen=True, repr=False)
+class Gamma(Elementwise):
     """
     Gamma distribution on ``[0, ∞)``.
 
@@ -45,10 +47,35 @@ class Gamma(Distribution):
     shape: Hyperparameter
     rate: Hyperparameter
     domains: ClassVar = {"shape": "positive", "rate": "positive"}
+    family: ClassVar = "gamma"
 
-    def _log_density(self, x: Array, *hyper: Array) -> Array:
+    def _gradient(self, x: Array, *hyper: Array) -> Array:
         shape, rate = hyper
-        return shape * np.log(rate) - log_gamma(shape) + x_log_y(shape - 1, x) - rate * x
+        return np.where(shape == 1, 0.0, (shape - 1) / x) - rate
+
+    def _slopes(self, x: Array, *hyper: Array) -> dict[str, Array]:
+        shape, rate = hyper
+        return {"shape": np.log(rate * x) - digamma(shape), "rate": shape / rate - x}
 
     def _support(self, *hyper: Array) -> tuple[Any, Any]:
         return 0.0, math.inf
+
+    def _tails(self, *hyper: Array) -> Tails:
+        shape, rate = hyper
+        return Tails(bounded(0.0, shape - 1), infinite(1, 1, rate, shape - 1))
+
+    def _sample(self, rng: np.random.Generator, shape: tuple[int, ...], *hyper: Array) -> Any:
+        return rng.standard_gamma(hyper[0], shape) / hyper[1]
+
+    def _log_tails(self, x: Array, *hyper: Array) -> tuple[Array, Array]:
+        below, above, *_ = gamma_tails(hyper[0], hyper[1] * x)
+        return below, above
+
+    def _flows(self, x: Array, *hyper: Array) -> dict[str, Array]:
+        shape, rate = hyper
+        below, above, by_shape, by_shape_above = gamma_tails(shape, rate * x)
+        log_p = self._log_density(x, *hyper)
+        in_lower = below < above
+        ratio = np.exp(np.where(in_lower, below, above) - log_p)
+        by_shape = np.where(in_lower, -by_shape, by_shape_above) * ratio
+        return {"shape": by_shape, "rate": -x / rate}

@@ -4,20 +4,20 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import ClassVar
+from typing import Any, ClassVar
 
 import numpy as np
 
-from steelyard.densities.distribution import Array, Distribution, Hyperparameter
+from steelyard.densities.cumulative import Elementwise
+from steelyard.densities.hyperparameters import Array, Hyperparameter
+from steelyard.densities.special import log_normal_cdf
+from steelyard.densities.tails import Tails, infinite
 
 __all__ = ["Normal"]
 
 
-HALF_LOG_2PI = 0.5 * math.log(2 * math.pi)
-
-
-@dataclass(frozen=True)
-class Normal(Distribution):
+@dataclass(frozen=True, repr=False)
+class Normal(Elementwise):
     """
     Normal distribution.
 
@@ -47,7 +47,31 @@ class Normal(Distribution):
     mean: Hyperparameter
     sd: Hyperparameter
     domains: ClassVar = {"mean": "real", "sd": "positive"}
+    family: ClassVar = "normal"
 
-    def _log_density(self, x: Array, *hyper: Array) -> Array:
+    def _gradient(self, x: Array, *hyper: Array) -> Array:
         mean, sd = hyper
-        return -0.5 * ((x - mean) / sd) ** 2 - np.log(sd) - HALF_LOG_2PI
+        return -(x - mean) / sd**2
+
+    def _slopes(self, x: Array, *hyper: Array) -> dict[str, Array]:
+        mean, sd = hyper
+        z = (x - mean) / sd
+        return {"mean": z / sd, "sd": (z**2 - 1) / sd}
+
+    def _support(self, *hyper: Array) -> tuple[Any, Any]:
+        return -math.inf, math.inf
+
+    def _tails(self, *hyper: Array) -> Tails:
+        speed = 0.5 / hyper[1] ** 2
+        return Tails(infinite(-1, 2, speed), infinite(1, 2, speed))
+
+    def _sample(self, rng: np.random.Generator, shape: tuple[int, ...], *hyper: Array) -> Any:
+        return hyper[0] + hyper[1] * rng.standard_normal(shape)
+
+    def _log_tails(self, x: Array, *hyper: Array) -> tuple[Array, Array]:
+        z = (x - hyper[0]) / hyper[1]
+        return log_normal_cdf(z), log_normal_cdf(-z)
+
+    def _flows(self, x: Array, *hyper: Array) -> dict[str, Array]:
+        z = (x - hyper[0]) / hyper[1]
+        return {"mean": np.ones_like(z), "sd": z}

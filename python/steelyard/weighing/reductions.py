@@ -147,7 +147,7 @@ def effective_size(
     >>> weights.effective_size([0.0, 0.0, 0.0, 0.0])
     4.0
     """
-    if kind not in ("variance", "entropy"):
+    if not isinstance(kind, str) or kind not in ("variance", "entropy"):
         raise ArgumentError("kind", "'variance' or 'entropy'", repr(kind), "Choose one of them.")
 
     def kernel(block: Array) -> Array:

@@ -14,6 +14,8 @@ from steelyard.weighing.arrays import columns_of, refuse_bad_log_weights, seed_k
 
 __all__ = ["METHODS", "resample"]
 
+# Positions of 8 bytes each: 16 GB.
+_MOST = 2**31
 METHODS = ("systematic", "stratified", "residual", "multinomial", "without_replacement")
 Method = Literal["systematic", "stratified", "residual", "multinomial", "without_replacement"]
 
@@ -64,9 +66,9 @@ def resample(
     """
     if isinstance(size, bool) or not isinstance(size, int | np.integer):
         raise ArgumentTypeError("size", "an integer", repr(size), "Say how many draws.")
-    if size < 1:
-        raise ArgumentError("size", "at least 1", str(size), "Say how many draws.")
-    if method not in METHODS:
+    if not 1 <= size <= _MOST:
+        raise ArgumentError("size", f"from 1 to {_MOST:,}", str(size), "Say how many draws.")
+    if not isinstance(method, str) or method not in METHODS:
         raise ArgumentError("method", f"one of {', '.join(METHODS)}", repr(method), "Choose one.")
     key = seed_key(rng)
     array = plain_array(log_weights, "log_weights", "fiu")

@@ -86,7 +86,8 @@ def _edge_pressure(prior: PriorTarget, base: Base, edge: Array, side: str) -> It
     mean = weights @ columns
     sd = np.sqrt(weights @ (columns - mean) ** 2)
     sd = np.where(sd > 0, sd, 1.0)
-    density = weights @ ((distance / sd) < _STRIP) / _STRIP
+    with np.errstate(over="ignore"):
+        density = weights @ ((distance / sd) < _STRIP) / _STRIP
     yield judge(
         "edge_pressure",
         float(density.max()),

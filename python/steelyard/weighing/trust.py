@@ -14,13 +14,22 @@ from steelyard.verdicts import Finding, judge, shape_limit
 from steelyard.weighing.series import chains_p_value, relative_efficiency
 from steelyard.weighing.weigh import Weights
 
-__all__ = ["excursions", "shared_findings", "weight_findings"]
+__all__ = ["excursions", "shared_findings", "tail_share", "weight_findings"]
+
+# A tail that holds less of Σ w² than this is not judged by its shape: if it held ten times as
+# much, errors would grow by a twentieth.
+_IDLE_TAIL = 0.01
 
 
 def weight_findings(weights: Weights, draws: Draws, ordered: bool) -> Iterator[Finding]:
     """Shape, effective sizes, largest share, divergence and excursions of the weights."""
     count = draws.size
-    yield judge("weight_shape", weights.tail_shape, strained=shape_limit(count))
+    yield judge(
+        "weight_shape",
+        weights.tail_shape,
+        strained=shape_limit(count),
+        spoken=np.asarray(not tail_share(weights.raw) < _IDLE_TAIL),
+    )
     yield judge("few_effective", weights.effective_size)
     yield judge("few_effective_entropy", weights.entropy_size)
     yield judge("few_carry", weights.largest_share)
@@ -28,6 +37,21 @@ def weight_findings(weights: Weights, draws: Draws, ordered: bool) -> Iterator[F
     yield judge("saturated_divergence", max(divergence, 0.0) / math.log(count))
     if ordered and np.ptp(weights.raw) > 0:
         yield judge("autocorrelated_tail", excursions(weights.raw, draws))
+
+
+def tail_share(raw: Array) -> float:
+    """
+    Share of the tail in ``Σ w²``: ``Σ (w² − u²)/Σ w²`` over the largest weights, u the cut-off.
+
+    Errors of weighted means rest on ``Σ w²``: it is what a tail of whatever shape can be wrong
+    about. NaN where there are too few draws for a tail.
+    """
+    tail = math.ceil(min(0.2 * raw.size, 3 * math.sqrt(raw.size)))
+    if tail >= raw.size:
+        return math.nan
+    unit = raw / raw.max()
+    largest = np.partition(unit, raw.size - tail - 1)[raw.size - tail - 1 :]
+    return float((largest**2 - largest.min() ** 2).sum() / (unit**2).sum())
 
 
 def shared_findings(weights: Weights, draws: Draws, ordered: bool) -> Iterator[Finding]:

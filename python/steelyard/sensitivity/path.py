@@ -1,0 +1,169 @@
+"""A decision along one hyperparameter, reweighed only where it is asked and never twice."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass, field, replace
+from typing import Any
+
+import numpy as np
+
+from steelyard import _core
+from steelyard.answers.estimate import Estimate
+from steelyard.answers.quantities import Quantity, event_mask
+from steelyard.answers.student import student_quantile
+from steelyard.base import Base
+from steelyard.base.draws import Array
+from steelyard.sensitivity.families import Family, targets_of
+from steelyard.sensitivity.gathering import Gathered
+from steelyard.sensitivity.nodes import (
+    algebra_findings,
+    study_nodes,
+    weigh_nodes,
+    weight_findings,
+)
+from steelyard.verdicts import judge
+from steelyard.weighing.weigh import Weights
+
+__all__ = ["MOST_REWEIGHINGS", "Path", "Place"]
+
+MOST_REWEIGHINGS = 60
+
+
+@dataclass(frozen=True)
+class Place:
+    """The decision at one value: probability minus level, its error, and whether it is sound."""
+
+    at: float
+    gap: float
+    error: float
+    is_sound: bool
+    effective_size: float
+    degrees: float = math.inf
+
+    @property
+    def deviation(self) -> float:
+        """The gap in errors, those of few degrees of freedom counted as wider ones."""
+        if self.error > 0:
+            wider = float(student_quantile(0.95, self.degrees)) / float(
+                student_quantile(0.95, math.inf)
+            )
+            return self.gap / (self.error * wider)
+        return math.copysign(math.inf, self.gap) if self.gap else 0.0
+
+
+@dataclass
+class Path:
+    """
+    Places along a family of changes; `steps` are positions in which the path is even.
+
+    Positions are logs of the hyperparameter where the range is positive and wide, else the
+    hyperparameter itself.
+    """
+
+    base: Base
+    family: Family
+    name: str
+    asked: Any
+    event: Quantity
+    level: float
+    between: tuple[float, float]
+    own: Weights
+    places: dict[float, Place] = field(default_factory=dict)
+
+    @property
+    def is_log(self) -> bool:
+        """Whether steps are even on the log scale."""
+        low, high = self.between
+        return low > 0 and high / low >= 10
+
+    def step(self, at: float) -> float:
+        """Position of a value."""
+        return math.log(at) if self.is_log else at
+
+    def value(self, step: float) -> float:
+        """Value of a position, inside the range to the last bit."""
+        at = math.exp(step) if self.is_log else step
+        return min(max(at, self.between[0]), self.between[1])
+
+    @property
+    def left(self) -> int:
+        """Reweighings that may still be made."""
+        return MOST_REWEIGHINGS - len(self.places)
+
+    def visit(self, values: Sequence[float]) -> list[Place]:
+        """The decision at several values, new ones reweighed together."""
+        new = [v for v in dict.fromkeys(values) if v not in self.places]
+        if new:
+            self._reweigh(new)
+        return [self.places[v] for v in values]
+
+    def _reweigh(self, values: list[float]) -> None:
+        estimate, sizes = self._estimate(values)
+        for i, at in enumerate(values):
+            # NaN where no draw with weight lies on one side: beyond what can be said.
+            gap, error = (float(np.ravel(a[i])[0]) for a in (estimate.value, estimate.error))
+            sound = bool(np.ravel(estimate.verdict.is_sound[i])[0])
+            degrees = float(np.ravel(estimate.degrees[i])[0])
+            self.places[at] = Place(at, gap - self.level, error, sound, float(sizes[i]), degrees)
+
+    def _estimate(self, values: list[float]) -> tuple[Estimate, Array]:
+        nodes = [(v,) for v in values]
+        targets, ratios = targets_of(self.base, self.family, [self.name], nodes)
+        for target in targets:
+            if target.withheld:
+                # An event of predictive draws whose model changed is refused here.
+                event_mask(self.asked, replace(self.base, withheld=target.withheld))
+        weighed = weigh_nodes(self.base, ratios, self.own)
+        gathered = Gathered.empty(self.event, len(values))
+        f = np.ascontiguousarray(self.event.columns[:, 0])
+        gathered.put(slice(0, len(values)), 0, study_nodes(weighed, f, is_event=True))
+        findings = [*algebra_findings(self.base, targets), *weight_findings(weighed)]
+        findings.append(judge("base_unverified"))
+        labels = {self.name: np.array(values)}
+        lead = (len(values),)
+        sizes = weighed.effective_size
+        return gathered.finished(self.base, self.own, sizes, findings, lead, labels), sizes
+
+    def probability(self, at: float) -> Estimate:
+        """The probability at one value, with its verdict."""
+        estimate, _ = self._estimate([at])
+        verdict = estimate.verdict[0]
+        while np.ndim(verdict.level):
+            verdict = verdict[0]
+        value, error, shape, effective = (
+            float(np.ravel(figure)[0])
+            for figure in (
+                estimate.value,
+                estimate.error,
+                estimate.tail_shape,
+                estimate.effective_draws,
+            )
+        )
+        return Estimate(
+            value,
+            error,
+            shape,
+            verdict,
+            effective,
+            degrees=float(np.ravel(estimate.degrees)[0]),
+            label=self.event.label,
+        )
+
+    def slope(self, at: float) -> float:
+        """``Cov(1{event}, ∂ℓ/∂λ)`` under the weights at `at`: how fast the probability moves."""
+        low, high = self.between
+        h = 1e-4 * (high - low)
+        if self.is_log:
+            h = 1e-4 * at
+        one, other = max(at - h, low), min(at + h, high)
+        _, ratios = targets_of(self.base, self.family, [self.name], [(one,), (at,), (other,)])
+        weights = weigh_nodes(self.base, np.ascontiguousarray(ratios[:, 1:2]), self.own)
+        w = weights.linear[:, 0]
+        with np.errstate(invalid="ignore"):
+            score = (ratios[:, 2] - ratios[:, 0]) / (other - one)
+        score = np.where(w > 0, np.nan_to_num(score), 0.0)
+        f = self.event.columns[:, 0]
+        centre = float(_core.weighted_mean(score[:, None], w)[0])
+        return float(_core.weighted_mean((f * (score - centre))[:, None], w)[0])

@@ -1,0 +1,188 @@
+//! Running sums of weights, as resampling needs them: quick, exact to the last digits, and flat
+//! where a weight is 0.
+
+use super::error::KernelError;
+use super::quantile::Compensated;
+use super::vector::{Arithmetic, Work, dispatch};
+
+/// Weights whose sum is formed before their running sums.
+const BLOCK: usize = 256;
+
+/// Non-negative weights with the running sums of their blocks.
+pub struct Cumulated<'a> {
+    weights: &'a [f64],
+    /// A power of two that takes the weights to where no sum overflows.
+    scale: f64,
+    /// Sum of all blocks before each one; the total last.
+    before: Vec<f64>,
+    /// The last draw whose weight is positive.
+    last: usize,
+}
+
+impl<'a> Cumulated<'a> {
+    /// # Errors
+    /// [`KernelError::NoWeight`] when a weight is negative or not finite or none is positive.
+    pub fn new(weights: &'a [f64]) -> Result<Self, KernelError> {
+        let mut scale = 1.0;
+        let (mut before, largest) = block_sums(weights, scale)?;
+        if !(1e-200..1e200).contains(&largest) {
+            scale = unit(largest);
+            before = block_sums(weights, scale)?.0;
+        }
+        let Some(last) = weights.iter().rposition(|&weight| weight > 0.0) else {
+            return Err(KernelError::NoWeight { offender: None });
+        };
+        Ok(Self {
+            weights,
+            scale,
+            before,
+            last,
+        })
+    }
+
+    /// Number of weights.
+    pub fn len(&self) -> usize {
+        self.weights.len()
+    }
+
+    /// Whether there is no weight; never so.
+    pub fn is_empty(&self) -> bool {
+        self.weights.is_empty()
+    }
+
+    /// The weights in a unit of which [`Self::total`] is the sum.
+    pub fn scaled(&self) -> impl Iterator<Item = f64> {
+        self.weights.iter().map(|weight| weight * self.scale)
+    }
+
+    /// Sum of the scaled weights.
+    pub fn total(&self) -> f64 {
+        self.before.last().copied().unwrap_or(0.0)
+    }
+
+    /// `each(first, shares)` for block after block: `whole · C_s / C`, `C_s` the weight up to and
+    /// including draw `s`. Shares never fall, stay where a weight is 0, and end with `whole`.
+    pub fn shares(&self, whole: f64, mut each: impl FnMut(usize, &[f64])) {
+        let factor = whole / self.total();
+        let mut shares = [0.0; BLOCK];
+        for (block, weights) in self.weights.chunks(BLOCK).enumerate() {
+            let first = block * BLOCK;
+            let shares = &mut shares[..weights.len()];
+            let end = (self.before[block + 1] * factor).min(whole);
+            let mut running = self.before[block];
+            for (share, weight) in shares.iter_mut().zip(weights) {
+                running += weight * self.scale;
+                *share = (running * factor).min(end);
+            }
+            // The end of a block is the start of the next, else a weight of 0 there could gain.
+            let positive = weights.iter().rposition(|&weight| weight > 0.0);
+            shares[positive.unwrap_or(0)..].fill(end);
+            if self.last < first + weights.len() {
+                shares[self.last.saturating_sub(first)..].fill(whole);
+            }
+            each(first, shares);
+        }
+    }
+
+    /// Replaces each of `positions`, the bits of numbers that rise from 0 to `whole`, by the first
+    /// index whose share of `whole` lies above it; by the last index with weight where none does.
+    pub fn merge(&self, positions: &mut [i64], whole: f64) {
+        let mut reached = 0;
+        let mut ahead = positions.first().copied().unwrap_or(0);
+        self.shares(whole, |first, shares| {
+            let mut place = 0;
+            // One step of a merge without a branch: which list is ahead cannot be predicted. Numbers
+            // that are not negative compare as their bits do, which is quicker.
+            while place < shares.len() && reached < positions.len() && first <= self.last {
+                let above = ahead < shares[place].to_bits() as i64;
+                let index = (first + place) as i64;
+                positions[reached] = if above { index } else { ahead };
+                reached += usize::from(above);
+                place += usize::from(!above);
+                ahead = positions.get(reached).copied().unwrap_or(0);
+            }
+        });
+        positions[reached..].fill(self.last as i64);
+    }
+}
+
+/// A power of two near `1/largest`, exact also where that leaves the normal numbers.
+fn unit(largest: f64) -> f64 {
+    let exponent = (largest.to_bits() >> 52) as i64 - 1023;
+    f64::from_bits(((1023 - exponent.clamp(-1000, 1000)) as u64) << 52)
+}
+
+/// Compensated sums of the scaled weights before each block, the total last; and the largest
+/// weight, not scaled.
+fn block_sums(weights: &[f64], scale: f64) -> Result<(Vec<f64>, f64), KernelError> {
+    let mut running = Compensated::default();
+    let mut largest = 0.0;
+    let mut before = Vec::with_capacity(weights.len().div_ceil(BLOCK) + 1);
+    before.push(0.0);
+    for (number, block) in weights.chunks(BLOCK).enumerate() {
+        let found = dispatch(BlockSum { block, scale });
+        let mut most = found.most;
+        if !is_legal(most) || most.is_sign_negative() {
+            if let Some(place) = block.iter().position(|&weight| !is_legal(weight)) {
+                let offender = Some((number * BLOCK + place, block[place]));
+                return Err(KernelError::NoWeight { offender });
+            }
+            // Only a negative zero brings us here.
+            most = block.iter().copied().fold(0.0, f64::max);
+        }
+        largest = most.max(largest);
+        running.add(found.sum);
+        before.push(running.value());
+    }
+    Ok((before, largest))
+}
+
+struct BlockSum<'a> {
+    block: &'a [f64],
+    scale: f64,
+}
+
+struct Found {
+    sum: f64,
+    /// The weight with the largest bits.
+    most: f64,
+}
+
+fn is_legal(weight: f64) -> bool {
+    weight >= 0.0 && weight.is_finite()
+}
+
+impl Work for BlockSum<'_> {
+    type Output = Found;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> Found {
+        let (mut sum, mut most) = ([0.0; 16], [0_u64; 16]);
+        let (chunks, rest) = self.block.as_chunks::<16>();
+        for chunk in chunks {
+            for (sum, weight) in sum.iter_mut().zip(chunk) {
+                *sum += weight * self.scale;
+            }
+        }
+        for chunk in chunks {
+            for (most, weight) in most.iter_mut().zip(chunk) {
+                *most = weight.to_bits().max(*most);
+            }
+        }
+        for ((sum, most), weight) in sum.iter_mut().zip(&mut most).zip(rest) {
+            *sum += weight * self.scale;
+            *most = weight.to_bits().max(*most);
+        }
+        for half in [8, 4, 2, 1] {
+            for lane in 0..half {
+                sum[lane] += sum[lane + half];
+            }
+        }
+        // Bits of numbers that are not negative rise with them; all others lie above.
+        let most = most.iter().copied().fold(0, u64::max);
+        Found {
+            sum: sum[0],
+            most: f64::from_bits(most),
+        }
+    }
+}

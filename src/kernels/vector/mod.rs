@@ -1,0 +1,105 @@
+//! Loops compiled for several instruction sets, the best of which is chosen at run time.
+//!
+//! A loop is written once, as [`Work`]; [`dispatch`] runs the copy that the processor can run. The
+//! copies differ in one thing, whether `a·b + c` is rounded once ([`Fused`]) or twice
+//! ([`Separate`]). All x86-64 processors with AVX2 and all aarch64 ones round once and give the
+//! same bits; only an x86-64 processor without fused multiply-add may differ from them, in the
+//! last bits.
+
+// The one use of `unsafe` in the crate: calling a copy after its instruction set was detected.
+#![allow(unsafe_code)]
+
+pub mod dot;
+pub mod exp;
+pub mod ln;
+
+/// How `a·b + c` is formed.
+pub trait Arithmetic {
+    /// `a·b + c`.
+    fn mul_add(a: f64, b: f64, c: f64) -> f64;
+}
+
+/// One rounding, by an instruction of the processor.
+pub struct Fused;
+
+/// Two roundings; without the instruction a fused operation would be a slow library call.
+pub struct Separate;
+
+impl Arithmetic for Fused {
+    #[inline(always)]
+    fn mul_add(a: f64, b: f64, c: f64) -> f64 {
+        a.mul_add(b, c)
+    }
+}
+
+impl Arithmetic for Separate {
+    #[inline(always)]
+    fn mul_add(a: f64, b: f64, c: f64) -> f64 {
+        a * b + c
+    }
+}
+
+/// A loop over slices. `run` must be `#[inline(always)]`, with everything hot that it calls: only
+/// what is inlined is compiled for the instruction set.
+pub trait Work {
+    /// What the loop returns.
+    type Output;
+
+    /// Runs the loop.
+    fn run<A: Arithmetic>(self) -> Self::Output;
+}
+
+/// Runs `work` with the best instruction set of this processor.
+#[cfg(target_arch = "x86_64")]
+pub fn dispatch<W: Work>(work: W) -> W::Output {
+    let fused = is_x86_feature_detected!("avx2") && is_x86_feature_detected!("fma");
+    if fused && is_x86_feature_detected!("avx512f") && is_x86_feature_detected!("avx512dq") {
+        // SAFETY: the four features that the function is compiled for were found just above.
+        return unsafe { with_avx512(work) };
+    }
+    if fused {
+        // SAFETY: both features that the function is compiled for were found just above.
+        return unsafe { with_avx2(work) };
+    }
+    work.run::<Separate>()
+}
+
+/// Runs `work`; fused multiply-add belongs to every aarch64 processor.
+#[cfg(target_arch = "aarch64")]
+pub fn dispatch<W: Work>(work: W) -> W::Output {
+    work.run::<Fused>()
+}
+
+/// Runs `work` without any assumption on the processor.
+#[cfg(not(any(target_arch = "x86_64", target_arch = "aarch64")))]
+pub fn dispatch<W: Work>(work: W) -> W::Output {
+    work.run::<Separate>()
+}
+
+#[cfg(target_arch = "x86_64")]
+#[target_feature(enable = "avx512f,avx512dq,avx2,fma")]
+fn with_avx512<W: Work>(work: W) -> W::Output {
+    work.run::<Fused>()
+}
+
+#[cfg(target_arch = "x86_64")]
+#[target_feature(enable = "avx2,fma")]
+fn with_avx2<W: Work>(work: W) -> W::Output {
+    work.run::<Fused>()
+}
+
+/// Runs `work` as a processor without AVX2 would, for tests and benchmarks.
+pub fn dispatch_plain<W: Work>(work: W) -> W::Output {
+    work.run::<Separate>()
+}
+
+/// Runs `work` as a processor with AVX2 but without AVX-512 would, for tests and benchmarks;
+/// nothing where there is no AVX2.
+#[cfg(target_arch = "x86_64")]
+pub fn dispatch_avx2<W: Work>(work: W) -> Option<W::Output> {
+    if is_x86_feature_detected!("avx2") && is_x86_feature_detected!("fma") {
+        // SAFETY: both features that the function is compiled for were found just above.
+        return Some(unsafe { with_avx2(work) });
+    }
+    None
+}

@@ -1,0 +1,1 @@
+"""Leaving out: against closed forms, plain twins and refits."""

@@ -1,0 +1,1 @@
+"""Scenario plans and the table that they fill."""
