@@ -5,7 +5,7 @@ PYTHON ?= python3
 VENV ?= .venv
 RUN := $(VENV)/bin/python
 
-.PHONY: help demo test test-python test-rust lint format develop bench
+.PHONY: help demo test test-python test-rust lint format develop bench honesty
 
 help: ## what there is
 	@grep -hE '^[a-z-]+:.*##' $(MAKEFILE_LIST) | sed -E 's/:.*##/:/'
@@ -52,3 +52,7 @@ develop: $(VENV)/bin/pip ## editable install for daily work
 bench: $(VENV)/bin/pip ## speed and memory against plain NumPy/SciPy scripts, verified in the same run
 	$(RUN) -m pip install --quiet --group test ".[all]"
 	env -u OPENBLAS_CORETYPE -u OPENBLAS_L2_SIZE $(RUN) benches/run.py
+
+honesty: $(VENV)/bin/pip ## do error intervals and verdicts hold: a battery of problems with known answers
+	$(RUN) -m pip install --quiet --group test ".[all]"
+	$(RUN) benches/honesty/run.py

@@ -6,6 +6,8 @@
 
 mod kernels {
     mod columns;
+    mod correlation;
+    mod covariance;
     mod densities;
     mod densities_ln;
     mod densities_tails;
@@ -14,15 +16,19 @@ mod kernels {
     mod f_tail;
     mod influence;
     mod interval;
+    mod largest;
     mod log_sum;
     mod long_run;
     mod mean;
     mod ordered;
     mod pareto;
     mod quantile;
+    mod quantile_many;
+    mod reductions;
     mod resample;
     mod signed_tail;
     mod smooth;
     mod special;
     mod support;
+    mod vector;
 }

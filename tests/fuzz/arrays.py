@@ -125,10 +125,14 @@ def bindings(wild: Wild, explorer: Explorer) -> None:
     }
     for name, some in given.items():
         explorer.call(f"_core.{name}", getattr(_core, name), *some, refusals=OF_BINDINGS)
-    # Those that are newer than this list.
-    for name in sorted(set(_core.__all__) - set(given)):
+    newer(of, explorer, set(given))
+
+
+def newer(of: Shapes, explorer: Explorer, known: set[str]) -> None:
+    """The bindings that the list above does not know."""
+    for name in sorted(set(_core.__all__) - known):
         function = getattr(_core, name)
-        some, named = arguments(wild, function, lambda: wild.one((of.matrix, of.draws))())
+        some, named = arguments(of.wild, function, lambda: of.wild.one((of.matrix, of.draws))())
         explorer.call(f"_core.{name} (any)", function, *some, refusals=OF_BINDINGS, **named)
 
 

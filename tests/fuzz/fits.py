@@ -189,13 +189,17 @@ def ask(wild: Wild, explorer: Explorer, scene: Scene, answer: sy.Answer) -> None
         lambda: call("divergence", lambda: answer.divergence),
         lambda: call("verdict", lambda: answer.verdict),
     )
-    result = wild.one(kinds)()
+    ask_further(explorer, wild.one(kinds)(), mass)
+
+
+def ask_further(explorer: Explorer, result: Any, mass: Any) -> None:
+    """What a result itself can be asked."""
     if isinstance(result, sy.Estimate):
-        call("error_interval", result.error_interval, mass)
-        if result.verdict.level is not None and np.shape(result.value):
-            call("verdict[…]", lambda: result.verdict[0])
+        explorer.call("error_interval", result.error_interval, mass)
+        if np.shape(result.value):
+            explorer.call("verdict[…]", lambda: result.verdict[0])
     elif isinstance(result, sy.Table):
-        call("to_csv", result.to_csv)
+        explorer.call("to_csv", result.to_csv)
 
 
 KNOWN = {"check", "reweigh"}

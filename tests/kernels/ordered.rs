@@ -172,3 +172,39 @@ fn long_sums_do_not_drift() {
     // Added one by one, ten million times 0.1 is off by 1.6e-4; here 64 are, and then halves.
     assert!(close(sum_by(10_000_000, |_| 0.1), 1e6, 1e-14));
 }
+
+#[test]
+fn the_caller_is_told_how_far_the_work_is() {
+    let _turn = turn();
+    for count in [1, 3] {
+        set_threads(count).unwrap();
+        let seen = Mutex::new(Vec::new());
+        let told = |done, total| {
+            seen.lock().unwrap().push((done, total));
+            false
+        };
+        let interrupt = Interrupt::telling(&told);
+        map_tasks((0..60).collect(), &interrupt, |_: u64| {
+            std::thread::sleep(Duration::from_millis(5));
+            Ok(())
+        })
+        .unwrap();
+        assert_eq!(interrupt.progress(), (60, 60));
+        let seen = seen.into_inner().unwrap();
+        // 60 tasks of 5 ms on at most 3 threads take 100 ms, and a look is due every 40 ms.
+        assert!(!seen.is_empty(), "{count}");
+        assert!(seen.is_sorted() && seen.iter().all(|&(done, total)| done <= 60 && total == 60));
+    }
+}
+
+#[test]
+fn tasks_may_have_tasks_of_their_own() {
+    let _turn = turn();
+    set_threads(3).unwrap();
+    let never = Interrupt::never();
+    let sums = map_tasks((0..50).collect(), &never, |item: u64| {
+        let parts = map_tasks((0..20).collect(), &never, |part: u64| Ok(item * part))?;
+        Ok(parts.iter().sum::<u64>())
+    });
+    assert_eq!(sums, Ok((0..50).map(|item| 190 * item).collect()));
+}

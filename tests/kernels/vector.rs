@@ -1,0 +1,89 @@
+use _core::kernels::ordered::sum_by;
+use _core::kernels::vector::dot::{dot, lagged};
+use _core::kernels::vector::exp::{ExpSlice, LEAST, MOST, exp_m1, exp_slice};
+use _core::kernels::vector::{Fused, Separate, dispatch_plain};
+use proptest::prelude::*;
+
+use super::support::{Stream, close, fixed};
+
+/// Distance of `a` from `b` in units of the last place of `b`.
+fn ulps(a: f64, b: f64) -> f64 {
+    let unit = f64::from_bits(b.abs().to_bits() + 1) - b.abs();
+    (a - b).abs() / unit
+}
+
+fn grid() -> Vec<f64> {
+    let mut stream = Stream::new(8);
+    let mut x: Vec<f64> = (0..200_000)
+        .map(|_| LEAST + (MOST - LEAST) * stream.uniform())
+        .collect();
+    x.extend((0..100_000).map(|_| 2.0 * stream.uniform() - 1.0));
+    x.extend((1..300).map(|i| 2_f64.powi(-i)));
+    x
+}
+
+#[test]
+fn the_exponential_is_within_two_units_of_the_last_place() {
+    // The standard library's is within 1 unit; ours was measured within 1 of the exact value.
+    for plain in [false, true] {
+        let x = grid();
+        let mut out = x.clone();
+        if plain {
+            dispatch_plain(ExpSlice(&mut out));
+        } else {
+            exp_slice(&mut out);
+        }
+        for (x, found) in x.iter().zip(out) {
+            assert!(ulps(found, x.exp()) <= 2.0, "{plain} {x} {found}");
+        }
+    }
+}
+
+#[test]
+fn one_less_than_the_exponential_keeps_its_digits_near_zero() {
+    for x in grid() {
+        for found in [exp_m1::<Fused>(x), exp_m1::<Separate>(x)] {
+            assert!(ulps(found, x.exp_m1()) <= 4.0, "{x} {found}");
+        }
+    }
+}
+
+#[test]
+fn edges_of_the_exponential_are_defined() {
+    let payload = f64::from_bits(f64::NAN.to_bits() | 0xfff);
+    let mut x = [
+        f64::NEG_INFINITY,
+        -1e5,
+        -709.0,
+        0.0,
+        -0.0,
+        f64::NAN,
+        payload,
+    ];
+    exp_slice(&mut x);
+    assert_eq!(x[..5], [0.0, 0.0, 0.0, 1.0, 1.0]);
+    assert!(x[5].is_nan() && x[6].is_nan());
+}
+
+proptest! {
+    #![proptest_config(fixed(100))]
+
+    // 1e-12: up to 9000 products of either sign, relative to 1 and the sum.
+    #[test]
+    fn sums_of_products_are_those_of_a_plain_loop(seed: u64, length in 0..9000_usize) {
+        let mut stream = Stream::new(seed);
+        let a: Vec<f64> = (0..length).map(|_| stream.normal()).collect();
+        let b: Vec<f64> = (0..length).map(|_| stream.normal()).collect();
+        let twin = sum_by(length, |i| a[i] * b[i]);
+        prop_assert!(close(dot(&a, &b), twin, 1e-12));
+        let lag = length / 3;
+        if length > lag + 4 {
+            let to = length - lag - 3;
+            let found = lagged::<4>(&a, 0, to, lag, 0.5);
+            for (t, found) in found.iter().enumerate() {
+                let twin = sum_by(to, |i| (a[i] - 0.5) * (a[i + lag + t] - 0.5));
+                prop_assert!(close(*found, twin, 1e-12), "{found} {twin}");
+            }
+        }
+    }
+}
