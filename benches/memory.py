@@ -33,8 +33,12 @@ def report(small: bool) -> bool:
     columns = 4000 if small else 20_000
     print(f"\nPeak extra memory over (4000, {columns}); limit {LIMIT} MB")
     good = True
-    for name in ("kernel describe", "kernel tail_shape", "weights.log_sum_exp",
-                 "weights.effective_size"):
+    for name in (
+        "kernel describe",
+        "kernel tail_shape",
+        "weights.log_sum_exp",
+        "weights.effective_size",
+    ):
         for kind in ("float64", "float32"):
             done = subprocess.run(
                 [sys.executable, "-c", WORK, name, str(columns), kind],

@@ -68,8 +68,17 @@ def benchmarks(names: list[str], small: bool) -> int:
 def heading() -> str:
     columns = "{:42} {:26} {:>9} {:>9} {:>9} {:>7} {:>7} {:>7} {:>9} {:>9} {:>9}"
     return columns.format(
-        "kernel", "data", "twin ms", "1 thr.", "2 thr.", "ratio 1", "by best", "ratio 2",
-        "goals", "largest", "allowed",
+        "kernel",
+        "data",
+        "twin ms",
+        "1 thr.",
+        "2 thr.",
+        "ratio 1",
+        "by best",
+        "ratio 2",
+        "goals",
+        "largest",
+        "allowed",
     )
 
 
@@ -84,8 +93,7 @@ def one(case: object, counts: bool) -> bool:
         f"{case.name:42} {case.layout:26} {1e3 * outcome.twin:9.2f} {1e3 * outcome.one:9.2f} "
         f"{1e3 * outcome.two:9.2f} {first:7.1f} {outcome.best_ratio:7.1f} "
         f"{second if counts else float('nan'):7.1f} {goals:>9} {outcome.difference:9.1e} "
-        f"{case.tolerance:9.0e}"
-        + ("" if outcome.verified else f"  DISAGREES ({case.reason})"),
+        f"{case.tolerance:9.0e}" + ("" if outcome.verified else f"  DISAGREES ({case.reason})"),
         flush=True,
     )
     return outcome.verified

@@ -10,6 +10,7 @@ mod kernels {
     mod covariance;
     mod densities;
     mod densities_ln;
+    mod densities_tables;
     mod densities_tails;
     mod effective;
     mod error;

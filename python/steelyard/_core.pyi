@@ -1,5 +1,6 @@
 """Numerical kernels; arrays are aligned float64 of any strides, columns are independent."""
 
+from collections.abc import Callable
 from typing import TypeAlias
 
 import numpy as np
@@ -9,6 +10,7 @@ _Numbers: TypeAlias = npt.NDArray[np.float64] | npt.NDArray[np.float32]
 
 __all__ = [
     "beta_tails",
+    "contributions",
     "describe",
     "digamma",
     "effective_size",
@@ -48,12 +50,15 @@ def normalise(x: _Numbers, out: npt.NDArray[np.float64]) -> npt.NDArray[np.float
 def effective_size(x: _Numbers, entropy: bool) -> npt.NDArray[np.float64]: ...
 def largest_share(x: _Numbers) -> npt.NDArray[np.float64]: ...
 def smooth(
-    x: npt.NDArray[np.float64],
+    x: _Numbers,
     relative_efficiency: npt.NDArray[np.float64],
     out: npt.NDArray[np.float64],
+    progress: Callable[[int, int], object] | None = None,
 ) -> npt.NDArray[np.float64]: ...
 def tail_shape(
-    x: npt.NDArray[np.float64], relative_efficiency: npt.NDArray[np.float64]
+    x: _Numbers,
+    relative_efficiency: npt.NDArray[np.float64],
+    progress: Callable[[int, int], object] | None = None,
 ) -> npt.NDArray[np.float64]: ...
 def signed_tail_shape(
     z: npt.NDArray[np.float64], relative_efficiency: npt.NDArray[np.float64]
@@ -81,7 +86,11 @@ def shortest_interval(
 def resample(
     w: npt.NDArray[np.float64], size: int, method: str, key: bytes
 ) -> npt.NDArray[np.int64]: ...
-def influence(loglik: _Numbers, f: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def influence(
+    loglik: _Numbers,
+    f: npt.NDArray[np.float64],
+    progress: Callable[[int, int], object] | None = None,
+) -> npt.NDArray[np.float64]: ...
 def f_tail(
     f: npt.NDArray[np.float64], first: float, second: npt.NDArray[np.float64]
 ) -> npt.NDArray[np.float64]: ...
@@ -126,3 +135,4 @@ def weighted_moments(
 def weighted_covariance(
     f: npt.NDArray[np.float64], w: npt.NDArray[np.float64]
 ) -> npt.NDArray[np.float64]: ...
+def contributions(z: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...

@@ -6,7 +6,7 @@ use pyo3::prelude::*;
 
 use super::arrays::{Numbers, vector, with_view};
 use super::errors::detached;
-use super::quantile::{column_of, expect_order, given_order};
+use super::quantile::{expect_order, given_order, order_of};
 use crate::kernels::columns::{expect_shape, map_columns_into};
 use crate::kernels::interval;
 
@@ -30,9 +30,8 @@ pub fn shortest_interval<'py>(
         let mut out = Array2::zeros((2, x.ncols()));
         detached(py, |interrupt| {
             map_columns_into(x, out.view_mut(), interrupt, |column, index, target| {
-                let order = order.map(|order| column_of(order, index));
-                let (lower, upper) =
-                    interval::shortest_interval(column, &w, order.as_deref(), mass);
+                let order = order_of(column, order, index, interrupt)?;
+                let (lower, upper) = interval::shortest_interval(column, &w, Some(&order), mass);
                 target.copy_from_slice(&[lower, upper]);
                 Ok(())
             })

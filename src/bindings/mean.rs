@@ -22,6 +22,19 @@ pub fn mean_square<'py>(
     Ok(squares.into_pyarray(py))
 }
 
+/// How many draws carry every column of `z`, `(n, k)`, on its heavier side: `(k,)`.
+#[pyfunction]
+pub fn contributions<'py>(
+    py: Python<'py>,
+    z: PyReadonlyArray2<'py, f64>,
+) -> PyResult<Bound<'py, PyArray1<f64>>> {
+    let z = matrix("z", &z)?;
+    let counts = detached(py, |interrupt| {
+        map_columns(z, interrupt, |column, _| Ok(mean::contributions(column)))
+    })?;
+    Ok(counts.into_pyarray(py))
+}
+
 /// `Σ w f` of every column of `f`, `(n, k)`, with weights `w`, `(n,)`: `(k,)`.
 #[pyfunction]
 pub fn weighted_mean<'py>(

@@ -39,7 +39,9 @@ mod _core {
     #[pymodule_export]
     use super::long_run::long_run_variance;
     #[pymodule_export]
-    use super::mean::{mean_square, weighted_covariance, weighted_mean, weighted_moments};
+    use super::mean::{
+        contributions, mean_square, weighted_covariance, weighted_mean, weighted_moments,
+    };
     #[pymodule_export]
     use super::ordered::{set_threads, threads};
     #[pymodule_export]

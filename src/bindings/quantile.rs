@@ -9,7 +9,7 @@ use super::errors::detached;
 use crate::kernels;
 use crate::kernels::columns::{expect_shape, map_columns, map_columns_into};
 use crate::kernels::error::KernelError;
-use crate::kernels::ordered::map_tasks;
+use crate::kernels::ordered::{Interrupt, map_tasks};
 use crate::kernels::quantile_many::{LANES, Sorted, Weights, quantiles};
 use crate::kernels::sorting;
 
@@ -18,7 +18,9 @@ use crate::kernels::sorting;
 pub fn sort_order<'py>(py: Python<'py>, x: Numbers<'py>) -> PyResult<Bound<'py, PyArray2<i32>>> {
     let out = with_view!("x", x, |x| detached(py, |interrupt| {
         kernels::sorting::expect_countable(x.nrows())?;
-        let orders = map_columns(x, interrupt, |column, _| Ok(sorting::order(column)))?;
+        let orders = map_columns(x, interrupt, |column, _| {
+            sorting::order_unless(column, interrupt)
+        })?;
         Ok(Array2::from_shape_fn(
             (x.ncols(), x.nrows()),
             |(column, place)| orders[column][place] as i32,
@@ -49,8 +51,8 @@ pub fn quantile<'py>(
         detached(py, |interrupt| {
             map_columns_into(x, out.view_mut(), interrupt, |column, index, target| {
                 let levels = probs.column(index).into_iter().copied();
-                let order = order.map(|order| column_of(order, index));
-                kernels::quantile::quantile(column, &w, order.as_deref(), levels, target);
+                let order = order_of(column, order, index, interrupt)?;
+                kernels::quantile::quantile(column, &w, Some(&order), levels, target);
                 Ok(())
             })
         })
@@ -80,7 +82,7 @@ pub fn quantile_many<'py>(
             let sorted = map_columns(x, interrupt, |column, index| {
                 let order = match order {
                     Some(order) => sorting::expect_order(column_of(order, index))?,
-                    None => sorting::order(column),
+                    None => sorting::order_unless(column, interrupt)?,
                 };
                 Ok((column.to_vec(), order))
             })?;
@@ -94,7 +96,7 @@ fn under_each(
     sorted: &[(Vec<f64>, Vec<u32>)],
     w: ArrayView2<'_, f64>,
     probs: &[f64],
-    interrupt: &kernels::ordered::Interrupt<'_>,
+    interrupt: &Interrupt<'_>,
 ) -> Result<Array3<f64>, KernelError> {
     let columns: Vec<Sorted<'_>> = sorted
         .iter()
@@ -137,8 +139,21 @@ pub(super) fn expect_order(
     order.map_or(Ok(()), |order| expect_shape("order", shape, order.shape()))
 }
 
+/// The order given for a column, or the one found.
+pub(super) fn order_of(
+    x: &[f64],
+    order: Option<ArrayView2<'_, i32>>,
+    column: usize,
+    interrupt: &Interrupt<'_>,
+) -> Result<Vec<u32>, KernelError> {
+    match order {
+        Some(order) => Ok(column_of(order, column)),
+        None => sorting::order_unless(x, interrupt),
+    }
+}
+
 /// A negative entry becomes one that no array reaches.
-pub(super) fn column_of(order: ArrayView2<'_, i32>, column: usize) -> Vec<u32> {
+fn column_of(order: ArrayView2<'_, i32>, column: usize) -> Vec<u32> {
     order
         .column(column)
         .iter()

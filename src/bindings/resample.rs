@@ -20,6 +20,8 @@ pub fn resample<'py>(
     let w = vector("w", &w)?;
     let method: kernels::resample::Method = method.parse()?;
     let key = <[u8; 32]>::try_from(key).map_err(|_| KernelError::Key { found: key.len() })?;
-    let chosen = detached(py, |_| kernels::resample::resample(&w, size, method, key))?;
+    let chosen = detached(py, |interrupt| {
+        kernels::resample::resample_unless(&w, size, method, key, interrupt)
+    })?;
     Ok(chosen.into_pyarray(py))
 }

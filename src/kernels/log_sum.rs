@@ -43,6 +43,37 @@ pub fn maximum(x: &[f64]) -> f64 {
     dispatch(Maximum(x))
 }
 
+/// Smallest and largest entry that are numbers; `(+inf, −inf)` without one.
+pub fn range(x: &[f64]) -> (f64, f64) {
+    dispatch(Range(x))
+}
+
+struct Range<'a>(&'a [f64]);
+
+impl Work for Range<'_> {
+    type Output = (f64, f64);
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> (f64, f64) {
+        let (mut low, mut high) = ([f64::INFINITY; 16], [f64::NEG_INFINITY; 16]);
+        let (chunks, rest) = self.0.as_chunks::<16>();
+        for chunk in chunks {
+            for lane in 0..16 {
+                low[lane] = -larger(-chunk[lane], -low[lane]);
+                high[lane] = larger(chunk[lane], high[lane]);
+            }
+        }
+        for (lane, &x) in rest.iter().enumerate() {
+            low[lane] = -larger(-x, -low[lane]);
+            high[lane] = larger(x, high[lane]);
+        }
+        (
+            low.iter().copied().fold(f64::INFINITY, f64::min),
+            high.iter().copied().fold(f64::NEG_INFINITY, f64::max),
+        )
+    }
+}
+
 struct Maximum<'a>(&'a [f64]);
 
 impl Work for Maximum<'_> {

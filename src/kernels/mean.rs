@@ -1,6 +1,7 @@
 //! Weighted means, variances and covariances, and the mean square that serves draws without time
 //! order.
 
+use super::log_sum::range;
 use super::ordered::sum_by;
 use super::vector::{Arithmetic, Work, dispatch};
 
@@ -49,6 +50,53 @@ pub fn mean_square(z: &[f64]) -> f64 {
         return f64::NAN;
     }
     sum_blocks(z, &[], centre, Power::Second) / z.len() as f64
+}
+
+/// `(Σ c²)³ / (Σ c³)²` of the centred series `c = z − z̄`, shape `(n,)`: the number of draws over the
+/// squared skewness, which is how many draws carry the series on its heavier side.
+///
+/// `+inf` for a symmetric or a constant series; no entry, NaN or an infinite entry gives NaN.
+pub fn contributions(z: &[f64]) -> f64 {
+    let centre = mean(z);
+    if !centre.is_finite() {
+        return f64::NAN;
+    }
+    let (low, high) = range(z);
+    let top = (high - centre).max(centre - low);
+    if top == 0.0 {
+        return f64::INFINITY;
+    }
+    // In units of the largest no power overflows, and that of the largest is 1.
+    let blocks = z.len().div_ceil(BLOCK);
+    let (mut squares, mut cubes) = (0.0, 0.0);
+    for block in 0..blocks {
+        let range = block * BLOCK..z.len().min((block + 1) * BLOCK);
+        let found = dispatch(Cubes {
+            z: &z[range],
+            centre,
+            unit: 1.0 / top,
+        });
+        squares += found.0;
+        cubes += found.1;
+    }
+    squares * squares * squares / (cubes * cubes)
+}
+
+struct Cubes<'a> {
+    z: &'a [f64],
+    centre: f64,
+    unit: f64,
+}
+
+impl Work for Cubes<'_> {
+    type Output = (f64, f64);
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> (f64, f64) {
+        let c = |z: f64| (z - self.centre) * self.unit;
+        let squares = lane_sum(self.z, self.z, |z, _| c(z) * c(z));
+        (squares, lane_sum(self.z, self.z, |z, _| c(z) * c(z) * c(z)))
+    }
 }
 
 #[derive(Clone, Copy, PartialEq)]

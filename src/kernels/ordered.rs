@@ -4,24 +4,23 @@
 //! The pool is private to the process, because a pool inherited through `fork` has no threads.
 
 use std::collections::BTreeMap;
-use std::sync::atomic::{AtomicBool, AtomicU64, AtomicUsize, Ordering};
+use std::sync::atomic::{AtomicUsize, Ordering};
 use std::sync::{Arc, Condvar, Mutex, PoisonError, TryLockError};
-use std::thread::{self, ThreadId};
-use std::time::{Duration, Instant};
+use std::thread;
+use std::time::Duration;
 
 use rayon::prelude::*;
 use rayon::{ThreadPool, ThreadPoolBuilder};
 
 use super::error::KernelError;
+pub use super::interrupt::Interrupt;
+use super::interrupt::LOOK_EVERY;
 
 /// Most threads that may be asked for; more would only cost memory.
 pub const MOST_THREADS: usize = 1024;
 
 /// Environment variable that sets the number of threads.
 pub const THREADS_VARIABLE: &str = "STEELYARD_THREADS";
-
-/// Time between two looks at the caller's wish to stop.
-const LOOK_EVERY: Duration = Duration::from_millis(40);
 
 /// Below this length a sum is formed by the plain loop; above, halves are added.
 const SUM_BLOCK: usize = 256;
@@ -66,56 +65,6 @@ fn default_threads() -> usize {
     count.min(MOST_THREADS)
 }
 
-/// The caller's wish to stop, looked up at most every 40 ms and only on the caller's own thread;
-/// other threads see the answer.
-pub struct Interrupt<'a> {
-    wished: &'a (dyn Fn() -> bool + Sync),
-    home: ThreadId,
-    begun: Instant,
-    next_look: AtomicU64,
-    raised: AtomicBool,
-}
-
-impl<'a> Interrupt<'a> {
-    /// A watch on `wished`, which is only ever called on the thread that calls `new`.
-    pub fn new(wished: &'a (dyn Fn() -> bool + Sync)) -> Self {
-        Self {
-            wished,
-            home: thread::current().id(),
-            begun: Instant::now(),
-            next_look: AtomicU64::new(LOOK_EVERY.as_millis() as u64),
-            raised: AtomicBool::new(false),
-        }
-    }
-
-    /// A watch that never stops anything.
-    pub fn never() -> Interrupt<'static> {
-        Interrupt::new(&|| false)
-    }
-
-    /// # Errors
-    /// [`KernelError::Interrupted`] once the caller has asked to stop.
-    pub fn check(&self) -> Result<(), KernelError> {
-        if self.raised.load(Ordering::Relaxed) {
-            return Err(KernelError::Interrupted);
-        }
-        if thread::current().id() != self.home {
-            return Ok(());
-        }
-        let now = self.begun.elapsed().as_millis() as u64;
-        if now < self.next_look.load(Ordering::Relaxed) {
-            return Ok(());
-        }
-        let next = now + LOOK_EVERY.as_millis() as u64;
-        self.next_look.store(next, Ordering::Relaxed);
-        if (self.wished)() {
-            self.raised.store(true, Ordering::Relaxed);
-            return Err(KernelError::Interrupted);
-        }
-        Ok(())
-    }
-}
-
 /// `task(item)` for every item, in the order of the items, on [`threads`] threads.
 ///
 /// # Errors
@@ -130,7 +79,13 @@ where
     T: Send,
     F: Fn(I) -> Result<T, KernelError> + Sync,
 {
-    let guarded = |item| interrupt.check().and_then(|()| task(item));
+    interrupt.total.fetch_add(items.len(), Ordering::Relaxed);
+    let guarded = |item| {
+        interrupt.check()?;
+        let result = task(item);
+        interrupt.done.fetch_add(1, Ordering::Relaxed);
+        result
+    };
     // A task that has tasks of its own runs them itself: were it to wait for them, all threads might.
     let inside = rayon::current_thread_index().is_some();
     let wanted = if inside {

@@ -10,7 +10,8 @@ use super::entry::Entry;
 use super::error::KernelError;
 use super::ordered::{Interrupt, map_tasks};
 use super::vector::{Arithmetic, Work, dispatch};
-use super::weight_sums::{BLOCK, ColumnSums, State, Sums, TileSums};
+use super::weight_sums::{BLOCK, Sums};
+use super::weight_tiles::{ColumnSums, State, TileSums};
 
 /// Fewest columns whose rows are streamed.
 const FEWEST_STREAMED: usize = 32;

@@ -2,24 +2,11 @@
 
 use std::str::FromStr;
 
-use rand::rngs::ChaCha8Rng;
-use rand::{Rng, SeedableRng};
-
 use super::cumulated::Cumulated;
 use super::error::KernelError;
-use super::quantile::Compensated;
-use super::vector::ln::ln;
-use super::vector::{Arithmetic, Work, dispatch};
-
-/// Numbers that are made or worked on together.
-const BLOCK: usize = 256;
-
-/// Added to an integer below it, leaves that integer in the last bits.
-const TWO_52: f64 = 4_503_599_627_370_496.0;
-
-/// Copies of an index that are written whether needed or not: most counts are at most this, and a
-/// loop without a branch is worth the idle copies. Room for them is kept behind the result.
-const COPIES: usize = 4;
+use super::ordered::Interrupt;
+use super::points::{BLOCK, COPIES, Ceilings, Strata, Uniform, reserved, room, sorted_positions};
+use super::vector::dispatch;
 
 /// A way to resample.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -96,11 +83,25 @@ pub fn resample(
     method: Method,
     key: [u8; 32],
 ) -> Result<Vec<i64>, KernelError> {
+    resample_unless(w, size, method, key, &Interrupt::never())
+}
+
+/// As [`resample`], for long vectors.
+///
+/// # Errors
+/// Also [`KernelError::Interrupted`].
+pub fn resample_unless(
+    w: &[f64],
+    size: usize,
+    method: Method,
+    key: [u8; 32],
+    interrupt: &Interrupt<'_>,
+) -> Result<Vec<i64>, KernelError> {
     let weights = Cumulated::new(w)?;
     let mut uniform = Uniform::new(key, method.stream());
     match method {
         Method::Multinomial => {
-            let (mut chosen, whole) = sorted_positions(size, &mut uniform)?;
+            let (mut chosen, whole) = sorted_positions(size, &mut uniform, interrupt)?;
             weights.merge(&mut chosen, whole);
             Ok(chosen)
         }
@@ -120,17 +121,9 @@ pub fn resample(
                 });
             })
         }
-        Method::Residual => residual(&weights, size, &mut uniform),
-        Method::WithoutReplacement => without_replacement(w, size, &mut uniform),
+        Method::Residual => residual(&weights, size, &mut uniform, interrupt),
+        Method::WithoutReplacement => without_replacement(w, size, &mut uniform, interrupt),
     }
-}
-
-/// Room for `size` indices and for those that are written whether needed or not.
-fn room(size: usize) -> Result<Vec<i64>, KernelError> {
-    let entries = size.saturating_add(COPIES);
-    // Asked for first, since a plain allocation that fails ends the process.
-    drop(reserved::<i64>(entries)?);
-    Ok(vec![0; entries])
 }
 
 /// Writes copies of `first`, `first + 1`, … until as many are there in all as the targets say, at
@@ -156,13 +149,6 @@ fn copy_until(
     count
 }
 
-fn reserved<T>(size: usize) -> Result<Vec<T>, KernelError> {
-    let mut room = Vec::new();
-    room.try_reserve_exact(size)
-        .map_err(|_| KernelError::Memory { entries: size })?;
-    Ok(room)
-}
-
 /// Copies each index until as many are there as `reached(shares, targets)` says for its share
 /// `size · C_s / C`, `C_s` the weight up to and including draw `s`. A draw of weight 0 has the
 /// share of the draw before it, so that it adds none; the last share is `size` exactly.
@@ -183,140 +169,11 @@ fn by_position(
     Ok(chosen)
 }
 
-/// `⌈share − offset⌉` of shares from 0 to `2^51`.
-struct Ceilings<'a> {
-    shares: &'a [f64],
-    offset: f64,
-    targets: &'a mut [u64],
-}
-
-impl Work for Ceilings<'_> {
-    type Output = ();
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) {
-        for (target, share) in self.targets.iter_mut().zip(self.shares) {
-            let ceiling = (share - self.offset).ceil() + TWO_52;
-            *target = ceiling.to_bits() & ((1 << 52) - 1);
-        }
-    }
-}
-
-/// The uniform number of every stratum, made in order.
-struct Strata {
-    uniform: Uniform,
-    /// Those of the strata `first..first + numbers.len()`.
-    numbers: Vec<f64>,
-    first: usize,
-    size: usize,
-}
-
-impl Strata {
-    fn new(uniform: Uniform, size: usize) -> Self {
-        Self {
-            uniform,
-            numbers: Vec::new(),
-            first: 0,
-            size,
-        }
-    }
-
-    /// How many strata have their point below each of `shares`, which must not fall.
-    fn reached(&mut self, shares: &[f64], targets: &mut [u64]) {
-        let (Some(&least), Some(&most)) = (shares.first(), shares.last()) else {
-            return;
-        };
-        let passed = (least as usize).min(self.size) - self.first;
-        let known = passed.min(self.numbers.len());
-        self.numbers.drain(..known);
-        for _ in known..passed {
-            self.uniform.next();
-        }
-        self.first += passed;
-        let needed = (most as usize + 1).min(self.size) - self.first;
-        let known = self.numbers.len();
-        if needed > known {
-            self.numbers.resize(needed, 0.0);
-            self.uniform.fill(&mut self.numbers[known..]);
-        }
-        // Beyond the last stratum there is no point.
-        self.numbers.push(f64::INFINITY);
-        let mut rest = [0.0; BLOCK];
-        dispatch(Floors {
-            shares,
-            wholes: targets,
-            rest: &mut rest,
-        });
-        for (target, rest) in targets.iter_mut().zip(rest) {
-            let below = self.numbers[*target as usize - self.first] < rest;
-            *target += u64::from(below);
-        }
-        self.numbers.pop();
-    }
-}
-
-/// `⌊share⌋` and what is left, of shares from 0 to `2^51`.
-struct Floors<'a> {
-    shares: &'a [f64],
-    wholes: &'a mut [u64],
-    rest: &'a mut [f64],
-}
-
-impl Work for Floors<'_> {
-    type Output = ();
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) {
-        for ((share, whole), rest) in self.shares.iter().zip(self.wholes).zip(self.rest) {
-            let floor = share.floor();
-            *whole = (floor + TWO_52).to_bits() & ((1 << 52) - 1);
-            *rest = share - floor;
-        }
-    }
-}
-
-/// The bits of `size` independent uniforms on the interval up to the second value, sorted: partial
-/// sums of exponentials, and the whole sum (Devroye 1986, section V.3.1).
-fn sorted_positions(size: usize, uniform: &mut Uniform) -> Result<(Vec<i64>, f64), KernelError> {
-    let mut sums = room(size)?;
-    let mut numbers = [0.0; BLOCK];
-    let mut before = Compensated::default();
-    for sums in sums[..=size].chunks_mut(BLOCK) {
-        let numbers = &mut numbers[..sums.len()];
-        uniform.fill(numbers);
-        dispatch(Exponentials(numbers));
-        let base = before.value();
-        let mut running = base;
-        for (sum, number) in sums.iter_mut().zip(numbers) {
-            running += *number;
-            *sum = running.to_bits() as i64;
-        }
-        before.add(running - base);
-    }
-    let whole = f64::from_bits(sums[size] as u64);
-    sums.truncate(size);
-    Ok((sums, whole))
-}
-
-/// Uniforms on `[0, 1)` to standard exponentials.
-struct Exponentials<'a>(&'a mut [f64]);
-
-impl Work for Exponentials<'_> {
-    type Output = ();
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) {
-        for number in self.0 {
-            // With 53 bits the difference is exact, and at least 2^-53.
-            *number = -ln::<A>(1.0 - *number);
-        }
-    }
-}
-
 fn residual(
     weights: &Cumulated<'_>,
     size: usize,
     uniform: &mut Uniform,
+    interrupt: &Interrupt<'_>,
 ) -> Result<Vec<i64>, KernelError> {
     let factor = size as f64 / weights.total();
     let mut left = size;
@@ -331,7 +188,7 @@ fn residual(
         rest.push((wanted - certain as f64).max(0.0));
     }
     if left > 0 {
-        let (mut drawn, whole) = sorted_positions(left, uniform)?;
+        let (mut drawn, whole) = sorted_positions(left, uniform, interrupt)?;
         Cumulated::new(&rest)?.merge(&mut drawn, whole);
         for index in drawn {
             counts[index as usize] += 1;
@@ -352,11 +209,13 @@ fn without_replacement(
     weights: &[f64],
     size: usize,
     uniform: &mut Uniform,
+    interrupt: &Interrupt<'_>,
 ) -> Result<Vec<i64>, KernelError> {
     // Every draw uses up one number, whatever its weight: its key then depends on its index alone.
     let mut keyed: Vec<(f64, usize)> = reserved(weights.len())?;
     let mut numbers = [0.0; BLOCK];
     for (block, weights) in weights.chunks(BLOCK).enumerate() {
+        interrupt.check()?;
         let numbers = &mut numbers[..weights.len()];
         uniform.fill(numbers);
         for (place, (number, weight)) in numbers.iter().zip(weights).enumerate() {
@@ -381,25 +240,4 @@ fn without_replacement(
         .collect();
     chosen.sort_unstable();
     Ok(chosen)
-}
-
-/// Numbers uniform on `[0, 1)` with 53 bits.
-struct Uniform(ChaCha8Rng);
-
-impl Uniform {
-    fn new(key: [u8; 32], stream: u64) -> Self {
-        let mut generator = ChaCha8Rng::from_seed(key);
-        generator.set_stream(stream);
-        Self(generator)
-    }
-
-    fn next(&mut self) -> f64 {
-        (self.0.next_u64() >> 11) as f64 * (1.0 / (1_u64 << 53) as f64)
-    }
-
-    fn fill(&mut self, numbers: &mut [f64]) {
-        for number in numbers {
-            *number = self.next();
-        }
-    }
 }

@@ -2,6 +2,7 @@
 //! Programming 3, section 5.2.5).
 
 use super::error::KernelError;
+use super::ordered::Interrupt;
 
 /// Bits of a digit: a table of counters of this size stays in the nearest cache.
 const DIGIT: u32 = 11;
@@ -12,10 +13,20 @@ const DIGITS: usize = 6;
 /// Indices of `x` in ascending order of value; equal values keep their order, `−0` comes before
 /// `+0`, NaN last or, if negative, first.
 pub fn order(x: &[f64]) -> Vec<u32> {
+    // A watch that never stops anything.
+    order_unless(x, &Interrupt::never()).unwrap_or_default()
+}
+
+/// As [`order`], for long columns.
+///
+/// # Errors
+/// [`KernelError::Interrupted`].
+pub fn order_unless(x: &[f64], interrupt: &Interrupt<'_>) -> Result<Vec<u32>, KernelError> {
     let mut keyed: Vec<(u64, u32)> = x.iter().zip(0..).map(|(&x, i)| (rank(x), i)).collect();
     let mut other = vec![(0, 0); keyed.len()];
     let counts = counts(&keyed);
     for (digit, counts) in counts.iter().enumerate() {
+        interrupt.check()?;
         if counts.contains(&keyed.len()) {
             continue;
         }
@@ -32,7 +43,7 @@ pub fn order(x: &[f64]) -> Vec<u32> {
         }
         std::mem::swap(&mut keyed, &mut other);
     }
-    keyed.iter().map(|pair| pair.1).collect()
+    Ok(keyed.iter().map(|pair| pair.1).collect())
 }
 
 fn counts(keyed: &[(u64, u32)]) -> Vec<[usize; 1 << DIGIT]> {

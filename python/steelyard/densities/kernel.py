@@ -20,15 +20,18 @@ def log_density(family: str, x: Array, hyper: tuple[Array, ...]) -> Array:
     Hyperparameters that are one number, or one a row, a column or an entry, reach the kernel
     without being spread out over all entries.
     """
-    shape = np.broadcast_shapes(x.shape, *(h.shape for h in hyper))
+    if all(h.ndim == 0 for h in hyper):
+        shape, laid_out, repeat = x.shape, [h.reshape(1) for h in hyper], 1
+    else:
+        shape = np.broadcast_shapes(x.shape, *(h.shape for h in hyper))
+        first, last = _axes_that_vary(shape, hyper)
+        laid_out = [_over(h, len(shape), first, shape[first:last]) for h in hyper]
+        repeat = math.prod(shape[last:])
     if shape != x.shape:
         x = np.broadcast_to(x, shape)
     flat = np.require(x, np.float64, ["C", "A"]).reshape(-1)
     out = np.empty(flat.shape)
-    first, last = _axes_that_vary(shape, hyper)
-    block = shape[first:last]
-    laid_out = [_over(h, len(shape), first, block) for h in hyper]
-    _core.log_density(family, flat, laid_out, math.prod(shape[last:]), out)
+    _core.log_density(family, flat, laid_out, repeat, out)
     return out.reshape(shape)
 
 
