@@ -5,6 +5,9 @@ State a fit (draws, prior terms, log likelihood), state a change (another prior,
 set), and read an answer with Monte Carlo errors and a verdict on whether it can be trusted.
 """
 
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
 from steelyard import errors, weights
 from steelyard.answers import Answer, Decision, Distance, Estimate, weigh
 from steelyard.base import Draws
@@ -51,21 +54,23 @@ from steelyard.densities import (
     Weibull,
 )
 from steelyard.fit import Fit
-from steelyard.leaving_out import (
-    Calibration,
-    Combination,
-    Contrast,
-    Flip,
-    LeaveOut,
-    LookAhead,
-    by_observation,
-    combine,
-    deletion_mixture,
-)
-from steelyard.planning import Plan, Scenario, read_plan
 from steelyard.table import Table
 from steelyard.threads import threads
 from steelyard.verdicts import Reason, Verdict
+
+if TYPE_CHECKING:
+    from steelyard.leaving_out import (
+        Calibration,
+        Combination,
+        Contrast,
+        Flip,
+        LeaveOut,
+        LookAhead,
+        by_observation,
+        combine,
+        deletion_mixture,
+    )
+    from steelyard.planning import Plan, Scenario, read_plan
 
 __version__ = "0.1.0"
 
@@ -135,3 +140,29 @@ __all__ = [
     "weigh_data",
     "weights",
 ]
+
+# Loaded when they are first asked for, so that an import of the package stays quick.
+_LATER = {
+    "Calibration": "steelyard.leaving_out",
+    "Combination": "steelyard.leaving_out",
+    "Contrast": "steelyard.leaving_out",
+    "Flip": "steelyard.leaving_out",
+    "LeaveOut": "steelyard.leaving_out",
+    "LookAhead": "steelyard.leaving_out",
+    "Plan": "steelyard.planning",
+    "Scenario": "steelyard.planning",
+    "by_observation": "steelyard.leaving_out",
+    "combine": "steelyard.leaving_out",
+    "deletion_mixture": "steelyard.leaving_out",
+    "read_plan": "steelyard.planning",
+}
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _LATER:
+        raise AttributeError(f"module 'steelyard' has no attribute {name!r}")
+    return getattr(import_module(_LATER[name]), name)
+
+
+def __dir__() -> list[str]:
+    return sorted({*globals(), *_LATER})

@@ -9,42 +9,28 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Mapping
 from functools import cached_property
 from html import escape
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from steelyard.answers import Answer, Estimate, base_answer, reweigh
 from steelyard.base import Base, Draws, read_base
 from steelyard.changes import Change
 from steelyard.checking import Findings, check
-from steelyard.leaving_out import (
-    LeaveOut,
-    LookAhead,
-    k_fold,
-    leave_out,
-    look_ahead,
-    sampled_from,
-)
-from steelyard.planning import Triage, triage
-from steelyard.sensitivity import (
-    Bounds,
-    Local,
-    Perturbation,
-    PriorFactors,
-    Pull,
-    Reach,
-    Statements,
-    Sweep,
-    TippingPoint,
-    least_data,
-    least_perturbation,
-    local,
-    prior_factors,
-    pull,
-    resistance,
-    statements,
-    sweep,
-    tipping_point,
-    worst_case,
-)
+
+# Verbs import what they need when they are called: most scripts use few of them.
+if TYPE_CHECKING:
+    from steelyard.leaving_out import LeaveOut, LookAhead
+    from steelyard.planning import Triage
+    from steelyard.sensitivity import (
+        Bounds,
+        Local,
+        Perturbation,
+        PriorFactors,
+        Pull,
+        Reach,
+        Statements,
+        Sweep,
+        TippingPoint,
+    )
 
 __all__ = ["Fit"]
 
@@ -124,6 +110,8 @@ class Fit:
         ordered: bool = True,
         sampled: str = "posterior",
     ) -> None:
+        from steelyard.leaving_out import sampled_from
+
         record = read_base(
             draws,
             prior,
@@ -241,6 +229,8 @@ class Fit:
         .. [1] Gustafson (1996), Annals of Statistics 24; Giordano, Broderick, Jordan (2018),
            JMLR 19.
         """
+        from steelyard.sensitivity import local
+
         return local(self._record, quantities, of)
 
     def pull(self, quantities: Any = None) -> Pull:
@@ -272,6 +262,8 @@ class Fit:
         ----------
         .. [1] Kallioinen, Paananen, Bürkner, Vehtari (2024), Statistics and Computing 34.
         """
+        from steelyard.sensitivity import pull
+
         return pull(self._record, quantities)
 
     def sweep(self, family: Callable[..., Change], grid: Any, quantities: Any = None) -> Sweep:
@@ -305,6 +297,8 @@ class Fit:
         >>> fit.sweep(lambda sd: sy.swap_prior(mu=sy.Normal(0, sd)), [1.5, 2, 3]).trusted.tolist()
         [True, True, True]
         """
+        from steelyard.sensitivity import sweep
+
         return sweep(self._record, family, grid, quantities)
 
     def tipping_point(
@@ -347,6 +341,8 @@ class Fit:
         Root of the smoothed estimate over the same draws; error ``error(P)/|dP/dλ|``; set
         ``{λ: |P(λ) − level| ≤ 1.96 error(P)}``.
         """
+        from steelyard.sensitivity import tipping_point
+
         return tipping_point(self._record, family, event, level, between, start)
 
     def worst_case(
@@ -380,6 +376,8 @@ class Fit:
         .. [1] DeRobertis, Hartigan (1981), Annals of Statistics 9; Csiszár (1975), Annals of
            Probability 3.
         """
+        from steelyard.sensitivity import worst_case
+
         return worst_case(self._record, quantity, divergence=divergence, ratio=ratio)
 
     def least_perturbation(
@@ -412,6 +410,8 @@ class Fit:
         In the posterior ``q ∝ p exp(t f)``; in a prior ``p exp(η m (D − target))``, where m is
         posterior over prior and D the mean of the quantity given the parameter.
         """
+        from steelyard.sensitivity import least_perturbation
+
         return least_perturbation(self._record, quantity, target, prior_of)
 
     def resistance(self, event: Any, level: float) -> Estimate:
@@ -435,6 +435,8 @@ class Fit:
         ArgumentError, ArgumentTypeError, QuantityError
             For a level outside (0, 1), or an event that does not vary.
         """
+        from steelyard.sensitivity import resistance
+
         return resistance(self._record, event, level)
 
     def least_data(self, event: Any, level: float, contrary: Any, *, most: float = 100.0) -> Reach:
@@ -462,6 +464,8 @@ class Fit:
         ArgumentError, ArgumentTypeError, QuantityError
             As for :meth:`tipping_point`.
         """
+        from steelyard.sensitivity import least_data
+
         return least_data(self._record, event, level, contrary, most=most)
 
     def state(self, stated: Mapping[Any, float]) -> Statements:
@@ -491,6 +495,8 @@ class Fit:
         >>> round(fit.reweigh(fit.state({"mu < 1": 0.8}).change).prob("mu < 1").value, 6)
         0.8
         """
+        from steelyard.sensitivity import statements
+
         return statements(self._record, stated)
 
     def bayes_factors(
@@ -518,6 +524,8 @@ class Fit:
         UnknownNameError, ArgumentTypeError
             For a label that is not there, or no priors.
         """
+        from steelyard.sensitivity import prior_factors
+
         return prior_factors(self._record, priors, against)
 
     def triage(
@@ -547,6 +555,8 @@ class Fit:
         ArgumentError, ArgumentTypeError, UnknownNameError, QuantityError
             For scenarios without names, or quantities that are not there.
         """
+        from steelyard.planning import triage
+
         return triage(self._record, scenarios, quantities, event, level)
 
     def leave_out(
@@ -625,6 +635,8 @@ class Fit:
         >>> left.by_group.value.shape, str(left.verdict.level)
         ((40,), 'sound')
         """
+        from steelyard.leaving_out import leave_out
+
         return leave_out(
             self._record,
             groups,
@@ -698,6 +710,8 @@ class Fit:
         >>> fit.k_fold(8, by="order", apart=1).by_group.value.shape
         (8,)
         """
+        from steelyard.leaving_out import k_fold
+
         return k_fold(
             self._record,
             folds,
@@ -772,6 +786,8 @@ class Fit:
         >>> fit.look_ahead(series, from_=30).refit_due
         ()
         """
+        from steelyard.leaving_out import look_ahead
+
         return look_ahead(
             self._record,
             series,
