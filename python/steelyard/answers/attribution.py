@@ -189,8 +189,10 @@ def _start(log_ratio: Array, v: Array) -> tuple[Array, Any]:
 
 def _at(place: float, log_ratio: Array, start: Array, kept: Any) -> Array:
     finite = np.where(kept, log_ratio, 0.0)
-    top = float(finite[kept].max())
-    w = start * np.exp(place * (finite - top))
+    with np.errstate(divide="ignore"):
+        logs = np.log(start) + place * finite
+    # The largest product counts, not the largest ratio: that one's draw may weigh nothing.
+    w = np.exp(logs - logs.max())
     return np.asarray(w / w.sum())
 
 

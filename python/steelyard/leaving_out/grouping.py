@@ -45,7 +45,7 @@ def term_of(base: Base, term: Any) -> LoglikTerm:
                 f"Pass for instance term={pointwise[0].name!r}.",
             )
         term = pointwise[0].name if pointwise else next(iter(terms))
-    if term not in terms:
+    if not isinstance(term, str) or term not in terms:
         raise UnknownNameError(
             "term", "a stated likelihood term", repr(term), close_names(str(term), terms)
         )

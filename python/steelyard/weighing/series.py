@@ -99,7 +99,7 @@ def contributions_of(z: Array, efficiency: Array, draws: Draws, ordered: bool) -
     z = z - z.mean(axis=0)
     top = np.abs(z).max(axis=0)
     z = z / np.where(top > 0, top, 1.0)
-    with np.errstate(invalid="ignore", divide="ignore"):
+    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
         count = (z**2).sum(axis=0) ** 3 / (z**3).sum(axis=0) ** 2
     return np.asarray(np.where(top == 0, np.inf, np.sqrt(efficiency) * count))
 
