@@ -1,4 +1,8 @@
-"""The Answer: everything that the weighted draws say of a target."""
+"""
+The Answer: everything that the weighted draws say of a target.
+
+The file is long because the docstring of every method stands here, where users look for it.
+"""
 
 from __future__ import annotations
 
