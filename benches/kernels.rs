@@ -5,10 +5,10 @@
 use std::hint::black_box;
 
 use _core::kernels::columns::{map_columns, map_columns_into};
-use _core::kernels::covariance::covariance;
 use _core::kernels::influence::influence;
 use _core::kernels::interval::shortest_interval;
 use _core::kernels::long_run::{chains, long_run_variance};
+use _core::kernels::moments::covariance;
 use _core::kernels::ordered::Interrupt;
 use _core::kernels::quantile_many::{LANES, Sorted, Weights, quantiles};
 use _core::kernels::reductions::{column_sums, normalise_columns};

@@ -7,7 +7,6 @@
 mod kernels {
     mod columns;
     mod correlation;
-    mod covariance;
     mod densities;
     mod densities_ln;
     mod densities_tables;
@@ -21,6 +20,7 @@ mod kernels {
     mod log_sum;
     mod long_run;
     mod mean;
+    mod moments;
     mod ordered;
     mod pareto;
     mod quantile;

@@ -31,7 +31,8 @@ pub fn shortest_interval<'py>(
         detached(py, |interrupt| {
             map_columns_into(x, out.view_mut(), interrupt, |column, index, target| {
                 let order = order_of(column, order, index, interrupt)?;
-                let (lower, upper) = interval::shortest_interval(column, &w, Some(&order), mass);
+                let (lower, upper) =
+                    interval::shortest_unless(column, &w, Some(&order), mass, interrupt)?;
                 target.copy_from_slice(&[lower, upper]);
                 Ok(())
             })

@@ -6,8 +6,8 @@ use pyo3::prelude::*;
 
 use super::arrays::{matrix, vector};
 use super::errors::detached;
-use crate::kernels::columns::{expect_shape, map_columns};
-use crate::kernels::{covariance, mean};
+use crate::kernels::columns::map_columns;
+use crate::kernels::{mean, moments};
 
 /// Mean square about the mean of every column of `z`, `(n, k)`: `(k,)`.
 #[pyfunction]
@@ -44,12 +44,7 @@ pub fn weighted_mean<'py>(
 ) -> PyResult<Bound<'py, PyArray1<f64>>> {
     let f = matrix("f", &f)?;
     let w = vector("w", &w)?;
-    expect_shape("w", &[f.nrows()], &[w.len()])?;
-    let means = detached(py, |interrupt| {
-        map_columns(f, interrupt, |column, _| {
-            Ok(mean::weighted_mean(column, &w))
-        })
-    })?;
+    let means = detached(py, |interrupt| moments::weighted_means(f, &w, interrupt))?;
     Ok(means.into_pyarray(py))
 }
 
@@ -62,15 +57,13 @@ pub fn weighted_moments<'py>(
 ) -> PyResult<Bound<'py, PyArray2<f64>>> {
     let f = matrix("f", &f)?;
     let w = vector("w", &w)?;
-    expect_shape("w", &[f.nrows()], &[w.len()])?;
-    let moments = detached(py, |interrupt| {
-        map_columns(f, interrupt, |column, _| {
-            Ok(mean::weighted_moments(column, &w))
-        })
-    })?;
-    let out = Array2::from_shape_fn((2, moments.len()), |(moment, column)| {
-        let (mean, variance) = moments[column];
-        if moment == 0 { mean } else { variance }
+    let (means, squares) = detached(py, |interrupt| moments::weighted_moments(f, &w, interrupt))?;
+    let out = Array2::from_shape_fn((2, means.len()), |(moment, column)| {
+        if moment == 0 {
+            means[column]
+        } else {
+            squares[column]
+        }
     });
     Ok(out.into_pyarray(py))
 }
@@ -84,6 +77,6 @@ pub fn weighted_covariance<'py>(
 ) -> PyResult<Bound<'py, PyArray2<f64>>> {
     let f = matrix("f", &f)?;
     let w = vector("w", &w)?;
-    let out = detached(py, |interrupt| covariance::covariance(f, &w, interrupt))?;
+    let out = detached(py, |interrupt| moments::covariance(f, &w, interrupt))?;
     Ok(out.into_pyarray(py))
 }

@@ -52,8 +52,14 @@ pub fn quantile<'py>(
             map_columns_into(x, out.view_mut(), interrupt, |column, index, target| {
                 let levels = probs.column(index).into_iter().copied();
                 let order = order_of(column, order, index, interrupt)?;
-                kernels::quantile::quantile(column, &w, Some(&order), levels, target);
-                Ok(())
+                kernels::quantile::quantile_unless(
+                    column,
+                    &w,
+                    Some(&order),
+                    levels,
+                    target,
+                    interrupt,
+                )
             })
         })
     })?;

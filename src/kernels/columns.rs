@@ -8,13 +8,15 @@ use ndarray::{ArrayView2, ArrayViewMut1, ArrayViewMut2, Axis};
 
 use super::entry::Entry;
 use super::error::KernelError;
+use super::lease::Lease;
 use super::ordered::{Interrupt, map_tasks, threads};
+use super::vector::stream::{LARGE, copy_past, fence};
 
 /// Most columns gathered together: from 8 to 64 the time per column halves.
 const MOST_COLUMNS: usize = 64;
 
 /// Entries of a cache line; rows and columns of a tile that is turned as a whole.
-const LINE: usize = 8;
+pub(super) const LINE: usize = 8;
 
 /// Most entries of one task's buffer, 32 MiB, unless a single column is longer.
 const BUFFER: usize = 4 << 20;
@@ -68,6 +70,7 @@ where
     F: Fn(&[f64], usize, &mut [f64]) -> Result<T, KernelError> + Sync,
 {
     expect_shape("out", &[out.nrows(), x.ncols()], out.shape())?;
+    let past = out.len() > LARGE;
     let width = block_width(x.dim());
     let blocks: Vec<_> = x
         .axis_chunks_iter(Axis(1), width)
@@ -85,7 +88,7 @@ where
                 kernel(gathered.column(column), index, target)
             })?);
         }
-        staged.finish(interrupt)?;
+        staged.finish(past, interrupt)?;
         Ok(results)
     })?;
     Ok(results.into_iter().flatten().collect())
@@ -116,14 +119,14 @@ fn block_width((rows, columns): (usize, usize)) -> usize {
 
 /// Distance of two columns in a buffer, an odd number of cache lines: columns a power of two apart
 /// would fall into the same few places of a cache.
-fn distance(rows: usize) -> usize {
+pub(super) fn distance(rows: usize) -> usize {
     LINE * (rows.div_ceil(LINE) | 1)
 }
 
 /// The columns of a block, each contiguous.
 enum Gathered<'a> {
     InPlace(Vec<&'a [f64]>),
-    Copied { rows: usize, buffer: Vec<f64> },
+    Copied { rows: usize, buffer: Lease },
 }
 
 impl<'a> Gathered<'a> {
@@ -139,7 +142,7 @@ impl<'a> Gathered<'a> {
         }
         let rows = view.nrows();
         let distance = distance(rows);
-        let mut buffer = vec![0.0; distance * view.ncols()];
+        let mut buffer = Lease::new(distance * view.ncols());
         for (part, strip) in view.axis_chunks_iter(Axis(0), LINE).enumerate() {
             if part.is_multiple_of(ROWS / LINE) {
                 interrupt.check()?;
@@ -158,7 +161,11 @@ impl<'a> Gathered<'a> {
 }
 
 /// At most [`LINE`] rows to columns, whole tiles at a time where rows are contiguous.
-fn gather_strip<E: Entry>(strip: ArrayView2<'_, E>, buffer: &mut [f64], distance: usize) {
+pub(super) fn gather_strip<E: Entry>(
+    strip: ArrayView2<'_, E>,
+    buffer: &mut [f64],
+    distance: usize,
+) {
     let rows: Vec<&[E]> = strip
         .outer_iter()
         .filter_map(|row| row.to_slice())
@@ -194,7 +201,7 @@ fn gather_tiles<E: Entry>(rows: [&[E]; LINE], buffer: &mut [f64], distance: usiz
 /// Columns to be written, through a contiguous buffer where they are not contiguous themselves.
 struct Staged<'a> {
     into: ArrayViewMut2<'a, f64>,
-    buffer: Vec<f64>,
+    buffer: Lease,
 }
 
 impl<'a> Staged<'a> {
@@ -210,7 +217,7 @@ impl<'a> Staged<'a> {
         };
         Self {
             into,
-            buffer: vec![0.0; size],
+            buffer: Lease::new(size),
         }
     }
 
@@ -227,7 +234,7 @@ impl<'a> Staged<'a> {
         }
     }
 
-    fn finish(mut self, interrupt: &Interrupt<'_>) -> Result<(), KernelError> {
+    fn finish(mut self, past: bool, interrupt: &Interrupt<'_>) -> Result<(), KernelError> {
         if self.buffer.is_empty() {
             return Ok(());
         }
@@ -237,19 +244,20 @@ impl<'a> Staged<'a> {
             if part.is_multiple_of(ROWS / LINE) {
                 interrupt.check()?;
             }
-            spread_strip(&self.buffer[part * LINE..], distance, strip);
+            spread_strip(&self.buffer[part * LINE..], distance, strip, past);
         }
+        fence();
         Ok(())
     }
 }
 
 /// Columns to at most [`LINE`] rows, whole tiles at a time where rows are contiguous.
-fn spread_strip(buffer: &[f64], distance: usize, mut strip: ArrayViewMut2<'_, f64>) {
+fn spread_strip(buffer: &[f64], distance: usize, mut strip: ArrayViewMut2<'_, f64>, past: bool) {
     let columns = strip.ncols();
     let rows: Option<Vec<&mut [f64]>> =
         strip.outer_iter_mut().map(|row| row.into_slice()).collect();
     let whole = match rows.map(<[&mut [f64]; LINE]>::try_from) {
-        Some(Ok(rows)) => spread_tiles(buffer, distance, rows),
+        Some(Ok(rows)) => spread_tiles(buffer, distance, rows, past),
         _ => 0,
     };
     for column in whole..columns {
@@ -260,13 +268,24 @@ fn spread_strip(buffer: &[f64], distance: usize, mut strip: ArrayViewMut2<'_, f6
 }
 
 /// The number of columns done.
-fn spread_tiles(buffer: &[f64], distance: usize, rows: [&mut [f64]; LINE]) -> usize {
+fn spread_tiles(buffer: &[f64], distance: usize, rows: [&mut [f64]; LINE], past: bool) -> usize {
     let count = rows[0].len() / LINE * LINE;
-    let mut rows = rows.map(|row| &mut row[..count]);
-    for column in 0..count {
-        if let Some(source) = buffer[column * distance..].first_chunk::<LINE>() {
-            for (row, entry) in rows.iter_mut().zip(source) {
-                row[column] = *entry;
+    let mut rows = rows.map(|row| row[..count].as_chunks_mut::<LINE>().0);
+    for tile in 0..count / LINE {
+        let mut lines = [[0.0; LINE]; LINE];
+        for column in 0..LINE {
+            let start = (tile * LINE + column) * distance;
+            if let Some(source) = buffer[start..].first_chunk::<LINE>() {
+                for (line, entry) in lines.iter_mut().zip(source) {
+                    line[column] = *entry;
+                }
+            }
+        }
+        for (row, line) in rows.iter_mut().zip(&lines) {
+            if past {
+                copy_past(line, &mut row[tile]);
+            } else {
+                row[tile] = *line;
             }
         }
     }

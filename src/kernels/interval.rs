@@ -1,7 +1,8 @@
 //! The shortest interval that holds a given share of the weight.
 
 use super::error::KernelError;
-use super::quantile::Steps;
+use super::ordered::Interrupt;
+use super::quantile::{PART, Steps};
 
 /// Share of the total weight by which an interval may fall short, for the rounding of sums.
 const SLACK: f64 = 1e-12;
@@ -31,14 +32,31 @@ pub fn expect_mass(mass: f64) -> Result<(), KernelError> {
 /// Source: Chen & Shao (1999), Journal of Computational and Graphical Statistics 8, 69-92, whose
 /// interval this is for weighted draws.
 pub fn shortest_interval(x: &[f64], w: &[f64], order: Option<&[u32]>, mass: f64) -> (f64, f64) {
-    let Some(steps) = Steps::new(x, w, order) else {
-        return (f64::NAN, f64::NAN);
+    shortest_unless(x, w, order, mass, &Interrupt::never()).unwrap_or((f64::NAN, f64::NAN))
+}
+
+/// As [`shortest_interval`], for long columns.
+///
+/// # Errors
+/// [`KernelError::Interrupted`].
+pub fn shortest_unless(
+    x: &[f64],
+    w: &[f64],
+    order: Option<&[u32]>,
+    mass: f64,
+    interrupt: &Interrupt<'_>,
+) -> Result<(f64, f64), KernelError> {
+    let Some(steps) = Steps::new(x, w, order, interrupt)? else {
+        return Ok((f64::NAN, f64::NAN));
     };
     let needed = (mass - SLACK) * steps.total();
     let mut best = (f64::NAN, f64::NAN);
     let mut shortest = f64::INFINITY;
     let mut upper = 0;
     for lower in 0..steps.len() {
+        if lower.is_multiple_of(PART) {
+            interrupt.check()?;
+        }
         upper = upper.max(lower);
         while upper < steps.len() && steps.mass(lower, upper) < needed {
             upper += 1;
@@ -54,5 +72,5 @@ pub fn shortest_interval(x: &[f64], w: &[f64], order: Option<&[u32]>, mass: f64)
             best = ends;
         }
     }
-    best
+    Ok(best)
 }

@@ -6,7 +6,7 @@ use super::ordered::sum_by;
 use super::vector::{Arithmetic, Work, dispatch};
 
 /// Draws of a block.
-const BLOCK: usize = 4096;
+pub(super) const BLOCK: usize = 4096;
 
 const LANES: usize = 16;
 
@@ -99,8 +99,9 @@ impl Work for Cubes<'_> {
     }
 }
 
+/// Power of the deviations that are added.
 #[derive(Clone, Copy, PartialEq)]
-enum Power {
+pub(super) enum Power {
     First,
     Second,
 }
@@ -110,12 +111,17 @@ fn sum_blocks(f: &[f64], w: &[f64], centre: f64, power: Power) -> f64 {
     let blocks = f.len().div_ceil(BLOCK);
     sum_by(blocks, |block| {
         let range = block * BLOCK..f.len().min((block + 1) * BLOCK);
-        dispatch(BlockSum {
-            f: &f[range.clone()],
-            w: w.get(range),
-            centre,
-            power,
-        })
+        block_sum(&f[range.clone()], w.get(range), centre, power)
+    })
+}
+
+/// [`sum_blocks`] of at most [`BLOCK`] draws.
+pub(super) fn block_sum(f: &[f64], w: Option<&[f64]>, centre: f64, power: Power) -> f64 {
+    dispatch(BlockSum {
+        f,
+        w,
+        centre,
+        power,
     })
 }
 

@@ -5,7 +5,6 @@
 
 pub mod columns;
 pub mod correlation;
-pub mod covariance;
 pub mod cumulated;
 pub mod densities;
 pub mod effective;
@@ -16,10 +15,12 @@ pub mod influence;
 pub mod interrupt;
 pub mod interval;
 pub mod largest;
+pub mod lease;
 pub mod log_sum;
 pub mod long_run;
 pub mod mean;
 pub mod mean_logs;
+pub mod moments;
 pub mod ordered;
 pub mod pareto;
 pub mod points;

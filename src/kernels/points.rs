@@ -17,7 +17,7 @@ const TWO_52: f64 = 4_503_599_627_370_496.0;
 
 /// Copies of an index that are written whether needed or not: most counts are at most this, and a
 /// loop without a branch is worth the idle copies. Room for them is kept behind the result.
-pub(super) const COPIES: usize = 4;
+pub const COPIES: usize = 4;
 
 /// `⌈share − offset⌉` of shares from 0 to `2^51`.
 pub(super) struct Ceilings<'a> {
@@ -111,14 +111,15 @@ impl Work for Floors<'_> {
     }
 }
 
-/// The bits of `size` independent uniforms on the interval up to the second value, sorted: partial
-/// sums of exponentials, and the whole sum (Devroye 1986, section V.3.1).
+/// Writes the bits of `size` independent uniforms on the interval up to the value returned, sorted,
+/// to the front of `sums`, which is longer: partial sums of exponentials, and the whole sum (Devroye
+/// 1986, section V.3.1).
 pub(super) fn sorted_positions(
+    sums: &mut [i64],
     size: usize,
     uniform: &mut Uniform,
     interrupt: &Interrupt<'_>,
-) -> Result<(Vec<i64>, f64), KernelError> {
-    let mut sums = room(size)?;
+) -> Result<f64, KernelError> {
     let mut numbers = [0.0; BLOCK];
     let mut before = Compensated::default();
     for sums in sums[..=size].chunks_mut(BLOCK) {
@@ -134,9 +135,7 @@ pub(super) fn sorted_positions(
         }
         before.add(running - base);
     }
-    let whole = f64::from_bits(sums[size] as u64);
-    sums.truncate(size);
-    Ok((sums, whole))
+    Ok(f64::from_bits(sums[size] as u64))
 }
 
 /// Uniforms on `[0, 1)` to standard exponentials.

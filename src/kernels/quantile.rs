@@ -1,7 +1,11 @@
 //! The weighted empirical distribution, and its quantiles.
 
-use super::ordered::sum_by;
+use super::error::KernelError;
+use super::ordered::{Interrupt, sum_by};
 use super::sorting;
+
+/// Draws between two looks at the caller's wish to stop.
+pub(super) const PART: usize = 65_536;
 
 /// Quantiles at `probs`, shape `(m,)`, of the draws `x` with weights `w`, both of shape `(n,)`,
 /// written into `out`, shape `(m,)`. Weights are on the natural scale, not necessarily normalised.
@@ -23,7 +27,23 @@ pub fn quantile(
     probs: impl Iterator<Item = f64>,
     out: &mut [f64],
 ) {
-    match Steps::new(x, w, order) {
+    // A watch that never stops anything.
+    let _ = quantile_unless(x, w, order, probs, out, &Interrupt::never());
+}
+
+/// As [`quantile`], for long columns.
+///
+/// # Errors
+/// [`KernelError::Interrupted`].
+pub fn quantile_unless(
+    x: &[f64],
+    w: &[f64],
+    order: Option<&[u32]>,
+    probs: impl Iterator<Item = f64>,
+    out: &mut [f64],
+    interrupt: &Interrupt<'_>,
+) -> Result<(), KernelError> {
+    match Steps::new(x, w, order, interrupt)? {
         None => out.fill(f64::NAN),
         Some(steps) => {
             for (target, prob) in out.iter_mut().zip(probs) {
@@ -31,6 +51,7 @@ pub fn quantile(
             }
         }
     }
+    Ok(())
 }
 
 /// A weighted empirical distribution: distinct values in ascending order, with the weight up to
@@ -44,41 +65,55 @@ pub(super) struct Steps {
 impl Steps {
     /// Nothing when a draw that counts is NaN, when a weight is negative or not finite, when no
     /// weight is positive, or when `order` leads outside.
-    pub(super) fn new(x: &[f64], w: &[f64], order: Option<&[u32]>) -> Option<Self> {
+    pub(super) fn new(
+        x: &[f64],
+        w: &[f64],
+        order: Option<&[u32]>,
+        interrupt: &Interrupt<'_>,
+    ) -> Result<Option<Self>, KernelError> {
         let found;
         let order = match order {
             Some(order) => order,
             None => {
-                found = sorting::order(x);
+                found = sorting::order_unless(x, interrupt)?;
                 &found
             }
         };
         let mut draws: Vec<(f64, f64)> = Vec::with_capacity(x.len());
-        for &index in order {
-            let (&value, &weight) = (x.get(index as usize)?, w.get(index as usize)?);
-            if !(weight >= 0.0 && weight.is_finite()) || (weight > 0.0 && value.is_nan()) {
-                return None;
-            }
-            if weight > 0.0 {
-                draws.push((value, weight));
+        for part in order.chunks(PART) {
+            interrupt.check()?;
+            for &index in part {
+                let pair = (x.get(index as usize), w.get(index as usize));
+                let (Some(&value), Some(&weight)) = pair else {
+                    return Ok(None);
+                };
+                if !(weight >= 0.0 && weight.is_finite()) || (weight > 0.0 && value.is_nan()) {
+                    return Ok(None);
+                }
+                if weight > 0.0 {
+                    draws.push((value, weight));
+                }
             }
         }
-        let steps = Self::merged(&draws);
+        let steps = Self::merged(&draws, interrupt)?;
         let total = steps.total();
-        (total > 0.0 && total.is_finite()).then_some(steps)
+        Ok((total > 0.0 && total.is_finite()).then_some(steps))
     }
 
-    fn merged(draws: &[(f64, f64)]) -> Self {
+    fn merged(draws: &[(f64, f64)], interrupt: &Interrupt<'_>) -> Result<Self, KernelError> {
         let mut values = Vec::with_capacity(draws.len());
         let mut cumulated = Vec::with_capacity(draws.len() + 1);
         let mut below = Compensated::default();
         cumulated.push(0.0);
         for tied in draws.chunk_by(|a, b| a.0 == b.0) {
+            if values.len().is_multiple_of(PART) {
+                interrupt.check()?;
+            }
             values.push(tied[0].0);
             below.add(sum_by(tied.len(), |i| tied[i].1));
             cumulated.push(below.value());
         }
-        Self { values, cumulated }
+        Ok(Self { values, cumulated })
     }
 
     pub(super) fn len(&self) -> usize {

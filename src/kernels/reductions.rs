@@ -9,6 +9,7 @@ use super::columns::expect_shape;
 use super::entry::Entry;
 use super::error::KernelError;
 use super::ordered::{Interrupt, map_tasks};
+use super::vector::stream::{LARGE, copy_past, fence};
 use super::vector::{Arithmetic, Work, dispatch};
 use super::weight_sums::{BLOCK, Sums};
 use super::weight_tiles::{ColumnSums, State, TileSums};
@@ -21,6 +22,9 @@ const STREAMED: usize = 2560;
 
 /// Entries of a task that reads columns.
 const TASK: usize = 65_536;
+
+/// Entries of a row that are written at a time.
+const PIECE: usize = 512;
 
 /// Columns gathered at a time.
 const GATHERED: usize = 8;
@@ -83,6 +87,7 @@ pub fn normalise_columns<E: Entry>(
     let sums = column_sums::<E, { super::weight_sums::form::TOTAL }>(x, interrupt)?;
     let offsets: Vec<(f64, f64)> = sums.iter().map(Sums::offsets).collect();
     let width = task_width(x);
+    let past = out.len() > LARGE;
     let blocks = x.nrows().div_ceil(BLOCK);
     let tasks: Vec<_> = tiles(x, width)
         .into_iter()
@@ -91,7 +96,7 @@ pub fn normalise_columns<E: Entry>(
         .map(|(task, (view, into))| (view, into, &offsets[task / blocks * width..]))
         .collect();
     map_tasks(tasks, interrupt, |(view, into, offsets)| {
-        write_block(view, into, offsets);
+        write_block(view, into, offsets, past);
         Ok(())
     })?;
     Ok(sums.iter().map(Sums::log_sum).collect())
@@ -202,19 +207,16 @@ fn write_block<E: Entry>(
     x: ArrayView2<'_, E>,
     mut out: ArrayViewMut2<'_, f64>,
     offsets: &[(f64, f64)],
+    past: bool,
 ) {
     if is_streamed(x) && is_streamed(out.view()) {
         let (maxima, logs): (Vec<f64>, Vec<f64>) = offsets[..x.ncols()].iter().copied().unzip();
         for (x, mut out) in x.rows().into_iter().zip(out.rows_mut()) {
             if let (Some(x), Some(out)) = (x.to_slice(), out.as_slice_mut()) {
-                dispatch(WriteRow {
-                    x,
-                    maxima: &maxima,
-                    logs: &logs,
-                    out,
-                });
+                write_row(x, &maxima, &logs, out, past);
             }
         }
+        fence();
         return;
     }
     let columns = x.columns().into_iter().zip(out.columns_mut());
@@ -231,6 +233,27 @@ fn write_block<E: Entry>(
                     *target = (entry.wide() - maximum) - log_total;
                 }
             }
+        }
+    }
+}
+
+/// One row, in pieces that stay in the nearest cache; `past` the caches where the result is large.
+fn write_row<E: Entry>(x: &[E], maxima: &[f64], logs: &[f64], out: &mut [f64], past: bool) {
+    let mut buffer = [0.0; PIECE];
+    for (piece, into) in out.chunks_mut(PIECE).enumerate() {
+        let range = piece * PIECE..piece * PIECE + into.len();
+        let staged = &mut buffer[..into.len()];
+        let row = |out| WriteRow {
+            x: &x[range.clone()],
+            maxima: &maxima[range.clone()],
+            logs: &logs[range],
+            out,
+        };
+        if past {
+            dispatch(row(staged));
+            copy_past(staged, into);
+        } else {
+            dispatch(row(into));
         }
     }
 }

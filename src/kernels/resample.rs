@@ -2,10 +2,12 @@
 
 use std::str::FromStr;
 
+use super::columns::expect_shape;
 use super::cumulated::Cumulated;
 use super::error::KernelError;
 use super::ordered::Interrupt;
 use super::points::{BLOCK, COPIES, Ceilings, Strata, Uniform, reserved, room, sorted_positions};
+use super::quantile::PART;
 use super::vector::dispatch;
 
 /// A way to resample.
@@ -83,47 +85,68 @@ pub fn resample(
     method: Method,
     key: [u8; 32],
 ) -> Result<Vec<i64>, KernelError> {
-    resample_unless(w, size, method, key, &Interrupt::never())
+    let mut chosen = room(size)?;
+    resample_into(w, &mut chosen, method, key, &Interrupt::never())?;
+    chosen.truncate(size);
+    Ok(chosen)
 }
 
-/// As [`resample`], for long vectors.
+/// # Errors
+/// Those of [`resample`] that can be known beforehand.
+pub fn expect_room(w: &[f64], size: usize, method: Method) -> Result<(), KernelError> {
+    if method == Method::WithoutReplacement {
+        let positive = w.iter().filter(|&&weight| weight > 0.0).count();
+        if size > positive {
+            Cumulated::new(w)?;
+            return Err(KernelError::TooFewPositive { size, positive });
+        }
+    }
+    drop(reserved::<i64>(size.saturating_add(COPIES))?);
+    Ok(())
+}
+
+/// As [`resample`], into the first `size` of `chosen`, which must hold [`COPIES`] more.
 ///
 /// # Errors
-/// Also [`KernelError::Interrupted`].
-pub fn resample_unless(
+/// Also [`KernelError::Interrupted`], and [`KernelError::Shape`] where `chosen` has another length.
+pub fn resample_into(
     w: &[f64],
-    size: usize,
+    chosen: &mut [i64],
     method: Method,
     key: [u8; 32],
     interrupt: &Interrupt<'_>,
-) -> Result<Vec<i64>, KernelError> {
+) -> Result<(), KernelError> {
+    let size = chosen.len().saturating_sub(COPIES);
+    expect_shape("chosen", &[size + COPIES], &[chosen.len()])?;
     let weights = Cumulated::new(w)?;
     let mut uniform = Uniform::new(key, method.stream());
     match method {
         Method::Multinomial => {
-            let (mut chosen, whole) = sorted_positions(size, &mut uniform, interrupt)?;
-            weights.merge(&mut chosen, whole);
-            Ok(chosen)
+            let whole = sorted_positions(chosen, size, &mut uniform, interrupt)?;
+            weights.merge(&mut chosen[..size], whole);
         }
         Method::Stratified => {
             let mut strata = Strata::new(uniform, size);
-            by_position(&weights, size, |shares, targets| {
+            by_position(&weights, size, chosen, |shares, targets| {
                 strata.reached(shares, targets);
-            })
+            });
         }
         Method::Systematic => {
             let offset = uniform.next();
-            by_position(&weights, size, |shares, targets| {
+            by_position(&weights, size, chosen, |shares, targets| {
                 dispatch(Ceilings {
                     shares,
                     offset,
                     targets,
                 });
-            })
+            });
         }
-        Method::Residual => residual(&weights, size, &mut uniform, interrupt),
-        Method::WithoutReplacement => without_replacement(w, size, &mut uniform, interrupt),
+        Method::Residual => residual(&weights, size, chosen, &mut uniform, interrupt)?,
+        Method::WithoutReplacement => {
+            without_replacement(w, &mut chosen[..size], &mut uniform, interrupt)?;
+        }
     }
+    Ok(())
 }
 
 /// Writes copies of `first`, `first + 1`, … until as many are there in all as the targets say, at
@@ -155,31 +178,33 @@ fn copy_until(
 fn by_position(
     weights: &Cumulated<'_>,
     size: usize,
+    chosen: &mut [i64],
     mut reached: impl FnMut(&[f64], &mut [u64]),
-) -> Result<Vec<i64>, KernelError> {
-    let mut chosen = room(size)?;
+) {
     let mut targets = [0; BLOCK];
     let mut count = 0;
     weights.shares(size as f64, |first, shares| {
         let targets = &mut targets[..shares.len()];
         reached(shares, targets);
-        count = copy_until(targets, first, &mut chosen, count, size);
+        count = copy_until(targets, first, chosen, count, size);
     });
-    chosen.truncate(size);
-    Ok(chosen)
 }
 
 fn residual(
     weights: &Cumulated<'_>,
     size: usize,
+    chosen: &mut [i64],
     uniform: &mut Uniform,
     interrupt: &Interrupt<'_>,
-) -> Result<Vec<i64>, KernelError> {
+) -> Result<(), KernelError> {
     let factor = size as f64 / weights.total();
     let mut left = size;
     let mut counts: Vec<u64> = reserved(weights.len())?;
     let mut rest: Vec<f64> = reserved(weights.len())?;
-    for weight in weights.scaled() {
+    for (index, weight) in weights.scaled().enumerate() {
+        if index.is_multiple_of(PART) {
+            interrupt.check()?;
+        }
         let wanted = factor * weight;
         // A count that is whole but for rounding is whole: the sum of all stays at most `size`.
         let certain = (wanted * (1.0 + 4.0 * f64::EPSILON)) as usize;
@@ -188,29 +213,30 @@ fn residual(
         rest.push((wanted - certain as f64).max(0.0));
     }
     if left > 0 {
-        let (mut drawn, whole) = sorted_positions(left, uniform, interrupt)?;
-        Cumulated::new(&rest)?.merge(&mut drawn, whole);
-        for index in drawn {
-            counts[index as usize] += 1;
+        let whole = sorted_positions(chosen, left, uniform, interrupt)?;
+        interrupt.check()?;
+        Cumulated::new(&rest)?.merge(&mut chosen[..left], whole);
+        for index in &chosen[..left] {
+            counts[*index as usize] += 1;
         }
     }
+    interrupt.check()?;
     let mut target = 0;
     for count in &mut counts {
         target += *count;
         *count = target;
     }
-    let mut chosen = room(size)?;
-    copy_until(&counts, 0, &mut chosen, 0, size);
-    chosen.truncate(size);
-    Ok(chosen)
+    copy_until(&counts, 0, chosen, 0, size);
+    Ok(())
 }
 
 fn without_replacement(
     weights: &[f64],
-    size: usize,
+    chosen: &mut [i64],
     uniform: &mut Uniform,
     interrupt: &Interrupt<'_>,
-) -> Result<Vec<i64>, KernelError> {
+) -> Result<(), KernelError> {
+    let size = chosen.len();
     // Every draw uses up one number, whatever its weight: its key then depends on its index alone.
     let mut keyed: Vec<(f64, usize)> = reserved(weights.len())?;
     let mut numbers = [0.0; BLOCK];
@@ -234,10 +260,9 @@ fn without_replacement(
     if size > 0 && size < keyed.len() {
         keyed.select_nth_unstable_by(size - 1, |a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1)));
     }
-    let mut chosen: Vec<i64> = keyed[..size]
-        .iter()
-        .map(|&(_, index)| index as i64)
-        .collect();
+    for (target, (_, index)) in chosen.iter_mut().zip(&keyed) {
+        *target = *index as i64;
+    }
     chosen.sort_unstable();
-    Ok(chosen)
+    Ok(())
 }

@@ -138,3 +138,23 @@ fn the_error_of_the_first_column_that_fails_is_reported() {
     });
     assert_eq!(refused, Err(KernelError::Memory { entries: 30 }));
 }
+
+#[test]
+fn large_outputs_are_written_where_they_belong() {
+    // More than 2^20 entries go past the caches; odd widths lie on other boundaries.
+    for (rows, columns) in [(4099, 257), (1030, 1024)] {
+        let x = sample(rows, columns);
+        let mut out = Array2::zeros((rows, columns));
+        map_columns_into(
+            x.view(),
+            out.view_mut(),
+            &Interrupt::never(),
+            |column, _, out| {
+                out.copy_from_slice(column);
+                Ok(())
+            },
+        )
+        .unwrap();
+        assert_eq!(out, x);
+    }
+}

@@ -1,6 +1,7 @@
 use _core::kernels::ordered::sum_by;
 use _core::kernels::vector::dot::{dot, lagged};
 use _core::kernels::vector::exp::{ExpSlice, LEAST, MOST, exp_m1, exp_slice};
+use _core::kernels::vector::stream::{copy_past, fence};
 use _core::kernels::vector::{Fused, Separate, dispatch_plain};
 use proptest::prelude::*;
 
@@ -24,7 +25,7 @@ fn grid() -> Vec<f64> {
 
 #[test]
 fn the_exponential_is_within_two_units_of_the_last_place() {
-    // The standard library's is within 1 unit; ours was measured within 1 of the exact value.
+    // The standard library's is within 1 unit; ours was measured within 1.06 of the exact value.
     for plain in [false, true] {
         let x = grid();
         let mut out = x.clone();
@@ -84,6 +85,25 @@ proptest! {
                 let twin = sum_by(to, |i| (a[i] - 0.5) * (a[i + lag + t] - 0.5));
                 prop_assert!(close(*found, twin, 1e-12), "{found} {twin}");
             }
+        }
+    }
+}
+
+#[test]
+fn stores_past_the_cache_write_what_they_should_on_any_boundary() {
+    let from: Vec<f64> = (0..100).map(f64::from).collect();
+    for start in 0..3 {
+        for length in [0, 1, 2, 7, 64] {
+            let mut to = vec![-1.0; 100];
+            copy_past(&from[..length], &mut to[start..start + length]);
+            fence();
+            assert_eq!(to[start..start + length], from[..length]);
+            assert!(
+                to[..start]
+                    .iter()
+                    .chain(&to[start + length..])
+                    .all(|&x| x == -1.0)
+            );
         }
     }
 }

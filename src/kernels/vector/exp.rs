@@ -3,8 +3,8 @@
 //! `x = k log 2 + r`, `|r| ≤ ½ log 2`, and `exp x = 2^k (1 + r + r² q(r))`; the polynomial `q` of
 //! degree 9 is interpolated at Chebyshev nodes, relative error of the exponential `2^−55.8`.
 //!
-//! Error against 60-digit arithmetic, a million points from −708 to 709: at most 0.97 ulp with
-//! fused multiply-add, 1.2 ulp without; `expm1` at most 1.9 ulp.
+//! Error against the 80-bit exponential, 1.1 million points from −708 to 709 and around 0: at most
+//! 1.06 ulp; `exp_m1` at most 2.4 ulp.
 
 use super::{Arithmetic, Work, dispatch};
 

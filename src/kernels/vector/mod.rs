@@ -6,12 +6,14 @@
 //! same bits; only an x86-64 processor without fused multiply-add may differ from them, in the
 //! last bits.
 
-// The one use of `unsafe` in the crate: calling a copy after its instruction set was detected.
+// The uses of `unsafe` in the crate: calling a copy after its instruction set was detected, and the
+// stores of `stream`.
 #![allow(unsafe_code)]
 
 pub mod dot;
 pub mod exp;
 pub mod ln;
+pub mod stream;
 
 /// How `a·b + c` is formed.
 pub trait Arithmetic {

@@ -1,7 +1,7 @@
-use _core::kernels::covariance::covariance;
 use _core::kernels::mean::{contributions, weighted_mean, weighted_moments};
+use _core::kernels::moments::{self, covariance, weighted_means};
 use _core::kernels::ordered::Interrupt;
-use ndarray::Array2;
+use ndarray::{Array2, ShapeBuilder};
 use proptest::prelude::*;
 
 use super::support::{Stream, close, fixed, weighted};
@@ -70,4 +70,28 @@ fn edges_of_the_contributions_are_defined() {
     let mut z = [0.0; 5];
     z[2] = 1e300;
     assert!(close(contributions(&z), 5.0 * 4.0 / 9.0, 1e-12));
+}
+
+#[test]
+fn moments_of_columns_have_the_bits_of_each_column() {
+    // Lengths and widths around those of blocks, lines and groups of columns.
+    for (rows, columns) in [(0, 3), (5, 1), (4096, 2), (4100, 66), (9001, 3)] {
+        let mut stream = Stream::new(13);
+        let f = Array2::from_shape_simple_fn((rows, columns), || stream.normal());
+        let w: Vec<f64> = (0..rows)
+            .map(|s| if s % 5 == 0 { 0.0 } else { stream.uniform() })
+            .collect();
+        let mut fortran = Array2::zeros((rows, columns).f());
+        fortran.assign(&f);
+        let never = Interrupt::never();
+        for f in [f.view(), fortran.view()] {
+            let means = weighted_means(f, &w, &never).unwrap();
+            let both = moments::weighted_moments(f, &w, &never).unwrap();
+            assert_eq!(both.0, means);
+            for (index, column) in f.columns().into_iter().enumerate() {
+                let expected = weighted_moments(&column.to_vec(), &w);
+                assert_eq!((means[index], both.1[index]), expected, "{rows} {columns}");
+            }
+        }
+    }
 }
