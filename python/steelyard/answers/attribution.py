@@ -25,6 +25,7 @@ from steelyard.table import Table
 from steelyard.weighing.series import (
     chains_p_value,
     contributions_of,
+    in_unit,
     relative_efficiency,
     standard_error,
     tail_of,
@@ -152,7 +153,7 @@ def _along_the_path(
     Draws that the change rules out leave the path at its start; what that moves is a row of its
     own. The influence of a covariance is ``w ((f − μ)(Δ − δ) − Cov)``.
     """
-    count, f = scale.count, quantity.columns
+    count, (f, unit) = scale.count, in_unit(quantity.columns)
     v = scale.base_weights.linear
     start, kept = _start(log_ratio, v)
     nodes, shares = np.polynomial.legendre.leggauss(_NODES)
@@ -172,13 +173,14 @@ def _along_the_path(
         before, after = _core.weighted_mean(f, v), _core.weighted_mean(f, start)
         values = np.concatenate([values, (after - before)[None]])
         rows.append(count * (start[:, None] * (f - after) - v[:, None] * (f - before)))
-    series = [_series(scale, row, f) for row in rows]
+    series = [_series(scale, row, f).times(unit) for row in rows]
     w = scale.weights.linear
     whole = w[:, None] * (f - _core.weighted_mean(f, w)) - v[:, None] * (
         f - _core.weighted_mean(f, v)
     )
     left = np.ascontiguousarray(count * whole - np.sum(rows, axis=0))
-    return values, series, standard_error(left, scale.base.draws, scale.base.ordered)
+    unsure = standard_error(left, scale.base.draws, scale.base.ordered)
+    return values * unit, series, unsure * unit
 
 
 def _start(log_ratio: Array, v: Array) -> tuple[Array, Any]:

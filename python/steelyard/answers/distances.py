@@ -15,6 +15,7 @@ from steelyard.answers.estimating import Scale, column_blocks, finish, joined, s
 from steelyard.answers.quantities import Quantity
 from steelyard.arrays import Frozen
 from steelyard.base.draws import Array
+from steelyard.weighing.series import in_unit
 
 __all__ = ["Distance", "distance_of", "divergence_of"]
 
@@ -99,6 +100,8 @@ def _estimate(
     values, ends = np.empty(width), np.empty(width)
     parts = []
     for part, f in column_blocks(quantity.columns):
+        # None of these distances depends on the unit.
+        f, _ = in_unit(f)
         rows = [work(scale, _marginal(scale, f[:, column])) for column in range(f.shape[1])]
         values[part], ends[part] = [row[0] for row in rows], [row[2] for row in rows]
         psi1, psi0 = (np.stack([row[1][which] for row in rows], axis=1) for which in (0, 1))

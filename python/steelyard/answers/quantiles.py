@@ -18,6 +18,7 @@ from steelyard.answers.probabilities import draws_within
 from steelyard.answers.quantities import Quantity
 from steelyard.base.draws import Array
 from steelyard.verdicts import judge
+from steelyard.weighing.series import in_unit
 
 __all__ = ["ENDS", "quantile_of", "quantile_pair", "shortest_of"]
 
@@ -82,7 +83,8 @@ def draws_beyond(
 
 
 def quantile_pair(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Array]:
-    """One quantile of each column of `f`: its value, its series, the variance of its influence."""
+    """One quantile of each column of `f`: its value, its series, the sd of its influence."""
+    f, unit = in_unit(f)
     w = scale.weights.linear
     width = f.shape[1]
     q = _core.quantile(f, w, np.full((1, width), p))[0]
@@ -96,10 +98,10 @@ def quantile_pair(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Arra
     error = np.where(reached, (at[1] - at[0]) / 2, math.inf)
     constant = (f == f[:1]).all(axis=0)
     error = np.where(constant, 0.0, error)
-    with np.errstate(invalid="ignore", divide="ignore"):
+    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
         # Effective draws are those of the distribution function at the quantile.
-        variance = np.where(series.error > 0, p * (1 - p) / series.error**2 * error**2, 0.0)
-    return q, replace(series, error=error), variance
+        spread = np.where(series.error > 0, math.sqrt(p * (1 - p)) * (error / series.error), 0.0)
+    return q * unit, replace(series, error=error).times(unit), spread * unit
 
 
 def shortest_of(scale: Scale, quantity: Quantity, mass: float) -> Estimate:
@@ -112,8 +114,9 @@ def shortest_of(scale: Scale, quantity: Quantity, mass: float) -> Estimate:
     columns = quantity.columns
     ends, errors = np.empty((2, columns.shape[1])), np.empty((2, columns.shape[1]))
     for part, f in column_blocks(columns):
-        ends[:, part] = _core.shortest_interval(f, w, mass)
-        errors[:, part] = _bootstrap(scale, f, mass)
+        f, unit = in_unit(f)
+        ends[:, part] = _core.shortest_interval(f, w, mass) * unit
+        errors[:, part] = _bootstrap(scale, f, mass) * unit
     parts = []
     beyond = np.empty_like(ends)
     for side, end in enumerate(ends):

@@ -23,6 +23,7 @@ from steelyard.densities import Distribution
 from steelyard.errors import ArgumentError, PriorError
 from steelyard.sensitivity.sweep import asked_for
 from steelyard.table import Table
+from steelyard.weighing.series import in_unit
 
 __all__ = ["Local", "local"]
 
@@ -107,7 +108,8 @@ def local(base: Base, quantities: Any = None, of: str = "mean") -> Local:
     elements = tuple(n for label, q in asked.items() for n in element_names(label, q))
     columns = np.concatenate([q.columns for q in asked.values()], axis=1)
     scale = base_answer(base)._scale
-    influence, unit = _influence(scale, np.ascontiguousarray(columns), of)
+    columns, power = in_unit(np.ascontiguousarray(columns))
+    influence, unit = _influence(scale, columns, of)
     skipped: dict[str, str] = {}
     raw: dict[str, ReadOnly[Estimate]] = {}
     standard: dict[str, ReadOnly[Estimate]] = {}
@@ -119,7 +121,7 @@ def local(base: Base, quantities: Any = None, of: str = "mean") -> Local:
         resolved: Any = term.resolved(base.draws).density
         estimates = {n: _covariance(scale, influence, s, elements) for n, s in found.items()}
         step = {n: _step(resolved, n, s.shape[1:]) for n, s in found.items()}
-        raw[label] = ReadOnly(estimates)
+        raw[label] = ReadOnly({n: _times(e, power) for n, e in estimates.items()})
         steps[label] = ReadOnly(step)
         standard[label] = ReadOnly(
             {n: _times(e, step[n][..., None] / unit) for n, e in estimates.items()}
@@ -204,7 +206,7 @@ def _covariance(
         psi = product - value
         values.append(value)
         series.append(study(scale, psi))
-        spreads.append(_core.weighted_mean(psi**2, w))
+        spreads.append(np.sqrt(_core.weighted_mean(psi**2, w)))
     whole = Quantity(
         "derivative",
         np.broadcast_to(0.0, (scale.count, width)),

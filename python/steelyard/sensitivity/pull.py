@@ -27,6 +27,7 @@ from steelyard.table import Table
 from steelyard.weighing.series import (
     chains_p_value,
     contributions_of,
+    in_unit,
     relative_efficiency,
     standard_error,
     tail_of,
@@ -121,7 +122,9 @@ def pull(base: Base, quantities: Any = None) -> Pull:
         )
     asked = asked_for(quantities, base)
     elements = tuple(n for label, q in asked.items() for n in element_names(label, q))
-    columns = np.ascontiguousarray(np.concatenate([q.columns for q in asked.values()], axis=1))
+    # A pull does not depend on the unit of its quantity.
+    columns, _ = in_unit(np.concatenate([q.columns for q in asked.values()], axis=1))
+    columns = np.ascontiguousarray(columns)
     wholes: dict[str, tuple[Estimate, Array]] = {}
     terms: dict[str, Estimate] = {}
     for side, stated in (("prior", base.prior), ("likelihood", base.loglik)):
