@@ -14,7 +14,7 @@ from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, Series, finish
 from steelyard.answers.quantities import Quantity
 from steelyard.answers.shifts import shift_of
-from steelyard.arrays import Frozen, ReadOnly, plain_array
+from steelyard.arrays import Frozen, ReadOnly, in_unit, plain_array
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.base.names import close_names
@@ -25,7 +25,6 @@ from steelyard.table import Table
 from steelyard.weighing.series import (
     chains_p_value,
     contributions_of,
-    in_unit,
     relative_efficiency,
     standard_error,
     tail_of,
@@ -221,8 +220,12 @@ def _grouped(parts: Mapping[str, Array], groups: Any) -> dict[str, Array]:
     out: dict[str, Array] = {}
     used: dict[str, str] = {}
     for label, members in groups.items():
+        if not isinstance(members, str | list | tuple | set | frozenset):
+            raise ArgumentTypeError(
+                f"groups[{label!r}]", "a list of terms", type(members).__name__, "Name the terms."
+            )
         for member in [members] if isinstance(members, str) else members:
-            if member not in parts:
+            if not isinstance(member, str) or member not in parts:
                 raise UnknownNameError(
                     f"groups[{label!r}]",
                     "terms that the change alters",

@@ -12,9 +12,9 @@ from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, Series, finish, joined, study
 from steelyard.answers.quantities import Quantity
 from steelyard.answers.tabulate import element_names
+from steelyard.arrays import in_unit
 from steelyard.base.draws import Array
 from steelyard.errors import QuantityError
-from steelyard.weighing.series import in_unit
 
 __all__ = ["covariance_of"]
 

@@ -13,9 +13,9 @@ from steelyard import _core
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, column_blocks, finish, joined, study_pair
 from steelyard.answers.quantities import Quantity
-from steelyard.arrays import Frozen
+from steelyard.arrays import Frozen, in_unit
 from steelyard.base.draws import Array
-from steelyard.weighing.series import in_unit
+from steelyard.verdicts import judge
 
 __all__ = ["Distance", "distance_of", "divergence_of"]
 
@@ -175,8 +175,8 @@ def divergence_of(scale: Scale) -> Estimate:
     """
     Kullback–Leibler divergence of the target from the base, ``Σ w log(w/v)``.
 
-    Influence ``w (ℓ − E ℓ − 1) + v`` with ℓ the log of w/v. The estimate cannot exceed the log of
-    the number of draws.
+    Influence ``w (ℓ − E ℓ − 1) + v`` with ℓ the log of w/v. From equal base weights the estimate
+    cannot exceed the log of the number of draws; from others it can, and means nothing there.
     """
     w = scale.weights.linear
     with np.errstate(invalid="ignore"):
@@ -185,4 +185,6 @@ def divergence_of(scale: Scale) -> Estimate:
     ones = np.ones((scale.count, 1))
     series = study_pair(scale, (ratio - value - 1)[:, None], -ones)
     whole = Quantity("divergence of target from base", ones[:, 0])
-    return finish(scale, whole, np.array([value]), series, None)
+    share = np.array([max(value, 0.0) / math.log(scale.count)])
+    extra = (judge("saturated_divergence", share),)
+    return finish(scale, whole, np.array([value]), series, None, extra=extra)

@@ -13,6 +13,7 @@ import numpy.typing as npt
 from steelyard import _core
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.quantities import Quantity
+from steelyard.arrays import in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.verdicts import Finding, Verdict, judge
@@ -20,7 +21,6 @@ from steelyard.weighing.series import (
     chains_p_value,
     contributions_of,
     degrees_of,
-    in_unit,
     relative_efficiency,
     standard_error,
     tail_of,

@@ -13,10 +13,11 @@ from steelyard.answers.estimate import Decision, Estimate
 from steelyard.answers.estimating import Scale, Series, column_blocks, finish, joined, study
 from steelyard.answers.quantities import Quantity
 from steelyard.answers.student import student_cdf
+from steelyard.arrays import in_unit
 from steelyard.base.draws import Array
 from steelyard.errors import ArgumentError
 from steelyard.verdicts import Finding, judge
-from steelyard.weighing.series import in_unit, relative_efficiency
+from steelyard.weighing.series import relative_efficiency
 
 __all__ = ["draws_within", "event_findings", "probability_of"]
 

@@ -22,11 +22,11 @@ from steelyard.answers.estimating import (
 )
 from steelyard.answers.probabilities import draws_either_side, event_findings
 from steelyard.answers.quantities import Quantity
+from steelyard.arrays import in_unit
 from steelyard.base.draws import Array
 from steelyard.changes import Target
 from steelyard.errors import ArgumentError, PriorError
 from steelyard.verdicts import judge
-from steelyard.weighing.series import in_unit
 
 __all__ = ["log_evidence_ratio_of", "shift_of"]
 
@@ -40,11 +40,8 @@ def shift_of(scale: Scale, quantity: Quantity, of: Any) -> Estimate:
     value, spread = np.empty(columns.shape[1]), np.empty(columns.shape[1])
     parts = []
     for part, f in column_blocks(columns):
-        f, unit = in_unit(f)
-        moved, series, within = work(scale, f)
-        with np.errstate(over="ignore"):
-            value[part], spread[part] = moved * unit, within * unit
-        parts.append(series.times(unit))
+        value[part], series, spread[part] = work(scale, f)
+        parts.append(series)
     series = joined(parts)
     if not quantity.is_event:
         reach = judge("quantile_reach", np.zeros(len(value)), spoken=np.isinf(series.error))
@@ -86,20 +83,28 @@ def _pair(scale: Scale, psi1: Array, psi0: Array) -> tuple[Series, Array]:
 
 
 def _mean_shift(scale: Scale, f: Array) -> tuple[Array, Series, Array]:
+    f, unit = in_unit(f)
     one, _ = moments(scale, f)
     zero, _ = moments(scale, f, scale.base_weights.linear)
     series, spread = _pair(scale, f - one, f - zero)
-    return one - zero, series, spread
+    return _times(one - zero, unit), series.times(unit), _times(spread, unit)
 
 
 def _sd_shift(scale: Scale, f: Array) -> tuple[Array, Series, Array]:
     def psi(mean: Array, sd: Array) -> Array:
         return ((f - mean) ** 2 - sd**2) / np.where(sd > 0, 2 * sd, 1.0)
 
+    f, unit = in_unit(f)
     one = moments(scale, f)
     zero = moments(scale, f, scale.base_weights.linear)
     series, spread = _pair(scale, psi(*one), psi(*zero))
-    return one[1] - zero[1], series, spread
+    return _times(one[1] - zero[1], unit), series.times(unit), _times(spread, unit)
+
+
+def _times(values: Array, unit: Array) -> Array:
+    """Values in the quantity's own unit; the difference of two huge ones may be +inf."""
+    with np.errstate(over="ignore"):
+        return np.asarray(values * unit)
 
 
 def _quantile_shift(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Array]:
@@ -109,7 +114,7 @@ def _quantile_shift(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Ar
     The density is the slope of the quantile function between p ± the error of the distribution
     function there, at least two draws apart. Where that leaves (0, 1) the error is +inf.
     """
-    ends, influences = [], []
+    ends, slopes, influences = [], [], []
     reached = np.ones(f.shape[1], dtype=np.bool_)
     for weights in (scale.weights, scale.base_weights):
         w = weights.linear
@@ -121,11 +126,16 @@ def _quantile_shift(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Ar
         probs = np.clip(np.stack([p - half, p + half]), 0.0, 1.0)
         low, high = _core.quantile(f, w, probs)
         ends.append(q)
-        influences.append(-(high - low) / (probs[1] - probs[0]) * psi)
-    series, spread = _pair(scale, influences[0], influences[1])
+        with np.errstate(over="ignore"):
+            slopes.append((high / 2 - low / 2) / ((probs[1] - probs[0]) / 2))
+        influences.append(-psi)
+    both, unit = in_unit(np.stack(slopes))
+    series, spread = _pair(scale, both[0] * influences[0], both[1] * influences[1])
     constant = (f == f[:1]).all(axis=0)
-    error = np.where(reached | constant, series.error, math.inf)
-    return ends[0] - ends[1], replace(series, error=error), spread
+    error = np.where(reached | constant, series.times(unit).error, math.inf)
+    with np.errstate(over="ignore"):
+        moved = ends[0] - ends[1]
+    return moved, replace(series, error=error), _times(spread, unit)
 
 
 def log_evidence_ratio_of(scale: Scale, target: Target | None) -> Estimate:

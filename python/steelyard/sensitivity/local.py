@@ -15,7 +15,7 @@ from steelyard.answers.estimating import Scale, finish, joined, moments, study
 from steelyard.answers.quantities import Quantity
 from steelyard.answers.reweigh import base_answer
 from steelyard.answers.tabulate import element_names
-from steelyard.arrays import Frozen, ReadOnly
+from steelyard.arrays import Frozen, ReadOnly, in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.base.priors import PriorTerm, stated_prior
@@ -23,7 +23,6 @@ from steelyard.densities import Distribution
 from steelyard.errors import ArgumentError, PriorError
 from steelyard.sensitivity.sweep import asked_for
 from steelyard.table import Table
-from steelyard.weighing.series import in_unit
 
 __all__ = ["Local", "local"]
 
@@ -101,7 +100,7 @@ class Local(Frozen):
 
 def local(base: Base, quantities: Any = None, of: str = "mean") -> Local:
     """Derivatives of quantities in every hyperparameter; see ``Fit.local``."""
-    if of not in ("mean", "sd"):
+    if not isinstance(of, str) or of not in ("mean", "sd"):
         raise ArgumentError("of", "'mean' or 'sd'", repr(of), "Choose one of them.")
     stated = stated_prior(base.prior, "local")
     asked = asked_for(quantities, base)

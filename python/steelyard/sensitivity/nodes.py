@@ -13,6 +13,7 @@ import numpy as np
 from steelyard import _core
 from steelyard.answers.estimating import Series
 from steelyard.answers.reweigh import _unknown_supports
+from steelyard.arrays import in_unit
 from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.changes import Target
@@ -22,7 +23,6 @@ from steelyard.weighing.series import (
     _welch,
     chains_p_value,
     contributions_of,
-    in_unit,
     relative_efficiency,
     standard_error,
     tail_of,

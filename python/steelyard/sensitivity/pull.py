@@ -17,7 +17,7 @@ from steelyard.answers.estimating import Scale, Series, finish
 from steelyard.answers.quantities import Quantity
 from steelyard.answers.reweigh import base_answer, reweigh
 from steelyard.answers.tabulate import element_names
-from steelyard.arrays import Frozen, ReadOnly
+from steelyard.arrays import Frozen, ReadOnly, in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.changes import Change, power
@@ -27,7 +27,6 @@ from steelyard.table import Table
 from steelyard.weighing.series import (
     chains_p_value,
     contributions_of,
-    in_unit,
     relative_efficiency,
     standard_error,
     tail_of,

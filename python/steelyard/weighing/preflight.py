@@ -9,6 +9,7 @@ from typing import Any
 
 import numpy as np
 
+from steelyard.arrays import in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.changes.merging import PriorTarget
@@ -17,7 +18,7 @@ from steelyard.changes.target import Target
 from steelyard.densities import Distribution, Normal
 from steelyard.densities.tails import Tail
 from steelyard.verdicts import Finding, judge
-from steelyard.weighing.series import in_unit, relative_efficiency
+from steelyard.weighing.series import relative_efficiency
 from steelyard.weighing.supports import support_findings
 from steelyard.weighing.weigh import base_weights
 

@@ -15,7 +15,6 @@ __all__ = [
     "chains_p_value",
     "contributions_of",
     "degrees_of",
-    "in_unit",
     "long_run_variance",
     "relative_efficiency",
     "standard_error",
@@ -35,18 +34,6 @@ _DRAWS_A_DEGREE = 40.0
 
 # From this many chains on, chains taken as independent units estimate a variance well enough.
 _MANY_CHAINS = 20
-
-
-def in_unit(f: Array) -> tuple[Array, Array]:
-    """
-    Columns in a unit in which fourth powers neither overflow nor vanish, and that unit.
-
-    The unit is 1 but for columns beyond 1e±60, and a power of two, so that nothing is rounded.
-    """
-    top = np.maximum(f.max(axis=0), -f.min(axis=0))
-    _, exponent = np.frexp(np.where(top > 0, top, 1.0))
-    unit = np.where(np.abs(exponent) > 200, np.ldexp(1.0, exponent - 1), 1.0)
-    return (f / unit if (unit != 1).any() else f), unit
 
 
 def long_run_variance(z: Array, draws: Draws, ordered: bool) -> Array:
