@@ -11,8 +11,9 @@ import numpy.typing as npt
 
 from steelyard.errors import ArgumentTypeError, ShapeError
 
-__all__ = ["Frozen", "ReadOnly", "frozen", "plain_array"]
+__all__ = ["Frozen", "ReadOnly", "frozen", "in_unit", "plain_array"]
 
+Floats = npt.NDArray[np.float64]
 Value = TypeVar("Value")
 
 # Device types of the DLPack standard whose memory the CPU may read: the CPU's own, and what CUDA
@@ -95,6 +96,18 @@ def frozen(values: npt.NDArray[Any]) -> npt.NDArray[Any]:
     view = values.view()
     view.flags.writeable = False
     return view
+
+
+def in_unit(f: Floats) -> tuple[Floats, Floats]:
+    """
+    Columns in a unit in which fourth powers neither overflow nor vanish, and that unit.
+
+    The unit is 1 but for columns beyond 1e±60, and a power of two, so that nothing is rounded.
+    """
+    top = np.maximum(f.max(axis=0), -f.min(axis=0))
+    _, exponent = np.frexp(np.where(top > 0, top, 1.0))
+    unit = np.where(np.abs(exponent) > 200, np.ldexp(1.0, exponent - 1), 1.0)
+    return (f / unit if (unit != 1).any() else f), unit
 
 
 class Frozen:

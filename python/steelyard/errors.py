@@ -59,14 +59,20 @@ class SteelyardError(Exception):
     """
 
     def __init__(self, argument: str, expected: str, came: str, next_step: str) -> None:
-        super().__init__(argument, expected, came, next_step)
-        self.argument = argument
-        self.expected = expected
-        self.came = came
-        self.next_step = next_step
+        parts = [_readable(part) for part in (argument, expected, came, next_step)]
+        super().__init__(*parts)
+        self.argument, self.expected, self.came, self.next_step = parts
 
     def __str__(self) -> str:
         return f"{self.argument}: expected {self.expected}; got {self.came}. {self.next_step}"
+
+
+# Longer parts of a message are cut: what came may be an array of a million numbers.
+_LONGEST = 300
+
+
+def _readable(part: str) -> str:
+    return part if len(part) <= _LONGEST else f"{part[:_LONGEST]}… ({len(part)} characters)"
 
 
 class DrawsError(SteelyardError, ValueError):

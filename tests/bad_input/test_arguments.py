@@ -15,7 +15,9 @@ from steelyard.errors import (
     ArgumentTypeError,
     RatioError,
     ShapeError,
+    SteelyardError,
     TruthValueError,
+    UnknownNameError,
 )
 
 from .telling import refused
@@ -217,3 +219,42 @@ def test_a_level_compares_with_the_three_names_only(fit: sy.Fit, other: Any) -> 
     if isinstance(other, str):
         refused(lambda: level == other, ArgumentError, "level", repr(other))
         refused(lambda: level != other, ArgumentError, "level", repr(other))
+
+
+def test_a_message_cuts_what_nobody_would_read(fit: sy.Fit) -> None:
+    many = np.arange(900.0)
+    for ask in (
+        lambda: fit.base.interval("mu", many),
+        lambda: fit.resistance("mu > 0", level=many),
+        lambda: fit.worst_case("mu", divergence=many),
+        lambda: fit.state(many),  # type: ignore[arg-type]
+    ):
+        with pytest.raises(SteelyardError) as caught:
+            ask()
+        assert "characters)" in str(caught.value)
+        assert len(str(caught.value)) < 1000
+
+
+@pytest.mark.parametrize("groups", [{"a": 1.0}, {"a": [["likelihood: A"]]}, {"a": None}], ids=repr)
+def test_groups_of_an_attribution_are_lists_of_terms(fit: sy.Fit, groups: Any) -> None:
+    answer = fit.reweigh(sy.power(likelihood=0.9))
+    with pytest.raises(SteelyardError) as caught:
+        answer.attribute("mu", groups=groups)
+    assert caught.value.argument == "groups['a']"
+
+
+def test_arrays_where_a_choice_or_a_plan_belongs_are_refused(fit: sy.Fit) -> None:
+    two = np.array([1.0, 2.0])
+    refused(lambda: fit.local("mu", of=two), ArgumentError, "of")  # type: ignore[arg-type]
+    refused(lambda: fit.triage(np.array(1.0)), ArgumentTypeError, "scenarios")
+    refused(lambda: fit.k_fold([[0, 1], [2]], by=two), ArgumentError, "by")  # type: ignore[arg-type]
+    refused(lambda: fit.least_perturbation("mu", 0.1, prior_of=two), UnknownNameError, "prior_of")
+
+
+@pytest.mark.parametrize(
+    "sd",
+    [lambda draws: 0.5, lambda draws: [[1.0], [1.0, 2.0]], [[1.0], [1.0, 2.0]]],
+    ids=["one number", "ragged rows from a callable", "ragged rows"],
+)
+def test_the_noise_of_a_term_has_a_shape(fit: sy.Fit, sd: Any) -> None:
+    refused(lambda: fit.reweigh(sy.raise_noise("gauge A", 1.2, sd=sd)), ShapeError, "sd")

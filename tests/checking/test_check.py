@@ -111,3 +111,24 @@ def test_findings_are_a_sequence_that_prints_and_tabulates() -> None:
     assert str(findings).count("\n") == 7
     assert "nothing found" in repr(findings)
     assert "<li>" in findings._repr_html_()
+
+
+@pytest.mark.parametrize("size", [1e-200, 1e-160, 1e160, 1e200, 1e300])
+def test_a_check_of_huge_or_tiny_numbers_ends_without_a_warning(size: float) -> None:
+    x = np.random.default_rng(5).normal(size=(4, 100))
+    draws = {"tau": np.abs(x), "mu": size * x}
+    draws["rate"] = draws["mu"] + np.abs(x) * x[::-1]
+    prior = {"mu": sy.Normal(0, size), "tau": sy.HalfNormal(1), "rate": sy.Normal("mu", "tau")}
+    loglik = -size * np.abs(x)[..., None]
+    found = sy.Fit(draws, prior, loglik=loglik, stored_log_density=size * x).check()
+    assert {finding.status for finding in found} <= {"found", "nothing found", "not testable"}
+    same = sy.Fit({"mu": size * x}).check()
+    plain = sy.Fit({"mu": x}).check()
+    assert [str(f) for f in same] == [str(f) for f in plain]
+
+
+def test_a_parameter_that_stands_still_at_first_leaves_the_constant_untested() -> None:
+    x = np.random.default_rng(6).normal(size=(4, 100))
+    x[:, :25] = 0.5
+    fit = sy.Fit({"mu": x}, {"mu": sy.Normal(0, 1)}, loglik=-(x[..., None] ** 2))
+    assert _statuses(fit)["prior and likelihood together"] == "not testable"

@@ -85,6 +85,7 @@ def test_the_environment_variable_changes_nothing_but_the_threads(plain: str, th
     assert _run(code, STEELYARD_THREADS=threads).split() == [threads, plain]
 
 
+@pytest.mark.skipif(not hasattr(os, "fork"), reason="no fork on Windows")
 def test_a_forked_child_gives_the_same_bits_and_does_not_hang(plain: str) -> None:
     # The parent has used its pool of threads before it forks, and uses it again afterwards.
     code = """

@@ -21,8 +21,10 @@ def _cases(file_name: str) -> dict[str, dict[str, Any]]:
 def case(identifier: str) -> dict[str, Any]:
     """The reference case with this identifier, ``"P1.2b"`` for instance."""
     family = int(identifier[1:].split(".")[0])
-    (path,) = _FOLDER.glob(f"family_{family:02d}_*.json")
-    return _cases(path.name)[identifier]
+    for path in sorted(_FOLDER.glob(f"*family_{family:02d}*.json")):
+        if identifier in _cases(path.name):
+            return _cases(path.name)[identifier]
+    raise KeyError(identifier)
 
 
 def value(entry: dict[str, Any]) -> Any:

@@ -171,6 +171,27 @@ def test_the_tail_shape_of_fresh_draws_is_distributed_as_in_the_reference_simula
     assert abs(np.std(shapes, ddof=1) / spread - 1) < 5 * several / math.sqrt(2)
 
 
+@pytest.mark.parametrize("shape", reference.case("P4.8")["inputs"]["k"])
+def test_the_fit_to_a_hundred_exceedances_has_the_bias_and_error_of_the_reference(
+    shape: float,
+) -> None:
+    # Seed 408; 2,000 repetitions against the 4,000 of the reference, whose tolerances are five of
+    # its simulation errors: with half as many here, the errors of both add up to sqrt(3) of it.
+    case = reference.case("P4.8")
+    count, several = case["inputs"]["n"], math.sqrt(3)
+    expected = case["expected"][f"k={shape}"]
+    rng = np.random.default_rng(408)
+    fits = np.array(
+        [_fit(stats.genpareto.rvs(shape, size=count, random_state=rng)) for _ in range(2000)]
+    )
+    off = fits[:, 0] - shape
+    bias, error = expected["bias_k"], expected["rmse_k"]
+    assert abs(off.mean() - bias["value"]) < several * bias["atol"]
+    assert abs(math.sqrt((off**2).mean()) / error["value"] - 1) < several * error["rtol"]
+    scale = expected["bias_sigma"]
+    assert abs(fits[:, 1].mean() - 1 - scale["value"]) < several * scale["atol"]
+
+
 # Exact tail indices (P4.9): draws from so far out in the tail that the limit has set in.
 
 _FAR = 20_000

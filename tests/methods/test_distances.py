@@ -92,6 +92,18 @@ def test_the_divergence_is_the_mean_log_weight_ratio() -> None:
     assert answer.divergence.value == pytest.approx(np.sum(w * np.log(400 * w)), abs=1e-12)
 
 
+def test_a_divergence_beyond_the_log_of_the_number_of_draws_is_not_measured() -> None:
+    # Weighted draws, back to equal weights: half of them counted for nothing in the base.
+    x = np.random.default_rng(SEED).normal(size=(4, 50))
+    logs = np.where(x > 0, 1000.0, 0.0)
+    fit = sy.Fit({"mu": x}, log_weights=logs)
+    divergence = fit.reweigh(sy.log_ratio(-logs)).divergence
+    assert divergence.value > np.log(200)
+    assert divergence.verdict.level == "refit"
+    assert divergence.verdict.reasons[0].code == "saturated_divergence"
+    assert fit.reweigh(sy.log_ratio(0.1 * x)).divergence.verdict.level != "refit"
+
+
 def test_the_divergence_of_a_shifted_normal_is_half_its_squared_shift() -> None:
     # N(0.6, 1) from N(0, 1): 0.18. Held to five errors of 40,000 draws (false alarm 6e-7) and
     # 0.002 of bias of order 1/S.

@@ -8,6 +8,7 @@ import numpy as np
 import pytest
 
 import steelyard as sy
+from steelyard.errors import QuantityError
 
 RNG = np.random.default_rng(20_261_218)
 X = RNG.normal(size=(4, 300))
@@ -22,11 +23,12 @@ def _estimates(x: np.ndarray, ratio: np.ndarray = RATIO) -> dict[str, sy.Estimat
         "shift": answer.shift(x),
         "shift of the sd": answer.shift(x, "sd"),
         "quantile": answer.quantile(x, 0.3),
+        "shift of the quantile": answer.shift(x, ("quantile", 0.3)),
         "interval": answer.interval(x, 0.7, "shortest"),
     }
 
 
-@pytest.mark.parametrize("unit", [1e-100, 1e-8, 7.0, 1e100])
+@pytest.mark.parametrize("unit", [1e-290, 1e-160, 1e-100, 1e-8, 7.0, 1e70, 1e160, 1e300])
 def test_estimates_and_errors_are_in_the_unit_of_the_quantity(unit: float) -> None:
     plain, scaled = _estimates(X), _estimates(unit * X)
     for name in plain:
@@ -37,12 +39,65 @@ def test_estimates_and_errors_are_in_the_unit_of_the_quantity(unit: float) -> No
         assert np.array_equal(scaled[name].verdict.level, plain[name].verdict.level)
 
 
+@pytest.mark.parametrize("unit", [1e-160, 1e70, 1e160, 1e300])
+def test_further_answers_are_in_the_unit_of_the_quantity(unit: float) -> None:
+    fit = sy.Fit({"mu": X}, {"mu": sy.Normal(0, 1)}, loglik=-0.1 * (X[..., None] - 1) ** 2)
+    answer = fit.reweigh(sy.power(likelihood=0.8))
+    plain, scaled = fit.local(X), fit.local(unit * X)
+    for name, slope in plain.derivative["mu"].items():
+        found = scaled.derivative["mu"][name]
+        # 1e-12 relative: a handful of roundings.
+        np.testing.assert_allclose(found.value, unit * slope.value, rtol=1e-12)
+        np.testing.assert_allclose(found.error, unit * slope.error, rtol=1e-12)
+    one, other = answer.attribute(X), answer.attribute(unit * X)
+    for name, part in one.terms.items():
+        np.testing.assert_allclose(other.terms[name].value, unit * part.value, rtol=1e-12)
+        np.testing.assert_allclose(other.terms[name].error, unit * part.error, rtol=1e-12)
+    # 1e-9: what is measured in base sd rests on differences of nearly equal numbers.
+    np.testing.assert_allclose(
+        fit.pull(unit * X).prior.value, fit.pull(X).prior.value, rtol=1e-9, atol=1e-12
+    )
+    for name in ("wasserstein", "largest_gap", "jensen_shannon"):
+        before, after = (getattr(answer.distance(q), name) for q in (X, unit * X))
+        np.testing.assert_allclose(after.value, before.value, rtol=1e-9)
+        np.testing.assert_allclose(after.error, before.error, rtol=1e-9)
+    influence = sy.weights.influence(X.reshape(-1, 1), X.reshape(-1, 1))
+    np.testing.assert_allclose(
+        sy.weights.influence(X.reshape(-1, 1), unit * X.reshape(-1, 1)), influence, rtol=1e-12
+    )
+
+
+@pytest.mark.parametrize(("one", "other"), [(1e78, 1e78), (1e140, 1e-150), (1e-150, 1e-150)])
+def test_covariances_are_in_the_units_of_both_quantities(one: float, other: float) -> None:
+    answer, y = sy.weigh(RATIO), X + RNG.normal(size=X.shape)
+    plain = answer.covariance({"x": X, "y": y})
+    scaled = answer.covariance({"x": one * X, "y": other * y})
+    units = np.outer([one, other], [one, other])
+    # 1e-11 relative: products of two roundings each.
+    np.testing.assert_allclose(scaled.value, units * plain.value, rtol=1e-11)
+    np.testing.assert_allclose(scaled.error, units * plain.error, rtol=1e-11)
+
+
+@pytest.mark.parametrize("unit", [1e200, 1e-200])
+def test_a_covariance_beyond_what_a_float_holds_is_refused(unit: float) -> None:
+    with pytest.raises(QuantityError, match="another unit"):
+        sy.weigh(RATIO).covariance(unit * X)
+
+
+def test_one_huge_value_leaves_quantiles_and_their_shifts_alone() -> None:
+    y = X.copy()
+    y.reshape(-1)[X.argmax()] = 1.7e308
+    answer = sy.weigh(RATIO)
+    for of in (lambda q: answer.quantile(q, 0.4), lambda q: answer.shift(q, ("quantile", 0.4))):
+        assert (of(y).value, of(y).error) == (of(X).value, of(X).error)
+
+
 @pytest.mark.parametrize("origin", [-3.0, 1e3, 1e6])
 def test_an_origin_moves_the_value_and_leaves_the_error(origin: float) -> None:
     # 1e-9: sixteen digits of 1e6 leave ten for the spread of one.
     plain, moved = _estimates(X), _estimates(X + origin)
     for name in plain:
-        shift = 0.0 if name in ("sd", "shift", "shift of the sd") else origin
+        shift = 0.0 if name == "sd" or name.startswith("shift") else origin
         np.testing.assert_allclose(moved[name].value, plain[name].value + shift, atol=1e-8)
         np.testing.assert_allclose(moved[name].error, plain[name].error, rtol=1e-8)
 

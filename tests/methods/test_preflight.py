@@ -154,6 +154,42 @@ def test_a_widened_beta_prior_has_the_tail_shape_of_the_conjugate_algebra(
     assert _figure(answer, "prior_widened") == pytest.approx(shape, rel=1e-9)
 
 
+@pytest.mark.parametrize(
+    ("old", "new", "rate_lost", "power_lost"),
+    [
+        (sy.Exponential(2), sy.Flat(0, np.inf), 2.0, 0.0),
+        (sy.Exponential(2), sy.HalfCauchy(1), 2.0, 0.0),
+        (sy.Gamma(3, 2), sy.Exponential(0.5), 1.5, 2.0),
+        (sy.Gamma(3, 2), sy.LogNormal(0, 1), 2.0, -np.inf),
+        (sy.Gamma(3, 2), sy.Weibull(2.0, 1.0), -np.inf, 1.0),
+    ],
+    ids=str,
+)
+def test_other_densities_are_compared_by_their_tails_as_gammas_are(
+    old: Any, new: Any, rate_lost: float, power_lost: float
+) -> None:
+    # Gamma(A, B) draws whose prior falls like x^(s − 1) at 0 and exp(−r x) far out: what counts
+    # is how much smaller s and r become, by the theorem of the test above for any such density.
+    a, b = 6.0, 4.0
+    x = stats.gamma(a, scale=1 / b).ppf((np.arange(N) + 0.5) / N)
+    x = _matched(x, a / b, a / b**2)
+    answer = sy.Fit({"rate": x}, prior={"rate": old}).reweigh(sy.swap_prior(rate=new))
+    shape = max(rate_lost / b, power_lost / a)
+    assert _figure(answer, "prior_widened") == pytest.approx(shape, rel=1e-9)
+
+
+@pytest.mark.parametrize("new", [sy.Laplace(0, 1), sy.Logistic(1, 2), sy.Cauchy(0, 1)], ids=str)
+def test_every_tail_heavier_than_normal_counts_as_flat(new: Any) -> None:
+    answer = _normal_fit(0.6, sy.Normal(0, 1)).reweigh(sy.swap_prior(mu=new))
+    assert _figure(answer, "prior_widened") == pytest.approx(0.36, rel=1e-9)
+
+
+def test_a_tail_lighter_than_normal_is_no_widening() -> None:
+    light = sy.Truncated(sy.Normal(0, 5), -20, 20)
+    answer = _normal_fit(0.6, sy.Normal(0, 1)).reweigh(sy.swap_prior(mu=light))
+    assert "prior_widened" not in {f.code for f in answer.verdict.findings}
+
+
 @pytest.mark.parametrize("power", [0.3, 0.5, 0.8])
 @pytest.mark.parametrize("prior", [sy.Flat(), sy.StudentT(3, 0, 1), None], ids=str)
 def test_a_loosened_likelihood_has_the_shape_one_less_its_power_where_the_data_dominate(
@@ -281,3 +317,30 @@ def test_draws_far_from_a_moved_limit_press_on_it_not_at_all() -> None:
     )
     assert _figure(answer, "edge_pressure") == 0
     assert answer.verdict.level == "refit"
+
+
+def _counts(**prior: Any) -> sy.Fit:
+    k = np.random.default_rng(SEED + 3).poisson(4, size=N).astype(float)
+    return sy.Fit({"k": k}, prior=prior)
+
+
+@pytest.mark.parametrize("old", [sy.Poisson(4), stats.poisson(4)], ids=["ours", "scipy"])
+@pytest.mark.parametrize("new", [sy.Gamma(4, 1), stats.norm(4, 2)], ids=["ours", "scipy"])
+def test_counts_cannot_answer_for_a_continuum(old: Any, new: Any) -> None:
+    answer = _counts(k=old).reweigh(sy.swap_prior(k=new))
+    assert answer.verdict.level == "refit"
+    sentence = next(r.sentence for r in answer.verdict.reasons if r.code == "support_gap")
+    assert "every number from" in sentence
+    assert "only whole numbers" in sentence
+
+
+@pytest.mark.parametrize("new", [sy.Poisson(4), stats.poisson(4)], ids=["ours", "scipy"])
+def test_a_continuum_is_not_weighed_into_counts(new: Any) -> None:
+    fit = sy.Fit({"k": np.abs(_standard(SEED)[:, 0]) + 1}, prior={"k": sy.Gamma(2, 1)})
+    with pytest.raises(sy.errors.ChangeError, match="of counts"):
+        fit.reweigh(sy.swap_prior(k=new))
+
+
+def test_counts_answer_for_other_counts() -> None:
+    answer = _counts(k=sy.Poisson(4)).reweigh(sy.swap_prior(k=stats.poisson(4.2)))
+    assert "support_gap" not in _codes(answer)

@@ -14,7 +14,7 @@ from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, Series, finish
 from steelyard.answers.quantities import Quantity
 from steelyard.answers.shifts import shift_of
-from steelyard.arrays import Frozen, ReadOnly, plain_array
+from steelyard.arrays import Frozen, ReadOnly, in_unit, plain_array
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.base.names import close_names
@@ -152,7 +152,7 @@ def _along_the_path(
     Draws that the change rules out leave the path at its start; what that moves is a row of its
     own. The influence of a covariance is ``w ((f − μ)(Δ − δ) − Cov)``.
     """
-    count, f = scale.count, quantity.columns
+    count, (f, unit) = scale.count, in_unit(quantity.columns)
     v = scale.base_weights.linear
     start, kept = _start(log_ratio, v)
     nodes, shares = np.polynomial.legendre.leggauss(_NODES)
@@ -172,13 +172,14 @@ def _along_the_path(
         before, after = _core.weighted_mean(f, v), _core.weighted_mean(f, start)
         values = np.concatenate([values, (after - before)[None]])
         rows.append(count * (start[:, None] * (f - after) - v[:, None] * (f - before)))
-    series = [_series(scale, row, f) for row in rows]
+    series = [_series(scale, row, f).times(unit) for row in rows]
     w = scale.weights.linear
     whole = w[:, None] * (f - _core.weighted_mean(f, w)) - v[:, None] * (
         f - _core.weighted_mean(f, v)
     )
     left = np.ascontiguousarray(count * whole - np.sum(rows, axis=0))
-    return values, series, standard_error(left, scale.base.draws, scale.base.ordered)
+    unsure = standard_error(left, scale.base.draws, scale.base.ordered)
+    return values * unit, series, unsure * unit
 
 
 def _start(log_ratio: Array, v: Array) -> tuple[Array, Any]:
@@ -219,8 +220,12 @@ def _grouped(parts: Mapping[str, Array], groups: Any) -> dict[str, Array]:
     out: dict[str, Array] = {}
     used: dict[str, str] = {}
     for label, members in groups.items():
+        if not isinstance(members, str | list | tuple | set | frozenset):
+            raise ArgumentTypeError(
+                f"groups[{label!r}]", "a list of terms", type(members).__name__, "Name the terms."
+            )
         for member in [members] if isinstance(members, str) else members:
-            if member not in parts:
+            if not isinstance(member, str) or member not in parts:
                 raise UnknownNameError(
                     f"groups[{label!r}]",
                     "terms that the change alters",

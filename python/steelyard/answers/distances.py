@@ -13,8 +13,9 @@ from steelyard import _core
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, column_blocks, finish, joined, study_pair
 from steelyard.answers.quantities import Quantity
-from steelyard.arrays import Frozen
+from steelyard.arrays import Frozen, in_unit
 from steelyard.base.draws import Array
+from steelyard.verdicts import judge
 
 __all__ = ["Distance", "distance_of", "divergence_of"]
 
@@ -99,6 +100,8 @@ def _estimate(
     values, ends = np.empty(width), np.empty(width)
     parts = []
     for part, f in column_blocks(quantity.columns):
+        # None of these distances depends on the unit.
+        f, _ = in_unit(f)
         rows = [work(scale, _marginal(scale, f[:, column])) for column in range(f.shape[1])]
         values[part], ends[part] = [row[0] for row in rows], [row[2] for row in rows]
         psi1, psi0 = (np.stack([row[1][which] for row in rows], axis=1) for which in (0, 1))
@@ -172,8 +175,8 @@ def divergence_of(scale: Scale) -> Estimate:
     """
     Kullback–Leibler divergence of the target from the base, ``Σ w log(w/v)``.
 
-    Influence ``w (ℓ − E ℓ − 1) + v`` with ℓ the log of w/v. The estimate cannot exceed the log of
-    the number of draws.
+    Influence ``w (ℓ − E ℓ − 1) + v`` with ℓ the log of w/v. From equal base weights the estimate
+    cannot exceed the log of the number of draws; from others it can, and means nothing there.
     """
     w = scale.weights.linear
     with np.errstate(invalid="ignore"):
@@ -182,4 +185,6 @@ def divergence_of(scale: Scale) -> Estimate:
     ones = np.ones((scale.count, 1))
     series = study_pair(scale, (ratio - value - 1)[:, None], -ones)
     whole = Quantity("divergence of target from base", ones[:, 0])
-    return finish(scale, whole, np.array([value]), series, None)
+    share = np.array([max(value, 0.0) / math.log(scale.count)])
+    extra = (judge("saturated_divergence", share),)
+    return finish(scale, whole, np.array([value]), series, None, extra=extra)

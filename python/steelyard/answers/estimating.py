@@ -13,6 +13,7 @@ import numpy.typing as npt
 from steelyard import _core
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.quantities import Quantity
+from steelyard.arrays import in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.verdicts import Finding, Verdict, judge
@@ -79,19 +80,8 @@ class Series:
 
     def times(self, unit: Array) -> Series:
         """The series of values in another unit."""
-        return replace(self, error=self.error * unit)
-
-
-def in_unit(f: Array) -> tuple[Array, Array]:
-    """
-    Columns in a unit in which squares neither overflow nor vanish, and that unit.
-
-    The unit is 1 but for columns beyond 1e±100, and a power of two, so that nothing is rounded.
-    """
-    top = np.abs(f).max(axis=0)
-    _, exponent = np.frexp(np.where(top > 0, top, 1.0))
-    unit = np.where(np.abs(exponent) > 330, np.ldexp(1.0, exponent), 1.0)
-    return (f / unit if (unit != 1).any() else f), unit
+        with np.errstate(over="ignore"):
+            return replace(self, error=self.error * unit)
 
 
 def column_blocks(columns: Array) -> Iterator[tuple[slice, Array]]:
@@ -141,7 +131,7 @@ def mean_of(scale: Scale, quantity: Quantity) -> Estimate:
         f, unit = in_unit(f)
         mean, sd = moments(scale, f)
         series = study(scale, f - mean)
-        return mean * unit, series.times(unit), (sd * unit) ** 2
+        return mean * unit, series.times(unit), sd * unit
 
     return _over_columns(scale, quantity, work)
 
@@ -153,8 +143,8 @@ def sd_of(scale: Scale, quantity: Quantity) -> Estimate:
         f, unit = in_unit(f)
         mean, sd = moments(scale, f)
         psi = ((f - mean) ** 2 - sd**2) / np.where(sd > 0, 2 * sd, 1.0)
-        spread = _core.weighted_mean(psi**2, scale.weights.linear)
-        return sd * unit, study(scale, psi).times(unit), spread * unit**2
+        spread = np.sqrt(_core.weighted_mean(psi**2, scale.weights.linear))
+        return sd * unit, study(scale, psi).times(unit), spread * unit
 
     return _over_columns(scale, quantity, work)
 
@@ -189,12 +179,12 @@ def _over_columns(
     scale: Scale, quantity: Quantity, work: Callable[[Array], tuple[Array, Series, Array]]
 ) -> Estimate:
     columns = quantity.columns
-    value, variance = np.empty(columns.shape[1]), np.empty(columns.shape[1])
+    value, spread = np.empty(columns.shape[1]), np.empty(columns.shape[1])
     parts = []
     for part, f in column_blocks(columns):
-        value[part], series, variance[part] = work(f)
+        value[part], series, spread[part] = work(f)
         parts.append(series)
-    return finish(scale, quantity, value, joined(parts), variance)
+    return finish(scale, quantity, value, joined(parts), spread)
 
 
 def joined(parts: list[Series]) -> Series:
@@ -219,7 +209,7 @@ def finish(
     quantity: Quantity,
     value: Array,
     series: Series,
-    variance: Array | None,
+    spread: Array | None,
     *,
     lead: tuple[int, ...] = (),
     extra: tuple[Finding, ...] = (),
@@ -229,7 +219,7 @@ def finish(
     """
     An Estimate from flat figures: shapes put back, reasons added to those of the answer.
 
-    `variance` is that of the influence of one draw; without it effective draws are NaN. Figures
+    `spread` is the sd of the influence of one draw; without it effective draws are NaN. Figures
     in `extra` come flat and are shaped here; `lead` are axes in front of the quantity's own, with
     their labels in `lead_labels` by the names of their dimensions.
     """
@@ -238,11 +228,11 @@ def finish(
     def shaped(flat: Array) -> Any:
         return flat.reshape(shape) if shape else float(flat.reshape(()))
 
-    with np.errstate(invalid="ignore", divide="ignore"):
+    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
         effective = (
             np.full(value.shape, math.nan)
-            if variance is None
-            else np.where(series.error > 0, variance / series.error**2, float(scale.count))
+            if spread is None
+            else np.where(series.error > 0, (spread / series.error) ** 2, float(scale.count))
         )
     unknown = np.full(value.shape, math.inf)
     carried = unknown if series.contributions is None else series.contributions

@@ -13,6 +13,7 @@ from steelyard.answers.estimate import Decision, Estimate
 from steelyard.answers.estimating import Scale, Series, column_blocks, finish, joined, study
 from steelyard.answers.quantities import Quantity
 from steelyard.answers.student import student_cdf
+from steelyard.arrays import in_unit
 from steelyard.base.draws import Array
 from steelyard.errors import ArgumentError
 from steelyard.verdicts import Finding, judge
@@ -58,7 +59,7 @@ def probability_of(
     series = joined(parts)
     upper, lower = _bounds(scale, inside == 0, outside == 0, largest_ratio)
     settled = (inside > 0) & (outside > 0)
-    spread = value * (1 - value)
+    spread = np.sqrt(np.maximum(value * (1 - value), 0.0))
     error = np.where(settled, series.error, math.nan)
     shown = np.where(settled, value, math.nan)
     found = replace(series, error=error)
@@ -122,7 +123,7 @@ def _bounds(
 def _least_efficiency(scale: Scale) -> float:
     """Least ``var/LRV`` of the base draws over all parameters; 1 for draws without order."""
     base = scale.base
-    columns = [values.reshape(base.draws.size, -1) for values in base.draws.values()]
+    columns = [in_unit(values.reshape(base.draws.size, -1))[0] for values in base.draws.values()]
     least = [relative_efficiency(f, base.draws, base.ordered).min() for f in columns]
     return float(min(least, default=1.0))
 

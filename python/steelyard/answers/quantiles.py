@@ -16,6 +16,7 @@ from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, Series, column_blocks, finish, joined, study
 from steelyard.answers.probabilities import draws_within
 from steelyard.answers.quantities import Quantity
+from steelyard.arrays import in_unit
 from steelyard.base.draws import Array
 from steelyard.verdicts import judge
 
@@ -82,7 +83,7 @@ def draws_beyond(
 
 
 def quantile_pair(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Array]:
-    """One quantile of each column of `f`: its value, its series, the variance of its influence."""
+    """One quantile of each column of `f`: its value, its series, the sd of its influence."""
     w = scale.weights.linear
     width = f.shape[1]
     q = _core.quantile(f, w, np.full((1, width), p))[0]
@@ -93,13 +94,13 @@ def quantile_pair(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Arra
     reached = (low > 0) & (high < 1)
     ends = np.clip(np.stack([low, high]), 0.0, 1.0)
     at = _core.quantile(f, w, np.where(np.isnan(ends), p, ends))
-    error = np.where(reached, (at[1] - at[0]) / 2, math.inf)
+    error = np.where(reached, at[1] / 2 - at[0] / 2, math.inf)
     constant = (f == f[:1]).all(axis=0)
     error = np.where(constant, 0.0, error)
-    with np.errstate(invalid="ignore", divide="ignore"):
+    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
         # Effective draws are those of the distribution function at the quantile.
-        variance = np.where(series.error > 0, p * (1 - p) / series.error**2 * error**2, 0.0)
-    return q, replace(series, error=error), variance
+        spread = np.where(series.error > 0, math.sqrt(p * (1 - p)) * (error / series.error), 0.0)
+    return q, replace(series, error=error), spread
 
 
 def shortest_of(scale: Scale, quantity: Quantity, mass: float) -> Estimate:
@@ -169,4 +170,5 @@ def _bootstrap(scale: Scale, f: Array, mass: float) -> Array:
         w = scale.weights.linear * np.repeat(picked, lengths)
         if w.sum() > 0:
             ends.append(_core.shortest_interval(f, w, mass))
-    return np.asarray(np.std(ends, axis=0, ddof=1), dtype=np.float64)
+    flat, unit = in_unit(np.reshape(ends, (len(ends), -1)))
+    return np.asarray((flat.std(axis=0, ddof=1) * unit).reshape(2, -1), dtype=np.float64)

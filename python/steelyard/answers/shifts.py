@@ -15,7 +15,6 @@ from steelyard.answers.estimating import (
     Series,
     column_blocks,
     finish,
-    in_unit,
     joined,
     moments,
     study,
@@ -23,6 +22,7 @@ from steelyard.answers.estimating import (
 )
 from steelyard.answers.probabilities import draws_either_side, event_findings
 from steelyard.answers.quantities import Quantity
+from steelyard.arrays import in_unit
 from steelyard.base.draws import Array
 from steelyard.changes import Target
 from steelyard.errors import ArgumentError, PriorError
@@ -37,22 +37,20 @@ def shift_of(scale: Scale, quantity: Quantity, of: Any) -> Estimate:
     if quantity.is_event and work is not _mean_shift:
         raise ArgumentError("of", "'mean' for an event", repr(of), "A probability is a mean.")
     columns = quantity.columns
-    value, variance = np.empty(columns.shape[1]), np.empty(columns.shape[1])
+    value, spread = np.empty(columns.shape[1]), np.empty(columns.shape[1])
     parts = []
     for part, f in column_blocks(columns):
-        value[part], series, variance[part] = work(scale, f)
+        value[part], series, spread[part] = work(scale, f)
         parts.append(series)
     series = joined(parts)
     if not quantity.is_event:
         reach = judge("quantile_reach", np.zeros(len(value)), spoken=np.isinf(series.error))
-        return finish(scale, quantity, value, series, variance, extra=(reach,))
+        return finish(scale, quantity, value, series, spread, extra=(reach,))
     inside, outside = _sides(scale, columns)
     settled = (inside > 0) & (outside > 0)
     series = replace(series, error=np.where(settled, series.error, math.nan))
     extra = event_findings(inside, outside)
-    return finish(
-        scale, quantity, np.where(settled, value, math.nan), series, variance, extra=extra
-    )
+    return finish(scale, quantity, np.where(settled, value, math.nan), series, spread, extra=extra)
 
 
 def _sides(scale: Scale, columns: Array) -> tuple[Array, Array]:
@@ -81,15 +79,15 @@ def _pair(scale: Scale, psi1: Array, psi0: Array) -> tuple[Series, Array]:
     z = scale.count * (
         scale.weights.linear[:, None] * psi1 - scale.base_weights.linear[:, None] * psi0
     )
-    return series, _core.mean_square(z)
+    return series, np.sqrt(_core.mean_square(z))
 
 
 def _mean_shift(scale: Scale, f: Array) -> tuple[Array, Series, Array]:
     f, unit = in_unit(f)
     one, _ = moments(scale, f)
     zero, _ = moments(scale, f, scale.base_weights.linear)
-    series, variance = _pair(scale, f - one, f - zero)
-    return (one - zero) * unit, series.times(unit), variance * unit**2
+    series, spread = _pair(scale, f - one, f - zero)
+    return _times(one - zero, unit), series.times(unit), _times(spread, unit)
 
 
 def _sd_shift(scale: Scale, f: Array) -> tuple[Array, Series, Array]:
@@ -99,8 +97,14 @@ def _sd_shift(scale: Scale, f: Array) -> tuple[Array, Series, Array]:
     f, unit = in_unit(f)
     one = moments(scale, f)
     zero = moments(scale, f, scale.base_weights.linear)
-    series, variance = _pair(scale, psi(*one), psi(*zero))
-    return (one[1] - zero[1]) * unit, series.times(unit), variance * unit**2
+    series, spread = _pair(scale, psi(*one), psi(*zero))
+    return _times(one[1] - zero[1], unit), series.times(unit), _times(spread, unit)
+
+
+def _times(values: Array, unit: Array) -> Array:
+    """Values in the quantity's own unit; the difference of two huge ones may be +inf."""
+    with np.errstate(over="ignore"):
+        return np.asarray(values * unit)
 
 
 def _quantile_shift(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Array]:
@@ -110,7 +114,7 @@ def _quantile_shift(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Ar
     The density is the slope of the quantile function between p ± the error of the distribution
     function there, at least two draws apart. Where that leaves (0, 1) the error is +inf.
     """
-    ends, influences = [], []
+    ends, slopes, influences = [], [], []
     reached = np.ones(f.shape[1], dtype=np.bool_)
     for weights in (scale.weights, scale.base_weights):
         w = weights.linear
@@ -122,11 +126,16 @@ def _quantile_shift(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Ar
         probs = np.clip(np.stack([p - half, p + half]), 0.0, 1.0)
         low, high = _core.quantile(f, w, probs)
         ends.append(q)
-        influences.append(-(high - low) / (probs[1] - probs[0]) * psi)
-    series, variance = _pair(scale, influences[0], influences[1])
+        with np.errstate(over="ignore"):
+            slopes.append((high / 2 - low / 2) / ((probs[1] - probs[0]) / 2))
+        influences.append(-psi)
+    both, unit = in_unit(np.stack(slopes))
+    series, spread = _pair(scale, both[0] * influences[0], both[1] * influences[1])
     constant = (f == f[:1]).all(axis=0)
-    error = np.where(reached | constant, series.error, math.inf)
-    return ends[0] - ends[1], replace(series, error=error), variance
+    error = np.where(reached | constant, series.times(unit).error, math.inf)
+    with np.errstate(over="ignore"):
+        moved = ends[0] - ends[1]
+    return moved, replace(series, error=error), _times(spread, unit)
 
 
 def log_evidence_ratio_of(scale: Scale, target: Target | None) -> Estimate:
@@ -134,9 +143,9 @@ def log_evidence_ratio_of(scale: Scale, target: Target | None) -> Estimate:
     if target is not None:
         _refuse_improper(target)
     ones = np.ones((scale.count, 1))
-    series, variance = _pair(scale, ones, ones)
+    series, spread = _pair(scale, ones, ones)
     quantity = Quantity("log evidence ratio", ones[:, 0])
-    return finish(scale, quantity, np.array([scale.weights.log_mean_ratio]), series, variance)
+    return finish(scale, quantity, np.array([scale.weights.log_mean_ratio]), series, spread)
 
 
 def _refuse_improper(target: Target) -> None:

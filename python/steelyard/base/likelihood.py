@@ -162,7 +162,7 @@ def read_loglik_term(name: str, source: Any, draws: Draws, argument: str) -> Log
     labels: dict[str, npt.NDArray[Any]] = {}
     if hasattr(source, "dims") and hasattr(source, "transpose"):
         source, dims, labels = _from_xarray(source, argument)
-    elif hasattr(source, "columns") or hasattr(source, "__arrow_c_stream__"):
+    elif hasattr(type(source), "columns") or hasattr(source, "__arrow_c_stream__"):
         raise ArgumentTypeError(
             argument,
             "an array, draws first",

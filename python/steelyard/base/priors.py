@@ -50,6 +50,13 @@ class PriorTerm:
         """Whether the density is known to be improper (callables and arrays are taken at word)."""
         return not self.is_distribution or bool(self.density.is_proper)
 
+    @property
+    def is_discrete(self) -> bool | None:
+        """Whether the density is one of counts; None for a callable or an array."""
+        if isinstance(self.density, Distribution):
+            return self.density.is_discrete
+        return hasattr(self.density, "pmf") if _is_frozen(self.density) else None
+
     def value(self, draws: Draws) -> Array:
         """Draws of what the term is about: ``(n, *shape)``, or ``(n, d)`` for a joint term."""
         if isinstance(self.key, str):
@@ -237,11 +244,11 @@ def stated_prior(terms: Mapping[str, PriorTerm] | None, argument: str) -> Mappin
     return terms
 
 
-def known_term(key: str, terms: Mapping[str, Any], argument: str, kind: str) -> None:
+def known_term(key: object, terms: Mapping[str, Any], argument: str, kind: str) -> None:
     """Refuse a term that the base does not state."""
-    if key not in terms:
+    if not isinstance(key, str | tuple) or key not in terms:
         raise UnknownNameError(
-            argument, f"a stated {kind} term", repr(key), close_names(key, terms)
+            argument, f"a stated {kind} term", repr(key), close_names(str(key), terms)
         )
 
 

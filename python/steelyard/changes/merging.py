@@ -110,6 +110,13 @@ def _merge_swap_prior(draft: Draft, edit: SwapPrior) -> None:
     draws = draft.base.draws
     new = read_term(stated[label].key, edit.density, draws, "swap_prior").resolved(draws)
     draft.prior[label] = PriorTarget(stated[label].resolved(draws), new)
+    if stated[label].is_discrete is False and new.is_discrete:
+        raise ChangeError(
+            f"swap_prior[{label!r}]",
+            "a density, as the one it replaces",
+            f"{edit.density}, of counts",
+            "No weights turn draws from a continuum into counts: refit with the new prior.",
+        )
 
 
 def _merge_power(draft: Draft, edit: Power) -> None:

@@ -10,6 +10,7 @@ from typing import Any
 
 import numpy as np
 
+from steelyard.arrays import plain_array
 from steelyard.base.draws import Array, Draws
 from steelyard.base.likelihood import LoglikTerm
 from steelyard.errors import ArgumentError, ArgumentTypeError, ChangeError, ShapeError
@@ -77,9 +78,13 @@ def _sd_rows(sd: Any, term: LoglikTerm, draws: Draws) -> Array:
     if isinstance(sd, str):
         values = draws.look_up(sd, where)
     elif callable(sd):
-        values = np.asarray(sd(MappingProxyType(dict(draws.values_by_name))))
+        values = plain_array(sd(MappingProxyType(dict(draws.values_by_name))), where)
+        if not values.ndim:
+            raise ShapeError(
+                where, f"({draws.size},) or more axes", "()", "For one number give it as sd."
+            )
     else:
-        values = np.asarray(sd)
+        values = plain_array(sd, where)
         if values.ndim and values.shape != term.obs_shape:
             raise ShapeError(
                 where,

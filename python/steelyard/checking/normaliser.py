@@ -8,6 +8,7 @@ import numpy as np
 import numpy.typing as npt
 
 from steelyard import _core
+from steelyard.arrays import in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.checking.findings import Finding, not_testable
@@ -48,7 +49,8 @@ def check_normaliser(base: Base) -> Finding:
         return not_testable(
             _NAME, "Some parameter has no stated prior, or a support this check does not know."
         )
-    u, log_jacobian = free
+    # Another unit adds one constant to all log densities.
+    u, log_jacobian = in_unit(free[0])[0], free[1]
     if u.shape[1] > min(_MOST_PARAMETERS, base.draws.size // 100):
         return not_testable(_NAME, "There are too many parameters for this number of draws.")
     terms = [*prior_totals(base).values(), *likelihood_totals(base).values()]
@@ -56,6 +58,8 @@ def check_normaliser(base: Base) -> Finding:
     if not np.isfinite(target).all():
         return not_testable(_NAME, "The log density is not finite at some draw.")
     early = _first_quarters(base)
+    if (np.ptp(u[early], axis=0) == 0).any():
+        return not_testable(_NAME, "Some parameter does not move in the first quarter of a chain.")
     rest = replace(base, draws=base.draws.take(np.flatnonzero(~early)))
     worst, gap, tested = 1.0, 0.0, 0
     for width in _WIDTHS:

@@ -9,6 +9,7 @@ from itertools import permutations
 import numpy as np
 import numpy.typing as npt
 
+from steelyard.arrays import in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.checking.findings import Finding, not_testable
@@ -81,7 +82,7 @@ def check_rows(base: Base) -> Finding:
 
 def _quadratic(base: Base) -> Array | None:
     """Standardised columns with squares, and products where there are draws enough."""
-    _, columns = parameter_columns(base)
+    columns, _ = in_unit(parameter_columns(base)[1])
     spread = columns.std(axis=0)
     z = (columns - columns.mean(axis=0))[:, spread > 0] / spread[spread > 0]
     count, size = z.shape
@@ -109,7 +110,8 @@ def _explained(design: Array, projection: Array, y: Array, train: npt.NDArray[np
     """Share of the held-out variance that a least-squares fit to the training rows explains."""
     rest = y[~train] - design[~train] @ (projection @ y[train])
     spread = y[~train] - y[~train].mean()
-    return 1 - float(rest @ rest) / float(spread @ spread) if spread.any() else -math.inf
+    varies = float(spread @ spread)
+    return 1 - float(rest @ rest) / varies if varies > 0 else -math.inf
 
 
 def _orders(base: Base) -> Iterator[tuple[str, Order]]:

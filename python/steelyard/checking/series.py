@@ -8,6 +8,7 @@ from itertools import pairwise
 import numpy as np
 
 from steelyard import _core
+from steelyard.arrays import in_unit
 from steelyard.base import Base
 from steelyard.checking.findings import Finding, not_testable
 from steelyard.checking.totals import parameter_columns
@@ -47,6 +48,7 @@ def check_series(base: Base) -> Iterator[Finding]:
 
 def _mixing(base: Base) -> Iterator[Finding]:
     names, columns = parameter_columns(base)
+    columns, _ = in_unit(columns)
     variance = _core.mean_square(columns)
     lrv = _core.long_run_variance(columns, base.draws.starts, True)
     effective = np.where(lrv > 0, base.draws.size * variance / np.where(lrv > 0, lrv, 1.0), np.inf)

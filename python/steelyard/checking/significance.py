@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from steelyard import _core
+from steelyard.arrays import in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 
@@ -22,7 +23,7 @@ def z_and_p(f: Array, base: Base) -> tuple[Array, Array]:
     Student's with a third of the effective draws as degrees of freedom, since the error is
     estimated too.
     """
-    n = base.draws.size
+    n, (f, _) = base.draws.size, in_unit(f)
     mean = f.mean(axis=0)
     if base.ordered:
         lrv = _core.long_run_variance(f, base.draws.starts, True)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from steelyard.arrays import in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.checking.findings import Finding, not_testable
@@ -78,16 +79,19 @@ def untouched_hyperparameters(base: Base) -> list[tuple[str, Scale]]:
 def _stein_series(name: str, scale: Scale, base: Base) -> Array | None:
     """``g' + g s`` for both g, shape ``(n, 2)``, with the score s by central differences."""
     free = scale.free(base.draws.values_by_name[name])
-    sd = float(free.std())
+    scaled, unit = in_unit(free[:, None])
+    sd = float(scaled.std())
     if sd == 0:
         return None
-    step = 1e-4 * sd
-    up, down = (_log_prior(name, scale, free + sign * step, base) for sign in (1, -1))
-    score = (up - down) / (2 * step)
+    z = (scaled[:, 0] - scaled.mean()) / sd
+    step = 1e-4 * sd * float(unit[0])
+    with np.errstate(over="ignore", invalid="ignore"):
+        up, down = (_log_prior(name, scale, free + sign * step, base) for sign in (1, -1))
+        # The score times the sd.
+        score = (up - down) / 2e-4
     if not np.isfinite(score).all():
         return None
-    z = (free - free.mean()) / sd
-    return np.stack([score * sd, 1 + z * score * sd], axis=1)
+    return np.stack([score, 1 + z * score], axis=1)
 
 
 def _log_prior(name: str, scale: Scale, free: Array, base: Base) -> Array:

@@ -6,6 +6,7 @@ from itertools import combinations
 
 import numpy as np
 
+from steelyard.arrays import in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.checking.findings import Finding, not_testable
@@ -38,11 +39,12 @@ def check_stored(base: Base) -> Finding:
     terms |= {f"the likelihood of {k}": v for k, v in likelihood_totals(base).items()}
     if not terms:
         return not_testable(_NAME, "Neither prior nor log likelihood is stated.")
-    rest = base.stored_log_density - np.sum(list(terms.values()), axis=0)
+    with np.errstate(over="ignore", invalid="ignore"):
+        rest = base.stored_log_density - np.sum(list(terms.values()), axis=0)
     if not np.isfinite(rest).all():
         return not_testable(_NAME, "Some densities are not finite.")
     limit = _ROUNDING * max(1.0, float(np.abs(base.stored_log_density).max()))
-    spread = float(rest.std())
+    spread = _sd(rest)
     if spread <= limit:
         sentence = f"Stored and claimed log density differ by a constant, to {short(spread)}."
         return Finding(_NAME, "nothing found", spread, limit, sentence)
@@ -76,20 +78,30 @@ def _explain(rest: Array, candidates: dict[str, Array], limit: float) -> str:
         for name, values in candidates.items()
         if np.isfinite(values).all() and np.ptp(values[rows]) > 0
     }
-    best: tuple[float, tuple[str, ...]] = (float(y.std()), ())
+    # One unit for all of them: least squares would square numbers beyond 1e154.
+    unit = max(float(np.abs(f).max()) for f in (y, *columns.values()))
+    if unit > 0:
+        y, limit = y / unit, limit / unit
+        columns = {name: f / unit for name, f in columns.items()}
+    best: tuple[float, tuple[str, ...]] = (_sd(y), ())
     for size in range(1, min(_MOST_TERMS, len(columns)) + 1):
         for names in combinations(columns, size):
             design = np.stack([columns[n] for n in names], axis=1)
             coefficients, *_ = np.linalg.lstsq(design, y, rcond=None)
-            left = float((y - design @ coefficients).std())
+            left = _sd(y - design @ coefficients)
             if left <= 4 * limit:
                 return " ".join(
                     _sentence(n, float(c)) for n, c in zip(names, coefficients, strict=True)
                 )
             best = min(best, (left, names))
-    if best[1] and best[0] < 0.2 * float(y.std()):
+    if best[1] and best[0] < 0.2 * _sd(y):
         return f"Most of it, not all, goes with {' and '.join(best[1])}."
     return "No term of the claim, doubled or left out, explains it."
+
+
+def _sd(values: Array) -> float:
+    scaled, unit = in_unit(values[:, None])
+    return float(scaled.std() * unit[0])
 
 
 def _sentence(name: str, coefficient: float) -> str:

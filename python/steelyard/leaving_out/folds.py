@@ -41,7 +41,7 @@ def k_fold(
     """Leave out folds; see ``Fit.k_fold``."""
     held = None if quantities is None else read_quantities(base, quantities)
     if isinstance(folds, bool) or not isinstance(folds, int | np.integer):
-        if by != "chance" or places is not None:
+        if not isinstance(by, str) or by != "chance" or places is not None:
             raise ArgumentError(
                 "by", "nothing beside folds that are given", repr(by), "Say one or the other."
             )

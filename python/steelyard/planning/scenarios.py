@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from html import escape
 from typing import Any
@@ -131,12 +131,20 @@ class Plan:
         return f"<pre>{escape(str(self))}</pre>"
 
 
+def _can_be_gone_through(things: Any) -> bool:
+    try:
+        iter(things)
+    except TypeError:
+        return False
+    return True
+
+
 def read_scenarios(scenarios: Any) -> tuple[Scenario, ...]:
     """Scenarios from a mapping, pairs, or scenarios; names are told once each."""
     items: list[Scenario] = []
     if isinstance(scenarios, Mapping):
         scenarios = scenarios.items()
-    if isinstance(scenarios, str | Change) or not isinstance(scenarios, Iterable):
+    if isinstance(scenarios, str | Change) or not _can_be_gone_through(scenarios):
         raise ArgumentTypeError(
             "scenarios",
             "{name: change}, or a Plan",

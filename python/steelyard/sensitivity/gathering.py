@@ -30,7 +30,7 @@ class Gathered:
     shape: Array
     p_value: Array
     efficiency: Array
-    variance: Array
+    spread: Array
     inside: Array
     outside: Array
     contributions: Array
@@ -51,7 +51,7 @@ class Gathered:
             (self.shape, series.shape),
             (self.p_value, series.p_value),
             (self.efficiency, series.efficiency),
-            (self.variance, found.variance),
+            (self.spread, found.spread),
             (self.inside, found.inside),
             (self.outside, found.outside),
             (self.contributions, np.inf if known is None else known),
@@ -88,7 +88,7 @@ class Gathered:
             self.quantity,
             self.value.reshape(-1),
             series,
-            self.variance.reshape(-1),
+            self.spread.reshape(-1),
             lead=lead,
             extra=extra,
             lead_labels=lead_labels,

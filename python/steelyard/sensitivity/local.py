@@ -15,7 +15,7 @@ from steelyard.answers.estimating import Scale, finish, joined, moments, study
 from steelyard.answers.quantities import Quantity
 from steelyard.answers.reweigh import base_answer
 from steelyard.answers.tabulate import element_names
-from steelyard.arrays import Frozen, ReadOnly
+from steelyard.arrays import Frozen, ReadOnly, in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.base.priors import PriorTerm, stated_prior
@@ -100,14 +100,15 @@ class Local(Frozen):
 
 def local(base: Base, quantities: Any = None, of: str = "mean") -> Local:
     """Derivatives of quantities in every hyperparameter; see ``Fit.local``."""
-    if of not in ("mean", "sd"):
+    if not isinstance(of, str) or of not in ("mean", "sd"):
         raise ArgumentError("of", "'mean' or 'sd'", repr(of), "Choose one of them.")
     stated = stated_prior(base.prior, "local")
     asked = asked_for(quantities, base)
     elements = tuple(n for label, q in asked.items() for n in element_names(label, q))
     columns = np.concatenate([q.columns for q in asked.values()], axis=1)
     scale = base_answer(base)._scale
-    influence, unit = _influence(scale, np.ascontiguousarray(columns), of)
+    columns, power = in_unit(np.ascontiguousarray(columns))
+    influence, unit = _influence(scale, columns, of)
     skipped: dict[str, str] = {}
     raw: dict[str, ReadOnly[Estimate]] = {}
     standard: dict[str, ReadOnly[Estimate]] = {}
@@ -119,7 +120,7 @@ def local(base: Base, quantities: Any = None, of: str = "mean") -> Local:
         resolved: Any = term.resolved(base.draws).density
         estimates = {n: _covariance(scale, influence, s, elements) for n, s in found.items()}
         step = {n: _step(resolved, n, s.shape[1:]) for n, s in found.items()}
-        raw[label] = ReadOnly(estimates)
+        raw[label] = ReadOnly({n: _times(e, power) for n, e in estimates.items()})
         steps[label] = ReadOnly(step)
         standard[label] = ReadOnly(
             {n: _times(e, step[n][..., None] / unit) for n, e in estimates.items()}
@@ -204,7 +205,7 @@ def _covariance(
         psi = product - value
         values.append(value)
         series.append(study(scale, psi))
-        spreads.append(_core.weighted_mean(psi**2, w))
+        spreads.append(np.sqrt(_core.weighted_mean(psi**2, w)))
     whole = Quantity(
         "derivative",
         np.broadcast_to(0.0, (scale.count, width)),

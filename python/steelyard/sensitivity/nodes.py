@@ -13,6 +13,7 @@ import numpy as np
 from steelyard import _core
 from steelyard.answers.estimating import Series
 from steelyard.answers.reweigh import _unknown_supports
+from steelyard.arrays import in_unit
 from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.changes import Target
@@ -178,7 +179,7 @@ class NodeSeries:
 
     value: Array
     series: Series
-    variance: Array
+    spread: Array
     inside: Array
     outside: Array
     z: Array
@@ -197,6 +198,8 @@ def study_nodes(
     """
     base, count = nodes.base, nodes.base.draws.size
     draws, v = base.draws, nodes.own.linear
+    column, unit = in_unit(f[:, None])
+    f = column[:, 0]
     at_base = float(_core.weighted_mean(f[:, None], v)[0])
     # Centring first loses no digits where the quantity varies little about a large value.
     centred = f - at_base
@@ -211,11 +214,11 @@ def study_nodes(
         # A change whose ratio is the same at every draw moves nothing, rounding or not.
         still = np.ptp(nodes.raw, axis=0) == 0 if base.log_weights is None else np.zeros(1, bool)
         moved, z, z_raw = (np.where(still, 0.0, figure) for figure in (moved, z, z_raw))
-        variance = _core.mean_square(z)
+        spread = np.sqrt(_core.mean_square(z))
         equal = np.full(count, 1 / count)
         p = chains_p_value(z, equal, draws) if base.ordered else np.ones(nodes.count)
     else:
-        variance = (nodes.linear * psi**2).sum(axis=0)
+        spread = np.sqrt((nodes.linear * psi**2).sum(axis=0))
         p = _chains(psi, nodes.linear, draws) if base.ordered else np.ones(nodes.count)
     of_f = float(relative_efficiency(centred[:, None], draws, base.ordered)[0])
     efficiency = relative_efficiency(z_raw, draws, base.ordered)
@@ -229,7 +232,9 @@ def study_nodes(
     sides = (f, 1 - f) if is_event else ()
     within = [_within(nodes.linear, side) * of_f for side in sides] or [np.empty(nodes.count)] * 2
     value = moved if shift else at_base + moved
-    return NodeSeries(value, series, variance, within[0], within[1], z)
+    return NodeSeries(
+        value * unit, series.times(unit), spread * unit, within[0], within[1], z * unit
+    )
 
 
 def _within(weights: Array, side: Array) -> Array:

@@ -17,7 +17,7 @@ from steelyard.answers.estimating import Scale, Series, finish
 from steelyard.answers.quantities import Quantity
 from steelyard.answers.reweigh import base_answer, reweigh
 from steelyard.answers.tabulate import element_names
-from steelyard.arrays import Frozen, ReadOnly
+from steelyard.arrays import Frozen, ReadOnly, in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.changes import Change, power
@@ -121,7 +121,9 @@ def pull(base: Base, quantities: Any = None) -> Pull:
         )
     asked = asked_for(quantities, base)
     elements = tuple(n for label, q in asked.items() for n in element_names(label, q))
-    columns = np.ascontiguousarray(np.concatenate([q.columns for q in asked.values()], axis=1))
+    # A pull does not depend on the unit of its quantity.
+    columns, _ = in_unit(np.concatenate([q.columns for q in asked.values()], axis=1))
+    columns = np.ascontiguousarray(columns)
     wholes: dict[str, tuple[Estimate, Array]] = {}
     terms: dict[str, Estimate] = {}
     for side, stated in (("prior", base.prior), ("likelihood", base.loglik)):

@@ -161,7 +161,9 @@ def _multipliers(a: Array, log_base: Array, goal: Array, labels: list[str]) -> A
         size = 1.0
         while size > 1e-10:
             after, weights = dual(t + size * move)
-            if after <= value + 1e-4 * size * float(slope @ move):
+            # At the solution the decrease is below the rounding of the value.
+            rounding = 1e-14 * max(1.0, abs(value))
+            if after <= value + 1e-4 * size * float(slope @ move) + rounding:
                 break
             size /= 2
         if size <= 1e-10 or float(np.abs(t + size * move).max()) > _LARGEST:

@@ -9,12 +9,14 @@ from typing import Any
 
 import numpy as np
 
+from steelyard.arrays import in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.changes.merging import PriorTarget
 from steelyard.changes.noise import NoisyTerm
 from steelyard.changes.target import Target
-from steelyard.densities import Beta, Distribution, Gamma, Normal
+from steelyard.densities import Distribution, Normal
+from steelyard.densities.tails import Tail
 from steelyard.verdicts import Finding, judge
 from steelyard.weighing.series import relative_efficiency
 from steelyard.weighing.supports import support_findings
@@ -65,7 +67,7 @@ def _normal_throughout(base: Base, target: Target, loss: Loss | None) -> list[Fi
         if not isinstance(old, Normal) or not isinstance(term.key, str) or old.names:
             return None
         value = prior.base.value(base.draws)
-        precisions = [_tail_precision(d, value.shape[1:]) for d in (old, new)]
+        precisions = [_tail_precision(d, value, base) for d in (old, new)]
         if precisions[0] is None or precisions[1] is None:
             return None
         values.append(value.reshape(base.draws.size, -1))
@@ -84,16 +86,20 @@ def _normal_throughout(base: Base, target: Target, loss: Loss | None) -> list[Fi
     return [_loosened(loss, float(np.linalg.eigvalsh(fall)[-1]))]
 
 
-def _tail_precision(density: Any, shape: tuple[int, ...]) -> Array | None:
-    """Precision of a density's normal tail: 0 for heavier tails, None where not known."""
-    if isinstance(density, Normal):
-        if isinstance(density.sd, str):
-            return None
-        return np.broadcast_to(1 / np.asarray(density.sd, dtype=np.float64) ** 2, shape)
-    name = type(density).__name__
-    if isinstance(density, Distribution) and name in ("Flat", "StudentT"):
-        return np.zeros(shape)
-    return None
+def _tail_precision(density: Any, value: Array, base: Base) -> Array | None:
+    """
+    Precision of the slower of a density's tails: 0 for heavier than normal ones.
+
+    None where it is not known, differs from draw to draw, or both ends are lighter or bounded.
+    """
+    if not isinstance(density, Distribution):
+        return None
+    tails = density.tails(value.shape, look_up=base.draws.look_up)
+    slower = np.minimum(tails.lower.precision, tails.upper.precision)
+    if (slower.ndim == value.ndim and slower.shape[0] > 1) or not np.isfinite(slower).all():
+        return None
+    along = np.broadcast_shapes(slower.shape, (1, *value.shape[1:]))
+    return np.asarray(np.broadcast_to(slower, along)[0])
 
 
 def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:
@@ -109,9 +115,8 @@ def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Findi
         about = _distance_from_mean(prior, base)
         if about is None:
             continue
-        shape = about.shape[1:]
-        before = _tail_precision(prior.base.density, shape)
-        after = _tail_precision(prior.density.density, shape)
+        before = _tail_precision(prior.base.density, about, base)
+        after = _tail_precision(prior.density.density, about, base)
         if before is None or after is None:
             continue
         values.append(about.reshape(base.draws.size, -1))
@@ -156,18 +161,22 @@ def _root_covariance(values: Array, base: Base) -> tuple[Array | None, Array]:
     too large by up to ``(1 + √(d/n))²``; from ``d > n/40`` on (a third) nothing is said.
     """
     weights = base_weights(base)
+    values, power = in_unit(values)
     mean = weights.linear @ values
     sd = np.sqrt(weights.linear @ (values - mean) ** 2)
     unit = np.where(sd > 0, sd, 1.0)
     size, count = values.shape[1], weights.effective_size
     if base.ordered:
         count *= float(np.median(relative_efficiency(values, base.draws, True)))
-    if size > min(_MOST_PARAMETERS, count / 40):
-        return None, unit
+    own = unit * power
+    with np.errstate(over="ignore", under="ignore"):
+        squares = own**2
+    if size > min(_MOST_PARAMETERS, count / 40) or not (np.isfinite(squares) & (squares > 0)).all():
+        return None, own
     scaled = (values - mean) / unit
     eigenvalues, vectors = np.linalg.eigh((scaled * weights.linear[:, None]).T @ scaled)
     unbiased = 1 - float((weights.linear**2).sum())
-    return vectors * np.sqrt(np.maximum(eigenvalues, 0.0) / unbiased), unit
+    return vectors * np.sqrt(np.maximum(eigenvalues, 0.0) / unbiased), own
 
 
 def _gamma_or_beta_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:
@@ -180,30 +189,49 @@ def _gamma_or_beta_widened(base: Base, priors: Mapping[str, PriorTarget]) -> lis
     """
     findings = []
     for label, prior in priors.items():
-        old, new = prior.base.density, prior.density.density
-        if type(old) is not type(new) or not isinstance(old, Gamma | Beta):
-            continue
-        if old.names or new.names or prior.factor != 1:
-            continue
-        value, weights = prior.base.value(base.draws), base_weights(base).linear
-        mean = np.average(value, axis=0, weights=weights)
-        variance = np.average((value - mean) ** 2, axis=0, weights=weights)
-        if not np.all(variance > 0):
-            continue
-        if isinstance(old, Gamma):
-            first, second, name = mean**2 / variance, mean / variance, "gamma"
-        else:
-            size = mean * (1 - mean) / variance - 1
-            first, second, name = size * mean, size * (1 - mean), "beta"
-        lost = [
-            np.asarray(getattr(old, field)) - np.asarray(getattr(new, field))
-            for field in old.domains
-        ]
-        shape = np.maximum(lost[0] / first, lost[1] / second)
+        shape, posterior = _matched_shape(base, prior)
         if np.any(shape > 0):
             figure = float(np.max(shape))
-            findings.append(judge("prior_widened", figure, term=label, posterior=name))
+            findings.append(judge("prior_widened", figure, term=label, posterior=posterior))
     return findings
+
+
+def _matched_shape(base: Base, prior: PriorTarget) -> tuple[Array, str]:
+    """Tail shape under the matched posterior, and that one's name; −inf where there is none."""
+    none = np.asarray(-math.inf), ""
+    old, new = prior.base.density, prior.density.density
+    if not (isinstance(old, Distribution) and isinstance(new, Distribution)):
+        return none
+    if old.names or new.names or old.event_axes or old.is_discrete or new.is_discrete:
+        return none
+    value, weights = prior.base.value(base.draws), base_weights(base).linear
+    before, after = old.tails(value.shape[1:]), new.tails(value.shape[1:])
+    if not np.all(np.isfinite(before.lower.limit) & (before.lower.order == 0)):
+        return none
+    mean = np.average(value, axis=0, weights=weights) - before.lower.limit
+    with np.errstate(over="ignore"):
+        variance = np.average((value - mean - before.lower.limit) ** 2, axis=0, weights=weights)
+        square = mean**2
+    if not np.all((variance > 0) & np.isfinite(variance) & (square > 0) & np.isfinite(square)):
+        return none
+    lost = _power_lost(before.lower, after.lower, prior.factor)
+    rate = before.upper.rate
+    if np.all(np.isfinite(rate) & (rate > 0)):
+        slower = rate - (prior.factor * after.upper.rate if prior.factor else 0.0)
+        return np.maximum(lost / (square / variance), slower / (mean / variance)), "gamma"
+    if np.all(np.isfinite(before.upper.limit) & (before.upper.order == 0)):
+        width = before.upper.limit - before.lower.limit
+        mean, variance = mean / width, variance / width**2
+        size = mean * (1 - mean) / variance - 1
+        above = _power_lost(before.upper, after.upper, prior.factor)
+        return np.maximum(lost / (size * mean), above / (size * (1 - mean))), "beta"
+    return none
+
+
+def _power_lost(before: Tail, after: Tail, factor: Any) -> Array:
+    """How much less steeply the target rises from a limit than the base; −inf where it cuts."""
+    lost = before.power - factor * after.power
+    return np.where((before.limit == after.limit) & (after.order == 0), lost, -np.inf)
 
 
 @dataclass(frozen=True)

@@ -8,7 +8,7 @@ import numpy as np
 import numpy.typing as npt
 
 from steelyard import _core
-from steelyard.arrays import plain_array
+from steelyard.arrays import in_unit, plain_array
 from steelyard.errors import ArgumentError, ShapeError
 from steelyard.weighing.arrays import Array, columns_of, refuse_bad_log_weights
 
@@ -141,7 +141,8 @@ def influence(loglik: npt.ArrayLike, quantities: npt.ArrayLike) -> Array:
             str(np.shape(quantities)),
             "Use the same draws in the same order.",
         )
-    values = np.require(f.values, np.float64, ["A"])
+    # Influence is in units of the sd: it does not depend on the quantity's own unit.
+    values, _ = in_unit(np.require(f.values, np.float64, ["A"]))
     sd = values.std(axis=0)
     out = np.empty((columns.count, f.count))
     for part, block in columns.blocks():

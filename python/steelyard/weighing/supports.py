@@ -28,6 +28,10 @@ def support_findings(base: Base, target: Target) -> Iterator[Finding]:
         if not prior.is_swapped:
             continue
         old_limits, new_limits = _support(prior.base, base), _support(prior.density, base)
+        if prior.base.is_discrete and prior.density.is_discrete is False and new_limits is not None:
+            new_text = f"every number {_interval(*new_limits)}"
+            yield judge("support_gap", term=prior.base.label, old="whole numbers", new=new_text)
+            continue
         if old_limits is not None and _covers_the_line(old_limits):
             continue
         if old_limits is None or new_limits is None:
