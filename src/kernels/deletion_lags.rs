@@ -7,6 +7,7 @@
 
 use std::ops::Range;
 
+use super::deletion_loops::{LANES as SUM_LANES, plus, tree};
 use super::error::KernelError;
 use super::f_tail::f_tail;
 use super::long_run::long_run_variance;
@@ -361,22 +362,16 @@ impl Work for Centre<'_> {
 
 #[inline(always)]
 fn lane_sum(x: &[f64]) -> f64 {
-    let mut lanes = [0.0; 2 * LANES];
-    let (chunks, rest) = x.as_chunks::<{ 2 * LANES }>();
+    let mut lanes = [0.0; SUM_LANES];
+    let (chunks, rest) = x.as_chunks::<SUM_LANES>();
     for chunk in chunks {
-        for (lane, entry) in lanes.iter_mut().zip(chunk) {
-            *lane += entry;
+        for lane in 0..SUM_LANES {
+            lanes[lane] += chunk[lane];
         }
     }
-    for (lane, entry) in lanes.iter_mut().zip(rest) {
-        *lane += entry;
-    }
-    for half in [8, 4, 2, 1] {
-        for lane in 0..half {
-            lanes[lane] += lanes[lane + half];
-        }
-    }
-    lanes[0]
+    let mut last = [0.0; SUM_LANES];
+    last[..rest.len()].copy_from_slice(rest);
+    tree(plus(lanes, last))
 }
 
 /// `Σ c_i c_{i+t}` of every half at [`TOGETHER`] lags from `lag` on.
@@ -394,16 +389,17 @@ impl Work for Products<'_> {
     fn run<A: Arithmetic>(self) {
         let halves = self.layout.halves.iter().zip(&self.layout.places);
         for ((half, &place), sums) in halves.zip(self.sums) {
-            let length = half.len().next_multiple_of(LANES);
-            let early = self.centred[place..place + length].as_chunks::<LANES>().0;
-            let later: [&[f64]; TOGETHER] =
-                std::array::from_fn(|t| &self.centred[place + self.lag + t..][..length]);
-            let later = later.map(|later| later.as_chunks::<LANES>().0);
+            let chunks = half.len().div_ceil(LANES);
+            let early = &self.centred[place..place + chunks * LANES];
             let mut lanes = [[0.0; LANES]; TOGETHER];
-            for (chunk, early) in early.iter().enumerate() {
-                for (lanes, later) in lanes.iter_mut().zip(&later) {
-                    for lane in 0..LANES {
-                        lanes[lane] = A::mul_add(early[lane], later[chunk][lane], lanes[lane]);
+            let reach = chunks * LANES + TOGETHER;
+            let later = &self.centred[place + self.lag..][..reach];
+            for (start, a) in (0..).step_by(LANES).zip(early.as_chunks::<LANES>().0) {
+                if let Some(b) = later[start..].first_chunk::<{ LANES + TOGETHER }>() {
+                    for (t, lanes) in lanes.iter_mut().enumerate() {
+                        for lane in 0..LANES {
+                            lanes[lane] = A::mul_add(a[lane], b[t + lane], lanes[lane]);
+                        }
                     }
                 }
             }

@@ -5,7 +5,7 @@ use super::vector::exp::exp;
 use super::vector::{Arithmetic, Work, dispatch};
 use super::weight_sums::larger;
 
-const LANES: usize = 16;
+pub(super) const LANES: usize = 16;
 const BLOCK: usize = 4096;
 
 /// Whether all entries are finite.
@@ -76,10 +76,8 @@ fn lane_maximum(x: &[f64]) -> f64 {
             lanes[lane] = larger(chunk[lane], lanes[lane]);
         }
     }
-    for (lane, &entry) in lanes.iter_mut().zip(rest) {
-        *lane = larger(entry, *lane);
-    }
-    lanes.into_iter().fold(f64::NEG_INFINITY, f64::max)
+    let last = rest.iter().copied().fold(f64::NEG_INFINITY, f64::max);
+    lanes.into_iter().fold(last, f64::max)
 }
 
 /// Takes `largest` off `x` and writes the exponentials; their sum, and the least `x`.
@@ -97,7 +95,7 @@ impl Work for Exponentials<'_> {
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) -> (f64, f64) {
-        let (mut total, mut least) = (0.0, [0.0; LANES]);
+        let (mut total, mut least, mut lowest) = (0.0, [0.0; LANES], 0.0);
         let largest = self.largest;
         for (x, r) in self.x.chunks_mut(BLOCK).zip(self.weights.chunks_mut(BLOCK)) {
             let mut lanes = [0.0; LANES];
@@ -111,15 +109,16 @@ impl Work for Exponentials<'_> {
                     least[lane] = larger(-x[lane], least[lane]);
                 }
             }
-            for (lane, (x, r)) in x_rest.iter_mut().zip(r_rest).enumerate() {
+            let mut rest = [0.0; LANES];
+            for (sum, (x, r)) in rest.iter_mut().zip(x_rest.iter_mut().zip(r_rest)) {
                 *x -= largest;
                 *r = exp::<A>(*x);
-                lanes[lane] += *r;
-                least[lane] = larger(-*x, least[lane]);
+                *sum = *r;
+                lowest = larger(-*x, lowest);
             }
-            total += tree(lanes);
+            total += tree(plus(lanes, rest));
         }
-        (total, -least.into_iter().fold(0.0, f64::max))
+        (total, -least.into_iter().fold(lowest, f64::max))
     }
 }
 
@@ -148,11 +147,12 @@ impl Work for Density<'_> {
                     lanes[lane] += y[lane];
                 }
             }
-            for (lane, (x, y)) in x_rest.iter().zip(y_rest).enumerate() {
+            let mut rest = [0.0; LANES];
+            for (sum, (x, y)) in rest.iter_mut().zip(x_rest.iter().zip(y_rest)) {
                 *y = exp::<A>(least - x);
-                lanes[lane] += *y;
+                *sum = *y;
             }
-            total += tree(lanes);
+            total += tree(plus(lanes, rest));
         }
         total
     }
@@ -219,14 +219,15 @@ impl Work for Moments<'_> {
                     spread[lane] = A::mul_add(r[lane], larger(x[lane], -1000.0), spread[lane]);
                 }
             }
+            let mut rest = [[0.0; LANES]; 3];
             for (lane, (&x, &r)) in x_rest.iter().zip(r_rest).enumerate() {
-                total[lane] += r;
-                squares[lane] = A::mul_add(r, r, squares[lane]);
-                spread[lane] = A::mul_add(r, larger(x, -1000.0), spread[lane]);
+                rest[0][lane] = r;
+                rest[1][lane] = r * r;
+                rest[2][lane] = r * larger(x, -1000.0);
             }
-            sums.total += tree(total);
-            sums.squares += tree(squares);
-            sums.spread += tree(spread);
+            sums.total += tree(plus(total, rest[0]));
+            sums.squares += tree(plus(squares, rest[1]));
+            sums.spread += tree(plus(spread, rest[2]));
         }
         sums
     }
@@ -303,19 +304,26 @@ impl Work for Powers<'_> {
                     cubes[lane] = A::mul_add(square, z[lane], cubes[lane]);
                 }
             }
+            let mut last = [[0.0; LANES]; 2];
             for (lane, &z) in rest.iter().enumerate() {
-                squares[lane] += z * z;
-                cubes[lane] = A::mul_add(z * z, z, cubes[lane]);
+                last[0][lane] = z * z;
+                last[1][lane] = z * z * z;
             }
-            found.0 += tree(squares);
-            found.1 += tree(cubes);
+            found.0 += tree(plus(squares, last[0]));
+            found.1 += tree(plus(cubes, last[1]));
         }
         found
     }
 }
 
+/// Rests are added up apart, so that the lanes of the loop stay in registers.
 #[inline(always)]
-fn tree(mut lanes: [f64; LANES]) -> f64 {
+pub(super) fn plus(a: [f64; LANES], b: [f64; LANES]) -> [f64; LANES] {
+    std::array::from_fn(|lane| a[lane] + b[lane])
+}
+
+#[inline(always)]
+pub(super) fn tree(mut lanes: [f64; LANES]) -> f64 {
     for half in [8, 4, 2, 1] {
         for lane in 0..half {
             lanes[lane] += lanes[lane + half];

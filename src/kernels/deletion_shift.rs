@@ -1,34 +1,34 @@
 //! What a block of deletions does to quantities: products of their weights with the powers of the
 //! quantities, in registers.
 
+use std::ops::Range;
+
 use ndarray::ArrayView2;
 
+use super::deletion_loops::{LANES as SUM_LANES, tree};
 use super::error::KernelError;
 use super::ordered::Interrupt;
 use super::vector::{Arithmetic, Work, dispatch};
 
-/// Quantities of a panel: lanes.
-const LANES: usize = 16;
+/// Quantities of a panel in double precision, and powers of one in single precision: lanes.
+const LANES: usize = 8;
+const WIDE: usize = 16;
 
 /// Draws of which panels and weights lie in the nearest cache together, and whose squares are summed
 /// in single precision.
 const DRAWS: usize = 256;
 
-/// Columns whose sums lie in registers: those of shifts, and those of their squares.
-const TOGETHER: usize = 4;
-const PAIR: usize = 2;
+/// Columns whose sums lie in registers.
+const TOGETHER: usize = 8;
 
-/// Sums of a column and a quantity that squares of the series are made of.
-const SQUARES: usize = 5;
-
-/// Standardised quantities by panels of [`LANES`], draw after draw, and their powers.
+/// Standardised quantities by panels, draw after draw, and their powers.
 pub struct Panels {
     count: usize,
     draws: usize,
     /// Panel after panel: `f`.
     first: Vec<[f64; LANES]>,
-    /// Panel after panel: `f`, `f²`, `f³`.
-    powers: Vec<[[f32; LANES]; 3]>,
+    /// Panel after panel: all `f`, then all `f²`, then all `f³`.
+    powers: Vec<[f32; WIDE]>,
     /// `n v`.
     base: Vec<f64>,
     /// `Σ (n v)² (f² + 1)²/4`.
@@ -52,16 +52,15 @@ impl Panels {
     /// Panels of `quantities`, `(n, P)`, for base weights `(n,)`.
     pub fn new(quantities: ArrayView2<'_, f64>, weights: &[f64]) -> Self {
         let (draws, count) = quantities.dim();
-        let panels = count.div_ceil(LANES);
-        let mut first = vec![[0.0; LANES]; panels * draws];
-        let mut powers = vec![[[0.0; LANES]; 3]; panels * draws];
+        let mut first = vec![[0.0; LANES]; count.div_ceil(LANES) * draws];
+        let mut powers = vec![[0.0; WIDE]; (3 * count).div_ceil(WIDE) * draws];
         let base: Vec<f64> = weights.iter().map(|v| draws as f64 * v).collect();
         let mut own = vec![0.0; count];
         for ((s, quantity), &f) in quantities.indexed_iter() {
-            let (place, lane) = (quantity / LANES * draws + s, quantity % LANES);
-            first[place][lane] = f;
+            first[quantity / LANES * draws + s][quantity % LANES] = f;
             for (power, value) in [f, f * f, f * f * f].into_iter().enumerate() {
-                powers[place][power][lane] = value as f32;
+                let place = power * count + quantity;
+                powers[place / WIDE * draws + s][place % WIDE] = value as f32;
             }
             own[quantity] += (base[s] * (f * f + 1.0) / 2.0).powi(2);
         }
@@ -91,61 +90,44 @@ impl Panels {
         columns: usize,
         interrupt: &Interrupt<'_>,
     ) -> Result<Shifts, KernelError> {
-        let mut found = Vec::new();
         if self.is_empty() {
+            let found = Vec::new();
             return Ok(Shifts { count: 0, found });
         }
-        let panels = self.count.div_ceil(LANES);
-        let mut sums = Sums::new(panels * columns.next_multiple_of(TOGETHER));
-        let mut block = Block::new(columns);
+        let mut block = Block::new(columns, self.count);
         for start in (0..self.draws).step_by(DRAWS) {
             interrupt.check()?;
-            let length = DRAWS.min(self.draws - start);
+            let range = start..self.draws.min(start + DRAWS);
             dispatch(Fill {
                 x,
                 apart,
-                base: &self.base[start..start + length],
                 start,
+                base: &self.base[range.clone()],
                 block: &mut block,
             });
-            for panel in 0..panels {
-                let rows = panel * self.draws + start;
-                dispatch(Products {
-                    first: &self.first[rows..rows + length],
-                    powers: &self.powers[rows..rows + length],
-                    block: &block,
-                    sums: &mut sums,
-                    panel,
-                });
-            }
+            dispatch(Products {
+                panels: self,
+                range,
+                block: &mut block,
+            });
         }
+        let mut found = Vec::with_capacity(columns * self.count);
         for column in 0..columns {
-            for quantity in 0..self.count {
-                let place = quantity / LANES * block.columns + column;
-                let lane = quantity % LANES;
-                let squares = sums.squares[place].map(|sum| sum[lane]);
-                let pair = (block.squares[column], block.products[column]);
-                let shift = sums.first[place][lane] / self.draws as f64;
-                found.push(self.finish(shift, squares, pair, quantity));
-            }
+            found.extend((0..self.count).map(|quantity| self.one(&block, column, quantity)));
         }
-        Ok(Shifts {
-            count: self.count,
-            found,
-        })
+        let count = self.count;
+        Ok(Shifts { count, found })
     }
 
     /// With `x = n (w − v)`, `b = n v` the series is `n z = x (f − m) − b m (f² + 1)/2`: in this form
     /// nothing cancels however little the weights differ from those of the base.
-    fn finish(
-        &self,
-        m: f64,
-        [xx_f, xx_ff, xb_f, xb_ff, xb_fff]: [f64; SQUARES],
-        (xx, xb): (f64, f64),
-        quantity: usize,
-    ) -> (f64, f64) {
-        let target = xx_ff - 2.0 * m * xx_f + m * m * xx;
-        let both = m * (xb_fff + xb_f - m * xb_ff - m * xb);
+    fn one(&self, block: &Block, column: usize, quantity: usize) -> (f64, f64) {
+        let squares = |power: usize| block.squares.of(power * self.count + quantity, column);
+        let products = |power: usize| block.products.of(power * self.count + quantity, column);
+        let (xx, xb) = block.alone[column];
+        let m = block.first.of(quantity, column) / self.draws as f64;
+        let target = squares(1) - 2.0 * m * squares(0) + m * m * xx;
+        let both = m * (products(2) + products(0) - m * products(1) - m * xb);
         let square = target - both + m * m * self.own[quantity];
         (m, square.max(0.0) / (self.draws as f64).powi(2))
     }
@@ -153,54 +135,59 @@ impl Panels {
 
 /// Some draws of the weights of a block of columns, and sums over all draws so far.
 struct Block {
-    /// Columns, a multiple of [`TOGETHER`].
-    columns: usize,
     used: usize,
-    length: usize,
-    /// `x`.
-    first: Vec<[f64; DRAWS]>,
-    /// `x²` and `x b`.
-    second: Vec<[[f32; DRAWS]; 2]>,
-    /// `Σ x²`, `Σ x b`.
-    squares: Vec<f64>,
-    products: Vec<f64>,
+    /// `x`, `x²` and `x b` of so many columns at a time, and these of every draw.
+    x: Vec<[f64; DRAWS]>,
+    xx: Vec<[f32; DRAWS]>,
+    xb: Vec<[f32; DRAWS]>,
+    /// `Σ x f`; `Σ x² f`, `Σ x² f²`; `Σ x b f` and so on to `f³`.
+    first: Sums<LANES>,
+    squares: Sums<WIDE>,
+    products: Sums<WIDE>,
+    /// `Σ x²` and `Σ x b`.
+    alone: Vec<(f64, f64)>,
 }
 
 impl Block {
-    fn new(used: usize) -> Self {
+    fn new(used: usize, quantities: usize) -> Self {
         let columns = used.next_multiple_of(TOGETHER);
         Self {
-            columns,
             used,
-            length: 0,
-            first: vec![[0.0; DRAWS]; columns],
-            second: vec![[[0.0; DRAWS]; 2]; columns],
-            squares: vec![0.0; columns],
-            products: vec![0.0; columns],
+            x: vec![[0.0; DRAWS]; columns],
+            xx: vec![[0.0; DRAWS]; columns],
+            xb: vec![[0.0; DRAWS]; columns],
+            first: Sums::new(columns, quantities),
+            squares: Sums::new(columns, 2 * quantities),
+            products: Sums::new(columns, 3 * quantities),
+            alone: vec![(0.0, 0.0); columns],
         }
     }
 }
 
-/// Sums over draws, one entry a panel and column.
-struct Sums {
-    first: Vec<[f64; LANES]>,
-    squares: Vec<[[f64; LANES]; SQUARES]>,
+/// Sums over draws, panel after panel and column after column.
+struct Sums<const W: usize> {
+    columns: usize,
+    lanes: Vec<[f64; W]>,
 }
 
-impl Sums {
-    fn new(entries: usize) -> Self {
+impl<const W: usize> Sums<W> {
+    fn new(columns: usize, entries: usize) -> Self {
         Self {
-            first: vec![[0.0; LANES]; entries],
-            squares: vec![[[0.0; LANES]; SQUARES]; entries],
+            columns,
+            lanes: vec![[0.0; W]; entries.div_ceil(W) * columns],
         }
+    }
+
+    fn of(&self, entry: usize, column: usize) -> f64 {
+        self.lanes[entry / W * self.columns + column][entry % W]
     }
 }
 
 struct Fill<'a> {
     x: &'a [f64],
     apart: usize,
-    base: &'a [f64],
     start: usize,
+    base: &'a [f64],
     block: &'a mut Block,
 }
 
@@ -209,31 +196,35 @@ impl Work for Fill<'_> {
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
-        let length = self.base.len();
-        self.block.length = length;
+        let length = self.base.len().min(DRAWS);
         for column in 0..self.block.used {
-            let x = &self.x[column * self.apart + self.start..][..length];
-            self.block.first[column][..length].copy_from_slice(x);
-            let [squares, products] = &mut self.block.second[column];
-            let (mut xx, mut xb) = (0.0, 0.0);
-            for (s, (x, b)) in x.iter().zip(self.base).enumerate() {
-                squares[s] = (x * x) as f32;
-                products[s] = (x * b) as f32;
-                xx += x * x;
-                xb += x * b;
+            let source = &self.x[column * self.apart + self.start..][..length];
+            let x = &mut self.block.x[column];
+            *x = [0.0; DRAWS];
+            x[..length].copy_from_slice(source);
+            let mut b = [0.0; DRAWS];
+            b[..length].copy_from_slice(&self.base[..length]);
+            let (xx, xb) = (&mut self.block.xx[column], &mut self.block.xb[column]);
+            let [mut squares, mut products] = [[0.0; SUM_LANES]; 2];
+            for start in (0..DRAWS).step_by(SUM_LANES) {
+                for lane in 0..SUM_LANES {
+                    let (x, b) = (x[start + lane], b[start + lane]);
+                    xx[start + lane] = (x * x) as f32;
+                    xb[start + lane] = (x * b) as f32;
+                    squares[lane] = A::mul_add(x, x, squares[lane]);
+                    products[lane] = A::mul_add(x, b, products[lane]);
+                }
             }
-            self.block.squares[column] += xx;
-            self.block.products[column] += xb;
+            self.block.alone[column].0 += tree(squares);
+            self.block.alone[column].1 += tree(products);
         }
     }
 }
 
 struct Products<'a> {
-    first: &'a [[f64; LANES]],
-    powers: &'a [[[f32; LANES]; 3]],
-    block: &'a Block,
-    sums: &'a mut Sums,
-    panel: usize,
+    panels: &'a Panels,
+    range: Range<usize>,
+    block: &'a mut Block,
 }
 
 impl Work for Products<'_> {
@@ -241,42 +232,67 @@ impl Work for Products<'_> {
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
-        let (block, offset) = (self.block, self.panel * self.block.columns);
-        let sums = &mut self.sums.first[offset..offset + block.columns];
-        let columns = block.first.as_chunks::<TOGETHER>().0;
-        for (x, sums) in columns.iter().zip(sums.as_chunks_mut::<TOGETHER>().0) {
-            let mut lanes = *sums;
-            for (s, f) in self.first.iter().enumerate() {
-                for (lanes, x) in lanes.iter_mut().zip(x) {
-                    for lane in 0..LANES {
-                        lanes[lane] = A::mul_add(x[s % DRAWS], f[lane], lanes[lane]);
-                    }
-                }
-            }
-            *sums = lanes;
+        let Block {
+            x,
+            xx,
+            xb,
+            first,
+            squares,
+            products,
+            ..
+        } = self.block;
+        let rows = |panel: usize| {
+            let begin = panel * self.panels.draws;
+            begin + self.range.start..begin + self.range.end
+        };
+        let columns = first.columns;
+        for (panel, sums) in first.lanes.chunks_mut(columns).enumerate() {
+            double::<A>(&self.panels.first[rows(panel)], x, sums);
         }
-        let sums = &mut self.sums.squares[offset..offset + block.columns];
-        let columns = block.second.as_chunks::<PAIR>().0;
-        for (x, sums) in columns.iter().zip(sums.as_chunks_mut::<PAIR>().0) {
-            let mut lanes = [[[0.0_f32; LANES]; SQUARES]; PAIR];
-            for (s, [f, ff, fff]) in self.powers.iter().enumerate() {
-                for (lanes, [xx, xb]) in lanes.iter_mut().zip(x) {
-                    let (xx, xb) = (xx[s % DRAWS], xb[s % DRAWS]);
-                    for lane in 0..LANES {
-                        lanes[0][lane] = A::mul_add_single(xx, f[lane], lanes[0][lane]);
-                        lanes[1][lane] = A::mul_add_single(xx, ff[lane], lanes[1][lane]);
-                        lanes[2][lane] = A::mul_add_single(xb, f[lane], lanes[2][lane]);
-                        lanes[3][lane] = A::mul_add_single(xb, ff[lane], lanes[3][lane]);
-                        lanes[4][lane] = A::mul_add_single(xb, fff[lane], lanes[4][lane]);
-                    }
+        for (panel, sums) in squares.lanes.chunks_mut(columns).enumerate() {
+            single::<A>(&self.panels.powers[rows(panel)], xx, sums);
+        }
+        for (panel, sums) in products.lanes.chunks_mut(columns).enumerate() {
+            single::<A>(&self.panels.powers[rows(panel)], xb, sums);
+        }
+    }
+}
+
+/// `Σ x f` over some draws, added to the sums of a panel.
+#[inline(always)]
+fn double<A: Arithmetic>(f: &[[f64; LANES]], x: &[[f64; DRAWS]], sums: &mut [[f64; LANES]]) {
+    let columns = x.as_chunks::<TOGETHER>().0;
+    for (x, sums) in columns.iter().zip(sums.as_chunks_mut::<TOGETHER>().0) {
+        let mut lanes = *sums;
+        for (s, f) in f.iter().enumerate() {
+            for column in 0..TOGETHER {
+                for lane in 0..LANES {
+                    let sum = lanes[column][lane];
+                    lanes[column][lane] = A::mul_add(x[column][s % DRAWS], f[lane], sum);
                 }
             }
-            for (sums, lanes) in sums.iter_mut().zip(&lanes) {
-                for (sums, lanes) in sums.iter_mut().zip(lanes) {
-                    for (sum, lane) in sums.iter_mut().zip(lanes) {
-                        *sum += f64::from(*lane);
-                    }
+        }
+        *sums = lanes;
+    }
+}
+
+/// The same in single precision.
+#[inline(always)]
+fn single<A: Arithmetic>(f: &[[f32; WIDE]], x: &[[f32; DRAWS]], sums: &mut [[f64; WIDE]]) {
+    let columns = x.as_chunks::<TOGETHER>().0;
+    for (x, sums) in columns.iter().zip(sums.as_chunks_mut::<TOGETHER>().0) {
+        let mut lanes = [[0.0; WIDE]; TOGETHER];
+        for (s, f) in f.iter().enumerate() {
+            for column in 0..TOGETHER {
+                for lane in 0..WIDE {
+                    let sum = lanes[column][lane];
+                    lanes[column][lane] = A::mul_add_single(x[column][s % DRAWS], f[lane], sum);
                 }
+            }
+        }
+        for (sums, lanes) in sums.iter_mut().zip(&lanes) {
+            for (sum, lane) in sums.iter_mut().zip(lanes) {
+                *sum += f64::from(*lane);
             }
         }
     }
