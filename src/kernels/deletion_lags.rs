@@ -7,7 +7,7 @@
 
 use std::ops::Range;
 
-use super::deletion_loops::{LANES as SUM_LANES, plus, tree};
+use super::deletion_loops::{LANES, plus, tree};
 use super::error::KernelError;
 use super::f_tail::f_tail;
 use super::long_run::long_run_variance;
@@ -19,8 +19,6 @@ const TOGETHER: usize = 6;
 
 /// Batches of lags; a series that needs more goes to [`long_run_variance`].
 const BATCHES: usize = 8;
-
-const LANES: usize = 8;
 
 /// Zeros behind every half: as many as the largest lag and what a whole vector reads beyond it.
 const GAP: usize = TOGETHER * BATCHES + LANES;
@@ -362,14 +360,14 @@ impl Work for Centre<'_> {
 
 #[inline(always)]
 fn lane_sum(x: &[f64]) -> f64 {
-    let mut lanes = [0.0; SUM_LANES];
-    let (chunks, rest) = x.as_chunks::<SUM_LANES>();
+    let mut lanes = [0.0; LANES];
+    let (chunks, rest) = x.as_chunks::<LANES>();
     for chunk in chunks {
-        for lane in 0..SUM_LANES {
+        for lane in 0..LANES {
             lanes[lane] += chunk[lane];
         }
     }
-    let mut last = [0.0; SUM_LANES];
+    let mut last = [0.0; LANES];
     last[..rest.len()].copy_from_slice(rest);
     tree(plus(lanes, last))
 }
@@ -389,23 +387,21 @@ impl Work for Products<'_> {
     fn run<A: Arithmetic>(self) {
         let halves = self.layout.halves.iter().zip(&self.layout.places);
         for ((half, &place), sums) in halves.zip(self.sums) {
-            let chunks = half.len().div_ceil(LANES);
-            let early = &self.centred[place..place + chunks * LANES];
+            let length = half.len().next_multiple_of(LANES);
+            let early = self.centred[place..place + length].as_chunks::<LANES>().0;
+            let later: [&[[f64; LANES]]; TOGETHER] = std::array::from_fn(|t| {
+                let begin = place + self.lag + t;
+                &self.centred[begin..begin + length].as_chunks().0[..early.len()]
+            });
             let mut lanes = [[0.0; LANES]; TOGETHER];
-            let reach = chunks * LANES + TOGETHER;
-            let later = &self.centred[place + self.lag..][..reach];
-            for (start, a) in (0..).step_by(LANES).zip(early.as_chunks::<LANES>().0) {
-                if let Some(b) = later[start..].first_chunk::<{ LANES + TOGETHER }>() {
-                    for (t, lanes) in lanes.iter_mut().enumerate() {
-                        for lane in 0..LANES {
-                            lanes[lane] = A::mul_add(a[lane], b[t + lane], lanes[lane]);
-                        }
+            for (chunk, a) in early.iter().enumerate() {
+                for (lanes, b) in lanes.iter_mut().zip(&later) {
+                    for lane in 0..LANES {
+                        lanes[lane] = A::mul_add(a[lane], b[chunk][lane], lanes[lane]);
                     }
                 }
             }
-            for (sum, t) in sums.iter_mut().zip(lanes) {
-                *sum = ((t[0] + t[4]) + (t[2] + t[6])) + ((t[1] + t[5]) + (t[3] + t[7]));
-            }
+            *sums = lanes.map(tree);
         }
     }
 }

@@ -11,15 +11,15 @@ use super::ordered::Interrupt;
 use super::vector::{Arithmetic, Work, dispatch};
 
 /// Quantities of a panel in double precision, and powers of one in single precision: lanes.
-const LANES: usize = 8;
-const WIDE: usize = 16;
+const LANES: usize = 16;
+const WIDE: usize = 32;
 
 /// Draws of which panels and weights lie in the nearest cache together, and whose squares are summed
 /// in single precision.
 const DRAWS: usize = 256;
 
 /// Columns whose sums lie in registers.
-const TOGETHER: usize = 8;
+const TOGETHER: usize = 4;
 
 /// Standardised quantities by panels, draw after draw, and their powers.
 pub struct Panels {
@@ -105,11 +105,7 @@ impl Panels {
                 base: &self.base[range.clone()],
                 block: &mut block,
             });
-            dispatch(Products {
-                panels: self,
-                range,
-                block: &mut block,
-            });
+            self.multiply(range, &mut block);
         }
         let mut found = Vec::with_capacity(columns * self.count);
         for column in 0..columns {
@@ -117,6 +113,33 @@ impl Panels {
         }
         let count = self.count;
         Ok(Shifts { count, found })
+    }
+
+    /// Adds some draws to the sums of a block.
+    fn multiply(&self, range: Range<usize>, block: &mut Block) {
+        let rows = |panel: usize| {
+            let begin = panel * self.draws;
+            begin + range.start..begin + range.end
+        };
+        let columns = block.first.columns;
+        for (panel, sums) in block.first.lanes.chunks_mut(columns).enumerate() {
+            let f = &self.first[rows(panel)];
+            let parts = block.x.as_chunks().0.iter();
+            for (x, sums) in parts.zip(sums.chunks_mut(TOGETHER)) {
+                add(sums, &dispatch(Double { f, x }));
+            }
+        }
+        for (x, sums) in [
+            (&block.xx, &mut block.squares),
+            (&block.xb, &mut block.products),
+        ] {
+            for (panel, sums) in sums.lanes.chunks_mut(columns).enumerate() {
+                let f = &self.powers[rows(panel)];
+                for (x, sums) in x.as_chunks().0.iter().zip(sums.chunks_mut(TOGETHER)) {
+                    add(sums, &dispatch(Single { f, x }));
+                }
+            }
+        }
     }
 
     /// With `x = n (w − v)`, `b = n v` the series is `n z = x (f − m) − b m (f² + 1)/2`: in this form
@@ -183,6 +206,12 @@ impl<const W: usize> Sums<W> {
     }
 }
 
+fn add<T: Copy + Into<f64>, const W: usize>(sums: &mut [[f64; W]], terms: &[[T; W]]) {
+    for (sum, &term) in sums.iter_mut().flatten().zip(terms.iter().flatten()) {
+        *sum += term.into();
+    }
+}
+
 struct Fill<'a> {
     x: &'a [f64],
     apart: usize,
@@ -221,79 +250,50 @@ impl Work for Fill<'_> {
     }
 }
 
-struct Products<'a> {
-    panels: &'a Panels,
-    range: Range<usize>,
-    block: &'a mut Block,
+/// `Σ x f` of some columns over some draws.
+struct Double<'a> {
+    f: &'a [[f64; LANES]],
+    x: &'a [[f64; DRAWS]; TOGETHER],
 }
 
-impl Work for Products<'_> {
-    type Output = ();
+impl Work for Double<'_> {
+    type Output = [[f64; LANES]; TOGETHER];
 
     #[inline(always)]
-    fn run<A: Arithmetic>(self) {
-        let Block {
-            x,
-            xx,
-            xb,
-            first,
-            squares,
-            products,
-            ..
-        } = self.block;
-        let rows = |panel: usize| {
-            let begin = panel * self.panels.draws;
-            begin + self.range.start..begin + self.range.end
-        };
-        let columns = first.columns;
-        for (panel, sums) in first.lanes.chunks_mut(columns).enumerate() {
-            double::<A>(&self.panels.first[rows(panel)], x, sums);
-        }
-        for (panel, sums) in squares.lanes.chunks_mut(columns).enumerate() {
-            single::<A>(&self.panels.powers[rows(panel)], xx, sums);
-        }
-        for (panel, sums) in products.lanes.chunks_mut(columns).enumerate() {
-            single::<A>(&self.panels.powers[rows(panel)], xb, sums);
-        }
-    }
-}
-
-/// `Σ x f` over some draws, added to the sums of a panel.
-#[inline(always)]
-fn double<A: Arithmetic>(f: &[[f64; LANES]], x: &[[f64; DRAWS]], sums: &mut [[f64; LANES]]) {
-    let columns = x.as_chunks::<TOGETHER>().0;
-    for (x, sums) in columns.iter().zip(sums.as_chunks_mut::<TOGETHER>().0) {
-        let mut lanes = *sums;
-        for (s, f) in f.iter().enumerate() {
-            for column in 0..TOGETHER {
+    fn run<A: Arithmetic>(self) -> Self::Output {
+        let mut lanes = [[0.0; LANES]; TOGETHER];
+        for (s, f) in self.f.iter().enumerate() {
+            for (lanes, x) in lanes.iter_mut().zip(self.x) {
+                let x = x[s % DRAWS];
                 for lane in 0..LANES {
-                    let sum = lanes[column][lane];
-                    lanes[column][lane] = A::mul_add(x[column][s % DRAWS], f[lane], sum);
+                    lanes[lane] = A::mul_add(x, f[lane], lanes[lane]);
                 }
             }
         }
-        *sums = lanes;
+        lanes
     }
 }
 
 /// The same in single precision.
-#[inline(always)]
-fn single<A: Arithmetic>(f: &[[f32; WIDE]], x: &[[f32; DRAWS]], sums: &mut [[f64; WIDE]]) {
-    let columns = x.as_chunks::<TOGETHER>().0;
-    for (x, sums) in columns.iter().zip(sums.as_chunks_mut::<TOGETHER>().0) {
+struct Single<'a> {
+    f: &'a [[f32; WIDE]],
+    x: &'a [[f32; DRAWS]; TOGETHER],
+}
+
+impl Work for Single<'_> {
+    type Output = [[f32; WIDE]; TOGETHER];
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> Self::Output {
         let mut lanes = [[0.0; WIDE]; TOGETHER];
-        for (s, f) in f.iter().enumerate() {
-            for column in 0..TOGETHER {
+        for (s, f) in self.f.iter().enumerate() {
+            for (lanes, x) in lanes.iter_mut().zip(self.x) {
+                let x = x[s % DRAWS];
                 for lane in 0..WIDE {
-                    let sum = lanes[column][lane];
-                    lanes[column][lane] = A::mul_add_single(x[column][s % DRAWS], f[lane], sum);
+                    lanes[lane] = A::mul_add_single(x, f[lane], lanes[lane]);
                 }
             }
         }
-        for (sums, lanes) in sums.iter_mut().zip(&lanes) {
-            for (sum, lane) in sums.iter_mut().zip(lanes) {
-                *sum += f64::from(*lane);
-            }
-        }
+        lanes
     }
 }
