@@ -30,7 +30,7 @@ class Table:
     Parameters
     ----------
     columns : mapping of str to sequence
-        The columns in order.
+        The columns in order; None is a cell that says nothing.
     errors : mapping of str to sequence of float
         For a column of numbers, their Monte Carlo errors: numbers print only the digits which
         the error supports. Full precision stays in the columns.
@@ -135,12 +135,14 @@ class Table:
         numeric = []
         for name, column in self.columns.items():
             error = self.errors.get(name)
-            is_number = all(isinstance(v, int | float) for v in column) and len(column) > 0
+            told = [v for v in column if v is not None]
+            is_number = all(isinstance(v, int | float) for v in told) and len(told) > 0
             numeric.append(is_number)
             if is_number and error is not None:
-                cells.append([rounded(v, e) for v, e in zip(column, error, strict=True)])
+                pairs = zip(column, error, strict=True)
+                cells.append(["" if v is None else rounded(v, e) for v, e in pairs])
             elif is_number:
-                cells.append([short(v) for v in column])
+                cells.append(["" if v is None else short(v) for v in column])
             else:
                 cells.append([str(v) for v in column])
         return cells, numeric

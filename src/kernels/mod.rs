@@ -6,6 +6,11 @@
 pub mod columns;
 pub mod correlation;
 pub mod cumulated;
+pub mod deletion;
+mod deletion_column;
+mod deletion_lags;
+mod deletion_loops;
+mod deletion_shift;
 pub mod densities;
 pub mod effective;
 pub mod entry;

@@ -46,7 +46,7 @@ SIGNATURES = {
     "Answer.covariance": "(self, quantity=None)",
     "Answer.shift": "(self, quantity=None, of='mean')",
     "Answer.distance": "(self, quantity=None)",
-    "Answer.table": "(self, quantities=None, probs=(0.05, 0.5, 0.95))",
+    "Answer.table": "(self, quantities=None, probs=(0.05, 0.5, 0.95), *, event=None, level=None)",
     "Answer.resample": "(self, size, method='systematic', *, rng=None)",
     "Estimate.error_interval": "(self, level=0.95)",
     "Estimate.to_xarray": "(self)",

@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from steelyard.answers.bands import batch_edges, batch_sums, critical_value
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.quantities import Quantity, event_mask
 from steelyard.answers.tabulate import element_names
@@ -19,7 +20,6 @@ from steelyard.base.draws import Array
 from steelyard.changes import Target, form_target
 from steelyard.errors import ArgumentError, SteelyardError
 from steelyard.planning.scenarios import Plan
-from steelyard.sensitivity.bands import batch_edges, batch_sums, critical_value
 from steelyard.sensitivity.families import remembering
 from steelyard.sensitivity.gathering import Gathered
 from steelyard.sensitivity.nodes import (

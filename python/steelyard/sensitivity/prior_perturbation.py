@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from steelyard import _core
+from steelyard.answers.bands import batch_edges, batch_sums
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, Series, finish
 from steelyard.answers.quantities import Quantity
@@ -18,7 +19,6 @@ from steelyard.base.draws import Array
 from steelyard.base.priors import PriorTerm, known_term, stated_prior
 from steelyard.densities import Distribution
 from steelyard.errors import ArgumentError, PriorError
-from steelyard.sensitivity.bands import batch_edges, batch_sums
 from steelyard.sensitivity.bounds import weighed_by
 from steelyard.sensitivity.tilting import find_root
 from steelyard.weighing.series import relative_efficiency

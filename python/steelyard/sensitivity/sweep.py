@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import numpy.typing as npt
 
+from steelyard.answers.bands import batch_edges, batch_sums, critical_value
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.quantities import Quantity, labelled, read_quantity
 from steelyard.answers.tabulate import element_names
@@ -17,7 +18,6 @@ from steelyard.arrays import Frozen, ReadOnly
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.errors import ArgumentError, UnknownNameError
-from steelyard.sensitivity.bands import batch_edges, batch_sums, critical_value
 from steelyard.sensitivity.families import Family, nodes_of, read_grid, remembering, targets_of
 from steelyard.sensitivity.gathering import Gathered
 from steelyard.sensitivity.nodes import (

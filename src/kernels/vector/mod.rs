@@ -19,6 +19,9 @@ pub mod stream;
 pub trait Arithmetic {
     /// `a·b + c`.
     fn mul_add(a: f64, b: f64, c: f64) -> f64;
+
+    /// The same in single precision.
+    fn mul_add_single(a: f32, b: f32, c: f32) -> f32;
 }
 
 /// One rounding, by an instruction of the processor.
@@ -32,11 +35,21 @@ impl Arithmetic for Fused {
     fn mul_add(a: f64, b: f64, c: f64) -> f64 {
         a.mul_add(b, c)
     }
+
+    #[inline(always)]
+    fn mul_add_single(a: f32, b: f32, c: f32) -> f32 {
+        a.mul_add(b, c)
+    }
 }
 
 impl Arithmetic for Separate {
     #[inline(always)]
     fn mul_add(a: f64, b: f64, c: f64) -> f64 {
+        a * b + c
+    }
+
+    #[inline(always)]
+    fn mul_add_single(a: f32, b: f32, c: f32) -> f32 {
         a * b + c
     }
 }

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from itertools import pairwise
 
 import numpy as np
@@ -10,7 +11,7 @@ import numpy.typing as npt
 from steelyard.base import Draws
 from steelyard.base.draws import Array
 
-__all__ = ["batch_edges", "batch_sums", "critical_value"]
+__all__ = ["batch_edges", "batch_sums", "critical_value", "joint_level"]
 
 _BATCHES = 60
 _REPLICATES = 1000
@@ -66,3 +67,13 @@ def critical_value(sums: Array) -> float:
         largest = np.maximum(largest, deviations.max(axis=1))
     # Below the factor of a single column only the noise of the bootstrap can bring it.
     return max(float(np.quantile(largest, 0.95)), _SINGLE)
+
+
+def joint_level(sums: Array) -> float:
+    """
+    Level of single intervals which all columns of `sums` keep within together, 95 %.
+
+    That of :func:`critical_value` for normal deviates: intervals at this level may then use
+    Student's t, each with its own degrees of freedom.
+    """
+    return max(0.95, math.erf(critical_value(sums) / math.sqrt(2)))

@@ -1,0 +1,333 @@
+//! The loops over one column of [`super::deletion_column`]. Sums run over 16 lanes, these over blocks
+//! of 4096 draws.
+
+use super::vector::exp::exp;
+use super::vector::{Arithmetic, Work, dispatch};
+use super::weight_sums::larger;
+
+pub(super) const LANES: usize = 16;
+const BLOCK: usize = 4096;
+
+/// Whether all entries are finite.
+pub struct Finite<'a>(pub &'a [f64]);
+
+impl Work for Finite<'_> {
+    type Output = bool;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> bool {
+        let magnitude = |entry: &f64| entry.to_bits() & (u64::MAX >> 1);
+        self.0.iter().map(magnitude).fold(0, u64::max) < f64::INFINITY.to_bits()
+    }
+}
+
+/// Log densities to log ratios `log v − x`, in place; the largest. A draw without base weight has
+/// none.
+pub struct Ratios<'a> {
+    /// Log densities.
+    pub x: &'a mut [f64],
+    /// Log base weights, where they are not equal.
+    pub log_weights: Option<&'a [f64]>,
+}
+
+impl Work for Ratios<'_> {
+    type Output = f64;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> f64 {
+        match self.log_weights {
+            None => self.x.iter_mut().for_each(|x| *x = -*x),
+            Some(logs) => {
+                for (x, &log) in self.x.iter_mut().zip(logs) {
+                    *x = if log == f64::NEG_INFINITY {
+                        log
+                    } else {
+                        log - *x
+                    };
+                }
+            }
+        }
+        lane_maximum(self.x)
+    }
+}
+
+/// The largest entry; `−inf` without one.
+pub fn maximum_of(x: &[f64]) -> f64 {
+    dispatch(Maximum(x))
+}
+
+struct Maximum<'a>(&'a [f64]);
+
+impl Work for Maximum<'_> {
+    type Output = f64;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> f64 {
+        lane_maximum(self.0)
+    }
+}
+
+#[inline(always)]
+fn lane_maximum(x: &[f64]) -> f64 {
+    let mut lanes = [f64::NEG_INFINITY; LANES];
+    let (chunks, rest) = x.as_chunks::<LANES>();
+    for chunk in chunks {
+        for lane in 0..LANES {
+            lanes[lane] = larger(chunk[lane], lanes[lane]);
+        }
+    }
+    let last = rest.iter().copied().fold(f64::NEG_INFINITY, f64::max);
+    lanes.into_iter().fold(last, f64::max)
+}
+
+/// Takes `largest` off `x` and writes the exponentials; their sum, and the least `x`.
+pub struct Exponentials<'a> {
+    /// Logarithms.
+    pub x: &'a mut [f64],
+    /// Their largest.
+    pub largest: f64,
+    /// Where the exponentials go.
+    pub weights: &'a mut [f64],
+}
+
+impl Work for Exponentials<'_> {
+    type Output = (f64, f64);
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> (f64, f64) {
+        let (mut total, mut least, mut lowest) = (0.0, [0.0; LANES], 0.0);
+        let largest = self.largest;
+        for (x, r) in self.x.chunks_mut(BLOCK).zip(self.weights.chunks_mut(BLOCK)) {
+            let mut lanes = [0.0; LANES];
+            let ((x, x_rest), (r, r_rest)) =
+                (x.as_chunks_mut::<LANES>(), r.as_chunks_mut::<LANES>());
+            for (x, r) in x.iter_mut().zip(r) {
+                for lane in 0..LANES {
+                    x[lane] -= largest;
+                    r[lane] = exp::<A>(x[lane]);
+                    lanes[lane] += r[lane];
+                    least[lane] = larger(-x[lane], least[lane]);
+                }
+            }
+            let mut rest = [0.0; LANES];
+            for (sum, (x, r)) in rest.iter_mut().zip(x_rest.iter_mut().zip(r_rest)) {
+                *x -= largest;
+                *r = exp::<A>(*x);
+                *sum = *r;
+                lowest = larger(-*x, lowest);
+            }
+            total += tree(plus(lanes, rest));
+        }
+        (total, -least.into_iter().fold(lowest, f64::max))
+    }
+}
+
+/// Writes `exp(least − x)`: the density where the weight is its inverse. The sum.
+pub struct Density<'a> {
+    /// Log weights.
+    pub x: &'a [f64],
+    /// The least of them.
+    pub least: f64,
+    /// Where the density goes.
+    pub density: &'a mut [f64],
+}
+
+impl Work for Density<'_> {
+    type Output = f64;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> f64 {
+        let (mut total, least) = (0.0, self.least);
+        for (x, y) in self.x.chunks(BLOCK).zip(self.density.chunks_mut(BLOCK)) {
+            let mut lanes = [0.0; LANES];
+            let ((x, x_rest), (y, y_rest)) = (x.as_chunks::<LANES>(), y.as_chunks_mut::<LANES>());
+            for (x, y) in x.iter().zip(y) {
+                for lane in 0..LANES {
+                    y[lane] = exp::<A>(least - x[lane]);
+                    lanes[lane] += y[lane];
+                }
+            }
+            let mut rest = [0.0; LANES];
+            for (sum, (x, y)) in rest.iter_mut().zip(x_rest.iter().zip(y_rest)) {
+                *y = exp::<A>(least - x);
+                *sum = *y;
+            }
+            total += tree(plus(lanes, rest));
+        }
+        total
+    }
+}
+
+/// `to += factor · from + constant`.
+pub struct Add<'a> {
+    /// What is added.
+    pub from: &'a [f64],
+    /// Times what.
+    pub factor: f64,
+    /// And what to every entry.
+    pub constant: f64,
+    /// To what.
+    pub to: &'a mut [f64],
+}
+
+impl Work for Add<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        for (sum, entry) in self.to.iter_mut().zip(self.from) {
+            *sum += A::mul_add(self.factor, *entry, self.constant);
+        }
+    }
+}
+
+/// Sums of weights `r = exp(x)`.
+pub struct Sums {
+    /// `Σ r`.
+    pub total: f64,
+    /// `Σ r²`.
+    pub squares: f64,
+    /// `Σ r x`, with `0 · −inf = 0`.
+    pub spread: f64,
+}
+
+/// Forms [`Sums`].
+pub struct Moments<'a> {
+    /// Logarithms.
+    pub x: &'a [f64],
+    /// Their exponentials.
+    pub weights: &'a [f64],
+}
+
+impl Work for Moments<'_> {
+    type Output = Sums;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> Sums {
+        let mut sums = Sums {
+            total: 0.0,
+            squares: 0.0,
+            spread: 0.0,
+        };
+        for (x, r) in self.x.chunks(BLOCK).zip(self.weights.chunks(BLOCK)) {
+            let [mut total, mut squares, mut spread] = [[0.0; LANES]; 3];
+            let ((x, x_rest), (r, r_rest)) = (x.as_chunks::<LANES>(), r.as_chunks::<LANES>());
+            for (x, r) in x.iter().zip(r) {
+                for lane in 0..LANES {
+                    total[lane] += r[lane];
+                    squares[lane] = A::mul_add(r[lane], r[lane], squares[lane]);
+                    spread[lane] = A::mul_add(r[lane], larger(x[lane], -1000.0), spread[lane]);
+                }
+            }
+            let mut rest = [[0.0; LANES]; 3];
+            for (lane, (&x, &r)) in x_rest.iter().zip(r_rest).enumerate() {
+                rest[0][lane] = r;
+                rest[1][lane] = r * r;
+                rest[2][lane] = r * larger(x, -1000.0);
+            }
+            sums.total += tree(plus(total, rest[0]));
+            sums.squares += tree(plus(squares, rest[1]));
+            sums.spread += tree(plus(spread, rest[2]));
+        }
+        sums
+    }
+}
+
+/// `constant − factor · weight`.
+pub struct Weighed<'a> {
+    /// Weights.
+    pub weights: &'a [f64],
+    /// What they are taken off.
+    pub constant: f64,
+    /// Times what.
+    pub factor: f64,
+    /// Where the result goes.
+    pub out: &'a mut [f64],
+}
+
+impl Work for Weighed<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        for (target, weight) in self.out.iter_mut().zip(self.weights) {
+            *target = A::mul_add(-self.factor, *weight, self.constant);
+        }
+    }
+}
+
+/// `n (w − v)` from weights and their sum.
+pub struct Scaled<'a> {
+    /// Weights up to a constant.
+    pub weights: &'a [f64],
+    /// Normalised base weights.
+    pub base: &'a [f64],
+    /// Sum of `weights`.
+    pub total: f64,
+    /// Where the result goes.
+    pub out: &'a mut [f64],
+}
+
+impl Work for Scaled<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let count = self.base.len() as f64;
+        let factor = count / self.total;
+        for ((target, weight), v) in self.out.iter_mut().zip(self.weights).zip(self.base) {
+            *target = A::mul_add(factor, *weight, -count * v);
+        }
+    }
+}
+
+/// `Σ z²` and `Σ z³`.
+pub fn squares_and_cubes(z: &[f64]) -> (f64, f64) {
+    dispatch(Powers(z))
+}
+
+struct Powers<'a>(&'a [f64]);
+
+impl Work for Powers<'_> {
+    type Output = (f64, f64);
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> (f64, f64) {
+        let mut found = (0.0, 0.0);
+        for z in self.0.chunks(BLOCK) {
+            let (mut squares, mut cubes) = ([0.0; LANES], [0.0; LANES]);
+            let (chunks, rest) = z.as_chunks::<LANES>();
+            for z in chunks {
+                for lane in 0..LANES {
+                    let square = z[lane] * z[lane];
+                    squares[lane] += square;
+                    cubes[lane] = A::mul_add(square, z[lane], cubes[lane]);
+                }
+            }
+            let mut last = [[0.0; LANES]; 2];
+            for (lane, &z) in rest.iter().enumerate() {
+                last[0][lane] = z * z;
+                last[1][lane] = z * z * z;
+            }
+            found.0 += tree(plus(squares, last[0]));
+            found.1 += tree(plus(cubes, last[1]));
+        }
+        found
+    }
+}
+
+/// Rests are added up apart, so that the lanes of the loop stay in registers.
+#[inline(always)]
+pub(super) fn plus(a: [f64; LANES], b: [f64; LANES]) -> [f64; LANES] {
+    std::array::from_fn(|lane| a[lane] + b[lane])
+}
+
+#[inline(always)]
+pub(super) fn tree(mut lanes: [f64; LANES]) -> f64 {
+    for half in [8, 4, 2, 1] {
+        for lane in 0..half {
+            lanes[lane] += lanes[lane + half];
+        }
+    }
+    lanes[0]
+}
