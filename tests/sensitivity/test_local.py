@@ -89,3 +89,15 @@ def test_without_a_prior_or_with_another_functional_it_is_refused() -> None:
         local(sy.Fit({"x": np.arange(10.0)})._record)
     with pytest.raises(ArgumentError, match="'mean' or 'sd'"):
         local(cases.quays()._record, "mu", of="median")
+
+
+@pytest.mark.parametrize("sd", [1e-150, 1e150])
+def test_slopes_in_a_huge_or_tiny_scale_are_those_of_the_plain_one(sd: float) -> None:
+    # Draws in units of the prior sd: a derivative in the sd is then in that unit too.
+    x = np.random.default_rng(31).normal(size=(4, 100)) * 0.5
+    plain = sy.Fit({"mu": x}, {"mu": sy.Normal(0, 1)}).local("mu").derivative["mu"]
+    scaled = sy.Fit({"mu": sd * x}, {"mu": sy.Normal(0, sd)}).local("mu").derivative["mu"]
+    for name, slope in plain.items():
+        # 1e-11 relative: a handful of roundings, some of them in the score.
+        np.testing.assert_allclose(scaled[name].value, slope.value, rtol=1e-11)
+        np.testing.assert_allclose(scaled[name].error, slope.error, rtol=1e-11)

@@ -198,14 +198,16 @@ def _covariance(
     lead, width = score.shape[1:], influence.shape[1]
     values, series, spreads = [], [], []
     w = scale.weights.linear
-    for column in score.reshape(len(score), -1).T:
-        centred = column - float(_core.weighted_mean(column[:, None], w)[0])
-        product = influence * centred[:, None]
+    for raw in score.reshape(len(score), -1).T:
+        column, unit = in_unit(np.ascontiguousarray(raw)[:, None])
+        product = influence * (column - _core.weighted_mean(column, w))
         value = _core.weighted_mean(product, w)
         psi = product - value
-        values.append(value)
-        series.append(study(scale, psi))
-        spreads.append(np.sqrt(_core.weighted_mean(psi**2, w)))
+        series.append(study(scale, psi).times(unit))
+        spread = np.sqrt(_core.weighted_mean(psi**2, w))
+        with np.errstate(over="ignore"):
+            values.append(value * unit)
+            spreads.append(spread * unit)
     whole = Quantity(
         "derivative",
         np.broadcast_to(0.0, (scale.count, width)),
@@ -238,8 +240,6 @@ def _step(density: Distribution, name: str, shape: tuple[int, ...]) -> Array:
 
 
 def _times(estimate: Estimate, unit: Array) -> Estimate:
-    return replace(
-        estimate,
-        value=np.asarray(estimate.value) * unit,
-        error=np.asarray(estimate.error) * np.abs(unit),
-    )
+    with np.errstate(over="ignore"):
+        value, error = np.asarray(estimate.value) * unit, np.asarray(estimate.error) * np.abs(unit)
+    return replace(estimate, value=value, error=error)
