@@ -56,6 +56,11 @@ impl<'a> Cumulated<'a> {
         self.weights.is_empty()
     }
 
+    /// The last draw with weight.
+    pub fn last(&self) -> usize {
+        self.last
+    }
+
     /// The weights in a unit of which [`Self::total`] is the sum.
     pub fn scaled(&self) -> impl Iterator<Item = f64> {
         self.weights.iter().map(|weight| weight * self.scale)

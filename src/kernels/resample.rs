@@ -189,6 +189,10 @@ fn by_position(
         reached(shares, targets);
         count = copy_until(targets, first, chosen, count);
     });
+    // A point within a rounding of the whole is above no share.
+    if let Some(left) = chosen.get_mut(count..size) {
+        left.fill(weights.last() as i64);
+    }
 }
 
 fn residual(
