@@ -3,7 +3,8 @@
 
 use ndarray::{Array2, ArrayView2, Axis};
 
-use super::columns::{LINE, distance, expect_shape, gather_strip};
+use super::blocks::{LINE, distance, gather_strip};
+use super::columns::expect_shape;
 use super::error::KernelError;
 use super::lease::Lease;
 use super::mean::{BLOCK, Power, block_sum};
