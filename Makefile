@@ -4,8 +4,10 @@ SHELL := /bin/bash
 PYTHON ?= python3
 VENV ?= .venv
 RUN := $(VENV)/bin/python
+PYTHONS ?= python3
+SECONDS_EACH ?= 75
 
-.PHONY: help demo test test-python test-rust lint format develop bench honesty
+.PHONY: help demo test test-python test-rust lint format develop bench honesty wheels fuzz
 
 help: ## what there is
 	@grep -hE '^[a-z-]+:.*##' $(MAKEFILE_LIST) | sed -E 's/:.*##/:/'
@@ -28,16 +30,21 @@ test-python: $(VENV)/bin/pip
 test-rust:
 	cargo test --quiet --no-default-features
 	cargo test --quiet
+	cargo bench --quiet --no-run --no-default-features
 
-lint: $(VENV)/bin/pip ## rustfmt, clippy, ruff, mypy, stubtest
+lint: $(VENV)/bin/pip ## rustfmt, clippy, ruff, mypy, stubtest, workflow files
 	$(RUN) -m pip install --quiet --group lint --group test ".[all]"
 	cargo fmt --all --check
 	cargo clippy --quiet --all-targets -- -D warnings
 	cargo clippy --quiet --all-targets --no-default-features -- -D warnings
+	cargo fmt --manifest-path fuzz/Cargo.toml --check
+	cargo clippy --quiet --manifest-path fuzz/Cargo.toml --no-default-features -- -D warnings
 	$(RUN) -m ruff check .
 	$(RUN) -m ruff format --check .
 	$(RUN) -m mypy
 	$(RUN) -m mypy.stubtest steelyard._core
+	$(RUN) -m check_jsonschema --quiet --builtin-schema vendor.github-workflows .github/workflows/*.yml
+	$(VENV)/bin/zizmor --offline --quiet .github/workflows
 
 format: $(VENV)/bin/pip ## rewrite the sources in the house format
 	$(RUN) -m pip install --quiet --group lint
@@ -56,3 +63,10 @@ bench: $(VENV)/bin/pip ## speed and memory against plain NumPy/SciPy scripts, ve
 honesty: $(VENV)/bin/pip ## do error intervals and verdicts hold: a battery of problems with known answers
 	$(RUN) -m pip install --quiet --group test ".[all]"
 	$(RUN) benches/honesty/run.py --picture target/honesty.png
+
+wheels: ## build sdist and wheel, look through both, test the wheel under each of PYTHONS
+	$(PYTHON) .ci/wheels $(PYTHONS)
+
+fuzz: ## a million calls of the public API, then every kernel target for SECONDS_EACH
+	STEELYARD_FUZZ_CALLS=1000000 $(RUN) -m pytest -q tests/fuzz
+	fuzz/run $(SECONDS_EACH)

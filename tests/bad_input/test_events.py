@@ -39,6 +39,12 @@ BROKEN = [
     ("mu // 2 > 0.1", 4),
     ("~(mu > 0.1)", 0),
     ("mu > 'east", 5),
+    ("mu if mu else 1", 3),
+    ("lambda: 1", 6),
+    ("mu is 0", 3),
+    ("[m for m in mu]", 0),
+    ("not", 3),
+    ("", 0),
 ]
 
 

@@ -85,7 +85,8 @@ def resampled(draw: Any, x: np.ndarray) -> Any:
     # Sizes between these fit into memory on some machines only.
     size = mostly(st.integers(0, 50), -1, 2**50, 2**65)
     method = mostly(st.sampled_from(["systematic", "residual", "multinomial", "stratified"]), "?")
-    weights = arrays.arrays(np.float64, st.integers(1, 30), elements=st.floats(0, 1e300))
+    usual = st.one_of(st.floats(0.1, 10), st.floats(0, 1e300))
+    weights = arrays.arrays(np.float64, st.integers(1, 30), elements=usual, fill=st.just(1.0))
     w = mostly(weights, np.abs(x).ravel())
     key = mostly(st.just(b"k" * 32), b"")
     return _core.resample(w, size, method, key), (size,)

@@ -61,6 +61,10 @@ def test_further_answers_are_in_the_unit_of_the_quantity(unit: float) -> None:
         before, after = (getattr(answer.distance(q), name) for q in (X, unit * X))
         np.testing.assert_allclose(after.value, before.value, rtol=1e-9)
         np.testing.assert_allclose(after.error, before.error, rtol=1e-9)
+    one_row, other_row = (answer.table({"q": q}).columns for q in (X, unit * X))
+    for name in ("mean", "error", "low", "high", "sd", "q0.5"):
+        # 1e-10: limits close to 0 are differences of larger numbers.
+        np.testing.assert_allclose(other_row[name], unit * np.array(one_row[name]), rtol=1e-10)
     influence = sy.weights.influence(X.reshape(-1, 1), X.reshape(-1, 1))
     np.testing.assert_allclose(
         sy.weights.influence(X.reshape(-1, 1), unit * X.reshape(-1, 1)), influence, rtol=1e-12

@@ -220,21 +220,17 @@ def _grouped(parts: Mapping[str, Array], groups: Any) -> dict[str, Array]:
     out: dict[str, Array] = {}
     used: dict[str, str] = {}
     for label, members in groups.items():
+        where = f"groups[{label!r}]"
         if not isinstance(members, str | list | tuple | set | frozenset):
-            raise ArgumentTypeError(
-                f"groups[{label!r}]", "a list of terms", type(members).__name__, "Name the terms."
-            )
+            came = type(members).__name__
+            raise ArgumentTypeError(where, "a list of terms", came, "Name the terms.")
         for member in [members] if isinstance(members, str) else members:
             if not isinstance(member, str) or member not in parts:
-                raise UnknownNameError(
-                    f"groups[{label!r}]",
-                    "terms that the change alters",
-                    repr(member),
-                    close_names(str(member), parts),
-                )
+                known = close_names(str(member), parts)
+                raise UnknownNameError(where, "terms that the change alters", repr(member), known)
             if member in used:
                 raise ChangeError(
-                    f"groups[{label!r}]",
+                    where,
                     "each term in one group",
                     f"{member!r}, which is in {used[member]!r} too",
                     "Keep one of them.",

@@ -8,6 +8,7 @@ from itertools import pairwise
 import numpy as np
 import numpy.typing as npt
 
+from steelyard.arrays import in_unit
 from steelyard.base import Draws
 from steelyard.base.draws import Array
 
@@ -54,7 +55,7 @@ def critical_value(sums: Array) -> float:
     ----------
     .. [1] Chernozhukov, Chetverikov, Kato (2013), Annals of Statistics 41.
     """
-    centred = sums - sums.mean(axis=0)
+    centred, _ = in_unit(sums - sums.mean(axis=0))
     spread = np.sqrt((centred**2).sum(axis=0))
     unit = centred[:, spread > 0] / spread[spread > 0]
     if not unit.shape[1]:

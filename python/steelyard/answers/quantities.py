@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any
@@ -168,12 +169,16 @@ def _look_up(base: Base) -> Callable[[str, str], Array]:
     return look_up
 
 
+# A name, perhaps with an element of it, and nothing else.
+_NAME = re.compile(r"^\s*(?!(and|or|not)\s*$)[^\W\d][\w.]*(\[[^\[\]]*\])?\s*$")
+
+
 def event_mask(event: Any, base: Base) -> Quantity:
     """Draws of an event as 0 and 1: a text, a boolean array, or a callable that returns one."""
     draws = base.draws
     label = "event"
     if isinstance(event, str):
-        if not is_expression(event):
+        if event in draws or _NAME.match(event):
             raise QuantityError(
                 "event",
                 'a comparison, such as "rate[3] > 0.12"',

@@ -15,6 +15,7 @@ from steelyard.answers.estimating import Scale, column_blocks, mean_of, sd_of
 from steelyard.answers.quantiles import quantile_of
 from steelyard.answers.quantities import Quantity
 from steelyard.answers.shifts import shift_of
+from steelyard.arrays import in_unit
 from steelyard.base.draws import Array
 from steelyard.base.names import label_texts
 from steelyard.errors import ArgumentError
@@ -87,11 +88,12 @@ def _level_together(
 ) -> float:
     """Level of single intervals at which the means of all rows hold together, 95 %."""
     edges = batch_edges(scale.base.draws)
-    sums = [
-        batch_sums(scale.weights.linear[:, None] * (f - np.ravel(means[label])[part]), edges)
-        for label, quantity in quantities.items()
-        for part, f in column_blocks(quantity.columns)
-    ]
+    sums = []
+    for label, quantity in quantities.items():
+        for part, f in column_blocks(quantity.columns):
+            scaled, unit = in_unit(f)
+            centred = scaled - np.ravel(means[label])[part] / unit
+            sums.append(batch_sums(scale.weights.linear[:, None] * centred, edges))
     known = [s[:, np.isfinite(s).all(axis=0)] for s in sums]
     return joint_level(np.concatenate(known, axis=1)) if known else 0.95
 

@@ -72,17 +72,22 @@ def raised(term: LoglikTerm, factor: float, sd: Any, draws: Draws) -> NoisyTerm:
     )
 
 
+def _called(sd: Any, draws: Draws, where: str) -> Array:
+    values = plain_array(sd(MappingProxyType(dict(draws.values_by_name))), where)
+    if not values.ndim:
+        raise ShapeError(
+            where, f"({draws.size},) or more axes", "()", "For one number give it as sd."
+        )
+    return values
+
+
 def _sd_rows(sd: Any, term: LoglikTerm, draws: Draws) -> Array:
     """The sd as ``(1 or n, 1 or observations)``, positive."""
     where = f"raise_noise[{term.name!r}]: sd"
     if isinstance(sd, str):
         values = draws.look_up(sd, where)
     elif callable(sd):
-        values = plain_array(sd(MappingProxyType(dict(draws.values_by_name))), where)
-        if not values.ndim:
-            raise ShapeError(
-                where, f"({draws.size},) or more axes", "()", "For one number give it as sd."
-            )
+        values = _called(sd, draws, where)
     else:
         values = plain_array(sd, where)
         if values.ndim and values.shape != term.obs_shape:

@@ -199,8 +199,7 @@ def study_nodes(
     base, count = nodes.base, nodes.base.draws.size
     draws, v = base.draws, nodes.own.linear
     column, unit = in_unit(f[:, None])
-    f = column[:, 0]
-    at_base = float(_core.weighted_mean(f[:, None], v)[0])
+    f, at_base = column[:, 0], float(_core.weighted_mean(column, v)[0])
     # Centring first loses no digits where the quantity varies little about a large value.
     centred = f - at_base
     moved = (nodes.linear * centred[:, None]).sum(axis=0)
@@ -231,10 +230,8 @@ def study_nodes(
     )
     sides = (f, 1 - f) if is_event else ()
     within = [_within(nodes.linear, side) * of_f for side in sides] or [np.empty(nodes.count)] * 2
-    value = moved if shift else at_base + moved
-    return NodeSeries(
-        value * unit, series.times(unit), spread * unit, within[0], within[1], z * unit
-    )
+    value = (moved if shift else at_base + moved) * unit
+    return NodeSeries(value, series.times(unit), spread * unit, within[0], within[1], z * unit)
 
 
 def _within(weights: Array, side: Array) -> Array:
