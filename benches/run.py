@@ -1,8 +1,8 @@
 """
 Benchmarks that verify their own answers: every kernel against the script that one would write.
 
-Run by `make bench`. ``--small`` takes small arrays, to see that everything works; names choose
-among the benchmarks. Ends with an error where twin and kernel disagree.
+Run by `make bench`. ``--small`` takes small arrays, to see that everything works; ``--large`` adds
+what needs gigabytes in the directory for temporary files; names choose among the benchmarks. Ends with an error where twin and kernel disagree.
 """
 
 from __future__ import annotations
@@ -26,6 +26,7 @@ NAMES = (
     "mean",
     "swap",
     "densities",
+    "deletion",
     "memory",
 )
 
@@ -38,11 +39,12 @@ def main() -> int:
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("names", nargs="*", help="which benchmarks")
     parser.add_argument("--small", action="store_true", help="small arrays")
+    parser.add_argument("--large", action="store_true", help="gigabytes on disk too")
     chosen = parser.parse_args()
-    return benchmarks(chosen.names or list(NAMES), chosen.small)
+    return benchmarks(chosen.names or list(NAMES), chosen.small, chosen.large)
 
 
-def benchmarks(names: list[str], small: bool) -> int:
+def benchmarks(names: list[str], small: bool, large: bool = False) -> int:
     from timing import SCALES, probe
 
     scaling = probe()
@@ -61,6 +63,10 @@ def benchmarks(names: list[str], small: bool) -> int:
             continue
         for case in module.cases(small):
             good &= one(case, counts)
+        if hasattr(module, "more"):
+            good &= module.more(small)
+        if large and hasattr(module, "large"):
+            good &= module.large()
     print(f"\ntwo threads scaled by {probe():.2f} at the end")
     return 0 if good else 1
 

@@ -11,6 +11,7 @@ _Numbers: TypeAlias = npt.NDArray[np.float64] | npt.NDArray[np.float32]
 __all__ = [
     "beta_tails",
     "contributions",
+    "delete",
     "describe",
     "digamma",
     "effective_size",
@@ -86,6 +87,20 @@ def shortest_interval(
 def resample(
     w: npt.NDArray[np.float64], size: int, method: str, key: bytes
 ) -> npt.NDArray[np.int64]: ...
+def delete(
+    held: _Numbers,
+    f: npt.NDArray[np.float64],
+    scored: npt.NDArray[np.float64] | None = None,
+    log_weights: npt.NDArray[np.float64] | None = None,
+    starts: npt.NDArray[np.int64] | None = None,
+    repeats: npt.NDArray[np.int64] | None = None,
+    progress: Callable[[int, int], object] | None = None,
+) -> tuple[
+    npt.NDArray[np.float64],
+    npt.NDArray[np.float64],
+    npt.NDArray[np.float64],
+    npt.NDArray[np.float64],
+]: ...
 def influence(
     loglik: _Numbers,
     f: npt.NDArray[np.float64],

@@ -10,8 +10,11 @@ use crate::kernels;
 use crate::kernels::columns::{expect_shape, map_columns, map_columns_into};
 use crate::kernels::error::KernelError;
 use crate::kernels::ordered::{Interrupt, map_tasks};
-use crate::kernels::quantile_many::{LANES, Sorted, Weights, quantiles};
+use crate::kernels::quantile_many::{LANES, Sorted, Weights, column_quantiles};
 use crate::kernels::sorting;
+
+/// Columns between two looks at the caller's wish to stop.
+const PARAMETERS: usize = 16;
 
 /// Indices of every column of `x`, `(n, k)`, in ascending order of value: `(n, k)`.
 #[pyfunction]
@@ -112,9 +115,10 @@ fn under_each(
     let found = map_tasks(parts, interrupt, |part| {
         let weights = Weights::new(part);
         let mut out = Array3::zeros((probs.len(), part.ncols(), columns.len()));
-        for (index, column) in columns.iter().enumerate() {
+        for (group, columns) in columns.chunks(PARAMETERS).enumerate() {
             interrupt.check()?;
-            quantiles(column, &weights, probs, |lane, level, value| {
+            column_quantiles(columns, &weights, probs, |column, lane, level, value| {
+                let index = group * PARAMETERS + column;
                 if let Some(target) = out.get_mut((level, lane, index)) {
                     *target = value;
                 }

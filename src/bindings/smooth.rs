@@ -6,7 +6,7 @@ use pyo3::prelude::*;
 use super::arrays::{Numbers, matrix_mut, vector, with_view};
 use super::errors::reporting;
 use crate::kernels;
-use crate::kernels::columns::{expect_shape, map_columns, map_columns_into};
+use crate::kernels::columns::{expect_shape, map_columns, map_columns_in_place};
 
 /// Writes smoothed, normalised log weights into `out`, `(n, k)`; returns tail shapes, `(k,)`.
 #[pyfunction]
@@ -24,8 +24,8 @@ pub fn smooth<'py>(
         expect_shape("relative_efficiency", &[x.ncols()], &[efficiency.len()])?;
         expect_shape("out", x.shape(), out.shape())?;
         reporting(py, progress.as_ref(), |interrupt| {
-            map_columns_into(x, out, interrupt, |column, index, target| {
-                Ok(kernels::smooth::smooth(column, efficiency[index], target))
+            map_columns_in_place(x, out, interrupt, |column, index| {
+                Ok(kernels::smooth::smooth_in_place(column, efficiency[index]))
             })
         })
     })?;

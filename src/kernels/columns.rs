@@ -6,24 +6,18 @@
 
 use ndarray::{ArrayView2, ArrayViewMut1, ArrayViewMut2, Axis};
 
+use super::blocks::{LINE, MOST_COLUMNS, distance, gather, has_contiguous_columns, spread};
 use super::entry::Entry;
 use super::error::KernelError;
 use super::lease::Lease;
 use super::ordered::{Interrupt, map_tasks, threads};
-use super::vector::stream::{LARGE, copy_past, fence};
+use super::vector::stream::LARGE;
 
-/// Most columns gathered together: from 8 to 64 the time per column halves.
-const MOST_COLUMNS: usize = 64;
-
-/// Entries of a cache line; rows and columns of a tile that is turned as a whole.
-pub(super) const LINE: usize = 8;
+/// Columns of a block that are contiguous both where they are read and where they are written.
+const FEW_COLUMNS: usize = 4;
 
 /// Most entries of one task's buffer, 32 MiB, unless a single column is longer.
 const BUFFER: usize = 4 << 20;
-
-/// Rows copied between two looks at the caller's wish to stop: the first touch of a row of a fresh
-/// or memory-mapped array can cost a large page.
-const ROWS: usize = 256;
 
 /// `kernel(column, index)` for every column of `x`, shape `(n, k)`; the results in column order.
 ///
@@ -40,13 +34,12 @@ where
     F: Fn(&[f64], usize) -> Result<T, KernelError> + Sync,
 {
     let width = block_width(x.dim());
-    let blocks: Vec<_> = x.axis_chunks_iter(Axis(1), width).enumerate().collect();
-    let results = map_tasks(blocks, interrupt, |(block, view)| {
+    let results = map_tasks(parts(x, width), interrupt, |(first, view)| {
         let gathered = Gathered::new(view, interrupt)?;
         (0..view.ncols())
             .map(|column| {
                 interrupt.check()?;
-                kernel(gathered.column(column), block * width + column)
+                kernel(gathered.column(column), first + column)
             })
             .collect::<Result<Vec<T>, KernelError>>()
     })?;
@@ -60,7 +53,7 @@ where
 /// [`KernelError::Shape`] when `out` has another number of columns; else as [`map_columns`].
 pub fn map_columns_into<E, T, F>(
     x: ArrayView2<'_, E>,
-    mut out: ArrayViewMut2<'_, f64>,
+    out: ArrayViewMut2<'_, f64>,
     interrupt: &Interrupt<'_>,
     kernel: F,
 ) -> Result<Vec<T>, KernelError>
@@ -72,26 +65,114 @@ where
     expect_shape("out", &[out.nrows(), x.ncols()], out.shape())?;
     let past = out.len() > LARGE;
     let width = block_width(x.dim());
-    let blocks: Vec<_> = x
-        .axis_chunks_iter(Axis(1), width)
-        .zip(out.axis_chunks_iter_mut(Axis(1), width))
-        .enumerate()
-        .collect();
-    let results = map_tasks(blocks, interrupt, |(block, (view, mut into))| {
-        let gathered = Gathered::new(view, interrupt)?;
+    let results = map_tasks(
+        pairs(x, out, width),
+        interrupt,
+        |(first, view, mut into)| {
+            let gathered = Gathered::new(view, interrupt)?;
+            let mut results = Vec::with_capacity(view.ncols());
+            let mut staged = Staged::new(into.view_mut());
+            for column in 0..view.ncols() {
+                interrupt.check()?;
+                results.push(staged.fill(column, |target| {
+                    kernel(gathered.column(column), first + column, target)
+                })?);
+            }
+            staged.finish(past, interrupt)?;
+            Ok(results)
+        },
+    )?;
+    Ok(results.into_iter().flatten().collect())
+}
+
+/// `kernel(column, index)` for a copy of every column of `x` that the kernel changes; the changed
+/// columns are written into `out`, of equal shape.
+///
+/// # Errors
+/// As [`map_columns_into`].
+pub fn map_columns_in_place<E, T, F>(
+    x: ArrayView2<'_, E>,
+    out: ArrayViewMut2<'_, f64>,
+    interrupt: &Interrupt<'_>,
+    kernel: F,
+) -> Result<Vec<T>, KernelError>
+where
+    E: Entry,
+    T: Send,
+    F: Fn(&mut [f64], usize) -> Result<T, KernelError> + Sync,
+{
+    expect_shape("out", x.shape(), out.shape())?;
+    let past = out.len() > LARGE;
+    let rows = x.nrows();
+    let mut width = block_width(x.dim());
+    if has_contiguous_columns(x) && has_contiguous_columns(out.view()) {
+        width = width.min(FEW_COLUMNS);
+    }
+    let results = map_tasks(pairs(x, out, width), interrupt, |(first, view, into)| {
+        let distance = distance(rows);
+        let mut buffer = Lease::new(distance * view.ncols());
+        gather(view, &mut buffer, interrupt)?;
         let mut results = Vec::with_capacity(view.ncols());
-        let mut staged = Staged::new(into.view_mut());
-        for column in 0..view.ncols() {
+        for (place, column) in buffer.chunks_mut(distance).enumerate() {
             interrupt.check()?;
-            let index = block * width + column;
-            results.push(staged.fill(column, |target| {
-                kernel(gathered.column(column), index, target)
-            })?);
+            results.push(kernel(&mut column[..rows], first + place)?);
         }
-        staged.finish(past, interrupt)?;
+        spread(&buffer, into, past, interrupt)?;
         Ok(results)
     })?;
     Ok(results.into_iter().flatten().collect())
+}
+
+/// `x` cut into blocks of at most `width` columns, each with the index of its first one.
+fn parts<E>(x: ArrayView2<'_, E>, width: usize) -> Vec<(usize, ArrayView2<'_, E>)> {
+    let mut parts = Vec::with_capacity(x.ncols() / width + 2);
+    let (mut first, mut right) = (0, x);
+    let mut next = first_width::<E>(x.as_ptr().addr(), x.strides()[1], width);
+    while first < x.ncols() {
+        next = next.min(x.ncols() - first);
+        let (part, rest) = right.split_at(Axis(1), next);
+        parts.push((first, part));
+        right = rest;
+        first += next;
+        next = width;
+    }
+    parts
+}
+
+/// Index of the first column, columns to read, columns to write.
+type Pair<'a, 'b, E> = (usize, ArrayView2<'a, E>, ArrayViewMut2<'b, f64>);
+
+/// Both arrays cut into blocks of at most `width` columns.
+fn pairs<'a, 'b, E>(
+    x: ArrayView2<'a, E>,
+    out: ArrayViewMut2<'b, f64>,
+    width: usize,
+) -> Vec<Pair<'a, 'b, E>> {
+    let columns = x.ncols();
+    let mut pairs = Vec::with_capacity(columns / width + 2);
+    let (mut first, mut right, mut into) = (0, x, out);
+    let mut next = first_width::<f64>(into.as_ptr().addr(), into.strides()[1], width);
+    while first < columns {
+        next = next.min(columns - first);
+        let (part, rest) = right.split_at(Axis(1), next);
+        let (target, behind) = into.split_at(Axis(1), next);
+        pairs.push((first, part, target));
+        (right, into) = (rest, behind);
+        first += next;
+        next = width;
+    }
+    pairs
+}
+
+/// The width of the first block, such that the others begin with a cache line where rows do.
+fn first_width<E>(address: usize, stride: isize, width: usize) -> usize {
+    let line = LINE * size_of::<f64>();
+    let over = address % line / size_of::<E>().max(1);
+    if stride == 1 && over < width {
+        width - over
+    } else {
+        width
+    }
 }
 
 /// # Errors
@@ -117,12 +198,6 @@ fn block_width((rows, columns): (usize, usize)) -> usize {
     (BUFFER / rows.max(1)).clamp(1, MOST_COLUMNS.min(shared.max(1)))
 }
 
-/// Distance of two columns in a buffer, an odd number of cache lines: columns a power of two apart
-/// would fall into the same few places of a cache.
-pub(super) fn distance(rows: usize) -> usize {
-    LINE * (rows.div_ceil(LINE) | 1)
-}
-
 /// The columns of a block, each contiguous.
 enum Gathered<'a> {
     InPlace(Vec<&'a [f64]>),
@@ -141,14 +216,8 @@ impl<'a> Gathered<'a> {
             return Ok(Self::InPlace(columns));
         }
         let rows = view.nrows();
-        let distance = distance(rows);
-        let mut buffer = Lease::new(distance * view.ncols());
-        for (part, strip) in view.axis_chunks_iter(Axis(0), LINE).enumerate() {
-            if part.is_multiple_of(ROWS / LINE) {
-                interrupt.check()?;
-            }
-            gather_strip(strip, &mut buffer[part * LINE..], distance);
-        }
+        let mut buffer = Lease::new(distance(rows) * view.ncols());
+        gather(view, &mut buffer, interrupt)?;
         Ok(Self::Copied { rows, buffer })
     }
 
@@ -158,44 +227,6 @@ impl<'a> Gathered<'a> {
             Self::Copied { rows, buffer } => &buffer[index * distance(*rows)..][..*rows],
         }
     }
-}
-
-/// At most [`LINE`] rows to columns, whole tiles at a time where rows are contiguous.
-pub(super) fn gather_strip<E: Entry>(
-    strip: ArrayView2<'_, E>,
-    buffer: &mut [f64],
-    distance: usize,
-) {
-    let rows: Vec<&[E]> = strip
-        .outer_iter()
-        .filter_map(|row| row.to_slice())
-        .collect();
-    let whole = match <[&[E]; LINE]>::try_from(rows) {
-        Ok(rows) => gather_tiles(rows, buffer, distance),
-        Err(_) => 0,
-    };
-    for (row, entries) in strip.outer_iter().enumerate() {
-        for (column, entry) in entries.iter().enumerate().skip(whole) {
-            buffer[column * distance + row] = entry.wide();
-        }
-    }
-}
-
-/// The number of columns done.
-fn gather_tiles<E: Entry>(rows: [&[E]; LINE], buffer: &mut [f64], distance: usize) -> usize {
-    let tiles = rows.map(|row| row.as_chunks::<LINE>().0);
-    for tile in 0..tiles[0].len() {
-        let lines = tiles.map(|row| &row[tile]);
-        for column in 0..LINE {
-            let start = (tile * LINE + column) * distance;
-            if let Some(target) = buffer[start..].first_chunk_mut::<LINE>() {
-                for (target, line) in target.iter_mut().zip(lines) {
-                    *target = line[column].wide();
-                }
-            }
-        }
-    }
-    tiles[0].len() * LINE
 }
 
 /// Columns to be written, through a contiguous buffer where they are not contiguous themselves.
@@ -234,60 +265,10 @@ impl<'a> Staged<'a> {
         }
     }
 
-    fn finish(mut self, past: bool, interrupt: &Interrupt<'_>) -> Result<(), KernelError> {
+    fn finish(self, past: bool, interrupt: &Interrupt<'_>) -> Result<(), KernelError> {
         if self.buffer.is_empty() {
             return Ok(());
         }
-        let distance = distance(self.into.nrows());
-        let strips = self.into.axis_chunks_iter_mut(Axis(0), LINE);
-        for (part, strip) in strips.into_iter().enumerate() {
-            if part.is_multiple_of(ROWS / LINE) {
-                interrupt.check()?;
-            }
-            spread_strip(&self.buffer[part * LINE..], distance, strip, past);
-        }
-        fence();
-        Ok(())
+        spread(&self.buffer, self.into, past, interrupt)
     }
-}
-
-/// Columns to at most [`LINE`] rows, whole tiles at a time where rows are contiguous.
-fn spread_strip(buffer: &[f64], distance: usize, mut strip: ArrayViewMut2<'_, f64>, past: bool) {
-    let columns = strip.ncols();
-    let rows: Option<Vec<&mut [f64]>> =
-        strip.outer_iter_mut().map(|row| row.into_slice()).collect();
-    let whole = match rows.map(<[&mut [f64]; LINE]>::try_from) {
-        Some(Ok(rows)) => spread_tiles(buffer, distance, rows, past),
-        _ => 0,
-    };
-    for column in whole..columns {
-        for (row, mut entries) in strip.outer_iter_mut().enumerate() {
-            entries[column] = buffer[column * distance + row];
-        }
-    }
-}
-
-/// The number of columns done.
-fn spread_tiles(buffer: &[f64], distance: usize, rows: [&mut [f64]; LINE], past: bool) -> usize {
-    let count = rows[0].len() / LINE * LINE;
-    let mut rows = rows.map(|row| row[..count].as_chunks_mut::<LINE>().0);
-    for tile in 0..count / LINE {
-        let mut lines = [[0.0; LINE]; LINE];
-        for column in 0..LINE {
-            let start = (tile * LINE + column) * distance;
-            if let Some(source) = buffer[start..].first_chunk::<LINE>() {
-                for (line, entry) in lines.iter_mut().zip(source) {
-                    line[column] = *entry;
-                }
-            }
-        }
-        for (row, line) in rows.iter_mut().zip(&lines) {
-            if past {
-                copy_past(line, &mut row[tile]);
-            } else {
-                row[tile] = *line;
-            }
-        }
-    }
-    count
 }

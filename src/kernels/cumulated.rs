@@ -6,7 +6,13 @@ use super::quantile::Compensated;
 use super::vector::{Arithmetic, Work, dispatch};
 
 /// Weights whose sum is formed before their running sums.
-const BLOCK: usize = 256;
+const BLOCK: usize = 64;
+
+/// Blocks whose running sums are formed side by side: a sum waits for the one before.
+const TOGETHER: usize = 4;
+
+/// Most shares that are handed over at a time.
+pub const SHARES: usize = BLOCK * TOGETHER;
 
 /// Non-negative weights with the running sums of their blocks.
 pub struct Cumulated<'a> {
@@ -50,6 +56,11 @@ impl<'a> Cumulated<'a> {
         self.weights.is_empty()
     }
 
+    /// The last draw with weight.
+    pub fn last(&self) -> usize {
+        self.last
+    }
+
     /// The weights in a unit of which [`Self::total`] is the sum.
     pub fn scaled(&self) -> impl Iterator<Item = f64> {
         self.weights.iter().map(|weight| weight * self.scale)
@@ -64,23 +75,53 @@ impl<'a> Cumulated<'a> {
     /// including draw `s`. Shares never fall, stay where a weight is 0, and end with `whole`.
     pub fn shares(&self, whole: f64, mut each: impl FnMut(usize, &[f64])) {
         let factor = whole / self.total();
-        let mut shares = [0.0; BLOCK];
-        for (block, weights) in self.weights.chunks(BLOCK).enumerate() {
-            let first = block * BLOCK;
+        let mut shares = [0.0; SHARES];
+        for (group, weights) in self.weights.chunks(SHARES).enumerate() {
+            let first = group * SHARES;
             let shares = &mut shares[..weights.len()];
-            let end = (self.before[block + 1] * factor).min(whole);
-            let mut running = self.before[block];
-            for (share, weight) in shares.iter_mut().zip(weights) {
-                running += weight * self.scale;
-                *share = (running * factor).min(end);
+            let before = &self.before[group * TOGETHER..];
+            self.running(weights, before, shares);
+            let blocks = shares.chunks_mut(BLOCK).zip(weights.chunks(BLOCK));
+            for ((shares, weights), end) in blocks.zip(&before[1..]) {
+                let end = (end * factor).min(whole);
+                dispatch(Scaled {
+                    shares,
+                    factor,
+                    end,
+                });
+                // The end of a block is the start of the next, else a weight of 0 there could gain.
+                let positive = weights.iter().rposition(|&weight| weight > 0.0);
+                shares[positive.unwrap_or(0)..].fill(end);
             }
-            // The end of a block is the start of the next, else a weight of 0 there could gain.
-            let positive = weights.iter().rposition(|&weight| weight > 0.0);
-            shares[positive.unwrap_or(0)..].fill(end);
             if self.last < first + weights.len() {
                 shares[self.last.saturating_sub(first)..].fill(whole);
             }
             each(first, shares);
+        }
+    }
+
+    /// The running sums of each block, from those `before` it on.
+    fn running(&self, weights: &[f64], before: &[f64], sums: &mut [f64]) {
+        let whole: Option<&mut [f64; SHARES]> = sums.first_chunk_mut();
+        if let (Some(sums), Some(weights), Some(before)) =
+            (whole, weights.first_chunk::<SHARES>(), before.first_chunk())
+        {
+            let mut running: [f64; TOGETHER] = *before;
+            for place in 0..BLOCK {
+                for (block, running) in running.iter_mut().enumerate() {
+                    *running += weights[block * BLOCK + place] * self.scale;
+                    sums[block * BLOCK + place] = *running;
+                }
+            }
+            return;
+        }
+        let blocks = sums.chunks_mut(BLOCK).zip(weights.chunks(BLOCK));
+        for ((sums, weights), before) in blocks.zip(before) {
+            let mut running = *before;
+            for (sum, weight) in sums.iter_mut().zip(weights) {
+                running += weight * self.scale;
+                *sum = running;
+            }
         }
     }
 
@@ -132,9 +173,30 @@ fn block_sums(weights: &[f64], scale: f64) -> Result<(Vec<f64>, f64), KernelErro
         }
         largest = most.max(largest);
         running.add(found.sum);
-        before.push(running.value());
+        // Whatever the rounding, the sums must not fall.
+        let value = running.value();
+        before.push(before.last().map_or(value, |&last| value.max(last)));
     }
     Ok((before, largest))
+}
+
+/// Running sums to shares, at most that at the end of the block.
+struct Scaled<'a> {
+    shares: &'a mut [f64],
+    factor: f64,
+    end: f64,
+}
+
+impl Work for Scaled<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        for share in self.shares {
+            let scaled = *share * self.factor;
+            *share = if scaled < self.end { scaled } else { self.end };
+        }
+    }
 }
 
 struct BlockSum<'a> {

@@ -20,7 +20,10 @@ use super::ordered::{Interrupt, map_tasks};
 
 /// Columns of a task. A fixed number: series are summed task by task, and their last digits must not
 /// depend on how many threads there are.
-const COLUMNS: usize = 32;
+const COLUMNS: usize = 128;
+
+/// Columns of a task that are gathered together.
+const TOGETHER: usize = 64;
 
 /// Most entries of a task's buffer, 32 MiB, unless a single column is longer.
 const BUFFER: usize = 4 << 20;
@@ -108,7 +111,7 @@ pub fn delete<E: Entry>(
     };
     let shared = Shared::new(base, draws, layout.as_ref());
     let panels = Panels::new(quantities, &shared.base);
-    let width = (BUFFER / draws.max(1)).clamp(1, COLUMNS);
+    let width = (2 * BUFFER / draws.max(1)).clamp(1, COLUMNS);
     let tasks: Vec<Range<usize>> = (0..columns)
         .step_by(width)
         .map(|start| start..columns.min(start + width))
@@ -167,20 +170,27 @@ fn one_task<E: Entry>(
 ) -> Result<Part, KernelError> {
     let draws = held.nrows();
     let apart = distance(draws);
-    let mut buffer = gathered(held, range.clone(), interrupt)?;
-    let other = match scored {
-        Some(scored) => Some(gathered(scored, range.clone(), interrupt)?),
-        None => None,
-    };
     let mut work = ColumnWork::new(shared, !panels.is_empty());
     let mut figures = Vec::with_capacity(range.len());
-    for index in 0..range.len() {
-        interrupt.check()?;
-        let column = &mut buffer[index * apart..][..draws];
-        let scored = other.as_ref().map(|other| &other[index * apart..][..draws]);
-        figures.push(work.column(column, scored, interrupt)?);
+    let mut shifts = Shifts::none(panels);
+    let together = (BUFFER / draws.max(1)).clamp(1, TOGETHER);
+    for start in range.clone().step_by(together) {
+        let block = start..range.end.min(start + together);
+        let mut buffer = gathered(held, block.clone(), interrupt)?;
+        let other = match scored {
+            Some(scored) => Some(gathered(scored, block.clone(), interrupt)?),
+            None => None,
+        };
+        for index in 0..block.len() {
+            interrupt.check()?;
+            let column = &mut buffer[index * apart..][..draws];
+            let scored = other.as_ref().map(|other| &other[index * apart..][..draws]);
+            figures.push(work.column(column, scored, interrupt)?);
+        }
+        let of_block = &figures[figures.len() - block.len()..];
+        let shares = of_block.iter().map(|figures: &[f64; FIGURES]| figures[6]);
+        panels.add_shifts(&buffer, apart, shares, &mut shifts, interrupt)?;
     }
-    let shifts = panels.shifts(&buffer, apart, range.len(), interrupt)?;
     Ok(Part {
         figures,
         totals: work.totals(),

@@ -3,21 +3,24 @@
 use super::deletion::{Base, FIGURES, Order, fault};
 use super::deletion_lags::{Lagged, Layout};
 use super::deletion_loops::{
-    Add, Density, Exponentials, Finite, Moments, Ratios, Scaled, Sums, Weighed, maximum_of,
-    squares_and_cubes,
+    AddBoth, Density, Exponentials, Finite, Moments, Powers, Ratios, Scaled, Sums, Weighed,
+    maximum_of,
 };
 use super::error::KernelError;
 use super::largest::Ranked;
-use super::mean::mean_square;
 use super::ordered::{Interrupt, sum};
 use super::tail::{Scale, Tail, fit_tail, tail_length};
 use super::vector::dispatch;
 use super::vector::dot::dot;
-use super::vector::exp::{MOST, exp_slice};
+use super::vector::exp::exp_slice;
 
 /// Weights whose largest is below `exp` of this are formed anew from it: squares of far smaller ones
 /// would vanish.
 const FAR_BELOW: f64 = -20.0;
+
+/// Ratios of smoothed to raw weights are taken in units of the largest where that is beyond `exp` of
+/// this.
+const FAR_ABOVE: f64 = 300.0;
 
 /// What all columns share.
 pub struct Shared<'a> {
@@ -70,6 +73,10 @@ struct Smoothed {
     shift: f64,
     sums: Sums,
     tail: Vec<Replaced>,
+    /// What the ratios in it are in units of: 1, or the largest where that would overflow. Its
+    /// logarithm and its inverse.
+    lift: f64,
+    unit: f64,
     shape: f64,
     efficiency: f64,
     p_value: f64,
@@ -210,34 +217,28 @@ impl<'a> Work<'a> {
             least,
             density: &mut self.density,
         });
-        let equal = 1.0 / count;
-        dispatch(Add {
-            from: &self.weights,
-            factor: -1.0 / raw_total,
-            constant: equal,
-            to: &mut self.raw,
-        });
-        dispatch(Add {
-            from: &self.density,
-            factor: 1.0 / density,
-            constant: -equal,
-            to: &mut self.in_sample,
+        dispatch(AddBoth {
+            weights: (&self.weights, raw_total),
+            density: (&self.density, density),
+            raw: &mut self.raw,
+            in_sample: &mut self.in_sample,
         });
         let smoothed = self.smoothed(x, interrupt)?;
-        let body = count - smoothed.tail.len() as f64;
+        let body = smoothed.unit * (count - smoothed.tail.len() as f64);
         let scale = body + smoothed.tail.iter().map(|draw| draw.ratio).sum::<f64>();
         let total = smoothed.sums.total;
-        let extra = |draw: &Replaced| (draw.ratio - 1.0) * self.density[draw.index];
-        let squares = density + smoothed.tail.iter().map(extra).sum::<f64>();
-        let rest = -largest - smoothed.shift;
+        let extra = |draw: &Replaced| (draw.ratio - smoothed.unit) * self.density[draw.index];
+        let squares = smoothed.unit * density + smoothed.tail.iter().map(extra).sum::<f64>();
+        let lift = smoothed.lift;
+        let rest = lift - largest - smoothed.shift;
         let scores = Scored {
             score: rest + scale.ln() - total.ln(),
             in_sample: -(largest + least) + (density / count).ln(),
-            spread: spread(smoothed.shift - least, squares * total, scale),
+            spread: spread(smoothed.shift - lift - least, squares * total, scale),
         };
         dispatch(Weighed {
             weights: &self.weights,
-            constant: 1.0 / scale,
+            constant: smoothed.unit / scale,
             factor: 1.0 / total,
             out: &mut self.series,
         });
@@ -335,7 +336,7 @@ impl<'a> Work<'a> {
         }
         let fitted = tail_of(x, efficiency);
         let shape = fitted.shape();
-        let (mut tail, mut top, mut shift) = (Vec::new(), 0.0, 0.0);
+        let (mut tail, mut top, mut shift, mut lift) = (Vec::new(), 0.0, 0.0, 0.0);
         if let Tail::Fitted {
             ranked,
             cutoff,
@@ -347,8 +348,13 @@ impl<'a> Work<'a> {
             shift = if top < FAR_BELOW { top } else { 0.0 };
             let mut smooth = logs.clone();
             exp_slice(&mut smooth);
-            let ratio = |(draw, log): (&Ranked, &f64)| (log - draw.0).min(MOST);
+            let ratio = |(draw, log): (&Ranked, &f64)| log - draw.0;
             let mut ratios: Vec<f64> = ranked.iter().zip(&logs).map(ratio).collect();
+            let most = maximum_of(&ratios);
+            if most > FAR_ABOVE {
+                ratios.iter_mut().for_each(|ratio| *ratio -= most);
+                lift = most;
+            }
             exp_slice(&mut ratios);
             tail.reserve_exact(ranked.len());
             for (rank, &(_, index)) in ranked.iter().enumerate() {
@@ -372,6 +378,8 @@ impl<'a> Work<'a> {
                 weights: &self.weights,
             }),
             tail,
+            lift,
+            unit: (-lift).exp(),
             shape,
             efficiency,
             p_value,
@@ -385,35 +393,32 @@ impl<'a> Work<'a> {
         efficiency: f64,
         interrupt: &Interrupt<'_>,
     ) -> Result<(f64, f64), KernelError> {
-        dispatch(Add {
-            from: &self.series,
-            factor: 1.0,
-            constant: 0.0,
+        let mut powers = dispatch(Powers {
+            z: &self.series,
             to: &mut self.left_out,
         });
         let count = self.series.len() as f64;
-        let (variance, carried) = match (&mut self.lagged, self.shared.order) {
-            (Some(lagged), _) => {
-                lagged.take(&self.series);
-                (
-                    lagged.long_run(&self.series, interrupt)?,
-                    contributions(&self.series),
-                )
-            }
-            (None, Order::Repeated(repeats)) => {
-                let mut sums = vec![0.0; self.series.len()];
-                for (entry, &repeat) in self.series.iter().zip(repeats) {
-                    if let Some(sum) = usize::try_from(repeat).ok().and_then(|r| sums.get_mut(r)) {
-                        *sum += entry;
-                    }
+        if let Order::Repeated(repeats) = self.shared.order {
+            let mut sums = vec![0.0; self.series.len()];
+            for (entry, &repeat) in self.series.iter().zip(repeats) {
+                if let Some(sum) = usize::try_from(repeat).ok().and_then(|r| sums.get_mut(r)) {
+                    *sum += entry;
                 }
-                let square = sums.iter().map(|sum| sum * sum).sum::<f64>() / count;
-                (square, contributions(&sums))
             }
-            (None, _) => (mean_square(&self.series), contributions(&self.series)),
+            powers = dispatch(Powers {
+                z: &sums,
+                to: &mut [],
+            });
+        }
+        // The series is the influence over n, and its mean is 0.
+        let variance = match &mut self.lagged {
+            Some(lagged) => {
+                lagged.take(&self.series);
+                count * lagged.long_run(&self.series, interrupt)?
+            }
+            None => powers.0,
         };
-        // The series is the influence over n.
-        Ok(((variance * count).sqrt(), efficiency.sqrt() * carried))
+        Ok((variance.sqrt(), efficiency.sqrt() * contributions(powers)))
     }
 }
 
@@ -422,9 +427,8 @@ fn spread(shift: f64, squares: f64, mean: f64) -> f64 {
     (shift + squares.ln() - 2.0 * mean.ln()).max(0.0).exp_m1()
 }
 
-/// `(Σ z²)³/(Σ z³)²` of a series whose mean is 0; `+inf` for a symmetric one.
-fn contributions(z: &[f64]) -> f64 {
-    let (squares, cubes) = squares_and_cubes(z);
+/// `(Σ z²)³/(Σ z³)²`; `+inf` for a symmetric series.
+fn contributions((squares, cubes): (f64, f64)) -> f64 {
     if squares == 0.0 || cubes == 0.0 {
         return f64::INFINITY;
     }

@@ -36,7 +36,7 @@ impl Work for Ratios<'_> {
     #[inline(always)]
     fn run<A: Arithmetic>(self) -> f64 {
         match self.log_weights {
-            None => self.x.iter_mut().for_each(|x| *x = -*x),
+            None => return negated_maximum(self.x),
             Some(logs) => {
                 for (x, &log) in self.x.iter_mut().zip(logs) {
                     *x = if log == f64::NEG_INFINITY {
@@ -49,6 +49,24 @@ impl Work for Ratios<'_> {
         }
         lane_maximum(self.x)
     }
+}
+
+#[inline(always)]
+fn negated_maximum(x: &mut [f64]) -> f64 {
+    let mut lanes = [f64::NEG_INFINITY; LANES];
+    let (chunks, rest) = x.as_chunks_mut::<LANES>();
+    for chunk in chunks {
+        for lane in 0..LANES {
+            chunk[lane] = -chunk[lane];
+            lanes[lane] = larger(chunk[lane], lanes[lane]);
+        }
+    }
+    let mut last = f64::NEG_INFINITY;
+    for entry in rest {
+        *entry = -*entry;
+        last = larger(*entry, last);
+    }
+    lanes.into_iter().fold(last, f64::max)
 }
 
 /// The largest entry; `−inf` without one.
@@ -158,25 +176,30 @@ impl Work for Density<'_> {
     }
 }
 
-/// `to += factor · from + constant`.
-pub struct Add<'a> {
-    /// What is added.
-    pub from: &'a [f64],
-    /// Times what.
-    pub factor: f64,
-    /// And what to every entry.
-    pub constant: f64,
-    /// To what.
-    pub to: &'a mut [f64],
+/// `raw += 1/n − weight/total` and `in_sample += density/total − 1/n`.
+pub struct AddBoth<'a> {
+    /// Weights and their sum.
+    pub weights: (&'a [f64], f64),
+    /// Densities and their sum.
+    pub density: (&'a [f64], f64),
+    /// The first total.
+    pub raw: &'a mut [f64],
+    /// The second one.
+    pub in_sample: &'a mut [f64],
 }
 
-impl Work for Add<'_> {
+impl Work for AddBoth<'_> {
     type Output = ();
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
-        for (sum, entry) in self.to.iter_mut().zip(self.from) {
-            *sum += A::mul_add(self.factor, *entry, self.constant);
+        let equal = 1.0 / self.raw.len() as f64;
+        let (of_weights, of_density) = (1.0 / self.weights.1, 1.0 / self.density.1);
+        for (sum, weight) in self.raw.iter_mut().zip(self.weights.0) {
+            *sum += A::mul_add(-of_weights, *weight, equal);
+        }
+        for (sum, density) in self.in_sample.iter_mut().zip(self.density.0) {
+            *sum += A::mul_add(of_density, *density, -equal);
         }
     }
 }
@@ -281,20 +304,24 @@ impl Work for Scaled<'_> {
     }
 }
 
-/// `Σ z²` and `Σ z³`.
-pub fn squares_and_cubes(z: &[f64]) -> (f64, f64) {
-    dispatch(Powers(z))
+/// `Σ z²` and `Σ z³` of a series, which is added to a total where there is one.
+pub struct Powers<'a> {
+    /// The series.
+    pub z: &'a [f64],
+    /// To what it is added; as long as the series, or empty.
+    pub to: &'a mut [f64],
 }
-
-struct Powers<'a>(&'a [f64]);
 
 impl Work for Powers<'_> {
     type Output = (f64, f64);
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) -> (f64, f64) {
+        for (sum, z) in self.to.iter_mut().zip(self.z) {
+            *sum += z;
+        }
         let mut found = (0.0, 0.0);
-        for z in self.0.chunks(BLOCK) {
+        for z in self.z.chunks(BLOCK) {
             let (mut squares, mut cubes) = ([0.0; LANES], [0.0; LANES]);
             let (chunks, rest) = z.as_chunks::<LANES>();
             for z in chunks {

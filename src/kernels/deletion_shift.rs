@@ -21,6 +21,10 @@ const DRAWS: usize = 256;
 /// Columns whose sums lie in registers.
 const TOGETHER: usize = 4;
 
+/// Largest share of a draw from which on squares are summed anew in double precision: where few draws
+/// carry a shift it lies close to their own values, and sums of powers would cancel.
+const CARRIED: f64 = 0.05;
+
 /// Standardised quantities by panels, draw after draw, and their powers.
 pub struct Panels {
     count: usize,
@@ -42,6 +46,14 @@ pub struct Shifts {
 }
 
 impl Shifts {
+    /// Those of no column yet.
+    pub fn none(panels: &Panels) -> Self {
+        Self {
+            count: panels.count,
+            found: Vec::new(),
+        }
+    }
+
     /// `Σ w f`, and `Σ z²`.
     pub fn of(&self, column: usize, quantity: usize) -> (f64, f64) {
         self.found[column * self.count + quantity]
@@ -79,22 +91,23 @@ impl Panels {
         self.count == 0
     }
 
-    /// Shifts under weights `w` of which `x` holds `n (w − v)`, one column every `apart` entries.
+    /// Adds the shifts under weights `w` of which `x` holds `n (w − v)`, one column every `apart`
+    /// entries; `shares` are the largest `w` of each.
     ///
     /// # Errors
     /// [`KernelError::Interrupted`].
-    pub fn shifts(
+    pub fn add_shifts(
         &self,
         x: &[f64],
         apart: usize,
-        columns: usize,
+        shares: impl ExactSizeIterator<Item = f64>,
+        shifts: &mut Shifts,
         interrupt: &Interrupt<'_>,
-    ) -> Result<Shifts, KernelError> {
+    ) -> Result<(), KernelError> {
         if self.is_empty() {
-            let found = Vec::new();
-            return Ok(Shifts { count: 0, found });
+            return Ok(());
         }
-        let mut block = Block::new(columns, self.count);
+        let mut block = Block::new(shares.len(), self.count);
         for start in (0..self.draws).step_by(DRAWS) {
             interrupt.check()?;
             let range = start..self.draws.min(start + DRAWS);
@@ -107,12 +120,16 @@ impl Panels {
             });
             self.multiply(range, &mut block);
         }
-        let mut found = Vec::with_capacity(columns * self.count);
-        for column in 0..columns {
-            found.extend((0..self.count).map(|quantity| self.one(&block, column, quantity)));
+        for (column, share) in shares.enumerate() {
+            let row = (0..self.count).map(|quantity| self.one(&block, column, quantity));
+            let first = shifts.found.len();
+            shifts.found.extend(row);
+            if share > CARRIED {
+                let x = &x[column * apart..][..self.draws];
+                self.sum_anew(x, &mut shifts.found[first..]);
+            }
         }
-        let count = self.count;
-        Ok(Shifts { count, found })
+        Ok(())
     }
 
     /// Adds some draws to the sums of a block.
@@ -153,6 +170,52 @@ impl Panels {
         let both = m * (products(2) + products(0) - m * products(1) - m * xb);
         let square = target - both + m * m * self.own[quantity];
         (m, square.max(0.0) / (self.draws as f64).powi(2))
+    }
+}
+
+impl Panels {
+    /// The squares of one column, series by series.
+    fn sum_anew(&self, x: &[f64], found: &mut [(f64, f64)]) {
+        let panels = self.first.chunks(self.draws);
+        for (f, found) in panels.zip(found.chunks_mut(LANES)) {
+            let mut m = [0.0; LANES];
+            for (m, (shift, _)) in m.iter_mut().zip(&*found) {
+                *m = *shift;
+            }
+            let sums = dispatch(Anew {
+                f,
+                x,
+                base: &self.base,
+                m,
+            });
+            for ((_, square), sum) in found.iter_mut().zip(sums) {
+                *square = sum / (self.draws as f64).powi(2);
+            }
+        }
+    }
+}
+
+struct Anew<'a> {
+    f: &'a [[f64; LANES]],
+    x: &'a [f64],
+    base: &'a [f64],
+    m: [f64; LANES],
+}
+
+impl Work for Anew<'_> {
+    type Output = [f64; LANES];
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> Self::Output {
+        let mut sums = [0.0; LANES];
+        for ((f, &x), &b) in self.f.iter().zip(self.x).zip(self.base) {
+            for lane in 0..LANES {
+                let (f, m) = (f[lane], self.m[lane]);
+                let z = x * (f - m) - b * m * (A::mul_add(f, f, 1.0) / 2.0);
+                sums[lane] = A::mul_add(z, z, sums[lane]);
+            }
+        }
+        sums
     }
 }
 

@@ -1,15 +1,16 @@
 //! The largest values of a column in order, without sorting the column.
 
+use super::vector::select::at_least;
 use super::vector::{Arithmetic, Work, dispatch};
-
-/// Values that are compared at a time.
-const CHUNK: usize = 16;
 
 /// Rank at which the cut of the sample is aimed: its count varies by a fifth.
 const SAMPLE_RANK: usize = 24;
 
 /// Most values of a bucket that are sorted by insertion.
 const MOST_INSERTED: u32 = 32;
+
+/// How fast the habit of columns follows the last one.
+const FOLLOW: f64 = 0.125;
 
 /// A value and its index.
 pub type Ranked = (f64, u32);
@@ -18,31 +19,172 @@ pub type Ranked = (f64, u32);
 /// unless there are more values than `count`. Equal values rank in input order. Values must not be
 /// NaN.
 pub fn largest(values: &[f64], sign: f64, count: usize) -> Option<(Vec<Ranked>, f64)> {
-    if count >= values.len() {
-        return None;
+    let mut finder = Finder::default();
+    let cutoff = finder.find(values, sign, count, None)?;
+    Some((finder.ranked, cutoff))
+}
+
+/// What [`largest`] needs again and again, and what it learns.
+#[derive(Default)]
+pub struct Finder {
+    /// The largest values of the last search, as [`largest`] gives them.
+    pub ranked: Vec<Ranked>,
+    places: Vec<u32>,
+    spare: Vec<Ranked>,
+    buckets: Vec<u32>,
+    starts: Vec<u32>,
+    habit: Habit,
+}
+
+/// Mean and standard deviation of a column, roughly.
+pub type Spread = (f64, f64);
+
+impl Finder {
+    /// As [`largest`]: fills `ranked` and returns the next largest value.
+    ///
+    /// With the `spread` of the values the guess where the largest begin comes from the columns
+    /// before. A guess only decides what is looked at, never what is found.
+    pub fn find(
+        &mut self,
+        values: &[f64],
+        sign: f64,
+        count: usize,
+        spread: Option<Spread>,
+    ) -> Option<f64> {
+        if count >= values.len() {
+            return None;
+        }
+        let needed = count + 1;
+        let share = needed as f64 / values.len() as f64;
+        let enough = needed..4 * needed;
+        let known = spread.and_then(|spread| self.habit.guess(spread, share));
+        if let Some(least) = known {
+            self.collect(values, sign, least);
+        }
+        if known.is_none() || !enough.contains(&self.ranked.len()) {
+            self.collect(values, sign, guess(values, sign, needed));
+        }
+        if !enough.contains(&self.ranked.len()) {
+            self.collect(values, sign, f64::NEG_INFINITY);
+            let found = &mut self.ranked;
+            let below = found.len() - needed;
+            found.select_nth_unstable_by(below, |a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1)));
+            found.drain(..below);
+            found.sort_unstable_by_key(|ranked| ranked.1);
+        }
+        self.sort();
+        let below = self.ranked.len() - needed;
+        let cutoff = self.ranked[below].0;
+        self.ranked.drain(..=below);
+        if let Some(spread) = spread {
+            self.habit.learn(spread, share, cutoff);
+        }
+        Some(cutoff)
     }
-    let needed = count + 1;
-    let mut found = dispatch(Collect {
-        values,
-        sign,
-        least: guess(values, sign, needed),
-    });
-    // The guess only decides what is looked at, never what is found.
-    if found.len() < needed || found.len() > 4 * needed {
-        found = dispatch(Collect {
-            values,
-            sign,
-            least: f64::NEG_INFINITY,
+
+    /// The values of at least `least`, in input order.
+    fn collect(&mut self, values: &[f64], sign: f64, least: f64) {
+        self.places.clear();
+        at_least(values, sign, least, &mut self.places);
+        self.ranked.clear();
+        let pairs = self
+            .places
+            .iter()
+            .map(|&place| (sign * values[place as usize], place));
+        self.ranked.extend(pairs);
+    }
+
+    /// Sorts by value; equal values keep their order. Buckets of equal width, then insertion: tails
+    /// thin out evenly enough, and where they do not a general sort takes over.
+    fn sort(&mut self) {
+        self.buckets.clear();
+        self.buckets.resize(self.ranked.len(), 0);
+        let count = (2 * self.ranked.len()).next_power_of_two();
+        let spread = dispatch(Buckets {
+            ranked: &self.ranked,
+            count,
+            buckets: &mut self.buckets,
         });
-        let below = found.len() - needed;
-        found.select_nth_unstable_by(below, |a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1)));
-        found.drain(..below);
-        found.sort_unstable_by_key(|ranked| ranked.1);
+        if !spread || !self.distribute(count) {
+            self.ranked.sort_by(|a, b| a.0.total_cmp(&b.0));
+        }
     }
-    sort(&mut found);
-    let cutoff = found[found.len() - needed].0;
-    found.drain(..=found.len() - needed);
-    Some((found, cutoff))
+
+    /// Whether no bucket was too full, and then the values are sorted.
+    fn distribute(&mut self, count: usize) -> bool {
+        let (starts, sorted) = (&mut self.starts, &mut self.spare);
+        starts.clear();
+        starts.resize(count + 1, 0);
+        for &bucket in &self.buckets {
+            starts[bucket as usize % count + 1] += 1;
+        }
+        let (mut start, mut most) = (0, 0);
+        for place in starts.iter_mut() {
+            most = most.max(*place);
+            start += *place;
+            *place = start;
+        }
+        if most > MOST_INSERTED {
+            return false;
+        }
+        sorted.clear();
+        sorted.resize(self.ranked.len(), (0.0, 0));
+        for (&one, &bucket) in self.ranked.iter().zip(&self.buckets) {
+            let start = &mut starts[bucket as usize % count];
+            sorted[*start as usize] = one;
+            *start += 1;
+        }
+        for end in 1..sorted.len() {
+            let one = sorted[end];
+            let mut place = end;
+            while place > 0 && sorted[place - 1].0 > one.0 {
+                sorted[place] = sorted[place - 1];
+                place -= 1;
+            }
+            sorted[place] = one;
+        }
+        std::mem::swap(&mut self.ranked, sorted);
+        true
+    }
+}
+
+/// Where the largest values of the columns before began, in standard deviations from the mean.
+#[derive(Default)]
+struct Habit {
+    /// Logarithm of the share of values that were sought.
+    share: f64,
+    height: f64,
+    /// Mean distance of a column from that.
+    doubt: f64,
+}
+
+impl Habit {
+    /// The height at another share: the tail of a normal distribution falls about so fast.
+    fn at(&self, share: f64) -> f64 {
+        self.height + 0.5 * (self.share - share.ln())
+    }
+
+    /// A value that a few more than the sought are likely to reach.
+    fn guess(&self, (mean, deviation): Spread, share: f64) -> Option<f64> {
+        let least = mean + deviation * (self.at(share) - 3.0 * self.doubt - 0.02);
+        (self.doubt > 0.0 && least.is_finite()).then_some(least)
+    }
+
+    fn learn(&mut self, (mean, deviation): Spread, share: f64, cutoff: f64) {
+        let height = (cutoff - mean) / deviation;
+        if !height.is_finite() {
+            return;
+        }
+        if self.doubt == 0.0 {
+            (self.height, self.doubt) = (height, 0.05);
+        } else {
+            let missed = height - self.at(share);
+            self.height = self.at(share) + FOLLOW * missed;
+            // One column of another kind must not spoil the guess for all that follow.
+            self.doubt += FOLLOW * (missed.abs().min(0.2) - self.doubt);
+        }
+        self.share = share.ln();
+    }
 }
 
 /// A value that between `needed` and three times as many values are likely to reach.
@@ -56,56 +198,6 @@ fn guess(values: &[f64], sign: f64, needed: usize) -> f64 {
     let mut sample: Vec<f64> = values.iter().step_by(step).map(|x| sign * x).collect();
     let rank = sample.len() - SAMPLE_RANK;
     *sample.select_nth_unstable_by(rank, f64::total_cmp).1
-}
-
-/// Values of at least `least`, in input order.
-struct Collect<'a> {
-    values: &'a [f64],
-    sign: f64,
-    least: f64,
-}
-
-impl Work for Collect<'_> {
-    type Output = Vec<Ranked>;
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) -> Vec<Ranked> {
-        let mut found = Vec::with_capacity(256);
-        let (chunks, rest) = self.values.as_chunks::<CHUNK>();
-        for (number, chunk) in chunks.iter().enumerate() {
-            let mut mask = 0_u32;
-            for (lane, value) in chunk.iter().enumerate() {
-                mask |= u32::from(self.sign * value >= self.least) << lane;
-            }
-            while mask != 0 {
-                let lane = mask.trailing_zeros();
-                mask &= mask - 1;
-                let value = self.sign * chunk[lane as usize % CHUNK];
-                found.push((value, (number * CHUNK) as u32 + lane));
-            }
-        }
-        for (value, index) in rest.iter().zip((chunks.len() * CHUNK) as u32..) {
-            if self.sign * value >= self.least {
-                found.push((self.sign * value, index));
-            }
-        }
-        found
-    }
-}
-
-/// Sorts by value; equal values keep their order. Buckets of equal width, then insertion: tails
-/// thin out evenly enough, and where they do not a general sort takes over.
-fn sort(ranked: &mut Vec<Ranked>) {
-    let mut buckets = vec![0; ranked.len()];
-    let count = ranked.len().next_power_of_two();
-    let spread = dispatch(Buckets {
-        ranked,
-        count,
-        buckets: &mut buckets,
-    });
-    if !spread || !distribute(ranked, &buckets, count) {
-        ranked.sort_by(|a, b| a.0.total_cmp(&b.0));
-    }
 }
 
 /// The bucket of every value, of `count` buckets; whether they have a width.
@@ -139,38 +231,4 @@ impl Work for Buckets<'_> {
         }
         true
     }
-}
-
-/// Whether no bucket was too full, and then the values are sorted.
-fn distribute(ranked: &mut Vec<Ranked>, buckets: &[u32], count: usize) -> bool {
-    let mut starts = vec![0_u32; count + 1];
-    for &bucket in buckets {
-        starts[bucket as usize % count + 1] += 1;
-    }
-    let (mut start, mut most) = (0, 0);
-    for place in &mut starts {
-        most = most.max(*place);
-        start += *place;
-        *place = start;
-    }
-    if most > MOST_INSERTED {
-        return false;
-    }
-    let mut sorted = vec![(0.0, 0); ranked.len()];
-    for (&one, &bucket) in ranked.iter().zip(buckets) {
-        let start = &mut starts[bucket as usize % count];
-        sorted[*start as usize] = one;
-        *start += 1;
-    }
-    for end in 1..sorted.len() {
-        let one = sorted[end];
-        let mut place = end;
-        while place > 0 && sorted[place - 1].0 > one.0 {
-            sorted[place] = sorted[place - 1];
-            place -= 1;
-        }
-        sorted[place] = one;
-    }
-    *ranked = sorted;
-    true
 }

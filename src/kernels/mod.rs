@@ -3,6 +3,7 @@
 //! `columns` applies a kernel for one column to every column of an array, `ordered` runs the tasks
 //! on threads without letting their number show in the result.
 
+mod blocks;
 pub mod columns;
 pub mod correlation;
 pub mod cumulated;

@@ -56,48 +56,78 @@ impl Pareto {
         }
         self.scale * ((-self.shape * survival).exp_m1() / self.shape)
     }
+}
 
-    /// `log min(1, base + quantile)` at `(z − ½)/count`, `z = 1..count`.
-    pub fn log_quantiles(self, base: f64, count: usize) -> Vec<f64> {
-        let mut values = vec![0.0; count];
-        if self.shape == 0.0 {
-            for (rank, value) in values.iter_mut().enumerate() {
-                *value = base + self.quantile((rank as f64 + 0.5) / count as f64);
+/// `log min(1, base + quantile)` at `(z − ½)/M`, `z = 1..M`, and the room it takes.
+#[derive(Default)]
+pub struct Quantiles {
+    /// `log(1 − (z − ½)/M)` for the last `M`.
+    survival: Vec<f64>,
+    values: Vec<f64>,
+    logs: Vec<f64>,
+}
+
+impl Quantiles {
+    /// The logarithms for the distribution `fit` and `count` points.
+    pub fn logs(&mut self, fit: Pareto, base: f64, count: usize) -> &[f64] {
+        if self.survival.len() != count {
+            self.survival.resize(count, 0.0);
+            dispatch(Survival(&mut self.survival));
+        }
+        self.values.resize(count, 0.0);
+        self.logs.resize(count, 0.0);
+        if fit.shape == 0.0 {
+            for (value, survival) in self.values.iter_mut().zip(&self.survival) {
+                *value = (base - fit.scale * survival).min(1.0);
             }
         } else {
-            dispatch(Quantiles {
-                fit: self,
+            dispatch(Capped {
+                fit,
                 base,
-                values: &mut values,
+                survival: &self.survival,
+                values: &mut self.values,
             });
         }
-        values.iter_mut().for_each(|value| *value = value.min(1.0));
-        let mut logs = vec![0.0; count];
-        ln_slice(&values, &mut logs);
-        logs
+        ln_slice(&self.values, &mut self.logs);
+        &self.logs
     }
 }
 
-/// `base + quantile` at `(z − ½)/count`, for shapes other than 0.
-struct Quantiles<'a> {
-    fit: Pareto,
-    base: f64,
-    values: &'a mut [f64],
-}
+/// `log(1 − p)` at `p = (z − ½)/M`.
+struct Survival<'a>(&'a mut [f64]);
 
-impl Work for Quantiles<'_> {
+impl Work for Survival<'_> {
     type Output = ();
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
-        let count = self.values.len() as f64;
-        for (rank, value) in self.values.iter_mut().enumerate() {
+        let count = self.0.len() as f64;
+        for (rank, value) in self.0.iter_mut().enumerate() {
             let p = (rank as f64 + 0.5) / count;
-            // log1p(−p): the rounding of 1 − p is put back.
+            // The rounding of 1 − p is put back.
             let rest = 1.0 - p;
-            let survival = ln::<A>(rest) + ((1.0 - rest) - p) / rest;
-            let power = (-self.fit.shape * survival).min(MOST);
-            *value = self.base + self.fit.scale * (exp_m1::<A>(power) / self.fit.shape);
+            *value = ln::<A>(rest) + ((1.0 - rest) - p) / rest;
+        }
+    }
+}
+
+/// `min(1, base + quantile)`, for shapes other than 0.
+struct Capped<'a> {
+    fit: Pareto,
+    base: f64,
+    survival: &'a [f64],
+    values: &'a mut [f64],
+}
+
+impl Work for Capped<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let Pareto { shape, scale } = self.fit;
+        for (value, survival) in self.values.iter_mut().zip(self.survival) {
+            let power = (-shape * survival).min(MOST);
+            *value = (self.base + scale * (exp_m1::<A>(power) / shape)).min(1.0);
         }
     }
 }

@@ -3,6 +3,7 @@
 use rand::rngs::ChaCha8Rng;
 use rand::{Rng, SeedableRng};
 
+use super::cumulated::SHARES;
 use super::error::KernelError;
 use super::ordered::Interrupt;
 use super::quantile::Compensated;
@@ -77,7 +78,7 @@ impl Strata {
         }
         // Beyond the last stratum there is no point.
         self.numbers.push(f64::INFINITY);
-        let mut rest = [0.0; BLOCK];
+        let mut rest = [0.0; SHARES];
         dispatch(Floors {
             shares,
             wholes: targets,
@@ -167,9 +168,31 @@ impl Uniform {
         (self.0.next_u64() >> 11) as f64 * (1.0 / (1_u64 << 53) as f64)
     }
 
+    /// As so many calls of [`Self::next`].
     pub(super) fn fill(&mut self, numbers: &mut [f64]) {
-        for number in numbers {
-            *number = self.next();
+        let mut bytes = [[0; 8]; BLOCK];
+        for numbers in numbers.chunks_mut(BLOCK) {
+            let bytes = &mut bytes[..numbers.len()];
+            self.0.fill_bytes(bytes.as_flattened_mut());
+            dispatch(Fractions { bytes, numbers });
+        }
+    }
+}
+
+/// 64 bits, the low ones first, to a number on `[0, 1)` of their upper 53.
+struct Fractions<'a> {
+    bytes: &'a [[u8; 8]],
+    numbers: &'a mut [f64],
+}
+
+impl Work for Fractions<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        for (number, bytes) in self.numbers.iter_mut().zip(self.bytes) {
+            let bits = u64::from_le_bytes(*bytes) >> 11;
+            *number = bits as f64 * (1.0 / (1_u64 << 53) as f64);
         }
     }
 }

@@ -3,7 +3,7 @@
 use std::str::FromStr;
 
 use super::columns::expect_shape;
-use super::cumulated::Cumulated;
+use super::cumulated::{Cumulated, SHARES};
 use super::error::KernelError;
 use super::ordered::Interrupt;
 use super::points::{BLOCK, COPIES, Ceilings, Strata, Uniform, reserved, room, sorted_positions};
@@ -149,27 +149,28 @@ pub fn resample_into(
     Ok(())
 }
 
-/// Writes copies of `first`, `first + 1`, … until as many are there in all as the targets say, at
-/// most `size`; returns how many there are.
-fn copy_until(
-    targets: &[u64],
-    first: usize,
-    chosen: &mut [i64],
-    mut count: usize,
-    size: usize,
-) -> usize {
+/// Writes copies of `first`, `first + 1`, … until as many are there in all as the targets say,
+/// which must not fall; returns how many there are.
+fn copy_until(targets: &[u64], first: usize, chosen: &mut [i64], count: usize) -> usize {
+    // No place waits for a comparison: where the copies of a draw begin is known beforehand.
+    let mut start = count;
     for (place, &target) in targets.iter().enumerate() {
         let index = (first + place) as i64;
-        let target = size.min(target as usize);
-        if let Some(copies) = chosen[count..].first_chunk_mut::<COPIES>() {
+        let target = target as usize;
+        if let Some(copies) = chosen
+            .get_mut(start..)
+            .and_then(|rest| rest.first_chunk_mut::<COPIES>())
+        {
             *copies = [index; COPIES];
         }
-        if target > count + COPIES {
-            chosen[count + COPIES..target].fill(index);
+        if target > start + COPIES
+            && let Some(more) = chosen.get_mut(start + COPIES..target)
+        {
+            more.fill(index);
         }
-        count = count.max(target);
+        start = target;
     }
-    count
+    start
 }
 
 /// Copies each index until as many are there as `reached(shares, targets)` says for its share
@@ -181,13 +182,17 @@ fn by_position(
     chosen: &mut [i64],
     mut reached: impl FnMut(&[f64], &mut [u64]),
 ) {
-    let mut targets = [0; BLOCK];
+    let mut targets = [0; SHARES];
     let mut count = 0;
     weights.shares(size as f64, |first, shares| {
         let targets = &mut targets[..shares.len()];
         reached(shares, targets);
-        count = copy_until(targets, first, chosen, count, size);
+        count = copy_until(targets, first, chosen, count);
     });
+    // A point within a rounding of the whole is above no share.
+    if let Some(left) = chosen.get_mut(count..size) {
+        left.fill(weights.last() as i64);
+    }
 }
 
 fn residual(
@@ -226,7 +231,7 @@ fn residual(
         target += *count;
         *count = target;
     }
-    copy_until(&counts, 0, chosen, 0, size);
+    copy_until(&counts, 0, chosen, 0);
     Ok(())
 }
 

@@ -1,7 +1,9 @@
 //! The upper tail of a set of draws: how long it is, which draws lie in it, and how heavy it is.
 
-use super::largest::{Ranked, largest};
-use super::pareto::{self, FEWEST, Pareto};
+use std::cell::RefCell;
+
+use super::largest::{Finder, Ranked, Spread};
+use super::pareto::{self, FEWEST, Pareto, Quantiles};
 use super::vector::exp::{exp, exp_m1};
 use super::vector::{Arithmetic, Work, dispatch};
 
@@ -56,43 +58,101 @@ pub enum Scale {
 ///
 /// `length` must leave at least one value below the tail, the cut-off; else the tail is short.
 pub fn fit_tail(values: &[f64], length: usize, scale: Scale) -> Tail {
-    if length < FEWEST {
-        return Tail::Short;
-    }
-    let sign = match scale {
-        Scale::Natural(sign) => sign,
-        Scale::Log(_) => 1.0,
-    };
-    let Some((mut ranked, mut cutoff)) = largest(values, sign, length) else {
-        return Tail::Short;
-    };
-    if let Scale::Log(maximum) = scale {
-        cutoff -= maximum;
-        for (value, _) in &mut ranked {
-            *value -= maximum;
+    with_room(|room| match room.fit(values, length, scale, None) {
+        Fitted::Short => Tail::Short,
+        Fitted::Constant => Tail::Constant,
+        Fitted::Fitted { cutoff, fit } => Tail::Fitted {
+            ranked: room.finder.ranked.clone(),
+            cutoff,
+            fit,
+        },
+    })
+}
+
+/// As [`Tail`], the draws left in [`Room`].
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) enum Fitted {
+    Short,
+    Constant,
+    Fitted { cutoff: f64, fit: Pareto },
+}
+
+impl Fitted {
+    pub(super) fn shape(self) -> f64 {
+        match self {
+            Self::Short => f64::INFINITY,
+            Self::Constant => f64::NEG_INFINITY,
+            Self::Fitted { fit, .. } => fit.shape,
         }
     }
-    let mut exceedances: Vec<f64> = ranked.iter().map(|&(value, _)| value).collect();
-    let (least, most) = (ranked[0].0, ranked[length - 1].0);
-    let constant = match scale {
-        Scale::Natural(_) => least == most,
-        Scale::Log(_) => least.exp() == most.exp(),
-    };
-    if constant {
-        return Tail::Constant;
-    }
-    match scale {
-        Scale::Natural(_) => exceedances.iter_mut().for_each(|value| *value -= cutoff),
-        Scale::Log(_) => dispatch(Differences {
-            values: &mut exceedances,
-            cutoff,
-        }),
-    }
-    let fit = pareto::fit_sorted(&exceedances).shrunk(length);
-    Tail::Fitted {
-        ranked,
-        cutoff,
-        fit,
+}
+
+/// What tails need again and again.
+#[derive(Default)]
+pub(super) struct Room {
+    pub(super) finder: Finder,
+    exceedances: Vec<f64>,
+    pub(super) quantiles: Quantiles,
+}
+
+thread_local! {
+    static ROOM: RefCell<Option<Room>> = const { RefCell::new(None) };
+}
+
+/// `work` with the room that this thread keeps.
+pub(super) fn with_room<T>(work: impl FnOnce(&mut Room) -> T) -> T {
+    let mut room = ROOM.take().unwrap_or_default();
+    let result = work(&mut room);
+    ROOM.set(Some(room));
+    result
+}
+
+impl Room {
+    /// As [`fit_tail`]; the draws of the tail are those that `finder` ranks.
+    pub(super) fn fit(
+        &mut self,
+        values: &[f64],
+        length: usize,
+        scale: Scale,
+        spread: Option<Spread>,
+    ) -> Fitted {
+        if length < FEWEST {
+            return Fitted::Short;
+        }
+        let sign = match scale {
+            Scale::Natural(sign) => sign,
+            Scale::Log(_) => 1.0,
+        };
+        let Some(mut cutoff) = self.finder.find(values, sign, length, spread) else {
+            return Fitted::Short;
+        };
+        let ranked = &mut self.finder.ranked;
+        if let Scale::Log(maximum) = scale {
+            cutoff -= maximum;
+            for (value, _) in ranked.iter_mut() {
+                *value -= maximum;
+            }
+        }
+        let exceedances = &mut self.exceedances;
+        exceedances.clear();
+        exceedances.extend(ranked.iter().map(|&(value, _)| value));
+        let (least, most) = (ranked[0].0, ranked[length - 1].0);
+        let constant = match scale {
+            Scale::Natural(_) => least == most,
+            Scale::Log(_) => least.exp() == most.exp(),
+        };
+        if constant {
+            return Fitted::Constant;
+        }
+        match scale {
+            Scale::Natural(_) => exceedances.iter_mut().for_each(|value| *value -= cutoff),
+            Scale::Log(_) => dispatch(Differences {
+                values: exceedances,
+                cutoff,
+            }),
+        }
+        let fit = pareto::fit_sorted(exceedances).shrunk(length);
+        Fitted::Fitted { cutoff, fit }
     }
 }
 

@@ -74,6 +74,8 @@ def test_every_source_gives_the_same_figures(
 ) -> None:
     # Blocks of a few columns, so that many are read.
     monkeypatch.setattr(blocks, "_BLOCK_VALUES", 7 * DRAWS)
+    monkeypatch.setattr(blocks, "_KERNEL_VALUES", 9 * DRAWS)
+    monkeypatch.setattr(blocks, "_KERNEL_COPIED", 11 * DRAWS)
     rate, _, values = _values()
     source = _source(kind, tmp_path)
     labels: Any = np.arange(COUNT) % 8 if grouped else None
@@ -99,7 +101,7 @@ def test_blocks_do_not_change_single_figures(monkeypatch: pytest.MonkeyPatch) ->
     rate, _, values = _values()
     record = sy.Fit({"rate": rate}, loglik=values)._record
     whole = leave_out(record)
-    monkeypatch.setattr(blocks, "_BLOCK_VALUES", DRAWS)
+    monkeypatch.setattr(blocks, "_KERNEL_VALUES", DRAWS)
     single = leave_out(record)
     np.testing.assert_array_equal(whole.by_group.value, single.by_group.value)
     np.testing.assert_array_equal(whole.tail_shape, single.tail_shape)
@@ -117,7 +119,7 @@ def test_results_are_the_same_for_any_number_of_threads() -> None:
 
 
 def test_progress_is_told_in_order_and_to_the_end(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(blocks, "_BLOCK_VALUES", 20 * DRAWS)
+    monkeypatch.setattr(blocks, "_KERNEL_VALUES", 20 * DRAWS)
     rate, _, values = _values()
     told: list[tuple[int, int]] = []
     leave_out(

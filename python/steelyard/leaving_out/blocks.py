@@ -21,6 +21,11 @@ Positions = npt.NDArray[np.int64]
 
 # Values held in float64 at a time: 4 MB. About ten arrays of this size live at once.
 _BLOCK_VALUES = 1 << 19
+# Values that the kernel gets at a time: views of what lies in memory; copies of what does not.
+_KERNEL_VALUES = 1 << 23
+_KERNEL_COPIED = 1 << 21
+# The kernel works on so many columns in one go.
+_KERNEL_COLUMNS = 128
 # A page of a memory map that is touched may bring up to 2 MB of its row with it (large folios, seen
 # on Linux 6.18): rows are read so many bytes at a time, and let go.
 _MAPPED_PIECE = 1 << 21
@@ -108,17 +113,26 @@ def by_observation(
     return ObservationBlocks(function, (int(draws), int(observations)))
 
 
-def width_of(term: LoglikTerm, draws: Draws) -> int:
-    """How many columns are read at a time."""
-    called = callable(term.source) and not hasattr(term.source, "shape")
-    return max(1, (_BLOCK_CALLED if called else _BLOCK_VALUES) // draws.size)
+def width_of(term: LoglikTerm, draws: Draws, *, checked: bool = True) -> int:
+    """How many columns are read at a time; unchecked ones are for the kernel."""
+    source = term.source
+    if callable(source) and not hasattr(source, "shape"):
+        return max(1, _BLOCK_CALLED // draws.size)
+    if checked:
+        return max(1, _BLOCK_VALUES // draws.size)
+    copied = not isinstance(source, np.ndarray) or _read_only_map(source) is not None
+    width = max(1, (_KERNEL_COPIED if copied else _KERNEL_VALUES) // draws.size)
+    return width // _KERNEL_COLUMNS * _KERNEL_COLUMNS or width
 
 
-def read_columns(term: LoglikTerm, draws: Draws, positions: Positions) -> Array:
+def read_columns(
+    term: LoglikTerm, draws: Draws, positions: Positions, *, checked: bool = True
+) -> npt.NDArray[Any]:
     """
-    Values ``(n, k)`` of the observations at flat, ascending `positions`, checked.
+    Values ``(n, k)`` of the observations at flat, ascending `positions`.
 
-    Nothing but these columns is copied, whatever the order of the array in memory.
+    Nothing but these columns is copied, whatever the order of the array in memory. Checked values
+    are float64; without a check they may be float32, and a view of the source.
     """
     source = term.source
     if callable(source) and not hasattr(source, "shape"):
@@ -128,6 +142,9 @@ def read_columns(term: LoglikTerm, draws: Draws, positions: Positions) -> Array:
         values = _from_memory(source, term, draws, positions)
     else:
         values = _from_elsewhere(source, term, draws, positions)
+    if not checked:
+        kept = values.dtype in (np.dtype(np.float32), np.dtype(np.float64))
+        return np.require(values, None if kept else np.float64, ["A"])
     block = np.require(values, np.float64, ["C", "A"])
     _refuse_impossible(block, term, draws, positions)
     return block
@@ -144,7 +161,8 @@ def _from_memory(
     opened = _read_only_map(source)
     if opened is None:
         return rows[:, columns]
-    block = np.empty((draws.size, len(positions)))
+    kept = source.dtype == np.dtype(np.float32)
+    block = np.empty((draws.size, len(positions)), dtype=np.float32 if kept else np.float64)
     at_once = max(1, _MAPPED_BYTES // min(max(rows.strides[0], 1), _MAPPED_PIECE))
     for start in range(0, draws.size, at_once):
         part = slice(start, start + at_once)

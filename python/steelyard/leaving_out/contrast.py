@@ -101,6 +101,7 @@ def contrast(left: LeaveOut, other: LeaveOut) -> Contrast:
         max(one.tail_shape, two.tail_shape),
         Verdict([*one.verdict.findings, *two.verdict.findings]),
         min(one.effective_draws, two.effective_draws),
+        degrees=min(one.degrees, two.degrees),
         label="difference in left-out log score",
     )
     names = tuple(left.name_of(row) for row in range(len(gaps)))

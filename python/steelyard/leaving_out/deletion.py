@@ -2,16 +2,22 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, field, fields
+from typing import Any
 
 import numpy as np
+import numpy.typing as npt
 
 from steelyard import _core
 from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.errors import RatioError
 from steelyard.verdicts import Finding, judge, shape_limit
-from steelyard.weighing.series import relative_efficiency, standard_error
+from steelyard.weighing.series import degrees_of, relative_efficiency
+
+# Place of the faults among the figures of the kernel.
+_FAULTS = 11
 
 __all__ = [
     "Deleted",
@@ -32,16 +38,13 @@ class Setting:
     draws: Draws
     ordered: bool
     log_weights: Array | None
-    # Normalised base weights (n,).
+    # Normalised log weights of the base, where they are not equal, and the weights (n,).
+    base_logs: Array | None
     base: Array
     # Quantities (n, P), centred by their base mean and divided by their base sd.
     quantities: Array
     # Efficiency of the base draws for each quantity.
     efficiency: Array
-    # Their first three powers side by side (n, 3 P).
-    powers: Array
-    # What the base adds to errors: ``Σ v² f²``, ``Σ v² f q``, ``Σ v² q²``, ``q = (f² − 1)/2``.
-    own: tuple[Array, ...]
 
 
 @dataclass(frozen=True, eq=False)
@@ -53,7 +56,8 @@ class Deleted:
     `tail_shape` is that of the raw weights, the sizes and the share are those of the smoothed
     ones; `unseen` is the share of weight that may lie beyond the heaviest draw, `spread` the
     variance of the density over its mean, were the draws those without the group. `shift` and
-    `shift_error`, ``(groups, P)``, are in base sd.
+    `shift_error`, ``(groups, P)``, are in base sd. `degrees` are those of the error's interval,
+    `chain_share` is the p-value of the chains' shares of the raw weights.
     """
 
     score: Array
@@ -65,6 +69,8 @@ class Deleted:
     largest_share: Array
     unseen: Array
     spread: Array
+    degrees: Array
+    chain_share: Array
     shift: Array
     shift_error: Array
 
@@ -120,57 +126,73 @@ def setting_of(base: Base, quantities: Array | None = None) -> Setting:
     draws = base.draws
     logs = base.log_weights
     if logs is None:
-        equal = np.full(draws.size, 1 / draws.size)
+        normal, equal = None, np.full(draws.size, 1 / draws.size)
     else:
-        equal = np.exp(logs - _core.log_sum_exp(np.ascontiguousarray(logs)[:, None])[0])
+        normal = logs - _core.log_sum_exp(np.ascontiguousarray(logs)[:, None])[0]
+        equal = np.exp(normal)
     f = np.zeros((draws.size, 0)) if quantities is None else quantities
     mean = _core.weighted_mean(f, equal)
     sd = np.sqrt(_core.weighted_mean((f - mean) ** 2, equal))
     varies = (f != f[:1]).any(axis=0) & (sd > 0)
-    scaled = (f - mean) / np.where(varies, sd, np.nan)
+    scaled = np.ascontiguousarray((f - mean) / np.where(varies, sd, np.nan))
     efficiency = relative_efficiency(np.where(varies, scaled, 0.0), draws, base.ordered)
-    q = (scaled**2 - 1) / 2
-    own = tuple((equal**2) @ part for part in (scaled**2, scaled * q, q**2))
-    powers = np.concatenate([scaled, scaled**2, scaled**3], axis=1)
-    return Setting(draws, base.ordered, logs, equal, scaled, efficiency, powers, own)
+    return Setting(draws, base.ordered, logs, normal, equal, scaled, efficiency)
 
 
-def delete_columns(setting: Setting, held: Array, scored: Array) -> tuple[Deleted, Totals]:
+def delete_columns(
+    setting: Setting,
+    held: npt.NDArray[Any],
+    scored: npt.NDArray[Any],
+    refuse: Callable[[], object] | None = None,
+) -> tuple[Deleted, Totals]:
     """
     Leave out groups, one a column.
 
     `held` ``(n, k)`` is the log density of what is deleted with each group, `scored` that of the
     group itself (the same array where nothing more is deleted). The weights are
     ``w ∝ v exp(−held)`` with base weights v, smoothed; the score is ``log Σ w exp(scored)``, its
-    influence series ``S w (exp(scored)/p − 1)`` with p the exponential of the score.
+    influence series ``S w (exp(scored)/p − 1)`` with p the exponential of the score. Values that
+    were not checked come with `refuse`, which raises where one of them is no log density.
     """
-    draws, count = setting.draws, setting.draws.size
-    log_weights, raw, shape = deletion_weights(setting, held)
-    w = np.exp(log_weights)
-    joint = log_weights + scored
-    score = _core.log_sum_exp(joint)
-    z = count * (np.exp(joint - score) - w)
-    raw_series = count * (_share(raw, scored, setting, held is scored) - raw)
-    in_sample, z_in = _in_sample(setting, scored)
-    shift, shift_error = _shifts(setting, w)
-    share = _core.largest_share(log_weights)
+    draws, alone = setting.draws, held is scored
+    repeats = None if setting.ordered else draws.repeats
+    figures, totals, shift, square = _core.delete(
+        held if alone else np.asarray(held, dtype=np.float64),
+        setting.quantities,
+        None if alone else np.asarray(scored, dtype=np.float64),
+        setting.base_logs,
+        draws.starts if setting.ordered else None,
+        None if repeats is None else repeats.astype(np.int64),
+    )
+    if figures[:, _FAULTS].any():
+        if refuse is not None:
+            refuse()
+        log_ratio_of(setting, np.asarray(held, dtype=np.float64))
+    return _deleted(setting, figures, shift, square), Totals(*totals)
+
+
+def _deleted(setting: Setting, figures: Array, shift: Array, square: Array) -> Deleted:
+    """Figures of the kernel with allowances, degrees and errors of shifts."""
+    count = setting.draws.size
+    score, error, in_sample, shape, size, entropy, share, spread, carried, efficiency, p_value = (
+        np.ascontiguousarray(figures[:, place]) for place in range(_FAULTS)
+    )
     unseen = np.where(share * count > 1 + 1e-9, unseen_mass(shape, share), 0.0)
-    with np.errstate(over="ignore"):
-        spread = np.expm1(np.maximum(_core.log_sum_exp(joint + scored) - 2 * score, 0.0))
-    found = Deleted(
+    return Deleted(
         score,
-        np.hypot(standard_error(z, draws, setting.ordered), unseen),
+        np.hypot(error, unseen),
         in_sample,
         shape,
-        _core.effective_size(log_weights, False),
-        _core.effective_size(log_weights, True),
+        size,
+        entropy,
         share,
         unseen,
         spread,
+        degrees_of(carried, efficiency, setting.draws),
+        p_value,
         shift,
-        shift_error,
+        np.sqrt(square / setting.efficiency),
     )
-    return found, Totals(z.sum(axis=1), raw_series.sum(axis=1), z_in.sum(axis=1))
 
 
 def unseen_mass(shape: Array, share: Array) -> Array:
@@ -216,52 +238,6 @@ def log_ratio_of(setting: Setting, held: Array) -> Array:
     return total
 
 
-def _share(raw: Array, scored: Array, setting: Setting, same: bool) -> Array:
-    """``w exp(scored)/p`` with raw weights: the base weights where nothing more is deleted."""
-    if same:
-        return setting.base[:, None]
-    with np.errstate(divide="ignore"):
-        joint = np.log(raw) + scored
-    return np.exp(joint - _core.log_sum_exp(joint))
-
-
-def _in_sample(setting: Setting, scored: Array) -> tuple[Array, Array]:
-    """``log Σ v exp(scored)``, and its influence series."""
-    with np.errstate(divide="ignore"):
-        joint = scored + np.log(setting.base)[:, None]
-    score = _core.log_sum_exp(joint)
-    return score, setting.draws.size * (np.exp(joint - score) - setting.base[:, None])
-
-
-def _shifts(setting: Setting, w: Array) -> tuple[Array, Array]:
-    """
-    Shifts of the means of the quantities, in base sd, and their Monte Carlo errors.
-
-    With f standardised, the influence of a draw on a shift m is
-    ``w (f − m) − v f − v m (f² − 1)/2``: target mean, base mean and base sd. The error
-    is that of independent draws divided by the efficiency of the base draws for f.
-    """
-    count, v = setting.quantities.shape[1], setting.base
-    if count == 0:
-        empty = np.zeros((w.shape[1], 0))
-        return empty, empty
-    powers = setting.powers
-    first = w.T @ powers
-    m = first[:, :count]
-    squares = w**2
-    second = squares.T @ powers[:, : 2 * count]
-    target = second[:, count:] - 2 * m * second[:, :count]
-    target += m**2 * squares.sum(axis=0)[:, None]
-    equal = setting.log_weights is None
-    product = first / len(v) if equal else (w * v[:, None]).T @ powers
-    mass = np.full((w.shape[1], 1), 1 / len(v)) if equal else (w.T @ v)[:, None]
-    one, two, three = (product[:, i * count : (i + 1) * count] for i in range(3))
-    both = two - m * one + m * ((three - one) / 2 - m * (two - mass) / 2)
-    own = setting.own[0] + 2 * m * setting.own[1] + m**2 * setting.own[2]
-    variance = np.maximum(target - 2 * both + own, 0.0) / setting.efficiency
-    return m, np.sqrt(variance)
-
-
 def group_findings(found: Deleted, draws: int, shape: tuple[int, ...]) -> list[Finding]:
     """What the weights of every group say about trust, in the shape of the groups."""
 
@@ -276,4 +252,6 @@ def group_findings(found: Deleted, draws: int, shape: tuple[int, ...]) -> list[F
         judge("few_effective_entropy", shaped(found.entropy_size)),
         judge("few_carry", shaped(found.largest_share)),
         judge("saturated_divergence", shaped(divergence)),
+        # As many tests as groups: p-values are held against limits as those of one.
+        judge("chain_share", shaped(np.minimum(found.chain_share * found.score.size, 1.0))),
     ]

@@ -96,17 +96,20 @@ class Groups:
             close_names(str(group), known) if labelled else "Positions count from 0.",
         )
 
-    def blocks(self, draws: Draws, chosen: Positions) -> Iterator[tuple[slice, Array, Array]]:
+    def blocks(
+        self, draws: Draws, chosen: Positions, *, checked: bool = True
+    ) -> Iterator[tuple[slice, Array, Array]]:
         """
         Groups by the block: a slice of `chosen`, what is deleted and what is scored ``(n, k)``.
 
-        Each is the sum of the log likelihood over the observations of a group.
+        Each is the sum of the log likelihood over the observations of a group. Unchecked blocks are
+        for the kernel, which finds what is wrong itself: then :meth:`refuse` says it.
         """
-        width = width_of(self.term, draws)
+        width = width_of(self.term, draws, checked=checked or self.members is not None)
         for start in range(0, len(chosen), width):
             part = slice(start, min(start + width, len(chosen)))
             if self.members is None:
-                block = read_columns(self.term, draws, chosen[part])
+                block = read_columns(self.term, draws, chosen[part], checked=checked)
                 yield part, block, block
                 continue
             scored = self._sums(draws, [self.members[int(g)] for g in chosen[part]])
@@ -115,6 +118,16 @@ class Groups:
             else:
                 held = self._sums(draws, [self.deleted[int(g)] for g in chosen[part]])
                 yield part, held, scored
+
+    def refuse(self, draws: Draws, chosen: Positions) -> None:
+        """Raise where some groups hold values that are no log densities."""
+        width = width_of(self.term, draws)
+        for start in range(0, len(chosen), width):
+            some = chosen[start : start + width]
+            if self.members is None:
+                read_columns(self.term, draws, some)
+            else:
+                self._sums(draws, [self.members[int(g)] for g in some])
 
     def _sums(self, draws: Draws, members: Sequence[Positions]) -> Array:
         """Sums over each group; observations are read once for each block of groups."""

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import replace
+from functools import partial
 from typing import Any
 
 import numpy as np
@@ -116,8 +117,9 @@ def _pass(
 ) -> tuple[Deleted, Totals]:
     found = Deleted.empty(len(chosen), setting.quantities.shape[1])
     totals = Totals.zero(setting.draws.size)
-    for part, held, scored in groups.blocks(setting.draws, chosen):
-        figures, series = delete_columns(setting, held, scored)
+    for part, held, scored in groups.blocks(setting.draws, chosen, checked=False):
+        refuse = partial(groups.refuse, setting.draws, chosen[part])
+        figures, series = delete_columns(setting, held, scored, refuse)
         found.put(part, figures)
         totals.add(series)
         tell(part.stop)

@@ -131,6 +131,7 @@ def _result(
         found.tail_shape,
         Verdict([*verdict.findings, judge("base_unverified")], found.score.shape),
         found.spread / np.where(found.error > 0, found.error, np.nan) ** 2,
+        degrees=found.degrees,
         label=f"log score {steps} ahead",
         dims=("point",),
         labels={"point": points},
@@ -140,9 +141,11 @@ def _result(
         max(run.tail_shape for run in runs),
         min(run.p_value for run in runs),
         min(run.effective_draws for run in runs),
+        min(run.contributions for run in runs),
+        min(run.degrees for run in runs),
     )
     findings = [judge("base_unverified"), *level_counts(ranks, "points ahead")]
-    total = of_total(base, float(found.score.sum()), joint, findings, f"log score {steps} ahead")
+    total = of_total(float(found.score.sum()), joint, findings, f"log score {steps} ahead")
     end = from_ + len(points)
     needed = _forecast(from_, due[0], end) if is_forecast and due else len(due)
     return LookAhead(

@@ -109,10 +109,16 @@ class LeaveOut(Frozen):
             self.tail_shape,
             self._group_verdict,
             size.reshape(self.shape),
+            degrees=self._degrees.reshape(self.shape),
             label="left-out log score",
             dims=dims,
             labels=labels,
         )
+
+    @property
+    def _degrees(self) -> Array:
+        """Of the intervals of the groups; the error of a refit is taken as known."""
+        return np.where(np.isin(self._chosen, list(self._refits)), np.inf, self._found.degrees)
 
     @property
     def shape(self) -> tuple[int, ...]:
@@ -175,7 +181,7 @@ class LeaveOut(Frozen):
             value = self.sampled.total(self._scores)
         series = study_total(self._base, self._totals.left_out, self._totals.raw, self._more)
         findings = [*self._notes, *level_counts(self._ranks, "groups left out")]
-        return of_total(self._base, value, series, findings, "left-out log score")
+        return of_total(value, series, findings, "left-out log score")
 
     @cached_property
     def optimism(self) -> Estimate:
@@ -190,7 +196,7 @@ class LeaveOut(Frozen):
             self._more,
         )
         findings = [*self._notes, *level_counts(self._ranks, "groups left out")]
-        return of_total(self._base, value, series, findings, "optimism")
+        return of_total(value, series, findings, "optimism")
 
     @property
     def in_sample(self) -> Array:

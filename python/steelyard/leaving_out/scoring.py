@@ -11,12 +11,14 @@ import numpy.typing as npt
 
 from steelyard import _core
 from steelyard.answers import Estimate
+from steelyard.answers.estimating import MANY
 from steelyard.base import Base
 from steelyard.base.draws import Array
-from steelyard.levels import shape_limit
 from steelyard.verdicts import Finding, Verdict, judge
 from steelyard.weighing.series import (
     chains_p_value,
+    contributions_of,
+    degrees_of,
     relative_efficiency,
     standard_error,
     tail_of,
@@ -46,6 +48,8 @@ class Series:
     tail_shape: float
     p_value: float
     effective_draws: float
+    contributions: float = math.inf
+    degrees: float = math.inf
 
 
 def study_total(base: Base, series: Array, raw: Array, more: float = 0.0) -> Series:
@@ -60,20 +64,24 @@ def study_total(base: Base, series: Array, raw: Array, more: float = 0.0) -> Ser
     efficiency = relative_efficiency(z_raw, draws, ordered)
     equal = np.full(draws.size, 1 / draws.size)
     variance = float(_core.mean_square(z)[0])
+    carried = contributions_of(z, efficiency, draws, ordered)
     return Series(
         math.sqrt(own**2 + more),
         float(tail_of(z_raw, efficiency, draws, ordered)[0]),
         float(chains_p_value(z, equal, draws)[0]) if ordered else 1.0,
         variance / own**2 if own > 0 else float(draws.size),
+        float(carried[0]),
+        float(degrees_of(carried, efficiency, draws)[0]),
     )
 
 
 def of_total(
-    base: Base, value: float, series: Series, findings: list[Finding], label: str
+    value: float, series: Series, findings: list[Finding], label: str
 ) -> Estimate:
     """The Estimate of a sum over groups."""
     own = [
-        judge("quantity_shape", series.tail_shape, strained=shape_limit(base.draws.size)),
+        judge("quantity_shape", series.tail_shape, spoken=np.asarray(series.contributions < MANY)),
+        judge("few_contributions", series.contributions),
         judge("chains_disagree", series.p_value),
     ]
     return Estimate(
@@ -82,6 +90,7 @@ def of_total(
         series.tail_shape,
         Verdict([*findings, *own]),
         series.effective_draws,
+        degrees=series.degrees,
         label=label,
     )
 

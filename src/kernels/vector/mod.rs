@@ -7,13 +7,15 @@
 //! last bits.
 
 // The uses of `unsafe` in the crate: calling a copy after its instruction set was detected, and the
-// stores of `stream`.
+// loads and stores of `select`, `stream` and `transpose`.
 #![allow(unsafe_code)]
 
 pub mod dot;
 pub mod exp;
 pub mod ln;
+pub mod select;
 pub mod stream;
+pub mod transpose;
 
 /// How `a·b + c` is formed.
 pub trait Arithmetic {
