@@ -7,6 +7,7 @@
 mod kernels {
     mod columns;
     mod correlation;
+    mod deletion;
     mod densities;
     mod densities_ln;
     mod densities_tables;

@@ -8,7 +8,8 @@ use std::ops::Range;
 
 use ndarray::{Array2, ArrayView2, Axis};
 
-use super::columns::{LINE, distance, expect_shape, gather_strip};
+use super::blocks::{distance, gather};
+use super::columns::expect_shape;
 use super::deletion_column::{Shared, Work as ColumnWork};
 use super::deletion_lags::Layout;
 use super::deletion_shift::{Panels, Shifts};
@@ -23,13 +24,10 @@ use super::ordered::{Interrupt, map_tasks};
 const COLUMNS: usize = 128;
 
 /// Columns of a task that are gathered together.
-const TOGETHER: usize = 64;
+const TOGETHER: usize = 32;
 
 /// Most entries of a task's buffer, 32 MiB, unless a single column is longer.
 const BUFFER: usize = 4 << 20;
-
-/// Rows gathered between two looks at the caller's wish to stop.
-const ROWS: usize = 256;
 
 /// Figures of one column, in this order: log score, its Monte Carlo error, in-sample log score, tail
 /// shape, effective size, its entropy form, largest share, variance of the density over its squared
@@ -204,29 +202,9 @@ fn gathered<E: Entry>(
     range: Range<usize>,
     interrupt: &Interrupt<'_>,
 ) -> Result<Lease, KernelError> {
-    let (rows, columns) = (x.nrows(), range.len());
-    let apart = distance(rows);
-    let mut buffer = Lease::new(apart * columns);
+    let mut buffer = Lease::new(distance(x.nrows()) * range.len());
     let view = x.slice_axis_move(Axis(1), range.into());
-    let in_place: Option<Vec<&[E]>> = (0..columns)
-        .map(|column| view.index_axis_move(Axis(1), column).to_slice())
-        .collect();
-    if let Some(sources) = in_place {
-        for (column, source) in sources.into_iter().enumerate() {
-            interrupt.check()?;
-            let target = &mut buffer[column * apart..][..rows];
-            for (target, entry) in target.iter_mut().zip(source) {
-                *target = entry.wide();
-            }
-        }
-        return Ok(buffer);
-    }
-    for (part, strip) in view.axis_chunks_iter(Axis(0), LINE).enumerate() {
-        if part.is_multiple_of(ROWS / LINE) {
-            interrupt.check()?;
-        }
-        gather_strip(strip, &mut buffer[part * LINE..], apart);
-    }
+    gather(view, &mut buffer, interrupt)?;
     Ok(buffer)
 }
 

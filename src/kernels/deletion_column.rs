@@ -3,13 +3,13 @@
 use super::deletion::{Base, FIGURES, Order, fault};
 use super::deletion_lags::{Lagged, Layout};
 use super::deletion_loops::{
-    AddBoth, Density, Exponentials, Finite, Moments, Powers, Ratios, Scaled, Sums, Weighed,
+    AddBoth, Density, Exponentials, Finite, Moments, Powers, Ratios, Scaled, Sums, Survey, Weighed,
     maximum_of,
 };
 use super::error::KernelError;
-use super::largest::Ranked;
+use super::largest::{Ranked, Spread};
 use super::ordered::{Interrupt, sum};
-use super::tail::{Scale, Tail, fit_tail, tail_length};
+use super::tail::{Fitted, Room, Scale, tail_length, with_room};
 use super::vector::dispatch;
 use super::vector::dot::dot;
 use super::vector::exp::exp_slice;
@@ -64,6 +64,9 @@ pub struct Work<'a> {
     left_out: Vec<f64>,
     raw: Vec<f64>,
     in_sample: Vec<f64>,
+    /// Draws of the tail of the column at hand.
+    tail: Vec<Replaced>,
+    ratios: Vec<f64>,
     keeps_weights: bool,
 }
 
@@ -72,9 +75,8 @@ struct Smoothed {
     /// How far the logarithms were shifted beyond the largest log ratio.
     shift: f64,
     sums: Sums,
-    tail: Vec<Replaced>,
-    /// What the ratios in it are in units of: 1, or the largest where that would overflow. Its
-    /// logarithm and its inverse.
+    /// What the ratios in the tail are in units of: 1, or the largest where that would overflow.
+    /// Its logarithm and its inverse.
     lift: f64,
     unit: f64,
     shape: f64,
@@ -110,6 +112,8 @@ impl<'a> Work<'a> {
             left_out: zeros(),
             raw: zeros(),
             in_sample: zeros(),
+            tail: Vec::new(),
+            ratios: Vec::new(),
             keeps_weights,
         }
     }
@@ -132,24 +136,27 @@ impl<'a> Work<'a> {
         interrupt: &Interrupt<'_>,
     ) -> Result<[f64; FIGURES], KernelError> {
         let mut found = [f64::NAN; FIGURES];
-        let faults = self.faults(held) | scored.map_or(0, |scored| self.faults_scored(scored));
+        let mut faults = scored.map_or(0, |scored| self.faults(scored) & !fault::IMPOSSIBLE);
+        if self.shared.log_weights.is_some() {
+            faults |= self.faults(held);
+        }
+        let mut survey = self.survey(held);
+        if !survey.is_finite() && self.shared.log_weights.is_none() {
+            held.iter_mut().for_each(|entry| *entry = -*entry);
+            faults |= self.faults(held);
+            survey = self.survey(held);
+        }
+        if survey.largest == f64::NEG_INFINITY {
+            faults |= fault::IMPOSSIBLE;
+        }
         found[11] = f64::from(faults);
         if faults & (fault::NAN | fault::IMPOSSIBLE) != 0 {
             held.fill(f64::NAN);
             return Ok(found);
         }
-        let largest = dispatch(Ratios {
-            x: held,
-            log_weights: self.shared.log_weights,
-        });
-        if largest == f64::NEG_INFINITY {
-            found[11] = f64::from(faults | fault::IMPOSSIBLE);
-            held.fill(f64::NAN);
-            return Ok(found);
-        }
         let (smoothed, scores) = match (scored, self.shared.log_weights) {
-            (None, None) => self.alone(held, largest, interrupt)?,
-            _ => self.general(held, scored, largest, interrupt)?,
+            (None, None) => self.alone(held, survey, interrupt)?,
+            _ => self.general(held, scored, survey, interrupt)?,
         };
         let (error, contributions) = self.error(smoothed.efficiency, interrupt)?;
         if self.keeps_weights {
@@ -193,9 +200,12 @@ impl<'a> Work<'a> {
         found
     }
 
-    /// What is scored may be impossible under some draws.
-    fn faults_scored(&self, x: &[f64]) -> u8 {
-        self.faults(x) & !fault::IMPOSSIBLE
+    /// Log densities to log ratios, and what they look like.
+    fn survey(&self, x: &mut [f64]) -> Survey {
+        dispatch(Ratios {
+            x,
+            log_weights: self.shared.log_weights,
+        })
     }
 
     /// Equal base weights, and what is scored is what is deleted. A draw whose weight is not replaced
@@ -203,10 +213,10 @@ impl<'a> Work<'a> {
     fn alone(
         &mut self,
         x: &mut [f64],
-        largest: f64,
+        survey: Survey,
         interrupt: &Interrupt<'_>,
     ) -> Result<(Smoothed, Scored), KernelError> {
-        let count = x.len() as f64;
+        let (count, largest) = (x.len() as f64, survey.largest);
         let (raw_total, least) = dispatch(Exponentials {
             x,
             largest,
@@ -223,12 +233,12 @@ impl<'a> Work<'a> {
             raw: &mut self.raw,
             in_sample: &mut self.in_sample,
         });
-        let smoothed = self.smoothed(x, interrupt)?;
-        let body = smoothed.unit * (count - smoothed.tail.len() as f64);
-        let scale = body + smoothed.tail.iter().map(|draw| draw.ratio).sum::<f64>();
+        let smoothed = self.smoothed(x, survey.spread(), interrupt)?;
+        let body = smoothed.unit * (count - self.tail.len() as f64);
+        let scale = body + self.tail.iter().map(|draw| draw.ratio).sum::<f64>();
         let total = smoothed.sums.total;
         let extra = |draw: &Replaced| (draw.ratio - smoothed.unit) * self.density[draw.index];
-        let squares = smoothed.unit * density + smoothed.tail.iter().map(extra).sum::<f64>();
+        let squares = smoothed.unit * density + self.tail.iter().map(extra).sum::<f64>();
         let lift = smoothed.lift;
         let rest = lift - largest - smoothed.shift;
         let scores = Scored {
@@ -242,7 +252,7 @@ impl<'a> Work<'a> {
             factor: 1.0 / total,
             out: &mut self.series,
         });
-        for draw in &smoothed.tail {
+        for draw in &self.tail {
             let weight = self.weights[draw.index] / total;
             self.series[draw.index] = draw.ratio / scale - weight;
         }
@@ -254,14 +264,14 @@ impl<'a> Work<'a> {
         &mut self,
         x: &mut [f64],
         scored: Option<&[f64]>,
-        largest: f64,
+        survey: Survey,
         interrupt: &Interrupt<'_>,
     ) -> Result<(Smoothed, Scored), KernelError> {
         let base = &self.shared.base;
         let own = self.own(x, scored);
         let (raw_total, _) = dispatch(Exponentials {
             x,
-            largest,
+            largest: survey.largest,
             weights: &mut self.weights,
         });
         let shares = match scored {
@@ -275,7 +285,7 @@ impl<'a> Work<'a> {
         for ((sum, share), weight) in self.raw.iter_mut().zip(shares).zip(&self.weights) {
             *sum += share - weight / raw_total;
         }
-        let smoothed = self.smoothed(x, interrupt)?;
+        let smoothed = self.smoothed(x, survey.spread(), interrupt)?;
         let (top, joint) = self.joint(x, &own);
         let highest = maximum_of(&own);
         for (target, value) in self.density.iter_mut().zip(&own) {
@@ -326,6 +336,7 @@ impl<'a> Work<'a> {
     fn smoothed(
         &mut self,
         x: &mut [f64],
+        spread: Option<Spread>,
         interrupt: &Interrupt<'_>,
     ) -> Result<Smoothed, KernelError> {
         let (mut efficiency, mut p_value) = (1.0, 1.0);
@@ -334,42 +345,35 @@ impl<'a> Work<'a> {
             efficiency = lagged.efficiency(&self.weights, interrupt)?;
             p_value = lagged.chains_p_value(&self.weights, 1.0, interrupt)?;
         }
-        let fitted = tail_of(x, efficiency);
-        let shape = fitted.shape();
-        let (mut tail, mut top, mut shift, mut lift) = (Vec::new(), 0.0, 0.0, 0.0);
-        if let Tail::Fitted {
-            ranked,
-            cutoff,
-            fit,
-        } = fitted
-        {
-            let logs = fit.log_quantiles(cutoff.exp(), ranked.len());
+        let (mut top, mut shift, mut lift) = (0.0, 0.0, 0.0);
+        self.tail.clear();
+        let (weights, tail, ratios) = (&mut self.weights, &mut self.tail, &mut self.ratios);
+        let shape = with_room(|room| {
+            let fitted = tail_of(x, spread, efficiency, room);
+            let Fitted::Fitted { cutoff, fit } = fitted else {
+                return fitted.shape();
+            };
+            let ranked = &room.finder.ranked;
+            let logs = room.quantiles.logs(fit, cutoff.exp(), ranked.len());
             top = logs.iter().copied().fold(cutoff, f64::max);
             shift = if top < FAR_BELOW { top } else { 0.0 };
-            let mut smooth = logs.clone();
-            exp_slice(&mut smooth);
-            let ratio = |(draw, log): (&Ranked, &f64)| log - draw.0;
-            let mut ratios: Vec<f64> = ranked.iter().zip(&logs).map(ratio).collect();
-            let most = maximum_of(&ratios);
-            if most > FAR_ABOVE {
-                ratios.iter_mut().for_each(|ratio| *ratio -= most);
-                lift = most;
-            }
-            exp_slice(&mut ratios);
-            tail.reserve_exact(ranked.len());
+            lift = exponentials(ranked, logs, ratios);
+            let (smooth, ratios) = ratios.split_at(logs.len());
             for (rank, &(_, index)) in ranked.iter().enumerate() {
-                let (index, ratio) = (index as usize, ratios[rank]);
+                let index = index as usize;
                 x[index] = logs[rank];
-                self.weights[index] = smooth[rank];
+                weights[index] = smooth[rank];
+                let ratio = ratios[rank];
                 tail.push(Replaced { index, ratio });
             }
-            if shift != 0.0 {
-                dispatch(Exponentials {
-                    x,
-                    largest: shift,
-                    weights: &mut self.weights,
-                });
-            }
+            fitted.shape()
+        });
+        if shift != 0.0 {
+            dispatch(Exponentials {
+                x,
+                largest: shift,
+                weights: &mut self.weights,
+            });
         }
         Ok(Smoothed {
             shift,
@@ -377,7 +381,6 @@ impl<'a> Work<'a> {
                 x,
                 weights: &self.weights,
             }),
-            tail,
             lift,
             unit: (-lift).exp(),
             shape,
@@ -435,18 +438,32 @@ fn contributions((squares, cubes): (f64, f64)) -> f64 {
     squares.powi(3) / (cubes * cubes)
 }
 
+/// Writes the exponentials of the smoothed logarithms and, behind them, of what they are above the
+/// raw ones, in units of the largest where that would overflow; the logarithm of the unit.
+fn exponentials(ranked: &[Ranked], logs: &[f64], into: &mut Vec<f64>) -> f64 {
+    into.clear();
+    into.extend_from_slice(logs);
+    into.extend(ranked.iter().zip(logs).map(|(draw, log)| log - draw.0));
+    let ratios = &mut into[logs.len()..];
+    let most = maximum_of(ratios);
+    let unit = if most > FAR_ABOVE { most } else { 0.0 };
+    ratios.iter_mut().for_each(|ratio| *ratio -= unit);
+    exp_slice(into);
+    unit
+}
+
 /// The tail of log weights whose largest is 0, as [`super::smooth::smooth`] finds it.
-fn tail_of(x: &[f64], relative_efficiency: f64) -> Tail {
-    let length = tail_length(x.len(), relative_efficiency);
-    let tail = fit_tail(x, length, Scale::Log(0.0));
-    match &tail {
-        Tail::Fitted { cutoff, .. } if *cutoff > -700.0 => return tail,
-        Tail::Constant => return tail,
+fn tail_of(x: &[f64], spread: Option<Spread>, efficiency: f64, room: &mut Room) -> Fitted {
+    let length = tail_length(x.len(), efficiency);
+    let tail = room.fit(x, length, Scale::Log(0.0), spread);
+    match tail {
+        Fitted::Fitted { cutoff, .. } if cutoff > -700.0 => return tail,
+        Fitted::Constant => return tail,
         _ => {}
     }
     let positive = x.iter().filter(|&&x| x.exp() > 0.0).count();
     if positive > length {
         return tail;
     }
-    fit_tail(x, positive.saturating_sub(1), Scale::Log(0.0))
+    room.fit(x, positive.saturating_sub(1), Scale::Log(0.0), None)
 }

@@ -21,8 +21,34 @@ impl Work for Finite<'_> {
     }
 }
 
-/// Log densities to log ratios `log v − x`, in place; the largest. A draw without base weight has
-/// none.
+/// What log ratios look like: their number and largest, sum and sum of squares of their distances
+/// from the first.
+#[derive(Clone, Copy)]
+pub struct Survey {
+    count: f64,
+    origin: f64,
+    /// The largest of them that is a number.
+    pub largest: f64,
+    sum: f64,
+    squares: f64,
+}
+
+impl Survey {
+    /// Whether all of them are; a false alarm is possible where they are huge.
+    pub fn is_finite(&self) -> bool {
+        self.sum.is_finite()
+    }
+
+    /// Mean and standard deviation of the ratios below the largest.
+    pub fn spread(&self) -> Option<(f64, f64)> {
+        let mean = self.sum / self.count;
+        let deviation = (self.squares / self.count - mean * mean).sqrt();
+        let known = mean.is_finite() && deviation > 0.0 && deviation.is_finite();
+        known.then_some((mean + (self.origin - self.largest), deviation))
+    }
+}
+
+/// Log densities to log ratios `log v − x`, in place. A draw without base weight has none.
 pub struct Ratios<'a> {
     /// Log densities.
     pub x: &'a mut [f64],
@@ -31,12 +57,13 @@ pub struct Ratios<'a> {
 }
 
 impl Work for Ratios<'_> {
-    type Output = f64;
+    type Output = Survey;
 
     #[inline(always)]
-    fn run<A: Arithmetic>(self) -> f64 {
+    fn run<A: Arithmetic>(self) -> Survey {
+        let first = self.x.first().copied().unwrap_or(0.0);
         match self.log_weights {
-            None => return negated_maximum(self.x),
+            None => surveyed::<A>(self.x, -first, |x| -x),
             Some(logs) => {
                 for (x, &log) in self.x.iter_mut().zip(logs) {
                     *x = if log == f64::NEG_INFINITY {
@@ -45,28 +72,41 @@ impl Work for Ratios<'_> {
                         log - *x
                     };
                 }
+                let first = self.x.first().copied().unwrap_or(0.0);
+                surveyed::<A>(self.x, first, |x| x)
             }
         }
-        lane_maximum(self.x)
     }
 }
 
 #[inline(always)]
-fn negated_maximum(x: &mut [f64]) -> f64 {
-    let mut lanes = [f64::NEG_INFINITY; LANES];
+fn surveyed<A: Arithmetic>(x: &mut [f64], origin: f64, change: impl Fn(f64) -> f64) -> Survey {
+    let mut most = [f64::NEG_INFINITY; LANES];
+    let [mut sums, mut squares] = [[0.0; LANES]; 2];
+    let count = x.len() as f64;
     let (chunks, rest) = x.as_chunks_mut::<LANES>();
     for chunk in chunks {
         for lane in 0..LANES {
-            chunk[lane] = -chunk[lane];
-            lanes[lane] = larger(chunk[lane], lanes[lane]);
+            let value = change(chunk[lane]);
+            chunk[lane] = value;
+            most[lane] = larger(value, most[lane]);
+            sums[lane] += value - origin;
+            squares[lane] = A::mul_add(value - origin, value - origin, squares[lane]);
         }
     }
-    let mut last = f64::NEG_INFINITY;
+    let mut last = (f64::NEG_INFINITY, 0.0, 0.0);
     for entry in rest {
-        *entry = -*entry;
-        last = larger(*entry, last);
+        *entry = change(*entry);
+        let d = *entry - origin;
+        last = (larger(*entry, last.0), last.1 + d, last.2 + d * d);
     }
-    lanes.into_iter().fold(last, f64::max)
+    Survey {
+        count,
+        origin,
+        largest: most.into_iter().fold(last.0, f64::max),
+        sum: tree(sums) + last.1,
+        squares: tree(squares) + last.2,
+    }
 }
 
 /// The largest entry; `−inf` without one.
