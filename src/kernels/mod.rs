@@ -3,6 +3,7 @@
 //! `columns` applies a kernel for one column to every column of an array, `ordered` runs the tasks
 //! on threads without letting their number show in the result.
 
+pub mod chain_means;
 pub mod columns;
 pub mod correlation;
 pub mod cumulated;
@@ -21,6 +22,8 @@ pub mod long_run;
 pub mod mean;
 pub mod mean_logs;
 pub mod moments;
+pub mod node_series;
+pub mod nodes;
 pub mod ordered;
 pub mod pareto;
 pub mod points;
@@ -32,6 +35,7 @@ pub mod signed_tail;
 pub mod smooth;
 pub mod sorting;
 pub mod special;
+pub mod spectrum;
 pub mod tail;
 pub mod vector;
 pub mod weight_sums;
