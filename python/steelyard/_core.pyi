@@ -39,6 +39,7 @@ __all__ = [
     "skew_normal_tails",
     "smooth",
     "sort_order",
+    "study_nodes",
     "tail_shape",
     "threads",
     "weighted_covariance",
@@ -151,3 +152,15 @@ def weighted_covariance(
     f: npt.NDArray[np.float64], w: npt.NDArray[np.float64]
 ) -> npt.NDArray[np.float64]: ...
 def contributions(z: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def study_nodes(
+    ratios: npt.NDArray[np.float64],
+    columns: npt.NDArray[np.float64],
+    events: npt.NDArray[np.float64],
+    own: npt.NDArray[np.float64],
+    equal_base: bool,
+    starts: npt.NDArray[np.int64],
+    ordered: bool,
+    batches: npt.NDArray[np.int64],
+    shift: bool,
+    weights: npt.NDArray[np.float64] | None,
+) -> npt.NDArray[np.float64]: ...

@@ -346,7 +346,13 @@ class Fit:
         return tipping_point(self._record, family, event, level, between, start)
 
     def worst_case(
-        self, quantity: Any, *, divergence: float | None = None, ratio: float | None = None
+        self,
+        quantity: Any,
+        *,
+        divergence: float | None = None,
+        ratio: float | None = None,
+        contamination: float | None = None,
+        prior_of: str | None = None,
     ) -> Bounds:
         """
         Lowest and highest mean of a quantity over a class of changes.
@@ -360,11 +366,16 @@ class Fit:
         ratio : float, optional
             All targets whose density ratio to the base has max/min of at most this, above 1; holds
             for posteriors when it holds for priors [1]_.
+        contamination : float, optional
+            All priors of one parameter that are the stated one but for this share, in (0, 1), of
+            any other prior whatever [2]_.
+        prior_of : str, optional
+            That parameter: a single number with a proper prior of its own.
 
         Returns
         -------
         Bounds
-            Both ends with errors and verdicts; those of a divergence are inner bounds.
+            Both ends with errors and verdicts; all but those of a ratio are inner bounds.
 
         Raises
         ------
@@ -375,10 +386,18 @@ class Fit:
         ----------
         .. [1] DeRobertis, Hartigan (1981), Annals of Statistics 9; Csiszár (1975), Annals of
            Probability 3.
+        .. [2] Berger, Berliner (1986), Annals of Statistics 14.
         """
         from steelyard.sensitivity import worst_case
 
-        return worst_case(self._record, quantity, divergence=divergence, ratio=ratio)
+        return worst_case(
+            self._record,
+            quantity,
+            divergence=divergence,
+            ratio=ratio,
+            contamination=contamination,
+            prior_of=prior_of,
+        )
 
     def least_perturbation(
         self, quantity: Any, target: float, *, prior_of: str | None = None
@@ -529,7 +548,12 @@ class Fit:
         return prior_factors(self._record, priors, against)
 
     def triage(
-        self, scenarios: Any, quantities: Any = None, event: Any = None, level: Any = None
+        self,
+        scenarios: Any,
+        quantities: Any = None,
+        event: Any = None,
+        level: Any = None,
+        probs: Any = None,
     ) -> Triage:
         """
         Answer a list of scenarios in one table in which no row is lost.
@@ -544,6 +568,8 @@ class Fit:
             The event of a decision.
         level : float, optional
             The level of that decision.
+        probs : array_like, optional
+            Probabilities of quantiles that are wanted beside the means.
 
         Returns
         -------
@@ -557,7 +583,7 @@ class Fit:
         """
         from steelyard.planning import triage
 
-        return triage(self._record, scenarios, quantities, event, level)
+        return triage(self._record, scenarios, quantities, event, level, probs)
 
     def leave_out(
         self,

@@ -11,6 +11,7 @@ mod interval;
 mod log_sum;
 mod long_run;
 mod mean;
+mod nodes;
 mod ordered;
 mod pareto;
 mod quantile;
@@ -45,6 +46,8 @@ mod _core {
     use super::mean::{
         contributions, mean_square, weighted_covariance, weighted_mean, weighted_moments,
     };
+    #[pymodule_export]
+    use super::nodes::study_nodes;
     #[pymodule_export]
     use super::ordered::{set_threads, threads};
     #[pymodule_export]

@@ -204,10 +204,16 @@ def _matched_shape(base: Base, prior: PriorTarget) -> tuple[Array, str]:
         return none
     if old.names or new.names or old.event_axes or old.is_discrete or new.is_discrete:
         return none
-    value, weights = prior.base.value(base.draws), base_weights(base).linear
+    value = prior.base.value(base.draws)
     before, after = old.tails(value.shape[1:]), new.tails(value.shape[1:])
+    rate = before.upper.rate
+    is_gamma = np.all(np.isfinite(rate) & (rate > 0))
+    is_beta = np.all(np.isfinite(before.upper.limit) & (before.upper.order == 0))
     if not np.all(np.isfinite(before.lower.limit) & (before.lower.order == 0)):
         return none
+    if not (is_gamma or is_beta):
+        return none
+    weights = base_weights(base).linear
     mean = np.average(value, axis=0, weights=weights) - before.lower.limit
     with np.errstate(over="ignore"):
         variance = np.average((value - mean - before.lower.limit) ** 2, axis=0, weights=weights)
@@ -215,17 +221,14 @@ def _matched_shape(base: Base, prior: PriorTarget) -> tuple[Array, str]:
     if not np.all((variance > 0) & np.isfinite(variance) & (square > 0) & np.isfinite(square)):
         return none
     lost = _power_lost(before.lower, after.lower, prior.factor)
-    rate = before.upper.rate
-    if np.all(np.isfinite(rate) & (rate > 0)):
+    if is_gamma:
         slower = rate - (prior.factor * after.upper.rate if prior.factor else 0.0)
         return np.maximum(lost / (square / variance), slower / (mean / variance)), "gamma"
-    if np.all(np.isfinite(before.upper.limit) & (before.upper.order == 0)):
-        width = before.upper.limit - before.lower.limit
-        mean, variance = mean / width, variance / width**2
-        size = mean * (1 - mean) / variance - 1
-        above = _power_lost(before.upper, after.upper, prior.factor)
-        return np.maximum(lost / (size * mean), above / (size * (1 - mean))), "beta"
-    return none
+    width = before.upper.limit - before.lower.limit
+    mean, variance = mean / width, variance / width**2
+    size = mean * (1 - mean) / variance - 1
+    above = _power_lost(before.upper, after.upper, prior.factor)
+    return np.maximum(lost / (size * mean), above / (size * (1 - mean))), "beta"
 
 
 def _power_lost(before: Tail, after: Tail, factor: Any) -> Array:
