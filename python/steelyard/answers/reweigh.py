@@ -31,6 +31,8 @@ def base_answer(base: Base) -> Answer:
     findings = [judge("base_unverified")]
     if base.log_weights is not None:
         findings += weight_findings(weights, base.draws, base.ordered)
+    if base.draws.pooling is not None:
+        findings += base.draws.pooling.findings
     return Answer(base, weights, weights, tuple(findings))
 
 
