@@ -50,7 +50,12 @@ def reweigh(base: Base, change: Change, *, smooth: bool = True) -> Answer:
         found = (*unchanged._findings, *shared)
         return Answer(base, own, own, found, change, target)
     weights = weigh_ratio(
-        target.log_ratio, base.log_weights, base.draws, ordered=base.ordered, smooth=smooth
+        target.log_ratio,
+        base.reference,
+        base.draws,
+        ordered=base.ordered,
+        smooth=smooth,
+        base_weights=base.log_weights,
     )
     shared = (
         *preflight(base, target),

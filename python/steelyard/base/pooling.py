@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from itertools import pairwise
 from typing import TYPE_CHECKING
 
@@ -55,6 +55,12 @@ class Pooling(Frozen):
         Whether the fits differ in prior terms only.
     findings : tuple of Finding
         What is to be said of any answer from the pool.
+    reference : numpy.ndarray or None
+        Log weights of the first fit's posterior where prior terms that vanish count as one: what
+        ratios are added to, so that a change may reach where only other fits have draws. None
+        where the first fit reaches every draw.
+    impossible : mapping of str to numpy.ndarray
+        Where prior terms of the first fit vanish, by label.
     """
 
     edges: npt.NDArray[np.int64]
@@ -66,6 +72,8 @@ class Pooling(Frozen):
     priors: tuple[Mapping[str, PriorTerm], ...]
     same_likelihood: bool
     findings: tuple[Finding, ...] = ()
+    reference: Array | None = None
+    impossible: Mapping[str, npt.NDArray[np.bool_]] = field(default_factory=dict)
 
     def strata(self, starts: npt.NDArray[np.int64]) -> Iterator[Stratum]:
         """The fits, with the chains of the stack that each holds."""

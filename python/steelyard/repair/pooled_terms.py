@@ -24,7 +24,15 @@ from steelyard.errors import (
     UnknownNameError,
 )
 
-__all__ = ["Common", "densities", "pooled_likelihood", "pooled_prior", "read_common"]
+__all__ = [
+    "Common",
+    "densities",
+    "likelihood_at",
+    "pooled_likelihood",
+    "pooled_prior",
+    "read_common",
+    "refuse_other_parameters",
+]
 
 _KINDS = ("prior", "likelihood")
 
@@ -173,6 +181,16 @@ def _likelihood(
     return values
 
 
+def likelihood_at(record: Base, draws: Draws, common: Common) -> Array:
+    """Log likelihood of a fit at any draws ``(n,)``, common terms left out."""
+    out = np.zeros(draws.size)
+    for name, term in (record.loglik or {}).items():
+        if name not in common.likelihood:
+            for part, block in term.blocks(draws):
+                out[part] += block.sum(axis=1)
+    return out
+
+
 def pooled_prior(records: Sequence[Base], common: Common) -> dict[str, PriorTerm] | None:
     """Prior terms of the first fit, at all draws."""
     terms: dict[str, PriorTerm] = {}
@@ -250,6 +268,3 @@ def refuse_other_parameters(records: Sequence[Base], labels: Sequence[str]) -> N
                     str(record.draws[name].shape[1:]),
                     "Pool fits of the same parameters and the same data.",
                 )
-
-
-__all__ += ["refuse_other_parameters"]

@@ -14,16 +14,18 @@ import numpy.typing as npt
 
 from steelyard.answers import Estimate
 from steelyard.arrays import Frozen, plain_array
-from steelyard.base import Base
+from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.base.pooling import Pooling
 from steelyard.base.stacking import stack_draws
 from steelyard.checking import Findings, check
-from steelyard.errors import ArgumentError, RatioError, ShapeError
+from steelyard.errors import ArgumentError, RatioError, ShapeError, SteelyardError
 from steelyard.repair.agreement import contradictions, linked
 from steelyard.repair.constants import Solved, solve
 from steelyard.repair.pooled_terms import (
+    Common,
     densities,
+    likelihood_at,
     pooled_likelihood,
     pooled_prior,
     read_common,
@@ -140,6 +142,7 @@ def pool_records(
     made = replace(draws, pooling=pooling)
     findings = _findings(pooling, made, sizes, labels, log_q, given)
     made = replace(draws, pooling=replace(pooling, findings=findings))
+    made = _reaching(made, records[0], log_q, solved, shared)
     record = replace(
         records[0],
         draws=made,
@@ -153,6 +156,38 @@ def pool_records(
     mass = (pooling.shares.T * pooling.counts) @ pooling.shares / sizes[:, None]
     estimate = _constants(solved, record, findings, labels, given)
     return Pooled(record, tuple(labels), estimate, mass, sizes, tuple(records))
+
+
+def _reaching(draws: Draws, first: Base, log_q: Array, solved: Solved, common: Common) -> Draws:
+    """
+    Draws whose pooling knows how a change may reach where the first fit has no density.
+
+    Prior terms of it that vanish count as one; its likelihood is asked for there, and where it
+    cannot be had the draws are left without weight.
+    """
+    pooling = draws.pooling
+    gone = log_q[:, 0] == -np.inf
+    if pooling is None or not gone.any():
+        return draws
+    impossible, total = {}, np.zeros(draws.size)
+    for label, term in (first.prior or {}).items():
+        if label not in common.prior:
+            values = term.log_density_checked(draws)
+            nowhere = values == -np.inf
+            if nowhere.any():
+                impossible[label] = nowhere
+            total += np.where(nowhere, 0.0, values)
+    there = np.flatnonzero(gone)
+    reference = _weights_of_first(pooling, log_q, solved)
+    try:
+        like = likelihood_at(first, draws.take(there), common)
+    except SteelyardError:
+        return draws
+    with np.errstate(divide="ignore"):
+        count = np.log(pooling.counts)
+        unit = (count + log_q[:, 0] - solved.log_mixture).max()
+    reference[there] = count[there] + total[there] + like - solved.log_mixture[there] - unit
+    return replace(draws, pooling=replace(pooling, reference=reference, impossible=impossible))
 
 
 def _weights_of_first(pooling: Pooling, log_q: Array, solved: Solved) -> Array:

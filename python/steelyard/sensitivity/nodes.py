@@ -97,7 +97,7 @@ def own_weights(base: Base) -> Weights:
 def weigh_nodes(base: Base, ratios: Array, own: Weights) -> Nodes:
     """Weights from log ratios ``(n, B)``, smoothed as those of a single answer."""
     draws, given = base.draws, base.log_weights
-    total = ratios if given is None else ratios + given[:, None]
+    total = ratios if base.reference is None else ratios + base.reference[:, None]
     base_sum = (
         math.log(draws.size) if given is None else float(_core.log_sum_exp(given[:, None])[0])
     )
