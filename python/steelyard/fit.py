@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Mapping
 from functools import cached_property
 from html import escape
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from steelyard.answers import Answer, Estimate, base_answer, reweigh
@@ -19,7 +20,7 @@ from steelyard.checking import Findings, check
 # Verbs import what they need when they are called: most scripts use few of them.
 if TYPE_CHECKING:
     from steelyard.leaving_out import LeaveOut, LookAhead
-    from steelyard.planning import Triage
+    from steelyard.planning import Arrival, MoreDraws, RefitPlan, RefitValue, Triage
     from steelyard.repair.pooling import Pooled
     from steelyard.sensitivity import (
         Bounds,
@@ -561,6 +562,185 @@ class Fit:
         from steelyard.planning import triage
 
         return triage(self._record, scenarios, quantities, event, level)
+
+    def plan_refits(self, scenarios: Any, efficiency: float = 0.5, cost: Any = None) -> RefitPlan:
+        """
+        The fewest refits to pool with these draws so that every scenario is answered.
+
+        Parameters
+        ----------
+        scenarios : Plan, or mapping of str to Change
+            What is to be asked; each may be refitted.
+        efficiency : float, optional
+            Effective draws of each scenario to one draw of the pool, in (0, 1).
+        cost : float or mapping of str to float, optional
+            Price of each refit; all cost the same by default.
+
+        Returns
+        -------
+        RefitPlan
+            Refits, shares of the pool, predicted efficiencies with verdicts, and advice.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, UnknownNameError
+            For no scenarios, an efficiency outside (0, 1), or prices that are not positive.
+        ChangeError, PriorError, LikelihoodError, ShapeError, RatioError
+            For a change that does not fit the base.
+
+        Notes
+        -----
+        From a pool with shares π the efficiency of scenario b is ``1/Σ w_b²/(Σ_a π_a w_a)``, the
+        weights w those of the base draws: one over one plus a chi-square divergence. Scenarios out
+        of reach of the base draws are refitted themselves, with at least their own share as
+        efficiency, and are not counted on for any other.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rng = np.random.default_rng(1)
+        >>> fit = sy.Fit({"rate": rng.normal(0.1, 0.02, (4, 500))}, {"rate": sy.Normal(0.1, 0.02)})
+        >>> plan = fit.plan_refits(
+        ...     {
+        ...         "lower": sy.swap_prior(rate=sy.Normal(0.07, 0.01)),
+        ...         "low": sy.swap_prior(rate=sy.Normal(0.075, 0.01)),
+        ...         "tight": sy.swap_prior(rate=sy.Normal(0.1, 0.015)),
+        ...     },
+        ...     efficiency=0.3,
+        ... )
+        >>> len(plan.refits), bool(plan.reached.all())
+        (1, True)
+        """
+        from steelyard.planning import plan_refits
+
+        return plan_refits(self._record, scenarios, efficiency, cost)
+
+    def more_draws(
+        self, quantity: Any, error: float, *, change: Change | None = None, of: str = "mean"
+    ) -> MoreDraws:
+        """
+        How many draws bring a Monte Carlo error down to a given one.
+
+        Parameters
+        ----------
+        quantity : str, array_like or callable
+            What is asked; an event for ``of="prob"``.
+        error : float
+            The error wanted.
+        change : Change, optional
+            The change under which it is asked; none by default.
+        of : {"mean", "sd", "prob"}, optional
+            What of it.
+
+        Returns
+        -------
+        MoreDraws
+            The number, and the power by which the error falls.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, QuantityError, UnknownNameError
+            For an error that is not positive, or another quantity than one.
+
+        Notes
+        -----
+        ``error ∝ S^{−(1 − max(k, ½))}`` with the tail shape k of the quantity: from ½ on its
+        contributions have no variance, from 1 on no mean.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rng = np.random.default_rng(1)
+        >>> fit = sy.Fit({"rate": rng.normal(0.1, 0.02, (4, 500))})
+        >>> now = fit.base.mean("rate").error
+        >>> round(fit.more_draws("rate", now / 3).draws / 2000, 2)
+        9.0
+        """
+        from steelyard.planning import more_draws
+
+        return more_draws(self._record, quantity, error, change=change, of=of)
+
+    def value_of_refit(
+        self, change: Change, event: Any, level: float, *, draws: int | None = None
+    ) -> RefitValue:
+        """
+        What a refit under a change is worth to a decision.
+
+        Parameters
+        ----------
+        change : Change
+            The change.
+        event : str, callable or array_like
+            One yes or no a draw.
+        level : float
+            The decision is whether the event's probability is above it.
+        draws : int, optional
+            Independent draws that the refit would give; as many as there are by default.
+
+        Returns
+        -------
+        RefitValue
+            Probability that the decision is on the right side now, and as expected afterwards; and
+            what that is worth.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, QuantityError
+            For a level outside (0, 1), several events, or no draws.
+
+        Notes
+        -----
+        The Monte Carlo error is taken as normal; where the verdict is not sound it is not known
+        what a refit would show, and nothing is said.
+
+        References
+        ----------
+        .. [1] Raiffa, Schlaifer (1961), Applied Statistical Decision Theory.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rng = np.random.default_rng(1)
+        >>> fit = sy.Fit({"rate": rng.normal(0.1, 0.02, (4, 500))}, {"rate": sy.Normal(0.1, 0.02)})
+        >>> tight = sy.swap_prior(rate=sy.Normal(0.1, 0.015))
+        >>> found = fit.value_of_refit(tight, "rate > 0.1", 0.51)
+        >>> bool(0.5 < found.right_now < found.right_after < 1)
+        True
+        """
+        from steelyard.planning import value_of_refit
+
+        return value_of_refit(self._record, change, event, level, draws=draws)
+
+    def arrive(self, saved: str | Path | None = None) -> Arrival:
+        """
+        Take in data as they arrive.
+
+        Parameters
+        ----------
+        saved : str or Path, optional
+            What ``Arrival.save`` wrote, to go on from.
+
+        Returns
+        -------
+        Arrival
+            Batches are added to it; each gives an answer, until a refit is due.
+
+        Raises
+        ------
+        DrawsError
+            For a file that is something else, or of other draws.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rate = np.random.default_rng(1).normal(0.1, 0.02, (4, 500))
+        >>> arrival = sy.Fit({"rate": rate}, {"rate": sy.Normal(0.1, 0.02)}).arrive()
+        >>> bool(arrival.add("week 1", -0.5 * ((0.13 - rate) / 0.04) ** 2).mean("rate").value > 0.1)
+        True
+        """
+        from steelyard.planning import Arrival
+
+        return Arrival(self._record) if saved is None else Arrival.load(saved, self)
 
     def leave_out(
         self,

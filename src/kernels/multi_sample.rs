@@ -29,6 +29,9 @@ const EVERY: usize = 8;
 /// Distance on the log scale from which densities are scaled anew, so that none vanishes.
 const FAR: f64 = 30.0;
 
+/// A step as long as this is no step.
+const BEYOND: f64 = 1e5;
+
 /// A failure of the equations beyond which a step of no length is not the end.
 const UNBALANCED: f64 = 1e-4;
 
@@ -220,6 +223,10 @@ impl Search<'_> {
         }
         let mut step = vec![0.0];
         step.extend(solve(&matrix, &slope));
+        // Where shares have all but vanished the curvature says nothing.
+        if !step.iter().all(|entry| entry.abs() < BEYOND) {
+            step.fill(0.0);
+        }
         step
     }
 
