@@ -25,6 +25,7 @@ mod kernels {
     mod moments;
     mod node_series;
     mod nodes;
+    mod multi_sample;
     mod ordered;
     mod pareto;
     mod quantile;

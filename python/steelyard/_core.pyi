@@ -26,6 +26,7 @@ __all__ = [
     "log_sum_exp",
     "long_run_variance",
     "mean_square",
+    "multi_sample",
     "normal_cdf",
     "normal_quantile",
     "normalise",
@@ -164,3 +165,10 @@ def study_nodes(
     shift: bool,
     weights: npt.NDArray[np.float64] | None,
 ) -> npt.NDArray[np.float64]: ...
+def multi_sample(
+    log_densities: npt.NDArray[np.float64],
+    counts: npt.NDArray[np.float64],
+    sizes: npt.NDArray[np.float64],
+    start: npt.NDArray[np.float64],
+    solve: bool,
+) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64], npt.NDArray[np.float64], float]: ...

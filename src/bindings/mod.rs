@@ -12,6 +12,7 @@ mod log_sum;
 mod long_run;
 mod mean;
 mod nodes;
+mod multi_sample;
 mod ordered;
 mod pareto;
 mod quantile;
@@ -48,6 +49,7 @@ mod _core {
     };
     #[pymodule_export]
     use super::nodes::study_nodes;
+    use super::multi_sample::multi_sample;
     #[pymodule_export]
     use super::ordered::{set_threads, threads};
     #[pymodule_export]

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
@@ -117,7 +117,7 @@ class Study:
     def of(self, ratios: Array) -> Figures:
         """Everything about nodes with log ratios ``(B, n)``."""
         base, given = self.base, self.base.log_weights
-        total = ratios if given is None else ratios + given
+        total = ratios if base.reference is None else ratios + base.reference
         found, weights = self._studied(np.ascontiguousarray(total))
         if given is not None and not base.is_approximate:
             # Without a change the weights are the given ones, which are left as they are.
@@ -143,8 +143,8 @@ class Study:
     def _studied(self, total: Array) -> tuple[Array, Array | None]:
         draws, ordered = self.base.draws, self.base.ordered
         weights = np.empty_like(total) if self.keep else None
-        if not ordered and draws.repeats is not None:
-            # Repeated draws are taken together, which the kernel does not do.
+        if draws.pooling is not None or (not ordered and draws.repeats is not None):
+            # Repeated draws are taken together, fits of a pool apart: the kernel does neither.
             return plain_nodes.study(self, total, weights), weights
         found = _core.study_nodes(
             total,
@@ -178,6 +178,8 @@ def weight_findings(about: Array, base: Base) -> list[Finding]:
         judge("few_carry", largest),
         judge("saturated_divergence", np.maximum(divergence, 0.0) / math.log(count)),
     ]
+    if base.draws.pooling is not None:
+        found += [_of_every_node(f, len(about)) for f in base.draws.pooling.findings]
     if base.ordered:
         found.append(judge("autocorrelated_tail", apart))
         if base.draws.chains > 1:
@@ -185,3 +187,8 @@ def weight_findings(about: Array, base: Base) -> list[Finding]:
     if lost.any():
         found.append(judge("draws_lost", lost, spoken=lost > 0))
     return found
+
+
+def _of_every_node(finding: Finding, count: int) -> Finding:
+    """A finding about the base, said of every node."""
+    return replace(finding, figure=np.full(count, float(finding.figure)))

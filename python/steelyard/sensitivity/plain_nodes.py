@@ -1,7 +1,8 @@
 """
 The figures of nodes in plain array code, for draws that the kernel does not take.
 
-Unordered draws of which some are the same draw again; and the twin that the kernel is held to.
+Unordered draws of which some are the same draw again, and pools; and the twin that the kernel is
+held to.
 """
 
 from __future__ import annotations
@@ -11,11 +12,13 @@ from itertools import pairwise
 from typing import TYPE_CHECKING
 
 import numpy as np
+import numpy.typing as npt
 
 from steelyard import _core
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.weighing.series import (
+    carried,
     chains_p_value,
     contributions_of,
     relative_efficiency,
@@ -99,11 +102,12 @@ def _column(
         p = float(chains_p_value(z[:, None], equal, base.draws)[0]) if base.ordered else 1.0
         variance = float(((z - z.mean()) ** 2).mean())
         found.append(_series(base, z, z_raw, moved, variance, p, (0.0, 0.0)))
+    z = carried(z[:, None], base.draws)[:, 0]
     sums = [z[start:stop].sum() for start, stop in pairwise(asked.edges.tolist())]
     return [*found, np.array(sums)]
 
 
-def _sides(inside: Array, w: Array) -> tuple[float, float]:
+def _sides(inside: npt.NDArray[np.bool_], w: Array) -> tuple[float, float]:
     def worth(part: Array) -> float:
         return float(part.sum() ** 2 / (part**2).sum()) if (part > 0).any() else 0.0
 

@@ -112,7 +112,7 @@ class Targets:
         self, ratios: Array, made: list[Made | None], errors: dict[int, SteelyardError]
     ) -> None:
         """Targets without any draw are refused, as in a single answer."""
-        base, given = self.base, self.base.log_weights
+        base, given = self.base, self.base.reference
         tops = ratios.max(axis=1) if given is None else (ratios + given).max(axis=1)
         for place in np.flatnonzero(~np.isfinite(tops)):
             try:
