@@ -71,6 +71,7 @@ if TYPE_CHECKING:
         deletion_mixture,
     )
     from steelyard.planning import Plan, Scenario, read_plan
+    from steelyard.repair import Ladder, Rung
 
 __version__ = "0.1.0"
 
@@ -101,6 +102,7 @@ __all__ = [
     "HalfStudentT",
     "InverseGamma",
     "LKJCorrelation",
+    "Ladder",
     "Laplace",
     "LeaveOut",
     "LogNormal",
@@ -114,6 +116,7 @@ __all__ = [
     "Plan",
     "Poisson",
     "Reason",
+    "Rung",
     "Scenario",
     "SkewNormal",
     "StudentT",
@@ -147,9 +150,11 @@ _LATER = {
     "Combination": "steelyard.leaving_out",
     "Contrast": "steelyard.leaving_out",
     "Flip": "steelyard.leaving_out",
+    "Ladder": "steelyard.repair",
     "LeaveOut": "steelyard.leaving_out",
     "LookAhead": "steelyard.leaving_out",
     "Plan": "steelyard.planning",
+    "Rung": "steelyard.repair",
     "Scenario": "steelyard.planning",
     "by_observation": "steelyard.leaving_out",
     "combine": "steelyard.leaving_out",

@@ -222,6 +222,14 @@ RULES: Mapping[str, Rule] = {
         "Compare a known posterior summary of the fit with the base answer.",
         "exact",
     ),
+    "draws_moved": Rule(
+        math.nan,
+        math.nan,
+        "note",
+        "The draws are not the base's own: {how}.",
+        "Ask for quantities by name, text or callable; answer.draws holds the new draws.",
+        "exact",
+    ),
     "groups_refit": Rule(
         0.5,
         1.0,

@@ -163,3 +163,14 @@ def own_effects(share: float) -> LeaveOut:
     one_chain = np.zeros(4000, dtype=int)
     fit = sy.Fit({"theta": theta}, loglik=loglik, chain=one_chain, ordered=False)
     return leave_out(fit._record)
+
+
+def repaired(rung: str) -> sy.Answer:
+    """A normal moved by five of its sds, by one rung of the ladder."""
+    fit = sy.Fit(
+        {"x": noise(31, 4, 500)},
+        {"x": sy.Flat()},
+        lambda draws: -0.5 * draws["x"] ** 2,
+    )
+    change = sy.swap_loglik(lambda draws: -0.5 * (draws["x"] - 5) ** 2)
+    return fit.repair(change, rungs=rung)

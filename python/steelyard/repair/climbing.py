@@ -1,0 +1,216 @@
+"""Up the ladder: rung after rung, in order of price, until one is sound."""
+
+from __future__ import annotations
+
+import math
+import time
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field, replace
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+
+from steelyard.answers import Answer, reweigh
+from steelyard.answers.events import is_expression
+from steelyard.base import Base
+from steelyard.base.draws import Array
+from steelyard.base.names import close_names
+from steelyard.changes import Change
+from steelyard.errors import ArgumentError, ArgumentTypeError, SteelyardError
+from steelyard.repair.evaluating import Evaluator, evaluator_of
+from steelyard.repair.ladder import Ladder, Rung
+from steelyard.repair.rungs import MOVING, RUNGS, Outcome
+from steelyard.repair.spending import Purse, read_purse
+from steelyard.verdicts import Level
+from steelyard.weighing.arrays import seed_key
+
+__all__ = ["Climb", "repair"]
+
+
+@dataclass(eq=False)
+class Climb:
+    """
+    What every rung may use.
+
+    Attributes
+    ----------
+    record : Base
+        The fit.
+    change : Change
+        What is asked.
+    plain : Answer
+        The answer by smoothing the base's own draws.
+    purse : Purse
+        What may be spent.
+    seeds : bytes
+        What random streams are derived from.
+    fits : tuple
+        Other fits to pool with.
+    ascending : tuple of str
+        Vectors that the model keeps in order.
+    """
+
+    record: Base
+    change: Change
+    plain: Answer
+    purse: Purse
+    seeds: bytes
+    fits: tuple[Any, ...] = ()
+    ascending: tuple[str, ...] = ()
+    best: Answer | None = field(default=None)
+
+    @cached_property
+    def evaluator(self) -> Evaluator:
+        """Base and target anywhere; an error names what cannot move."""
+        made = evaluator_of(self.record, self.change, ascending=self.ascending)
+        made.spent = self.purse.spent
+        return made
+
+    @cached_property
+    def start(self) -> Array:
+        """Coordinates of the base draws; an error names one that has none."""
+        return self.evaluator.start
+
+    def generator(self, rung: str) -> np.random.Generator:
+        """A random stream of the rung's own, whichever rungs were tried before."""
+        return np.random.default_rng([*self.seeds, list(RUNGS).index(rung)])
+
+
+def repair(
+    record: Base,
+    change: Change,
+    *,
+    rungs: Any = None,
+    quantities: Any = None,
+    most_evaluations: Any = None,
+    most_seconds: Any = None,
+    ascending: Any = (),
+    fits: Any = (),
+    rng: Any = None,
+    progress: Any = None,
+) -> Answer:
+    """Climb the ladder; see ``Fit.repair``."""
+    names = _names(rungs)
+    purse = read_purse(most_evaluations, most_seconds, progress)
+    ordered = (ascending,) if isinstance(ascending, str) else tuple(ascending)
+    seeds = seed_key(rng)
+    began = time.monotonic()
+    plain = reweigh(record, change)
+    climb = Climb(record, change, plain, purse, seeds, tuple(fits), ordered)
+    _level(climb.plain, quantities)  # a quantity that cannot be read is an error before any cost
+    tried: list[Rung] = []
+    chosen, best = "smoothing", plain
+    for name in names:
+        answer, rung = _try(climb, name, quantities, explicit=rungs is not None)
+        if name == "smoothing":
+            rung = replace(rung, seconds=time.monotonic() - began)
+        if answer is not None and name != "smoothing" and not _better(answer, best, quantities):
+            rung = replace(rung, stopped=f"no better than {chosen}, which was kept")
+        elif answer is not None:
+            chosen, best = name, answer
+            climb.best = answer
+        tried.append(rung)
+        if answer is best and _level(best, quantities) == "sound":
+            break
+        if rung.stopped == _INTERRUPTED or purse.is_empty:
+            break
+    return replace(best, ladder=Ladder(tuple(tried), chosen))
+
+
+_INTERRUPTED = "stopped by Ctrl-C"
+_EMPTY = "the limit was reached"
+
+
+def _try(climb: Climb, name: str, quantities: Any, *, explicit: bool) -> tuple[Answer | None, Rung]:
+    """One rung, with its price."""
+    purse = climb.purse
+    purse.rung = name
+    purse.tell()
+    points, began = purse.spent.points, time.monotonic()
+    outcome = _barred(climb, name, explicit)
+    if outcome is None:
+        try:
+            outcome = RUNGS[name](climb)
+        except KeyboardInterrupt:
+            outcome = Outcome(None, _INTERRUPTED)
+    answer, said = outcome.answer, outcome.stopped
+    cost = (purse.spent.points - points + outcome.evaluations, time.monotonic() - began)
+    if answer is None:
+        if not said:
+            said = _EMPTY if purse.is_empty else "nothing better was found"
+        return None, Rung(name, *cost, math.nan, math.nan, None, said)
+    level = _level(answer, quantities)
+    if not said:
+        said = "sound" if level == "sound" else f"{level}: {_why(answer)}"
+    rung = Rung(name, *cost, answer.effective_size, answer.tail_shape, answer.verdict, said)
+    return answer, rung
+
+
+def _barred(climb: Climb, name: str, explicit: bool) -> Outcome | None:
+    """What keeps a rung from new points: told on the ladder, an error where it was named."""
+    if name not in MOVING:
+        return None
+    try:
+        _ = climb.start
+    except SteelyardError as error:
+        if explicit:
+            raise
+        return Outcome(None, f"not possible: {error}")
+    return None
+
+
+def _why(answer: Answer) -> str:
+    codes = [r.code for r in answer.verdict.reasons if r.level < "sound"]
+    return ", ".join(codes) or "a quantity is not sound"
+
+
+def _level(answer: Answer, quantities: Any) -> Level:
+    """The level of an answer, and of the quantities that were asked for."""
+    levels: list[Level] = [answer.verdict.level]
+    for quantity in _listed(quantities):
+        is_event = isinstance(quantity, str) and is_expression(quantity)
+        found = answer.prob(quantity) if is_event else answer.mean(quantity)
+        levels += [Level(str(v)) for v in np.ravel(np.asarray(found.verdict.level, dtype=object))]
+    return min(levels)
+
+
+def _listed(quantities: Any) -> list[Any]:
+    if quantities is None:
+        return []
+    if isinstance(quantities, Mapping):
+        return list(quantities.values())
+    return list(quantities) if isinstance(quantities, list | tuple) else [quantities]
+
+
+def _better(answer: Answer, best: Answer, quantities: Any) -> bool:
+    """Whether a rung's answer is worth more: its level, then its tail, then its effective size."""
+
+    def worth(one: Answer) -> tuple[Level, float, float]:
+        shape = one.tail_shape
+        # Below one half all errors are finite, and lighter is no better.
+        tail = 0.5 if math.isnan(shape) else max(shape, 0.5)
+        return _level(one, quantities), -tail, one.effective_size
+
+    return worth(answer) > worth(best)
+
+
+def _names(rungs: Any) -> list[str]:
+    if rungs is None:
+        return list(RUNGS)
+    listed = [rungs] if isinstance(rungs, str) else rungs
+    if not isinstance(listed, Iterable):
+        raise ArgumentTypeError(
+            "rungs", f"names from {', '.join(RUNGS)}", repr(rungs), "Name some."
+        )
+    names = list(listed)
+    if not names:
+        raise ArgumentError("rungs", "at least one", "none", "Leave it out for all of them.")
+    for name in names:
+        if not isinstance(name, str) or name not in RUNGS:
+            raise ArgumentError(
+                "rungs", f"names from {', '.join(RUNGS)}", repr(name), close_names(str(name), RUNGS)
+            )
+    if len(set(names)) < len(names):
+        raise ArgumentError("rungs", "each rung once", ", ".join(names), "Name it once.")
+    return names
