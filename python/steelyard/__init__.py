@@ -71,6 +71,7 @@ if TYPE_CHECKING:
         deletion_mixture,
     )
     from steelyard.planning import Plan, Scenario, read_plan
+    from steelyard.repair import Tempered, temper
 
 __version__ = "0.1.0"
 
@@ -118,6 +119,7 @@ __all__ = [
     "SkewNormal",
     "StudentT",
     "Table",
+    "Tempered",
     "Truncated",
     "Uniform",
     "Verdict",
@@ -135,6 +137,7 @@ __all__ = [
     "read_plan",
     "swap_loglik",
     "swap_prior",
+    "temper",
     "threads",
     "weigh",
     "weigh_data",
@@ -151,10 +154,12 @@ _LATER = {
     "LookAhead": "steelyard.leaving_out",
     "Plan": "steelyard.planning",
     "Scenario": "steelyard.planning",
+    "Tempered": "steelyard.repair",
     "by_observation": "steelyard.leaving_out",
     "combine": "steelyard.leaving_out",
     "deletion_mixture": "steelyard.leaving_out",
     "read_plan": "steelyard.planning",
+    "temper": "steelyard.repair",
 }
 
 
