@@ -71,7 +71,7 @@ if TYPE_CHECKING:
         deletion_mixture,
     )
     from steelyard.planning import Plan, Scenario, read_plan
-    from steelyard.repair import Ladder, Rung
+    from steelyard.repair import Ladder, Rung, Tempered, temper
 
 __version__ = "0.1.0"
 
@@ -121,6 +121,7 @@ __all__ = [
     "SkewNormal",
     "StudentT",
     "Table",
+    "Tempered",
     "Truncated",
     "Uniform",
     "Verdict",
@@ -138,6 +139,7 @@ __all__ = [
     "read_plan",
     "swap_loglik",
     "swap_prior",
+    "temper",
     "threads",
     "weigh",
     "weigh_data",
@@ -156,10 +158,12 @@ _LATER = {
     "Plan": "steelyard.planning",
     "Rung": "steelyard.repair",
     "Scenario": "steelyard.planning",
+    "Tempered": "steelyard.repair",
     "by_observation": "steelyard.leaving_out",
     "combine": "steelyard.leaving_out",
     "deletion_mixture": "steelyard.leaving_out",
     "read_plan": "steelyard.planning",
+    "temper": "steelyard.repair",
 }
 
 

@@ -279,4 +279,56 @@ RULES: Mapping[str, Rule] = {
         "Nothing to do if those fits can be trusted.",
         "counted",
     ),
+    "step_shape": Rule(
+        0.7,
+        1.0,
+        "above",
+        "At one temperature the tail shape of the weights is {figure}, above {limit}: {meaning}.",
+        "Start from a broader source, or raise efficiency= so that temperatures lie closer.",
+        "Vehtari, Simpson, Gelman, Yao, Gabry (2024), JMLR 25",
+    ),
+    "few_islands": Rule(
+        8.0,
+        4.0,
+        "below",
+        "As few as {figure} islands carry the weight, below {limit}: they found different things.",
+        "Bring more particles with size=, raise efficiency=, or start from a broader source.",
+        "ours",
+    ),
+    "constant_spread": Rule(
+        0.3,
+        0.8,
+        "above",
+        "The relative error of the ratio of constants is {figure}, above {limit}: its log is not "
+        "normal.",
+        "Bring more particles with size=, or raise efficiency= so that temperatures lie closer.",
+        "ours",
+    ),
+    "moves_stuck": Rule(
+        0.3,
+        0.03,
+        "below",
+        "At one temperature particles moved only {figure} of the distance between independent "
+        "draws, below {limit}: they are near copies of each other.",
+        "Choose another move=, a parameterisation with rounder contours, or more particles.",
+        "ours",
+    ),
+    "beyond_source": Rule(
+        math.nan,
+        math.nan,
+        "always",
+        "Moves at the target went {figure} times where the source has no density: the path from "
+        "the source does not cover the target.",
+        "Start from a source whose support holds the target's.",
+        "exact: the ratio of constants leaves out what lies there",
+    ),
+    "tempering_unfinished": Rule(
+        0.0,
+        math.inf,
+        "from",
+        "The run was stopped by {why} with a share of {figure} of the path, and the moves there, "
+        "still to do.",
+        "Go on with resume().",
+        "exact",
+    ),
 }

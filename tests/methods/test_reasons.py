@@ -38,12 +38,15 @@ from .reason_cases import (
     shape,
     shares,
     stacked,
+    stopped,
+    stranded,
+    tempered,
     widened,
 )
 
 # Limits that are ours and may move; the others are held to METHODS below.
 FEW, BEYOND = RULES["few_effective_draws"], RULES["draws_beyond"]
-Judged = sy.Answer | sy.Estimate | sy.LeaveOut
+Judged = sy.Answer | sy.Estimate | sy.LeaveOut | sy.Tempered
 
 
 Case = tuple[str, Callable[[], Judged], Callable[[], Judged]]
@@ -75,6 +78,11 @@ STRAINED: list[Case] = [
     ("groups_strained", lambda: left_out(0.85), lambda: left_out(0.4)),
     ("own_latents", lambda: own_effects(0.55), lambda: own_effects(0.45)),
     ("noise_raised", lambda: noisier(1.42), lambda: noisier(1.41)),
+    ("step_shape", lambda: tempered(tail_shape=0.71), lambda: tempered(tail_shape=0.69)),
+    ("few_islands", lambda: stranded(7), lambda: stranded(8)),
+    ("constant_spread", lambda: stranded(7).log_constant, lambda: stranded(8).log_constant),
+    ("moves_stuck", lambda: tempered(jump=0.29), lambda: tempered(jump=0.31)),
+    ("tempering_unfinished", lambda: stopped(1), lambda: stopped(None)),
 ]
 REFIT: list[Case] = [
     ("groups_refit", lambda: left_out(1.15), lambda: left_out(0.4)),
@@ -97,6 +105,11 @@ REFIT: list[Case] = [
     ),
     ("prior_widened", lambda: widened(1.01), lambda: widened(0.99)),
     ("likelihood_loosened", lambda: both(1.01), lambda: loosened(0.0)),
+    ("step_shape", lambda: tempered(tail_shape=1.01), lambda: tempered(tail_shape=0.99)),
+    ("few_islands", lambda: stranded(3), lambda: stranded(4)),
+    ("constant_spread", lambda: stranded(1).log_constant, lambda: stranded(2).log_constant),
+    ("moves_stuck", lambda: tempered(jump=0.029), lambda: tempered(jump=0.031)),
+    ("beyond_source", lambda: tempered(beyond=1), lambda: tempered(beyond=0)),
 ]
 NOTES: list[Case] = [
     (
