@@ -222,6 +222,15 @@ RULES: Mapping[str, Rule] = {
         "Compare a known posterior summary of the fit with the base answer.",
         "exact",
     ),
+    "tail_beyond": Rule(
+        1.5,
+        10.0,
+        "above",
+        "Draws pushed out by a factor of {factor} find {figure} times the variance of the weights "
+        "that the draws themselves show, above {limit}: the target's tails are heavier.",
+        "Temper, which moves draws into the tails, or refit.",
+        "derived: both estimate one second moment; limits ours",
+    ),
     "draws_moved": Rule(
         math.nan,
         math.nan,

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 import time
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Any
 
@@ -20,7 +20,7 @@ from steelyard.changes import Change
 from steelyard.errors import ArgumentError, ArgumentTypeError, SteelyardError
 from steelyard.repair.evaluating import Evaluator, evaluator_of
 from steelyard.repair.ladder import Ladder, Rung
-from steelyard.repair.rungs import MOVING, RUNGS, Outcome
+from steelyard.repair.rungs import EMPTY, INTERRUPTED, MOVING, RUNGS, Outcome
 from steelyard.repair.spending import Purse, read_purse
 from steelyard.verdicts import Level
 from steelyard.weighing.arrays import seed_key
@@ -49,6 +49,8 @@ class Climb:
         Other fits to pool with.
     ascending : tuple of str
         Vectors that the model keeps in order.
+    is_explicit : bool
+        Whether the rungs were named, so that what bars one is an error.
     """
 
     record: Base
@@ -58,7 +60,7 @@ class Climb:
     seeds: bytes
     fits: tuple[Any, ...] = ()
     ascending: tuple[str, ...] = ()
-    best: Answer | None = field(default=None)
+    is_explicit: bool = False
 
     @cached_property
     def evaluator(self) -> Evaluator:
@@ -97,48 +99,43 @@ def repair(
     seeds = seed_key(rng)
     began = time.monotonic()
     plain = reweigh(record, change)
-    climb = Climb(record, change, plain, purse, seeds, tuple(fits), ordered)
+    climb = Climb(record, change, plain, purse, seeds, tuple(fits), ordered, rungs is not None)
     _level(climb.plain, quantities)  # a quantity that cannot be read is an error before any cost
     tried: list[Rung] = []
     chosen, best = "smoothing", plain
     for name in names:
-        answer, rung = _try(climb, name, quantities, explicit=rungs is not None)
+        answer, rung = _try(climb, name, quantities)
         if name == "smoothing":
             rung = replace(rung, seconds=time.monotonic() - began)
         if answer is not None and name != "smoothing" and not _better(answer, best, quantities):
             rung = replace(rung, stopped=f"no better than {chosen}, which was kept")
         elif answer is not None:
             chosen, best = name, answer
-            climb.best = answer
         tried.append(rung)
         if answer is best and _level(best, quantities) == "sound":
             break
-        if rung.stopped == _INTERRUPTED or purse.is_empty:
+        if rung.stopped == INTERRUPTED or purse.is_empty:
             break
     return replace(best, ladder=Ladder(tuple(tried), chosen))
 
 
-_INTERRUPTED = "stopped by Ctrl-C"
-_EMPTY = "the limit was reached"
-
-
-def _try(climb: Climb, name: str, quantities: Any, *, explicit: bool) -> tuple[Answer | None, Rung]:
+def _try(climb: Climb, name: str, quantities: Any) -> tuple[Answer | None, Rung]:
     """One rung, with its price."""
     purse = climb.purse
     purse.rung = name
     purse.tell()
     points, began = purse.spent.points, time.monotonic()
-    outcome = _barred(climb, name, explicit)
+    outcome = _barred(climb, name)
     if outcome is None:
         try:
             outcome = RUNGS[name](climb)
         except KeyboardInterrupt:
-            outcome = Outcome(None, _INTERRUPTED)
+            outcome = Outcome(None, INTERRUPTED)
     answer, said = outcome.answer, outcome.stopped
     cost = (purse.spent.points - points + outcome.evaluations, time.monotonic() - began)
     if answer is None:
         if not said:
-            said = _EMPTY if purse.is_empty else "nothing better was found"
+            said = EMPTY if purse.is_empty else "nothing better was found"
         return None, Rung(name, *cost, math.nan, math.nan, None, said)
     level = _level(answer, quantities)
     if not said:
@@ -147,14 +144,14 @@ def _try(climb: Climb, name: str, quantities: Any, *, explicit: bool) -> tuple[A
     return answer, rung
 
 
-def _barred(climb: Climb, name: str, explicit: bool) -> Outcome | None:
+def _barred(climb: Climb, name: str) -> Outcome | None:
     """What keeps a rung from new points: told on the ladder, an error where it was named."""
     if name not in MOVING:
         return None
     try:
         _ = climb.start
     except SteelyardError as error:
-        if explicit:
+        if climb.is_explicit:
             raise
         return Outcome(None, f"not possible: {error}")
     return None

@@ -11,16 +11,14 @@ import numpy as np
 
 from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
-from steelyard.base.likelihood import LoglikTerm
-from steelyard.base.priors import PriorTerm
 from steelyard.base.shapes import stacked
 from steelyard.changes import Change
-from steelyard.changes.merging import Draft, LoglikTarget, PriorTarget, merge
-from steelyard.changes.noise import NoisyTerm, raised
-from steelyard.errors import DrawsError, LikelihoodError, PriorError, RatioError, ShapeError
+from steelyard.changes.merging import LoglikTarget, PriorTarget, merge
+from steelyard.errors import DrawsError, RatioError, ShapeError
+from steelyard.repair.fixed import refuse_fixed, values_at
 from steelyard.repair.space import Points, Space, space_of
 
-__all__ = ["Evaluator", "Spent", "evaluator_of"]
+__all__ = ["Evaluator", "Spent", "at_draws", "evaluator_of"]
 
 # Points that are evaluated at a time; a user's callable gets batches of this size at most.
 _BATCH = 1 << 16
@@ -71,7 +69,7 @@ class Evaluator:
 
     def __post_init__(self) -> None:
         self._draft = merge(self.record, self.change)
-        _refuse_fixed(self.record, self._draft)
+        refuse_fixed(self.record, self._draft)
         self._last: _Pass | None = None
 
     @property
@@ -187,17 +185,7 @@ class Evaluator:
         chain_axis = False if draws is None else draws.has_chain_axis
         names = () if draws is None else draws.chain_names
         made = Draws(points.values_by_name, starts, chain_axis, points.dims, points.labels, names)
-        kept = {k: r for k, r in self.record.derived.items() if r is not None}
-        return replace(
-            self.record,
-            draws=made,
-            log_weights=None,
-            stored_log_density=None,
-            derived=kept,
-            predictive={},
-            is_approximate=False,
-            is_moved=True,
-        )
+        return at_draws(self.record, made)
 
     def _priors(self, draws: Points) -> tuple[Array, Array]:
         base, target = np.zeros(draws.size), np.zeros(draws.size)
@@ -214,7 +202,7 @@ class Evaluator:
         for name, term in stated.items():
             edited = self._draft.loglik.get(name, LoglikTarget(term, term))
             same = edited.density is term
-            for part, block in _blocks(term, draws):
+            for part, block in values_at(term, draws):
                 base[part] += block.sum(axis=1)
                 if same:
                     target[part] += _weighted(block, edited)
@@ -260,18 +248,25 @@ def evaluator_of(
     return Evaluator(record, Change(()) if change is None else change, found)
 
 
+def at_draws(record: Base, draws: Draws) -> Base:
+    """The record with other draws, without what belongs to the old ones only."""
+    return replace(
+        record,
+        draws=draws,
+        log_weights=None,
+        stored_log_density=None,
+        derived={k: recipe for k, recipe in record.derived.items() if recipe is not None},
+        predictive={},
+        is_approximate=False,
+        is_moved=True,
+    )
+
+
 def _finite(draws: Draws) -> Any:
     usable = np.ones(draws.size, dtype=np.bool_)
     for values in draws.values_by_name.values():
         usable &= np.isfinite(values.reshape(draws.size, -1)).all(axis=1)
     return usable
-
-
-def _blocks(term: LoglikTerm, draws: Draws) -> Any:
-    """Values of a term by the block; a noisier term finds its sd at these points."""
-    if isinstance(term, NoisyTerm) and term.plain is not None:
-        term = raised(term.plain, term.noise_factor, term.sd, draws)
-    return term.blocks(draws)
 
 
 def _weighted(block: Array, edited: LoglikTarget) -> Array:
@@ -283,7 +278,7 @@ def _weighted(block: Array, edited: LoglikTarget) -> Array:
 def _add(edited: LoglikTarget, draws: Draws, target: Array) -> None:
     if not np.any(edited.factor):
         return
-    for part, block in _blocks(edited.density, draws):
+    for part, block in values_at(edited.density, draws):
         target[part] += _weighted(block, edited)
 
 
@@ -314,63 +309,6 @@ def _ratio(source: Callable[..., Any], draws: Points) -> Array:
             "Mend the log ratio there; −inf is a weight of zero.",
         )
     return out
-
-
-def _refuse_fixed(record: Base, draft: Draft) -> None:
-    """What is given only as values at the base draws cannot be evaluated elsewhere."""
-    if not record.loglik:
-        raise LikelihoodError(
-            "repair",
-            "a fit whose log likelihood is stated",
-            "a fit without",
-            "Pass loglik= to Fit: a callable that gets {name: (n, *shape)}.",
-        )
-    for name, term in record.loglik.items():
-        _refuse_array(term, f"loglik[{name!r}]")
-    for label, stated in (record.prior or {}).items():
-        _refuse_array_prior(stated, f"prior[{label!r}]")
-    for label, prior in draft.prior.items():
-        if prior.given is not None:
-            _refuse_array_prior(prior.given, f"swap_prior[{label!r}]")
-    for name, edited in draft.loglik.items():
-        if edited.density is not edited.base and np.any(edited.factor):
-            _refuse_array(
-                edited.density, f"{'add' if edited.base is None else 'swap_loglik'}[{name!r}]"
-            )
-            _refuse_fixed_sd(edited.density, name)
-    for source in draft.ratios:
-        if not callable(source) or hasattr(source, "shape"):
-            raise RatioError(
-                "log_ratio",
-                "a callable, which can be evaluated at new points",
-                "an array of values at the base draws",
-                "Pass a callable that gets {name: (n, *shape)} and returns log ratios.",
-            )
-
-
-def _refuse_array(term: LoglikTerm, argument: str) -> None:
-    if not callable(term.source) or hasattr(term.source, "shape"):
-        raise LikelihoodError(
-            argument,
-            "a callable, which can be evaluated at new points",
-            "an array of values at the base draws",
-            "Pass a callable that gets {name: (n, *shape)} and returns (n, *obs).",
-        )
-
-
-def _refuse_array_prior(term: PriorTerm, argument: str) -> None:
-    if isinstance(term.density, np.ndarray):
-        raise PriorError(
-            argument,
-            "a term that can be evaluated at new points",
-            "an array of log densities at the base draws",
-            "State it as a distribution, or as a callable that gets {name: (n, *shape)}.",
-        )
-
-
-def _refuse_fixed_sd(term: LoglikTerm, name: str) -> None:
-    if isinstance(term, NoisyTerm) and term.plain is not None:
-        _refuse_array(term.plain, f"loglik[{name!r}]")
 
 
 class _naming_what_is_lost:  # noqa: N801 — read as a statement

@@ -13,8 +13,9 @@ from steelyard import _core
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.repair.affine import Affine, Moments, identity, moments_of, rematched
+from steelyard.repair.probing import probe, probe_cost
 from steelyard.repair.spending import Purse
-from steelyard.verdicts import Verdict
+from steelyard.verdicts import Finding, Verdict
 from steelyard.weighing.trust import shared_findings, weight_findings
 from steelyard.weighing.weigh import Weights, base_weights, weigh_ratio
 
@@ -47,12 +48,15 @@ class Matched:
         Target minus base at the new draws, ``(n,)``.
     steps : tuple of str
         What was matched, in order.
+    findings : tuple of Finding
+        What is known of them beside their weights.
     """
 
     x: Array
     weights: Weights
     ratio: Array
     steps: tuple[str, ...]
+    findings: tuple[Finding, ...] = ()
 
 
 @dataclass(frozen=True, eq=False)
@@ -155,12 +159,28 @@ def match_moments(record: Base, start: Array, densities: Densities, purse: Purse
         steps.append(kind)
     if not steps:
         return None
-    best = Matched(state.x, state.weights, state.target - state.base, tuple(steps))
+    beyond = _probed(problem, state)
+    best = Matched(state.x, state.weights, state.target - state.base, tuple(steps), beyond)
     if rank(state.weights, record)[0] < 2 and purse.allows(len(start)):
         split = _split(problem, first, state)
         if split is not None and rank(split[1], record) > rank(best.weights, record):
-            best = Matched(*split, (*steps, "split"))
+            best = Matched(*split, (*steps, "split"), beyond)
     return best
+
+
+def _probed(problem: _Problem, state: _State) -> tuple[Finding, ...]:
+    v = problem.record.log_weights
+    return (
+        probe(
+            problem.start,
+            problem.base,
+            state.log_ratio,
+            v,
+            state.maps,
+            problem.halves,
+            problem.densities,
+        ),
+    )
 
 
 def _settled(state: _State, record: Base) -> bool:
@@ -200,7 +220,8 @@ def _step(problem: _Problem, state: _State) -> tuple[str, _State] | None:
         two = rematched(kind, state.maps[1], problem.moments[0], aims[0])
         if one is None or two is None:
             continue
-        if not problem.purse.allows(len(problem.start)):
+        # What the probe at the end costs is kept back.
+        if not problem.purse.allows(len(problem.start) + probe_cost(len(problem.start))):
             return None
         moved = _moved(problem, (one, two), power)
         if moved is None:

@@ -3,26 +3,37 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
 
-from steelyard.answers import Answer
+from steelyard.answers import Answer, Estimate
 from steelyard.answers.estimating import Scale
 from steelyard.answers.moved import Moved
 from steelyard.base import Base
 from steelyard.base.draws import Array
+from steelyard.base.ratios import refuse_bad_ratio
+from steelyard.errors import ChangeError
+from steelyard.repair.collapsing import collapse
+from steelyard.repair.evaluating import at_draws
 from steelyard.repair.matching import match_moments
+from steelyard.repair.tempered import Tempered
+from steelyard.repair.tempering import temper
 from steelyard.verdicts import Finding, judge
 from steelyard.weighing.supports import support_findings
 from steelyard.weighing.trust import shared_findings, weight_findings
-from steelyard.weighing.weigh import Weights, base_weights
+from steelyard.weighing.weigh import Weights, base_weights, weigh_ratio
 
 if TYPE_CHECKING:
     from steelyard.repair.climbing import Climb
 
-__all__ = ["MOVING", "RUNGS", "Outcome", "moved_answer"]
+__all__ = ["EMPTY", "INTERRUPTED", "MOVING", "RUNGS", "Outcome", "moved_answer"]
+
+INTERRUPTED = "stopped by Ctrl-C"
+EMPTY = "the limit was reached"
+# Fewer are too few for the islands that the errors come from.
+_LEAST_PARTICLES = 1000
 
 
 @dataclass(frozen=True, eq=False)
@@ -56,7 +67,96 @@ def moment_matching(climb: Climb) -> Outcome:
         return Outcome(None, "" if climb.purse.is_empty else "no map made the tail lighter")
     record = evaluator.at(matched.x, climb.record.draws)
     how = f"mapped by {len(matched.steps)} affine maps, {matched.steps[-1]} last"
-    return Outcome(moved_answer(climb, record, matched.weights, matched.ratio, how, is_paired=True))
+    findings = (
+        *weight_findings(matched.weights, record.draws, record.ordered),
+        *shared_findings(matched.weights, record.draws, record.ordered),
+        *matched.findings,
+    )
+    return Outcome(
+        moved_answer(climb, record, matched.weights, matched.ratio, how, findings, is_paired=True)
+    )
+
+
+def collapsing(climb: Climb) -> Outcome:
+    """The effects of a group whose family changes, integrated out and drawn anew."""
+    record = climb.record
+    try:
+        found = collapse(record, climb.change, climb.purse, climb.generator("collapse"))
+    except ChangeError as error:
+        if climb.is_explicit:
+            raise
+        return Outcome(None, f"does not apply: {error.came}, not {error.expected}")
+    if found is None:
+        return Outcome(None)
+    refuse_bad_ratio(found.log_ratio, found.draws, "collapse")
+    weights = weigh_ratio(found.log_ratio, record.log_weights, record.draws, ordered=record.ordered)
+    moved = at_draws(record, found.draws)
+    findings = (
+        *weight_findings(weights, record.draws, record.ordered),
+        *shared_findings(weights, record.draws, record.ordered),
+    )
+    how = f"effects {found.name!r} integrated out and drawn anew"
+    return Outcome(moved_answer(climb, moved, weights, found.ratio, how, findings, is_paired=True))
+
+
+# Batches between two looks at the clock.
+_BATCHES = 10
+# Conditional effective size that a temperature keeps: at first, and where that was too little.
+_EFFICIENCIES = (0.9, 0.97)
+
+
+def tempering(climb: Climb) -> Outcome:
+    """The draws moved by temperatures."""
+    record, evaluator, purse = climb.record, climb.evaluator, climb.purse
+    particles = max(record.draws.size, _LEAST_PARTICLES)
+    if not purse.allows(particles):
+        return Outcome(None)
+    run = _run(climb, _EFFICIENCIES[0], particles)
+    if run.finished and not run.verdict.is_sound and purse.allows(particles):
+        # Once more with temperatures that lie closer; the better run counts.
+        again = _run(climb, _EFFICIENCIES[1], particles)
+        run = again if again.finished and again.verdict.level > run.verdict.level else run
+    answer = run.answer()
+    how = f"tempered over {len(run.history)} temperatures in {run.islands} islands"
+    moved = replace(evaluator.at(run.points, run.draws), ordered=True)
+    made = moved_answer(
+        climb,
+        moved,
+        answer._weights,
+        run._standing[0].ratio,
+        how,
+        answer._findings,
+        is_paired=False,
+        log_constant=run.log_constant,
+    )
+    said = "" if run.finished else INTERRUPTED if run.stopped == "Ctrl-C" else EMPTY
+    return Outcome(made, said)
+
+
+def _run(climb: Climb, efficiency: float, particles: int) -> Tempered:
+    """One run from the base draws to the target, within the limits."""
+    purse = climb.purse
+    run = temper(
+        climb.start,
+        climb.evaluator.base,
+        climb.evaluator.target,
+        start_log_weights=climb.record.log_weights,
+        size=particles,
+        efficiency=efficiency,
+        most_evaluations=particles,
+        rng=climb.generator("tempering"),
+    )
+    while not run.finished and run.stopped != "Ctrl-C":
+        purse.tell()
+        if not purse.allows(1):
+            break
+        more = int(min(_BATCHES * len(run.points), purse.left))
+        before = run.evaluations
+        run = run.resume(most_evaluations=before + more)
+        if run.evaluations == before and not run.finished:
+            purse.is_empty = True
+            break
+    return run
 
 
 def moved_answer(
@@ -65,16 +165,12 @@ def moved_answer(
     weights: Weights,
     log_ratio: Array,
     how: str,
+    findings: tuple[Finding, ...],
     *,
     is_paired: bool,
-    findings: tuple[Finding, ...] | None = None,
+    log_constant: Estimate | None = None,
 ) -> Answer:
     """The answer of draws that are not the base's own."""
-    if findings is None:
-        findings = (
-            *weight_findings(weights, record.draws, record.ordered),
-            *shared_findings(weights, record.draws, record.ordered),
-        )
     own = base_weights(climb.record)
     origin = Scale(climb.record, own, own, ())
     target = climb.plain._target
@@ -90,13 +186,15 @@ def moved_answer(
         tuple(unique.values()),
         climb.change,
         target,
-        Moved(origin, is_paired, np.array(log_ratio)),
+        Moved(origin, is_paired, np.array(log_ratio), log_constant),
     )
 
 
 RUNGS: Mapping[str, Callable[[Climb], Outcome]] = {
     "smoothing": smoothing,
+    "collapse": collapsing,
     "moment matching": moment_matching,
+    "tempering": tempering,
 }
 # Those that evaluate the densities at new points.
-MOVING = ("moment matching", "tempering", "collapse")
+MOVING = ("moment matching", "tempering")
