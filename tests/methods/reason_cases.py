@@ -167,15 +167,19 @@ def own_effects(share: float) -> LeaveOut:
     return leave_out(fit._record)
 
 
-def repaired(rung: str) -> sy.Answer:
-    """A normal moved by five of its sds, by one rung of the ladder."""
+def repaired(rung: str, df: float = 0.0) -> sy.Answer:
+    """A normal moved by five of its sds, or a Student-t there, by one rung of the ladder."""
     fit = sy.Fit(
         {"x": noise(31, 4, 500)},
         {"x": sy.Flat()},
         lambda draws: -0.5 * draws["x"] ** 2,
     )
-    change = sy.swap_loglik(lambda draws: -0.5 * (draws["x"] - 5) ** 2)
-    return fit.repair(change, rungs=rung)
+
+    def target(draws: Any) -> Any:
+        square = (draws["x"] - 5) ** 2
+        return -(df + 1) / 2 * np.log1p(square / df) if df else -0.5 * square
+
+    return fit.repair(sy.swap_loglik(target), rungs=rung)
 
 
 @functools.cache

@@ -77,7 +77,11 @@ STRAINED: list[Case] = [
     ),
     ("groups_strained", lambda: left_out(0.85), lambda: left_out(0.4)),
     ("own_latents", lambda: own_effects(0.55), lambda: own_effects(0.45)),
-    ("tail_beyond", lambda: repaired("moment matching", tails=5), lambda: repaired("moment matching")),
+    (
+        "tail_beyond",
+        lambda: repaired("moment matching", df=5),
+        lambda: repaired("moment matching", df=30),
+    ),
     ("noise_raised", lambda: noisier(1.42), lambda: noisier(1.41)),
     ("step_shape", lambda: tempered(tail_shape=0.71), lambda: tempered(tail_shape=0.69)),
     ("few_islands", lambda: stranded(7), lambda: stranded(8)),

@@ -20,7 +20,15 @@ from steelyard.changes import Change
 from steelyard.errors import ArgumentError, ArgumentTypeError, SteelyardError
 from steelyard.repair.evaluating import Evaluator, evaluator_of
 from steelyard.repair.ladder import Ladder, Rung
-from steelyard.repair.rungs import EMPTY, INTERRUPTED, MOVING, RUNGS, Outcome
+from steelyard.repair.rungs import (
+    EMPTY,
+    INTERRUPTED,
+    MOVING,
+    RUNGS,
+    Outcome,
+    not_possible,
+    smoothing_cost,
+)
 from steelyard.repair.spending import Purse, read_purse
 from steelyard.verdicts import Level
 from steelyard.weighing.arrays import seed_key
@@ -101,28 +109,30 @@ def repair(
     plain = reweigh(record, change)
     climb = Climb(record, change, plain, purse, seeds, tuple(fits), ordered, rungs is not None)
     _level(climb.plain, quantities)  # a quantity that cannot be read is an error before any cost
-    tried: list[Rung] = []
+    first = _rung("smoothing", Outcome(plain, "", smoothing_cost(climb)), purse, quantities)
+    tried = [replace(first, seconds=time.monotonic() - began)]
     chosen, best = "smoothing", plain
     for name in names:
-        answer, rung = _try(climb, name, quantities)
-        if name == "smoothing":
-            rung = replace(rung, seconds=time.monotonic() - began)
-        if answer is not None and name != "smoothing" and not _better(answer, best, quantities):
-            rung = replace(rung, stopped=f"no better than {chosen}, which was kept")
-        elif answer is not None:
-            chosen, best = name, answer
-        tried.append(rung)
-        if answer is best and _level(best, quantities) == "sound":
+        if name != "smoothing":
+            outcome, rung = _try(climb, name, quantities)
+            answer = outcome.answer
+            if outcome.applies:
+                tried.append(rung)
+            if answer is not None and _better(answer, best, quantities):
+                chosen, best = name, answer
+            elif answer is not None:
+                tried[-1] = replace(rung, stopped=f"no better than {chosen}, which was kept")
+        if tried[-1].stopped == INTERRUPTED:
             break
-        if rung.stopped == INTERRUPTED or purse.is_empty:
+        if name == chosen and _level(best, quantities) == "sound":
             break
     return replace(best, ladder=Ladder(tuple(tried), chosen))
 
 
-def _try(climb: Climb, name: str, quantities: Any) -> tuple[Answer | None, Rung]:
+def _try(climb: Climb, name: str, quantities: Any) -> tuple[Outcome, Rung]:
     """One rung, with its price."""
     purse = climb.purse
-    purse.rung = name
+    purse.rung, purse.is_empty = name, False
     purse.tell()
     points, began = purse.spent.points, time.monotonic()
     outcome = _barred(climb, name)
@@ -131,17 +141,21 @@ def _try(climb: Climb, name: str, quantities: Any) -> tuple[Answer | None, Rung]
             outcome = RUNGS[name](climb)
         except KeyboardInterrupt:
             outcome = Outcome(None, INTERRUPTED)
+    outcome = replace(outcome, evaluations=outcome.evaluations + purse.spent.points - points)
+    rung = _rung(name, outcome, purse, quantities)
+    return outcome, replace(rung, seconds=time.monotonic() - began)
+
+
+def _rung(name: str, outcome: Outcome, purse: Purse, quantities: Any) -> Rung:
+    """What is told of an outcome."""
     answer, said = outcome.answer, outcome.stopped
-    cost = (purse.spent.points - points + outcome.evaluations, time.monotonic() - began)
     if answer is None:
-        if not said:
-            said = EMPTY if purse.is_empty else "nothing better was found"
-        return None, Rung(name, *cost, math.nan, math.nan, None, said)
+        said = said or (EMPTY if purse.is_empty else "nothing better was found")
+        return Rung(name, outcome.evaluations, 0.0, math.nan, math.nan, None, said)
     level = _level(answer, quantities)
-    if not said:
-        said = "sound" if level == "sound" else f"{level}: {_why(answer)}"
-    rung = Rung(name, *cost, answer.effective_size, answer.tail_shape, answer.verdict, said)
-    return answer, rung
+    said = said or ("sound" if level == "sound" else f"{level}: {_why(answer)}")
+    figures = (answer.effective_size, answer.tail_shape, answer.verdict)
+    return Rung(name, outcome.evaluations, 0.0, *figures, said)
 
 
 def _barred(climb: Climb, name: str) -> Outcome | None:
@@ -153,7 +167,7 @@ def _barred(climb: Climb, name: str) -> Outcome | None:
     except SteelyardError as error:
         if climb.is_explicit:
             raise
-        return Outcome(None, f"not possible: {error}")
+        return Outcome(None, not_possible(error))
     return None
 
 

@@ -21,7 +21,17 @@ from steelyard.repair.grouped import Grouped, grouped_likelihood
 from steelyard.repair.quadrature import NODES, Grid, grid_of
 from steelyard.repair.spending import Purse
 
-__all__ = ["Collapsed", "collapse", "collapse_cost"]
+__all__ = ["Collapsed", "Plan", "collapse", "collapse_cost", "collapse_plan"]
+
+
+@dataclass(frozen=True, eq=False)
+class Plan:
+    """What is collapsed: the merged change, and the prior term of the effects."""
+
+    record: Base
+    draft: Draft
+    label: str
+    edited: PriorTarget
 
 
 @dataclass(frozen=True, eq=False)
@@ -52,18 +62,31 @@ def collapse_cost(count: int) -> int:
     return (NODES + 4) * count
 
 
-def collapse(
-    record: Base, change: Change, purse: Purse, generator: np.random.Generator
-) -> Collapsed | None:
+def collapse_plan(record: Base, change: Change) -> Plan:
+    """
+    The group whose family a change alters.
+
+    Raises
+    ------
+    ChangeError
+        Where collapse does not apply, and why.
+    LikelihoodError, PriorError
+        For a term that cannot be evaluated at new points.
+    """
+    draft = merge(record, change)
+    label, edited = _group_term(record, draft)
+    refuse_fixed(record, draft)
+    return Plan(record, draft, label, edited)
+
+
+def collapse(plan: Plan, purse: Purse, generator: np.random.Generator) -> Collapsed | None:
     """
     Integrate the effects of a group out, and draw them anew.
 
     Parameters
     ----------
-    record : Base
-        The base.
-    change : Change
-        A change of the family of a group of effects, whatever else it changes.
+    plan : Plan
+        What is collapsed.
     purse : Purse
         What may be spent.
     generator : numpy.random.Generator
@@ -77,9 +100,7 @@ def collapse(
     Raises
     ------
     ChangeError
-        Where it does not apply, and why.
-    LikelihoodError, PriorError
-        Where a term cannot be evaluated at new points.
+        For observations that two effects touch.
 
     Notes
     -----
@@ -89,9 +110,7 @@ def collapse(
     target at (φ, r) over that marginal and the density that r was drawn from: exact whatever the
     interpolation. The J ratios of the effects do not enter them.
     """
-    draft = merge(record, change)
-    label, edited = _group_term(record, draft)
-    refuse_fixed(record, draft)
+    record, draft, label, edited = plan.record, plan.draft, plan.label, plan.edited
     name = str(edited.base.key)
     if not purse.allows(collapse_cost(record.draws.size)):
         return None

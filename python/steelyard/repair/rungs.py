@@ -14,8 +14,8 @@ from steelyard.answers.moved import Moved
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.base.ratios import refuse_bad_ratio
-from steelyard.errors import ChangeError
-from steelyard.repair.collapsing import collapse
+from steelyard.errors import ChangeError, LikelihoodError, PriorError, SteelyardError
+from steelyard.repair.collapsing import collapse, collapse_plan
 from steelyard.repair.evaluating import at_draws
 from steelyard.repair.matching import match_moments
 from steelyard.repair.tempered import Tempered
@@ -28,7 +28,16 @@ from steelyard.weighing.weigh import Weights, base_weights, weigh_ratio
 if TYPE_CHECKING:
     from steelyard.repair.climbing import Climb
 
-__all__ = ["EMPTY", "INTERRUPTED", "MOVING", "RUNGS", "Outcome", "moved_answer"]
+__all__ = [
+    "EMPTY",
+    "INTERRUPTED",
+    "MOVING",
+    "RUNGS",
+    "Outcome",
+    "moved_answer",
+    "not_possible",
+    "smoothing_cost",
+]
 
 INTERRUPTED = "stopped by Ctrl-C"
 EMPTY = "the limit was reached"
@@ -41,22 +50,29 @@ class Outcome:
     """
     What a rung gave: an answer, or why there is none.
 
-    `evaluations` are those that the shared counter does not know of.
+    `evaluations` are those that the shared counter does not know of; `applies` is False for a rung
+    that has nothing to do with the change.
     """
 
     answer: Answer | None
     stopped: str = ""
     evaluations: int = 0
+    applies: bool = True
 
 
 def smoothing(climb: Climb) -> Outcome:
     """The base's own draws, their largest weights smoothed."""
+    return Outcome(climb.plain)
+
+
+def smoothing_cost(climb: Climb) -> int:
+    """Draws at which a callable term of the change was evaluated."""
     target = climb.plain._target
     called = target is not None and any(
         callable(term.density.source) and term.density is not term.base
         for term in target.loglik.values()
     )
-    return Outcome(climb.plain, "", climb.record.draws.size if called else 0)
+    return climb.record.draws.size if called else 0
 
 
 def moment_matching(climb: Climb) -> Outcome:
@@ -81,11 +97,17 @@ def collapsing(climb: Climb) -> Outcome:
     """The effects of a group whose family changes, integrated out and drawn anew."""
     record = climb.record
     try:
-        found = collapse(record, climb.change, climb.purse, climb.generator("collapse"))
+        plan = collapse_plan(record, climb.change)
+    except (ChangeError, LikelihoodError, PriorError) as error:
+        if climb.is_explicit:
+            raise
+        return Outcome(None, not_possible(error), applies=not isinstance(error, ChangeError))
+    try:
+        found = collapse(plan, climb.purse, climb.generator("collapse"))
     except ChangeError as error:
         if climb.is_explicit:
             raise
-        return Outcome(None, f"does not apply: {error.came}, not {error.expected}")
+        return Outcome(None, not_possible(error))
     if found is None:
         return Outcome(None)
     refuse_bad_ratio(found.log_ratio, found.draws, "collapse")
@@ -97,6 +119,11 @@ def collapsing(climb: Climb) -> Outcome:
     )
     how = f"effects {found.name!r} integrated out and drawn anew"
     return Outcome(moved_answer(climb, moved, weights, found.ratio, how, findings, is_paired=True))
+
+
+def not_possible(error: SteelyardError) -> str:
+    """What bars a rung, in a line."""
+    return f"not possible: {error.argument} is {error.came}"
 
 
 # Batches between two looks at the clock.
