@@ -13,11 +13,12 @@ import numpy as np
 
 from steelyard import _core
 from steelyard.answers import Answer, Estimate
+from steelyard.arrays import plain_array
 from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.base.reading import read_draws
 from steelyard.digits import rounded, short
-from steelyard.errors import ArgumentTypeError
+from steelyard.errors import ArgumentTypeError, ShapeError
 from steelyard.repair.islands import lineage_variance, log_masses
 from steelyard.repair.particles import Particles, Step
 from steelyard.repair.points import Densities, Points
@@ -153,14 +154,13 @@ class Tempered:
                     f"a {type(named).__name__}",
                     "Pass a function, or nothing.",
                 )
-            given = dict(named(x))
+            given = _checked(named(x), len(x))
         elif self.names is None:
             given = {"x": x}
         else:
             given = {name: x[:, column] for column, name in enumerate(self.names)}
-        return read_draws(
-            {k: np.reshape(v, (count, len(x) // count, *np.shape(v)[1:])) for k, v in given.items()}
-        )
+        chain = np.repeat(np.arange(count), len(x) // count)
+        return replace(read_draws(given, chain=chain), has_chain_axis=True)
 
     @property
     def history(self) -> tuple[Step, ...]:
@@ -387,3 +387,21 @@ class Tempered:
     def _repr_html_(self) -> str:
         head = f"<p>Tempered: {escape(self._sentence())}<br>{escape(str(self.log_constant))}</p>"
         return head + self.verdict._repr_html_() + self.table()._repr_html_()
+
+
+def _checked(named: Any, count: int) -> dict[str, Array]:
+    """What the user's function made of the points."""
+    if not isinstance(named, Mapping) or not named:
+        raise ArgumentTypeError(
+            "named(x)", "{name: (n, *shape)}", f"a {type(named).__name__}", "Return a mapping."
+        )
+    arrays = {name: plain_array(values, f"named(x)[{name!r}]") for name, values in named.items()}
+    for name, array in arrays.items():
+        if array.shape[:1] != (count,):
+            raise ShapeError(
+                f"named(x)[{name!r}]",
+                f"shape ({count}, …), one row a point",
+                f"shape {array.shape}",
+                "Return a row for every point.",
+            )
+    return arrays
