@@ -68,7 +68,7 @@ class Exact(Family):
     def first_scale(self, dimension: int) -> float:
         return 1.0
 
-    def propose(self, at, islands, temperature, cloud, scale, generator):  # type: ignore[no-untyped-def]
+    def propose(self, at, temperature, cloud, scale, generator):  # type: ignore[no-untyped-def]
         mean, sd = self.problem.moments(temperature)
         return generator.normal(mean, sd, size=at.x.shape)
 
@@ -94,6 +94,19 @@ def pima(sd: float) -> tuple[Callable[[Array], Array], Callable[[Array], Array]]
         return -0.5 * (x**2).sum(axis=1) / sd**2
 
     def posterior(x: Array) -> Array:
-        return prior(x) - np.logaddexp(0, -(x @ signed.T)).sum(axis=1)
+        z = -(x @ signed.T)
+        return prior(x) - (np.log(1 + np.exp(-np.abs(z))) + np.maximum(z, 0)).sum(axis=1)
 
     return prior, posterior
+
+
+def case(identifier: str) -> dict[str, Any]:
+    """A case of family 9, ``"P9.1"`` for instance."""
+    text = (REFERENCE / "family_09_tempering.json").read_text(encoding="utf-8")
+    return next(c for c in json.loads(text)["cases"] if c["id"] == identifier)
+
+
+def value(entry: dict[str, Any]) -> Any:
+    """The expected value of an entry, as a float or a float array."""
+    stored = entry["value"]
+    return np.asarray(stored, dtype=float) if isinstance(stored, list) else float(stored)
