@@ -293,7 +293,7 @@ RULES: Mapping[str, Rule] = {
         1.0,
         "above",
         "At one temperature the tail shape of the weights is {figure}, above {limit}: {meaning}.",
-        "Start from a broader source, or raise efficiency= so that temperatures lie closer.",
+        "Read bridged_constant, which has no such tail, or start from a broader source.",
         "Vehtari, Simpson, Gelman, Yao, Gabry (2024), JMLR 25",
     ),
     "few_islands": Rule(

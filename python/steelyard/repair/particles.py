@@ -46,6 +46,9 @@ class Step:
         Points at which the densities were evaluated.
     beyond : int
         Proposals to which the target gives density and the source none.
+    bridged : float
+        The same log ratio from the particles before the step and those after its moves; 0
+        while these go on.
     """
 
     temperature: float
@@ -59,6 +62,7 @@ class Step:
     jump: float = 0.0
     evaluations: int = 0
     beyond: int = 0
+    bridged: float = 0.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -72,6 +76,10 @@ class Moving(Frozen):
         Moments of the particles before resampling.
     begun : numpy.ndarray
         Where each particle stood when the moves began.
+    step : float
+        How far the temperature rose before them.
+    log_weights, ratio : numpy.ndarray
+        Of the particles before that.
     distances : tuple of float
         Mean distance from there after each sweep.
     kept : tuple of Points
@@ -86,6 +94,9 @@ class Moving(Frozen):
 
     cloud: Cloud
     begun: Array
+    step: float
+    log_weights: Array
+    ratio: Array
     distances: tuple[float, ...] = ()
     kept: tuple[Points, ...] = ()
     accepted: float = 0.0
@@ -120,6 +131,8 @@ class Particles(Frozen):
         Relative variance of the constant from the lineages, before the last resampling.
     scales, shares : tuple of float
         Scale of each family of moves, and how often it is chosen.
+    bridged : numpy.ndarray
+        What each island adds to the bridged constant, centred.
     steps : tuple of Step
         Temperatures done.
     moving : Moving or None
@@ -136,6 +149,7 @@ class Particles(Frozen):
     stream: Mapping[str, Any]
     scales: tuple[float, ...]
     shares: tuple[float, ...]
+    bridged: Array
     resampled: int = 0
     evaluations: int = 0
     calls: int = 1

@@ -10,6 +10,7 @@ import numpy.typing as npt
 
 from steelyard import _core
 from steelyard.base.draws import Array
+from steelyard.repair.bridging import bridge
 from steelyard.repair.islands import Islands, lineage_variance, log_masses
 from steelyard.repair.moves import Cloud, Family, cloud_of
 from steelyard.repair.particles import Moving, Particles, Step
@@ -21,6 +22,8 @@ __all__ = ["Setting", "advance", "cost_of"]
 
 # The moves of a temperature end when twice as many lead less than this much further.
 _GROWTH = 1.25
+# At the target they go on for longer: what they leave is the answer.
+_LAST_GROWTH = 1.05
 _MOST_SWEEPS = 128
 # How fast scales follow the acceptance, which is known to a per cent or so from all particles.
 _GAIN = 1.5
@@ -79,11 +82,11 @@ def _weigh(state: Particles, setting: Setting) -> Particles:
     total = float(_core.log_sum_exp(logs[:, None])[0])
     weights = np.exp(logs - total)
     after, share = next_temperature(state.temperature, weights, ratio, setting.efficiency)
-    with np.errstate(invalid="ignore"):
-        logs = logs + (after - state.temperature) * ratio
+    before, rise = logs, after - state.temperature
+    logs = logs + rise * ratio
     added = float(_core.log_sum_exp(logs[:, None])[0]) - total
     w = np.exp(logs - (total + added))
-    cloud = cloud_of(state.points.x, w, setting.islands.size)
+    cloud = cloud_of(state.points.x, w)
     pending = Step(
         after,
         share,
@@ -92,11 +95,15 @@ def _weigh(state: Particles, setting: Setting) -> Particles:
         tail_share(w),
         added,
     )
-    return _resampled(replace(state, log_weights=logs, temperature=after), cloud, pending, setting)
+    moving = Moving(cloud, state.points.x, rise, before, ratio)
+    return _resampled(
+        replace(state, log_weights=logs, temperature=after, moving=moving, pending=pending), setting
+    )
 
 
-def _resampled(state: Particles, cloud: Cloud, pending: Step, setting: Setting) -> Particles:
-    islands, generator = setting.islands, state.generator()
+def _resampled(state: Particles, setting: Setting) -> Particles:
+    islands, moving, generator = setting.islands, state.moving, state.generator()
+    assert moving is not None
     many = islands.size // setting.chain_length
     rows = islands.resample(state.log_weights, many, generator)
     mass = log_masses(state.log_weights, islands.count) - math.log(islands.size)
@@ -109,8 +116,7 @@ def _resampled(state: Particles, cloud: Cloud, pending: Step, setting: Setting) 
         resampled=state.resampled + 1,
         lineage=lineage_variance(state.log_weights, state.eve, state.resampled),
         stream=generator.bit_generator.state,
-        moving=Moving(cloud, points.x, kept=(points,) if setting.chain_length > 1 else ()),
-        pending=pending,
+        moving=replace(moving, begun=points.x, kept=(points,) if setting.chain_length > 1 else ()),
     )
 
 
@@ -167,10 +173,9 @@ def _proposed(
     generator: np.random.Generator,
 ) -> Points:
     x = np.empty_like(state.points.x)
-    each = len(x) // setting.islands.count
     for rows, family, scale in zip(chosen, setting.families, state.scales, strict=True):
         x[rows] = family.propose(
-            state.points.take(rows), rows // each, state.temperature, cloud, scale, generator
+            state.points.take(rows), state.temperature, cloud, scale, generator
         )
     return setting.densities.at(x, gradients=setting.gradients)
 
@@ -217,7 +222,8 @@ def _is_over(state: Particles, setting: Setting) -> bool:
     done = len(moving.distances)
     if done >= _MOST_SWEEPS:
         return True
-    return done >= 2 and moving.distances[-1] < _GROWTH * moving.distances[done // 2 - 1]
+    growth = _GROWTH if state.temperature < 1 else _LAST_GROWTH
+    return done >= 2 and moving.distances[-1] < growth * moving.distances[done // 2 - 1]
 
 
 def _settled(state: Particles, setting: Setting) -> Particles:
@@ -230,12 +236,26 @@ def _settled(state: Particles, setting: Setting) -> Particles:
         count = len(points.x)
         order = np.arange(count * len(moving.kept)).reshape(-1, count).T.reshape(-1)
         points = Points.joined(list(moving.kept), order)
+    bridged, influence = bridge(
+        (moving.log_weights, moving.ratio),
+        (state.log_weights, points.ratio),
+        moving.step,
+        setting.islands.count,
+    )
     step = replace(
         pending,
+        bridged=bridged,
         sweeps=len(moving.distances),
         acceptance=moving.accepted / len(moving.distances),
         jump=moving.jump,
         evaluations=moving.evaluations,
         beyond=moving.beyond,
     )
-    return replace(state, points=points, steps=(*state.steps, step), moving=None, pending=None)
+    return replace(
+        state,
+        points=points,
+        bridged=state.bridged + influence,
+        steps=(*state.steps, step),
+        moving=None,
+        pending=None,
+    )

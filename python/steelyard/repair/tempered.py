@@ -13,11 +13,12 @@ import numpy as np
 
 from steelyard import _core
 from steelyard.answers import Answer, Estimate
+from steelyard.arrays import plain_array
 from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.base.reading import read_draws
 from steelyard.digits import rounded, short
-from steelyard.errors import ArgumentTypeError
+from steelyard.errors import ArgumentError, ArgumentTypeError, ShapeError
 from steelyard.repair.islands import lineage_variance, log_masses
 from steelyard.repair.particles import Particles, Step
 from steelyard.repair.points import Densities, Points
@@ -153,14 +154,13 @@ class Tempered:
                     f"a {type(named).__name__}",
                     "Pass a function, or nothing.",
                 )
-            given = dict(named(x))
+            given = _checked(named(x), len(x))
         elif self.names is None:
             given = {"x": x}
         else:
             given = {name: x[:, column] for column, name in enumerate(self.names)}
-        return read_draws(
-            {k: np.reshape(v, (count, len(x) // count, *np.shape(v)[1:])) for k, v in given.items()}
-        )
+        chain = np.repeat(np.arange(count), len(x) // count)
+        return replace(read_draws(given, chain=chain), has_chain_axis=True)
 
     @property
     def history(self) -> tuple[Step, ...]:
@@ -192,6 +192,10 @@ class Tempered:
         relative, degrees = self._relative_variance(logs)
         error = math.sqrt(relative)
         findings = [*self._findings, judge("constant_spread", error)]
+        # Moves mend the draws of a step whose weights have a heavy tail, but not its mean weight.
+        spoken = [step.tail_shape for step in self.history if step.tail_share >= _IDLE_TAIL]
+        if spoken:
+            findings.append(judge("step_shape", max(spoken)))
         return Estimate(
             value,
             error,
@@ -200,6 +204,39 @@ class Tempered:
             math.nan,
             degrees=degrees,
             label="log constant of target over source",
+        )
+
+    @cached_property
+    def bridged_constant(self) -> Estimate:
+        """
+        The same log constant from the particles of both sides of every step.
+
+        By Meng and Wong's bridge between one temperature and the next, after its moves. It needs no
+        more evaluations, and holds where the target's tails are heavier than the source's, which
+        the mean of weights misses; it rests on moves that reach them.
+
+        Raises
+        ------
+        ArgumentError
+            For a run that has not reached the target, or of a single island.
+        """
+        if not self.finished or self.islands == 1:
+            raise ArgumentError(
+                "bridged_constant",
+                "a finished run of several islands",
+                "one island" if self.finished else "a run that stopped early",
+                "Use log_constant.",
+            )
+        count, added = self.islands, self._state.bridged
+        error = math.sqrt(count / (count - 1) * float((added**2).sum()))
+        return Estimate(
+            sum(step.bridged for step in self.history),
+            error,
+            -math.inf,
+            Verdict([*self._findings, judge("constant_spread", error)]),
+            math.nan,
+            degrees=count - 1.0,
+            label="bridged log constant of target over source",
         )
 
     def _relative_variance(self, logs: Array) -> tuple[float, float]:
@@ -228,9 +265,6 @@ class Tempered:
 
     def _judged(self) -> Iterator[Finding]:
         steps = [step for step in self.history if step.sweeps > 0]
-        spoken = [step.tail_shape for step in self.history if step.tail_share >= _IDLE_TAIL]
-        if spoken:
-            yield judge("step_shape", max(spoken))
         if self.islands > 1:
             yield judge("few_islands", 1 / float((self._shares(self._target_logs) ** 2).sum()))
         if steps:
@@ -387,3 +421,21 @@ class Tempered:
     def _repr_html_(self) -> str:
         head = f"<p>Tempered: {escape(self._sentence())}<br>{escape(str(self.log_constant))}</p>"
         return head + self.verdict._repr_html_() + self.table()._repr_html_()
+
+
+def _checked(named: Any, count: int) -> dict[str, Array]:
+    """What the user's function made of the points."""
+    if not isinstance(named, Mapping) or not named:
+        raise ArgumentTypeError(
+            "named(x)", "{name: (n, *shape)}", f"a {type(named).__name__}", "Return a mapping."
+        )
+    arrays = {name: plain_array(values, f"named(x)[{name!r}]") for name, values in named.items()}
+    for name, array in arrays.items():
+        if array.shape[:1] != (count,):
+            raise ShapeError(
+                f"named(x)[{name!r}]",
+                f"shape ({count}, …), one row a point",
+                f"shape {array.shape}",
+                "Return a row for every point.",
+            )
+    return arrays

@@ -76,7 +76,7 @@ def temper(
         Conditional effective size that each temperature keeps, as a share in (0, 1).
     scheme : {"systematic", "stratified", "residual", "multinomial"}, optional
         How islands are resampled.
-    move : {"mixed", "random walk", "independence", "differences", "langevin"}, optional
+    move : {"mixed", "random walk", "independence", "langevin"}, optional
         How particles move; ``"mixed"`` takes independence and random walk, in the proportion in
         which they lead far.
     waste_free : bool or int, optional
@@ -185,6 +185,7 @@ def _begin(
         generator.bit_generator.state,
         tuple(family.first_scale(dimension) for family in setting.families),
         (1 / many,) * many,
+        np.zeros(layout.count),
         evaluations=cost,
     )
 

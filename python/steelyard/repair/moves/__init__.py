@@ -1,7 +1,6 @@
 """Moves: how particles are shaken within one temperature; one family a file."""
 
 from steelyard.repair.moves.cloud import Cloud, cloud_of
-from steelyard.repair.moves.differences import Differences
 from steelyard.repair.moves.family import Family
 from steelyard.repair.moves.independence import Independence
 from steelyard.repair.moves.langevin import Langevin
@@ -12,7 +11,6 @@ __all__ = ["MOVES", "Cloud", "Family", "cloud_of"]
 MOVES: dict[str, tuple[Family, ...]] = {
     "random walk": (RandomWalk(),),
     "independence": (Independence(),),
-    "differences": (Differences(),),
     "langevin": (Langevin(),),
     "mixed": (Independence(), RandomWalk()),
 }

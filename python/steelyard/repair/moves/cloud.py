@@ -1,4 +1,4 @@
-"""Where the particles stand when moves begin: mean, covariance, and the particles themselves."""
+"""Where the particles stand when moves begin: mean and covariance."""
 
 from __future__ import annotations
 
@@ -31,17 +31,11 @@ class Cloud(Frozen):
         Shape ``(d,)``.
     root, inverse : numpy.ndarray
         Lower Cholesky factor of the covariance, and its inverse, shape ``(d, d)``.
-    reference : numpy.ndarray
-        The particles before they were resampled, ``(n, d)``, for moves along their differences.
-    island_size : int
-        Particles of one island, contiguous.
     """
 
     mean: Array
     root: Array
     inverse: Array
-    reference: Array
-    island_size: int
 
     @property
     def dimension(self) -> int:
@@ -56,7 +50,7 @@ class Cloud(Frozen):
         return times(x, self.inverse.T)
 
 
-def cloud_of(x: Array, weights: Array, island_size: int) -> Cloud:
+def cloud_of(x: Array, weights: Array) -> Cloud:
     """
     Moments of weighted particles.
 
@@ -76,7 +70,7 @@ def cloud_of(x: Array, weights: Array, island_size: int) -> Cloud:
     unit = np.sqrt(diagonal)
     root = np.linalg.cholesky(covariance / np.outer(unit, unit)) * unit[:, None]
     inverse = np.linalg.inv(root / unit[:, None]) / unit
-    return Cloud(mean, root, inverse, x, island_size)
+    return Cloud(mean, root, inverse)
 
 
 def times(x: Array, matrix: Array) -> Array:

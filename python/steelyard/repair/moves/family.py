@@ -5,7 +5,6 @@ from __future__ import annotations
 from abc import ABC, abstractmethod
 
 import numpy as np
-import numpy.typing as npt
 
 from steelyard.base.draws import Array
 from steelyard.repair.moves.cloud import Cloud
@@ -40,13 +39,12 @@ class Family(ABC):
     def propose(
         self,
         at: Points,
-        islands: npt.NDArray[np.int64],
         temperature: float,
         cloud: Cloud,
         scale: float,
         generator: np.random.Generator,
     ) -> Array:
-        """Proposed points ``(k, d)`` for the particles `at`, which stand on the given islands."""
+        """Proposed points ``(k, d)`` for the particles `at`."""
 
     @abstractmethod
     def correction(

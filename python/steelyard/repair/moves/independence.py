@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 
 import numpy as np
-import numpy.typing as npt
 
 from steelyard.base.draws import Array
 from steelyard.repair.moves.cloud import Cloud
@@ -14,16 +13,18 @@ from steelyard.repair.points import Points
 
 __all__ = ["Independence"]
 
-# Heavier tails than those of most targets, so that no particle is worth far more than its chance
-# of being proposed; the wide part guards against a covariance that is too small.
-_DEGREES = 5.0
+# Tails as heavy as those of any target with a variance, so that no particle is worth far more than
+# its chance of being proposed; the wide part guards against a covariance that is too small. Five
+# degrees and twice as wide took a fifth less evaluations on normal targets, but left the constant
+# of a Student-t of three degrees in 10 dimensions twice as often beyond its error.
+_DEGREES = 3.0
 _WIDE_SHARE = 0.1
-_WIDE = 2.0
+_WIDE = 3.0
 
 
 class Independence(Family):
     """
-    Draws of ``0.9 t(m, Σ) + 0.1 t(m, 4 Σ)`` with five degrees of freedom.
+    Draws of ``0.9 t(m, Σ) + 0.1 t(m, 9 Σ)`` with three degrees of freedom.
 
     References
     ----------
@@ -39,7 +40,6 @@ class Independence(Family):
     def propose(
         self,
         at: Points,
-        islands: npt.NDArray[np.int64],
         temperature: float,
         cloud: Cloud,
         scale: float,

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import numpy as np
-import numpy.typing as npt
 
 from steelyard.base.draws import Array
 from steelyard.repair.moves.cloud import Cloud, times
@@ -32,7 +31,6 @@ class Langevin(Family):
     def propose(
         self,
         at: Points,
-        islands: npt.NDArray[np.int64],
         temperature: float,
         cloud: Cloud,
         scale: float,

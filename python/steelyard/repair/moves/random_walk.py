@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 
 import numpy as np
-import numpy.typing as npt
 
 from steelyard.base.draws import Array
 from steelyard.repair.moves.cloud import Cloud
@@ -33,7 +32,6 @@ class RandomWalk(Family):
     def propose(
         self,
         at: Points,
-        islands: npt.NDArray[np.int64],
         temperature: float,
         cloud: Cloud,
         scale: float,
