@@ -21,6 +21,7 @@ mod kernels {
     mod long_run;
     mod mean;
     mod moments;
+    mod multi_sample;
     mod ordered;
     mod pareto;
     mod quantile;

@@ -25,6 +25,7 @@ __all__ = [
     "log_sum_exp",
     "long_run_variance",
     "mean_square",
+    "multi_sample",
     "normal_cdf",
     "normal_quantile",
     "normalise",
@@ -136,3 +137,10 @@ def weighted_covariance(
     f: npt.NDArray[np.float64], w: npt.NDArray[np.float64]
 ) -> npt.NDArray[np.float64]: ...
 def contributions(z: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def multi_sample(
+    log_densities: npt.NDArray[np.float64],
+    counts: npt.NDArray[np.float64],
+    sizes: npt.NDArray[np.float64],
+    start: npt.NDArray[np.float64],
+    solve: bool,
+) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64], npt.NDArray[np.float64], float]: ...

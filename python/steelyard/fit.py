@@ -20,6 +20,7 @@ from steelyard.checking import Findings, check
 if TYPE_CHECKING:
     from steelyard.leaving_out import LeaveOut, LookAhead
     from steelyard.planning import Triage
+    from steelyard.repair.pooling import Pooled
     from steelyard.sensitivity import (
         Bounds,
         Local,
@@ -31,8 +32,10 @@ if TYPE_CHECKING:
         Sweep,
         TippingPoint,
     )
+    from steelyard.show.pool_plots import PoolPlots
+    from steelyard.table import Table
 
-__all__ = ["Fit"]
+__all__ = ["Fit", "Pool", "pool"]
 
 
 class Fit:
@@ -903,3 +906,171 @@ class Fit:
 
     def _repr_html_(self) -> str:
         return f"<pre>{escape(repr(self))}</pre>"
+
+
+class Pool(Fit):
+    """
+    Several fits used together: the verbs of a fit, on the draws of all.
+
+    Made by :func:`steelyard.pool`. Changes are relative to the first fit; whether they reach beyond
+    the draws is judged against all fits together.
+
+    Attributes
+    ----------
+    labels : tuple of str
+        Names of the fits.
+    log_constants : Estimate
+        Natural log normalising constants relative to the first fit's, one a fit.
+    covariance : numpy.ndarray
+        Their Monte Carlo covariance, ``(fits, fits)``.
+    shared_mass : numpy.ndarray
+        Share of the mass of a fit (row) that lies where another (column) makes draws.
+    effective_sizes : numpy.ndarray
+        Effective sizes of the fits, by which their draws count.
+
+    Examples
+    --------
+    >>> import numpy as np, steelyard as sy
+    >>> rng = np.random.default_rng(1)
+    >>> narrow = sy.Fit({"mu": rng.normal(0, 1, (4, 500))}, prior={"mu": sy.Normal(0, 1)})
+    >>> wide = sy.Fit({"mu": rng.normal(0, 2, (4, 500))}, prior={"mu": sy.Normal(0, 2)})
+    >>> pool = sy.pool([narrow, wide], data="same", common="likelihood")
+    >>> pool.reweigh(sy.swap_prior(mu=sy.Normal(0, 1.8))).verdict.is_sound
+    True
+    """
+
+    def __init__(self, pooled: Pooled) -> None:
+        self._record = pooled.record
+        self._pooled = pooled
+
+    @property
+    def labels(self) -> tuple[str, ...]:
+        """Names of the fits."""
+        return self._pooled.labels
+
+    @property
+    def log_constants(self) -> Estimate:
+        """Log normalising constants relative to the first fit's."""
+        return self._pooled.log_constants
+
+    @property
+    def covariance(self) -> Any:
+        """Monte Carlo covariance of the log constants."""
+        return self._pooled.covariance
+
+    @property
+    def shared_mass(self) -> Any:
+        """Share of the mass of a fit (row) that lies where another (column) makes draws."""
+        return self._pooled.shared_mass
+
+    @property
+    def effective_sizes(self) -> Any:
+        """Effective sizes of the fits, by which their draws count."""
+        return self._pooled.sizes
+
+    def check(self) -> Findings:
+        """
+        Check the claimed base of every fit by itself.
+
+        Returns
+        -------
+        Findings
+            Those of each fit, the name of the fit before the check.
+        """
+        return self._pooled.check()
+
+    def table(self) -> Table:
+        """
+        One row for each fit.
+
+        Returns
+        -------
+        Table
+            Draws, effective size, log constant and its error, and the mass kept to itself.
+        """
+        return self._pooled.table()
+
+    @property
+    def plot(self) -> PoolPlots:
+        """Plots of the pool; call it for the shared mass."""
+        from steelyard.show.pool_plots import PoolPlots
+
+        return PoolPlots(self._pooled)
+
+    def __str__(self) -> str:
+        return f"{self.table()}\nthe first fit from all draws: {self.base.verdict}"
+
+    def __repr__(self) -> str:
+        return f"<Pool of {len(self.labels)} fits, {self.draws.size} draws>\n{self.table()}"
+
+    def _repr_html_(self) -> str:
+        return self.table()._repr_html_() + self.base.verdict._repr_html_()
+
+
+def pool(
+    fits: Any, *, data: str, common: str | Iterable[str] = (), log_constants: Any = None
+) -> Pool:
+    """
+    Use several fits together.
+
+    Parameters
+    ----------
+    fits : sequence of Fit, or mapping of str to Fit
+        Fits of the same parameters, of unequal size and mixing.
+    data : {"same", "disjoint"}
+        Whether the fits saw the same data, under different priors or likelihoods, or parts of it
+        that have nothing in common.
+    common : str or iterable of str, optional
+        Prior or likelihood terms that are the same in all fits: they cancel and are not evaluated
+        at the draws of the others, so that arrays will do. ``"likelihood"`` (or ``"prior"``) stands
+        for what no fit states.
+    log_constants : array_like, optional
+        Log normalising constants of the fits, where they are known; one a fit.
+
+    Returns
+    -------
+    Pool
+        A fit whose draws are those of all fits, and whose base is the posterior of the first; for
+        disjoint data, the posterior of all data, the prior counted once.
+
+    Raises
+    ------
+    ArgumentError, ArgumentTypeError
+        For less than two fits, or another `data`.
+    PriorError, LikelihoodError
+        Where a term that is not common cannot be evaluated at the draws of the other fits.
+    DrawsError, ShapeError, UnknownNameError, RatioError
+        For fits of other parameters or data, or terms in `common` that are not there.
+
+    Notes
+    -----
+    Constants solve ``exp(−f_k) = Σ_x c(x) q_k(x) / Σ_l n_l exp(f_l) q_l(x)`` [1]_ with effective
+    sizes n and ``c`` the effective size of a draw's fit over its number of draws; the weights of
+    any target are ``c q / Σ_l n_l exp(f_l) q_l``. Errors take the draws of each fit by itself, in
+    chain order, and include those of the constants.
+
+    References
+    ----------
+    .. [1] Vardi (1985), Annals of Statistics 13; Geyer (1994), Univ. of Minnesota TR 568; Kong,
+       McCullagh, Meng, Nicolae, Tan (2003), JRSS B 65; Shirts, Chodera (2008), J. Chem. Phys. 129.
+
+    Examples
+    --------
+    Two fits of the corrosion rate of one quay wall, under a tight prior and a wide one:
+
+    >>> import numpy as np, steelyard as sy
+    >>> rng = np.random.default_rng(1)
+    >>> readings = rng.normal(0.12, 0.04, size=20)
+    >>> def fitted(sd):
+    ...     precision = 20 / 0.04**2 + 1 / sd**2
+    ...     mean = (readings.sum() / 0.04**2 + 0.10 / sd**2) / precision
+    ...     rate = rng.normal(mean, precision**-0.5, size=(4, 500))
+    ...     loglik = -0.5 * ((readings - rate[..., None]) / 0.04) ** 2
+    ...     return sy.Fit({"rate": rate}, {"rate": sy.Normal(0.10, sd)}, {"gauge A": loglik})
+    >>> both = sy.pool([fitted(0.01), fitted(0.1)], data="same", common="gauge A")
+    >>> both.reweigh(sy.swap_prior(rate=sy.Flat())).mean("rate").verdict.is_sound
+    True
+    """
+    from steelyard.repair.pools import pool_fits
+
+    return Pool(pool_fits(fits, Fit, data, common, log_constants))

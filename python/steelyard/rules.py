@@ -340,4 +340,22 @@ RULES: Mapping[str, Rule] = {
         "Go on with resume().",
         "exact",
     ),
+    "pool_overlap": Rule(
+        10.0,
+        3.0,
+        "below",
+        "The draws of {fit} share only {figure} effective draws with those of the others, below "
+        "{limit}: its constant against them is hardly known.",
+        "Leave that fit out, or add a fit that lies between.",
+        "one over the variance of a log constant between two fits; limits ours",
+    ),
+    "pool_contradiction": Rule(
+        1e-3,
+        1e-6,
+        "below",
+        "The draws of {fit} contradict those of the others (p = {figure}, below {limit}): they are "
+        "not distributed as the stated terms say, or the others are not.",
+        "Run check() on the fit, look at its terms and its convergence, or leave it out.",
+        "detailed balance between the draws of a fit and those of the others; limits ours",
+    ),
 }

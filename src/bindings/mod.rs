@@ -10,6 +10,7 @@ mod interval;
 mod log_sum;
 mod long_run;
 mod mean;
+mod multi_sample;
 mod ordered;
 mod pareto;
 mod quantile;
@@ -42,6 +43,8 @@ mod _core {
     use super::mean::{
         contributions, mean_square, weighted_covariance, weighted_mean, weighted_moments,
     };
+    #[pymodule_export]
+    use super::multi_sample::multi_sample;
     #[pymodule_export]
     use super::ordered::{set_threads, threads};
     #[pymodule_export]

@@ -17,6 +17,7 @@ CHECKS = {"GL03", "GL07", "SS01", "SS02", "SS03", "PR01", "PR02", "PR03", "PR07"
 RESULTS = {"Answer", "Change", "Decision", "Distance", "Draws", "Estimate", "Reason", "Verdict"}
 RESULTS |= {"LeaveOut", "Contrast", "Calibration", "Combination", "LookAhead", "Flip", "Tempered"}
 RESULTS |= {"Ladder", "Rung"}
+RESULTS |= {"Pool"}
 RESULTS |= {"Finding", "Findings", "Smoothed", *sy.errors.__all__}
 
 

@@ -14,6 +14,7 @@ import steelyard as sy
 from steelyard.rules import RULES
 
 from . import twins
+from .pool_cases import contradicting, linked
 from .reason_cases import (
     SEED,
     N,
@@ -92,6 +93,8 @@ STRAINED: list[Case] = [
     ("constant_spread", lambda: stranded(7).log_constant, lambda: stranded(8).log_constant),
     ("moves_stuck", lambda: tempered(jump=0.29), lambda: tempered(jump=0.31)),
     ("tempering_unfinished", lambda: stopped(1), lambda: stopped(None)),
+    ("pool_overlap", lambda: linked(5.2), lambda: linked(4.8)),
+    ("pool_contradiction", lambda: contradicting(0.25), lambda: contradicting(0.15)),
 ]
 REFIT: list[Case] = [
     ("groups_refit", lambda: left_out(1.15), lambda: left_out(0.4)),
@@ -123,6 +126,8 @@ REFIT: list[Case] = [
     ("constant_spread", lambda: stranded(1).log_constant, lambda: stranded(2).log_constant),
     ("moves_stuck", lambda: tempered(jump=0.029), lambda: tempered(jump=0.031)),
     ("beyond_source", lambda: tempered(beyond=1), lambda: tempered(beyond=0)),
+    ("pool_overlap", lambda: linked(6.0), lambda: linked(5.6)),
+    ("pool_contradiction", lambda: contradicting(0.35), lambda: contradicting(0.25)),
 ]
 NOTES: list[Case] = [
     (

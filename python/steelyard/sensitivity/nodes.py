@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 from typing import Any
 
@@ -20,6 +20,7 @@ from steelyard.verdicts import Finding, judge, shape_limit
 from steelyard.weighing.preflight import preflight
 from steelyard.weighing.series import (
     _welch,
+    carried,
     chains_p_value,
     contributions_of,
     relative_efficiency,
@@ -96,7 +97,7 @@ def own_weights(base: Base) -> Weights:
 def weigh_nodes(base: Base, ratios: Array, own: Weights) -> Nodes:
     """Weights from log ratios ``(n, B)``, smoothed as those of a single answer."""
     draws, given = base.draws, base.log_weights
-    total = ratios if given is None else ratios + given[:, None]
+    total = ratios if base.reference is None else ratios + base.reference[:, None]
     base_sum = (
         math.log(draws.size) if given is None else float(_core.log_sum_exp(given[:, None])[0])
     )
@@ -122,6 +123,7 @@ def weigh_nodes(base: Base, ratios: Array, own: Weights) -> Nodes:
 def weight_findings(nodes: Nodes) -> list[Finding]:
     """What the weights say of trust, as `weighing.trust` says it of one answer; figures (B,)."""
     base, count = nodes.base, nodes.base.draws.size
+    pooling = base.draws.pooling
     with np.errstate(divide="ignore"):
         divergence = np.log(count / nodes.entropy_size)
     shares = np.array([tail_share(nodes.raw[:, j]) for j in range(nodes.count)])
@@ -132,6 +134,7 @@ def weight_findings(nodes: Nodes) -> list[Finding]:
         judge("few_effective_entropy", nodes.entropy_size),
         judge("few_carry", nodes.largest_share),
         judge("saturated_divergence", np.maximum(divergence, 0.0) / math.log(count)),
+        *(() if pooling is None else (_spread(f, nodes.count) for f in pooling.findings)),
     ]
     if base.ordered:
         varying = np.ptp(nodes.raw, axis=0) > 0
@@ -148,6 +151,11 @@ def weight_findings(nodes: Nodes) -> list[Finding]:
     if lost.any():
         found.append(judge("draws_lost", lost, spoken=lost > 0))
     return found
+
+
+def _spread(finding: Finding, count: int) -> Finding:
+    """A finding about the base, said of every node."""
+    return replace(finding, figure=np.full(count, float(finding.figure)))
 
 
 def algebra_findings(base: Base, targets: Sequence[Target]) -> list[Finding]:
@@ -229,7 +237,7 @@ def study_nodes(
     sides = (f, 1 - f) if is_event else ()
     within = [_within(nodes.linear, side) * of_f for side in sides] or [np.empty(nodes.count)] * 2
     value = moved if shift else at_base + moved
-    return NodeSeries(value, series, variance, within[0], within[1], z)
+    return NodeSeries(value, series, variance, within[0], within[1], carried(z, draws))
 
 
 def _within(weights: Array, side: Array) -> Array:
@@ -240,6 +248,9 @@ def _within(weights: Array, side: Array) -> Array:
 
 def _chains(psi: Array, weights: Array, draws: Draws) -> Array:
     """`weighing.series.chains_p_value` with weights of their own for every column."""
+    if draws.pooling is not None:
+        each = range(psi.shape[1])
+        return np.array([chains_p_value(psi[:, [j]], weights[:, j], draws)[0] for j in each])
     if draws.chains < 2 or int(np.diff(draws.starts).min()) < _SHORTEST:
         return np.ones(psi.shape[1])
     pooled = (weights * psi**2).sum(axis=0)
