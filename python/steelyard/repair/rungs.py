@@ -4,20 +4,27 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from steelyard.answers import Answer, Estimate
+from steelyard.answers import Answer, Estimate, reweigh
 from steelyard.answers.estimating import Scale
 from steelyard.answers.moved import Moved
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.base.ratios import refuse_bad_ratio
-from steelyard.errors import ChangeError, LikelihoodError, PriorError, SteelyardError
+from steelyard.errors import (
+    ArgumentTypeError,
+    ChangeError,
+    LikelihoodError,
+    PriorError,
+    SteelyardError,
+)
 from steelyard.repair.collapsing import collapse, collapse_plan
 from steelyard.repair.evaluating import at_draws
 from steelyard.repair.matching import match_moments
+from steelyard.repair.pooling import pool_records
 from steelyard.repair.tempered import Tempered
 from steelyard.repair.tempering import temper
 from steelyard.verdicts import Finding, judge
@@ -154,10 +161,34 @@ def tempering(climb: Climb) -> Outcome:
         how,
         answer._findings,
         is_paired=False,
-        log_constant=run.log_constant,
+        log_constant=run.bridged_constant if run.finished else run.log_constant,
     )
     said = "" if run.finished else INTERRUPTED if run.stopped == "Ctrl-C" else EMPTY
     return Outcome(made, said)
+
+
+def pooling(climb: Climb) -> Outcome:
+    """The draws of other fits of the same data beside those of the base."""
+    if not climb.fits:
+        return Outcome(None, applies=False)
+    records = [climb.record, *(_record_of(fit) for fit in climb.fits)]
+    count = sum(record.draws.size for record in records)
+    # Callables are asked for every fit at the draws of all.
+    cost = len(records) * count
+    if not climb.purse.allows(cost):
+        return Outcome(None)
+    labels = ["base", *(f"fit {number}" for number in range(2, len(records) + 1))]
+    pooled = pool_records(records, labels)
+    answer = reweigh(replace(pooled.record, is_moved=True), climb.change)
+    note = judge("draws_moved", how=f"pooled with those of {len(climb.fits)} other fits")
+    return Outcome(replace(answer, _findings=(*answer._findings, note)), "", cost)
+
+
+def _record_of(fit: Any) -> Base:
+    record = fit if isinstance(fit, Base) else getattr(fit, "_record", None)
+    if not isinstance(record, Base):
+        raise ArgumentTypeError("fits", "fits", type(fit).__name__, "Make them with sy.Fit(…).")
+    return record
 
 
 def _run(climb: Climb, efficiency: float, particles: int) -> Tempered:
@@ -221,6 +252,7 @@ RUNGS: Mapping[str, Callable[[Climb], Outcome]] = {
     "smoothing": smoothing,
     "collapse": collapsing,
     "moment matching": moment_matching,
+    "pooling": pooling,
     "tempering": tempering,
 }
 # Those that evaluate the densities at new points.
