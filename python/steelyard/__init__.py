@@ -71,6 +71,7 @@ if TYPE_CHECKING:
         deletion_mixture,
     )
     from steelyard.planning import Plan, Scenario, read_plan
+    from steelyard.repair import Ladder, Rung, Tempered, temper
 
 __version__ = "0.1.0"
 
@@ -101,6 +102,7 @@ __all__ = [
     "HalfStudentT",
     "InverseGamma",
     "LKJCorrelation",
+    "Ladder",
     "Laplace",
     "LeaveOut",
     "LogNormal",
@@ -115,10 +117,12 @@ __all__ = [
     "Poisson",
     "Pool",
     "Reason",
+    "Rung",
     "Scenario",
     "SkewNormal",
     "StudentT",
     "Table",
+    "Tempered",
     "Truncated",
     "Uniform",
     "Verdict",
@@ -137,6 +141,7 @@ __all__ = [
     "read_plan",
     "swap_loglik",
     "swap_prior",
+    "temper",
     "threads",
     "weigh",
     "weigh_data",
@@ -149,14 +154,18 @@ _LATER = {
     "Combination": "steelyard.leaving_out",
     "Contrast": "steelyard.leaving_out",
     "Flip": "steelyard.leaving_out",
+    "Ladder": "steelyard.repair",
     "LeaveOut": "steelyard.leaving_out",
     "LookAhead": "steelyard.leaving_out",
     "Plan": "steelyard.planning",
+    "Rung": "steelyard.repair",
     "Scenario": "steelyard.planning",
+    "Tempered": "steelyard.repair",
     "by_observation": "steelyard.leaving_out",
     "combine": "steelyard.leaving_out",
     "deletion_mixture": "steelyard.leaving_out",
     "read_plan": "steelyard.planning",
+    "temper": "steelyard.repair",
 }
 
 

@@ -224,6 +224,23 @@ RULES: Mapping[str, Rule] = {
         "Compare a known posterior summary of the fit with the base answer.",
         "exact",
     ),
+    "tail_beyond": Rule(
+        1.5,
+        10.0,
+        "above",
+        "Draws pushed out by a factor of {factor} find {figure} times the variance of the weights "
+        "that the draws themselves show, above {limit}: the target's tails are heavier.",
+        "Temper, which moves draws into the tails, or refit.",
+        "derived: both estimate one second moment; limits ours",
+    ),
+    "draws_moved": Rule(
+        math.nan,
+        math.nan,
+        "note",
+        "The draws are not the base's own: {how}.",
+        "Ask for quantities by name, text or callable; answer.draws holds the new draws.",
+        "exact",
+    ),
     "groups_refit": Rule(
         0.5,
         1.0,
@@ -272,6 +289,58 @@ RULES: Mapping[str, Rule] = {
         "The log scores of {figure} groups come from fits without them.",
         "Nothing to do if those fits can be trusted.",
         "counted",
+    ),
+    "step_shape": Rule(
+        0.7,
+        1.0,
+        "above",
+        "At one temperature the tail shape of the weights is {figure}, above {limit}: {meaning}.",
+        "Read bridged_constant, which has no such tail, or start from a broader source.",
+        "Vehtari, Simpson, Gelman, Yao, Gabry (2024), JMLR 25",
+    ),
+    "few_islands": Rule(
+        8.0,
+        4.0,
+        "below",
+        "As few as {figure} islands carry the weight, below {limit}: they found different things.",
+        "Bring more particles with size=, raise efficiency=, or start from a broader source.",
+        "ours",
+    ),
+    "constant_spread": Rule(
+        0.3,
+        0.8,
+        "above",
+        "The relative error of the ratio of constants is {figure}, above {limit}: its log is not "
+        "normal.",
+        "Bring more particles with size=, or raise efficiency= so that temperatures lie closer.",
+        "ours",
+    ),
+    "moves_stuck": Rule(
+        0.3,
+        0.03,
+        "below",
+        "At one temperature particles moved only {figure} of the distance between independent "
+        "draws, below {limit}: they are near copies of each other.",
+        "Choose another move=, a parameterisation with rounder contours, or more particles.",
+        "ours",
+    ),
+    "beyond_source": Rule(
+        math.nan,
+        math.nan,
+        "always",
+        "Moves at the target went {figure} times where the source has no density: the path from "
+        "the source does not cover the target.",
+        "Start from a source whose support holds the target's.",
+        "exact: the ratio of constants leaves out what lies there",
+    ),
+    "tempering_unfinished": Rule(
+        0.0,
+        math.inf,
+        "from",
+        "The run was stopped by {why} with a share of {figure} of the path, and the moves there, "
+        "still to do.",
+        "Go on with resume().",
+        "exact",
     ),
     "pool_overlap": Rule(
         10.0,

@@ -7,6 +7,8 @@ log(1,000/count).
 
 from __future__ import annotations
 
+import functools
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -163,3 +165,51 @@ def own_effects(share: float) -> LeaveOut:
     one_chain = np.zeros(4000, dtype=int)
     fit = sy.Fit({"theta": theta}, loglik=loglik, chain=one_chain, ordered=False)
     return leave_out(fit._record)
+
+
+def repaired(rung: str, df: float = 0.0) -> sy.Answer:
+    """A normal moved by five of its sds, or a Student-t there, by one rung of the ladder."""
+    fit = sy.Fit(
+        {"x": noise(31, 4, 500)},
+        {"x": sy.Flat()},
+        lambda draws: -0.5 * draws["x"] ** 2,
+    )
+
+    def target(draws: Any) -> Any:
+        square = (draws["x"] - 5) ** 2
+        return -(df + 1) / 2 * np.log1p(square / df) if df else -0.5 * square
+
+    return fit.repair(sy.swap_loglik(target), rungs=rung)
+
+
+@functools.cache
+def _run(most_evaluations: int | None = None) -> sy.Tempered:
+    """Normal draws moved a little, in 20 islands."""
+    return sy.temper(
+        noise(31, N, 1),
+        lambda x: -0.5 * x[:, 0] ** 2,
+        lambda x: -0.5 * (x[:, 0] - 1.5) ** 2,
+        most_evaluations=most_evaluations,
+        rng=SEED,
+    )
+
+
+def tempered(**figures: float) -> sy.Tempered:
+    """A run one of whose steps shows these figures."""
+    run = _run()
+    steps = list(run._state.steps)
+    steps[1] = replace(steps[1], tail_share=0.5, **figures)
+    return replace(run, _state=replace(run._state, steps=tuple(steps)))
+
+
+def stranded(islands: int) -> sy.Tempered:
+    """A run in which so many of 20 islands hold all weight, in equal parts."""
+    run = _run()
+    log_weights = np.full(N, -np.inf)
+    log_weights[: islands * N // 20] = -np.log(islands * N // 20)
+    return replace(run, _state=replace(run._state, log_weights=log_weights))
+
+
+def stopped(sweeps: int | None) -> sy.Tempered:
+    """A run that was stopped after so many sweeps, or not at all."""
+    return _run(None if sweeps is None else (1 + sweeps) * N)

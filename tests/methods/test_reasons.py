@@ -35,15 +35,19 @@ from .reason_cases import (
     prior,
     product,
     quantile,
+    repaired,
     shape,
     shares,
     stacked,
+    stopped,
+    stranded,
+    tempered,
     widened,
 )
 
 # Limits that are ours and may move; the others are held to METHODS below.
 FEW, BEYOND = RULES["few_effective_draws"], RULES["draws_beyond"]
-Judged = sy.Answer | sy.Estimate | sy.LeaveOut
+Judged = sy.Answer | sy.Estimate | sy.LeaveOut | sy.Tempered
 
 
 Case = tuple[str, Callable[[], Judged], Callable[[], Judged]]
@@ -74,7 +78,21 @@ STRAINED: list[Case] = [
     ),
     ("groups_strained", lambda: left_out(0.85), lambda: left_out(0.4)),
     ("own_latents", lambda: own_effects(0.55), lambda: own_effects(0.45)),
+    (
+        "tail_beyond",
+        lambda: repaired("moment matching", df=5),
+        lambda: repaired("moment matching", df=30),
+    ),
     ("noise_raised", lambda: noisier(1.42), lambda: noisier(1.41)),
+    (
+        "step_shape",
+        lambda: tempered(tail_shape=0.71).log_constant,
+        lambda: tempered(tail_shape=0.69).log_constant,
+    ),
+    ("few_islands", lambda: stranded(7), lambda: stranded(8)),
+    ("constant_spread", lambda: stranded(7).log_constant, lambda: stranded(8).log_constant),
+    ("moves_stuck", lambda: tempered(jump=0.29), lambda: tempered(jump=0.31)),
+    ("tempering_unfinished", lambda: stopped(1), lambda: stopped(None)),
     ("pool_overlap", lambda: linked(5.2), lambda: linked(4.8)),
     ("pool_contradiction", lambda: contradicting(0.25), lambda: contradicting(0.15)),
 ]
@@ -99,6 +117,15 @@ REFIT: list[Case] = [
     ),
     ("prior_widened", lambda: widened(1.01), lambda: widened(0.99)),
     ("likelihood_loosened", lambda: both(1.01), lambda: loosened(0.0)),
+    (
+        "step_shape",
+        lambda: tempered(tail_shape=1.01).log_constant,
+        lambda: tempered(tail_shape=0.99).log_constant,
+    ),
+    ("few_islands", lambda: stranded(3), lambda: stranded(4)),
+    ("constant_spread", lambda: stranded(1).log_constant, lambda: stranded(2).log_constant),
+    ("moves_stuck", lambda: tempered(jump=0.029), lambda: tempered(jump=0.031)),
+    ("beyond_source", lambda: tempered(beyond=1), lambda: tempered(beyond=0)),
     ("pool_overlap", lambda: linked(6.0), lambda: linked(5.6)),
     ("pool_contradiction", lambda: contradicting(0.35), lambda: contradicting(0.25)),
 ]
@@ -114,6 +141,11 @@ NOTES: list[Case] = [
         "edge_pressure",
         lambda: prior(sy.Flat(0, 1), sy.Flat(0, 1.1)),
         lambda: prior(sy.Flat(0, 1.1), sy.Flat(0, 1)),
+    ),
+    (
+        "draws_moved",
+        lambda: repaired("moment matching"),
+        lambda: repaired("smoothing"),
     ),
     ("draws_lost", lambda: equal(999), lambda: sy.weigh(np.zeros(N))),
     ("support_unknown", lambda: sy.weigh(np.zeros(N)), lambda: stacked(7).base),

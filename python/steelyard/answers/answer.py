@@ -20,6 +20,15 @@ from steelyard.answers.covariances import covariance_of
 from steelyard.answers.distances import distance_of, divergence_of
 from steelyard.answers.estimate import Estimate, Estimates
 from steelyard.answers.estimating import Scale, mean_of, sd_of
+from steelyard.answers.moved import (
+    Moved,
+    both_of,
+    divergence_of_moved,
+    joined_values,
+    refuse_moved,
+    shift_of_moved,
+    with_both,
+)
 from steelyard.answers.probabilities import probability_of
 from steelyard.answers.quantiles import ENDS, quantile_of, shortest_of
 from steelyard.answers.quantities import Quantity, event_mask, labelled, read_quantity
@@ -70,6 +79,9 @@ class Answer:
         Target minus base, term by term, on the log scale, before smoothing.
     change : Change or None
         The change; None for the base.
+    ladder : Ladder or None
+        What each rung of a repair cost and where it stopped; None without one. The draws of the
+        later rungs are new ones.
 
     Examples
     --------
@@ -88,6 +100,8 @@ class Answer:
     _findings: tuple[Finding, ...]
     change: Change | None = None
     _target: Target | None = None
+    _moved: Moved | None = None
+    ladder: Any = None
 
     @cached_property
     def _scale(self) -> Scale:
@@ -95,7 +109,7 @@ class Answer:
 
     @property
     def draws(self) -> Draws:
-        """The draws, as the base has them; their weights are :attr:`weights`."""
+        """The draws, as the base or the repair has them; their weights are :attr:`weights`."""
         return self._base.draws
 
     @property
@@ -135,8 +149,9 @@ class Answer:
 
     @property
     def terms(self) -> Mapping[str, Array]:
-        """Target minus base, term by term, on the natural log scale."""
-        terms = {} if self._target is None else self._target.terms
+        """Target minus base, term by term, on the natural log scale; none for moved draws."""
+        is_own = self._target is not None and self._moved is None
+        terms = self._target.terms if is_own and self._target is not None else {}
         return ReadOnly({k: self._base.draws.shaped(v) for k, v in terms.items()})
 
     def mean(self, quantity: Any = None) -> Any:
@@ -328,7 +343,8 @@ class Answer:
             isinstance(level, bool) or not isinstance(level, int | float | np.floating)
         ):
             raise ArgumentTypeError("level", "a number in (0, 1)", repr(level), "Write 0.8.")
-        bound = largest_ratio(self._base, self._target, self._weights.log_mean_ratio)
+        known = None if self._moved is not None else self._target
+        bound = largest_ratio(self._base, known, self._weights.log_mean_ratio)
         return probability_of(self._scale, event_mask(event, self._base), level, bound)
 
     def shift(self, quantity: Any = None, of: Any = "mean") -> Any:
@@ -368,6 +384,8 @@ class Answer:
         >>> answer.shift("x").error < answer.mean("x").error
         True
         """
+        if self._moved is not None:
+            return shift_of_moved(self._scale, self._moved, quantity, of)
         return self._each(quantity, lambda q: shift_of(self._scale, q, of), events=True)
 
     def covariance(self, quantity: Any = None) -> Estimate:
@@ -434,6 +452,12 @@ class Answer:
         >>> bool(0.4 < distance.wasserstein.value < 0.6)
         True
         """
+        moved = self._moved
+        if moved is not None:
+            both = both_of(self._scale, moved)
+            return with_both(
+                self._scale, moved, quantity, lambda a, b: distance_of(both, joined_values(a, b))
+            )
         several = labelled(quantity, self._base)
         if several is not None:
             return Estimates({k: distance_of(self._scale, q) for k, q in several.items()})
@@ -460,7 +484,7 @@ class Answer:
         Raises
         ------
         ChangeError
-            For the base, and where a term is in two groups.
+            For the base, where a term is in two groups, and for draws that a repair has moved.
         UnknownNameError, ShapeError, ArgumentTypeError
             For groups or blocks that do not fit the change.
 
@@ -482,6 +506,8 @@ class Answer:
         >>> list(fit.reweigh(change).attribute("x").terms)
         ['prior: x', 'likelihood: likelihood']
         """
+        if self._moved is not None:
+            refuse_moved("attribute", "Attribute with fit.reweigh(change), or to a smaller change.")
         return self._each(
             quantity,
             lambda q: attribution_of(self._scale, self._target, q, groups, blocks),
@@ -491,6 +517,9 @@ class Answer:
     @property
     def divergence(self) -> Estimate:
         """Kullback–Leibler divergence of the target from the base, in natural units."""
+        if self._moved is not None:
+            constant = self._moved.log_constant or log_evidence_ratio_of(self._scale, None)
+            return divergence_of_moved(self._scale, self._moved, constant)
         return divergence_of(self._scale)
 
     @property
@@ -507,7 +536,9 @@ class Answer:
         PriorError
             Where a changed prior term is improper, or taken to a power.
         """
-        return log_evidence_ratio_of(self._scale, self._target)
+        own = log_evidence_ratio_of(self._scale, self._target)
+        given = None if self._moved is None else self._moved.log_constant
+        return own if given is None else given
 
     def table(
         self,
@@ -649,7 +680,8 @@ class Answer:
 
     def __str__(self) -> str:
         change = "the base itself" if self.change is None else str(self.change)
-        return f"change: {change}\nweights: {self._figures()}\nverdict: {self.verdict}"
+        ladder = "" if self.ladder is None else f"\n{self.ladder}"
+        return f"change: {change}\nweights: {self._figures()}\nverdict: {self.verdict}{ladder}"
 
     def __repr__(self) -> str:
         return f"<Answer {self.verdict.level}: {self._figures()}>"
@@ -659,4 +691,5 @@ class Answer:
         head = f"<p>Change: {escape(change)}<br>Weights: {escape(self._figures())}</p>"
         rows = sum(v[0].size for v in self._base.draws.values())
         table = self.table()._repr_html_() if 0 < rows <= 60 else ""
-        return head + self.verdict._repr_html_() + table
+        ladder = "" if self.ladder is None else self.ladder._repr_html_()
+        return head + self.verdict._repr_html_() + ladder + table

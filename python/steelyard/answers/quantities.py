@@ -100,9 +100,12 @@ def read_quantity(
             type(quantity).__name__,
             f"Known parameters: {', '.join(draws) or 'none'}.",
         )
+    else:
+        _refuse_if_moved(base, argument)
     quantity = quantity if hasattr(quantity, "dims") else plain_array(quantity, argument)
     if quantity.dtype == np.bool_:
-        return replace(_event_as_quantity(quantity, base, argument, events), label=label)
+        event = _event_as_quantity(quantity, base, argument, events, is_computed=True)
+        return replace(event, label=label)
     values = np.require(stacked(quantity, draws, argument), np.float64, ["C", "A"])
     _refuse_bad_values(values, base, argument)
     return Quantity(label, values, ("",) * (values.ndim - 1))
@@ -113,7 +116,9 @@ def all_text(values: Iterable[Any]) -> bool:
     return all(isinstance(value, str) for value in values)
 
 
-def _event_as_quantity(event: Any, base: Base, argument: str, events: bool) -> Quantity:
+def _event_as_quantity(
+    event: Any, base: Base, argument: str, events: bool, *, is_computed: bool = False
+) -> Quantity:
     if not events:
         raise QuantityError(
             argument,
@@ -121,7 +126,7 @@ def _event_as_quantity(event: Any, base: Base, argument: str, events: bool) -> Q
             f"an event ({event[:80]!r})" if isinstance(event, str) else "True and False",
             "Use prob(event), which counts the draws on both sides; shift() takes events too.",
         )
-    return event_mask(event, base)
+    return event_mask(event, base, is_computed=is_computed)
 
 
 def _name_of(function: Any, otherwise: str) -> str:
@@ -160,6 +165,17 @@ def _refuse_bad_values(values: Array, base: Base, argument: str) -> None:
         )
 
 
+def _refuse_if_moved(base: Base, argument: str) -> None:
+    """An array belongs to the draws that it was computed at, and nobody can see which these are."""
+    if base.is_moved:
+        raise QuantityError(
+            argument,
+            "a name, a text or a callable, since the draws have moved",
+            "an array",
+            'Pass a callable that gets {name: (n, *shape)}, such as lambda d: d["mu"] ** 2.',
+        )
+
+
 def _look_up(base: Base) -> Callable[[str, str], Array]:
     def look_up(name: str, argument: str) -> Array:
         if base.draws.find(name, argument).name in base.withheld:
@@ -173,8 +189,12 @@ def _look_up(base: Base) -> Callable[[str, str], Array]:
 _NAME = re.compile(r"^\s*(?!(and|or|not)\s*$)[^\W\d][\w.]*(\[[^\[\]]*\])?\s*$")
 
 
-def event_mask(event: Any, base: Base) -> Quantity:
-    """Draws of an event as 0 and 1: a text, a boolean array, or a callable that returns one."""
+def event_mask(event: Any, base: Base, *, is_computed: bool = False) -> Quantity:
+    """
+    Draws of an event as 0 and 1: a text, a boolean array, or a callable that returns one.
+
+    `is_computed` says that an array was computed from these very draws.
+    """
     draws = base.draws
     label = "event"
     if isinstance(event, str):
@@ -189,6 +209,8 @@ def event_mask(event: Any, base: Base) -> Quantity:
     elif callable(event) and not hasattr(event, "shape"):
         label = _name_of(event, label)
         event = event(base.visible())
+    elif not is_computed:
+        _refuse_if_moved(base, "event")
     values = event if hasattr(event, "dims") else plain_array(event, "event")
     if values.dtype != np.bool_:
         raise QuantityError(

@@ -31,8 +31,13 @@ from steelyard.verdicts import judge
 __all__ = ["log_evidence_ratio_of", "shift_of"]
 
 
-def shift_of(scale: Scale, quantity: Quantity, of: Any) -> Estimate:
-    """Target minus base of a mean, an sd, or a quantile, with the error of the pair."""
+def shift_of(scale: Scale, quantity: Quantity, of: Any, before: Array | None = None) -> Estimate:
+    """
+    Target minus base of a mean, an sd, or a quantile, with the error of the pair.
+
+    `before` are the columns of the quantity at the base's own draws, where those of the target
+    were made from them one by one; else both sides share the draws.
+    """
     work = _read_kind(of)
     if quantity.is_event and work is not _mean_shift:
         raise ArgumentError("of", "'mean' for an event", repr(of), "A probability is a mean.")
@@ -40,7 +45,8 @@ def shift_of(scale: Scale, quantity: Quantity, of: Any) -> Estimate:
     value, spread = np.empty(columns.shape[1]), np.empty(columns.shape[1])
     parts = []
     for part, f in column_blocks(columns):
-        value[part], series, spread[part] = work(scale, f)
+        own = f if before is None else before[:, part]
+        value[part], series, spread[part] = work(scale, f, own)
         parts.append(series)
     series = joined(parts)
     if not quantity.is_event:
@@ -68,7 +74,7 @@ def _read_kind(of: Any) -> Any:
     if isinstance(of, tuple) and len(of) == 2 and of[0] == "quantile":
         p = of[1]
         if isinstance(p, int | float | np.floating) and 0 < p < 1:
-            return lambda scale, f: _quantile_shift(scale, f, float(p))
+            return lambda scale, f, own: _quantile_shift(scale, f, own, float(p))
     raise ArgumentError(
         "of", "'mean', 'sd' or ('quantile', p) with 0 < p < 1", repr(of), "Choose one of them."
     )
@@ -82,22 +88,30 @@ def _pair(scale: Scale, psi1: Array, psi0: Array) -> tuple[Series, Array]:
     return series, np.sqrt(_core.mean_square(z))
 
 
-def _mean_shift(scale: Scale, f: Array) -> tuple[Array, Series, Array]:
-    f, unit = in_unit(f)
+def _mean_shift(scale: Scale, f: Array, own: Array) -> tuple[Array, Series, Array]:
+    f, own, unit = _in_one_unit(f, own)
     one, _ = moments(scale, f)
-    zero, _ = moments(scale, f, scale.base_weights.linear)
-    series, spread = _pair(scale, f - one, f - zero)
+    zero, _ = moments(scale, own, scale.base_weights.linear)
+    series, spread = _pair(scale, f - one, own - zero)
     return _times(one - zero, unit), series.times(unit), _times(spread, unit)
 
 
-def _sd_shift(scale: Scale, f: Array) -> tuple[Array, Series, Array]:
-    def psi(mean: Array, sd: Array) -> Array:
+def _in_one_unit(f: Array, own: Array) -> tuple[Array, Array, Array]:
+    if own is f:
+        f, unit = in_unit(f)
+        return f, f, unit
+    both, unit = in_unit(np.concatenate([f, own]))
+    return both[: len(f)], both[len(f) :], unit
+
+
+def _sd_shift(scale: Scale, f: Array, own: Array) -> tuple[Array, Series, Array]:
+    def psi(f: Array, mean: Array, sd: Array) -> Array:
         return ((f - mean) ** 2 - sd**2) / np.where(sd > 0, 2 * sd, 1.0)
 
-    f, unit = in_unit(f)
+    f, own, unit = _in_one_unit(f, own)
     one = moments(scale, f)
-    zero = moments(scale, f, scale.base_weights.linear)
-    series, spread = _pair(scale, psi(*one), psi(*zero))
+    zero = moments(scale, own, scale.base_weights.linear)
+    series, spread = _pair(scale, psi(f, *one), psi(own, *zero))
     return _times(one[1] - zero[1], unit), series.times(unit), _times(spread, unit)
 
 
@@ -107,7 +121,7 @@ def _times(values: Array, unit: Array) -> Array:
         return np.asarray(values * unit)
 
 
-def _quantile_shift(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Array]:
+def _quantile_shift(scale: Scale, f: Array, own: Array, p: float) -> tuple[Array, Series, Array]:
     """
     Shift of a quantile; influence ``−(1{x ≤ q} − p)/density(q)``.
 
@@ -116,15 +130,15 @@ def _quantile_shift(scale: Scale, f: Array, p: float) -> tuple[Array, Series, Ar
     """
     ends, slopes, influences = [], [], []
     reached = np.ones(f.shape[1], dtype=np.bool_)
-    for weights in (scale.weights, scale.base_weights):
+    for weights, x in ((scale.weights, f), (scale.base_weights, own)):
         w = weights.linear
-        q = _core.quantile(f, w, np.full((1, f.shape[1]), p))[0]
-        below = np.where(f == q, 0.5, (f < q).astype(np.float64))
+        q = _core.quantile(x, w, np.full((1, x.shape[1]), p))[0]
+        below = np.where(x == q, 0.5, (x < q).astype(np.float64))
         psi = below - _core.weighted_mean(below, w)
         half = np.maximum(study(scale, psi, w, weights.raw).error, 2 / weights.effective_size)
         reached &= (p - half > 0) & (p + half < 1)
         probs = np.clip(np.stack([p - half, p + half]), 0.0, 1.0)
-        low, high = _core.quantile(f, w, probs)
+        low, high = _core.quantile(x, w, probs)
         ends.append(q)
         with np.errstate(over="ignore"):
             slopes.append((high / 2 - low / 2) / ((probs[1] - probs[0]) / 2))

@@ -56,6 +56,9 @@ class Base:
         Whether the draws came from an approximation, which `log_weights` correct.
     withheld : frozenset of str
         Predictive draws that the change at hand makes unusable.
+    is_moved : bool
+        Whether the draws are no longer those that the user gave, so that arrays aligned with those
+        do not belong to them.
     """
 
     draws: Draws
@@ -68,6 +71,7 @@ class Base:
     predictive: Mapping[str, str] = field(default_factory=dict)
     is_approximate: bool = False
     withheld: frozenset[str] = frozenset()
+    is_moved: bool = False
 
     @property
     def parameters(self) -> tuple[str, ...]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
@@ -39,11 +39,17 @@ def _product(factors: tuple[Any, ...]) -> Any:
 
 @dataclass(frozen=True, eq=False)
 class PriorTarget:
-    """What becomes of one prior term: another density, a factor, or both."""
+    """
+    What becomes of one prior term: another density, a factor, or both.
+
+    `base` and `density` are resolved at the draws; `given` is the new term as it was stated, which
+    can be evaluated elsewhere (None where the term is not swapped).
+    """
 
     base: PriorTerm
     density: PriorTerm
     factors: tuple[float, ...] = ()
+    given: PriorTerm | None = None
 
     @property
     def factor(self) -> float:
@@ -108,8 +114,9 @@ def _merge_swap_prior(draft: Draft, edit: SwapPrior) -> None:
             f"swap_prior[{label!r}]", "each term replaced once", "twice", "Keep one replacement."
         )
     draws = draft.base.draws
-    new = read_term(stated[label].key, edit.density, draws, "swap_prior").resolved(draws)
-    draft.prior[label] = PriorTarget(stated[label].resolved(draws), new)
+    given = read_term(stated[label].key, edit.density, draws, "swap_prior")
+    old, new = stated[label].resolved(draws), given.resolved(draws)
+    draft.prior[label] = PriorTarget(old, new, given=given)
     if stated[label].is_discrete is False and new.is_discrete:
         raise ChangeError(
             f"swap_prior[{label!r}]",
@@ -129,7 +136,7 @@ def _merge_power(draft: Draft, edit: Power) -> None:
             known_term(label, stated, "power: prior", "prior")
             same = stated[label].resolved(draft.base.draws)
             old = draft.prior.get(label, PriorTarget(same, same))
-            draft.prior[label] = PriorTarget(old.base, old.density, (*old.factors, factor))
+            draft.prior[label] = replace(old, factors=(*old.factors, factor))
     if isinstance(likelihood, Mapping) or likelihood != 1:
         # Added terms belong to the target's likelihood, so a common power takes them too.
         names = {**_stated(draft.base, "power: likelihood"), **draft.loglik}

@@ -33,11 +33,14 @@ class NoisyTerm(LoglikTerm):
         What the sd is multiplied by.
     log_sd : numpy.ndarray
         Log of the old sd, broadcasts against ``(n, observations)``.
+    sd : float, array_like, str or callable
+        The old sd as it was given, which can be found at other points.
     """
 
     plain: LoglikTerm | None = None
     noise_factor: float = 1.0
     log_sd: Array | None = None
+    sd: Any = None
 
     def blocks(self, draws: Draws) -> Iterator[tuple[slice, Array]]:
         """Values ``(L + log s + c)/f² − log(f s) − c`` by block."""
@@ -69,6 +72,7 @@ def raised(term: LoglikTerm, factor: float, sd: Any, draws: Draws) -> NoisyTerm:
         term,
         factor,
         log_sd,
+        sd,
     )
 
 

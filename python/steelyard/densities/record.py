@@ -62,7 +62,7 @@ class Record:
     @property
     def numbers(self) -> tuple[str, ...]:
         """Hyperparameters that are numbers or names, as opposed to distributions."""
-        return _numbers(type(self))
+        return _numbers(type(self))  # type: ignore[arg-type]
 
     def _argument(self, name: str) -> str:
         return f"{type(self).__name__}: {name}"

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import numpy.typing as npt
 
+from steelyard.answers.bands import batch_edges
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import MANY
 from steelyard.arrays import Frozen, ReadOnly
@@ -23,12 +24,8 @@ from steelyard.errors import ArgumentError, ArgumentTypeError, UnknownNameError
 from steelyard.levels import LEVELS
 from steelyard.planning.scenarios import Plan, read_scenarios
 from steelyard.planning.shares import best_shares, costs_of
-from steelyard.sensitivity.nodes import (
-    algebra_findings,
-    own_weights,
-    weigh_nodes,
-    weight_findings,
-)
+from steelyard.sensitivity.nodes import Columns, Study, own_weights, weight_findings
+from steelyard.sensitivity.targets import Targets
 from steelyard.table import Table
 from steelyard.verdicts import Finding, Verdict, judge
 from steelyard.weighing.series import (
@@ -265,15 +262,17 @@ class _Problem:
 
     def __init__(self, base: Base, names: tuple[str, ...], targets: list[Target]) -> None:
         self.base, self.names = base, names
-        ratios = np.stack([target.log_ratio for target in targets], axis=1)
+        ratios = np.stack([target.log_ratio for target in targets])
         own = own_weights(base)
-        nodes = weigh_nodes(base, np.ascontiguousarray(ratios), own)
-        self.findings = [*weight_findings(nodes), *algebra_findings(base, targets)]
+        study = Study(base, own, Columns.none(base), batch_edges(base.draws), keep=True)
+        found = study.of(ratios)
+        assert found.weights is not None
+        self.findings = [*weight_findings(found.about, base), *Targets(base).findings(targets)]
         ranks = np.full(len(names), 2)
         for finding in self.findings:
             ranks = np.minimum(ranks, finding.rank)
         self.far = ranks == 0
-        self.weights = np.concatenate([own.linear[:, None], nodes.linear], axis=1)
+        self.weights = np.concatenate([own.linear[:, None], found.weights.T], axis=1)
         # A scenario out of reach is served by its own refit alone, and serves no other: it lives
         # on a draw of its own.
         count = len(names)

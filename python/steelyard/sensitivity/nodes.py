@@ -67,6 +67,11 @@ class Columns:
     efficiency: Array
 
     @classmethod
+    def none(cls, base: Base) -> Columns:
+        """No columns, where only the weights are asked for."""
+        return cls(np.empty((0, base.draws.size)), *(np.empty(0) for _ in range(4)))
+
+    @classmethod
     def of(cls, quantities: Sequence[Quantity], base: Base, own: Weights) -> Columns:
         """All columns of several quantities."""
         columns = np.concatenate([q.columns for q in quantities], axis=1)

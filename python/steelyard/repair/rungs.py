@@ -1,0 +1,259 @@
+"""The rungs by name, in order of price: each makes an answer, or says why it did not."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from steelyard.answers import Answer, Estimate, reweigh
+from steelyard.answers.estimating import Scale
+from steelyard.answers.moved import Moved
+from steelyard.base import Base
+from steelyard.base.draws import Array
+from steelyard.base.ratios import refuse_bad_ratio
+from steelyard.errors import (
+    ArgumentTypeError,
+    ChangeError,
+    LikelihoodError,
+    PriorError,
+    SteelyardError,
+)
+from steelyard.repair.collapsing import collapse, collapse_plan
+from steelyard.repair.evaluating import at_draws
+from steelyard.repair.matching import match_moments
+from steelyard.repair.pooling import pool_records
+from steelyard.repair.tempered import Tempered
+from steelyard.repair.tempering import temper
+from steelyard.verdicts import Finding, judge
+from steelyard.weighing.supports import support_findings
+from steelyard.weighing.trust import shared_findings, weight_findings
+from steelyard.weighing.weigh import Weights, base_weights, weigh_ratio
+
+if TYPE_CHECKING:
+    from steelyard.repair.climbing import Climb
+
+__all__ = [
+    "EMPTY",
+    "INTERRUPTED",
+    "MOVING",
+    "RUNGS",
+    "Outcome",
+    "moved_answer",
+    "not_possible",
+    "smoothing_cost",
+]
+
+INTERRUPTED = "stopped by Ctrl-C"
+EMPTY = "the limit was reached"
+# Fewer are too few for the islands that the errors come from.
+_LEAST_PARTICLES = 1000
+
+
+@dataclass(frozen=True, eq=False)
+class Outcome:
+    """
+    What a rung gave: an answer, or why there is none.
+
+    `evaluations` are those that the shared counter does not know of; `applies` is False for a rung
+    that has nothing to do with the change.
+    """
+
+    answer: Answer | None
+    stopped: str = ""
+    evaluations: int = 0
+    applies: bool = True
+
+
+def smoothing(climb: Climb) -> Outcome:
+    """The base's own draws, their largest weights smoothed."""
+    return Outcome(climb.plain)
+
+
+def smoothing_cost(climb: Climb) -> int:
+    """Draws at which a callable term of the change was evaluated."""
+    target = climb.plain._target
+    called = target is not None and any(
+        callable(term.density.source) and term.density is not term.base
+        for term in target.loglik.values()
+    )
+    return climb.record.draws.size if called else 0
+
+
+def moment_matching(climb: Climb) -> Outcome:
+    """The draws moved by affine maps."""
+    evaluator = climb.evaluator
+    matched = match_moments(climb.record, climb.start, evaluator.both, climb.purse)
+    if matched is None:
+        return Outcome(None, "" if climb.purse.is_empty else "no map made the tail lighter")
+    record = evaluator.at(matched.x, climb.record.draws)
+    how = f"mapped by {len(matched.steps)} affine maps, {matched.steps[-1]} last"
+    findings = (
+        *weight_findings(matched.weights, record.draws, record.ordered),
+        *shared_findings(matched.weights, record.draws, record.ordered),
+        *matched.findings,
+    )
+    return Outcome(
+        moved_answer(climb, record, matched.weights, matched.ratio, how, findings, is_paired=True)
+    )
+
+
+def collapsing(climb: Climb) -> Outcome:
+    """The effects of a group whose family changes, integrated out and drawn anew."""
+    record = climb.record
+    try:
+        plan = collapse_plan(record, climb.change)
+    except (ChangeError, LikelihoodError, PriorError) as error:
+        if climb.is_explicit:
+            raise
+        return Outcome(None, not_possible(error), applies=not isinstance(error, ChangeError))
+    try:
+        found = collapse(plan, climb.purse, climb.generator("collapse"))
+    except ChangeError as error:
+        if climb.is_explicit:
+            raise
+        return Outcome(None, not_possible(error))
+    if found is None:
+        return Outcome(None)
+    refuse_bad_ratio(found.log_ratio, found.draws, "collapse")
+    weights = weigh_ratio(found.log_ratio, record.log_weights, record.draws, ordered=record.ordered)
+    moved = at_draws(record, found.draws)
+    findings = (
+        *weight_findings(weights, record.draws, record.ordered),
+        *shared_findings(weights, record.draws, record.ordered),
+    )
+    how = f"effects {found.name!r} integrated out and drawn anew"
+    return Outcome(moved_answer(climb, moved, weights, found.ratio, how, findings, is_paired=True))
+
+
+def not_possible(error: SteelyardError) -> str:
+    """What bars a rung, in a line."""
+    return f"not possible: {error.argument} is {error.came}"
+
+
+# Batches between two looks at the clock.
+_BATCHES = 10
+# Conditional effective size that a temperature keeps: at first, and where that was too little.
+_EFFICIENCIES = (0.9, 0.97)
+
+
+def tempering(climb: Climb) -> Outcome:
+    """The draws moved by temperatures."""
+    record, evaluator, purse = climb.record, climb.evaluator, climb.purse
+    particles = max(record.draws.size, _LEAST_PARTICLES)
+    if not purse.allows(particles):
+        return Outcome(None)
+    run = _run(climb, _EFFICIENCIES[0], particles)
+    if run.finished and not run.verdict.is_sound and purse.allows(particles):
+        # Once more with temperatures that lie closer; the better run counts.
+        again = _run(climb, _EFFICIENCIES[1], particles)
+        run = again if again.finished and again.verdict.level > run.verdict.level else run
+    answer = run.answer()
+    how = f"tempered over {len(run.history)} temperatures in {run.islands} islands"
+    moved = replace(evaluator.at(run.points, run.draws), ordered=True)
+    made = moved_answer(
+        climb,
+        moved,
+        answer._weights,
+        run._standing[0].ratio,
+        how,
+        answer._findings,
+        is_paired=False,
+        log_constant=run.bridged_constant if run.finished else run.log_constant,
+    )
+    said = "" if run.finished else INTERRUPTED if run.stopped == "Ctrl-C" else EMPTY
+    return Outcome(made, said)
+
+
+def pooling(climb: Climb) -> Outcome:
+    """The draws of other fits of the same data beside those of the base."""
+    if not climb.fits:
+        return Outcome(None, applies=False)
+    records = [climb.record, *(_record_of(fit) for fit in climb.fits)]
+    count = sum(record.draws.size for record in records)
+    # Callables are asked for every fit at the draws of all.
+    cost = len(records) * count
+    if not climb.purse.allows(cost):
+        return Outcome(None)
+    labels = ["base", *(f"fit {number}" for number in range(2, len(records) + 1))]
+    pooled = pool_records(records, labels)
+    answer = reweigh(replace(pooled.record, is_moved=True), climb.change)
+    note = judge("draws_moved", how=f"pooled with those of {len(climb.fits)} other fits")
+    return Outcome(replace(answer, _findings=(*answer._findings, note)), "", cost)
+
+
+def _record_of(fit: Any) -> Base:
+    record = fit if isinstance(fit, Base) else getattr(fit, "_record", None)
+    if not isinstance(record, Base):
+        raise ArgumentTypeError("fits", "fits", type(fit).__name__, "Make them with sy.Fit(…).")
+    return record
+
+
+def _run(climb: Climb, efficiency: float, particles: int) -> Tempered:
+    """One run from the base draws to the target, within the limits."""
+    purse = climb.purse
+    run = temper(
+        climb.start,
+        climb.evaluator.base,
+        climb.evaluator.target,
+        start_log_weights=climb.record.log_weights,
+        size=particles,
+        efficiency=efficiency,
+        most_evaluations=particles,
+        rng=climb.generator("tempering"),
+    )
+    while not run.finished and run.stopped != "Ctrl-C":
+        purse.tell()
+        if not purse.allows(1):
+            break
+        more = int(min(_BATCHES * len(run.points), purse.left))
+        before = run.evaluations
+        run = run.resume(most_evaluations=before + more)
+        if run.evaluations == before and not run.finished:
+            purse.is_empty = True
+            break
+    return run
+
+
+def moved_answer(
+    climb: Climb,
+    record: Base,
+    weights: Weights,
+    log_ratio: Array,
+    how: str,
+    findings: tuple[Finding, ...],
+    *,
+    is_paired: bool,
+    log_constant: Estimate | None = None,
+) -> Answer:
+    """The answer of draws that are not the base's own."""
+    own = base_weights(climb.record)
+    origin = Scale(climb.record, own, own, ())
+    target = climb.plain._target
+    supports = () if target is None else support_findings(climb.record, target)
+    notes = [f for f in climb.plain._findings if f.code in ("base_unverified", "support_unknown")]
+    found = (*findings, *supports, *notes, judge("draws_moved", how=how))
+    unique = {(f.code, tuple(f.words.items())): f for f in found}
+    base = own if is_paired else weights
+    return Answer(
+        record,
+        weights,
+        base,
+        tuple(unique.values()),
+        climb.change,
+        target,
+        Moved(origin, is_paired, np.array(log_ratio), log_constant),
+    )
+
+
+RUNGS: Mapping[str, Callable[[Climb], Outcome]] = {
+    "smoothing": smoothing,
+    "collapse": collapsing,
+    "moment matching": moment_matching,
+    "pooling": pooling,
+    "tempering": tempering,
+}
+# Those that evaluate the densities at new points.
+MOVING = ("moment matching", "tempering")

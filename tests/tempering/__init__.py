@@ -1,0 +1,1 @@
+"""Tempering: what it finds, how it stops and goes on, and what it refuses."""
