@@ -27,6 +27,7 @@ NAMES = (
     "swap",
     "densities",
     "deletion",
+    "leave_out_errors",
     "memory",
 )
 
