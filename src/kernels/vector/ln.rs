@@ -9,6 +9,8 @@
 //! closely around 1): at most 0.77 ulp with fused multiply-add, 0.86 ulp without; the two differ in
 //! 2 % of the results, by the last bit.
 
+use std::f64::consts::LN_2;
+
 use super::{Arithmetic, Work, dispatch};
 
 /// `log 2`, its first 33 bits: times any exponent it is exact.
@@ -42,18 +44,39 @@ pub fn is_ordinary(x: f64) -> bool {
 #[inline(always)]
 pub fn ln<A: Arithmetic>(x: f64) -> f64 {
     let (k, f) = parts(x);
-    series::<A>(k, f, f / (2.0 + f))
+    let s = f / (2.0 + f);
+    let half = 0.5 * f;
+    let rest = remainder::<A>(s);
+    let small = A::mul_add(s, A::mul_add(half, f, rest), k * LN_2_LOW);
+    A::mul_add(k, LN_2_HIGH, f - A::mul_add(half, f, -small))
 }
 
-/// `log x` and `log y`, as [`ln`] but for a rounding: a division costs as much as all the rest, and
-/// here both share one.
+/// `log x` and `log y` where [`is_ordinary`], within 2 units of the last place or `2e-16`: a
+/// division costs as much as half a logarithm, and here both share one.
 #[inline(always)]
 pub fn ln_two<A: Arithmetic>(x: f64, y: f64) -> (f64, f64) {
     let ((k, f), (l, g)) = (parts(x), parts(y));
     let (below_f, below_g) = (2.0 + f, 2.0 + g);
     let share = 1.0 / (below_f * below_g);
-    let first = series::<A>(k, f, f * (below_g * share));
-    (first, series::<A>(l, g, g * (below_f * share)))
+    let (s, t) = (f * (below_g * share), g * (below_f * share));
+    (artanh::<A>(k, s), artanh::<A>(l, t))
+}
+
+/// `k log 2 + 2 artanh s`.
+#[inline(always)]
+fn artanh<A: Arithmetic>(k: f64, s: f64) -> f64 {
+    let log = A::mul_add(s, remainder::<A>(s), s + s);
+    A::mul_add(k, LN_2, log)
+}
+
+/// `R(s²)` of the head of this file.
+#[inline(always)]
+fn remainder<A: Arithmetic>(s: f64) -> f64 {
+    let u = s * s;
+    let v = u * u;
+    let even = A::mul_add(v, A::mul_add(v, A::mul_add(v, R[6], R[4]), R[2]), R[0]);
+    let odd = A::mul_add(v, A::mul_add(v, R[5], R[3]), R[1]);
+    A::mul_add(u, even, v * odd)
 }
 
 /// `k` and `f` of the head of this file.
@@ -67,18 +90,6 @@ fn parts(x: f64) -> (f64, f64) {
     let moved = (above >> 52) ^ 0x800;
     let k = f64::from_bits(moved | TWO_52.to_bits()) - (TWO_52 + 2048.0);
     (k, z - 1.0)
-}
-
-#[inline(always)]
-fn series<A: Arithmetic>(k: f64, f: f64, s: f64) -> f64 {
-    let u = s * s;
-    let v = u * u;
-    let even = A::mul_add(v, A::mul_add(v, A::mul_add(v, R[6], R[4]), R[2]), R[0]);
-    let odd = A::mul_add(v, A::mul_add(v, R[5], R[3]), R[1]);
-    let half = 0.5 * f;
-    let rest = A::mul_add(u, even, v * odd);
-    let small = A::mul_add(s, A::mul_add(half, f, rest), k * LN_2_LOW);
-    A::mul_add(k, LN_2_HIGH, f - A::mul_add(half, f, -small))
 }
 
 /// Writes `log x` into `out`, of equal length: `−inf` at 0, NaN below.
