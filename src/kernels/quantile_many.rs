@@ -11,51 +11,56 @@ pub const LANES: usize = 8;
 /// Draws between two running sums that are kept.
 const BLOCK: usize = 32;
 
+/// The weights of a draw, in a cache line of their own.
+#[derive(Clone)]
+#[repr(align(64))]
+struct Row([f64; LANES]);
+
 /// Up to [`LANES`] sets of weights, one row a draw, so that one load brings all of them.
 pub struct Weights {
-    rows: Vec<[f64; LANES]>,
+    rows: Vec<Row>,
     legal: [bool; LANES],
 }
 
 impl Weights {
     /// The columns of `w`, shape `(n, m)` with `m` at most [`LANES`]; missing ones are 0.
     pub fn new(w: ArrayView2<'_, f64>) -> Self {
-        let none = Self::of(vec![[0.0; LANES]; w.nrows()]);
+        let none = Self::of(vec![Row([0.0; LANES]); w.nrows()]);
         Self::sets(w).into_iter().next().unwrap_or(none)
     }
 
     /// The columns of `w`, shape `(n, m)`, [`LANES`] by [`LANES`]: a row is read in one go.
     pub fn sets(w: ArrayView2<'_, f64>) -> Vec<Self> {
         let count = w.ncols().div_ceil(LANES);
-        let mut sets = vec![vec![[0.0; LANES]; w.nrows()]; count];
+        let mut sets = vec![vec![Row([0.0; LANES]); w.nrows()]; count];
         for (draw, row) in w.rows().into_iter().enumerate() {
             let mut done = 0;
             if let Some(row) = row.to_slice() {
                 let whole = row.as_chunks::<LANES>().0;
                 for (set, lanes) in sets.iter_mut().zip(whole) {
-                    set[draw] = *lanes;
+                    set[draw].0 = *lanes;
                 }
                 done = whole.len() * LANES;
             }
             for (column, weight) in row.iter().enumerate().skip(done) {
-                sets[column / LANES][draw][column % LANES] = *weight;
+                sets[column / LANES][draw].0[column % LANES] = *weight;
             }
         }
         sets.into_iter().map(Self::of).collect()
     }
 
-    fn of(rows: Vec<[f64; LANES]>) -> Self {
+    fn of(rows: Vec<Row>) -> Self {
         let legal = dispatch(Legal(&rows));
         Self { rows, legal }
     }
 
     fn lane(&self, lane: usize) -> Vec<f64> {
-        self.rows.iter().map(|row| row[lane]).collect()
+        self.rows.iter().map(|row| row.0[lane]).collect()
     }
 }
 
 /// Whether all weights of a lane are finite and not negative.
-struct Legal<'a>(&'a [[f64; LANES]]);
+struct Legal<'a>(&'a [Row]);
 
 impl Work for Legal<'_> {
     type Output = [bool; LANES];
@@ -65,7 +70,7 @@ impl Work for Legal<'_> {
         let mut bad = [0_u64; LANES];
         for row in self.0 {
             for lane in 0..LANES {
-                bad[lane] |= u64::from(!(0.0..=f64::MAX).contains(&row[lane]));
+                bad[lane] |= u64::from(!(0.0..=f64::MAX).contains(&row.0[lane]));
             }
         }
         bad.map(|bad| bad == 0)
@@ -110,7 +115,7 @@ pub fn quantiles(
 /// Sums of the weights before each block of sorted draws, and the totals last.
 struct RunningSums<'a> {
     order: &'a [u32],
-    rows: &'a [[f64; LANES]],
+    rows: &'a [Row],
 }
 
 impl Work for RunningSums<'_> {
@@ -126,13 +131,13 @@ impl Work for RunningSums<'_> {
             let [mut a, mut b, mut c, mut d] = [[0.0; LANES]; 4];
             let (groups, rest) = block.as_chunks::<4>();
             for [i, j, k, l] in groups {
-                add(&mut a, &self.rows[*i as usize]);
-                add(&mut b, &self.rows[*j as usize]);
-                add(&mut c, &self.rows[*k as usize]);
-                add(&mut d, &self.rows[*l as usize]);
+                add(&mut a, &self.rows[*i as usize].0);
+                add(&mut b, &self.rows[*j as usize].0);
+                add(&mut c, &self.rows[*k as usize].0);
+                add(&mut d, &self.rows[*l as usize].0);
             }
             for index in rest {
-                add(&mut a, &self.rows[*index as usize]);
+                add(&mut a, &self.rows[*index as usize].0);
             }
             add(&mut a, &b);
             add(&mut c, &d);
@@ -222,14 +227,14 @@ impl Sorted<'_> {
 
 struct Search<'a> {
     column: &'a Sorted<'a>,
-    rows: &'a [[f64; LANES]],
+    rows: &'a [Row],
     sums: &'a [[f64; LANES]],
     lane: usize,
 }
 
 impl Search<'_> {
     fn weight(&self, place: usize) -> f64 {
-        self.rows[self.column.order[place] as usize][self.lane]
+        self.rows[self.column.order[place] as usize].0[self.lane]
     }
 
     fn value(&self, place: usize) -> f64 {
