@@ -44,6 +44,10 @@ pub(super) fn gather<E: Entry>(
         for (column, entries) in view.columns().into_iter().enumerate() {
             interrupt.check()?;
             let target = &mut buffer[column * distance..];
+            if let Some(entries) = entries.to_slice().and_then(E::as_wide) {
+                target[..entries.len()].copy_from_slice(entries);
+                continue;
+            }
             for (target, entry) in target.iter_mut().zip(entries) {
                 *target = entry.wide();
             }
