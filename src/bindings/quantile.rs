@@ -13,6 +13,9 @@ use crate::kernels::ordered::{Interrupt, map_tasks};
 use crate::kernels::quantile_many::{LANES, Sorted, Weights, quantiles};
 use crate::kernels::sorting;
 
+/// Sets of weights of a task.
+const TOGETHER: usize = 4 * LANES;
+
 /// Indices of every column of `x`, `(n, k)`, in ascending order of value: `(n, k)`.
 #[pyfunction]
 pub fn sort_order<'py>(py: Python<'py>, x: Numbers<'py>) -> PyResult<Bound<'py, PyArray2<i32>>> {
@@ -108,22 +111,23 @@ fn under_each(
         .iter()
         .map(|(x, order)| Sorted::new(x, order))
         .collect();
-    let parts: Vec<ArrayView2<'_, f64>> = w.axis_chunks_iter(Axis(1), LANES).collect();
+    let parts: Vec<ArrayView2<'_, f64>> = w.axis_chunks_iter(Axis(1), TOGETHER).collect();
     let found = map_tasks(parts, interrupt, |part| {
-        let weights = Weights::new(part);
         let mut out = Array3::zeros((probs.len(), part.ncols(), columns.len()));
-        for (index, column) in columns.iter().enumerate() {
-            interrupt.check()?;
-            quantiles(column, &weights, probs, |lane, level, value| {
-                if let Some(target) = out.get_mut((level, lane, index)) {
-                    *target = value;
-                }
-            });
+        for (set, weights) in Weights::sets(part).iter().enumerate() {
+            for (index, column) in columns.iter().enumerate() {
+                interrupt.check()?;
+                quantiles(column, weights, probs, |lane, level, value| {
+                    if let Some(target) = out.get_mut((level, set * LANES + lane, index)) {
+                        *target = value;
+                    }
+                });
+            }
         }
         Ok(out)
     })?;
     let mut out = Array3::zeros((probs.len(), w.ncols(), columns.len()));
-    for (mut into, part) in out.axis_chunks_iter_mut(Axis(1), LANES).zip(found) {
+    for (mut into, part) in out.axis_chunks_iter_mut(Axis(1), TOGETHER).zip(found) {
         into.assign(&part);
     }
     Ok(out)

@@ -6,7 +6,13 @@ use super::quantile::Compensated;
 use super::vector::{Arithmetic, Work, dispatch};
 
 /// Weights whose sum is formed before their running sums.
-const BLOCK: usize = 256;
+const BLOCK: usize = 64;
+
+/// Blocks whose running sums are formed side by side: a sum waits for the one before.
+const TOGETHER: usize = 4;
+
+/// Most shares that are handed over at a time.
+pub const SHARES: usize = BLOCK * TOGETHER;
 
 /// Non-negative weights with the running sums of their blocks.
 pub struct Cumulated<'a> {
@@ -50,6 +56,11 @@ impl<'a> Cumulated<'a> {
         self.weights.is_empty()
     }
 
+    /// The last draw with weight.
+    pub fn last(&self) -> usize {
+        self.last
+    }
+
     /// The weights in a unit of which [`Self::total`] is the sum.
     pub fn scaled(&self) -> impl Iterator<Item = f64> {
         self.weights.iter().map(|weight| weight * self.scale)
@@ -64,19 +75,24 @@ impl<'a> Cumulated<'a> {
     /// including draw `s`. Shares never fall, stay where a weight is 0, and end with `whole`.
     pub fn shares(&self, whole: f64, mut each: impl FnMut(usize, &[f64])) {
         let factor = whole / self.total();
-        let mut shares = [0.0; BLOCK];
-        for (block, weights) in self.weights.chunks(BLOCK).enumerate() {
-            let first = block * BLOCK;
+        let mut shares = [0.0; SHARES];
+        for (group, weights) in self.weights.chunks(SHARES).enumerate() {
+            let first = group * SHARES;
             let shares = &mut shares[..weights.len()];
-            let end = (self.before[block + 1] * factor).min(whole);
-            let mut running = self.before[block];
-            for (share, weight) in shares.iter_mut().zip(weights) {
-                running += weight * self.scale;
-                *share = (running * factor).min(end);
+            let before = &self.before[group * TOGETHER..];
+            self.running(weights, before, shares);
+            let blocks = shares.chunks_mut(BLOCK).zip(weights.chunks(BLOCK));
+            for ((shares, weights), end) in blocks.zip(&before[1..]) {
+                let end = (end * factor).min(whole);
+                dispatch(Scaled {
+                    shares,
+                    factor,
+                    end,
+                });
+                // The end of a block is the start of the next, else a weight of 0 there could gain.
+                let positive = weights.iter().rposition(|&weight| weight > 0.0);
+                shares[positive.unwrap_or(0)..].fill(end);
             }
-            // The end of a block is the start of the next, else a weight of 0 there could gain.
-            let positive = weights.iter().rposition(|&weight| weight > 0.0);
-            shares[positive.unwrap_or(0)..].fill(end);
             if self.last < first + weights.len() {
                 shares[self.last.saturating_sub(first)..].fill(whole);
             }
@@ -84,25 +100,113 @@ impl<'a> Cumulated<'a> {
         }
     }
 
+    /// The running sums of each block, from those `before` it on.
+    fn running(&self, weights: &[f64], before: &[f64], sums: &mut [f64]) {
+        let whole: Option<&mut [f64; SHARES]> = sums.first_chunk_mut();
+        if let (Some(sums), Some(weights), Some(before)) =
+            (whole, weights.first_chunk::<SHARES>(), before.first_chunk())
+        {
+            let mut running: [f64; TOGETHER] = *before;
+            for place in 0..BLOCK {
+                for (block, running) in running.iter_mut().enumerate() {
+                    *running += weights[block * BLOCK + place] * self.scale;
+                    sums[block * BLOCK + place] = *running;
+                }
+            }
+            return;
+        }
+        let blocks = sums.chunks_mut(BLOCK).zip(weights.chunks(BLOCK));
+        for ((sums, weights), before) in blocks.zip(before) {
+            let mut running = *before;
+            for (sum, weight) in sums.iter_mut().zip(weights) {
+                running += weight * self.scale;
+                *sum = running;
+            }
+        }
+    }
+
     /// Replaces each of `positions`, the bits of numbers that rise from 0 to `whole`, by the first
     /// index whose share of `whole` lies above it; by the last index with weight where none does.
     pub fn merge(&self, positions: &mut [i64], whole: f64) {
         let mut reached = 0;
-        let mut ahead = positions.first().copied().unwrap_or(0);
         self.shares(whole, |first, shares| {
-            let mut place = 0;
-            // One step of a merge without a branch: which list is ahead cannot be predicted. Numbers
-            // that are not negative compare as their bits do, which is quicker.
-            while place < shares.len() && reached < positions.len() && first <= self.last {
-                let above = ahead < shares[place].to_bits() as i64;
-                let index = (first + place) as i64;
-                positions[reached] = if above { index } else { ahead };
-                reached += usize::from(above);
-                place += usize::from(!above);
-                ahead = positions.get(reached).copied().unwrap_or(0);
-            }
+            let rest = &mut positions[reached..];
+            let middle = shares.len() / 2;
+            let early = below(rest, shares[..middle].last().copied().unwrap_or(0.0));
+            let (early, later) = rest.split_at_mut(early);
+            let late = below(later, shares.last().copied().unwrap_or(0.0));
+            let late = &mut later[..late];
+            reached += early.len() + late.len();
+            let (low, high) = shares.split_at(middle);
+            merge_two(
+                Cursor::new(early, low, first),
+                Cursor::new(late, high, first + middle),
+            );
         });
         positions[reached..].fill(self.last as i64);
+    }
+}
+
+/// How many of `positions`, rising, lie below `share`: most likely a few hundred.
+fn below(positions: &[i64], share: f64) -> usize {
+    // Numbers that are not negative compare as their bits do, which is quicker.
+    let bits = share.to_bits() as i64;
+    let mut end = SHARES;
+    while positions.get(end).is_some_and(|&position| position < bits) {
+        end *= 2;
+    }
+    let near = &positions[..end.min(positions.len())];
+    near.partition_point(|&position| position < bits)
+}
+
+/// A merge under way: every position lies below the last share.
+struct Cursor<'a> {
+    positions: &'a mut [i64],
+    shares: &'a [f64],
+    first: usize,
+    reached: usize,
+    place: usize,
+}
+
+impl<'a> Cursor<'a> {
+    fn new(positions: &'a mut [i64], shares: &'a [f64], first: usize) -> Self {
+        Self {
+            positions,
+            shares,
+            first,
+            reached: 0,
+            place: 0,
+        }
+    }
+
+    #[inline(always)]
+    fn is_open(&self) -> bool {
+        self.reached < self.positions.len() && self.place < self.shares.len()
+    }
+
+    /// One step without a branch: which list is ahead cannot be predicted.
+    #[inline(always)]
+    fn step(&mut self) {
+        let position = &mut self.positions[self.reached];
+        let above = *position < self.shares[self.place].to_bits() as i64;
+        let index = (self.first + self.place) as i64;
+        *position = if above { index } else { *position };
+        self.reached += usize::from(above);
+        self.place += usize::from(!above);
+    }
+}
+
+/// Both merges, in turns: a step waits for the one before.
+fn merge_two(mut low: Cursor<'_>, mut high: Cursor<'_>) {
+    while low.is_open() && high.is_open() {
+        low.step();
+        high.step();
+    }
+    while low.is_open() {
+        low.step();
+    }
+    while high.is_open() {
+        high.step();
     }
 }
 
@@ -132,9 +236,30 @@ fn block_sums(weights: &[f64], scale: f64) -> Result<(Vec<f64>, f64), KernelErro
         }
         largest = most.max(largest);
         running.add(found.sum);
-        before.push(running.value());
+        // Whatever the rounding, the sums must not fall.
+        let value = running.value();
+        before.push(before.last().map_or(value, |&last| value.max(last)));
     }
     Ok((before, largest))
+}
+
+/// Running sums to shares, at most that at the end of the block.
+struct Scaled<'a> {
+    shares: &'a mut [f64],
+    factor: f64,
+    end: f64,
+}
+
+impl Work for Scaled<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        for share in self.shares {
+            let scaled = *share * self.factor;
+            *share = if scaled < self.end { scaled } else { self.end };
+        }
+    }
 }
 
 struct BlockSum<'a> {

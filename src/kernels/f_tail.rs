@@ -19,5 +19,7 @@ pub fn f_tail(f: f64, first: f64, second: f64) -> f64 {
         return 0.0;
     }
     let z = second / (second + first * f);
-    checked_beta_reg(0.5 * second, 0.5 * first, z.clamp(0.0, 1.0)).unwrap_or(f64::NAN)
+    let tail = checked_beta_reg(0.5 * second, 0.5 * first, z.clamp(0.0, 1.0)).unwrap_or(f64::NAN);
+    // The continued fraction can end some roundings outside.
+    tail.clamp(0.0, 1.0)
 }

@@ -45,11 +45,12 @@ pub fn influence<E: Entry>(
         .collect();
     map_tasks(tasks, interrupt, |(part, mut into)| {
         let mut tile = Tile::new(quantities.ncols());
+        let mut rows = [[f64::NEG_INFINITY; TILE]; GROUP];
         for (group, strip) in part.axis_chunks_iter(Axis(0), GROUP).enumerate() {
             if group.is_multiple_of(64) {
                 interrupt.check()?;
             }
-            let rows = negative_rows(strip);
+            negative_rows(strip, &mut rows);
             let width = GROUP * quantities.ncols();
             dispatch(AddRows {
                 rows: &rows,
@@ -81,22 +82,42 @@ fn centred(
 }
 
 /// At most [`GROUP`] draws of at most [`TILE`] observations, negated; `−inf` where there is none.
-fn negative_rows<E: Entry>(strip: ArrayView2<'_, E>) -> [[f64; TILE]; GROUP] {
-    let mut rows = [[f64::NEG_INFINITY; TILE]; GROUP];
+fn negative_rows<E: Entry>(strip: ArrayView2<'_, E>, rows: &mut Rows) {
+    if strip.dim() != (GROUP, TILE) {
+        *rows = [[f64::NEG_INFINITY; TILE]; GROUP];
+    }
     if strip.strides()[1] == 1 {
         for (row, entries) in rows.iter_mut().zip(strip.outer_iter()) {
-            for (target, entry) in row.iter_mut().zip(entries) {
-                *target = -entry.wide();
+            if let Some(entries) = entries.to_slice() {
+                dispatch(Negated { entries, row });
             }
         }
-        return rows;
+        return;
     }
     for (lane, entries) in strip.columns().into_iter().enumerate() {
         for (row, entry) in rows.iter_mut().zip(entries) {
             row[lane] = -entry.wide();
         }
     }
-    rows
+}
+
+/// Draws that are added together.
+type Rows = [[f64; TILE]; GROUP];
+
+struct Negated<'a, E> {
+    entries: &'a [E],
+    row: &'a mut [f64; TILE],
+}
+
+impl<E: Entry> Work for Negated<'_, E> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        for (target, entry) in self.row.iter_mut().zip(self.entries) {
+            *target = -entry.wide();
+        }
+    }
 }
 
 /// Sums over the draws so far of the weights of each observation, `r = exp(−L − maximum)`.
@@ -119,7 +140,7 @@ impl Tile {
 
 /// Adds a group of draws to a tile; `f` holds the quantities draw after draw.
 struct AddRows<'a> {
-    rows: &'a [[f64; TILE]; GROUP],
+    rows: &'a Rows,
     f: &'a [f64],
     tile: &'a mut Tile,
 }

@@ -2,7 +2,7 @@
 
 use std::ops::Range;
 
-use super::correlation::correlations;
+use super::correlation::Spectrum;
 use super::error::KernelError;
 use super::mean::{mean, mean_square};
 use super::ordered::{Interrupt, map_tasks, sum_by};
@@ -260,22 +260,20 @@ impl<'a> Lags<'a> {
 
     /// `a_t` for every lag below the longest chain.
     fn all(&self, interrupt: &Interrupt<'_>) -> Result<Vec<f64>, KernelError> {
-        let mut all = vec![0.0; self.longest + 1];
         let scaled = |m: usize| -> Vec<f64> {
             let (root, centre) = (self.weight(m).sqrt(), self.means[m]);
             let chain = &self.z[self.chains[m].clone()];
             chain.iter().map(|entry| root * (entry - centre)).collect()
         };
         let chains: Vec<usize> = (0..self.chains.len()).collect();
+        let mut spectrum = Spectrum::new(self.longest)?;
         for two in chains.chunks(2) {
             let first = scaled(two[0]);
             let second = two.get(1).map(|&m| scaled(m)).unwrap_or_default();
-            let lags = first.len().max(second.len());
-            let found = correlations(&first, &second, lags, interrupt)?;
-            for (all, found) in all.iter_mut().zip(found) {
-                *all += found;
-            }
+            spectrum.add(&first, &second, interrupt)?;
         }
+        let mut all = spectrum.correlations(interrupt)?;
+        all.resize(self.longest + 1, 0.0);
         Ok(all)
     }
 }

@@ -8,7 +8,8 @@ use super::vector::{Arithmetic, Work, dispatch};
 /// Draws of a block.
 pub(super) const BLOCK: usize = 4096;
 
-const LANES: usize = 16;
+/// Sums that are formed side by side.
+pub(super) const LANES: usize = 16;
 
 /// `Σ_s w_s f_s` for weights `w` on the natural scale; both of shape `(n,)`.
 ///

@@ -7,9 +7,10 @@ use super::blocks::{LINE, distance, gather_strip};
 use super::columns::expect_shape;
 use super::error::KernelError;
 use super::lease::Lease;
-use super::mean::{BLOCK, Power, block_sum};
+use super::mean::{BLOCK, LANES, Power, block_sum};
 use super::ordered::{Interrupt, map_tasks, sum_by};
 use super::vector::dot::dot;
+use super::vector::{Arithmetic, Work, dispatch};
 
 /// Most columns gathered together.
 const COLUMNS: usize = 64;
@@ -106,6 +107,14 @@ fn sums(
         }
     }
     let found = map_tasks(tasks, interrupt, |(rows, w, centres)| {
+        if let Some(entries) = rows.to_slice().filter(|_| rows.ncols() > 1) {
+            return Ok(dispatch(RowSums {
+                entries,
+                w,
+                centres,
+                power,
+            }));
+        }
         let block = Block::new(rows);
         let sum = |(column, centre): (usize, &f64)| {
             block_sum(block.column(column), Some(w), *centre, power)
@@ -121,6 +130,51 @@ fn sums(
         sum_by(blocks, |block| of_part[block][column % COLUMNS])
     };
     Ok((0..f.ncols()).map(column_sum).collect())
+}
+
+/// [`block_sum`] of every column of contiguous rows, without turning them: the draws that a column
+/// adds to one lane are added to one row of sums.
+struct RowSums<'a> {
+    entries: &'a [f64],
+    w: &'a [f64],
+    centres: &'a [f64],
+    power: Power,
+}
+
+impl Work for RowSums<'_> {
+    type Output = Vec<f64>;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> Vec<f64> {
+        let columns = self.centres.len();
+        let mut sums = [[0.0; COLUMNS]; LANES];
+        let rows = self.entries.chunks_exact(columns).zip(self.w);
+        for (draw, (row, &weight)) in rows.enumerate() {
+            if weight == 0.0 {
+                continue;
+            }
+            let entries = row.iter().zip(self.centres);
+            let sums = sums[draw % LANES].iter_mut();
+            if self.power == Power::First {
+                for (sum, (entry, centre)) in sums.zip(entries) {
+                    *sum += weight * (entry - centre);
+                }
+            } else {
+                for (sum, (entry, centre)) in sums.zip(entries) {
+                    *sum += weight * ((entry - centre) * (entry - centre));
+                }
+            }
+        }
+        for half in [8, 4, 2, 1] {
+            let (low, high) = sums.split_at_mut(half);
+            for (low, high) in low.iter_mut().zip(high) {
+                for (low, high) in low.iter_mut().zip(high) {
+                    *low += *high;
+                }
+            }
+        }
+        sums[0][..columns].to_vec()
+    }
 }
 
 /// The columns of a block of rows, each contiguous.

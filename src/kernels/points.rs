@@ -3,6 +3,7 @@
 use rand::rngs::ChaCha8Rng;
 use rand::{Rng, SeedableRng};
 
+use super::cumulated::SHARES;
 use super::error::KernelError;
 use super::ordered::Interrupt;
 use super::quantile::Compensated;
@@ -77,17 +78,39 @@ impl Strata {
         }
         // Beyond the last stratum there is no point.
         self.numbers.push(f64::INFINITY);
-        let mut rest = [0.0; BLOCK];
+        let mut rest = [0.0; SHARES];
         dispatch(Floors {
             shares,
             wholes: targets,
             rest: &mut rest,
         });
-        for (target, rest) in targets.iter_mut().zip(rest) {
-            let below = self.numbers[*target as usize - self.first] < rest;
+        dispatch(Passed {
+            targets,
+            rest: &rest,
+            numbers: &self.numbers,
+            first: self.first,
+        });
+        self.numbers.pop();
+    }
+}
+
+/// Adds 1 to the targets whose stratum, `numbers` from the `first` on, has its number below `rest`.
+struct Passed<'a> {
+    targets: &'a mut [u64],
+    rest: &'a [f64],
+    numbers: &'a [f64],
+    first: usize,
+}
+
+impl Work for Passed<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        for (target, rest) in self.targets.iter_mut().zip(self.rest) {
+            let below = self.numbers[*target as usize - self.first] < *rest;
             *target += u64::from(below);
         }
-        self.numbers.pop();
     }
 }
 
@@ -167,9 +190,31 @@ impl Uniform {
         (self.0.next_u64() >> 11) as f64 * (1.0 / (1_u64 << 53) as f64)
     }
 
+    /// As so many calls of [`Self::next`].
     pub(super) fn fill(&mut self, numbers: &mut [f64]) {
-        for number in numbers {
-            *number = self.next();
+        let mut bytes = [[0; 8]; BLOCK];
+        for numbers in numbers.chunks_mut(BLOCK) {
+            let bytes = &mut bytes[..numbers.len()];
+            self.0.fill_bytes(bytes.as_flattened_mut());
+            dispatch(Fractions { bytes, numbers });
+        }
+    }
+}
+
+/// 64 bits, the low ones first, to a number on `[0, 1)` of their upper 53.
+struct Fractions<'a> {
+    bytes: &'a [[u8; 8]],
+    numbers: &'a mut [f64],
+}
+
+impl Work for Fractions<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        for (number, bytes) in self.numbers.iter_mut().zip(self.bytes) {
+            let bits = u64::from_le_bytes(*bytes) >> 11;
+            *number = bits as f64 * (1.0 / (1_u64 << 53) as f64);
         }
     }
 }

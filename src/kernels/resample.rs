@@ -3,12 +3,12 @@
 use std::str::FromStr;
 
 use super::columns::expect_shape;
-use super::cumulated::Cumulated;
+use super::cumulated::{Cumulated, SHARES};
 use super::error::KernelError;
 use super::ordered::Interrupt;
 use super::points::{BLOCK, COPIES, Ceilings, Strata, Uniform, reserved, room, sorted_positions};
 use super::quantile::PART;
-use super::vector::dispatch;
+use super::vector::{Arithmetic, Work, dispatch};
 
 /// A way to resample.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -149,27 +149,42 @@ pub fn resample_into(
     Ok(())
 }
 
-/// Writes copies of `first`, `first + 1`, … until as many are there in all as the targets say, at
-/// most `size`; returns how many there are.
-fn copy_until(
-    targets: &[u64],
+/// Writes copies of `first`, `first + 1`, … until as many are there in all as the targets say,
+/// which must not fall; returns how many there are.
+struct Copied<'a> {
+    targets: &'a [u64],
     first: usize,
-    chosen: &mut [i64],
-    mut count: usize,
-    size: usize,
-) -> usize {
-    for (place, &target) in targets.iter().enumerate() {
-        let index = (first + place) as i64;
-        let target = size.min(target as usize);
-        if let Some(copies) = chosen[count..].first_chunk_mut::<COPIES>() {
-            *copies = [index; COPIES];
+    chosen: &'a mut [i64],
+    count: usize,
+}
+
+impl Work for Copied<'_> {
+    type Output = usize;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> usize {
+        // No place waits for a comparison: where the copies of a draw begin is known beforehand.
+        let mut start = self.count;
+        for (index, &target) in (self.first as i64..).zip(self.targets) {
+            let target = target as usize;
+            if let Some(copies) = self.chosen.get_mut(start..start + COPIES) {
+                copies.copy_from_slice(&[index; COPIES]);
+            }
+            if target > start + COPIES {
+                fill(self.chosen, start + COPIES, target, index);
+            }
+            start = target;
         }
-        if target > count + COPIES {
-            chosen[count + COPIES..target].fill(index);
-        }
-        count = count.max(target);
+        start
     }
-    count
+}
+
+/// Rare, and kept out of the loop.
+#[cold]
+fn fill(chosen: &mut [i64], from: usize, to: usize, index: i64) {
+    if let Some(more) = chosen.get_mut(from..to) {
+        more.fill(index);
+    }
 }
 
 /// Copies each index until as many are there as `reached(shares, targets)` says for its share
@@ -181,13 +196,22 @@ fn by_position(
     chosen: &mut [i64],
     mut reached: impl FnMut(&[f64], &mut [u64]),
 ) {
-    let mut targets = [0; BLOCK];
+    let mut targets = [0; SHARES];
     let mut count = 0;
     weights.shares(size as f64, |first, shares| {
         let targets = &mut targets[..shares.len()];
         reached(shares, targets);
-        count = copy_until(targets, first, chosen, count, size);
+        count = dispatch(Copied {
+            targets,
+            first,
+            chosen: &mut *chosen,
+            count,
+        });
     });
+    // A point within a rounding of the whole is above no share.
+    if let Some(left) = chosen.get_mut(count..size) {
+        left.fill(weights.last() as i64);
+    }
 }
 
 fn residual(
@@ -226,7 +250,12 @@ fn residual(
         target += *count;
         *count = target;
     }
-    copy_until(&counts, 0, chosen, 0, size);
+    dispatch(Copied {
+        targets: &counts,
+        first: 0,
+        chosen,
+        count: 0,
+    });
     Ok(())
 }
 

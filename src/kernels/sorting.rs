@@ -2,13 +2,21 @@
 //! Programming 3, section 5.2.5).
 
 use super::error::KernelError;
+use super::log_sum::range;
 use super::ordered::Interrupt;
+use super::vector::{Arithmetic, Work, dispatch};
 
 /// Bits of a digit: a table of counters of this size stays in the nearest cache.
 const DIGIT: u32 = 11;
 
 /// Digits of 64 bits.
 const DIGITS: usize = 6;
+
+/// Most values that are sorted by buckets first: beyond, these leave the caches.
+const MOST_IN_BUCKETS: usize = 65_536;
+
+/// Most values of a bucket.
+const MOST_INSERTED: u32 = 32;
 
 /// Indices of `x` in ascending order of value; equal values keep their order, `−0` comes before
 /// `+0`, NaN last or, if negative, first.
@@ -22,6 +30,9 @@ pub fn order(x: &[f64]) -> Vec<u32> {
 /// # Errors
 /// [`KernelError::Interrupted`].
 pub fn order_unless(x: &[f64], interrupt: &Interrupt<'_>) -> Result<Vec<u32>, KernelError> {
+    if let Some(order) = by_buckets(x) {
+        return Ok(order);
+    }
     let mut keyed: Vec<(u64, u32)> = x.iter().zip(0..).map(|(&x, i)| (rank(x), i)).collect();
     let mut other = vec![(0, 0); keyed.len()];
     let counts = counts(&keyed);
@@ -44,6 +55,77 @@ pub fn order_unless(x: &[f64], interrupt: &Interrupt<'_>) -> Result<Vec<u32>, Ke
         std::mem::swap(&mut keyed, &mut other);
     }
     Ok(keyed.iter().map(|pair| pair.1).collect())
+}
+
+/// The order by buckets of equal width and insertion, where values are spread evenly enough.
+fn by_buckets(x: &[f64]) -> Option<Vec<u32>> {
+    let (low, high) = range(x);
+    let count = x.len().next_power_of_two();
+    let scale = (count - 1) as f64 / (high - low);
+    if x.len() > MOST_IN_BUCKETS || !(low.is_finite() && scale.is_finite()) {
+        return None;
+    }
+    let mut buckets = vec![0; x.len()];
+    if !dispatch(Buckets {
+        x,
+        low,
+        scale,
+        buckets: &mut buckets,
+    }) {
+        return None;
+    }
+    let mut starts = vec![0_u32; count + 1];
+    for &bucket in &buckets {
+        starts[bucket as usize % count + 1] += 1;
+    }
+    let (mut start, mut most) = (0, 0);
+    for place in &mut starts {
+        most = most.max(*place);
+        start += *place;
+        *place = start;
+    }
+    if most > MOST_INSERTED {
+        return None;
+    }
+    let mut sorted = vec![(0, 0); x.len()];
+    for ((&x, &bucket), index) in x.iter().zip(&buckets).zip(0..) {
+        let start = &mut starts[bucket as usize % count];
+        sorted[*start as usize] = (rank(x), index);
+        *start += 1;
+    }
+    for end in 1..sorted.len() {
+        let one = sorted[end];
+        let mut place = end;
+        while place > 0 && sorted[place - 1].0 > one.0 {
+            sorted[place] = sorted[place - 1];
+            place -= 1;
+        }
+        sorted[place] = one;
+    }
+    Some(sorted.iter().map(|pair| pair.1).collect())
+}
+
+/// The bucket of every value; whether all are numbers.
+struct Buckets<'a> {
+    x: &'a [f64],
+    low: f64,
+    scale: f64,
+    buckets: &'a mut [u32],
+}
+
+impl Work for Buckets<'_> {
+    type Output = bool;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> bool {
+        let mut numbers = true;
+        for (bucket, &x) in self.buckets.iter_mut().zip(self.x) {
+            numbers &= !x.is_nan();
+            // An integer below 2^52 added to it is in the last bits.
+            *bucket = ((x - self.low) * self.scale + 4_503_599_627_370_496.0).to_bits() as u32;
+        }
+        numbers
+    }
 }
 
 fn counts(keyed: &[(u64, u32)]) -> Vec<[usize; 1 << DIGIT]> {

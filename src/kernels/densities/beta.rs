@@ -5,7 +5,7 @@ use super::gamma::at_edge;
 use super::hyper::Triple;
 use super::stirling::{log_beta, log_beta_kernel};
 use crate::kernels::vector::Arithmetic;
-use crate::kernels::vector::ln::ln;
+use crate::kernels::vector::ln::ln_two;
 
 /// Above these shapes the two logarithms would cancel visibly.
 const LARGEST_SHAPE: f64 = 1024.0;
@@ -49,8 +49,12 @@ impl Family for Beta {
 
     #[inline(always)]
     fn fast<A: Arithmetic>(&self, x: f64) -> f64 {
-        let lower = A::mul_add(self.rise, ln::<A>(x), self.constant);
-        A::mul_add(self.fall, ln::<A>(1.0 - x), lower)
+        let (below, above) = ln_two::<A>(x, 1.0 - x);
+        A::mul_add(
+            self.fall,
+            above,
+            A::mul_add(self.rise, below, self.constant),
+        )
     }
 
     fn careful(hyper: Triple, x: f64) -> f64 {
