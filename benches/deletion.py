@@ -1,4 +1,4 @@
-"""Leaving out every observation: scores, shapes, effective sizes, errors, and what quantities do."""
+"""Leaving out every observation: scores, shapes, sizes, errors, and what quantities do."""
 
 from __future__ import annotations
 
@@ -29,7 +29,7 @@ def log_sum(x: Array) -> float:
 
 
 def long_run(z: Array, starts: Array) -> float:
-    """Geyer's initial monotone sequence over split chains, autocovariances by Fourier transforms."""
+    """Geyer's initial monotone sequence over split chains, lags by Fourier transforms."""
     length = int(starts[1] - starts[0]) // 2
     halves = z.reshape(-1, length)
     count, draws = len(halves), z.size
@@ -162,7 +162,7 @@ def _influences(loglik: Array, f: Array) -> tuple[Array, ...]:
 
 
 def more(small: bool) -> bool:
-    """What influence adds to the cost of a deletion, in turns in this run; whether that is enough."""
+    """What influence adds to the cost of a deletion, in turns; whether that is little enough."""
     loglik, f, starts = data(small)
     none = np.zeros((len(loglik), 0))
     good = True

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
+from scipy.special import logsumexp
 from timing import Case
 
 from steelyard import _core
@@ -22,7 +23,12 @@ def described(x: Array) -> tuple[Array, Array]:
 
 
 def normalised(x: Array) -> Array:
-    """Normalised log weights of every column."""
+    """Normalised log weights of every column, by the one line that one would write."""
+    return np.asarray(x - logsumexp(x, axis=0))
+
+
+def normalised_by_hand(x: Array) -> Array:
+    """The same with as few passes and copies as NumPy allows; all three are bound by memory."""
     z = x - x.max(axis=0)
     return np.asarray(z - np.log(np.exp(z).sum(axis=0)))
 
@@ -72,5 +78,16 @@ def cases(small: bool) -> list[Case]:
             1e-12,
             ROUNDING,
             (14, 28),
+            rounds=3,
+        ),
+        Case(
+            "normalised matrix, out=, twin by hand",
+            f"{size} C",
+            lambda: normalised_by_hand(x),
+            written,
+            1e-12,
+            ROUNDING,
+            (None, None),
+            rounds=3,
         ),
     ]

@@ -2,7 +2,8 @@
 Benchmarks that verify their own answers: every kernel against the script that one would write.
 
 Run by `make bench`. ``--small`` takes small arrays, to see that everything works; ``--large`` adds
-what needs gigabytes in the directory for temporary files; names choose among the benchmarks. Ends with an error where twin and kernel disagree.
+what needs gigabytes in the directory for temporary files; names choose among the benchmarks. Ends
+with an error where twin and kernel disagree.
 """
 
 from __future__ import annotations
@@ -28,6 +29,7 @@ NAMES = (
     "swap",
     "densities",
     "deletion",
+    "leave_out_errors",
     "memory",
 )
 

@@ -10,11 +10,11 @@ use crate::kernels;
 use crate::kernels::columns::{expect_shape, map_columns, map_columns_into};
 use crate::kernels::error::KernelError;
 use crate::kernels::ordered::{Interrupt, map_tasks};
-use crate::kernels::quantile_many::{LANES, Sorted, Weights, column_quantiles};
+use crate::kernels::quantile_many::{LANES, Sorted, Weights, quantiles};
 use crate::kernels::sorting;
 
-/// Columns between two looks at the caller's wish to stop.
-const PARAMETERS: usize = 16;
+/// Sets of weights of a task.
+const TOGETHER: usize = 4 * LANES;
 
 /// Indices of every column of `x`, `(n, k)`, in ascending order of value: `(n, k)`.
 #[pyfunction]
@@ -111,23 +111,23 @@ fn under_each(
         .iter()
         .map(|(x, order)| Sorted::new(x, order))
         .collect();
-    let parts: Vec<ArrayView2<'_, f64>> = w.axis_chunks_iter(Axis(1), LANES).collect();
+    let parts: Vec<ArrayView2<'_, f64>> = w.axis_chunks_iter(Axis(1), TOGETHER).collect();
     let found = map_tasks(parts, interrupt, |part| {
-        let weights = Weights::new(part);
         let mut out = Array3::zeros((probs.len(), part.ncols(), columns.len()));
-        for (group, columns) in columns.chunks(PARAMETERS).enumerate() {
-            interrupt.check()?;
-            column_quantiles(columns, &weights, probs, |column, lane, level, value| {
-                let index = group * PARAMETERS + column;
-                if let Some(target) = out.get_mut((level, lane, index)) {
-                    *target = value;
-                }
-            });
+        for (set, weights) in Weights::sets(part).iter().enumerate() {
+            for (index, column) in columns.iter().enumerate() {
+                interrupt.check()?;
+                quantiles(column, weights, probs, |lane, level, value| {
+                    if let Some(target) = out.get_mut((level, set * LANES + lane, index)) {
+                        *target = value;
+                    }
+                });
+            }
         }
         Ok(out)
     })?;
     let mut out = Array3::zeros((probs.len(), w.ncols(), columns.len()));
-    for (mut into, part) in out.axis_chunks_iter_mut(Axis(1), LANES).zip(found) {
+    for (mut into, part) in out.axis_chunks_iter_mut(Axis(1), TOGETHER).zip(found) {
         into.assign(&part);
     }
     Ok(out)

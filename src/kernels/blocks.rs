@@ -10,7 +10,7 @@ pub(super) use super::vector::transpose::LINE;
 use super::vector::transpose::{columns_to_rows, rows_to_columns};
 
 /// Most columns of a block.
-pub(super) const MOST_COLUMNS: usize = 32;
+pub(super) const MOST_COLUMNS: usize = 64;
 
 /// Rows copied between two looks at the caller's wish to stop: the first touch of a row of a fresh
 /// or memory-mapped array can cost a large page.
@@ -44,6 +44,10 @@ pub(super) fn gather<E: Entry>(
         for (column, entries) in view.columns().into_iter().enumerate() {
             interrupt.check()?;
             let target = &mut buffer[column * distance..];
+            if let Some(entries) = entries.to_slice().and_then(E::as_wide) {
+                target[..entries.len()].copy_from_slice(entries);
+                continue;
+            }
             for (target, entry) in target.iter_mut().zip(entries) {
                 *target = entry.wide();
             }

@@ -129,21 +129,84 @@ impl<'a> Cumulated<'a> {
     /// index whose share of `whole` lies above it; by the last index with weight where none does.
     pub fn merge(&self, positions: &mut [i64], whole: f64) {
         let mut reached = 0;
-        let mut ahead = positions.first().copied().unwrap_or(0);
         self.shares(whole, |first, shares| {
-            let mut place = 0;
-            // One step of a merge without a branch: which list is ahead cannot be predicted. Numbers
-            // that are not negative compare as their bits do, which is quicker.
-            while place < shares.len() && reached < positions.len() && first <= self.last {
-                let above = ahead < shares[place].to_bits() as i64;
-                let index = (first + place) as i64;
-                positions[reached] = if above { index } else { ahead };
-                reached += usize::from(above);
-                place += usize::from(!above);
-                ahead = positions.get(reached).copied().unwrap_or(0);
-            }
+            let rest = &mut positions[reached..];
+            let middle = shares.len() / 2;
+            let early = below(rest, shares[..middle].last().copied().unwrap_or(0.0));
+            let (early, later) = rest.split_at_mut(early);
+            let late = below(later, shares.last().copied().unwrap_or(0.0));
+            let late = &mut later[..late];
+            reached += early.len() + late.len();
+            let (low, high) = shares.split_at(middle);
+            merge_two(
+                Cursor::new(early, low, first),
+                Cursor::new(late, high, first + middle),
+            );
         });
         positions[reached..].fill(self.last as i64);
+    }
+}
+
+/// How many of `positions`, rising, lie below `share`: most likely a few hundred.
+fn below(positions: &[i64], share: f64) -> usize {
+    // Numbers that are not negative compare as their bits do, which is quicker.
+    let bits = share.to_bits() as i64;
+    let mut end = SHARES;
+    while positions.get(end).is_some_and(|&position| position < bits) {
+        end *= 2;
+    }
+    let near = &positions[..end.min(positions.len())];
+    near.partition_point(|&position| position < bits)
+}
+
+/// A merge under way: every position lies below the last share.
+struct Cursor<'a> {
+    positions: &'a mut [i64],
+    shares: &'a [f64],
+    first: usize,
+    reached: usize,
+    place: usize,
+}
+
+impl<'a> Cursor<'a> {
+    fn new(positions: &'a mut [i64], shares: &'a [f64], first: usize) -> Self {
+        Self {
+            positions,
+            shares,
+            first,
+            reached: 0,
+            place: 0,
+        }
+    }
+
+    #[inline(always)]
+    fn is_open(&self) -> bool {
+        self.reached < self.positions.len() && self.place < self.shares.len()
+    }
+
+    /// One step without a branch: which list is ahead cannot be predicted.
+    #[inline(always)]
+    fn step(&mut self) {
+        let position = &mut self.positions[self.reached];
+        let above = *position < self.shares[self.place].to_bits() as i64;
+        let index = (self.first + self.place) as i64;
+        *position = if above { index } else { *position };
+        self.reached += usize::from(above);
+        self.place += usize::from(!above);
+    }
+}
+
+/// Both merges, in turns: a step waits for the one before.
+fn merge_two(mut low: Cursor<'_>, mut high: Cursor<'_>) {
+    while low.is_open() && high.is_open() {
+        low.step();
+        high.step();
+    }
+    while low.is_open() {
+        low.step();
+    }
+    while high.is_open() {
+        high.step();
     }
 }
 

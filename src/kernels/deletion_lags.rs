@@ -7,15 +7,16 @@
 
 use std::ops::Range;
 
-use super::deletion_loops::{LANES, plus, tree};
+use super::deletion_lag_loops::{Centre, Products};
+use super::deletion_loops::LANES;
+use super::deletion_welch::{FREEDOM, SHORTEST, welch};
 use super::error::KernelError;
-use super::f_tail::f_tail;
 use super::long_run::long_run_variance;
 use super::ordered::Interrupt;
-use super::vector::{Arithmetic, Work, dispatch};
+use super::vector::dispatch;
 
 /// Lags that are formed together.
-const TOGETHER: usize = 6;
+pub(super) const TOGETHER: usize = 6;
 
 /// Batches of lags; a series that needs more goes to [`long_run_variance`].
 const BATCHES: usize = 8;
@@ -29,21 +30,14 @@ const SHORTEST_HALF: usize = 16;
 /// From this many chains on, chains as independent units estimate a variance well enough.
 const MANY_CHAINS: usize = 20;
 
-/// Shorter chains, or chains of fewer effective draws, know too little of their own errors.
-const SHORTEST: usize = 50;
-const FEWEST: f64 = 20.0;
-
-/// A spectral estimate from n effective draws varies like a chi-square of about a third as many.
-const FREEDOM: f64 = 3.0;
-
 /// Chains and their halves.
 pub struct Layout {
     chains: Vec<Range<usize>>,
-    halves: Vec<Range<usize>>,
+    pub(super) halves: Vec<Range<usize>>,
     /// Halves of each chain.
     of_chain: Vec<Range<usize>>,
     /// Where each half begins in the padded array.
-    places: Vec<usize>,
+    pub(super) places: Vec<usize>,
     padded: usize,
     is_long: bool,
 }
@@ -295,113 +289,5 @@ impl<'a> Lagged<'a> {
             found.push((self.mean(halves), variance, (effective / FREEDOM).max(1.0)));
         }
         Ok(welch(&found))
-    }
-}
-
-/// The p-value of means, their variances and degrees of freedom.
-fn welch(chains: &[(f64, f64, f64)]) -> f64 {
-    let mut freedoms: Vec<f64> = chains.iter().map(|chain| chain.2).collect();
-    freedoms.sort_unstable_by(f64::total_cmp);
-    let middle = freedoms.len() / 2;
-    let median = if freedoms.len().is_multiple_of(2) {
-        (freedoms[middle - 1] + freedoms[middle]) / 2.0
-    } else {
-        freedoms[middle]
-    };
-    let precision = |variance: f64| if variance > 0.0 { 1.0 / variance } else { 0.0 };
-    let total: f64 = chains.iter().map(|chain| precision(chain.1)).sum();
-    if median * FREEDOM < FEWEST || total == 0.0 {
-        return 1.0;
-    }
-    let centre: f64 = chains.iter().map(|c| precision(c.1) * c.0).sum::<f64>() / total;
-    let (mut q, mut spread) = (0.0, 0.0);
-    for &(mean, variance, freedom) in chains {
-        q += precision(variance) * (mean - centre).powi(2);
-        spread += (1.0 - precision(variance) / total).powi(2) / freedom;
-    }
-    let count = chains.len() as f64;
-    let square = count * count - 1.0;
-    let f = q / (count - 1.0) / (1.0 + 2.0 * (count - 2.0) / square * spread);
-    let second = square / (3.0 * if spread > 0.0 { spread } else { 1.0 });
-    f_tail(f, count - 1.0, second)
-}
-
-/// Writes `z − z̄_m` of every half into its place.
-struct Centre<'a> {
-    z: &'a [f64],
-    layout: &'a Layout,
-    centred: &'a mut [f64],
-    means: &'a mut [f64],
-}
-
-impl Work for Centre<'_> {
-    type Output = ();
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) {
-        let halves = self.layout.halves.iter().zip(&self.layout.places);
-        for ((half, &place), mean) in halves.zip(self.means) {
-            let z = &self.z[half.clone()];
-            let centred = &mut self.centred[place..place + z.len()];
-            let count = z.len() as f64;
-            let rough = lane_sum(z) / count;
-            for (target, entry) in centred.iter_mut().zip(z) {
-                *target = entry - rough;
-            }
-            // The rounding of the first mean is taken out: the mean of a constant is that constant.
-            let rest = lane_sum(centred) / count;
-            for target in centred.iter_mut() {
-                *target -= rest;
-            }
-            *mean = rough + rest;
-        }
-    }
-}
-
-#[inline(always)]
-fn lane_sum(x: &[f64]) -> f64 {
-    let mut lanes = [0.0; LANES];
-    let (chunks, rest) = x.as_chunks::<LANES>();
-    for chunk in chunks {
-        for lane in 0..LANES {
-            lanes[lane] += chunk[lane];
-        }
-    }
-    let mut last = [0.0; LANES];
-    last[..rest.len()].copy_from_slice(rest);
-    tree(plus(lanes, last))
-}
-
-/// `Σ c_i c_{i+t}` of every half at [`TOGETHER`] lags from `lag` on.
-struct Products<'a> {
-    lag: usize,
-    layout: &'a Layout,
-    centred: &'a [f64],
-    sums: &'a mut [[f64; TOGETHER]],
-}
-
-impl Work for Products<'_> {
-    type Output = ();
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) {
-        let halves = self.layout.halves.iter().zip(&self.layout.places);
-        for ((half, &place), sums) in halves.zip(self.sums) {
-            let length = half.len().next_multiple_of(LANES);
-            let early = self.centred[place..place + length].as_chunks::<LANES>().0;
-            let later: [&[[f64; LANES]]; TOGETHER] = std::array::from_fn(|t| {
-                let begin = place + self.lag + t;
-                &self.centred[begin..begin + length].as_chunks().0[..early.len()]
-            });
-            let mut lanes = [[0.0; LANES]; TOGETHER];
-            for (chunk, a) in early.iter().enumerate() {
-                for (lanes, b) in lanes.iter_mut().zip(&later) {
-                    for lane in 0..LANES {
-                        lanes[lane] = A::mul_add(a[lane], b[chunk][lane], lanes[lane]);
-                    }
-                }
-            }
-            *sums = lanes.map(tree);
-        }
     }
 }

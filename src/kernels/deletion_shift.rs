@@ -5,21 +5,21 @@ use std::ops::Range;
 
 use ndarray::ArrayView2;
 
-use super::deletion_loops::{LANES as SUM_LANES, tree};
+use super::deletion_products::{Anew, Block, Double, Fill, Single, add};
 use super::error::KernelError;
 use super::ordered::Interrupt;
-use super::vector::{Arithmetic, Work, dispatch};
+use super::vector::dispatch;
 
 /// Quantities of a panel in double precision, and powers of one in single precision: lanes.
-const LANES: usize = 16;
-const WIDE: usize = 32;
+pub(super) const LANES: usize = 16;
+pub(super) const WIDE: usize = 32;
 
 /// Draws of which panels and weights lie in the nearest cache together, and whose squares are summed
 /// in single precision.
-const DRAWS: usize = 256;
+pub(super) const DRAWS: usize = 256;
 
 /// Columns whose sums lie in registers.
-const TOGETHER: usize = 4;
+pub(super) const TOGETHER: usize = 4;
 
 /// Largest share of a draw from which on squares are summed anew in double precision: where few draws
 /// carry a shift it lies close to their own values, and sums of powers would cancel.
@@ -192,171 +192,5 @@ impl Panels {
                 *square = sum / (self.draws as f64).powi(2);
             }
         }
-    }
-}
-
-struct Anew<'a> {
-    f: &'a [[f64; LANES]],
-    x: &'a [f64],
-    base: &'a [f64],
-    m: [f64; LANES],
-}
-
-impl Work for Anew<'_> {
-    type Output = [f64; LANES];
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) -> Self::Output {
-        let mut sums = [0.0; LANES];
-        for ((f, &x), &b) in self.f.iter().zip(self.x).zip(self.base) {
-            for lane in 0..LANES {
-                let (f, m) = (f[lane], self.m[lane]);
-                let z = x * (f - m) - b * m * (A::mul_add(f, f, 1.0) / 2.0);
-                sums[lane] = A::mul_add(z, z, sums[lane]);
-            }
-        }
-        sums
-    }
-}
-
-/// Some draws of the weights of a block of columns, and sums over all draws so far.
-struct Block {
-    used: usize,
-    /// `x`, `x²` and `x b` of so many columns at a time, and these of every draw.
-    x: Vec<[f64; DRAWS]>,
-    xx: Vec<[f32; DRAWS]>,
-    xb: Vec<[f32; DRAWS]>,
-    /// `Σ x f`; `Σ x² f`, `Σ x² f²`; `Σ x b f` and so on to `f³`.
-    first: Sums<LANES>,
-    squares: Sums<WIDE>,
-    products: Sums<WIDE>,
-    /// `Σ x²` and `Σ x b`.
-    alone: Vec<(f64, f64)>,
-}
-
-impl Block {
-    fn new(used: usize, quantities: usize) -> Self {
-        let columns = used.next_multiple_of(TOGETHER);
-        Self {
-            used,
-            x: vec![[0.0; DRAWS]; columns],
-            xx: vec![[0.0; DRAWS]; columns],
-            xb: vec![[0.0; DRAWS]; columns],
-            first: Sums::new(columns, quantities),
-            squares: Sums::new(columns, 2 * quantities),
-            products: Sums::new(columns, 3 * quantities),
-            alone: vec![(0.0, 0.0); columns],
-        }
-    }
-}
-
-/// Sums over draws, panel after panel and column after column.
-struct Sums<const W: usize> {
-    columns: usize,
-    lanes: Vec<[f64; W]>,
-}
-
-impl<const W: usize> Sums<W> {
-    fn new(columns: usize, entries: usize) -> Self {
-        Self {
-            columns,
-            lanes: vec![[0.0; W]; entries.div_ceil(W) * columns],
-        }
-    }
-
-    fn of(&self, entry: usize, column: usize) -> f64 {
-        self.lanes[entry / W * self.columns + column][entry % W]
-    }
-}
-
-fn add<T: Copy + Into<f64>, const W: usize>(sums: &mut [[f64; W]], terms: &[[T; W]]) {
-    for (sum, &term) in sums.iter_mut().flatten().zip(terms.iter().flatten()) {
-        *sum += term.into();
-    }
-}
-
-struct Fill<'a> {
-    x: &'a [f64],
-    apart: usize,
-    start: usize,
-    base: &'a [f64],
-    block: &'a mut Block,
-}
-
-impl Work for Fill<'_> {
-    type Output = ();
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) {
-        let length = self.base.len().min(DRAWS);
-        for column in 0..self.block.used {
-            let source = &self.x[column * self.apart + self.start..][..length];
-            let x = &mut self.block.x[column];
-            *x = [0.0; DRAWS];
-            x[..length].copy_from_slice(source);
-            let mut b = [0.0; DRAWS];
-            b[..length].copy_from_slice(&self.base[..length]);
-            let (xx, xb) = (&mut self.block.xx[column], &mut self.block.xb[column]);
-            let [mut squares, mut products] = [[0.0; SUM_LANES]; 2];
-            for start in (0..DRAWS).step_by(SUM_LANES) {
-                for lane in 0..SUM_LANES {
-                    let (x, b) = (x[start + lane], b[start + lane]);
-                    xx[start + lane] = (x * x) as f32;
-                    xb[start + lane] = (x * b) as f32;
-                    squares[lane] = A::mul_add(x, x, squares[lane]);
-                    products[lane] = A::mul_add(x, b, products[lane]);
-                }
-            }
-            self.block.alone[column].0 += tree(squares);
-            self.block.alone[column].1 += tree(products);
-        }
-    }
-}
-
-/// `Σ x f` of some columns over some draws.
-struct Double<'a> {
-    f: &'a [[f64; LANES]],
-    x: &'a [[f64; DRAWS]; TOGETHER],
-}
-
-impl Work for Double<'_> {
-    type Output = [[f64; LANES]; TOGETHER];
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) -> Self::Output {
-        let mut lanes = [[0.0; LANES]; TOGETHER];
-        for (s, f) in self.f.iter().enumerate() {
-            for (lanes, x) in lanes.iter_mut().zip(self.x) {
-                let x = x[s % DRAWS];
-                for lane in 0..LANES {
-                    lanes[lane] = A::mul_add(x, f[lane], lanes[lane]);
-                }
-            }
-        }
-        lanes
-    }
-}
-
-/// The same in single precision.
-struct Single<'a> {
-    f: &'a [[f32; WIDE]],
-    x: &'a [[f32; DRAWS]; TOGETHER],
-}
-
-impl Work for Single<'_> {
-    type Output = [[f32; WIDE]; TOGETHER];
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) -> Self::Output {
-        let mut lanes = [[0.0; WIDE]; TOGETHER];
-        for (s, f) in self.f.iter().enumerate() {
-            for (lanes, x) in lanes.iter_mut().zip(self.x) {
-                let x = x[s % DRAWS];
-                for lane in 0..WIDE {
-                    lanes[lane] = A::mul_add_single(x, f[lane], lanes[lane]);
-                }
-            }
-        }
-        lanes
     }
 }

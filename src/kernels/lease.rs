@@ -14,25 +14,40 @@ thread_local! {
     static SPARE: RefCell<Vec<Vec<f64>>> = const { RefCell::new(Vec::new()) };
 }
 
-/// An array of arbitrary finite numbers, to be written before it is read.
-pub struct Lease(Vec<f64>);
+/// Entries of a cache line.
+const LINE: usize = 8;
+
+/// An array of arbitrary finite numbers that begins with a cache line, to be written before it is
+/// read.
+pub struct Lease {
+    room: Vec<f64>,
+    start: usize,
+    length: usize,
+}
 
 impl Lease {
     /// An array of `length` entries.
     pub fn new(length: usize) -> Self {
         let spare = SPARE.with(|spare| spare.borrow_mut().pop());
-        let mut entries = spare.unwrap_or_default();
-        entries.resize(length, 0.0);
-        Self(entries)
+        let mut room = spare.unwrap_or_default();
+        if room.len() < length + LINE {
+            room.resize(length + LINE, 0.0);
+        }
+        let over = room.as_ptr().addr() / size_of::<f64>() % LINE;
+        Self {
+            start: (LINE - over) % LINE,
+            length,
+            room,
+        }
     }
 }
 
 impl Drop for Lease {
     fn drop(&mut self) {
-        if self.0.capacity() > MOST_KEPT {
+        if self.room.capacity() > MOST_KEPT {
             return;
         }
-        let entries = std::mem::take(&mut self.0);
+        let entries = std::mem::take(&mut self.room);
         // At the end of a thread there is nothing left to keep it in.
         let _ = SPARE.try_with(|spare| {
             let mut spare = spare.borrow_mut();
@@ -47,12 +62,12 @@ impl Deref for Lease {
     type Target = [f64];
 
     fn deref(&self) -> &[f64] {
-        &self.0
+        &self.room[self.start..][..self.length]
     }
 }
 
 impl DerefMut for Lease {
     fn deref_mut(&mut self) -> &mut [f64] {
-        &mut self.0
+        &mut self.room[self.start..][..self.length]
     }
 }

@@ -84,11 +84,33 @@ impl Strata {
             wholes: targets,
             rest: &mut rest,
         });
-        for (target, rest) in targets.iter_mut().zip(rest) {
-            let below = self.numbers[*target as usize - self.first] < rest;
+        dispatch(Passed {
+            targets,
+            rest: &rest,
+            numbers: &self.numbers,
+            first: self.first,
+        });
+        self.numbers.pop();
+    }
+}
+
+/// Adds 1 to the targets whose stratum, `numbers` from the `first` on, has its number below `rest`.
+struct Passed<'a> {
+    targets: &'a mut [u64],
+    rest: &'a [f64],
+    numbers: &'a [f64],
+    first: usize,
+}
+
+impl Work for Passed<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        for (target, rest) in self.targets.iter_mut().zip(self.rest) {
+            let below = self.numbers[*target as usize - self.first] < *rest;
             *target += u64::from(below);
         }
-        self.numbers.pop();
     }
 }
 

@@ -1,12 +1,9 @@
 //! Weighted quantiles of one column under many sets of weights: sorted once.
 
-use ndarray::{ArrayView1, ArrayView2};
+use ndarray::ArrayView2;
 
 use super::quantile::{interpolate, quantile};
 use super::vector::{Arithmetic, Work, dispatch};
-
-/// Columns whose running sums are formed together: one load of the weights serves all.
-const TOGETHER: usize = 4;
 
 /// Sets of weights that are worked on together.
 pub const LANES: usize = 8;
@@ -14,39 +11,70 @@ pub const LANES: usize = 8;
 /// Draws between two running sums that are kept.
 const BLOCK: usize = 32;
 
+/// The weights of a draw, in a cache line of their own.
+#[derive(Clone)]
+#[repr(align(64))]
+struct Row([f64; LANES]);
+
 /// Up to [`LANES`] sets of weights, one row a draw, so that one load brings all of them.
 pub struct Weights {
-    rows: Vec<[f64; LANES]>,
+    rows: Vec<Row>,
     legal: [bool; LANES],
 }
 
 impl Weights {
     /// The columns of `w`, shape `(n, m)` with `m` at most [`LANES`]; missing ones are 0.
     pub fn new(w: ArrayView2<'_, f64>) -> Self {
-        let rows: Vec<[f64; LANES]> = w.rows().into_iter().map(row_of).collect();
-        let mut legal = [true; LANES];
-        for row in &rows {
-            for (legal, weight) in legal.iter_mut().zip(row) {
-                *legal &= *weight >= 0.0 && weight.is_finite();
+        let none = Self::of(vec![Row([0.0; LANES]); w.nrows()]);
+        Self::sets(w).into_iter().next().unwrap_or(none)
+    }
+
+    /// The columns of `w`, shape `(n, m)`, [`LANES`] by [`LANES`]: a row is read in one go.
+    pub fn sets(w: ArrayView2<'_, f64>) -> Vec<Self> {
+        let count = w.ncols().div_ceil(LANES);
+        let mut sets = vec![vec![Row([0.0; LANES]); w.nrows()]; count];
+        for (draw, row) in w.rows().into_iter().enumerate() {
+            let mut done = 0;
+            if let Some(row) = row.to_slice() {
+                let whole = row.as_chunks::<LANES>().0;
+                for (set, lanes) in sets.iter_mut().zip(whole) {
+                    set[draw].0 = *lanes;
+                }
+                done = whole.len() * LANES;
+            }
+            for (column, weight) in row.iter().enumerate().skip(done) {
+                sets[column / LANES][draw].0[column % LANES] = *weight;
             }
         }
+        sets.into_iter().map(Self::of).collect()
+    }
+
+    fn of(rows: Vec<Row>) -> Self {
+        let legal = dispatch(Legal(&rows));
         Self { rows, legal }
     }
 
     fn lane(&self, lane: usize) -> Vec<f64> {
-        self.rows.iter().map(|row| row[lane]).collect()
+        self.rows.iter().map(|row| row.0[lane]).collect()
     }
 }
 
-fn row_of(row: ArrayView1<'_, f64>) -> [f64; LANES] {
-    if let Some(whole) = row.to_slice().and_then(|row| row.first_chunk()) {
-        return *whole;
+/// Whether all weights of a lane are finite and not negative.
+struct Legal<'a>(&'a [Row]);
+
+impl Work for Legal<'_> {
+    type Output = [bool; LANES];
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> [bool; LANES] {
+        let mut bad = [0_u64; LANES];
+        for row in self.0 {
+            for lane in 0..LANES {
+                bad[lane] |= u64::from(!(0.0..=f64::MAX).contains(&row.0[lane]));
+            }
+        }
+        bad.map(|bad| bad == 0)
     }
-    let mut lanes = [0.0; LANES];
-    for (lane, weight) in lanes.iter_mut().zip(row) {
-        *lane = *weight;
-    }
-    lanes
 }
 
 /// A column with the order of its values.
@@ -57,8 +85,6 @@ pub struct Sorted<'a> {
     pub order: &'a [u32],
     /// Whether no two values are equal and none is NaN: else equal values must share a step.
     pub distinct: bool,
-    /// The block of the sorted draws that each draw lies in.
-    blocks: Vec<u32>,
 }
 
 impl<'a> Sorted<'a> {
@@ -67,106 +93,66 @@ impl<'a> Sorted<'a> {
         let value = |place: usize| x[order[place] as usize];
         let distinct = (1..order.len()).all(|place| value(place - 1) < value(place))
             && !x.iter().any(|x| x.is_nan());
-        let mut blocks = vec![0; order.len()];
-        for (block, indices) in order.chunks(BLOCK).enumerate() {
-            for &index in indices {
-                blocks[index as usize] = block as u32;
-            }
-        }
-        Self {
-            x,
-            order,
-            distinct,
-            blocks,
-        }
+        Self { x, order, distinct }
     }
 }
 
-/// Quantiles of `columns` at `probs` under the weights of each lane, as
-/// [`super::quantile::quantile`] defines them: `write(column, lane, prob_index, quantile)`. All
-/// columns have as many draws as the weights.
-pub fn column_quantiles(
-    columns: &[Sorted<'_>],
-    weights: &Weights,
-    probs: &[f64],
-    mut write: impl FnMut(usize, usize, usize, f64),
-) {
-    let (groups, rest) = columns.as_chunks::<TOGETHER>();
-    for (group, columns) in groups.iter().enumerate() {
-        let sums = running_sums(columns.each_ref(), weights);
-        for (place, (column, sums)) in columns.iter().zip(&sums).enumerate() {
-            let at = group * TOGETHER + place;
-            column.quantiles(weights, sums, probs, |lane, level, value| {
-                write(at, lane, level, value);
-            });
-        }
-    }
-    for (place, column) in rest.iter().enumerate() {
-        let at = groups.len() * TOGETHER + place;
-        quantiles(column, weights, probs, |lane, level, value| {
-            write(at, lane, level, value);
-        });
-    }
-}
-
-/// As [`column_quantiles`], of one column: `write(lane, prob_index, quantile)`.
+/// Quantiles of `column` at `probs` under the weights of each lane, as
+/// [`super::quantile::quantile`] defines them: `write(lane, prob_index, quantile)`.
 pub fn quantiles(
     column: &Sorted<'_>,
     weights: &Weights,
     probs: &[f64],
     write: impl FnMut(usize, usize, f64),
 ) {
-    let [sums] = running_sums([column], weights);
+    let sums = dispatch(RunningSums {
+        order: column.order,
+        rows: &weights.rows,
+    });
     column.quantiles(weights, &sums, probs, write);
 }
 
-/// The sums of each lane before each block of sorted draws, and the totals last.
-type Running = Vec<[f64; LANES]>;
-
-fn running_sums<const N: usize>(columns: [&Sorted<'_>; N], weights: &Weights) -> [Running; N] {
-    let count = |column: &Sorted<'_>| column.order.len().div_ceil(BLOCK);
-    let mut sums = columns.map(|column| vec![[0.0; LANES]; count(column) + 1]);
-    dispatch(BlockSums {
-        rows: &weights.rows,
-        blocks: columns.map(|column| &column.blocks[..]),
-        sums: &mut sums,
-    });
-    for sums in &mut sums {
-        let mut before = [0.0; LANES];
-        for sum in sums.iter_mut() {
-            for (before, sum) in before.iter_mut().zip(sum) {
-                let next = *before + *sum;
-                *sum = *before;
-                *before = next;
-            }
-        }
-    }
-    sums
+/// Sums of the weights before each block of sorted draws, and the totals last.
+struct RunningSums<'a> {
+    order: &'a [u32],
+    rows: &'a [Row],
 }
 
-/// Adds the weights of every draw to the block that it lies in, column by column.
-struct BlockSums<'a, const N: usize> {
-    rows: &'a [[f64; LANES]],
-    blocks: [&'a [u32]; N],
-    sums: &'a mut [Running; N],
-}
-
-impl<const N: usize> Work for BlockSums<'_, N> {
-    type Output = ();
+impl Work for RunningSums<'_> {
+    type Output = Vec<[f64; LANES]>;
 
     #[inline(always)]
-    fn run<A: Arithmetic>(self) {
-        let draws = self.blocks.map(<[u32]>::len).into_iter().min();
-        let rows = &self.rows[..draws.unwrap_or(0).min(self.rows.len())];
-        let blocks = self.blocks.map(|blocks| &blocks[..rows.len()]);
-        for (draw, row) in rows.iter().enumerate() {
-            for (blocks, sums) in blocks.iter().zip(self.sums.iter_mut()) {
-                let sum = &mut sums[blocks[draw] as usize];
-                for lane in 0..LANES {
-                    sum[lane] += row[lane];
-                }
+    fn run<A: Arithmetic>(self) -> Vec<[f64; LANES]> {
+        let mut sums = Vec::with_capacity(self.order.len() / BLOCK + 2);
+        let mut before = [0.0; LANES];
+        sums.push(before);
+        for block in self.order.chunks(BLOCK) {
+            // Several sums, so that none waits for the one before.
+            let [mut a, mut b, mut c, mut d] = [[0.0; LANES]; 4];
+            let (groups, rest) = block.as_chunks::<4>();
+            for [i, j, k, l] in groups {
+                add(&mut a, &self.rows[*i as usize].0);
+                add(&mut b, &self.rows[*j as usize].0);
+                add(&mut c, &self.rows[*k as usize].0);
+                add(&mut d, &self.rows[*l as usize].0);
             }
+            for index in rest {
+                add(&mut a, &self.rows[*index as usize].0);
+            }
+            add(&mut a, &b);
+            add(&mut c, &d);
+            add(&mut a, &c);
+            add(&mut before, &a);
+            sums.push(before);
         }
+        sums
+    }
+}
+
+#[inline(always)]
+fn add(sum: &mut [f64; LANES], row: &[f64; LANES]) {
+    for lane in 0..LANES {
+        sum[lane] += row[lane];
     }
 }
 
@@ -241,14 +227,14 @@ impl Sorted<'_> {
 
 struct Search<'a> {
     column: &'a Sorted<'a>,
-    rows: &'a [[f64; LANES]],
+    rows: &'a [Row],
     sums: &'a [[f64; LANES]],
     lane: usize,
 }
 
 impl Search<'_> {
     fn weight(&self, place: usize) -> f64 {
-        self.rows[self.column.order[place] as usize][self.lane]
+        self.rows[self.column.order[place] as usize].0[self.lane]
     }
 
     fn value(&self, place: usize) -> f64 {

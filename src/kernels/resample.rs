@@ -8,7 +8,7 @@ use super::error::KernelError;
 use super::ordered::Interrupt;
 use super::points::{BLOCK, COPIES, Ceilings, Strata, Uniform, reserved, room, sorted_positions};
 use super::quantile::PART;
-use super::vector::dispatch;
+use super::vector::{Arithmetic, Work, dispatch};
 
 /// A way to resample.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -151,26 +151,40 @@ pub fn resample_into(
 
 /// Writes copies of `first`, `first + 1`, … until as many are there in all as the targets say,
 /// which must not fall; returns how many there are.
-fn copy_until(targets: &[u64], first: usize, chosen: &mut [i64], count: usize) -> usize {
-    // No place waits for a comparison: where the copies of a draw begin is known beforehand.
-    let mut start = count;
-    for (place, &target) in targets.iter().enumerate() {
-        let index = (first + place) as i64;
-        let target = target as usize;
-        if let Some(copies) = chosen
-            .get_mut(start..)
-            .and_then(|rest| rest.first_chunk_mut::<COPIES>())
-        {
-            *copies = [index; COPIES];
+struct Copied<'a> {
+    targets: &'a [u64],
+    first: usize,
+    chosen: &'a mut [i64],
+    count: usize,
+}
+
+impl Work for Copied<'_> {
+    type Output = usize;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> usize {
+        // No place waits for a comparison: where the copies of a draw begin is known beforehand.
+        let mut start = self.count;
+        for (index, &target) in (self.first as i64..).zip(self.targets) {
+            let target = target as usize;
+            if let Some(copies) = self.chosen.get_mut(start..start + COPIES) {
+                copies.copy_from_slice(&[index; COPIES]);
+            }
+            if target > start + COPIES {
+                fill(self.chosen, start + COPIES, target, index);
+            }
+            start = target;
         }
-        if target > start + COPIES
-            && let Some(more) = chosen.get_mut(start + COPIES..target)
-        {
-            more.fill(index);
-        }
-        start = target;
+        start
     }
-    start
+}
+
+/// Rare, and kept out of the loop.
+#[cold]
+fn fill(chosen: &mut [i64], from: usize, to: usize, index: i64) {
+    if let Some(more) = chosen.get_mut(from..to) {
+        more.fill(index);
+    }
 }
 
 /// Copies each index until as many are there as `reached(shares, targets)` says for its share
@@ -187,7 +201,12 @@ fn by_position(
     weights.shares(size as f64, |first, shares| {
         let targets = &mut targets[..shares.len()];
         reached(shares, targets);
-        count = copy_until(targets, first, chosen, count);
+        count = dispatch(Copied {
+            targets,
+            first,
+            chosen: &mut *chosen,
+            count,
+        });
     });
     // A point within a rounding of the whole is above no share.
     if let Some(left) = chosen.get_mut(count..size) {
@@ -231,7 +250,12 @@ fn residual(
         target += *count;
         *count = target;
     }
-    copy_until(&counts, 0, chosen, 0);
+    dispatch(Copied {
+        targets: &counts,
+        first: 0,
+        chosen,
+        count: 0,
+    });
     Ok(())
 }
 

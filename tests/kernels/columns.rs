@@ -1,4 +1,4 @@
-use _core::kernels::columns::{map_columns, map_columns_into};
+use _core::kernels::columns::{map_columns, map_columns_in_place, map_columns_into};
 use _core::kernels::error::KernelError;
 use _core::kernels::log_sum::{log_sum_exp, normalise};
 use _core::kernels::ordered::Interrupt;
@@ -156,5 +156,33 @@ fn large_outputs_are_written_where_they_belong() {
         )
         .unwrap();
         assert_eq!(out, x);
+    }
+}
+
+#[test]
+fn columns_changed_in_place_are_written_where_they_belong() {
+    // The large one goes past the caches; both orders of input and output, and every second entry.
+    for (rows, columns) in [(50, 21), (1, 9), (4099, 257)] {
+        let x = sample(rows, columns);
+        let expected = x.mapv(|entry| 2.0 * entry);
+        let mut fortran = Array2::zeros((rows, columns).f());
+        fortran.assign(&x);
+        let double = |column: &mut [f64], index: usize| {
+            column.iter_mut().for_each(|entry| *entry *= 2.0);
+            Ok(index)
+        };
+        for view in [x.view(), fortran.view()] {
+            let mut plain = Array2::zeros((rows, columns));
+            let mut turned = Array2::zeros((rows, columns).f());
+            let mut wide = Array2::zeros((2 * rows, 2 * columns));
+            let told = map_columns_in_place(view, plain.view_mut(), &Interrupt::never(), double);
+            assert_eq!(told, Ok((0..columns).collect()));
+            map_columns_in_place(view, turned.view_mut(), &Interrupt::never(), double).unwrap();
+            let into = stepped(wide.view_mut(), [2, 2]);
+            map_columns_in_place(view, into, &Interrupt::never(), double).unwrap();
+            assert_eq!(plain, expected);
+            assert_eq!(turned, expected);
+            assert_eq!(stepped(wide.view_mut(), [2, 2]), expected);
+        }
     }
 }

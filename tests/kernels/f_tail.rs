@@ -25,3 +25,18 @@ fn edges_are_defined() {
     assert!(f_tail(f64::NAN, 3.0, 5.0).is_nan());
     assert!(f_tail(1.0, 3.0, 0.0).is_nan());
 }
+
+#[test]
+fn a_probability_stays_between_nothing_and_all() {
+    // Near f = 0 the continued fraction was 2e-15 beyond 1.
+    let degrees = [0.3, 1.0, 2.5, 7.0, 40.0, 1e3, 1e5];
+    for first in degrees {
+        for second in degrees {
+            for exponent in -400..200 {
+                let f = 10_f64.powf(f64::from(exponent) / 20.0);
+                let tail = f_tail(f, first, second);
+                assert!((0.0..=1.0).contains(&tail), "{f} {first} {second}: {tail}");
+            }
+        }
+    }
+}

@@ -69,6 +69,17 @@ proptest! {
         prop_assert_eq!(order(&x), expected);
     }
 
+    // Even enough for buckets; ties and zeros of both signs among them.
+    #[test]
+    fn the_order_of_even_values_is_that_of_a_stable_sort(
+        x in prop::collection::vec(prop_oneof![-1.0..1.0_f64, Just(0.0), Just(-0.0), Just(0.25)], 0..600)
+    ) {
+        let x: Vec<f64> = x;
+        let mut expected: Vec<u32> = (0..x.len() as u32).collect();
+        expected.sort_by(|&a, &b| x[a as usize].total_cmp(&x[b as usize]));
+        prop_assert_eq!(order(&x), expected);
+    }
+
     #[test]
     fn a_known_order_changes_nothing(x in values(200), mass in 0.1..1.0) {
         let w: Vec<f64> = (0..x.len()).map(|s| (s % 4) as f64 + 0.5).collect();

@@ -1,7 +1,9 @@
 use _core::kernels::ordered::sum_by;
 use _core::kernels::vector::dot::{dot, lagged};
 use _core::kernels::vector::exp::{ExpSlice, LEAST, MOST, exp_m1, exp_slice};
+use _core::kernels::vector::select::{AtLeast, at_least};
 use _core::kernels::vector::stream::{copy_past, fence};
+use _core::kernels::vector::transpose::{LINE, columns_to_rows, rows_to_columns};
 use _core::kernels::vector::{Fused, Separate, dispatch_plain};
 use proptest::prelude::*;
 
@@ -104,6 +106,81 @@ fn stores_past_the_cache_write_what_they_should_on_any_boundary() {
                     .chain(&to[start + length..])
                     .all(|&x| x == -1.0)
             );
+        }
+    }
+}
+
+#[test]
+fn tiles_are_turned_and_turned_back() {
+    let mut stream = Stream::new(12);
+    for (width, distance) in [(8, 8), (24, 9), (29, 40)] {
+        let rows: Vec<Vec<f64>> = (0..LINE)
+            .map(|_| (0..width).map(|_| stream.normal()).collect())
+            .collect();
+        let mut columns = vec![7.0; width * distance];
+        let lines = std::array::from_fn(|row| &rows[row][..]);
+        let whole = width / LINE * LINE;
+        assert_eq!(rows_to_columns(lines, &mut columns, distance), whole);
+        for column in 0..width {
+            for row in 0..LINE {
+                let found = columns[column * distance + row];
+                let expected = if column < whole {
+                    rows[row][column]
+                } else {
+                    7.0
+                };
+                assert_eq!(found, expected, "{row} {column} of {width}");
+            }
+        }
+        let mut back = vec![vec![7.0; width]; LINE];
+        let [a, b, c, d, e, f, g, h] = &mut back[..] else {
+            panic!("eight rows");
+        };
+        let done = columns_to_rows(&columns, distance, [a, b, c, d, e, f, g, h]);
+        assert_eq!(done, whole);
+        for (back, row) in back.iter().zip(&rows) {
+            assert_eq!(back[..whole], row[..whole]);
+        }
+    }
+}
+
+#[test]
+fn tiles_without_room_are_left_alone() {
+    let row = [1.0; 16];
+    let mut columns = [0.0; 8 * 8 + 7];
+    rows_to_columns([&row; LINE], &mut columns, 8);
+    assert!(columns[..64].iter().all(|&entry| entry == 1.0));
+    assert!(columns[64..].iter().all(|&entry| entry == 0.0));
+    let mut rows = [[7.0; 16]; LINE];
+    let done = columns_to_rows(&columns, 8, rows.each_mut().map(|row| &mut row[..]));
+    assert_eq!(done, 8);
+}
+
+#[test]
+fn the_places_of_large_values_are_those_of_a_plain_search() {
+    let mut stream = Stream::new(13);
+    for length in [0, 1, 15, 16, 33, 1024, 1025, 5000] {
+        let values: Vec<f64> = (0..length).map(|_| stream.normal()).collect();
+        for (sign, least) in [
+            (1.0, 1.3),
+            (-1.0, 1.3),
+            (1.0, f64::NEG_INFINITY),
+            (1.0, f64::NAN),
+        ] {
+            let expected: Vec<u32> = (0..length as u32)
+                .filter(|&place| sign * values[place as usize] >= least)
+                .collect();
+            let mut found = Vec::new();
+            at_least(&values, sign, least, &mut found);
+            assert_eq!(found, expected);
+            found.clear();
+            dispatch_plain(AtLeast {
+                values: &values,
+                sign,
+                least,
+                found: &mut found,
+            });
+            assert_eq!(found, expected);
         }
     }
 }

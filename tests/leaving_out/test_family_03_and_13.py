@@ -150,3 +150,27 @@ def test_folding_in_the_true_refit_of_row_21_brings_the_total_nearer() -> None:
     # Folding the same refit in twice changes nothing.
     again = cured.with_refits({20: float(exact[20])})
     assert again.log_score.error == cured.log_score.error
+
+
+def test_eight_schools_pooled_completely_have_the_published_in_sample_score() -> None:
+    """
+    Minus twice the log predictive density of all schools: 59.8, from memory.
+
+    Gelman, Hwang, Vehtari (2014), Statistics and Computing 24, table 1, rounded data of Rubin
+    (1981), one effect for all schools with a flat prior. The left-out scores are closed forms.
+    """
+    y = np.array([28.0, 8.0, -3.0, 7.0, -1.0, 1.0, 18.0, 12.0])
+    variance = np.array([15.0, 10.0, 16.0, 11.0, 9.0, 11.0, 10.0, 18.0]) ** 2
+    precision = 1 / variance
+    rng = np.random.default_rng(SEED)
+    centre = (precision * y).sum() / precision.sum()
+    mu = centre + rng.normal(size=4000) / np.sqrt(precision.sum())
+    loglik = normal_log_density(y, mu[:, None], variance)
+    left = leave_out(sy.Fit({"mu": mu}, loglik=loglik, ordered=False)._record)
+    # The published figure is rounded to one decimal; the Monte Carlo error is far smaller.
+    assert abs(-2 * float(left.in_sample.sum()) - 59.8) <= 0.05
+    rest = precision.sum() - precision
+    exact = normal_log_density(
+        y, ((precision * y).sum() - precision * y) / rest, variance + 1 / rest
+    )
+    assert np.all(np.abs(left.by_group.value - exact) <= 4.5 * left.by_group.error)

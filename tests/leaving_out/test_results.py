@@ -93,6 +93,51 @@ def test_a_chain_apart_is_seen_in_the_total() -> None:
     assert "chains_disagree" in {r.code for r in left.verdict.reasons}
 
 
+def test_a_chain_apart_is_seen_in_the_groups_that_it_weighs_upon() -> None:
+    """One chain in five stands apart: readings that see it are told, one that does not is not."""
+    rng = np.random.default_rng(SEED)
+    x = rng.normal(size=(4, 500))
+    x[3] += 1.5
+    loading = np.array([0.4, 0.4, 0.0, 0.4])
+    loglik = -0.5 * (1.0 - loading * x[..., None]) ** 2
+    loglik[..., 2] = 0.1 * rng.normal(size=x.shape)
+    verdict = leave_out(sy.Fit({"x": x}, loglik=loglik)._record).by_group.verdict
+    told = ["chain_share" in {r.code for r in verdict[i].reasons} for i in range(4)]
+    assert told == [True, True, False, True]
+
+
+def test_chains_that_agree_are_not_told_apart_however_many_groups_there_are() -> None:
+    """
+    5000 groups, four chains of the same draws in another order: p-values count their number.
+
+    Held one by one against 1e-3 about five would be told; together at most one in a thousand runs.
+    """
+    rng = np.random.default_rng(SEED)
+    x = rng.normal(size=(4, 250))
+    loglik = -0.5 * (rng.normal(size=5000) - 0.3 * rng.normal(size=(4, 250, 5000))) ** 2
+    verdict = leave_out(sy.Fit({"x": x}, loglik=loglik)._record).by_group.verdict
+    codes = {f.code: int((f.rank < 2).sum()) for f in verdict.findings if f.figure.ndim}
+    assert codes["chain_share"] == 0
+
+
+@pytest.mark.parametrize("is_callable", [False, True])
+def test_the_list_of_cures_names_moment_matching_where_the_likelihood_can_be_moved(
+    is_callable: bool,
+) -> None:
+    rng = np.random.default_rng(SEED)
+    y = np.append(rng.normal(size=20), 25.0)
+    mu = y.mean() + rng.normal(size=(4, 250)) / np.sqrt(21)
+
+    def loglik(draws: Any) -> Array:
+        return np.asarray(-0.5 * (y - draws["mu"][..., None]) ** 2)
+
+    source: Any = loglik if is_callable else loglik({"mu": mu})
+    fit = sy.Fit({"mu": mu}, prior={"mu": sy.Normal(0, 100)}, loglik=source)
+    cure = leave_out(fit._record).untrusted()["cure"][0]
+    assert ("moment matching by repair.left_out" in cure) == is_callable
+    assert "with_refits" in cure
+
+
 @pytest.fixture
 def axes() -> Any:
     import matplotlib as mpl

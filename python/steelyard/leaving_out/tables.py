@@ -66,7 +66,7 @@ def _cure(left: LeaveOut, tail_shape: float) -> str:
     term = terms.get(left._groups.term.name)
     movable = term is not None and callable(term.source) and not hasattr(term.source, "shape")
     if movable and left._base.prior is not None:
-        cures.append("moment matching")
+        cures.append("moment matching by repair.left_out")
     if tail_shape < 1 and needed_draws(tail_shape) <= 100 * left._base.draws.size:
         cures.append(f"{short(needed_draws(tail_shape))} draws")
     cures.append("a refit without it, folded in by with_refits")

@@ -9,6 +9,8 @@
 //! closely around 1): at most 0.77 ulp with fused multiply-add, 0.86 ulp without; the two differ in
 //! 2 % of the results, by the last bit.
 
+use std::f64::consts::LN_2;
+
 use super::{Arithmetic, Work, dispatch};
 
 /// `log 2`, its first 33 bits: times any exponent it is exact.
@@ -29,9 +31,6 @@ const R: [f64; 7] = [
 /// Bits of `√½`: where a binade of `z` begins.
 const BINADE: u64 = 0x3fe6_a09e_0000_0000;
 
-/// `2^52`, whose last bit is worth one: or-ed onto an integer below it, the two add.
-const TWO_52: f64 = 4_503_599_627_370_496.0;
-
 /// Whether [`ln`] holds at `x`: positive, finite and not subnormal.
 #[inline(always)]
 pub fn is_ordinary(x: f64) -> bool {
@@ -41,44 +40,51 @@ pub fn is_ordinary(x: f64) -> bool {
 /// `log x` where [`is_ordinary`]; elsewhere an arbitrary number.
 #[inline(always)]
 pub fn ln<A: Arithmetic>(x: f64) -> f64 {
-    let (k, f) = parts(x);
-    series::<A>(k, f, f / (2.0 + f))
+    let (k, f) = parts::<A>(x);
+    let s = f / (2.0 + f);
+    let half = 0.5 * f;
+    let (u, even, odd) = halves::<A>(s);
+    let rest = A::mul_add(u, even, u * u * odd);
+    let small = A::mul_add(s, A::mul_add(half, f, rest), k * LN_2_LOW);
+    A::mul_add(k, LN_2_HIGH, f - A::mul_add(half, f, -small))
 }
 
-/// `log x` and `log y`, as [`ln`] but for a rounding: a division costs as much as all the rest, and
-/// here both share one.
+/// `log x` and `log y` where [`is_ordinary`], within 2 units of the last place or `2e-16`: a
+/// division costs as much as half a logarithm, and here both share one.
 #[inline(always)]
 pub fn ln_two<A: Arithmetic>(x: f64, y: f64) -> (f64, f64) {
-    let ((k, f), (l, g)) = (parts(x), parts(y));
+    let ((k, f), (l, g)) = (parts::<A>(x), parts::<A>(y));
     let (below_f, below_g) = (2.0 + f, 2.0 + g);
     let share = 1.0 / (below_f * below_g);
-    let first = series::<A>(k, f, f * (below_g * share));
-    (first, series::<A>(l, g, g * (below_f * share)))
+    let (s, t) = (f * (below_g * share), g * (below_f * share));
+    (artanh::<A>(k, s), artanh::<A>(l, t))
 }
 
-/// `k` and `f` of the head of this file.
+/// `k log 2 + 2 artanh s`.
 #[inline(always)]
-fn parts(x: f64) -> (f64, f64) {
-    let bits = x.to_bits();
-    let above = bits.wrapping_sub(BINADE);
-    let z = f64::from_bits(bits.wrapping_sub(above & 0xfff0_0000_0000_0000));
-    // The exponent lies in the upper 12 bits as a signed number; AVX2 cannot convert it, so it is
-    // moved by 2048 and read off as the fraction of a number near 2^52.
-    let moved = (above >> 52) ^ 0x800;
-    let k = f64::from_bits(moved | TWO_52.to_bits()) - (TWO_52 + 2048.0);
-    (k, z - 1.0)
+fn artanh<A: Arithmetic>(k: f64, s: f64) -> f64 {
+    let (u, even, odd) = halves::<A>(s);
+    let ratio = A::mul_add(u, even, A::mul_add(u * u, odd, 2.0));
+    A::mul_add(k, LN_2, s * ratio)
 }
 
+/// `u = s²`, and the parts of `R(u) = u even + u² odd` of the head of this file.
 #[inline(always)]
-fn series<A: Arithmetic>(k: f64, f: f64, s: f64) -> f64 {
+fn halves<A: Arithmetic>(s: f64) -> (f64, f64, f64) {
     let u = s * s;
     let v = u * u;
     let even = A::mul_add(v, A::mul_add(v, A::mul_add(v, R[6], R[4]), R[2]), R[0]);
     let odd = A::mul_add(v, A::mul_add(v, R[5], R[3]), R[1]);
-    let half = 0.5 * f;
-    let rest = A::mul_add(u, even, v * odd);
-    let small = A::mul_add(s, A::mul_add(half, f, rest), k * LN_2_LOW);
-    A::mul_add(k, LN_2_HIGH, f - A::mul_add(half, f, -small))
+    (u, even, odd)
+}
+
+/// `k` and `f` of the head of this file.
+#[inline(always)]
+fn parts<A: Arithmetic>(x: f64) -> (f64, f64) {
+    let bits = x.to_bits();
+    let above = bits.wrapping_sub(BINADE);
+    let z = f64::from_bits(bits.wrapping_sub(above & 0xfff0_0000_0000_0000));
+    (A::upper_12(above), z - 1.0)
 }
 
 /// Writes `log x` into `out`, of equal length: `−inf` at 0, NaN below.

@@ -24,10 +24,25 @@ pub trait Arithmetic {
 
     /// The same in single precision.
     fn mul_add_single(a: f32, b: f32, c: f32) -> f32;
+
+    /// The upper 12 bits as a signed number, which is exact.
+    #[inline(always)]
+    fn upper_12(bits: u64) -> f64 {
+        // AVX2 cannot convert an integer, so it is moved by 2048 and read off as the fraction of a
+        // number near 2^52.
+        let moved = (bits >> 52) ^ 0x800;
+        f64::from_bits(moved | TWO_52.to_bits()) - (TWO_52 + 2048.0)
+    }
 }
+
+/// `2^52`, whose last bit is worth one: or-ed onto an integer below it, the two add.
+const TWO_52: f64 = 4_503_599_627_370_496.0;
 
 /// One rounding, by an instruction of the processor.
 pub struct Fused;
+
+/// As [`Fused`], with the same bits, where integers can be converted as well.
+pub struct Converting;
 
 /// Two roundings; without the instruction a fused operation would be a slow library call.
 pub struct Separate;
@@ -41,6 +56,23 @@ impl Arithmetic for Fused {
     #[inline(always)]
     fn mul_add_single(a: f32, b: f32, c: f32) -> f32 {
         a.mul_add(b, c)
+    }
+}
+
+impl Arithmetic for Converting {
+    #[inline(always)]
+    fn mul_add(a: f64, b: f64, c: f64) -> f64 {
+        a.mul_add(b, c)
+    }
+
+    #[inline(always)]
+    fn mul_add_single(a: f32, b: f32, c: f32) -> f32 {
+        a.mul_add(b, c)
+    }
+
+    #[inline(always)]
+    fn upper_12(bits: u64) -> f64 {
+        ((bits as i64) >> 52) as f64
     }
 }
 
@@ -96,7 +128,7 @@ pub fn dispatch<W: Work>(work: W) -> W::Output {
 #[cfg(target_arch = "x86_64")]
 #[target_feature(enable = "avx512f,avx512dq,avx2,fma")]
 fn with_avx512<W: Work>(work: W) -> W::Output {
-    work.run::<Fused>()
+    work.run::<Converting>()
 }
 
 #[cfg(target_arch = "x86_64")]
