@@ -69,8 +69,8 @@ impl Work for Legal<'_> {
     fn run<A: Arithmetic>(self) -> [bool; LANES] {
         let mut bad = [0_u64; LANES];
         for row in self.0 {
-            for lane in 0..LANES {
-                bad[lane] |= u64::from(!(0.0..=f64::MAX).contains(&row.0[lane]));
+            for (bad, weight) in bad.iter_mut().zip(&row.0) {
+                *bad |= u64::from(!(0.0..=f64::MAX).contains(weight));
             }
         }
         bad.map(|bad| bad == 0)

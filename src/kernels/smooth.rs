@@ -2,7 +2,7 @@
 
 use super::largest::{Ranked, Spread};
 use super::reductions::slice_sums;
-use super::tail::{Fitted, Room, Scale, tail_length, with_room};
+use super::tail::{Found, Room, Scale, tail_length, with_room};
 use super::vector::exp::exp;
 use super::vector::{Arithmetic, Work, dispatch};
 use super::weight_sums::{form, larger};
@@ -44,7 +44,7 @@ pub fn smooth_in_place(x: &mut [f64], relative_efficiency: f64) -> f64 {
     with_room(|room| {
         let tail = tail_of(x, largest, spread, relative_efficiency, room);
         match tail {
-            Fitted::Fitted { cutoff, fit } => {
+            Found::Fitted { cutoff, fit } => {
                 let smoothed = room
                     .quantiles
                     .logs(fit, cutoff.exp(), room.finder.ranked.len());
@@ -164,13 +164,13 @@ fn tail_of(
     spread: Option<Spread>,
     relative_efficiency: f64,
     room: &mut Room,
-) -> Fitted {
+) -> Found {
     let length = tail_length(x.len(), relative_efficiency);
     let tail = room.fit(x, length, Scale::Log(largest), spread);
     match tail {
         // Where the cut-off has weight every draw of the tail has.
-        Fitted::Fitted { cutoff, .. } if cutoff > -700.0 => return tail,
-        Fitted::Constant => return tail,
+        Found::Fitted { cutoff, .. } if cutoff > -700.0 => return tail,
+        Found::Constant => return tail,
         _ => {}
     }
     let positive = x.iter().filter(|&&x| (x - largest).exp() > 0.0).count();

@@ -59,9 +59,9 @@ pub enum Scale {
 /// `length` must leave at least one value below the tail, the cut-off; else the tail is short.
 pub fn fit_tail(values: &[f64], length: usize, scale: Scale) -> Tail {
     with_room(|room| match room.fit(values, length, scale, None) {
-        Fitted::Short => Tail::Short,
-        Fitted::Constant => Tail::Constant,
-        Fitted::Fitted { cutoff, fit } => Tail::Fitted {
+        Found::Short => Tail::Short,
+        Found::Constant => Tail::Constant,
+        Found::Fitted { cutoff, fit } => Tail::Fitted {
             ranked: room.finder.ranked.clone(),
             cutoff,
             fit,
@@ -71,13 +71,13 @@ pub fn fit_tail(values: &[f64], length: usize, scale: Scale) -> Tail {
 
 /// As [`Tail`], the draws left in [`Room`].
 #[derive(Debug, Clone, Copy, PartialEq)]
-pub(super) enum Fitted {
+pub(super) enum Found {
     Short,
     Constant,
     Fitted { cutoff: f64, fit: Pareto },
 }
 
-impl Fitted {
+impl Found {
     pub(super) fn shape(self) -> f64 {
         match self {
             Self::Short => f64::INFINITY,
@@ -115,16 +115,16 @@ impl Room {
         length: usize,
         scale: Scale,
         spread: Option<Spread>,
-    ) -> Fitted {
+    ) -> Found {
         if length < FEWEST {
-            return Fitted::Short;
+            return Found::Short;
         }
         let sign = match scale {
             Scale::Natural(sign) => sign,
             Scale::Log(_) => 1.0,
         };
         let Some(mut cutoff) = self.finder.find(values, sign, length, spread) else {
-            return Fitted::Short;
+            return Found::Short;
         };
         let ranked = &mut self.finder.ranked;
         if let Scale::Log(maximum) = scale {
@@ -142,7 +142,7 @@ impl Room {
             Scale::Log(_) => least.exp() == most.exp(),
         };
         if constant {
-            return Fitted::Constant;
+            return Found::Constant;
         }
         match scale {
             Scale::Natural(_) => exceedances.iter_mut().for_each(|value| *value -= cutoff),
@@ -152,7 +152,7 @@ impl Room {
             }),
         }
         let fit = pareto::fit_sorted(exceedances).shrunk(length);
-        Fitted::Fitted { cutoff, fit }
+        Found::Fitted { cutoff, fit }
     }
 }
 

@@ -46,7 +46,11 @@ pub fn columns_to_rows(columns: &[f64], distance: usize, rows: [&mut [f64]; LINE
         let Some(lines) = lines_of(columns, distance, tile) else {
             return tile * LINE;
         };
-        turn_plain(lines, &mut |row, line| tiles[row][tile] = line);
+        turn_plain(lines, &mut |row, line| {
+            if let Some(target) = tiles[row].get_mut(tile) {
+                *target = line;
+            }
+        });
     }
     count * LINE
 }
@@ -116,8 +120,11 @@ mod x86 {
             };
             for pair in 0..LINE / 2 {
                 let [even, odd] = turned_pair(lines, pair);
-                tiles[2 * pair][tile] = even;
-                tiles[2 * pair + 1][tile] = odd;
+                for (row, line) in [(2 * pair, even), (2 * pair + 1, odd)] {
+                    if let Some(target) = tiles[row].get_mut(tile) {
+                        *target = line;
+                    }
+                }
             }
         }
         count * LINE
