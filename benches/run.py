@@ -24,6 +24,7 @@ NAMES = (
     "influence",
     "long_run",
     "mean",
+    "multi_sample",
     "swap",
     "densities",
     "deletion",

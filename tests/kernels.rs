@@ -5,6 +5,7 @@
 #![allow(clippy::expect_used, clippy::panic, clippy::unwrap_used)]
 
 mod kernels {
+    mod chain_means;
     mod columns;
     mod correlation;
     mod deletion;
@@ -22,6 +23,9 @@ mod kernels {
     mod long_run;
     mod mean;
     mod moments;
+    mod node_series;
+    mod nodes;
+    mod multi_sample;
     mod ordered;
     mod pareto;
     mod quantile;
@@ -31,6 +35,7 @@ mod kernels {
     mod signed_tail;
     mod smooth;
     mod special;
+    mod spectrum;
     mod support;
     mod vector;
 }

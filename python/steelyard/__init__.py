@@ -53,7 +53,7 @@ from steelyard.densities import (
     Uniform,
     Weibull,
 )
-from steelyard.fit import Fit
+from steelyard.fit import Fit, Pool, pool
 from steelyard.table import Table
 from steelyard.threads import threads
 from steelyard.verdicts import Reason, Verdict
@@ -113,6 +113,7 @@ __all__ = [
     "Pareto",
     "Plan",
     "Poisson",
+    "Pool",
     "Reason",
     "Scenario",
     "SkewNormal",
@@ -129,6 +130,7 @@ __all__ = [
     "drop",
     "errors",
     "log_ratio",
+    "pool",
     "power",
     "raise_noise",
     "read",

@@ -26,6 +26,7 @@ __all__ = [
     "log_sum_exp",
     "long_run_variance",
     "mean_square",
+    "multi_sample",
     "normal_cdf",
     "normal_quantile",
     "normalise",
@@ -39,6 +40,7 @@ __all__ = [
     "skew_normal_tails",
     "smooth",
     "sort_order",
+    "study_nodes",
     "tail_shape",
     "threads",
     "weighted_covariance",
@@ -151,3 +153,22 @@ def weighted_covariance(
     f: npt.NDArray[np.float64], w: npt.NDArray[np.float64]
 ) -> npt.NDArray[np.float64]: ...
 def contributions(z: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def study_nodes(
+    ratios: npt.NDArray[np.float64],
+    columns: npt.NDArray[np.float64],
+    events: npt.NDArray[np.float64],
+    own: npt.NDArray[np.float64],
+    equal_base: bool,
+    starts: npt.NDArray[np.int64],
+    ordered: bool,
+    batches: npt.NDArray[np.int64],
+    shift: bool,
+    weights: npt.NDArray[np.float64] | None,
+) -> npt.NDArray[np.float64]: ...
+def multi_sample(
+    log_densities: npt.NDArray[np.float64],
+    counts: npt.NDArray[np.float64],
+    sizes: npt.NDArray[np.float64],
+    start: npt.NDArray[np.float64],
+    solve: bool,
+) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64], npt.NDArray[np.float64], float]: ...

@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Mapping
 from functools import cached_property
 from html import escape
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from steelyard.answers import Answer, Estimate, base_answer, reweigh
@@ -19,7 +20,8 @@ from steelyard.checking import Findings, check
 # Verbs import what they need when they are called: most scripts use few of them.
 if TYPE_CHECKING:
     from steelyard.leaving_out import LeaveOut, LookAhead
-    from steelyard.planning import Triage
+    from steelyard.planning import Arrival, MoreDraws, RefitPlan, RefitValue, Triage
+    from steelyard.repair.pooling import Pooled
     from steelyard.sensitivity import (
         Bounds,
         Local,
@@ -31,8 +33,10 @@ if TYPE_CHECKING:
         Sweep,
         TippingPoint,
     )
+    from steelyard.show.pool_plots import PoolPlots
+    from steelyard.table import Table
 
-__all__ = ["Fit"]
+__all__ = ["Fit", "Pool", "pool"]
 
 
 class Fit:
@@ -346,7 +350,13 @@ class Fit:
         return tipping_point(self._record, family, event, level, between, start)
 
     def worst_case(
-        self, quantity: Any, *, divergence: float | None = None, ratio: float | None = None
+        self,
+        quantity: Any,
+        *,
+        divergence: float | None = None,
+        ratio: float | None = None,
+        contamination: float | None = None,
+        prior_of: str | None = None,
     ) -> Bounds:
         """
         Lowest and highest mean of a quantity over a class of changes.
@@ -360,11 +370,16 @@ class Fit:
         ratio : float, optional
             All targets whose density ratio to the base has max/min of at most this, above 1; holds
             for posteriors when it holds for priors [1]_.
+        contamination : float, optional
+            All priors of one parameter that are the stated one but for this share, in (0, 1), of
+            any other prior whatever [2]_.
+        prior_of : str, optional
+            That parameter: a single number with a proper prior of its own.
 
         Returns
         -------
         Bounds
-            Both ends with errors and verdicts; those of a divergence are inner bounds.
+            Both ends with errors and verdicts; all but those of a ratio are inner bounds.
 
         Raises
         ------
@@ -375,10 +390,18 @@ class Fit:
         ----------
         .. [1] DeRobertis, Hartigan (1981), Annals of Statistics 9; Csiszár (1975), Annals of
            Probability 3.
+        .. [2] Berger, Berliner (1986), Annals of Statistics 14.
         """
         from steelyard.sensitivity import worst_case
 
-        return worst_case(self._record, quantity, divergence=divergence, ratio=ratio)
+        return worst_case(
+            self._record,
+            quantity,
+            divergence=divergence,
+            ratio=ratio,
+            contamination=contamination,
+            prior_of=prior_of,
+        )
 
     def least_perturbation(
         self, quantity: Any, target: float, *, prior_of: str | None = None
@@ -529,7 +552,12 @@ class Fit:
         return prior_factors(self._record, priors, against)
 
     def triage(
-        self, scenarios: Any, quantities: Any = None, event: Any = None, level: Any = None
+        self,
+        scenarios: Any,
+        quantities: Any = None,
+        event: Any = None,
+        level: Any = None,
+        probs: Any = None,
     ) -> Triage:
         """
         Answer a list of scenarios in one table in which no row is lost.
@@ -544,6 +572,8 @@ class Fit:
             The event of a decision.
         level : float, optional
             The level of that decision.
+        probs : array_like, optional
+            Probabilities of quantiles that are wanted beside the means.
 
         Returns
         -------
@@ -557,7 +587,186 @@ class Fit:
         """
         from steelyard.planning import triage
 
-        return triage(self._record, scenarios, quantities, event, level)
+        return triage(self._record, scenarios, quantities, event, level, probs)
+
+    def plan_refits(self, scenarios: Any, efficiency: float = 0.5, cost: Any = None) -> RefitPlan:
+        """
+        The fewest refits to pool with these draws so that every scenario is answered.
+
+        Parameters
+        ----------
+        scenarios : Plan, or mapping of str to Change
+            What is to be asked; each may be refitted.
+        efficiency : float, optional
+            Effective draws of each scenario to one draw of the pool, in (0, 1).
+        cost : float or mapping of str to float, optional
+            Price of each refit; all cost the same by default.
+
+        Returns
+        -------
+        RefitPlan
+            Refits, shares of the pool, predicted efficiencies with verdicts, and advice.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, UnknownNameError
+            For no scenarios, an efficiency outside (0, 1), or prices that are not positive.
+        ChangeError, PriorError, LikelihoodError, ShapeError, RatioError
+            For a change that does not fit the base.
+
+        Notes
+        -----
+        From a pool with shares π the efficiency of scenario b is ``1/Σ w_b²/(Σ_a π_a w_a)``, the
+        weights w those of the base draws: one over one plus a chi-square divergence. Scenarios out
+        of reach of the base draws are refitted themselves, with at least their own share as
+        efficiency, and are not counted on for any other.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rng = np.random.default_rng(1)
+        >>> fit = sy.Fit({"rate": rng.normal(0.1, 0.02, (4, 500))}, {"rate": sy.Normal(0.1, 0.02)})
+        >>> plan = fit.plan_refits(
+        ...     {
+        ...         "lower": sy.swap_prior(rate=sy.Normal(0.07, 0.01)),
+        ...         "low": sy.swap_prior(rate=sy.Normal(0.075, 0.01)),
+        ...         "tight": sy.swap_prior(rate=sy.Normal(0.1, 0.015)),
+        ...     },
+        ...     efficiency=0.3,
+        ... )
+        >>> len(plan.refits), bool(plan.reached.all())
+        (1, True)
+        """
+        from steelyard.planning import plan_refits
+
+        return plan_refits(self._record, scenarios, efficiency, cost)
+
+    def more_draws(
+        self, quantity: Any, error: float, *, change: Change | None = None, of: str = "mean"
+    ) -> MoreDraws:
+        """
+        How many draws bring a Monte Carlo error down to a given one.
+
+        Parameters
+        ----------
+        quantity : str, array_like or callable
+            What is asked; an event for ``of="prob"``.
+        error : float
+            The error wanted.
+        change : Change, optional
+            The change under which it is asked; none by default.
+        of : {"mean", "sd", "prob"}, optional
+            What of it.
+
+        Returns
+        -------
+        MoreDraws
+            The number, and the power by which the error falls.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, QuantityError, UnknownNameError
+            For an error that is not positive, or another quantity than one.
+
+        Notes
+        -----
+        ``error ∝ S^{−(1 − max(k, ½))}`` with the tail shape k of the quantity: from ½ on its
+        contributions have no variance, from 1 on no mean.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rng = np.random.default_rng(1)
+        >>> fit = sy.Fit({"rate": rng.normal(0.1, 0.02, (4, 500))})
+        >>> now = fit.base.mean("rate").error
+        >>> round(fit.more_draws("rate", now / 3).draws / 2000, 2)
+        9.0
+        """
+        from steelyard.planning import more_draws
+
+        return more_draws(self._record, quantity, error, change=change, of=of)
+
+    def value_of_refit(
+        self, change: Change, event: Any, level: float, *, draws: int | None = None
+    ) -> RefitValue:
+        """
+        What a refit under a change is worth to a decision.
+
+        Parameters
+        ----------
+        change : Change
+            The change.
+        event : str, callable or array_like
+            One yes or no a draw.
+        level : float
+            The decision is whether the event's probability is above it.
+        draws : int, optional
+            Independent draws that the refit would give; as many as there are by default.
+
+        Returns
+        -------
+        RefitValue
+            Probability that the decision is on the right side now, and as expected afterwards; and
+            what that is worth.
+
+        Raises
+        ------
+        ArgumentError, ArgumentTypeError, QuantityError
+            For a level outside (0, 1), several events, or no draws.
+
+        Notes
+        -----
+        The Monte Carlo error is taken as normal; where the verdict is not sound it is not known
+        what a refit would show, and nothing is said.
+
+        References
+        ----------
+        .. [1] Raiffa, Schlaifer (1961), Applied Statistical Decision Theory.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rng = np.random.default_rng(1)
+        >>> fit = sy.Fit({"rate": rng.normal(0.1, 0.02, (4, 500))}, {"rate": sy.Normal(0.1, 0.02)})
+        >>> tight = sy.swap_prior(rate=sy.Normal(0.1, 0.015))
+        >>> found = fit.value_of_refit(tight, "rate > 0.1", 0.51)
+        >>> bool(0.5 < found.right_now < found.right_after < 1)
+        True
+        """
+        from steelyard.planning import value_of_refit
+
+        return value_of_refit(self._record, change, event, level, draws=draws)
+
+    def arrive(self, saved: str | Path | None = None) -> Arrival:
+        """
+        Take in data as they arrive.
+
+        Parameters
+        ----------
+        saved : str or Path, optional
+            What ``Arrival.save`` wrote, to go on from.
+
+        Returns
+        -------
+        Arrival
+            Batches are added to it; each gives an answer, until a refit is due.
+
+        Raises
+        ------
+        DrawsError
+            For a file that is something else, or of other draws.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rate = np.random.default_rng(1).normal(0.1, 0.02, (4, 500))
+        >>> arrival = sy.Fit({"rate": rate}, {"rate": sy.Normal(0.1, 0.02)}).arrive()
+        >>> bool(arrival.add("week 1", -0.5 * ((0.13 - rate) / 0.04) ** 2).mean("rate").value > 0.1)
+        True
+        """
+        from steelyard.planning import Arrival
+
+        return Arrival(self._record) if saved is None else Arrival.load(saved, self)
 
     def leave_out(
         self,
@@ -809,3 +1018,171 @@ class Fit:
 
     def _repr_html_(self) -> str:
         return f"<pre>{escape(repr(self))}</pre>"
+
+
+class Pool(Fit):
+    """
+    Several fits used together: the verbs of a fit, on the draws of all.
+
+    Made by :func:`steelyard.pool`. Changes are relative to the first fit; whether they reach beyond
+    the draws is judged against all fits together.
+
+    Attributes
+    ----------
+    labels : tuple of str
+        Names of the fits.
+    log_constants : Estimate
+        Natural log normalising constants relative to the first fit's, one a fit.
+    covariance : numpy.ndarray
+        Their Monte Carlo covariance, ``(fits, fits)``.
+    shared_mass : numpy.ndarray
+        Share of the mass of a fit (row) that lies where another (column) makes draws.
+    effective_sizes : numpy.ndarray
+        Effective sizes of the fits, by which their draws count.
+
+    Examples
+    --------
+    >>> import numpy as np, steelyard as sy
+    >>> rng = np.random.default_rng(1)
+    >>> narrow = sy.Fit({"mu": rng.normal(0, 1, (4, 500))}, prior={"mu": sy.Normal(0, 1)})
+    >>> wide = sy.Fit({"mu": rng.normal(0, 2, (4, 500))}, prior={"mu": sy.Normal(0, 2)})
+    >>> pool = sy.pool([narrow, wide], data="same", common="likelihood")
+    >>> pool.reweigh(sy.swap_prior(mu=sy.Normal(0, 1.8))).verdict.is_sound
+    True
+    """
+
+    def __init__(self, pooled: Pooled) -> None:
+        self._record = pooled.record
+        self._pooled = pooled
+
+    @property
+    def labels(self) -> tuple[str, ...]:
+        """Names of the fits."""
+        return self._pooled.labels
+
+    @property
+    def log_constants(self) -> Estimate:
+        """Log normalising constants relative to the first fit's."""
+        return self._pooled.log_constants
+
+    @property
+    def covariance(self) -> Any:
+        """Monte Carlo covariance of the log constants."""
+        return self._pooled.covariance
+
+    @property
+    def shared_mass(self) -> Any:
+        """Share of the mass of a fit (row) that lies where another (column) makes draws."""
+        return self._pooled.shared_mass
+
+    @property
+    def effective_sizes(self) -> Any:
+        """Effective sizes of the fits, by which their draws count."""
+        return self._pooled.sizes
+
+    def check(self) -> Findings:
+        """
+        Check the claimed base of every fit by itself.
+
+        Returns
+        -------
+        Findings
+            Those of each fit, the name of the fit before the check.
+        """
+        return self._pooled.check()
+
+    def table(self) -> Table:
+        """
+        One row for each fit.
+
+        Returns
+        -------
+        Table
+            Draws, effective size, log constant and its error, and the mass kept to itself.
+        """
+        return self._pooled.table()
+
+    @property
+    def plot(self) -> PoolPlots:
+        """Plots of the pool; call it for the shared mass."""
+        from steelyard.show.pool_plots import PoolPlots
+
+        return PoolPlots(self._pooled)
+
+    def __str__(self) -> str:
+        return f"{self.table()}\nthe first fit from all draws: {self.base.verdict}"
+
+    def __repr__(self) -> str:
+        return f"<Pool of {len(self.labels)} fits, {self.draws.size} draws>\n{self.table()}"
+
+    def _repr_html_(self) -> str:
+        return self.table()._repr_html_() + self.base.verdict._repr_html_()
+
+
+def pool(
+    fits: Any, *, data: str, common: str | Iterable[str] = (), log_constants: Any = None
+) -> Pool:
+    """
+    Use several fits together.
+
+    Parameters
+    ----------
+    fits : sequence of Fit, or mapping of str to Fit
+        Fits of the same parameters, of unequal size and mixing.
+    data : {"same", "disjoint"}
+        Whether the fits saw the same data, under different priors or likelihoods, or parts of it
+        that have nothing in common.
+    common : str or iterable of str, optional
+        Prior or likelihood terms that are the same in all fits: they cancel and are not evaluated
+        at the draws of the others, so that arrays will do. ``"likelihood"`` (or ``"prior"``) stands
+        for what no fit states.
+    log_constants : array_like, optional
+        Log normalising constants of the fits, where they are known; one a fit.
+
+    Returns
+    -------
+    Pool
+        A fit whose draws are those of all fits, and whose base is the posterior of the first; for
+        disjoint data, the posterior of all data, the prior counted once.
+
+    Raises
+    ------
+    ArgumentError, ArgumentTypeError
+        For less than two fits, or another `data`.
+    PriorError, LikelihoodError
+        Where a term that is not common cannot be evaluated at the draws of the other fits.
+    DrawsError, ShapeError, UnknownNameError, RatioError
+        For fits of other parameters or data, or terms in `common` that are not there.
+
+    Notes
+    -----
+    Constants solve ``exp(−f_k) = Σ_x c(x) q_k(x) / Σ_l n_l exp(f_l) q_l(x)`` [1]_ with effective
+    sizes n and ``c`` the effective size of a draw's fit over its number of draws; the weights of
+    any target are ``c q / Σ_l n_l exp(f_l) q_l``. Errors take the draws of each fit by itself, in
+    chain order, and include those of the constants.
+
+    References
+    ----------
+    .. [1] Vardi (1985), Annals of Statistics 13; Geyer (1994), Univ. of Minnesota TR 568; Kong,
+       McCullagh, Meng, Nicolae, Tan (2003), JRSS B 65; Shirts, Chodera (2008), J. Chem. Phys. 129.
+
+    Examples
+    --------
+    Two fits of the corrosion rate of one quay wall, under a tight prior and a wide one:
+
+    >>> import numpy as np, steelyard as sy
+    >>> rng = np.random.default_rng(1)
+    >>> readings = rng.normal(0.12, 0.04, size=20)
+    >>> def fitted(sd):
+    ...     precision = 20 / 0.04**2 + 1 / sd**2
+    ...     mean = (readings.sum() / 0.04**2 + 0.10 / sd**2) / precision
+    ...     rate = rng.normal(mean, precision**-0.5, size=(4, 500))
+    ...     loglik = -0.5 * ((readings - rate[..., None]) / 0.04) ** 2
+    ...     return sy.Fit({"rate": rate}, {"rate": sy.Normal(0.10, sd)}, {"gauge A": loglik})
+    >>> both = sy.pool([fitted(0.01), fitted(0.1)], data="same", common="gauge A")
+    >>> both.reweigh(sy.swap_prior(rate=sy.Flat())).mean("rate").verdict.is_sound
+    True
+    """
+    from steelyard.repair.pools import pool_fits
+
+    return Pool(pool_fits(fits, Fit, data, common, log_constants))

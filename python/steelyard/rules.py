@@ -77,11 +77,13 @@ RULES: Mapping[str, Rule] = {
         1.0,
         math.inf,
         "from",
-        "The tail shape of this quantity's contributions is {figure}, not below {limit}, and fewer "
-        "than 4 draws carry it: its Monte Carlo error cannot be relied on.",
+        "The tail shape of this quantity's contributions is {figure}, not below {limit}, and too "
+        "few draws carry it for that (4 are enough below a shape of 2, else 25): its Monte Carlo "
+        "error cannot be relied on.",
         "Ask for a less tail-bound quantity (a median, a probability), a smaller change, or refit.",
         "no finite mean from 1 on; where 4 draws or more carry a quantity, and below 1, intervals "
-        "of the right degrees of freedom hold whatever the shape (make honesty); ours",
+        "of the right degrees of freedom hold (make honesty), but not from 2 on, where 25 are "
+        "asked for (Cochran 1977): the sd of a normal posterior under half its likelihood; ours",
     ),
     "few_contributions": Rule(
         2.0,
@@ -270,5 +272,23 @@ RULES: Mapping[str, Rule] = {
         "The log scores of {figure} groups come from fits without them.",
         "Nothing to do if those fits can be trusted.",
         "counted",
+    ),
+    "pool_overlap": Rule(
+        10.0,
+        3.0,
+        "below",
+        "The draws of {fit} share only {figure} effective draws with those of the others, below "
+        "{limit}: its constant against them is hardly known.",
+        "Leave that fit out, or add a fit that lies between.",
+        "one over the variance of a log constant between two fits; limits ours",
+    ),
+    "pool_contradiction": Rule(
+        1e-3,
+        1e-6,
+        "below",
+        "The draws of {fit} contradict those of the others (p = {figure}, below {limit}): they are "
+        "not distributed as the stated terms say, or the others are not.",
+        "Run check() on the fit, look at its terms and its convergence, or leave it out.",
+        "detailed balance between the draws of a fit and those of the others; limits ours",
     ),
 }

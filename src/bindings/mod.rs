@@ -11,6 +11,8 @@ mod interval;
 mod log_sum;
 mod long_run;
 mod mean;
+mod nodes;
+mod multi_sample;
 mod ordered;
 mod pareto;
 mod quantile;
@@ -45,6 +47,9 @@ mod _core {
     use super::mean::{
         contributions, mean_square, weighted_covariance, weighted_mean, weighted_moments,
     };
+    #[pymodule_export]
+    use super::nodes::study_nodes;
+    use super::multi_sample::multi_sample;
     #[pymodule_export]
     use super::ordered::{set_threads, threads};
     #[pymodule_export]

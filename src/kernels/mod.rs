@@ -4,6 +4,7 @@
 //! on threads without letting their number show in the result.
 
 mod blocks;
+pub mod chain_means;
 pub mod columns;
 pub mod correlation;
 pub mod cumulated;
@@ -27,17 +28,23 @@ pub mod long_run;
 pub mod mean;
 pub mod mean_logs;
 pub mod moments;
+pub mod node_series;
+pub mod nodes;
+pub mod multi_sample;
 pub mod ordered;
 pub mod pareto;
 pub mod points;
+pub mod positive;
 pub mod quantile;
 pub mod quantile_many;
 pub mod reductions;
 pub mod resample;
+pub mod shares;
 pub mod signed_tail;
 pub mod smooth;
 pub mod sorting;
 pub mod special;
+pub mod spectrum;
 pub mod tail;
 pub mod vector;
 pub mod weight_sums;

@@ -2,6 +2,9 @@
 
 use super::pareto::FEWEST;
 use super::tail::{Scale, fit_tail, tail_length};
+use super::vector::{Arithmetic, Work, dispatch};
+
+const LANES: usize = 8;
 
 /// Tail shape of influence values `z`, shape `(n,)`, natural scale, any sign.
 ///
@@ -11,17 +14,51 @@ use super::tail::{Scale, fit_tail, tail_length};
 /// shape of the sides that count, `−inf` if none does. It does not change with the unit of `z`.
 /// NaN or an infinite entry gives NaN.
 pub fn signed_tail_shape(z: &[f64], relative_efficiency: f64) -> f64 {
-    // A product with 0 is 0 but for NaN and infinities; the loop has no branch.
-    if z.iter().fold(0.0, |any, entry| any + 0.0 * entry).is_nan() {
+    let sides = dispatch(Sides(z));
+    if sides.zero.is_nan() {
         return f64::NAN;
     }
-    let upper = side_shape(z, 1.0, relative_efficiency);
-    let lower = side_shape(z, -1.0, relative_efficiency);
+    let upper = side_shape(z, 1.0, sides.above as usize, relative_efficiency);
+    let lower = side_shape(z, -1.0, sides.below as usize, relative_efficiency);
     upper.max(lower)
 }
 
-fn side_shape(z: &[f64], sign: f64, relative_efficiency: f64) -> f64 {
-    let side = z.iter().map(|entry| usize::from(sign * entry > 0.0)).sum();
+/// Values above and below 0; 0, or NaN where a value is not finite.
+struct Found {
+    above: f64,
+    below: f64,
+    zero: f64,
+}
+
+struct Sides<'a>(&'a [f64]);
+
+impl Work for Sides<'_> {
+    type Output = Found;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> Found {
+        let (mut above, mut below, mut zero) = ([0.0; LANES], [0.0; LANES], [0.0; LANES]);
+        for chunk in self.0.chunks(LANES) {
+            for (sum, z) in above.iter_mut().zip(chunk) {
+                *sum += if *z > 0.0 { 1.0 } else { 0.0 };
+            }
+            for (sum, z) in below.iter_mut().zip(chunk) {
+                *sum += if *z < 0.0 { 1.0 } else { 0.0 };
+            }
+            // A product with 0 is 0 but for NaN and infinities; the loop has no branch.
+            for (sum, z) in zero.iter_mut().zip(chunk) {
+                *sum += 0.0 * z;
+            }
+        }
+        Found {
+            above: above.iter().sum(),
+            below: below.iter().sum(),
+            zero: zero.iter().sum(),
+        }
+    }
+}
+
+fn side_shape(z: &[f64], sign: f64, side: usize, relative_efficiency: f64) -> f64 {
     let length = tail_length(side, relative_efficiency);
     if length < FEWEST {
         return f64::NEG_INFINITY;

@@ -16,6 +16,7 @@ CHECKS = {"GL03", "GL07", "SS01", "SS02", "SS03", "PR01", "PR02", "PR03", "PR07"
 # Made by the library, never by its user: their docstrings list attributes instead of parameters.
 RESULTS = {"Answer", "Change", "Decision", "Distance", "Draws", "Estimate", "Reason", "Verdict"}
 RESULTS |= {"LeaveOut", "Contrast", "Calibration", "Combination", "LookAhead", "Flip"}
+RESULTS |= {"Pool"}
 RESULTS |= {"Finding", "Findings", "Smoothed", *sy.errors.__all__}
 
 

@@ -14,6 +14,7 @@ import steelyard as sy
 from steelyard.rules import RULES
 
 from . import twins
+from .pool_cases import contradicting, linked
 from .reason_cases import (
     SEED,
     N,
@@ -74,6 +75,8 @@ STRAINED: list[Case] = [
     ("groups_strained", lambda: left_out(0.85), lambda: left_out(0.4)),
     ("own_latents", lambda: own_effects(0.55), lambda: own_effects(0.45)),
     ("noise_raised", lambda: noisier(1.42), lambda: noisier(1.41)),
+    ("pool_overlap", lambda: linked(5.2), lambda: linked(4.8)),
+    ("pool_contradiction", lambda: contradicting(0.25), lambda: contradicting(0.15)),
 ]
 REFIT: list[Case] = [
     ("groups_refit", lambda: left_out(1.15), lambda: left_out(0.4)),
@@ -96,6 +99,8 @@ REFIT: list[Case] = [
     ),
     ("prior_widened", lambda: widened(1.01), lambda: widened(0.99)),
     ("likelihood_loosened", lambda: both(1.01), lambda: loosened(0.0)),
+    ("pool_overlap", lambda: linked(6.0), lambda: linked(5.6)),
+    ("pool_contradiction", lambda: contradicting(0.35), lambda: contradicting(0.25)),
 ]
 NOTES: list[Case] = [
     (

@@ -149,12 +149,30 @@ REFUSED: dict[str, tuple[Callable[[], Any], type[SteelyardError], str, str]] = {
         "family",
         "NoneType",
     ),
-    "no class": (lambda: worst_case(BASE, "mu"), ArgumentError, "worst_case", "neither"),
+    "no class": (lambda: worst_case(BASE, "mu"), ArgumentError, "worst_case", "none"),
     "two classes": (
         lambda: worst_case(BASE, "mu", divergence=1.0, ratio=2.0),
         ArgumentError,
         "worst_case",
-        "both",
+        "divergence=δ and ratio=R",
+    ),
+    "contamination of no prior": (
+        lambda: worst_case(BASE, "mu", contamination=0.1),
+        ArgumentError,
+        "prior_of",
+        "None",
+    ),
+    "contamination by all": (
+        lambda: worst_case(BASE, "mu", contamination=1.0, prior_of="mu"),
+        ArgumentError,
+        "contamination",
+        "1",
+    ),
+    "contamination of a hierarchy": (
+        lambda: worst_case(BASE, "mu", contamination=0.1, prior_of="rate"),
+        PriorError,
+        "prior_of",
+        "Normal",
     ),
     "a ball of nothing": (
         lambda: worst_case(BASE, "mu", divergence=0.0),

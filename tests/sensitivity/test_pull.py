@@ -41,6 +41,22 @@ def test_powers_of_a_normal_model(identifier: str, prior: Any, kind: str) -> Non
             assert power in (0.5, 2.0)
 
 
+@pytest.mark.parametrize("seed", range(71, 77))
+def test_an_sd_that_the_draws_do_not_reach_is_not_sound(seed: int) -> None:
+    """
+    P7.2, half the likelihood: the target lies 1.9 base sds off and reaches beyond all draws.
+
+    Its weights have a finite variance (tail index 0.31 by algebra), so that only the contributions
+    can tell: their shape is above 2, and few of them carry the sd.
+    """
+    fit = cases.sleep_fit((5.0, 0.5), 4, 10_000, seed)
+    found = fit.reweigh(sy.power(likelihood=0.5)).sd("theta")
+    truth = cases.value(cases.case("P7.2")["expected"]["likelihood_power_0.5_sd"])
+    assert not found.verdict.is_sound
+    low, high = found.error_interval(0.9999)
+    assert low <= truth <= high
+
+
 @pytest.mark.parametrize("identifier", ["P7.3", "P7.4"])
 def test_powers_of_beta_and_gamma_models(identifier: str) -> None:
     """40,000 draws, seed 72; eight comparisons at four errors."""

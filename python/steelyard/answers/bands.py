@@ -15,7 +15,8 @@ from steelyard.base.draws import Array
 __all__ = ["batch_edges", "batch_sums", "critical_value", "joint_level"]
 
 _BATCHES = 60
-_REPLICATES = 1000
+# The 95 % quantile of so many is sure to about a hundredth of itself.
+_REPLICATES = 512
 _KEY = 20_261_202
 # Factor of a 95 % interval of one normal deviate.
 _SINGLE = 1.959963984540054
@@ -57,15 +58,18 @@ def critical_value(sums: Array) -> float:
     """
     centred, _ = in_unit(sums - sums.mean(axis=0))
     spread = np.sqrt((centred**2).sum(axis=0))
-    unit = centred[:, spread > 0] / spread[spread > 0]
+    # Seven digits are far more than the bootstrap's noise leaves.
+    unit = (centred[:, spread > 0] / spread[spread > 0]).astype(np.float32)
     if not unit.shape[1]:
         return 0.0
     # A fixed stream: the same table asked twice has the same bands.
-    multipliers = np.random.default_rng(_KEY).standard_normal((_REPLICATES, len(unit)))
-    largest = np.zeros(_REPLICATES)
+    random = np.random.default_rng(_KEY)
+    multipliers = random.standard_normal((_REPLICATES, len(unit))).astype(np.float32)
+    largest = np.zeros(_REPLICATES, dtype=np.float32)
     for start in range(0, unit.shape[1], _WIDTH):
-        deviations = np.abs(multipliers @ unit[:, start : start + _WIDTH])
-        largest = np.maximum(largest, deviations.max(axis=1))
+        deviations = multipliers @ unit[:, start : start + _WIDTH]
+        for reached in (deviations.max(axis=1), -deviations.min(axis=1)):
+            largest = np.maximum(largest, reached)
     # Below the factor of a single column only the noise of the bootstrap can bring it.
     return max(float(np.quantile(largest, 0.95)), _SINGLE)
 

@@ -41,6 +41,10 @@ __all__ = [
 
 # From so many contributions on a heavy fitted shape says nothing more (`make honesty`), ours.
 MANY = 4.0
+# Where not even the root of a contribution has a finite mean it takes Cochran's number of them:
+# with fewer, what the draws have not reached is missing from the estimate and from its error.
+WILD = 2.0
+MANY_WILD = 25.0
 
 # Columns of a quantity that are worked on at a time.
 _WIDTH = 64
@@ -236,8 +240,9 @@ def finish(
         )
     unknown = np.full(value.shape, math.inf)
     carried = unknown if series.contributions is None else series.contributions
+    enough = np.where(series.shape >= WILD, MANY_WILD, MANY)
     own = [
-        judge("quantity_shape", series.shape, spoken=~(carried >= MANY)),
+        judge("quantity_shape", series.shape, spoken=~(carried >= enough)),
         judge("few_contributions", carried),
         judge("chains_disagree", series.p_value),
         judge("few_effective_draws", scale.weights.effective_size * series.efficiency),

@@ -31,6 +31,8 @@ def base_answer(base: Base) -> Answer:
     findings = [judge("base_unverified")]
     if base.log_weights is not None:
         findings += weight_findings(weights, base.draws, base.ordered)
+    if base.draws.pooling is not None:
+        findings += base.draws.pooling.findings
     return Answer(base, weights, weights, tuple(findings))
 
 
@@ -48,7 +50,12 @@ def reweigh(base: Base, change: Change, *, smooth: bool = True) -> Answer:
         found = (*unchanged._findings, *shared)
         return Answer(base, own, own, found, change, target)
     weights = weigh_ratio(
-        target.log_ratio, base.log_weights, base.draws, ordered=base.ordered, smooth=smooth
+        target.log_ratio,
+        base.reference,
+        base.draws,
+        ordered=base.ordered,
+        smooth=smooth,
+        base_weights=base.log_weights,
     )
     shared = (
         *preflight(base, target),

@@ -12,6 +12,7 @@ import numpy.typing as npt
 
 from steelyard.arrays import Frozen, ReadOnly
 from steelyard.base.names import Reference, close_names, find
+from steelyard.base.pooling import Pooling
 from steelyard.errors import UnknownNameError
 
 __all__ = ["Array", "Draws", "element"]
@@ -42,6 +43,8 @@ class Draws(Frozen, Mapping[str, Array]):
         Labels along a named dimension.
     chain_names : tuple
         What the input called the chains.
+    pooling : Pooling or None
+        How the draws were pooled, where they come from several fits.
     """
 
     values_by_name: Mapping[str, Array]
@@ -50,6 +53,7 @@ class Draws(Frozen, Mapping[str, Array]):
     dims: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
     labels: Mapping[str, npt.NDArray[Any]] = field(default_factory=dict)
     chain_names: tuple[Any, ...] = ()
+    pooling: Pooling | None = None
 
     def __post_init__(self) -> None:
         super().__post_init__()

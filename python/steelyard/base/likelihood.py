@@ -15,7 +15,7 @@ from steelyard.base.draws import Array, Draws
 from steelyard.base.shapes import has_two_axes
 from steelyard.errors import ArgumentTypeError, LikelihoodError, ShapeError
 
-__all__ = ["LoglikTerm", "read_loglik", "read_loglik_term"]
+__all__ = ["LoglikTerm", "called_term", "read_loglik", "read_loglik_term"]
 
 # Values held in memory at a time, in float64: 8 MB.
 _BLOCK_VALUES = 1 << 20
@@ -115,6 +115,11 @@ class LoglikTerm:
             + (f", observation {', '.join(str(int(i)) for i in place)}" if place else ""),
             f"{int(bad.sum())} such values in this block of draws; mend the log likelihood there.",
         )
+
+
+def called_term(source: Any) -> bool:
+    """Whether a source is called with draws rather than read."""
+    return callable(source) and not hasattr(source, "shape")
 
 
 def _call(source: Callable[..., Any], draws: Draws, part: slice, name: str) -> npt.NDArray[Any]:

@@ -75,6 +75,14 @@ class Base:
         others = {*self.derived, *self.predictive}
         return tuple(name for name in self.draws if name not in others)
 
+    @property
+    def reference(self) -> Array | None:
+        """Log weights that log ratios are added to: those of the base, but for some pools."""
+        pooling = self.draws.pooling
+        if pooling is None or pooling.reference is None:
+            return self.log_weights
+        return pooling.reference
+
     def visible(self) -> Mapping[str, Array]:
         """The draws as callables receive them: read-only, withheld ones refused."""
         values = dict(self.draws.values_by_name)

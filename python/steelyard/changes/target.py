@@ -70,6 +70,10 @@ def form_target(base: Base, change: Change) -> Target:
     # A fixed order of summation: a & b and b & a agree to the last bit.
     for label in sorted(terms):
         total = total + terms[label]
+    if terms and base.draws.pooling is not None:
+        for label, gone in base.draws.pooling.impossible.items():
+            if label not in draft.prior or not draft.prior[label].is_swapped:
+                total = np.where(gone, -np.inf, total)
     if not total.any():
         terms = {}  # edits that cancel are no change
     return Target(
@@ -79,9 +83,9 @@ def form_target(base: Base, change: Change) -> Target:
 
 def _weighs(base: Base) -> npt.NDArray[np.bool_]:
     """Draws with a base weight above zero."""
-    if base.log_weights is None:
+    if base.reference is None:
         return np.ones(base.draws.size, dtype=np.bool_)
-    return np.asarray(base.log_weights > -np.inf)
+    return np.asarray(base.reference > -np.inf)
 
 
 def _put(terms: dict[str, Array], label: str, delta: Array | None, base: Base) -> None:
@@ -101,6 +105,11 @@ def _prior_delta(target: PriorTarget, base: Base) -> Array | None:
     if not target.is_swapped and factor == 1:
         return None
     old = target.base.log_density_checked(base.draws)
+    new = target.density.log_density_checked(base.draws) if target.is_swapped else old
+    pooling = base.draws.pooling
+    if pooling is not None and target.base.label in pooling.impossible:
+        # Other fits of the pool may reach where this one does not.
+        old = np.where(old == -np.inf, 0.0, old)
     impossible = (old == -np.inf) & _weighs(base)
     if impossible.any():
         first = int(np.argmax(impossible))
@@ -110,7 +119,6 @@ def _prior_delta(target: PriorTarget, base: Base) -> Array | None:
             f"log density −inf at {base.draws.where(first)}",
             "The draws did not come from this prior: state the one that was fitted.",
         )
-    new = target.density.log_density_checked(base.draws) if target.is_swapped else old
     with np.errstate(invalid="ignore", over="ignore"):
         # To the power 0 a prior is flat on its own support, and still nothing outside of it.
         raised = np.where(new > -np.inf, 0.0, -np.inf) if factor == 0 else factor * new

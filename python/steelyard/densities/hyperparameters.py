@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Mapping
 from typing import Any
 
@@ -19,6 +20,7 @@ __all__ = [
     "check_draws",
     "code",
     "freeze",
+    "is_inside",
     "named_draws",
     "text",
 ]
@@ -70,6 +72,13 @@ def freeze(value: Any, argument: str) -> Any:
         return tuple(deep(v) for v in item) if isinstance(item, list) else float(item)
 
     return deep(array.tolist())
+
+
+def is_inside(domain: str, value: float) -> bool:
+    """Whether one number is known to be in a hyperparameter's range, without arrays."""
+    if domain == "real":
+        return math.isfinite(value)
+    return domain == "positive" and 0 < value < math.inf
 
 
 def check_domain(domain: str, values: Array, argument: str) -> None:

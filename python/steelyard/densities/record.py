@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, fields
+from functools import cache
 from typing import Any, ClassVar
 
 import numpy as np
@@ -16,6 +17,7 @@ from steelyard.densities.hyperparameters import (
     check_draws,
     code,
     freeze,
+    is_inside,
     named_draws,
     text,
 )
@@ -31,6 +33,11 @@ Draws = Mapping[str, Array]
 OTHER_DOMAINS = ("distribution", "distributions")
 
 
+@cache
+def _numbers(kind: type[Record]) -> tuple[str, ...]:
+    return tuple(n for n, domain in kind.domains.items() if domain not in OTHER_DOMAINS)
+
+
 @dataclass(frozen=True, repr=False)
 class Record:
     """What a distribution holds, checked when it is made, and looked up where names stand."""
@@ -42,7 +49,10 @@ class Record:
 
     def __post_init__(self) -> None:
         for name in self.numbers:
-            value = freeze(getattr(self, name), self._argument(name))
+            given = getattr(self, name)
+            if type(given) is float and is_inside(self.domains[name], given):
+                continue  # what nearly every hyperparameter is, a thousand times in a sweep
+            value = freeze(given, self._argument(name))
             object.__setattr__(self, name, value)
             if not isinstance(value, str):
                 values = np.asarray(value, dtype=np.float64)
@@ -52,7 +62,7 @@ class Record:
     @property
     def numbers(self) -> tuple[str, ...]:
         """Hyperparameters that are numbers or names, as opposed to distributions."""
-        return tuple(n for n, domain in self.domains.items() if domain not in OTHER_DOMAINS)
+        return _numbers(type(self))
 
     def _argument(self, name: str) -> str:
         return f"{type(self).__name__}: {name}"

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, field, fields
+from dataclasses import dataclass, field, fields, replace
 from typing import Any
 
 import numpy as np
@@ -14,7 +14,13 @@ from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.errors import RatioError
 from steelyard.verdicts import Finding, judge, shape_limit
-from steelyard.weighing.series import degrees_of, relative_efficiency
+from steelyard.weighing.series import (
+    chains_p_value,
+    contributions_of,
+    degrees_of,
+    relative_efficiency,
+    standard_error,
+)
 
 # Place of the faults among the figures of the kernel.
 _FAULTS = 11
@@ -168,7 +174,30 @@ def delete_columns(
         if refuse is not None:
             refuse()
         log_ratio_of(setting, np.asarray(held, dtype=np.float64))
-    return _deleted(setting, figures, shift, square), Totals(*totals)
+    found = _deleted(setting, figures, shift, square)
+    if draws.pooling is not None:
+        found = _of_pool(setting, found, held, scored)
+    return found, Totals(*totals)
+
+
+def _of_pool(
+    setting: Setting, found: Deleted, held: npt.NDArray[Any], scored: npt.NDArray[Any]
+) -> Deleted:
+    """Figures that rest on chains, from what varies within the fits of a pool: not in the kernel."""
+    draws, ordered = setting.draws, setting.ordered
+    log_weights, raw, _ = deletion_weights(setting, np.asarray(held, dtype=np.float64))
+    scaled = draws.size * np.exp(log_weights)
+    reached = np.exp(np.asarray(scored, dtype=np.float64) - found.score) - 1
+    z, z_raw = scaled * reached, draws.size * raw * reached
+    efficiency = relative_efficiency(z_raw, draws, ordered)
+    carrying = contributions_of(z, efficiency, draws, ordered)
+    equal = np.full(draws.size, 1 / draws.size)
+    return replace(
+        found,
+        error=np.hypot(standard_error(z, draws, ordered), found.unseen),
+        degrees=degrees_of(carrying, efficiency, draws),
+        chain_share=chains_p_value(scaled, equal, draws) if ordered else found.chain_share,
+    )
 
 
 def _deleted(setting: Setting, figures: Array, shift: Array, square: Array) -> Deleted:

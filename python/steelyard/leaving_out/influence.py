@@ -77,9 +77,7 @@ def _found(left: LeaveOut, held: Held) -> Held:
     setting = setting_of(left._base, held.columns)
     rows, width = len(left._chosen), len(held.names)
     shift, error = np.empty((rows, width)), np.empty((rows, width))
-    for part, deleted, scored in left._groups.blocks(
-        left._base.draws, left._chosen, checked=False
-    ):
+    for part, deleted, scored in left._groups.blocks(left._base.draws, left._chosen, checked=False):
         block, _ = delete_columns(setting, deleted, scored)
         shift[part], error[part] = block.shift, block.shift_error
     return replace(held, shift=shift, error=error)

@@ -132,7 +132,8 @@ def _filled(held: Held | None, found: Deleted) -> Held | None:
 
 def _notes(base: Base, groups: Groups) -> tuple[Finding, ...]:
     """What is said of every group: base unverified, rows taken as independent, own effects."""
-    notes = [judge("base_unverified")]
+    pooling = base.draws.pooling
+    notes = [judge("base_unverified"), *(() if pooling is None else pooling.findings)]
     if not groups.is_conditional:
         notes.append(judge("rows_independent"))
     latents = own_latents(base, groups)

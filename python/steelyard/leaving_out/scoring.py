@@ -75,9 +75,7 @@ def study_total(base: Base, series: Array, raw: Array, more: float = 0.0) -> Ser
     )
 
 
-def of_total(
-    value: float, series: Series, findings: list[Finding], label: str
-) -> Estimate:
+def of_total(value: float, series: Series, findings: list[Finding], label: str) -> Estimate:
     """The Estimate of a sum over groups."""
     own = [
         judge("quantity_shape", series.tail_shape, spoken=np.asarray(series.contributions < MANY)),

@@ -20,7 +20,11 @@ VERSION = 1
 
 
 def canonical_hash(
-    scenarios: Sequence[tuple[str, Change]], quantities: Any, event: Any, level: float | None
+    scenarios: Sequence[tuple[str, Change]],
+    quantities: Any,
+    event: Any,
+    level: float | None,
+    probs: Sequence[float] | None = None,
 ) -> str:
     """SHA-256 over the canonical JSON of a plan; the order of edits does not matter."""
     content = {
@@ -30,6 +34,8 @@ def canonical_hash(
         "event": plain(event),
         "level": plain(level),
     }
+    if probs is not None:
+        content["probs"] = plain(probs)
     return hashlib.sha256(_text(content).encode("utf-8")).hexdigest()
 
 

@@ -6,6 +6,7 @@ Schema, version 1::
     steelyard_plan = 1
     title = "Re-coating of quay 4"
     quantities = ["mu", "rate[3]"]          # or {label = "name"}; all parameters if left out
+    probs = [0.05, 0.5, 0.95]               # quantiles, if any are wanted
     locked = "…"                            # hash, once the plan is locked
 
     [decision]
@@ -44,11 +45,11 @@ from steelyard.base.names import close_names
 from steelyard.changes import Change, drop, power, raise_noise, swap_prior, weigh_data
 from steelyard.errors import ArgumentError, ArgumentTypeError, SteelyardError, UnknownNameError
 from steelyard.planning.canonical import VERSION
-from steelyard.planning.scenarios import Plan, Scenario
+from steelyard.planning.scenarios import Plan, Scenario, read_probs
 
 __all__ = ["PlanFile", "read_plan"]
 
-_TOP = ("steelyard_plan", "title", "quantities", "locked", "decision", "prior", "scenario")
+_TOP = ("steelyard_plan", "title", "quantities", "probs", "locked", "decision", "prior", "scenario")
 _DECISION = ("event", "level")
 _SCENARIO = ("name", "later", "swap_prior", "power", "drop", "weigh_data", "raise_noise")
 _NOISE = ("term", "factor", "sd")
@@ -123,6 +124,7 @@ class _Reader:
             self.refuse("scenario", "at least one [[scenario]]", "none", "State what is asked.")
         scenarios = [self.scenario(i, one) for i, one in enumerate(listed)]
         self.within = (0, len(self.lines))
+        self.guarded("probs", lambda: read_probs(self.content.get("probs")))
         plan = self.guarded(
             "locked",
             lambda: Plan(
@@ -132,6 +134,7 @@ class _Reader:
                 decision.get("level"),
                 str(self.content.get("title", "")),
                 self.content.get("locked"),
+                self.content.get("probs"),
             ),
         )
         return PlanFile(plan, prior)

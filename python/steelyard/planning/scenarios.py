@@ -7,6 +7,9 @@ from dataclasses import dataclass, replace
 from html import escape
 from typing import Any
 
+import numpy as np
+
+from steelyard.arrays import plain_array
 from steelyard.changes import Change
 from steelyard.errors import ArgumentError, ArgumentTypeError, ChangeError
 from steelyard.planning.canonical import canonical_hash
@@ -53,6 +56,8 @@ class Plan:
         Printed above the table.
     locked : str or None
         Hash taken when the plan was locked; scenarios added since are marked as later.
+    probs : sequence of float, optional
+        Probabilities of the quantiles that are wanted beside each mean.
 
     Examples
     --------
@@ -70,9 +75,11 @@ class Plan:
     level: float | None = None
     title: str = ""
     locked: str | None = None
+    probs: Any = None
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "scenarios", read_scenarios(self.scenarios))
+        object.__setattr__(self, "probs", read_probs(self.probs))
         if self.locked is not None and self.locked != self.hash:
             raise ChangeError(
                 "locked",
@@ -85,7 +92,7 @@ class Plan:
     def hash(self) -> str:
         """SHA-256 of the planned scenarios (later ones left out) and of what is asked of them."""
         planned = [(s.name, s.change) for s in self.scenarios if not s.later]
-        return canonical_hash(planned, self.quantities, self.event, self.level)
+        return canonical_hash(planned, self.quantities, self.event, self.level, self.probs)
 
     def lock(self) -> Plan:
         """
@@ -137,6 +144,24 @@ def _can_be_gone_through(things: Any) -> bool:
     except TypeError:
         return False
     return True
+
+
+def read_probs(probs: Any) -> tuple[float, ...] | None:
+    """Probabilities strictly between 0 and 1, ascending; None for none."""
+    if probs is None:
+        return None
+    array = plain_array(probs, "probs", "fiu").astype(np.float64).reshape(-1)
+    if not array.size or not ((array > 0) & (array < 1)).all() or not (np.diff(array) > 0).all():
+        raise ArgumentError(
+            "probs",
+            "probabilities between 0 and 1, in ascending order, each once",
+            repr(probs),
+            "Write (0.05, 0.5, 0.95).",
+        )
+    shown = [f"{p:g}" for p in array]
+    if len(set(shown)) < len(shown):
+        raise ArgumentError("probs", "each once, to six digits", repr(probs), "Drop one.")
+    return tuple(array.tolist())
 
 
 def read_scenarios(scenarios: Any) -> tuple[Scenario, ...]:

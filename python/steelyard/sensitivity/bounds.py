@@ -64,20 +64,56 @@ class Bounds(Frozen):
 
 
 def worst_case(
-    base: Base, quantity: Any, *, divergence: float | None = None, ratio: float | None = None
+    base: Base,
+    quantity: Any,
+    *,
+    divergence: float | None = None,
+    ratio: float | None = None,
+    contamination: float | None = None,
+    prior_of: str | None = None,
 ) -> Bounds:
     """Bounds over a class; see ``Fit.worst_case``."""
-    if (divergence is None) == (ratio is None):
+    classes = {"divergence=δ": divergence, "ratio=R": ratio, "contamination=ε": contamination}
+    named = [name for name, value in classes.items() if value is not None]
+    if len(named) != 1:
         raise ArgumentError(
             "worst_case",
-            "one class: divergence=δ or ratio=R",
-            "both" if divergence is not None else "neither",
+            f"one class: {', '.join(classes)}",
+            " and ".join(named) or "none",
             "Name one of them.",
+        )
+    if (contamination is None) != (prior_of is None):
+        raise ArgumentError(
+            "prior_of",
+            "the parameter whose prior is contaminated, with contamination= alone",
+            repr(prior_of),
+            'Write worst_case(q, contamination=0.1, prior_of="mu").',
         )
     asked = one_column(quantity, base, "worst_case")
     if divergence is not None:
         return _ball(base, asked, _positive(divergence, "divergence", 0.0))
-    return _ratio_class(base, asked, _positive(ratio, "ratio", 1.0))
+    if ratio is not None:
+        return _ratio_class(base, asked, _positive(ratio, "ratio", 1.0))
+    return _contaminated(base, asked, contamination, str(prior_of))
+
+
+def _contaminated(base: Base, asked: Quantity, share: Any, parameter: str) -> Bounds:
+    from steelyard.sensitivity.contamination import contaminated
+
+    share = _positive(share, "contamination", 0.0)
+    if share >= 1:
+        raise ArgumentError(
+            "contamination", "a share below 1", f"{share:g}", "Write 0.1 for a tenth."
+        )
+    low, high = contaminated(base, asked, share, parameter)
+    return Bounds(
+        low[0],
+        high[0],
+        base.draws.shaped(low[1]),
+        base.draws.shaped(high[1]),
+        "inner bound",
+        f"priors of {parameter} that are the stated one but for a share of {share:g} of any kind",
+    )
 
 
 def _positive(value: Any, argument: str, least: float) -> float:

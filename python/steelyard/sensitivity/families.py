@@ -14,20 +14,21 @@ from steelyard.arrays import plain_array
 from steelyard.base import Base
 from steelyard.base.draws import Array, Draws
 from steelyard.base.priors import PriorTerm
-from steelyard.changes import Change, Target, form_target
+from steelyard.changes import Change, Target
 from steelyard.digits import short
 from steelyard.errors import ArgumentError, ArgumentTypeError, SteelyardError
+from steelyard.sensitivity.targets import Formed, Targets
 
 __all__ = [
     "Family",
     "first_name",
-    "member",
+    "members",
     "named_node",
     "nodes_of",
     "read_family",
     "read_grid",
+    "refuse_withheld",
     "remembering",
-    "targets_of",
 ]
 
 # A callable of one or two numbers that returns a change.
@@ -98,41 +99,54 @@ def named_node(names: Sequence[str], node: tuple[float, ...]) -> str:
     return ", ".join(f"{name} = {short(value)}" for name, value in zip(names, node, strict=True))
 
 
-def member(base: Base, family: Family, names: Sequence[str], node: tuple[float, ...]) -> Target:
-    """The target of one node; whatever goes wrong is told with the node."""
-    where = f"family at {named_node(names, node)}"
+def members(
+    targets: Targets, family: Family, names: Sequence[str], nodes: Sequence[tuple[float, ...]]
+) -> Formed:
+    """The targets of several nodes; whatever goes wrong is told with the node."""
+    formed = targets.form([_change_at(family, names, node) for node in nodes])
+    for place, error in formed.errors.items():
+        raise type(error)(
+            f"family at {named_node(names, nodes[place])}: {error.argument}",
+            error.expected,
+            error.came,
+            error.next_step,
+        ) from error
+    return formed
+
+
+def _change_at(family: Family, names: Sequence[str], node: tuple[float, ...]) -> Change:
     try:
         change = family(*node)
     except SteelyardError as error:
         # Most often a hyperparameter outside its domain, which the error names.
         raise ArgumentError(
-            where, f"{error.argument} to be {error.expected}", error.came, error.next_step
+            f"family at {named_node(names, node)}",
+            f"{error.argument} to be {error.expected}",
+            error.came,
+            error.next_step,
         ) from error
     except Exception as error:
         raise ArgumentError(
-            where, "a change", f"{type(error).__name__}: {error}", "Mend the family there."
+            f"family at {named_node(names, node)}",
+            "a change",
+            f"{type(error).__name__}: {error}",
+            "Mend the family there.",
         ) from error
     if not isinstance(change, Change):
         raise ArgumentTypeError(
-            where, "a change", type(change).__name__, "Return what swap_prior or the like gives."
+            f"family at {named_node(names, node)}",
+            "a change",
+            type(change).__name__,
+            "Return what swap_prior or the like gives.",
         )
-    try:
-        return form_target(base, change)
-    except SteelyardError as error:
-        raise type(error)(
-            f"{where}: {error.argument}", error.expected, error.came, error.next_step
-        ) from error
+    return change
 
 
-def targets_of(
-    base: Base, family: Family, names: Sequence[str], nodes: Sequence[tuple[float, ...]]
-) -> tuple[list[Target], Array]:
-    """Targets of several nodes and their log ratios ``(n, B)``."""
-    targets = [member(base, family, names, node) for node in nodes]
-    ratios = np.empty((base.draws.size, len(nodes)))
-    for place, target in enumerate(targets):
-        ratios[:, place] = target.log_ratio
-    return targets, ratios
+def refuse_withheld(formed: Formed, ask: Callable[[Base], object], base: Base) -> None:
+    """Quantities of predictive draws whose model changed are refused, by asking again."""
+    for target in formed.made:
+        if isinstance(target, Target) and target.withheld:
+            ask(replace(base, withheld=target.withheld))
 
 
 @dataclass(frozen=True, eq=False)

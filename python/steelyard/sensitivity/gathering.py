@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -13,85 +13,93 @@ from steelyard.answers.estimating import Scale, Series, finish
 from steelyard.answers.quantities import Quantity
 from steelyard.base import Base
 from steelyard.base.draws import Array
-from steelyard.sensitivity.nodes import NodeSeries
+from steelyard.sensitivity.nodes import Columns
+from steelyard.sensitivity.plain_nodes import SERIES
 from steelyard.verdicts import Finding, judge
+from steelyard.weighing.series import degrees_of
 from steelyard.weighing.weigh import Weights
 
-__all__ = ["Gathered"]
+__all__ = ["Gathered", "Shared"]
+
+
+@dataclass(frozen=True, eq=False)
+class Shared:
+    """What the estimates of all quantities share: base, weights, and the axes of the nodes."""
+
+    base: Base
+    own: Weights
+    effective_size: Array
+    findings: Sequence[Finding]
+    lead: tuple[int, ...]
+    labels: dict[str, Any]
 
 
 @dataclass
 class Gathered:
-    """Figures of one quantity over all nodes ``(B, k)``, filled block by block."""
+    """Figures of one quantity over all nodes ``(B, k, 9)``; `place` are its columns."""
 
     quantity: Quantity
-    value: Array
-    error: Array
-    shape: Array
-    p_value: Array
-    efficiency: Array
-    spread: Array
-    inside: Array
-    outside: Array
-    contributions: Array
+    place: slice
+    figures: Array
+    is_shift: bool = False
 
     @classmethod
-    def empty(cls, quantity: Quantity, count: int) -> Gathered:
-        """Room for so many nodes."""
-        width = quantity.columns.shape[1]
-        return cls(quantity, *(np.empty((count, width)) for _ in range(9)))
+    def empty(
+        cls, quantities: Sequence[Quantity], count: int, *, is_shift: bool = False
+    ) -> list[Gathered]:
+        """Room for so many nodes of each quantity."""
+        found, start = [], 0
+        for quantity in quantities:
+            width = quantity.columns.shape[1]
+            room = np.empty((count, width, SERIES))
+            found.append(cls(quantity, slice(start, start + width), room, is_shift))
+            start += width
+        return found
 
-    def put(self, part: slice, column: int, found: NodeSeries) -> None:
-        """Keep what a block of nodes shows of one column."""
-        series = found.series
-        known = series.contributions
-        figures = (
-            (self.value, found.value),
-            (self.error, series.error),
-            (self.shape, series.shape),
-            (self.p_value, series.p_value),
-            (self.efficiency, series.efficiency),
-            (self.spread, found.spread),
-            (self.inside, found.inside),
-            (self.outside, found.outside),
-            (self.contributions, np.inf if known is None else known),
-        )
-        for room, figure in figures:
-            room[part, column] = figure
+    def put(self, part: slice, figures: Array) -> None:
+        """Keep what a block of nodes shows of all columns, ``(B, q, 9)``."""
+        self.figures[part] = figures[:, self.place]
 
-    def finished(
-        self,
-        base: Base,
-        own: Weights,
-        effective_size: Array,
-        findings: Sequence[Finding],
-        lead: tuple[int, ...],
-        lead_labels: dict[str, Any],
-    ) -> Estimate:
+    def cut(self, count: int) -> Gathered:
+        """The first nodes, where not all that there was room for were answered."""
+        return replace(self, figures=self.figures[:count])
+
+    def finished(self, columns: Columns, shared: Shared) -> Estimate:
         """One Estimate over all nodes, axes of the nodes first."""
-        trailing = (1,) * len(self.quantity.shape)
-        shared = tuple(_in_shape(f, (*lead, *trailing)) for f in findings)
-        width = self.value.shape[1]
-        # `finish` asks its weights for nothing but the effective size, here one a node.
-        weights: Any = _Sizes(np.repeat(effective_size, width))
-        scale = Scale(base, weights, own, shared)
-        figures = (self.error, self.shape, self.p_value, self.efficiency, self.contributions)
-        series = Series(*(a.reshape(-1) for a in figures))
+        base, place = shared.base, self.place
+        unit, of_f = columns.unit[place], columns.efficiency[place]
+        value, variance, p, long_run, efficiency, shape, carried, inside, outside = (
+            self.figures[:, :, i] for i in range(SERIES)
+        )
+        if not self.is_shift:
+            value = columns.centre[place] + value
+        error = np.sqrt(long_run / base.draws.size)
+        carried = np.sqrt(efficiency) * carried
+        degrees = degrees_of(carried, efficiency, base.draws)
+        spread = np.broadcast_to(of_f, value.shape)
         extra: tuple[Finding, ...] = ()
         if self.quantity.is_event:
-            extra = (
-                judge("event_draws", self.inside.reshape(-1), side="inside"),
-                judge("event_draws", self.outside.reshape(-1), side="outside"),
+            extra = tuple(
+                judge("event_draws", (side * of_f).reshape(-1), side=name)
+                for name, side in (("inside", inside), ("outside", outside))
             )
+            # Without a draw on one side there is no probability: a zero would be a claim.
+            settled = (inside > 0) & (outside > 0)
+            value, error = (np.where(settled, a, np.nan) for a in (value, error))
+        figures = (error * unit, shape, p, spread, carried, degrees)
+        trailing = (1,) * len(self.quantity.shape)
+        findings = tuple(_in_shape(f, (*shared.lead, *trailing)) for f in shared.findings)
+        # `finish` asks its weights for nothing but the effective size, here one a node.
+        weights: Any = _Sizes(np.repeat(shared.effective_size, value.shape[1]))
         return finish(
-            scale,
+            Scale(base, weights, shared.own, findings),
             self.quantity,
-            self.value.reshape(-1),
-            series,
-            self.spread.reshape(-1),
-            lead=lead,
+            (value * unit).reshape(-1),
+            Series(*(a.reshape(-1) for a in figures)),
+            (np.sqrt(variance) * unit).reshape(-1),
+            lead=shared.lead,
             extra=extra,
-            lead_labels=lead_labels,
+            lead_labels=shared.labels,
         )
 
 

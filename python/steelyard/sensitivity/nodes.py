@@ -1,89 +1,38 @@
-"""Many changes of one base at once: their weights stand side by side as columns."""
+"""Many changes of one base at once: their weights stand side by side, and are studied in blocks."""
 
 from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
-from itertools import pairwise
-from typing import Any
+from dataclasses import dataclass, replace
+from functools import cached_property
 
 import numpy as np
+import numpy.typing as npt
 
 from steelyard import _core
-from steelyard.answers.estimating import Series
-from steelyard.answers.reweigh import _unknown_supports
+from steelyard.answers.quantities import Quantity
 from steelyard.arrays import in_unit
-from steelyard.base import Base, Draws
+from steelyard.base import Base
 from steelyard.base.draws import Array
-from steelyard.changes import Target
+from steelyard.sensitivity import plain_nodes
 from steelyard.verdicts import Finding, judge, shape_limit
-from steelyard.weighing.preflight import preflight
-from steelyard.weighing.series import (
-    _welch,
-    chains_p_value,
-    contributions_of,
-    relative_efficiency,
-    standard_error,
-    tail_of,
-)
-from steelyard.weighing.trust import _IDLE_TAIL, excursions, tail_share
+from steelyard.weighing.series import relative_efficiency
+from steelyard.weighing.trust import _IDLE_TAIL
 from steelyard.weighing.weigh import Weights, base_weights, weigh_ratio
 
-__all__ = [
-    "NodeSeries",
-    "Nodes",
-    "algebra_findings",
-    "node_blocks",
-    "own_weights",
-    "study_nodes",
-    "weigh_nodes",
-    "weight_findings",
-]
+__all__ = ["Columns", "Figures", "Study", "node_blocks", "own_weights", "weight_findings"]
 
-# Nodes whose weights are held at a time.
-WIDTH = 64
-# A spectral estimate from n effective draws varies like a chi-square of about a third as many.
-_FREEDOM = 3
-_FEWEST = 20
-_SHORTEST = 50
+# Values of log ratios that are held at a time, and the most nodes that they may be of.
+_HELD = 1 << 20
+_MOST = 256
 
 
-@dataclass(frozen=True, eq=False)
-class Nodes:
-    """
-    Weights of several targets over the same draws, one column a target.
-
-    Attributes
-    ----------
-    linear, raw : numpy.ndarray
-        Normalised weights ``(n, B)``, smoothed and not.
-    own : Weights
-        Weights of the base.
-    log_mean_ratio, tail_shape, effective_size, entropy_size, largest_share : numpy.ndarray
-        As in `Weights`, ``(B,)``.
-    """
-
-    base: Base
-    own: Weights
-    linear: Array
-    raw: Array
-    log_mean_ratio: Array
-    tail_shape: Array
-    effective_size: Array
-    entropy_size: Array
-    largest_share: Array
-
-    @property
-    def count(self) -> int:
-        """Number of targets."""
-        return int(self.linear.shape[1])
-
-
-def node_blocks(count: int) -> Iterator[slice]:
+def node_blocks(count: int, draws: int) -> Iterator[slice]:
     """Blocks of nodes, so that the weights of all are never held."""
-    for start in range(0, count, WIDTH):
-        yield slice(start, min(start + WIDTH, count))
+    width = min(max(_HELD // draws, 1), _MOST)
+    for start in range(0, count, width):
+        yield slice(start, min(start + width, count))
 
 
 def own_weights(base: Base) -> Weights:
@@ -94,178 +43,152 @@ def own_weights(base: Base) -> Weights:
     return weigh_ratio(zero, base.log_weights, base.draws, ordered=base.ordered)
 
 
-def weigh_nodes(base: Base, ratios: Array, own: Weights) -> Nodes:
-    """Weights from log ratios ``(n, B)``, smoothed as those of a single answer."""
-    draws, given = base.draws, base.log_weights
-    total = ratios if given is None else ratios + given[:, None]
-    base_sum = (
-        math.log(draws.size) if given is None else float(_core.log_sum_exp(given[:, None])[0])
-    )
-    raw = np.empty_like(total)
-    log_mean = _core.normalise(total, raw) - base_sum
-    np.exp(raw, out=raw)
-    efficiency = relative_efficiency(raw, draws, base.ordered)
-    logs = np.empty_like(total)
-    shape = _core.smooth(total, efficiency, logs)
-    return Nodes(
-        base,
-        own,
-        np.exp(logs),
-        raw,
-        log_mean,
-        shape,
-        _core.effective_size(logs, False),
-        _core.effective_size(logs, True),
-        _core.largest_share(logs),
-    )
+@dataclass(frozen=True, eq=False)
+class Columns:
+    """
+    Columns of quantities, one row each, with their base mean taken off.
+
+    Attributes
+    ----------
+    rows : numpy.ndarray
+        ``(q, n)``, in the unit of `in_unit`.
+    centre, unit : numpy.ndarray
+        Base means and units.
+    events : numpy.ndarray
+        The base mean of a column that is an event; NaN for the others.
+    efficiency : numpy.ndarray
+        Of the base draws for each column.
+    """
+
+    rows: Array
+    centre: Array
+    unit: Array
+    events: Array
+    efficiency: Array
+
+    @classmethod
+    def of(cls, quantities: Sequence[Quantity], base: Base, own: Weights) -> Columns:
+        """All columns of several quantities."""
+        columns = np.concatenate([q.columns for q in quantities], axis=1)
+        is_event = np.concatenate([np.full(q.columns.shape[1], q.is_event) for q in quantities])
+        f, unit = in_unit(columns)
+        centre = _core.weighted_mean(np.ascontiguousarray(f), own.linear)
+        # Centring first loses no digits where a quantity varies little about a large value.
+        rows = np.ascontiguousarray((f - centre).T)
+        efficiency = relative_efficiency(rows.T, base.draws, base.ordered)
+        return cls(rows, centre, unit, np.where(is_event, centre, np.nan), efficiency)
 
 
-def weight_findings(nodes: Nodes) -> list[Finding]:
+@dataclass(frozen=True, eq=False)
+class Figures:
+    """
+    What a block of nodes shows, as the kernel lays it out.
+
+    Attributes
+    ----------
+    about : numpy.ndarray
+        Figures of the weights ``(B, 10)``.
+    value, shift : numpy.ndarray
+        Figures of the weighted means ``(B, q, 9)``, and of their differences from the base.
+    sums : numpy.ndarray
+        Sums of the last of these series over batches, ``(B, q, batches)``.
+    weights : numpy.ndarray or None
+        Smoothed weights ``(B, n)``, where they are wanted.
+    """
+
+    about: Array
+    value: Array
+    shift: Array | None
+    sums: Array
+    weights: Array | None
+
+
+@dataclass(frozen=True, eq=False)
+class Study:
+    """What is asked of every node: columns, and whether their shifts and the weights too."""
+
+    base: Base
+    own: Weights
+    columns: Columns
+    edges: npt.NDArray[np.int64]
+    shift: bool = False
+    keep: bool = False
+
+    def of(self, ratios: Array) -> Figures:
+        """Everything about nodes with log ratios ``(B, n)``."""
+        base, given = self.base, self.base.log_weights
+        total = ratios if base.reference is None else ratios + base.reference
+        found, weights = self._studied(np.ascontiguousarray(total))
+        if given is not None and not base.is_approximate:
+            # Without a change the weights are the given ones, which are left as they are.
+            for place in np.flatnonzero(~ratios.any(axis=1)):
+                kept = None if weights is None else weights[place : place + 1]
+                one = total[place : place + 1]
+                found[place] = plain_nodes.study(self, one, kept, smooth=False)[0]
+        about = found[:, : plain_nodes.ABOUT]
+        about[:, 0] -= (
+            math.log(base.draws.size)
+            if given is None
+            else float(_core.log_sum_exp(given[:, None])[0])
+        )
+        series = plain_nodes.SERIES
+        rest = found[:, plain_nodes.ABOUT :].reshape(len(found), len(self.columns.rows), -1)
+        shift = rest[:, :, series : 2 * series] if self.shift else None
+        if shift is not None:
+            # Effective draws on the sides of an event are those of its probability.
+            shift[:, :, 7:] = rest[:, :, 7:series]
+        sums = rest[:, :, series * (2 if self.shift else 1) :]
+        return Figures(about, rest[:, :, :series], shift, sums, weights)
+
+    def _studied(self, total: Array) -> tuple[Array, Array | None]:
+        draws, ordered = self.base.draws, self.base.ordered
+        weights = np.empty_like(total) if self.keep else None
+        if draws.pooling is not None or (not ordered and draws.repeats is not None):
+            # Repeated draws are taken together, fits of a pool apart: the kernel does neither.
+            return plain_nodes.study(self, total, weights), weights
+        found = _core.study_nodes(
+            total,
+            self.columns.rows,
+            self.columns.events,
+            self._own_pair,
+            self.base.log_weights is None,
+            draws.starts,
+            ordered,
+            self.edges,
+            self.shift,
+            weights,
+        )
+        return found, weights
+
+    @cached_property
+    def _own_pair(self) -> Array:
+        return np.stack([self.own.linear, self.own.raw])
+
+
+def weight_findings(about: Array, base: Base) -> list[Finding]:
     """What the weights say of trust, as `weighing.trust` says it of one answer; figures (B,)."""
-    base, count = nodes.base, nodes.base.draws.size
+    count = base.draws.size
+    shape, size, entropy, largest, tail, apart, share, lost = about[:, 1:9].T
     with np.errstate(divide="ignore"):
-        divergence = np.log(count / nodes.entropy_size)
-    shares = np.array([tail_share(nodes.raw[:, j]) for j in range(nodes.count)])
-    weighs = ~(shares < _IDLE_TAIL)
+        divergence = np.log(count / entropy)
     found = [
-        judge("weight_shape", nodes.tail_shape, strained=shape_limit(count), spoken=weighs),
-        judge("few_effective", nodes.effective_size),
-        judge("few_effective_entropy", nodes.entropy_size),
-        judge("few_carry", nodes.largest_share),
+        judge("weight_shape", shape, strained=shape_limit(count), spoken=~(tail < _IDLE_TAIL)),
+        judge("few_effective", size),
+        judge("few_effective_entropy", entropy),
+        judge("few_carry", largest),
         judge("saturated_divergence", np.maximum(divergence, 0.0) / math.log(count)),
     ]
+    if base.draws.pooling is not None:
+        found += [_of_every_node(f, len(about)) for f in base.draws.pooling.findings]
     if base.ordered:
-        varying = np.ptp(nodes.raw, axis=0) > 0
-        apart = [
-            excursions(nodes.raw[:, j], base.draws) if varying[j] else math.inf
-            for j in range(nodes.count)
-        ]
-        found.append(judge("autocorrelated_tail", np.array(apart)))
+        found.append(judge("autocorrelated_tail", apart))
         if base.draws.chains > 1:
-            equal = np.full(count, 1 / count)
-            shares = chains_p_value(nodes.linear * count, equal, base.draws)
-            found.append(judge("chain_share", shares))
-    lost = (nodes.raw == 0).mean(axis=0)
+            found.append(judge("chain_share", share))
     if lost.any():
         found.append(judge("draws_lost", lost, spoken=lost > 0))
     return found
 
 
-def algebra_findings(base: Base, targets: Sequence[Target]) -> list[Finding]:
-    """
-    Preflight of every target, and supports that cannot be seen.
-
-    One finding for each code and wording, spoken at the targets where it holds.
-    """
-    figures: dict[tuple[str, tuple[tuple[str, str], ...]], Array] = {}
-    firsts: dict[Any, tuple[Finding, Any]] = {}
-    for place, target in enumerate(targets):
-        for finding in (*preflight(base, target), *_unknown_supports(target)):
-            key = (finding.code, tuple(sorted(finding.words.items())))
-            if key not in figures:
-                figures[key] = np.full(len(targets), np.nan)
-                firsts[key] = (finding, np.zeros(len(targets), dtype=np.bool_))
-            figures[key][place] = float(np.max(finding.figure))
-            firsts[key][1][place] = True
-    return [
-        Finding(first.code, figures[key], first.strained, first.refit, first.words, spoken)
-        for key, (first, spoken) in firsts.items()
-    ]
-
-
-@dataclass(frozen=True, eq=False)
-class NodeSeries:
-    """Estimates of one column of a quantity at every node, ``(B,)`` each; `z` is ``(n, B)``."""
-
-    value: Array
-    series: Series
-    spread: Array
-    inside: Array
-    outside: Array
-    z: Array
-
-
-def study_nodes(
-    nodes: Nodes, f: Array, *, shift: bool = False, is_event: bool = False
-) -> NodeSeries:
-    """
-    Weighted means of `f` ``(n,)`` at every node, or their differences from the base.
-
-    For an event the effective draws on both of its sides are counted as well.
-
-    Errors and tail shapes are those of `answers.estimating`: of ``S w (f − μ)``, for a difference
-    of ``S w (f − μ₁) − S v (f − μ₀)``.
-    """
-    base, count = nodes.base, nodes.base.draws.size
-    draws, v = base.draws, nodes.own.linear
-    column, unit = in_unit(f[:, None])
-    f, at_base = column[:, 0], float(_core.weighted_mean(column, v)[0])
-    # Centring first loses no digits where the quantity varies little about a large value.
-    centred = f - at_base
-    moved = (nodes.linear * centred[:, None]).sum(axis=0)
-    psi = centred[:, None] - moved
-    z = count * nodes.linear * psi
-    z_raw = count * nodes.raw * psi
-    if shift:
-        moved = moved - float(_core.weighted_mean(centred[:, None], v)[0])
-        own = count * (v * centred)[:, None]
-        z, z_raw = z - own, z_raw - count * (nodes.own.raw * centred)[:, None]
-        # A change whose ratio is the same at every draw moves nothing, rounding or not.
-        still = np.ptp(nodes.raw, axis=0) == 0 if base.log_weights is None else np.zeros(1, bool)
-        moved, z, z_raw = (np.where(still, 0.0, figure) for figure in (moved, z, z_raw))
-        spread = np.sqrt(_core.mean_square(z))
-        equal = np.full(count, 1 / count)
-        p = chains_p_value(z, equal, draws) if base.ordered else np.ones(nodes.count)
-    else:
-        spread = np.sqrt((nodes.linear * psi**2).sum(axis=0))
-        p = _chains(psi, nodes.linear, draws) if base.ordered else np.ones(nodes.count)
-    of_f = float(relative_efficiency(centred[:, None], draws, base.ordered)[0])
-    efficiency = relative_efficiency(z_raw, draws, base.ordered)
-    series = Series(
-        standard_error(z, draws, base.ordered),
-        tail_of(z_raw, efficiency, draws, base.ordered),
-        p,
-        np.full(nodes.count, of_f),
-        contributions_of(z, efficiency, draws, base.ordered),
-    )
-    sides = (f, 1 - f) if is_event else ()
-    within = [_within(nodes.linear, side) * of_f for side in sides] or [np.empty(nodes.count)] * 2
-    value = (moved if shift else at_base + moved) * unit
-    return NodeSeries(value, series.times(unit), spread * unit, within[0], within[1], z * unit)
-
-
-def _within(weights: Array, side: Array) -> Array:
-    total = (weights * side[:, None]).sum(axis=0)
-    squares = (weights**2 * side[:, None]).sum(axis=0)
-    return np.where(squares > 0, total**2 / np.where(squares > 0, squares, 1.0), 0.0)
-
-
-def _chains(psi: Array, weights: Array, draws: Draws) -> Array:
-    """`weighing.series.chains_p_value` with weights of their own for every column."""
-    if draws.chains < 2 or int(np.diff(draws.starts).min()) < _SHORTEST:
-        return np.ones(psi.shape[1])
-    pooled = (weights * psi**2).sum(axis=0)
-    rounding = (1e-10 * np.abs(psi).max(axis=0)) ** 2
-    mu, precision, freedom, held = [], [], [], np.ones(psi.shape[1], dtype=np.bool_)
-    for start, stop in pairwise(draws.starts.tolist()):
-        mass = weights[start:stop].sum(axis=0)
-        held &= mass > 0
-        w = weights[start:stop] / np.where(mass > 0, mass, 1.0)
-        f, length = psi[start:stop], stop - start
-        centre = (w * f).sum(axis=0)
-        lrv = _core.long_run_variance(
-            length * w * (f - centre), np.array([0, length], dtype=np.int64), True
-        )
-        least = np.maximum(pooled * (w**2).sum(axis=0), rounding)
-        variance = np.maximum(lrv / length, least)
-        safe = np.where(variance > 0, variance, 1.0)
-        mu.append(centre)
-        precision.append(np.where(variance > 0, 1 / safe, 0.0))
-        effective = np.where(variance > 0, pooled / safe, float(length))
-        freedom.append(np.maximum(effective / _FREEDOM, 1.0))
-    enough = np.median(np.array(freedom), axis=0) * _FREEDOM >= _FEWEST
-    p = np.where(enough, _welch(np.array(mu), np.array(precision), np.array(freedom)), 1.0)
-    for j in np.flatnonzero(~held):
-        # A chain without weight is left out of the test of this node.
-        p[j] = chains_p_value(psi[:, j : j + 1], weights[:, j], draws)[0]
-    return np.asarray(p, dtype=np.float64)
+def _of_every_node(finding: Finding, count: int) -> Finding:
+    """A finding about the base, said of every node."""
+    return replace(finding, figure=np.full(count, float(finding.figure)))

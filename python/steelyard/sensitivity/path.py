@@ -4,25 +4,23 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
+from functools import cached_property
 from typing import Any
 
 import numpy as np
 
 from steelyard import _core
+from steelyard.answers.bands import batch_edges
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.quantities import Quantity, event_mask
 from steelyard.answers.student import student_quantile
 from steelyard.base import Base
 from steelyard.base.draws import Array
-from steelyard.sensitivity.families import Family, targets_of
-from steelyard.sensitivity.gathering import Gathered
-from steelyard.sensitivity.nodes import (
-    algebra_findings,
-    study_nodes,
-    weigh_nodes,
-    weight_findings,
-)
+from steelyard.sensitivity.families import Family, members, refuse_withheld
+from steelyard.sensitivity.gathering import Gathered, Shared
+from steelyard.sensitivity.nodes import Columns, Study, weight_findings
+from steelyard.sensitivity.targets import Formed, Targets
 from steelyard.verdicts import judge
 from steelyard.weighing.weigh import Weights
 
@@ -72,6 +70,17 @@ class Path:
     own: Weights
     places: dict[float, Place] = field(default_factory=dict)
 
+    @cached_property
+    def targets(self) -> Targets:
+        """What was learnt of single densities, kept for the whole path."""
+        return Targets(self.base)
+
+    @cached_property
+    def study(self) -> Study:
+        """What is asked at every value."""
+        columns = Columns.of([self.event], self.base, self.own)
+        return Study(self.base, self.own, columns, batch_edges(self.base.draws), keep=True)
+
     @property
     def is_log(self) -> bool:
         """Whether steps are even on the log scale."""
@@ -109,22 +118,25 @@ class Path:
             self.places[at] = Place(at, gap - self.level, error, sound, float(sizes[i]), degrees)
 
     def _estimate(self, values: list[float]) -> tuple[Estimate, Array]:
-        nodes = [(v,) for v in values]
-        targets, ratios = targets_of(self.base, self.family, [self.name], nodes)
-        for target in targets:
-            if target.withheld:
-                # An event of predictive draws whose model changed is refused here.
-                event_mask(self.asked, replace(self.base, withheld=target.withheld))
-        weighed = weigh_nodes(self.base, ratios, self.own)
-        gathered = Gathered.empty(self.event, len(values))
-        f = np.ascontiguousarray(self.event.columns[:, 0])
-        gathered.put(slice(0, len(values)), 0, study_nodes(weighed, f, is_event=True))
-        findings = [*algebra_findings(self.base, targets), *weight_findings(weighed)]
-        findings.append(judge("base_unverified"))
+        formed = self._formed(values)
+        found = self.study.of(formed.ratios)
+        (gathered,) = Gathered.empty([self.event], len(values))
+        gathered.put(slice(0, len(values)), found.value)
+        findings = [
+            *self.targets.findings(formed.made),
+            *weight_findings(found.about, self.base),
+            judge("base_unverified"),
+        ]
         labels = {self.name: np.array(values)}
-        lead = (len(values),)
-        sizes = weighed.effective_size
-        return gathered.finished(self.base, self.own, sizes, findings, lead, labels), sizes
+        sizes = found.about[:, 2]
+        shared = Shared(self.base, self.own, sizes, findings, (len(values),), labels)
+        return gathered.finished(self.study.columns, shared), sizes
+
+    def _formed(self, values: Sequence[float]) -> Formed:
+        formed = members(self.targets, self.family, [self.name], [(v,) for v in values])
+        # An event of predictive draws whose model changed is refused here.
+        refuse_withheld(formed, lambda base: event_mask(self.asked, base), self.base)
+        return formed
 
     def probability(self, at: float) -> Estimate:
         """The probability at one value, with its verdict."""
@@ -158,11 +170,12 @@ class Path:
         if self.is_log:
             h = 1e-4 * at
         one, other = max(at - h, low), min(at + h, high)
-        _, ratios = targets_of(self.base, self.family, [self.name], [(one,), (at,), (other,)])
-        weights = weigh_nodes(self.base, np.ascontiguousarray(ratios[:, 1:2]), self.own)
-        w = weights.linear[:, 0]
+        ratios = self._formed([one, at, other]).ratios
+        w = self.study.of(ratios[1:2]).weights
+        assert w is not None
+        w = w[0]
         with np.errstate(invalid="ignore"):
-            score = (ratios[:, 2] - ratios[:, 0]) / (other - one)
+            score = (ratios[2] - ratios[0]) / (other - one)
         score = np.where(w > 0, np.nan_to_num(score), 0.0)
         f = self.event.columns[:, 0]
         centre = float(_core.weighted_mean(score[:, None], w)[0])

@@ -3,14 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from html import escape
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import numpy.typing as npt
 
-from steelyard.answers.bands import batch_edges, batch_sums, critical_value
+from steelyard.answers.bands import batch_edges, critical_value
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.quantities import Quantity, labelled, read_quantity
 from steelyard.answers.tabulate import element_names
@@ -18,16 +18,17 @@ from steelyard.arrays import Frozen, ReadOnly
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.errors import ArgumentError, UnknownNameError
-from steelyard.sensitivity.families import Family, nodes_of, read_grid, remembering, targets_of
-from steelyard.sensitivity.gathering import Gathered
-from steelyard.sensitivity.nodes import (
-    algebra_findings,
-    node_blocks,
-    own_weights,
-    study_nodes,
-    weigh_nodes,
-    weight_findings,
+from steelyard.sensitivity.families import (
+    Family,
+    members,
+    nodes_of,
+    read_grid,
+    refuse_withheld,
+    remembering,
 )
+from steelyard.sensitivity.gathering import Gathered, Shared
+from steelyard.sensitivity.nodes import Columns, Study, node_blocks, own_weights, weight_findings
+from steelyard.sensitivity.targets import Targets
 from steelyard.table import Table
 from steelyard.verdicts import Finding, judge
 
@@ -173,39 +174,35 @@ def sweep(base: Base, family: Family, grid: Any, quantities: Any = None) -> Swee
     _refuse_shared_names(axes, asked)
     names, nodes = list(axes), nodes_of(axes)
     base = remembering(base)
-    gathered = {label: Gathered.empty(q, len(nodes)) for label, q in asked.items()}
-    own, edges = own_weights(base), batch_edges(base.draws)
+    own, targets = own_weights(base), Targets(base)
+    columns = Columns.of(list(asked.values()), base, own)
+    study = Study(base, own, columns, batch_edges(base.draws))
+    gathered = Gathered.empty(list(asked.values()), len(nodes))
     sizes = np.empty(len(nodes))
     findings: list[list[Finding]] = []
     sums: list[Array] = []
-    for part in node_blocks(len(nodes)):
-        targets, ratios = targets_of(base, family, names, nodes[part])
-        for target in targets:
-            if target.withheld:
-                # Quantities of predictive draws whose model changed are refused here.
-                asked_for(quantities, replace(base, withheld=target.withheld))
-        weighed = weigh_nodes(base, ratios, own)
-        sizes[part] = weighed.effective_size
-        findings.append([*algebra_findings(base, targets), *weight_findings(weighed)])
-        for label, quantity in asked.items():
-            for column in range(quantity.columns.shape[1]):
-                f = np.ascontiguousarray(quantity.columns[:, column])
-                found = study_nodes(weighed, f, is_event=quantity.is_event)
-                gathered[label].put(part, column, found)
-                sums.append(batch_sums(found.z, edges))
+    blocks = list(node_blocks(len(nodes), base.draws.size))
+    for part in blocks:
+        formed = members(targets, family, names, nodes[part])
+        refuse_withheld(formed, lambda base: asked_for(quantities, base), base)
+        found = study.of(formed.ratios)
+        sizes[part] = found.about[:, 2]
+        findings.append([*targets.findings(formed.made), *weight_findings(found.about, base)])
+        for one in gathered:
+            one.put(part, found.value)
+        sums.append(found.sums.reshape(-1, found.sums.shape[-1]))
     lead = tuple(len(axis) for axis in axes.values())
-    joined = join_findings(findings, [p.stop - p.start for p in node_blocks(len(nodes))])
-    joined.append(judge("base_unverified"))
+    joined = join_findings(findings, [p.stop - p.start for p in blocks])
+    shared = Shared(base, own, sizes, [*joined, judge("base_unverified")], lead, dict(axes))
     estimates = {
-        label: one.finished(base, own, sizes, joined, lead, dict(axes))
-        for label, one in gathered.items()
+        label: one.finished(columns, shared) for label, one in zip(asked, gathered, strict=True)
     }
     return Sweep(
         ReadOnly(axes),
         ReadOnly(estimates),
         _trusted(estimates, lead),
         sizes.reshape(lead),
-        critical_value(np.concatenate(sums, axis=1)),
+        critical_value(np.concatenate(sums).T),
     )
 
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -12,6 +12,7 @@ import numpy as np
 from steelyard.arrays import in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
+from steelyard.base.pooling import Pooling
 from steelyard.changes.merging import PriorTarget
 from steelyard.changes.noise import NoisyTerm
 from steelyard.changes.target import Target
@@ -31,17 +32,56 @@ _MOST_PARAMETERS = 500
 def preflight(base: Base, target: Target) -> list[Finding]:
     """Findings about supports, widened priors and weakened likelihoods."""
     findings = list(support_findings(base, target))
+    if base.draws.pooling is not None:
+        return findings + _from_the_broadest(base, target, base.draws.pooling)
+    return findings + _algebra(base, target)
+
+
+def _algebra(base: Base, target: Target) -> list[Finding]:
     loss = information_lost(base, target)
     exact = _normal_throughout(base, target, loss)
     if exact is not None:
-        return findings + exact
-    findings += _normal_widened(base, target.prior)
+        return exact
+    findings = _normal_widened(base, target.prior)
     findings += _gamma_or_beta_widened(base, target.prior)
     if loss is not None:
         # How far the data dominate is not known, so that this figure is an upper one: it never
         # condemns an answer by itself.
         findings.append(_loosened(loss, loss.share_lost, refit=math.inf))
     return findings
+
+
+def _from_the_broadest(base: Base, target: Target, pooling: Pooling) -> list[Finding]:
+    """
+    What algebra knows of the weights from the fit of a pool that reaches furthest.
+
+    The mixture is at least a share of each fit, so that its weights have at most the smallest of
+    the tail shapes that they would have from one fit alone.
+    """
+    least: list[Finding] | None = None
+    for number, prior in enumerate(pooling.priors):
+        if not prior or set(prior) != set(base.prior or {}):
+            continue
+        draws = replace(base.draws, pooling=None)
+        alone = replace(base, draws=draws, prior=prior, log_weights=pooling.log_weights(number))
+        if not pooling.same_likelihood:
+            alone = replace(alone, loglik=None)
+        targets = {}
+        for label, term in prior.items():
+            changed = target.prior.get(label)
+            density = base.prior[label] if changed is None else changed.density  # type: ignore[index]
+            factors = () if changed is None else changed.factors
+            targets[label] = PriorTarget(term.resolved(draws), density.resolved(draws), factors)
+        found = _algebra(alone, replace(target, prior=targets))
+        if not found:
+            return []
+        if least is None or _largest(found) < _largest(least):
+            least = found
+    return least or []
+
+
+def _largest(findings: list[Finding]) -> float:
+    return max(float(finding.figure.max()) for finding in findings)
 
 
 def _loosened(loss: Loss, figure: float, *, refit: float | None = None) -> Finding:
@@ -204,10 +244,16 @@ def _matched_shape(base: Base, prior: PriorTarget) -> tuple[Array, str]:
         return none
     if old.names or new.names or old.event_axes or old.is_discrete or new.is_discrete:
         return none
-    value, weights = prior.base.value(base.draws), base_weights(base).linear
+    value = prior.base.value(base.draws)
     before, after = old.tails(value.shape[1:]), new.tails(value.shape[1:])
+    rate = before.upper.rate
+    is_gamma = np.all(np.isfinite(rate) & (rate > 0))
+    is_beta = np.all(np.isfinite(before.upper.limit) & (before.upper.order == 0))
     if not np.all(np.isfinite(before.lower.limit) & (before.lower.order == 0)):
         return none
+    if not (is_gamma or is_beta):
+        return none
+    weights = base_weights(base).linear
     mean = np.average(value, axis=0, weights=weights) - before.lower.limit
     with np.errstate(over="ignore"):
         variance = np.average((value - mean - before.lower.limit) ** 2, axis=0, weights=weights)
@@ -215,17 +261,14 @@ def _matched_shape(base: Base, prior: PriorTarget) -> tuple[Array, str]:
     if not np.all((variance > 0) & np.isfinite(variance) & (square > 0) & np.isfinite(square)):
         return none
     lost = _power_lost(before.lower, after.lower, prior.factor)
-    rate = before.upper.rate
-    if np.all(np.isfinite(rate) & (rate > 0)):
+    if is_gamma:
         slower = rate - (prior.factor * after.upper.rate if prior.factor else 0.0)
         return np.maximum(lost / (square / variance), slower / (mean / variance)), "gamma"
-    if np.all(np.isfinite(before.upper.limit) & (before.upper.order == 0)):
-        width = before.upper.limit - before.lower.limit
-        mean, variance = mean / width, variance / width**2
-        size = mean * (1 - mean) / variance - 1
-        above = _power_lost(before.upper, after.upper, prior.factor)
-        return np.maximum(lost / (size * mean), above / (size * (1 - mean))), "beta"
-    return none
+    width = before.upper.limit - before.lower.limit
+    mean, variance = mean / width, variance / width**2
+    size = mean * (1 - mean) / variance - 1
+    above = _power_lost(before.upper, after.upper, prior.factor)
+    return np.maximum(lost / (size * mean), above / (size * (1 - mean))), "beta"
 
 
 def _power_lost(before: Tail, after: Tail, factor: Any) -> Array:

@@ -10,8 +10,10 @@ import numpy.typing as npt
 from steelyard import _core
 from steelyard.base import Draws
 from steelyard.base.draws import Array
+from steelyard.base.pooling import Pooling
 
 __all__ = [
+    "carried",
     "chains_p_value",
     "contributions_of",
     "degrees_of",
@@ -42,20 +44,39 @@ def long_run_variance(z: Array, draws: Draws, ordered: bool) -> Array:
 
     With many chains it is at least that of chains taken as independent units, since short chains
     cannot show their own autocorrelation. Draws without order have their mean square instead,
-    with repeated draws taken together.
+    with repeated draws taken together. In a pool only what varies within a fit counts.
     """
+    groups = None if ordered and draws.pooling is None else draws.repeats
+    if draws.pooling is None:
+        return _of_chains(z, draws.starts, groups, ordered)
+    z = draws.pooling.centred(z)
+    total = np.zeros(z.shape[1])
+    for fit in draws.pooling.strata(draws.starts):
+        rows = fit.rows
+        within = None if groups is None else groups[rows]
+        one = _of_chains(z[rows], fit.starts, within, ordered and fit.ordered)
+        total += (rows.stop - rows.start) * one
+    return total / draws.size
+
+
+def _of_chains(
+    z: Array,
+    starts: npt.NDArray[np.int64],
+    groups: npt.NDArray[np.intp] | None,
+    ordered: bool,
+) -> Array:
     if not ordered:
-        groups = draws.repeats
         if groups is None:
             return _core.mean_square(z)
         return _grouped(z - z.mean(axis=0), groups)
-    lrv = _core.long_run_variance(z, draws.starts, True)
-    if draws.chains < _MANY_CHAINS:
+    lrv = _core.long_run_variance(z, starts, True)
+    size, chains = int(starts[-1]), len(starts) - 1
+    if chains < _MANY_CHAINS:
         return lrv
-    lengths = np.diff(draws.starts)
-    means = np.add.reduceat(z, draws.starts[:-1], axis=0) / lengths[:, None]
-    spread = (lengths[:, None] * (means - z.mean(axis=0)) ** 2).sum(axis=0) / draws.size
-    units = draws.size / draws.chains * draws.chains / (draws.chains - 1) * spread
+    lengths = np.diff(starts)
+    means = np.add.reduceat(z, starts[:-1], axis=0) / lengths[:, None]
+    spread = (lengths[:, None] * (means - z.mean(axis=0)) ** 2).sum(axis=0) / size
+    units = size / chains * chains / (chains - 1) * spread
     return np.asarray(np.maximum(lrv, units))
 
 
@@ -95,6 +116,8 @@ def contributions_of(z: Array, efficiency: Array, draws: Draws, ordered: bool) -
     ----------
     .. [1] Cochran (1977), Sampling Techniques, section 2.15.
     """
+    if draws.pooling is not None:
+        z = draws.pooling.centred(z)
     z = _together(z, draws, ordered)
     z = z - z.mean(axis=0)
     top = np.abs(z).max(axis=0)
@@ -120,7 +143,7 @@ def relative_efficiency(z: Array, draws: Draws, ordered: bool) -> Array:
     """``min(1, var/LRV)`` of each column, in (0, 1]; 1 for a constant."""
     if not ordered:
         return np.ones(z.shape[1])
-    variance = _core.mean_square(z)
+    variance = _core.mean_square(z if draws.pooling is None else draws.pooling.centred(z))
     lrv = long_run_variance(z, draws, ordered)
     with np.errstate(invalid="ignore", divide="ignore"):
         ratio = variance / lrv
@@ -135,7 +158,12 @@ def standard_error(z: Array, draws: Draws, ordered: bool) -> Array:
     ----------
     .. [1] Geyer (1992), Statistical Science 7; Jones et al. (2006), JASA 101.
     """
-    return np.sqrt(long_run_variance(z, draws, ordered) / draws.size)
+    return np.sqrt(long_run_variance(carried(z, draws), draws, ordered) / draws.size)
+
+
+def carried(z: Array, draws: Draws) -> Array:
+    """Influence values of an estimate, with what the constants of a pool add to them."""
+    return z if draws.pooling is None else draws.pooling.carried(z)
 
 
 def chains_p_value(f: Array, weights: Array, draws: Draws) -> Array:
@@ -152,7 +180,30 @@ def chains_p_value(f: Array, weights: Array, draws: Draws) -> Array:
     ----------
     .. [1] Welch (1951), Biometrika 38.
     """
-    if draws.chains < 2 or int(np.diff(draws.starts).min()) < _SHORTEST:
+    if draws.pooling is not None:
+        return _of_fits(f, weights, draws, draws.pooling)
+    return _of_one_fit(f, weights, draws.starts)
+
+
+# Chains of a fit that carries less of the weight than this are not compared.
+_LEAST_SHARE = 0.01
+
+
+def _of_fits(f: Array, weights: Array, draws: Draws, pooling: Pooling) -> Array:
+    """Chains are compared within each fit; the smallest p-value times the number of fits."""
+    least, compared = np.ones(f.shape[1]), 0
+    for fit in pooling.strata(draws.starts):
+        own = np.ascontiguousarray(weights[fit.rows])
+        share = float(own.sum()) / float(weights.sum())
+        if fit.ordered and len(fit.starts) > 2 and share >= _LEAST_SHARE:
+            compared += 1
+            rows = np.ascontiguousarray(f[fit.rows])
+            least = np.minimum(least, _of_one_fit(rows, own / own.sum(), fit.starts))
+    return np.minimum(compared * least, 1.0) if compared else least
+
+
+def _of_one_fit(f: Array, weights: Array, starts: npt.NDArray[np.int64]) -> Array:
+    if len(starts) < 3 or int(np.diff(starts).min()) < _SHORTEST:
         return np.ones(f.shape[1])
     mean = _core.weighted_mean(f, weights)
     pooled = _core.weighted_mean((f - mean) ** 2, weights)
@@ -160,7 +211,7 @@ def chains_p_value(f: Array, weights: Array, draws: Draws) -> Array:
     rounding = (1e-10 * np.abs(f).max(axis=0)) ** 2
     found = [
         _one_chain(f[start:stop], weights[start:stop], pooled, rounding)
-        for start, stop in pairwise(draws.starts.tolist())
+        for start, stop in pairwise(starts.tolist())
         if weights[start:stop].sum() > 0
     ]
     if len(found) < 2:

@@ -10,6 +10,7 @@ import numpy as np
 
 from steelyard.base import Base
 from steelyard.base.draws import Array
+from steelyard.base.pooling import Pooling
 from steelyard.changes.merging import PriorTarget
 from steelyard.changes.target import Target
 from steelyard.densities import Distribution
@@ -18,12 +19,17 @@ from steelyard.weighing.weigh import base_weights
 
 __all__ = ["support_findings"]
 
+Limits = tuple[Array, Array]
+
 # Width of the strip along an edge in which base draws are counted, in base sds.
 _STRIP = 0.2
 
 
 def support_findings(base: Base, target: Target) -> Iterator[Finding]:
     """Support gaps of swapped priors, and pressure of the base at a limit that moved."""
+    if base.draws.pooling is not None:
+        yield from _of_union(base, target, base.draws.pooling)
+        return
     for prior in target.prior.values():
         if not prior.is_swapped:
             continue
@@ -48,6 +54,48 @@ def support_findings(base: Base, target: Target) -> Iterator[Finding]:
         for side, edge, gap in gaps:
             if np.any(gap):
                 yield from _edge_pressure(prior, base, edge, side)
+
+
+def _of_union(base: Base, target: Target, pooling: Pooling) -> Iterator[Finding]:
+    """The same where several fits were pooled: one of them may reach where another does not."""
+    wanted = {label: _support(p.density, base) for label, p in target.prior.items()}
+    for label, term in (base.prior or {}).items():
+        wanted.setdefault(label, _support(term, base))
+    reached = [
+        {label: _support(prior[label], base) if label in prior else None for label in wanted}
+        for prior in pooling.priors
+    ]
+    short = [
+        [label for label in wanted if not _covers([own[label]], wanted[label])] for own in reached
+    ]
+    if not all(short):
+        return
+    for label in wanted:
+        parts = [own[label] for own, lacks in zip(reached, short, strict=True) if lacks == [label]]
+        if parts and _covers(parts, wanted[label]):
+            return
+    label = min(short, key=len)[0]
+    parts = [own[label] for own in reached]
+    new = wanted[label]
+    if new is None or any(part is None for part in parts):
+        yield judge("support_unknown", term=label)
+        return
+    old = " and ".join(dict.fromkeys(_interval(*part) for part in parts if part is not None))
+    yield judge("support_gap", term=label, old=old, new=_interval(*new))
+
+
+def _covers(parts: list[Limits | None], wanted: Limits | None) -> bool:
+    """Whether intervals together hold another one, for every element."""
+    known = [part for part in parts if part is not None]
+    if any(_covers_the_line(part) for part in known):
+        return True
+    if wanted is None or not known:
+        return False
+    reach: Array = np.asarray(wanted[0])
+    for _ in known:
+        for low, high in known:
+            reach = np.where(low <= reach, np.maximum(reach, high), reach)
+    return bool(np.all(reach >= wanted[1]))
 
 
 def _support(term: Any, base: Base) -> tuple[Array, Array] | None:

@@ -55,7 +55,9 @@ def tail_share(raw: Array) -> float:
 
 
 def shared_findings(weights: Weights, draws: Draws, ordered: bool) -> Iterator[Finding]:
-    """Findings that quantities share with the answer: shares of the chains, draws lost."""
+    """Findings that quantities share with the answer: shares of the chains, draws lost, pooling."""
+    if draws.pooling is not None:
+        yield from draws.pooling.findings
     if ordered and draws.chains > 1:
         ratio = weights.linear[:, None] * draws.size
         equal = np.full(draws.size, 1 / draws.size)

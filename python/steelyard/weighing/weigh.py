@@ -71,6 +71,7 @@ def weigh_ratio(
     *,
     ordered: bool = True,
     smooth: bool = True,
+    base_weights: Array | None = None,
 ) -> Weights:
     """
     Weights of the target from log ratios and base log weights.
@@ -87,6 +88,8 @@ def weigh_ratio(
         Whether autocorrelation counts.
     smooth : bool
         Whether the largest weights are smoothed.
+    base_weights : numpy.ndarray, optional
+        Log weights whose sum stands for the base, where these differ from `log_weights`.
 
     Returns
     -------
@@ -96,11 +99,8 @@ def weigh_ratio(
     refuse_bad_ratio(log_ratio, draws, "log ratio")
     total = log_ratio if log_weights is None else log_ratio + log_weights
     refuse_bad_ratio(total, draws, "log ratio with base weights")
-    base_sum = (
-        math.log(draws.size)
-        if log_weights is None
-        else float(_core.log_sum_exp(log_weights[:, None])[0])
-    )
+    base = log_weights if base_weights is None else base_weights
+    base_sum = math.log(draws.size) if base is None else float(_core.log_sum_exp(base[:, None])[0])
     log_mean = float(_core.log_sum_exp(total[:, None])[0]) - base_sum
     with np.errstate(over="ignore"):  # −inf is then what is meant
         raw = np.exp(total - total.max())

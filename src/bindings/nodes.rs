@@ -1,0 +1,119 @@
+//! Nodes: many targets over the same draws.
+
+use ndarray::{Array2, ArrayView2, ArrayViewMut2, Axis};
+use numpy::{IntoPyArray, PyArray2, PyReadonlyArray1, PyReadonlyArray2, PyReadwriteArray2};
+use pyo3::prelude::*;
+
+use super::arrays::{matrix, matrix_mut, vector};
+use super::errors::detached;
+use crate::kernels::chain_means::Chains;
+use crate::kernels::columns::expect_shape;
+use crate::kernels::error::KernelError;
+use crate::kernels::long_run;
+use crate::kernels::nodes::{Common, Room, study};
+use crate::kernels::ordered::{Interrupt, map_tasks};
+
+/// Nodes of one task.
+const NODES: usize = 4;
+
+/// Figures of every node, log ratios `(B, n)` in C order, for quantities `(q, n)` in C order:
+/// `(B, width)`. Smoothed weights go to `weights`, `(B, n)`, where it is given.
+#[pyfunction]
+#[expect(
+    clippy::too_many_arguments,
+    reason = "flat arrays are what crosses the border"
+)]
+pub fn study_nodes<'py>(
+    py: Python<'py>,
+    ratios: PyReadonlyArray2<'py, f64>,
+    columns: PyReadonlyArray2<'py, f64>,
+    events: PyReadonlyArray1<'py, f64>,
+    own: PyReadonlyArray2<'py, f64>,
+    equal_base: bool,
+    starts: PyReadonlyArray1<'py, i64>,
+    ordered: bool,
+    batches: PyReadonlyArray1<'py, i64>,
+    shift: bool,
+    mut weights: Option<PyReadwriteArray2<'py, f64>>,
+) -> PyResult<Bound<'py, PyArray2<f64>>> {
+    let (ratios, columns) = (matrix("ratios", &ratios)?, matrix("columns", &columns)?);
+    let draws = ratios.ncols();
+    let (events, own) = (vector("events", &events)?, matrix("own", &own)?);
+    expect_shape("columns", &[columns.nrows(), draws], columns.shape())?;
+    expect_shape("events", &[columns.nrows()], &[events.len()])?;
+    expect_shape("own", &[2, draws], own.shape())?;
+    let weights = match &mut weights {
+        Some(weights) => Some(matrix_mut("weights", weights)?),
+        None => None,
+    };
+    if let Some(weights) = &weights {
+        expect_shape("weights", ratios.shape(), weights.shape())?;
+    }
+    let (columns, own) = (columns.as_standard_layout(), own.as_standard_layout());
+    let rows = |array: &'_ ndarray::CowArray<'_, f64, ndarray::Ix2>| -> Vec<Vec<f64>> {
+        array.outer_iter().map(|row| row.to_vec()).collect()
+    };
+    let (columns, own) = (rows(&columns), rows(&own));
+    let batches = long_run::chains(&vector("batches", &batches)?, draws, false)?;
+    let common = Common {
+        columns: columns.iter().map(Vec::as_slice).collect(),
+        events: events.to_vec(),
+        own: &own[0],
+        own_raw: &own[1],
+        equal_base,
+        chains: Chains::new(&vector("starts", &starts)?, draws)?,
+        ordered,
+        batches,
+        shift,
+    };
+    let figures = detached(py, |interrupt| each(ratios, &common, weights, interrupt))?;
+    Ok(figures.into_pyarray(py))
+}
+
+fn each(
+    ratios: ArrayView2<'_, f64>,
+    common: &Common<'_>,
+    mut weights: Option<ArrayViewMut2<'_, f64>>,
+    interrupt: &Interrupt<'_>,
+) -> Result<Array2<f64>, KernelError> {
+    let mut out = Array2::zeros((ratios.nrows(), common.width()));
+    let mut kept = weights
+        .iter_mut()
+        .flat_map(|all| all.axis_iter_mut(Axis(0)));
+    let mut nodes = ratios
+        .axis_iter(Axis(0))
+        .zip(out.axis_iter_mut(Axis(0)))
+        .map(|(ratio, out)| (ratio, out, kept.next()));
+    let mut tasks = Vec::new();
+    loop {
+        let some: Vec<_> = nodes.by_ref().take(NODES).collect();
+        if some.is_empty() {
+            break;
+        }
+        tasks.push(some);
+    }
+    map_tasks(tasks, interrupt, |nodes| {
+        let (mut room, mut found) = (Room::default(), vec![0.0; common.width()]);
+        for (ratio, mut out, into) in nodes {
+            let given = ratio.to_vec();
+            let mut linear = vec![0.0; into.as_ref().map_or(0, |into| into.len())];
+            study(
+                &given,
+                common,
+                &mut linear,
+                &mut found,
+                &mut room,
+                interrupt,
+            )?;
+            out.iter_mut()
+                .zip(&found)
+                .for_each(|(out, found)| *out = *found);
+            if let Some(mut into) = into {
+                into.iter_mut().zip(linear).for_each(|(into, w)| *into = w);
+            }
+        }
+        Ok(())
+    })?;
+    drop(nodes);
+    Ok(out)
+}

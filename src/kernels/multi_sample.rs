@@ -1,0 +1,312 @@
+//! Relative constants of several unnormalised densities from draws of each.
+
+use ndarray::{Array2, ArrayView2, Axis, s};
+
+use super::columns::expect_shape;
+use super::error::KernelError;
+use super::ordered::{Interrupt, map_tasks, sum, sum_by};
+use super::positive::solve;
+use super::shares::{Constants, Sums, Tiles};
+
+/// Draws of one task.
+const ROWS: usize = 4096;
+
+/// Steps after which the search ends even where the constants still move.
+const MOST_STEPS: usize = 200;
+
+/// Halvings of one step.
+const MOST_HALVINGS: usize = 40;
+
+/// A step shorter than this is the last: the one after it would be about its square.
+const SHORT: f64 = 1e-7;
+
+/// From so many draws on the search begins with some of them.
+const MANY: usize = 8192;
+
+/// One draw in so many begins it.
+const EVERY: usize = 8;
+
+/// Distance on the log scale from which densities are scaled anew, so that none vanishes.
+const FAR: f64 = 30.0;
+
+/// A step as long as this is no step.
+const BEYOND: f64 = 1e5;
+
+/// A failure of the equations beyond which a step of no length is not the end.
+const UNBALANCED: f64 = 1e-4;
+
+/// What the draws say of the constants.
+#[derive(Debug)]
+pub struct Solution {
+    /// `f_k`, minus the log constants, with that of the first density at 0.
+    pub constants: Vec<f64>,
+    /// `P_k(x) = n_k exp(f_k) q_k(x) / Σ_l n_l exp(f_l) q_l(x)`, shape `(n, K)`.
+    pub shares: Array2<f64>,
+    /// `log Σ_l n_l exp(f_l) q_l(x)` of every draw.
+    pub log_mixture: Vec<f64>,
+    /// Length of the last step; above `1e-6` the constants are not determined.
+    pub last_step: f64,
+}
+
+/// Constants `f` that solve `exp(−f_k) = Σ_x c(x) q_k(x) / Σ_l n_l exp(f_l) q_l(x)`.
+///
+/// `log_densities` holds `log q_k(x)`, shape `(n, K)`; `counts` what each draw counts, shape `(n,)`;
+/// `sizes` the `n_k`, shape `(K,)`, the sums of the counts over each density's own draws; `start`
+/// where to begin, shape `(K,)`. With `solve` false the constants are kept where they begin. The
+/// minimum of the convex `Σ c log Σ_l n_l exp(f_l) q_l − Σ n_l f_l` is found by Newton steps, halved
+/// until it falls, or by the equation itself where none does. A draw on which all densities vanish
+/// has no shares.
+///
+/// # Errors
+/// [`KernelError::Shape`], [`KernelError::Empty`], [`KernelError::Range`] for sizes that are not
+/// positive; [`KernelError::Interrupted`].
+///
+/// Source: Vardi (1985), Annals of Statistics 13, 178-203; Geyer (1994), Technical Report 568,
+/// University of Minnesota; Shirts & Chodera (2008), J. Chem. Phys. 129, 124105.
+pub fn multi_sample(
+    log_densities: ArrayView2<'_, f64>,
+    counts: &[f64],
+    sizes: &[f64],
+    start: &[f64],
+    solve: bool,
+    interrupt: &Interrupt<'_>,
+) -> Result<Solution, KernelError> {
+    let (draws, densities) = log_densities.dim();
+    if densities == 0 || draws == 0 {
+        return Err(KernelError::Empty {
+            argument: "log_densities",
+        });
+    }
+    expect_shape("counts", &[draws], &[counts.len()])?;
+    expect_shape("sizes", &[densities], &[sizes.len()])?;
+    expect_shape("start", &[densities], &[start.len()])?;
+    if let Some(&found) = sizes.iter().find(|&&size| !(size > 0.0)) {
+        return Err(KernelError::Range {
+            argument: "sizes",
+            expected: "positive sizes",
+            found,
+        });
+    }
+    let constants = if solve && draws >= MANY {
+        roughly(log_densities, counts, sizes, start, interrupt)?
+    } else {
+        start.to_vec()
+    };
+    let mut search = Search {
+        log_densities,
+        counts,
+        sizes,
+        constants,
+        tiles: Vec::new(),
+        moved: vec![0.0; densities],
+    };
+    search.scale(interrupt)?;
+    let last_step = if solve { search.run(interrupt)? } else { 0.0 };
+    search.finish(last_step, interrupt)
+}
+
+/// The constants by some of the draws, evenly spread.
+fn roughly(
+    log_densities: ArrayView2<'_, f64>,
+    counts: &[f64],
+    sizes: &[f64],
+    start: &[f64],
+    interrupt: &Interrupt<'_>,
+) -> Result<Vec<f64>, KernelError> {
+    let counts: Vec<f64> = counts.iter().copied().step_by(EVERY).collect();
+    let share = sum(&counts) / sum(sizes);
+    if !(share > 0.0) {
+        return Ok(start.to_vec());
+    }
+    let sizes: Vec<f64> = sizes.iter().map(|size| size * share).collect();
+    let rows = log_densities.slice(s![..;EVERY, ..]);
+    Ok(multi_sample(rows, &counts, &sizes, start, true, interrupt)?.constants)
+}
+
+struct Search<'a> {
+    log_densities: ArrayView2<'a, f64>,
+    counts: &'a [f64],
+    sizes: &'a [f64],
+    /// Where the densities were scaled last.
+    constants: Vec<f64>,
+    tiles: Vec<Tiles>,
+    /// How far the constants have moved since.
+    moved: Vec<f64>,
+}
+
+impl Search<'_> {
+    /// Takes the exponentials of the densities at the constants reached.
+    fn scale(&mut self, interrupt: &Interrupt<'_>) -> Result<(), KernelError> {
+        for (constant, moved) in self.constants.iter_mut().zip(&mut self.moved) {
+            *constant += *moved;
+            *moved = 0.0;
+        }
+        let first = self.constants[0];
+        let mut shift = Vec::with_capacity(self.sizes.len());
+        for (constant, size) in self.constants.iter_mut().zip(self.sizes) {
+            *constant -= first;
+            shift.push(*constant + libm::log(*size));
+        }
+        let tasks: Vec<_> = self
+            .log_densities
+            .axis_chunks_iter(Axis(0), ROWS)
+            .zip(self.counts.chunks(ROWS))
+            .collect();
+        self.tiles = map_tasks(tasks, interrupt, |(rows, counts)| {
+            Ok(Tiles::new(rows, counts, &shift))
+        })?;
+        Ok(())
+    }
+
+    fn sums(&self, moved: &[f64], interrupt: &Interrupt<'_>) -> Result<Sums, KernelError> {
+        let constants = Constants::new(moved);
+        let tasks: Vec<&Tiles> = self.tiles.iter().collect();
+        let parts = map_tasks(tasks, interrupt, |tiles| Ok(tiles.sums(&constants)))?;
+        let added =
+            |entry: &(dyn Fn(&Sums) -> f64 + Sync)| sum_by(parts.len(), |part| entry(&parts[part]));
+        let entries = |length: usize, of: fn(&Sums) -> &[f64]| {
+            (0..length).map(|i| added(&|part| of(part)[i])).collect()
+        };
+        let densities = self.sizes.len();
+        Ok(Sums {
+            logs: added(&|part| part.logs),
+            firsts: entries(densities, |part| &part.firsts),
+            products: entries(densities * (densities + 1) / 2, |part| &part.products),
+        })
+    }
+
+    /// `Σ c log Σ_l n_l exp(f_l) q_l − Σ n_l f_l`, up to what is fixed by the scaling.
+    fn height(&self, sums: &Sums, moved: &[f64]) -> f64 {
+        sums.logs - sum_by(moved.len(), |k| self.sizes[k] * moved[k])
+    }
+
+    fn run(&mut self, interrupt: &Interrupt<'_>) -> Result<f64, KernelError> {
+        let mut sums = self.sums(&self.moved, interrupt)?;
+        let mut length = 0.0;
+        for _ in 0..MOST_STEPS {
+            let step = self.newton(&sums);
+            length = longest(&step);
+            let (moved, found) = if length >= SHORT {
+                self.descend(&sums, &step, interrupt)?
+            } else if self.imbalance(&sums) > UNBALANCED {
+                length = FAR;
+                self.balance(&sums, interrupt)?
+            } else {
+                for (moved, step) in self.moved.iter_mut().zip(&step) {
+                    *moved += step;
+                }
+                break;
+            };
+            self.moved = moved;
+            sums = found;
+            if longest(&self.moved) > FAR {
+                self.scale(interrupt)?;
+                sums = self.sums(&self.moved, interrupt)?;
+            }
+        }
+        Ok(length)
+    }
+
+    /// Newton's step, with the first constant held.
+    fn newton(&self, sums: &Sums) -> Vec<f64> {
+        let free = self.sizes.len() - 1;
+        let mut matrix = vec![0.0; free * free];
+        let mut slope = vec![0.0; free];
+        for i in 0..free {
+            slope[i] = self.sizes[i + 1] - sums.firsts[i + 1];
+            for j in 0..=i {
+                let product = sums.products[(i + 1) * (i + 2) / 2 + j + 1];
+                let entry = if i == j { sums.firsts[i + 1] } else { 0.0 } - product;
+                matrix[i * free + j] = entry;
+                matrix[j * free + i] = entry;
+            }
+        }
+        let mut step = vec![0.0];
+        step.extend(solve(&matrix, &slope));
+        // Where shares have all but vanished the curvature says nothing.
+        if !step.iter().all(|entry| entry.abs() < BEYOND) {
+            step.fill(0.0);
+        }
+        step
+    }
+
+    /// Goes along `step`, halved until the height falls; by the equation itself where none does.
+    fn descend(
+        &self,
+        sums: &Sums,
+        step: &[f64],
+        interrupt: &Interrupt<'_>,
+    ) -> Result<(Vec<f64>, Sums), KernelError> {
+        let before = self.height(sums, &self.moved);
+        // Rounding of a sum of this size is no rise.
+        let slack = 1e-13 * (sums.logs.abs() + self.counts.len() as f64);
+        let mut share = if longest(step) > FAR {
+            FAR / longest(step)
+        } else {
+            1.0
+        };
+        for _ in 0..MOST_HALVINGS {
+            let moved: Vec<f64> = (self.moved.iter().zip(step))
+                .map(|(moved, step)| moved + share * step)
+                .collect();
+            let found = self.sums(&moved, interrupt)?;
+            let slope = sum_by(step.len(), |k| (sums.firsts[k] - self.sizes[k]) * step[k]);
+            if self.height(&found, &moved) <= before + 1e-4 * share * slope.min(0.0) + slack {
+                return Ok((moved, found));
+            }
+            share *= 0.5;
+        }
+        self.balance(sums, interrupt)
+    }
+
+    /// Largest share by which a density's own equation fails.
+    fn imbalance(&self, sums: &Sums) -> f64 {
+        let parts = sums.firsts.iter().zip(self.sizes);
+        parts.fold(0.0, |most: f64, (first, size)| {
+            most.max((first / size - 1.0).abs())
+        })
+    }
+
+    /// Goes where the equation itself leads: never up, if slowly.
+    fn balance(
+        &self,
+        sums: &Sums,
+        interrupt: &Interrupt<'_>,
+    ) -> Result<(Vec<f64>, Sums), KernelError> {
+        let own = |k: usize| libm::log(self.sizes[k] / sums.firsts[k].max(f64::MIN_POSITIVE));
+        let moved: Vec<f64> = (0..self.sizes.len())
+            .map(|k| self.moved[k] + (own(k) - own(0)).clamp(-10.0 * FAR, 10.0 * FAR))
+            .collect();
+        let found = self.sums(&moved, interrupt)?;
+        Ok((moved, found))
+    }
+
+    fn finish(self, last_step: f64, interrupt: &Interrupt<'_>) -> Result<Solution, KernelError> {
+        let reached = Constants::new(&self.moved);
+        let mut shares = Array2::zeros(self.log_densities.dim());
+        let mut log_mixture = vec![0.0; self.counts.len()];
+        let tasks: Vec<_> = self
+            .tiles
+            .iter()
+            .zip(shares.axis_chunks_iter_mut(Axis(0), ROWS))
+            .zip(log_mixture.chunks_mut(ROWS))
+            .collect();
+        map_tasks(tasks, interrupt, |((tiles, shares), logs)| {
+            tiles.deliver(&reached, shares, logs);
+            Ok(())
+        })?;
+        let own = |k: usize| self.constants[k] + self.moved[k];
+        let constants = (0..self.sizes.len()).map(|k| own(k) - own(0)).collect();
+        Ok(Solution {
+            constants,
+            shares,
+            log_mixture,
+            last_step,
+        })
+    }
+}
+
+fn longest(step: &[f64]) -> f64 {
+    step.iter()
+        .fold(0.0, |most: f64, entry| most.max(entry.abs()))
+}
