@@ -4,7 +4,7 @@ use std::cell::RefCell;
 
 use super::largest::{Finder, Ranked, Spread};
 use super::pareto::{self, FEWEST, Pareto, Quantiles};
-use super::vector::exp::{exp, exp_m1};
+use super::vector::exp::{LEAST, exp, exp_m1};
 use super::vector::{Arithmetic, Work, dispatch};
 
 /// Tail length `M = ⌈min(S/5, 3 √(S/e))⌉` of `S` draws with relative efficiency `e`, the rule of
@@ -167,7 +167,12 @@ impl Work for Differences<'_> {
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
-        let base = self.cutoff.exp();
+        // As `exp` rounds to 0, or a value would end below its cut-off.
+        let base = if self.cutoff < LEAST {
+            0.0
+        } else {
+            self.cutoff.exp()
+        };
         for value in self.values {
             let distance = *value - self.cutoff;
             // Near the cut-off the difference of two exponentials cancels; far above it, from 710

@@ -193,6 +193,23 @@ fn a_dominating_draw_that_smoothing_pulls_down_leaves_no_nan() {
 }
 
 #[test]
+fn a_tail_across_the_smallest_doubles_has_a_shape() {
+    // Weights of exp(-705) to exp(-745): some of them round to 0, their cut-off need not.
+    for top in [-700.0, -705.0, -709.0, -720.0, -740.0] {
+        let mut x = vec![-30_000.0; 118];
+        x[0] = 0.0;
+        x[1] = -105.0;
+        x[2..18].fill(top);
+        for (place, entry) in x[18..26].iter_mut().enumerate() {
+            *entry = top - place as f64;
+        }
+        let mut out = vec![0.0; x.len()];
+        assert!(!smooth(&x, 1.0, &mut out).is_nan(), "{top}");
+        assert!(out.iter().all(|entry| !entry.is_nan()), "{top}");
+    }
+}
+
+#[test]
 fn bad_content_gives_nan_and_nothing_gives_no_weight() {
     let mut out = [0.0; 3];
     for bad in [[0.0, f64::NAN, 1.0], [0.0, f64::INFINITY, 1.0]] {

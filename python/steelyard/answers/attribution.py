@@ -154,7 +154,7 @@ def _along_the_path(
     """
     count, (f, unit) = scale.count, in_unit(quantity.columns)
     v = scale.base_weights.linear
-    start, kept = _start(log_ratio, v)
+    start, kept = _start(log_ratio, scale.base_weights.log)
     nodes, shares = np.polynomial.legendre.leggauss(_NODES)
     deltas = [np.where(kept, delta, 0.0) for delta in parts.values()]
     values = np.zeros((len(deltas), f.shape[1]))
@@ -182,9 +182,11 @@ def _along_the_path(
     return values * unit, series, unsure * unit
 
 
-def _start(log_ratio: Array, v: Array) -> tuple[Array, Any]:
+def _start(log_ratio: Array, log_base: Array) -> tuple[Array, Any]:
     kept = log_ratio > -np.inf
-    w = np.where(kept, v, 0.0)
+    # On the log scale: all that is kept may weigh less than a float can say.
+    logs = np.where(kept, log_base, -np.inf)
+    w = np.exp(logs - logs.max())
     return w / w.sum(), kept
 
 
@@ -220,14 +222,13 @@ def _grouped(parts: Mapping[str, Array], groups: Any) -> dict[str, Array]:
     out: dict[str, Array] = {}
     used: dict[str, str] = {}
     for label, members in groups.items():
-        where = f"groups[{label!r}]"
+        where, kind = f"groups[{label!r}]", type(members).__name__
         if not isinstance(members, str | list | tuple | set | frozenset):
-            came = type(members).__name__
-            raise ArgumentTypeError(where, "a list of terms", came, "Name the terms.")
+            raise ArgumentTypeError(where, "a list of terms", kind, "Name the terms.")
         for member in [members] if isinstance(members, str) else members:
             if not isinstance(member, str) or member not in parts:
-                known = close_names(str(member), parts)
-                raise UnknownNameError(where, "terms that the change alters", repr(member), known)
+                near = close_names(str(member), parts)
+                raise UnknownNameError(where, "terms that the change alters", repr(member), near)
             if member in used:
                 raise ChangeError(
                     where,

@@ -146,9 +146,12 @@ def sd_of(scale: Scale, quantity: Quantity) -> Estimate:
     def work(f: Array) -> tuple[Array, Series, Array]:
         f, unit = in_unit(f)
         mean, sd = moments(scale, f)
-        psi = ((f - mean) ** 2 - sd**2) / np.where(sd > 0, 2 * sd, 1.0)
+        # Divided at the end: where the sd is far below the values the quotient's square overflows.
+        psi = (f - mean) ** 2 - sd**2
         spread = np.sqrt(_core.weighted_mean(psi**2, scale.weights.linear))
-        return sd * unit, study(scale, psi).times(unit), spread * unit
+        with np.errstate(over="ignore"):
+            slope = unit / np.where(sd > 0, 2 * sd, 1.0)
+            return sd * unit, study(scale, psi).times(slope), spread * slope
 
     return _over_columns(scale, quantity, work)
 

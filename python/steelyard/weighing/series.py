@@ -8,6 +8,7 @@ import numpy as np
 import numpy.typing as npt
 
 from steelyard import _core
+from steelyard.arrays import in_unit
 from steelyard.base import Draws
 from steelyard.base.draws import Array
 from steelyard.base.pooling import Pooling
@@ -205,6 +206,7 @@ def _of_fits(f: Array, weights: Array, draws: Draws, pooling: Pooling) -> Array:
 def _of_one_fit(f: Array, weights: Array, starts: npt.NDArray[np.int64]) -> Array:
     if len(starts) < 3 or int(np.diff(starts).min()) < _SHORTEST:
         return np.ones(f.shape[1])
+    f, _ = in_unit(f)
     mean = _core.weighted_mean(f, weights)
     pooled = _core.weighted_mean((f - mean) ** 2, weights)
     # Differences in the last digits are rounding, not chains that disagree.
@@ -232,8 +234,10 @@ def _one_chain(
     lrv = _core.long_run_variance(z, np.array([0, count], dtype=np.int64), True)
     least = np.maximum(pooled * float((w**2).sum()), rounding)
     variance = np.maximum(lrv / count, least)
-    precision = np.where(variance > 0, 1 / np.where(variance > 0, variance, 1.0), 0.0)
-    with np.errstate(invalid="ignore", divide="ignore"):
+    # A variance whose reciprocal would overflow is none.
+    known = variance > 1e-290
+    precision = np.where(known, 1 / np.where(known, variance, 1.0), 0.0)
+    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
         effective = np.where(variance > 0, pooled / variance, float(count))
     return mu, precision, np.maximum(effective / _FREEDOM, 1.0)
 
