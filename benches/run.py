@@ -25,6 +25,7 @@ NAMES = (
     "long_run",
     "mean",
     "swap",
+    "sweep",
     "densities",
     "memory",
 )
