@@ -91,7 +91,7 @@ def _width(base: Base, phi: Array, v: Array) -> float:
     if base.ordered:
         effective *= float(relative_efficiency((phi - phi.mean())[:, None], base.draws, True)[0])
     # The normal rule for a kernel of fourth order (Silverman 1986, section 3.6).
-    return 1.08 * spread * effective ** (-1 / 9)
+    return float(1.08 * spread * effective ** (-1 / 9))
 
 
 def _is_function(phi: Array, f: Array) -> bool:

@@ -11,6 +11,7 @@ from itertools import pairwise
 from typing import TYPE_CHECKING
 
 import numpy as np
+import numpy.typing as npt
 
 from steelyard import _core
 from steelyard.base import Base
@@ -103,7 +104,7 @@ def _column(
     return [*found, np.array(sums)]
 
 
-def _sides(inside: Array, w: Array) -> tuple[float, float]:
+def _sides(inside: npt.NDArray[np.bool_], w: Array) -> tuple[float, float]:
     def worth(part: Array) -> float:
         return float(part.sum() ** 2 / (part**2).sum()) if (part > 0).any() else 0.0
 
