@@ -27,6 +27,7 @@ NAMES = (
     "mean",
     "multi_sample",
     "swap",
+    "sweep",
     "densities",
     "deletion",
     "leave_out_errors",

@@ -29,6 +29,7 @@ pub mod influence;
 pub mod interrupt;
 pub mod interval;
 pub mod largest;
+pub mod largest_weights;
 pub mod lease;
 pub mod log_sum;
 pub mod long_run;

@@ -152,6 +152,35 @@ pub fn fit(x: &[f64]) -> Pareto {
     fit_sorted(&sorted)
 }
 
+/// As [`fit`], which it is but for the order of sums; `x` comes out in another order. Only the
+/// extremes and the quartile have to be in their places.
+pub fn fit_any(x: &mut [f64]) -> Pareto {
+    let last = x.len().saturating_sub(1);
+    let rank = (x.len() + 2) / 4;
+    if rank == 0 || rank > last {
+        return fit(x);
+    }
+    let (below, &mut quartile, above) = x.select_nth_unstable_by(rank - 1, f64::total_cmp);
+    if quartile <= 0.0 {
+        return fit(x);
+    }
+    let place = |part: &[f64], better: fn(f64, f64) -> bool| {
+        (1..part.len()).fold(
+            0,
+            |best, i| if better(part[i], part[best]) { i } else { best },
+        )
+    };
+    let most = rank + place(above, |a, b| a > b);
+    let least = if below.is_empty() {
+        0
+    } else {
+        place(below, |a, b| a < b)
+    };
+    x.swap(most, last);
+    x.swap(least, 0);
+    fit_sorted(x)
+}
+
 /// As [`fit`], for exceedances in ascending order.
 pub fn fit_sorted(x: &[f64]) -> Pareto {
     let (Some(&least), Some(&largest)) = (x.first(), x.last()) else {

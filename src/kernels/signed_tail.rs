@@ -1,7 +1,8 @@
 //! The tail shape of influence values, which may be heavy on either side.
 
-use super::pareto::FEWEST;
-use super::tail::{Scale, fit_tail, tail_length};
+use super::largest::largest_values;
+use super::pareto::{self, FEWEST};
+use super::tail::tail_length;
 use super::vector::{Arithmetic, Work, dispatch};
 
 const LANES: usize = 8;
@@ -38,16 +39,19 @@ impl Work for Sides<'_> {
     #[inline(always)]
     fn run<A: Arithmetic>(self) -> Found {
         let (mut above, mut below, mut zero) = ([0.0; LANES], [0.0; LANES], [0.0; LANES]);
-        for chunk in self.0.chunks(LANES) {
-            for (sum, z) in above.iter_mut().zip(chunk) {
-                *sum += if *z > 0.0 { 1.0 } else { 0.0 };
+        let (chunks, rest) = self.0.as_chunks::<LANES>();
+        let mut padded = [0.0; LANES];
+        padded[..rest.len()].copy_from_slice(rest);
+        for chunk in chunks.iter().chain(std::iter::once(&padded)) {
+            for lane in 0..LANES {
+                above[lane] += if chunk[lane] > 0.0 { 1.0 } else { 0.0 };
             }
-            for (sum, z) in below.iter_mut().zip(chunk) {
-                *sum += if *z < 0.0 { 1.0 } else { 0.0 };
+            for lane in 0..LANES {
+                below[lane] += if chunk[lane] < 0.0 { 1.0 } else { 0.0 };
             }
             // A product with 0 is 0 but for NaN and infinities; the loop has no branch.
-            for (sum, z) in zero.iter_mut().zip(chunk) {
-                *sum += 0.0 * z;
+            for lane in 0..LANES {
+                zero[lane] += 0.0 * chunk[lane];
             }
         }
         Found {
@@ -64,5 +68,9 @@ fn side_shape(z: &[f64], sign: f64, side: usize, relative_efficiency: f64) -> f6
         return f64::NEG_INFINITY;
     }
     // At most a fifth of the side, so that the cut-off has the same sign.
-    fit_tail(z, length, Scale::Natural(sign)).shape()
+    let Some((mut tail, cutoff)) = largest_values(z, sign, length) else {
+        return f64::INFINITY;
+    };
+    tail.iter_mut().for_each(|value| *value -= cutoff);
+    pareto::fit_any(&mut tail).shrunk(length).shape
 }

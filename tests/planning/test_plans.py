@@ -255,3 +255,37 @@ name = "half"
 weigh_data = { A = 0.5 }
 """
     assert read_plan(text).plan.hash == _plan().hash
+
+
+def test_quantiles_stand_beside_the_means(fit: Any) -> None:
+    probs = (0.001, 0.05, 0.5)
+    found = triage(fit._record, SCENARIOS, ["mu", "tau"], EVENT, 0.6, probs)
+    for place, change in enumerate(SCENARIOS.values()):
+        answer = fit.reweigh(change)
+        for name in ("mu", "tau"):
+            # Another order of summation.
+            np.testing.assert_allclose(
+                found.quantiles[name][place, 1:], answer.quantile(name, probs[1:]).value, rtol=1e-9
+            )
+            # A thousandth of a thousand draws is beyond them.
+            assert math.isnan(found.quantiles[name][place, 0])
+    assert np.isnan(found.quantiles[EVENT]).all()
+    table = found.table()
+    assert [n for n in table.columns if n.startswith("q0")] == ["q0.001", "q0.05", "q0.5"]
+    assert "q0.5" not in triage(fit._record, SCENARIOS, "mu").table().columns
+
+
+def test_quantiles_belong_to_what_was_planned(tmp_path: Any) -> None:
+    assert _plan(probs=(0.05, 0.95)).hash != _plan().hash
+    assert _plan(probs=[0.05, 0.95]).hash == _plan(probs=np.array([0.05, 0.95])).hash
+    text = 'steelyard_plan = 1\nprobs = [0.05, 1.5]\n[[scenario]]\nname = "a"\ndrop = ["A"]\n'
+    with pytest.raises(SteelyardError, match="line 2"):
+        read_plan(text)
+    good = read_plan(text.replace("1.5", "0.95"))
+    assert good.plan.probs == (0.05, 0.95)
+
+
+@pytest.mark.parametrize("probs", [0.0, [0.5, 0.5], [0.9, 0.1], [], "many", [float("nan")]])
+def test_probabilities_that_are_none_are_refused(probs: Any) -> None:
+    with pytest.raises((ArgumentError, ArgumentTypeError), match="probs"):
+        _plan(probs=probs)

@@ -220,3 +220,19 @@ def test_what_cannot_be_attributed_is_refused() -> None:
         _attribute(answer, "mu", blocks={"A": [1, 2]})
     with pytest.raises(ArgumentTypeError, match="label an observation"):
         _attribute(answer, "mu", blocks=[1])
+
+
+def test_every_interval_knows_its_degrees_of_freedom() -> None:
+    """Series formed outside of the common path: pulls, contributions, a prior's divergence."""
+    fit = cases.quays()
+    answer = fit.reweigh(sy.swap_prior(tau=sy.HalfNormal(0.02)))
+    pulled = fit.pull("mu").prior
+    parts = answer.attribute("mu").terms.values()
+    implied = fit.least_perturbation("mu", fit.base.mean("mu").value + 0.004, prior_of="mu")
+    assert pulled is not None
+    for estimate in (pulled, *parts, implied.divergence, fit.local("mu").derivative["mu"]["mean"]):
+        degrees = np.asarray(estimate.degrees)
+        assert (degrees >= 1).all()
+        assert np.isfinite(degrees).all()
+        half = np.diff(estimate.error_interval(0.95), axis=0)[0] / 2
+        assert (half >= 1.9599 * np.asarray(estimate.error)).all()

@@ -25,6 +25,7 @@ from steelyard.table import Table
 from steelyard.weighing.series import (
     chains_p_value,
     contributions_of,
+    degrees_of,
     relative_efficiency,
     standard_error,
     tail_of,
@@ -204,12 +205,14 @@ def _series(scale: Scale, z: Array, f: Array) -> Series:
     z = np.ascontiguousarray(z)
     equal = np.full(scale.count, 1 / scale.count)
     efficiency = relative_efficiency(z, draws, ordered)
+    carried = contributions_of(z, efficiency, draws, ordered)
     return Series(
         standard_error(z, draws, ordered),
         tail_of(z, efficiency, draws, ordered),
         chains_p_value(z, equal, draws) if ordered else np.ones(z.shape[1]),
         relative_efficiency(f - _core.weighted_mean(f, scale.weights.linear), draws, ordered),
-        contributions_of(z, efficiency, draws, ordered),
+        carried,
+        degrees_of(carried, efficiency, draws),
     )
 
 

@@ -34,7 +34,7 @@ OTHER_DOMAINS = ("distribution", "distributions")
 
 
 @cache
-def _numbers(kind: type[Record]) -> tuple[str, ...]:
+def _numbers(kind: Any) -> tuple[str, ...]:
     return tuple(n for n, domain in kind.domains.items() if domain not in OTHER_DOMAINS)
 
 
@@ -62,7 +62,8 @@ class Record:
     @property
     def numbers(self) -> tuple[str, ...]:
         """Hyperparameters that are numbers or names, as opposed to distributions."""
-        return _numbers(type(self))  # type: ignore[arg-type]
+        kind: Any = type(self)
+        return _numbers(kind)
 
     def _argument(self, name: str) -> str:
         return f"{type(self).__name__}: {name}"

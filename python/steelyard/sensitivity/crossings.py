@@ -71,11 +71,17 @@ def find_crossing(path: Path, one: Place, other: Place) -> Crossing:
             b, fb, fa = middle, middle.gap, fa / 2
         else:
             a, fa, fb = middle, middle.gap, fb / 2
-    slope = path.slope(best.at)
+    slope = path.slope(best.at, one, other)
+    error = best.error / abs(slope) if slope else math.inf
+    if abs(best.gap) > best.error:
+        # The reweighings ran out: a straight line, and a part of what it spans as error.
+        x, y = path.step(a.at), path.step(b.at)
+        at = path.value(x - a.gap * (y - x) / (b.gap - a.gap))
+        return Crossing(at, math.hypot(error, abs(b.at - a.at) / 4))
     # What is left of the gap is removed by the slope.
     at = best.at - best.gap / slope if slope else best.at
     at = at if min(one.at, other.at) <= at <= max(one.at, other.at) else best.at
-    return Crossing(at, best.error / abs(slope) if slope else math.inf)
+    return Crossing(at, error)
 
 
 def confidence_set(path: Path, low: float, high: float) -> tuple[tuple[float, float], ...]:
@@ -90,7 +96,8 @@ def confidence_set(path: Path, low: float, high: float) -> tuple[tuple[float, fl
                 edge = middle.at + sign * _Z * middle.error
                 if a.at < edge < b.at and path.left > 0:
                     path.visit([edge])
-            path.visit([middle.at])
+            if path.left > -2:
+                path.visit([middle.at])
     places = inside(path, low, high)
     out: list[list[float]] = []
     for i, place in enumerate(places):

@@ -27,6 +27,8 @@ from steelyard.weighing.weigh import Weights
 __all__ = ["MOST_REWEIGHINGS", "Path", "Place"]
 
 MOST_REWEIGHINGS = 60
+# Kept for slopes at crossings, a place on each, and the probability at the nearest.
+_RESERVED = 4
 
 
 @dataclass(frozen=True)
@@ -69,6 +71,8 @@ class Path:
     between: tuple[float, float]
     own: Weights
     places: dict[float, Place] = field(default_factory=dict)
+    # Reweighings made so far, those at places visited before among them.
+    spent: int = 0
 
     @cached_property
     def targets(self) -> Targets:
@@ -98,8 +102,8 @@ class Path:
 
     @property
     def left(self) -> int:
-        """Reweighings that may still be made."""
-        return MOST_REWEIGHINGS - len(self.places)
+        """Reweighings that may still be made on the search."""
+        return MOST_REWEIGHINGS - _RESERVED - self.spent
 
     def visit(self, values: Sequence[float]) -> list[Place]:
         """The decision at several values, new ones reweighed together."""
@@ -119,6 +123,7 @@ class Path:
 
     def _estimate(self, values: list[float]) -> tuple[Estimate, Array]:
         formed = self._formed(values)
+        self.spent += len(values)
         found = self.study.of(formed.ratios)
         (gathered,) = Gathered.empty([self.event], len(values))
         gathered.put(slice(0, len(values)), found.value)
@@ -163,19 +168,25 @@ class Path:
             label=self.event.label,
         )
 
-    def slope(self, at: float) -> float:
-        """``Cov(1{event}, ∂ℓ/∂λ)`` under the weights at `at`: how fast the probability moves."""
+    def slope(self, at: float, one: Place, other: Place) -> float:
+        """
+        ``Cov(1{event}, ∂ℓ/∂λ)`` under the weights at `at`: how fast the probability moves.
+
+        From the places beside it once only the last reweighing is left.
+        """
+        if self.spent >= MOST_REWEIGHINGS - 1:
+            return (other.gap - one.gap) / (other.at - one.at)
+        self.spent += 1
         low, high = self.between
         h = 1e-4 * (high - low)
         if self.is_log:
             h = 1e-4 * at
-        one, other = max(at - h, low), min(at + h, high)
-        ratios = self._formed([one, at, other]).ratios
-        w = self.study.of(ratios[1:2]).weights
-        assert w is not None
-        w = w[0]
+        before, after = max(at - h, low), min(at + h, high)
+        ratios = self._formed([before, at, after]).ratios
+        kept = self.study.of(ratios[1:2]).weights
+        w = np.zeros(0) if kept is None else kept[0]
         with np.errstate(invalid="ignore"):
-            score = (ratios[2] - ratios[0]) / (other - one)
+            score = (ratios[2] - ratios[0]) / (after - before)
         score = np.where(w > 0, np.nan_to_num(score), 0.0)
         f = self.event.columns[:, 0]
         centre = float(_core.weighted_mean(score[:, None], w)[0])

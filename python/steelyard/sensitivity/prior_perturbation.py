@@ -96,12 +96,12 @@ def least_in_prior(base: Base, asked: Quantity, goal: float, parameter: str) -> 
     leverage = _smooth(base, u, f - goal, v)
     eta = _solve(leverage.at(leverage.at_nodes), f - goal, v, goal)
     value = _divergence(leverage.nodes, eta * leverage.at_nodes)
-    error = _jackknife(base, leverage, f - goal, v, goal)
+    error, degrees = _jackknife(base, leverage, f - goal, v, goal)
     log_ratio = eta * leverage.at(leverage.at_nodes)
     return LeastPrior(
         eta,
         log_ratio,
-        _estimate(base, log_ratio, value, error, f"divergence of the implied prior of {parameter}"),
+        _estimate(base, log_ratio, value, (error, degrees), parameter),
         _shape(parameter, grid, cdf, density, leverage, eta),
     )
 
@@ -201,8 +201,10 @@ def _divergence(nodes: Array, log_factor: Array) -> float:
     return max(mean - math.log(constant) - float(log_factor.max()), 0.0)
 
 
-def _jackknife(base: Base, leverage: _Leverage, gap: Array, v: Array, goal: float) -> float:
-    """Batches left out in groups of three, so that some twenty remain."""
+def _jackknife(
+    base: Base, leverage: _Leverage, gap: Array, v: Array, goal: float
+) -> tuple[float, float]:
+    """Error from batches left out in groups of three, some twenty, and its degrees of freedom."""
     edges = batch_edges(base.draws)
     groups = [edges[i : i + 4] for i in range(0, len(edges) - 1, 3)]
     values = []
@@ -215,14 +217,20 @@ def _jackknife(base: Base, leverage: _Leverage, gap: Array, v: Array, goal: floa
         eta = _solve(leverage.at(at_nodes)[kept], gap[kept], v[kept], goal)
         values.append(_divergence(leverage.nodes, eta * at_nodes))
     count = len(values)
-    return math.sqrt((count - 1) / count * float(((np.array(values) - np.mean(values)) ** 2).sum()))
+    squares = float(((np.array(values) - np.mean(values)) ** 2).sum())
+    return math.sqrt((count - 1) / count * squares), float(count - 1)
 
 
-def _estimate(base: Base, log_ratio: Array, value: float, error: float, label: str) -> Estimate:
+def _estimate(
+    base: Base, log_ratio: Array, value: float, unsure: tuple[float, float], parameter: str
+) -> Estimate:
+    """The divergence with its jackknife error and degrees of freedom."""
     weights, findings = weighed_by(base, log_ratio)
     scale = Scale(base, weights, base_answer(base)._weights, findings)
-    one = np.ones(1)
-    series = Series(np.array([error]), np.array([weights.tail_shape]), one, one)
+    one, (error, degrees) = np.ones(1), (np.array([part]) for part in unsure)
+    shape = np.array([weights.tail_shape])
+    series = Series(error, shape, one, one, None, degrees)
+    label = f"divergence of the implied prior of {parameter}"
     return finish(scale, Quantity(label, log_ratio), np.array([value]), series, None)
 
 

@@ -27,6 +27,7 @@ from steelyard.table import Table
 from steelyard.weighing.series import (
     chains_p_value,
     contributions_of,
+    degrees_of,
     relative_efficiency,
     standard_error,
     tail_of,
@@ -187,10 +188,12 @@ def _series(base: Base, z: Array, columns: Array, ends: Array) -> Series:
     draws, ordered = base.draws, base.ordered
     equal = np.full(draws.size, 1 / draws.size)
     efficiency = relative_efficiency(z, draws, ordered)
+    carried = contributions_of(z, efficiency, draws, ordered)
     return Series(
         np.hypot(standard_error(z, draws, ordered), ends),
         tail_of(z, efficiency, draws, ordered),
         chains_p_value(z, equal, draws) if ordered else np.ones(z.shape[1]),
         relative_efficiency(columns - columns.mean(axis=0), draws, ordered),
-        contributions_of(z, efficiency, draws, ordered),
+        carried,
+        degrees_of(carried, efficiency, draws),
     )

@@ -223,8 +223,9 @@ class Targets:
             fall = np.einsum("ki,bk,kj->bij", root, loosened[part] * unit**2, root)
             figures = np.linalg.eigvalsh(fall)[:, -1]
             for i, figure in zip(part, figures, strict=True):
-                told = ", ".join(labels)
-                yield places[i], judge("prior_widened", float(figure), term=told, posterior="normal")
+                terms = ", ".join(labels)
+                found = judge("prior_widened", float(figure), term=terms, posterior="normal")
+                yield places[i], found
 
     def _loosened(self, labels: tuple[str, ...], one: Made | None) -> Array:
         by_label = dict(one) if isinstance(one, tuple) else {}

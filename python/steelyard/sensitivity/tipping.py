@@ -25,7 +25,7 @@ from steelyard.sensitivity.crossings import (
 )
 from steelyard.sensitivity.families import Family, first_name, read_family, remembering
 from steelyard.sensitivity.nodes import own_weights
-from steelyard.sensitivity.path import Path
+from steelyard.sensitivity.path import Path, Place
 from steelyard.sensitivity.resistance import read_event, read_level
 
 if TYPE_CHECKING:
@@ -176,10 +176,13 @@ def _found(path: Path, origin: float) -> TippingPoint:
     low, high, cut_low, cut_high = trusted_region(path, origin)
     places = inside(path, low, high)
     start = path.places[origin]
-    crossings = sorted(
-        (find_crossing(path, a, b) for a, b in pairwise(places) if flips(a, b)),
-        key=lambda c: abs(path.step(c.at) - path.step(origin)),
-    )
+
+    def distance(pair: tuple[Place, Place]) -> float:
+        return min(abs(path.step(place.at) - path.step(origin)) for place in pair)
+
+    # The nearest first, while there are reweighings left to place it well.
+    pairs = sorted((pair for pair in pairwise(places) if flips(*pair)), key=distance)
+    crossings = [find_crossing(path, *pair) for pair in pairs]
     ends = confidence_set(path, low, high) if places else ()
     status: Literal["flips", "holds", "unknown"] = "unknown"
     if crossings:
@@ -196,6 +199,7 @@ def _found(path: Path, origin: float) -> TippingPoint:
     arrays = [np.array(c) for c in columns]
     for array in arrays:
         array.flags.writeable = False
+    at_crossing = path.probability(first.at) if crossings else None
     return TippingPoint(
         status,
         first.at,
@@ -205,9 +209,9 @@ def _found(path: Path, origin: float) -> TippingPoint:
         tuple(crossings),
         origin,
         start.gap > 0,
-        path.probability(first.at) if crossings else None,
+        at_crossing,
         (arrays[0], arrays[1], arrays[2], np.array([p.is_sound for p in visited])),
-        len(path.places),
+        path.spent,
         path.name,
         path.event.label,
         path.level,
