@@ -14,7 +14,7 @@ import steelyard as sy
 from steelyard.rules import RULES
 
 from . import twins
-from .pool_cases import contradicting, linked
+from .pool_cases import contradicting, disjoint, linked
 from .reason_cases import (
     SEED,
     N,
@@ -77,6 +77,7 @@ STRAINED: list[Case] = [
     ("noise_raised", lambda: noisier(1.42), lambda: noisier(1.41)),
     ("pool_overlap", lambda: linked(5.2), lambda: linked(4.8)),
     ("pool_contradiction", lambda: contradicting(0.25), lambda: contradicting(0.15)),
+    ("pool_approximate", lambda: disjoint(called=False), lambda: disjoint(called=True)),
 ]
 REFIT: list[Case] = [
     ("groups_refit", lambda: left_out(1.15), lambda: left_out(0.4)),
