@@ -44,18 +44,7 @@ def pool_disjoint(
             "common", "nothing, for disjoint data", repr(common), "Parts of data share no term."
         )
     refuse_other_parameters(records, labels)
-    for record, label in zip(records, labels, strict=True):
-        for kind, held, error in (
-            ("prior", record.prior, PriorError),
-            ("likelihood", record.loglik, LikelihoodError),
-        ):
-            if not held:
-                raise error(
-                    f"fits: {label}",
-                    f"a fit whose {kind} is stated, so that the prior can be counted once",
-                    "one without",
-                    "State it.",
-                )
+    _refuse_unstated(records, labels)
     draws = stack_draws(records, labels)
     terms: dict[str, LoglikTerm] = {}
     target, _ = densities([_prior_only(records[0])], labels[:1], draws, _NONE)
@@ -90,6 +79,22 @@ def pool_disjoint(
         findings=extra,
         is_exact=not approximate,
     )
+
+
+def _refuse_unstated(records: Sequence[Base], labels: Sequence[str]) -> None:
+    """The prior can be counted once where prior and likelihood are told apart."""
+    for record, label in zip(records, labels, strict=True):
+        for kind, held, error in (
+            ("prior", record.prior, PriorError),
+            ("likelihood", record.loglik, LikelihoodError),
+        ):
+            if not held:
+                raise error(
+                    f"fits: {label}",
+                    f"a fit whose {kind} is stated, so that the prior can be counted once",
+                    "one without",
+                    "State it.",
+                )
 
 
 def _prior_only(record: Base) -> Base:
