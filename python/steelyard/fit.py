@@ -21,7 +21,7 @@ from steelyard.checking import Findings, check
 if TYPE_CHECKING:
     from steelyard.leaving_out import LeaveOut, LookAhead
     from steelyard.planning import Arrival, MoreDraws, RefitPlan, RefitValue, Triage
-    from steelyard.repair.pooling import Pooled
+    from steelyard.repair.pooled import Pooled
     from steelyard.sensitivity import (
         Bounds,
         Local,

@@ -360,4 +360,13 @@ RULES: Mapping[str, Rule] = {
         "Run check() on the fit, look at its terms and its convergence, or leave it out.",
         "detailed balance between the draws of a fit and those of the others; limits ours",
     ),
+    "pool_approximate": Rule(
+        0.5,
+        math.inf,
+        "above",
+        "The product of {figure} posteriors of disjoint data rests on a normal approximation of "
+        "those whose likelihood cannot be evaluated at the draws of the others.",
+        "Give the likelihoods as callables: the product is then exact.",
+        "exact: an approximation stays one however many draws there are",
+    ),
 }

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 
 import steelyard as sy
@@ -21,6 +23,20 @@ def linked(distance: float) -> sy.Answer:
 def contradicting(shift: float) -> sy.Answer:
     """Base of two pooled unit normals at 0 and 1, whose draws are those of 0 and 1 + shift."""
     return _pool(1.0, 1.0 + shift).base
+
+
+def disjoint(*, called: bool) -> sy.Answer:
+    """Base of two posteriors of disjoint data, their likelihoods callables or arrays."""
+    fits = []
+    for reading in (0.0, 1.0):
+        x = np.random.default_rng(int(reading)).normal(reading / 1.01, 1.01**-0.5, (4, N))
+
+        def loglik(draws: Any, reading: float = reading) -> np.ndarray:
+            return np.asarray(-0.5 * (draws["x"][:, None] - reading) ** 2)
+
+        held = loglik if called else loglik({"x": x.reshape(-1)})
+        fits.append(sy.Fit({"x": x}, {"x": sy.Normal(0, 10)}, {"readings": held}))
+    return sy.pool(fits, data="disjoint").base
 
 
 def _pool(stated: float, drawn: float) -> sy.Pool:

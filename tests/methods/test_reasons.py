@@ -14,7 +14,7 @@ import steelyard as sy
 from steelyard.rules import RULES
 
 from . import twins
-from .pool_cases import contradicting, linked
+from .pool_cases import contradicting, disjoint, linked
 from .reason_cases import (
     SEED,
     N,
@@ -95,6 +95,7 @@ STRAINED: list[Case] = [
     ("tempering_unfinished", lambda: stopped(1), lambda: stopped(None)),
     ("pool_overlap", lambda: linked(5.2), lambda: linked(4.8)),
     ("pool_contradiction", lambda: contradicting(0.25), lambda: contradicting(0.15)),
+    ("pool_approximate", lambda: disjoint(called=False), lambda: disjoint(called=True)),
 ]
 REFIT: list[Case] = [
     ("groups_refit", lambda: left_out(1.15), lambda: left_out(0.4)),

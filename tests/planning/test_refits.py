@@ -130,6 +130,19 @@ def test_the_broadest_base_is_named() -> None:
     assert found.broadest in found.advice
 
 
+def test_a_pool_plans_from_all_of_its_draws() -> None:
+    """From a pool that holds the refits of a plan, none is asked for any more."""
+    rng = np.random.default_rng(SEED)
+    names = ("tighter", "higher")
+    first = fitted(rng, "base", 4000).plan_refits(changes(names), efficiency=0.3)
+    assert first.refits
+    held = [fitted(rng, name, round(8000 * share)) for name, share in first.shares.items()]
+    pool = sy.pool(held, data="same", common="likelihood")
+    again = pool.plan_refits(changes(names), efficiency=0.28)
+    assert again.refits == ()
+    assert again.from_base.value == pytest.approx(first.efficiency.value, abs=0.03)
+
+
 def test_prices_steer_the_choice() -> None:
     fit = fitted(np.random.default_rng(SEED), "base", 8000)
     names = ("high", "higher")

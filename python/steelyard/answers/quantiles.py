@@ -165,8 +165,13 @@ def _bootstrap(scale: Scale, f: Array, mass: float) -> Array:
     # A fixed stream: the same answer asked twice has the same error.
     rng = np.random.default_rng(_BOOTSTRAP_KEY)
     ends = []
+    # Of a pool the draws of each fit are drawn again by themselves: their numbers are fixed.
+    fits = np.array([0, draws.size]) if draws.pooling is None else draws.pooling.edges
+    parts = [int(((edges >= a) & (edges < b)).sum()) for a, b in pairwise(fits.tolist())]
     for _ in range(_REPLICATES):
-        picked = np.bincount(rng.integers(0, len(lengths), len(lengths)), minlength=len(lengths))
+        picked = np.concatenate(
+            [np.bincount(rng.integers(0, k, k), minlength=k) for k in parts if k]
+        )
         w = scale.weights.linear * np.repeat(picked, lengths)
         if w.sum() > 0:
             ends.append(_core.shortest_interval(f, w, mass))

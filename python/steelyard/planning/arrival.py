@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import hashlib
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from html import escape
@@ -18,6 +17,7 @@ from steelyard.base.draws import Array
 from steelyard.base.likelihood import read_loglik_term
 from steelyard.changes import Change, add
 from steelyard.errors import ArgumentError, ArgumentTypeError, DrawsError
+from steelyard.planning.arrival_files import VERSION, digest, read_archive, refuse
 from steelyard.planning.forecast import Forecast, extrapolate, simulate
 from steelyard.table import Table
 from steelyard.verdicts import Verdict
@@ -26,9 +26,6 @@ if TYPE_CHECKING:
     from steelyard.show.plan_plots import ArrivalPlots
 
 __all__ = ["Arrival", "Batch"]
-
-# Version of the format of saved arrivals.
-_VERSION = 1
 
 
 @dataclass(frozen=True)
@@ -243,8 +240,8 @@ class Arrival:
         with Path(path).open("wb") as file:
             np.savez(
                 file,
-                steelyard_arrival=np.array(_VERSION),
-                draws=np.array(_digest(self._base)),
+                steelyard_arrival=np.array(VERSION),
+                draws=np.array(digest(self._base)),
                 names=np.array(names, dtype=np.str_),
                 observations=np.array([b.observations for b in self._history], dtype=np.int64),
                 totals=np.array(list(self._totals.values())).reshape(
@@ -276,8 +273,8 @@ class Arrival:
             version, or belongs to other draws.
         """
         made = cls(getattr(fit, "_record", fit))
-        content = _read(path)
-        if str(content["draws"]) != _digest(made._base):
+        content = read_archive(path)
+        if str(content["draws"]) != digest(made._base):
             raise DrawsError(
                 str(path),
                 "batches of these draws",
@@ -286,7 +283,7 @@ class Arrival:
             )
         shape = (len(content["names"]), made._base.draws.size)
         if content["totals"].shape != shape and len(content["names"]):
-            _refuse(path, f"totals of shape {content['totals'].shape}, not {shape}")
+            refuse(path, f"totals of shape {content['totals'].shape}, not {shape}")
         counts = content["observations"].tolist()
         for name, total, count in zip(
             content["names"].tolist(), content["totals"], counts, strict=True
@@ -325,45 +322,3 @@ class Arrival:
 
     def _repr_html_(self) -> str:
         return self.table()._repr_html_() + f"<p>{escape(str(self.forecast()))}</p>"
-
-
-_CONTENT = ("steelyard_arrival", "draws", "names", "observations", "totals")
-
-
-def _read(path: str | Path) -> dict[str, Any]:
-    try:
-        with np.load(path, allow_pickle=False) as held:
-            content = {name: held[name] for name in _CONTENT}
-    except FileNotFoundError:
-        raise
-    except Exception as error:
-        raise DrawsError(
-            str(path),
-            "an arrival written by save()",
-            f"{type(error).__name__}: {error}",
-            "Files with pickled objects are refused, since loading those runs code.",
-        ) from error
-    if content["steelyard_arrival"].shape != () or content["steelyard_arrival"] != _VERSION:
-        _refuse(path, f"version {content['steelyard_arrival']}, not {_VERSION}")
-    numbers = content["observations"].dtype.kind == "i" and content["totals"].dtype.kind == "f"
-    if not numbers or content["names"].dtype.kind != "U" or content["draws"].dtype.kind != "U":
-        _refuse(path, "entries of other kinds")
-    if not content["names"].shape == content["observations"].shape == content["totals"].shape[:1]:
-        _refuse(path, "entries of different lengths")
-    return content
-
-
-def _refuse(path: str | Path, came: str) -> None:
-    raise DrawsError(
-        str(path), "an arrival written by save()", came, "Write it again with this version."
-    )
-
-
-def _digest(base: Base) -> str:
-    """SHA-256 of names and values of the draws."""
-    found = hashlib.sha256()
-    for name in sorted(base.draws):
-        values = np.ascontiguousarray(base.draws[name], dtype="<f8")
-        found.update(f"{name}{values.shape}".encode())
-        found.update(values.tobytes())
-    return found.hexdigest()

@@ -4,8 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
-from functools import cached_property
+from dataclasses import replace
 from itertools import pairwise
 from typing import Any
 
@@ -13,15 +12,17 @@ import numpy as np
 import numpy.typing as npt
 
 from steelyard.answers import Estimate
-from steelyard.arrays import Frozen, plain_array
+from steelyard.arrays import plain_array
 from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
+from steelyard.base.likelihood import LoglikTerm
 from steelyard.base.pooling import Pooling
+from steelyard.base.priors import PriorTerm
 from steelyard.base.stacking import stack_draws
-from steelyard.checking import Findings, check
 from steelyard.errors import ArgumentError, RatioError, ShapeError, SteelyardError
 from steelyard.repair.agreement import contradictions, linked
 from steelyard.repair.constants import Solved, solve
+from steelyard.repair.pooled import Pooled, constants_of
 from steelyard.repair.pooled_terms import (
     Common,
     densities,
@@ -31,90 +32,16 @@ from steelyard.repair.pooled_terms import (
     read_common,
     refuse_other_parameters,
 )
-from steelyard.table import Table
-from steelyard.verdicts import Finding, Verdict, judge
+from steelyard.verdicts import Finding, judge
 from steelyard.weighing.series import (
-    contributions_of,
-    degrees_of,
-    long_run_variance,
     relative_efficiency,
-    tail_of,
 )
 from steelyard.weighing.weigh import base_weights
 
-__all__ = ["Pooled", "pool_records"]
+__all__ = ["assemble", "pool_records"]
 
 # Parameters by which the effective size of a fit is judged: the first so many columns.
 _MOST_COLUMNS = 64
-
-
-@dataclass(frozen=True, eq=False)
-class Pooled(Frozen):
-    """
-    Fits pooled into one record.
-
-    Attributes
-    ----------
-    record : Base
-        All draws, weighted to the posterior of the first fit.
-    labels : tuple of str
-        Names of the fits.
-    log_constants : Estimate
-        Log normalising constants relative to the first fit's.
-    shared_mass : numpy.ndarray
-        How much of the mass of a fit (row) lies where another (column) makes draws, ``(K, K)``.
-    sizes : numpy.ndarray
-        Effective sizes of the fits.
-    fits : tuple of Base
-        The fits as they came.
-    """
-
-    record: Base
-    labels: tuple[str, ...]
-    log_constants: Estimate
-    shared_mass: Array
-    sizes: Array
-    fits: tuple[Base, ...] = ()
-
-    def check(self) -> Findings:
-        """Findings of every fit by itself."""
-        found = []
-        for label, record in zip(self.labels, self.fits, strict=True):
-            found += [replace(one, check=f"{label}: {one.check}") for one in check(record)]
-        return Findings(tuple(found))
-
-    def table(self) -> Table:
-        """One row for each fit."""
-        constants = self.log_constants
-        columns: dict[str, Any] = {
-            "fit": list(self.labels),
-            "draws": [record.draws.size for record in self.fits],
-            "effective": [round(float(size), 1) for size in self.sizes],
-            "log_constant": [float(v) for v in constants.value],
-            "error": [float(e) for e in constants.error],
-            "own_mass": [round(float(m), 3) for m in np.diag(self.shared_mass)],
-        }
-        errors = {"log_constant": columns["error"], "error": columns["error"]}
-        return Table(columns, errors)
-
-    @cached_property
-    def covariance(self) -> Array:
-        """Monte Carlo covariance of the log constants, ``(K, K)``."""
-        draws = self.record.draws
-        assert draws.pooling is not None
-        series = draws.pooling.constants
-        count = series.shape[1]
-        pairs = [(i, j) for i in range(count) for j in range(i)]
-        columns = [series[:, [i]] - series[:, [j]] for i, j in pairs]
-        apart = np.zeros((count, count))
-        if columns:
-            lrv = long_run_variance(np.concatenate(columns, axis=1), draws, True) / draws.size
-            for (i, j), variance in zip(pairs, lrv, strict=True):
-                apart[i, j] = apart[j, i] = variance
-        # 2 cov(i, j) = var i + var j − var(i − j), with the first held at 0.
-        both = 0.5 * (apart[:, [0]] + apart[[0], :] - apart)
-        values, vectors = np.linalg.eigh(both)
-        return np.asarray((vectors * np.maximum(values, 0.0)) @ vectors.T)
 
 
 def pool_records(
@@ -127,8 +54,54 @@ def pool_records(
     refuse_other_parameters(records, labels)
     shared = read_common(common, records, labels)
     draws = stack_draws(records, labels)
-    prior, likelihood = pooled_prior(records, shared), pooled_likelihood(records, shared)
     log_q, same_likelihood = densities(records, labels, draws, shared)
+    return assemble(
+        records,
+        labels,
+        draws,
+        log_q,
+        log_q[:, 0],
+        pooled_prior(records, shared),
+        pooled_likelihood(records, shared),
+        log_constants,
+        same_likelihood=same_likelihood,
+        common=shared,
+    )
+
+
+def assemble(
+    records: Sequence[Base],
+    labels: Sequence[str],
+    draws: Draws,
+    log_q: Array,
+    log_target: Array,
+    prior: dict[str, PriorTerm] | None,
+    likelihood: dict[str, LoglikTerm] | None,
+    log_constants: Any = None,
+    *,
+    same_likelihood: bool = False,
+    common: Common | None = None,
+    findings: Sequence[Finding] = (),
+    is_exact: bool = True,
+) -> Pooled:
+    """
+    The record of a target from draws of several densities.
+
+    Parameters
+    ----------
+    log_q : numpy.ndarray
+        Log densities of the fits at all draws, ``(n, fits)``.
+    log_target : numpy.ndarray
+        That of the target, ``(n,)``.
+    prior, likelihood : dict
+        Terms of the target.
+    common : Common, optional
+        Terms left out of all densities, where the target is the first fit.
+    findings : sequence of Finding
+        What else is to be said of any answer.
+    is_exact : bool
+        Whether the densities are those that the draws came from.
+    """
     edges = np.concatenate([[0], np.cumsum([r.draws.size for r in records])]).astype(np.int64)
     own = np.concatenate([base_weights(record).linear for record in records])
     _refuse_impossible(log_q, edges, own, labels)
@@ -140,21 +113,22 @@ def pool_records(
         same_likelihood=same_likelihood,
     )
     made = replace(draws, pooling=pooling)
-    findings = _findings(pooling, made, sizes, labels, log_q, given)
-    made = replace(draws, pooling=replace(pooling, findings=findings))
-    made = _reaching(made, records[0], log_q, solved, shared)
+    found = (*findings, *_findings(pooling, made, sizes, labels, log_q, given, is_exact=is_exact))
+    made = replace(draws, pooling=replace(pooling, findings=found))
+    if common is not None:
+        made = _reaching(made, records[0], log_q, solved, common)
     record = replace(
         records[0],
         draws=made,
         prior=prior,
         loglik=likelihood,
-        log_weights=_weights_of_first(pooling, log_q, solved),
+        log_weights=_weights(pooling, log_target, solved),
         stored_log_density=None,
         ordered=any(record.ordered for record in records),
         is_approximate=False,
     )
     mass = (pooling.shares.T * pooling.counts) @ pooling.shares / sizes[:, None]
-    estimate = _constants(solved, record, findings, labels, given)
+    estimate = constants_of(solved, record, found, labels, given)
     return Pooled(record, tuple(labels), estimate, mass, sizes, tuple(records))
 
 
@@ -178,7 +152,7 @@ def _reaching(draws: Draws, first: Base, log_q: Array, solved: Solved, common: C
                 impossible[label] = nowhere
             total += np.where(nowhere, 0.0, values)
     there = np.flatnonzero(gone)
-    reference = _weights_of_first(pooling, log_q, solved)
+    reference = _weights(pooling, log_q[:, 0], solved)
     try:
         like = likelihood_at(first, draws.take(there), common)
     except SteelyardError:
@@ -190,9 +164,10 @@ def _reaching(draws: Draws, first: Base, log_q: Array, solved: Solved, common: C
     return replace(draws, pooling=replace(pooling, reference=reference, impossible=impossible))
 
 
-def _weights_of_first(pooling: Pooling, log_q: Array, solved: Solved) -> Array:
+def _weights(pooling: Pooling, log_target: Array, solved: Solved) -> Array:
+    """Log weights of a target, ``c q/Σ_l n_l exp(f_l) q_l``, the largest at 0."""
     with np.errstate(divide="ignore"):
-        weights = np.log(pooling.counts) + log_q[:, 0] - solved.log_mixture
+        weights = np.log(pooling.counts) + log_target - solved.log_mixture
     return np.asarray(weights - weights.max())
 
 
@@ -275,6 +250,8 @@ def _findings(
     labels: Sequence[str],
     log_q: Array,
     given: Array | None,
+    *,
+    is_exact: bool,
 ) -> tuple[Finding, ...]:
     """Fits that hardly overlap with the others, and fits that contradict them."""
     found: list[Finding] = []
@@ -285,42 +262,9 @@ def _findings(
             for label, link in zip(labels[1:], links[1:], strict=True)
             if link < math.inf
         ]
-    found += [
-        judge("pool_contradiction", p, fit=who)
-        for who, p in contradictions(pooling, draws, sizes, labels, log_q, given)
-    ]
+    if is_exact:
+        found += [
+            judge("pool_contradiction", p, fit=who)
+            for who, p in contradictions(pooling, draws, sizes, labels, log_q, given)
+        ]
     return tuple(found)
-
-
-def _constants(
-    solved: Solved,
-    record: Base,
-    findings: Sequence[Finding],
-    labels: Sequence[str],
-    given: Array | None,
-) -> Estimate:
-    draws = record.draws
-    series = solved.series
-    lrv = long_run_variance(series, draws, record.ordered)
-    error = np.sqrt(lrv / draws.size)
-    if given is None and draws.pooling is not None:
-        # Fits that share no draw say nothing of each other.
-        error = np.where(linked(draws.pooling) < 1, math.inf, error)
-    efficiency = relative_efficiency(series, draws, record.ordered)
-    shape = tail_of(series, efficiency, draws, record.ordered)
-    carried = contributions_of(series, efficiency, draws, record.ordered)
-    spread = (series**2).mean(axis=0)
-    known = error > 0
-    effective = np.where(known, spread / np.where(known, error, 1.0) ** 2, float(draws.size))
-    verdict = Verdict([*findings, judge("few_contributions", carried)], error.shape)
-    return Estimate(
-        0.0 - solved.constants,
-        error,
-        shape,
-        verdict,
-        effective,
-        degrees=degrees_of(carried, efficiency, draws),
-        label="log constants",
-        dims=("fit",),
-        labels={"fit": np.array(labels, dtype=object)},
-    )

@@ -6,7 +6,9 @@ from collections.abc import Mapping, Sequence
 from typing import Any
 
 from steelyard.errors import ArgumentError, ArgumentTypeError
-from steelyard.repair.pooling import Pooled, pool_records
+from steelyard.repair.disjoint import pool_disjoint
+from steelyard.repair.pooled import Pooled
+from steelyard.repair.pooling import pool_records
 
 __all__ = ["pool_fits", "read_fits"]
 
@@ -47,4 +49,5 @@ def pool_fits(fits: Any, kind: type, data: Any, common: Any, log_constants: Any)
             raise ArgumentTypeError(
                 "fits", "single fits", f"a pool as {label}", "Pool all of its fits at once."
             )
-    return pool_records(records, labels, common, log_constants)
+    way = pool_records if data == "same" else pool_disjoint
+    return way(records, labels, common, log_constants)

@@ -10,7 +10,7 @@ import numpy as np
 from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes
 
 if TYPE_CHECKING:
-    from steelyard.repair.pooling import Pooled
+    from steelyard.repair.pooled import Pooled
 
 __all__ = ["PoolPlots"]
 
