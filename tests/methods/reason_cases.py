@@ -187,6 +187,15 @@ def tempered(**figures: float) -> sy.Tempered:
     return replace(run, _state=replace(run._state, steps=tuple(steps)))
 
 
+def sided(errors: float) -> sy.Estimate:
+    """A log constant so many errors from what is seen looking back."""
+    run = _run()
+    steps, constant = list(run._state.steps), run.log_constant
+    off = errors * constant.error - (constant.value - run.bridged_constant.value)
+    steps[0] = replace(steps[0], bridged=steps[0].bridged - off)
+    return replace(run, _state=replace(run._state, steps=tuple(steps))).log_constant
+
+
 def stranded(islands: int) -> sy.Tempered:
     """A run in which so many of 20 islands hold all weight, in equal parts."""
     run = _run()

@@ -36,6 +36,7 @@ from .reason_cases import (
     quantile,
     shape,
     shares,
+    sided,
     stacked,
     stopped,
     stranded,
@@ -84,6 +85,7 @@ STRAINED: list[Case] = [
     ),
     ("few_islands", lambda: stranded(7), lambda: stranded(8)),
     ("constant_spread", lambda: stranded(7).log_constant, lambda: stranded(8).log_constant),
+    ("sides_disagree", lambda: sided(-1.01), lambda: sided(0.99)),
     ("moves_stuck", lambda: tempered(jump=0.29), lambda: tempered(jump=0.31)),
     ("tempering_unfinished", lambda: stopped(1), lambda: stopped(None)),
 ]
@@ -115,6 +117,7 @@ REFIT: list[Case] = [
     ),
     ("few_islands", lambda: stranded(3), lambda: stranded(4)),
     ("constant_spread", lambda: stranded(1).log_constant, lambda: stranded(2).log_constant),
+    ("sides_disagree", lambda: sided(3.01), lambda: sided(2.99)),
     ("moves_stuck", lambda: tempered(jump=0.029), lambda: tempered(jump=0.031)),
     ("beyond_source", lambda: tempered(beyond=1), lambda: tempered(beyond=0)),
 ]
