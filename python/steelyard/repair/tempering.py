@@ -174,7 +174,7 @@ def _begin(
         )
     x, logs, eve = place_start(start, log_weights, layout, generator)
     points = setting.densities.at(x, gradients=setting.gradients)
-    refuse_bad_start(points)
+    refuse_bad_start(points, logs)
     dimension, many = x.shape[1], len(setting.families)
     return Particles(
         points,
