@@ -58,15 +58,14 @@ def bridged_constant(run: Tempered) -> Estimate:
             "one island" if run.finished else "a run that stopped early",
             "Use log_constant.",
         )
-    count, added = run.islands, run._state.bridged
-    error = math.sqrt(count / (count - 1) * float((added**2).sum()))
+    error = math.sqrt(run._setting.islands.variance(run._state.bridged))
     return Estimate(
         float(sum(step.bridged for step in run.history)),
         error,
         -math.inf,
         Verdict([*run._findings, judge("constant_spread", error)]),
         math.nan,
-        degrees=count - 1.0,
+        degrees=run.islands - 1.0,
         label="bridged log constant of target over source",
     )
 
@@ -91,7 +90,7 @@ def _relative_variance(run: Tempered, logs: Array) -> tuple[float, float]:
     count, state = run.islands, run._state
     if count > 1:
         off = _shares(logs, count) - state.start_masses
-        return float(count / (count - 1) * (off**2).sum()), count - 1.0
+        return run._setting.islands.variance(off), count - 1.0
     if run._remaining is None:
         return state.lineage, math.inf
     return lineage_variance(logs, state.eve, state.resampled), math.inf

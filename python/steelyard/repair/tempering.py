@@ -144,7 +144,9 @@ def temper(
         refuse_no_function(function, name)
     length = read_chain_length(waste_free)
     count = read_islands(islands, scheme, length)
-    layout = Islands(count, start_size(drawn, size, count, length), scheme)
+    layout = Islands(
+        count, start_size(drawn, size, count, length), scheme, neighbours=not callable(drawn)
+    )
     densities = Densities(source, target, source_gradient, target_gradient)
     families = read_families(move, densities)
     setting = Setting(densities, layout, families, read_share(efficiency), length)
