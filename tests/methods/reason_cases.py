@@ -171,9 +171,10 @@ def own_effects(share: float) -> LeaveOut:
 def _run(most_evaluations: int | None = None) -> sy.Tempered:
     """Normal draws moved a little, in 20 islands."""
     return sy.temper(
-        noise(31, N, 1),
+        lambda size, rng: rng.normal(size=(size, 1)),
         lambda x: -0.5 * x[:, 0] ** 2,
         lambda x: -0.5 * (x[:, 0] - 1.5) ** 2,
+        size=N,
         most_evaluations=most_evaluations,
         rng=SEED,
     )
