@@ -50,7 +50,7 @@ class Problem:
         # Draws at hand are what they are, whatever they weigh: equal, or as a pool counts them.
         pooling = base.draws.pooling
         counts = np.ones(base.draws.size) if pooling is None else pooling.counts
-        self.weights = np.concatenate([(counts / counts.sum())[:, None], nodes.linear], axis=1)
+        self.weights = np.concatenate([(counts / counts.sum())[:, None], found.weights.T], axis=1)
         # A scenario out of reach is served by its own refit alone, and serves no other: it lives
         # on a draw of its own.
         count = len(names)
