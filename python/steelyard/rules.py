@@ -228,9 +228,18 @@ RULES: Mapping[str, Rule] = {
         1.5,
         10.0,
         "above",
-        "Draws pushed out by a factor of {factor} find {figure} times the variance of the weights "
-        "that the draws themselves show, above {limit}: the target's tails are heavier.",
+        "Draws pushed out by a factor of {factor} find another variance of the weights than the "
+        "draws themselves, by a factor of {figure}, above {limit}: the target's tails are heavy.",
         "Temper, which moves draws into the tails, or refit.",
+        "derived: both estimate one second moment; limits ours",
+    ),
+    "mass_behind": Rule(
+        10.0,
+        100.0,
+        "above",
+        "The base's own draws find {figure} times the variance of the weights that the moved draws "
+        "show, above {limit}: some lie where the target has mass that no moved draw reaches.",
+        "Temper, or refit; look for a second mode.",
         "derived: both estimate one second moment; limits ours",
     ),
     "draws_moved": Rule(

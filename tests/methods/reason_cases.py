@@ -15,6 +15,7 @@ import numpy as np
 
 import steelyard as sy
 from steelyard.leaving_out import LeaveOut, leave_out
+from steelyard.verdicts import judge
 
 SEED = 20_261_216
 N = 1000
@@ -180,6 +181,13 @@ def repaired(rung: str, df: float = 0.0) -> sy.Answer:
         return -(df + 1) / 2 * np.log1p(square / df) if df else -0.5 * square
 
     return fit.repair(sy.swap_loglik(target), rungs=rung)
+
+
+def left_behind(variance: float) -> sy.Answer:
+    """A sound answer whose base draws show so many times the variance of its weights."""
+    answer = repaired("moment matching")
+    kept = tuple(f for f in answer._findings if f.code != "mass_behind")
+    return replace(answer, _findings=(*kept, judge("mass_behind", variance)))
 
 
 @functools.cache

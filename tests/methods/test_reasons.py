@@ -27,6 +27,7 @@ from .reason_cases import (
     excursions,
     few,
     heavy,
+    left_behind,
     left_out,
     loosened,
     noise,
@@ -79,6 +80,7 @@ STRAINED: list[Case] = [
     ),
     ("groups_strained", lambda: left_out(0.85), lambda: left_out(0.4)),
     ("own_latents", lambda: own_effects(0.55), lambda: own_effects(0.45)),
+    ("mass_behind", lambda: left_behind(10.5), lambda: left_behind(9.5)),
     (
         "tail_beyond",
         lambda: repaired("moment matching", df=5),
@@ -100,6 +102,7 @@ STRAINED: list[Case] = [
     ("pool_approximate", lambda: disjoint(called=False), lambda: disjoint(called=True)),
 ]
 REFIT: list[Case] = [
+    ("mass_behind", lambda: left_behind(100.5), lambda: left_behind(99.5)),
     ("groups_refit", lambda: left_out(1.15), lambda: left_out(0.4)),
     ("weight_shape", lambda: shape(1.15), lambda: shape(0.9)),
     ("few_effective", lambda: equal(24), lambda: equal(25)),

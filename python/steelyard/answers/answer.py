@@ -518,7 +518,8 @@ class Answer:
     def divergence(self) -> Estimate:
         """Kullback–Leibler divergence of the target from the base, in natural units."""
         if self._moved is not None:
-            constant = self._moved.log_constant or log_evidence_ratio_of(self._scale, None)
+            given = self._moved.log_constant
+            constant = log_evidence_ratio_of(self._scale, None) if given is None else given
             return divergence_of_moved(self._scale, self._moved, constant)
         return divergence_of(self._scale)
 

@@ -27,7 +27,6 @@ from steelyard.repair.rungs import (
     RUNGS,
     Outcome,
     not_possible,
-    smoothing_cost,
 )
 from steelyard.repair.spending import Purse, read_purse
 from steelyard.verdicts import Level
@@ -109,9 +108,9 @@ def repair(
     plain = reweigh(record, change)
     climb = Climb(record, change, plain, purse, seeds, tuple(fits), ordered, rungs is not None)
     _level(climb.plain, quantities)  # a quantity that cannot be read is an error before any cost
-    first = _rung("smoothing", Outcome(plain, "", smoothing_cost(climb)), purse, quantities)
+    outcome, first = _try(climb, "smoothing", quantities)
     tried = [replace(first, seconds=time.monotonic() - began)]
-    chosen, best = "smoothing", plain
+    chosen, best = "smoothing", plain if outcome.answer is None else outcome.answer
     for name in names:
         if name != "smoothing":
             outcome, rung = _try(climb, name, quantities)
@@ -121,8 +120,10 @@ def repair(
             if answer is not None and _better(answer, best, quantities):
                 chosen, best = name, answer
             elif answer is not None:
-                tried[-1] = replace(rung, stopped=f"no better than {chosen}, which was kept")
-        if tried[-1].stopped == INTERRUPTED:
+                kept = f"no better than {chosen}, which was kept"
+                early = rung.stopped in (INTERRUPTED, EMPTY)
+                tried[-1] = replace(rung, stopped=f"{rung.stopped}; {kept}" if early else kept)
+        if tried[-1].stopped.startswith(INTERRUPTED):
             break
         if name == chosen and _level(best, quantities) == "sound":
             break

@@ -56,8 +56,8 @@ class Rung:
 
     @property
     def level(self) -> str:
-        """The level of its verdict; empty where there is none."""
-        return "" if self.verdict is None else str(self.verdict.level)
+        """The level of its verdict, to be compared like one; empty where there is none."""
+        return "" if self.verdict is None else self.verdict.level
 
 
 @dataclass(frozen=True, eq=False)
@@ -131,7 +131,7 @@ class Ladder:
                 "seconds": [float(f"{r.seconds:.2g}") for r in rungs],
                 "effective size": [_figure(r.effective_size) for r in rungs],
                 "tail shape": [_figure(r.tail_shape) for r in rungs],
-                "level": [r.level for r in rungs],
+                "level": [str(r.level) for r in rungs],
                 "stopped": [r.stopped for r in rungs],
             }
         )

@@ -13,13 +13,13 @@ from steelyard import _core
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.repair.affine import Affine, Moments, identity, moments_of, rematched
-from steelyard.repair.probing import probe, probe_cost
+from steelyard.repair.probing import Mapped, probe, probe_behind, probe_cost
 from steelyard.repair.spending import Purse
 from steelyard.verdicts import Finding, Verdict
 from steelyard.weighing.trust import shared_findings, weight_findings
 from steelyard.weighing.weigh import Weights, base_weights, weigh_ratio
 
-__all__ = ["Densities", "Matched", "match_moments", "rank"]
+__all__ = ["Densities", "Matched", "match_moments", "probe_plain", "rank"]
 
 # Share of the draws that the weights, or a power of them, keep while a map is estimated.
 _SHARE = 0.25
@@ -159,27 +159,56 @@ def match_moments(record: Base, start: Array, densities: Densities, purse: Purse
         steps.append(kind)
     if not steps:
         return None
-    beyond = _probed(problem, state)
-    best = Matched(state.x, state.weights, state.target - state.base, tuple(steps), beyond)
-    if rank(state.weights, record)[0] < 2 and purse.allows(len(start)):
+    beside = _probed(problem, first, state)
+    best = Matched(state.x, state.weights, state.target - state.base, tuple(steps), beside)
+    if _level(best, record) < 2 and purse.allows(len(start)):
         split = _split(problem, first, state)
-        if split is not None and rank(split[1], record) > rank(best.weights, record):
-            best = Matched(*split, (*steps, "split"), beyond)
+        if split is not None:
+            # Half of the draws stay where they were: nothing is left behind.
+            kept = Matched(*split, (*steps, "split"), beside[:1])
+            if (_level(kept, record), _rank(kept)) > (_level(best, record), _rank(best)):
+                best = kept
     return best
 
 
-def _probed(problem: _Problem, state: _State) -> tuple[Finding, ...]:
-    v = problem.record.log_weights
-    return (
-        probe(
-            problem.start,
-            problem.base,
-            state.log_ratio,
-            v,
-            state.maps,
-            problem.halves,
-            problem.densities,
-        ),
+def _level(matched: Matched, record: Base) -> int:
+    """The level of the weights and of what is known beside them, as a number."""
+    own = min((int(f.rank.min()) for f in matched.findings), default=2)
+    return min(rank(matched.weights, record)[0], own)
+
+
+def _rank(matched: Matched) -> float:
+    return -matched.weights.tail_shape
+
+
+def _probed(problem: _Problem, first: _State, state: _State) -> tuple[Finding, ...]:
+    mapped = Mapped(
+        problem.start,
+        problem.base,
+        first.target,
+        state.log_ratio,
+        problem.record.log_weights,
+        state.maps,
+        problem.halves,
+        problem.densities,
+    )
+    return probe(mapped), probe_behind(mapped)
+
+
+def probe_plain(record: Base, start: Array, densities: Densities, purse: Purse) -> Finding | None:
+    """
+    The probe of the base's own draws; None where it costs more than may be spent.
+    """
+    if not purse.allows(len(start) + probe_cost(len(start))):
+        return None
+    base, target = densities(start)
+    log_ratio = target - base
+    if _weights(record, log_ratio) is None:
+        return None
+    still = identity(start.shape[1])
+    maps, halves = (still, still), _halves(record)
+    return probe(
+        Mapped(start, base, target, log_ratio, record.log_weights, maps, halves, densities)
     )
 
 

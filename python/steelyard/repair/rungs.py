@@ -23,7 +23,7 @@ from steelyard.errors import (
 )
 from steelyard.repair.collapsing import collapse, collapse_plan
 from steelyard.repair.evaluating import at_draws
-from steelyard.repair.matching import match_moments
+from steelyard.repair.matching import match_moments, probe_plain
 from steelyard.repair.pooling import pool_records
 from steelyard.repair.tempered import Tempered
 from steelyard.repair.tempering import temper
@@ -46,6 +46,8 @@ __all__ = [
     "smoothing_cost",
 ]
 
+# Weights of a lighter tail than this have finite third moments: nothing can hide in it.
+_IDLE_SHAPE = 0.3
 INTERRUPTED = "stopped by Ctrl-C"
 EMPTY = "the limit was reached"
 # Fewer are too few for the islands that the errors come from.
@@ -68,8 +70,24 @@ class Outcome:
 
 
 def smoothing(climb: Climb) -> Outcome:
-    """The base's own draws, their largest weights smoothed."""
-    return Outcome(climb.plain)
+    """
+    The base's own draws, their largest weights smoothed.
+
+    Weights that look sound with a tail to speak of are held against draws further out, where there
+    is code to evaluate these.
+    """
+    plain = climb.plain
+    cost = smoothing_cost(climb)
+    if not plain.verdict.is_sound or plain.tail_shape < _IDLE_SHAPE:
+        return Outcome(plain, "", cost)
+    try:
+        start, densities = climb.start, climb.evaluator.both
+    except SteelyardError:
+        return Outcome(plain, "", cost)
+    found = probe_plain(climb.record, start, densities, climb.purse)
+    if found is not None:
+        plain = replace(plain, _findings=(*plain._findings, found))
+    return Outcome(plain, "", cost)
 
 
 def smoothing_cost(climb: Climb) -> int:
