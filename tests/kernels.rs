@@ -23,9 +23,9 @@ mod kernels {
     mod long_run;
     mod mean;
     mod moments;
+    mod multi_sample;
     mod node_series;
     mod nodes;
-    mod multi_sample;
     mod ordered;
     mod pareto;
     mod quantile;

@@ -11,8 +11,8 @@ mod interval;
 mod log_sum;
 mod long_run;
 mod mean;
-mod nodes;
 mod multi_sample;
+mod nodes;
 mod ordered;
 mod pareto;
 mod quantile;
@@ -48,8 +48,9 @@ mod _core {
         contributions, mean_square, weighted_covariance, weighted_mean, weighted_moments,
     };
     #[pymodule_export]
-    use super::nodes::study_nodes;
     use super::multi_sample::multi_sample;
+    #[pymodule_export]
+    use super::nodes::study_nodes;
     #[pymodule_export]
     use super::ordered::{set_threads, threads};
     #[pymodule_export]

@@ -194,9 +194,9 @@ pub fn largest_values(values: &[f64], sign: f64, count: usize) -> Option<(Vec<f6
         return None;
     }
     let needed = count + 1;
-    let mut found = at_least(values, sign, guess(values, sign, needed));
+    let mut found = values_at_least(values, sign, guess(values, sign, needed));
     if found.len() < needed || found.len() > 4 * needed {
-        found = at_least(values, sign, f64::NEG_INFINITY);
+        found = values_at_least(values, sign, f64::NEG_INFINITY);
     }
     let below = found.len() - needed;
     let (_, &mut cutoff, upper) = found.select_nth_unstable_by(below, f64::total_cmp);
@@ -204,7 +204,7 @@ pub fn largest_values(values: &[f64], sign: f64, count: usize) -> Option<(Vec<f6
 }
 
 /// Values of at least `least`, in input order, without a branch.
-fn at_least(values: &[f64], sign: f64, least: f64) -> Vec<f64> {
+fn values_at_least(values: &[f64], sign: f64, least: f64) -> Vec<f64> {
     let mut found = vec![0.0; values.len()];
     let mut count = 0;
     for value in values {

@@ -80,7 +80,7 @@ pub fn multi_sample(
     expect_shape("counts", &[draws], &[counts.len()])?;
     expect_shape("sizes", &[densities], &[sizes.len()])?;
     expect_shape("start", &[densities], &[start.len()])?;
-    if let Some(&found) = sizes.iter().find(|&&size| !(size > 0.0)) {
+    if let Some(&found) = sizes.iter().find(|&&size| size.is_nan() || size <= 0.0) {
         return Err(KernelError::Range {
             argument: "sizes",
             expected: "positive sizes",

@@ -183,7 +183,7 @@ def delete_columns(
 def _of_pool(
     setting: Setting, found: Deleted, held: npt.NDArray[Any], scored: npt.NDArray[Any]
 ) -> Deleted:
-    """Figures that rest on chains, from what varies within the fits of a pool: not in the kernel."""
+    """Figures that rest on chains, from what varies within the fits of a pool, in plain code."""
     draws, ordered = setting.draws, setting.ordered
     log_weights, raw, _ = deletion_weights(setting, np.asarray(held, dtype=np.float64))
     scaled = draws.size * np.exp(log_weights)

@@ -19,10 +19,10 @@ from steelyard.base.draws import Array
 from steelyard.base.reading import read_draws
 from steelyard.digits import rounded, short
 from steelyard.errors import ArgumentTypeError, ShapeError
-from steelyard.repair.run_constants import bridged_constant, mean_weight_constant, run_findings
 from steelyard.repair.islands import log_masses
 from steelyard.repair.particles import Particles, Step
 from steelyard.repair.points import Densities, Points
+from steelyard.repair.run_constants import bridged_constant, mean_weight_constant, run_findings
 from steelyard.repair.sweeping import Setting
 from steelyard.table import Table
 from steelyard.verdicts import Finding, Verdict, judge
