@@ -5,6 +5,7 @@
 #![allow(clippy::expect_used, clippy::panic, clippy::unwrap_used)]
 
 mod kernels {
+    mod chain_means;
     mod columns;
     mod correlation;
     mod densities;
@@ -13,6 +14,7 @@ mod kernels {
     mod densities_tails;
     mod effective;
     mod error;
+    mod extremes;
     mod f_tail;
     mod influence;
     mod interval;
@@ -30,6 +32,8 @@ mod kernels {
     mod signed_tail;
     mod smooth;
     mod special;
+    mod study;
     mod support;
     mod vector;
+    mod weigh;
 }

@@ -10,13 +10,16 @@ _Numbers: TypeAlias = npt.NDArray[np.float64] | npt.NDArray[np.float32]
 
 __all__ = [
     "beta_tails",
+    "chain_means",
     "contributions",
     "describe",
     "digamma",
     "effective_size",
+    "extremes",
     "f_tail",
     "gamma_tails",
     "influence",
+    "largest",
     "largest_share",
     "ln_gamma",
     "log_beta",
@@ -38,8 +41,11 @@ __all__ = [
     "skew_normal_tails",
     "smooth",
     "sort_order",
+    "study",
     "tail_shape",
     "threads",
+    "variances",
+    "weigh",
     "weighted_covariance",
     "weighted_mean",
     "weighted_moments",
@@ -136,3 +142,25 @@ def weighted_covariance(
     f: npt.NDArray[np.float64], w: npt.NDArray[np.float64]
 ) -> npt.NDArray[np.float64]: ...
 def contributions(z: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
+def extremes(x: npt.NDArray[np.float64]) -> tuple[float, float]: ...
+def weigh(
+    x: npt.NDArray[np.float64], out: npt.NDArray[np.float64]
+) -> tuple[float, float, float, float]: ...
+def largest(
+    x: npt.NDArray[np.float64], count: int
+) -> tuple[npt.NDArray[np.int64], float] | None: ...
+def variances(
+    z: npt.NDArray[np.float64], starts: npt.NDArray[np.int64], split: bool
+) -> npt.NDArray[np.float64]: ...
+def chain_means(
+    f: npt.NDArray[np.float64],
+    w: npt.NDArray[np.float64] | None,
+    starts: npt.NDArray[np.int64],
+) -> npt.NDArray[np.float64]: ...
+def study(
+    f: npt.NDArray[np.float64],
+    centre: npt.NDArray[np.float64],
+    w: npt.NDArray[np.float64],
+    raw: npt.NDArray[np.float64],
+    starts: npt.NDArray[np.int64],
+) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64]]: ...

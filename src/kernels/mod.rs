@@ -3,6 +3,7 @@
 //! `columns` applies a kernel for one column to every column of an array, `ordered` runs the tasks
 //! on threads without letting their number show in the result.
 
+pub mod chain_means;
 pub mod columns;
 pub mod correlation;
 pub mod cumulated;
@@ -10,6 +11,7 @@ pub mod densities;
 pub mod effective;
 pub mod entry;
 pub mod error;
+pub mod extremes;
 pub mod f_tail;
 pub mod influence;
 pub mod interrupt;
@@ -32,7 +34,12 @@ pub mod signed_tail;
 pub mod smooth;
 pub mod sorting;
 pub mod special;
+pub mod study;
+pub mod study_blocks;
+pub mod study_sums;
+pub mod summary;
 pub mod tail;
 pub mod vector;
+pub mod weigh;
 pub mod weight_sums;
 pub mod weight_tiles;

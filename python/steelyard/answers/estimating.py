@@ -14,9 +14,11 @@ from steelyard import _core
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.quantities import Quantity
 from steelyard.base import Base
-from steelyard.base.draws import Array
+from steelyard.base.draws import Array, Draws
 from steelyard.verdicts import Finding, Verdict, judge
 from steelyard.weighing.series import (
+    MANY_CHAINS,
+    agreement,
     chains_p_value,
     contributions_of,
     degrees_of,
@@ -88,7 +90,7 @@ def in_unit(f: Array) -> tuple[Array, Array]:
 
     The unit is 1 but for columns beyond 1e±100, and a power of two, so that nothing is rounded.
     """
-    top = np.abs(f).max(axis=0)
+    top = np.maximum(f.max(axis=0), -f.min(axis=0))
     _, exponent = np.frexp(np.where(top > 0, top, 1.0))
     unit = np.where(np.abs(exponent) > 330, np.ldexp(1.0, exponent), 1.0)
     return (f / unit if (unit != 1).any() else f), unit
@@ -113,6 +115,8 @@ def study(
     draws, ordered = scale.base.draws, scale.base.ordered
     w = scale.weights.linear if weights is None else weights
     r = scale.weights.raw if raw is None else raw
+    if ordered and draws.chains < MANY_CHAINS:
+        return _study_at_once(psi, np.zeros(psi.shape[1]), w, r, draws)[0]
     z = draws.size * w[:, None] * psi
     z_raw = draws.size * r[:, None] * psi
     efficiency = relative_efficiency(z_raw, draws, ordered)
@@ -127,11 +131,42 @@ def study(
     )
 
 
+def _study_at_once(
+    f: Array, centre: Array, w: Array, raw: Array, draws: Draws
+) -> tuple[Series, Array]:
+    """The study of ``f − centre`` by one kernel, which forms no series as an array; ``Σ w ψ²``."""
+    figures, chains = _core.study(f, centre, w, raw, draws.starts)
+    spread, long_run, efficiency, shape, own, carried, top = figures
+    # About the mean under these weights, which is the centre but for rounding.
+    pooled = np.maximum(spread - (chains[0] * np.nan_to_num(chains[1])).sum(axis=0) ** 2, 0.0)
+    carried = np.sqrt(efficiency) * carried
+    series = Series(
+        np.sqrt(long_run / draws.size),
+        shape,
+        agreement(chains, pooled, top, draws),
+        own,
+        carried,
+        degrees_of(carried, efficiency, draws),
+    )
+    return series, spread
+
+
+def _study_about_mean(scale: Scale, f: Array) -> tuple[Array, Series, Array]:
+    """Weighted means of the columns of `f`, their series, and the variance of a draw."""
+    weights, draws = scale.weights, scale.base.draws
+    if scale.base.ordered and draws.chains < MANY_CHAINS:
+        mean = _core.weighted_mean(f, weights.linear)
+        series, spread = _study_at_once(f, mean, weights.linear, weights.raw, draws)
+        return mean, series, spread
+    mean, sd = moments(scale, f)
+    return mean, study(scale, f - mean), sd**2
+
+
 def moments(scale: Scale, f: Array, weights: Array | None = None) -> tuple[Array, Array]:
     """Weighted mean and standard deviation of the columns of `f`."""
     w = scale.weights.linear if weights is None else weights
-    mean = _core.weighted_mean(f, w)
-    return mean, np.sqrt(_core.weighted_mean((f - mean) ** 2, w))
+    mean, square = _core.weighted_moments(f, w)
+    return mean, np.sqrt(square)
 
 
 def mean_of(scale: Scale, quantity: Quantity) -> Estimate:
@@ -139,9 +174,8 @@ def mean_of(scale: Scale, quantity: Quantity) -> Estimate:
 
     def work(f: Array) -> tuple[Array, Series, Array]:
         f, unit = in_unit(f)
-        mean, sd = moments(scale, f)
-        series = study(scale, f - mean)
-        return mean * unit, series.times(unit), (sd * unit) ** 2
+        mean, series, spread = _study_about_mean(scale, f)
+        return mean * unit, series.times(unit), spread * unit**2
 
     return _over_columns(scale, quantity, work)
 

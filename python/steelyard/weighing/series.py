@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from itertools import pairwise
-
 import numpy as np
 import numpy.typing as npt
 
@@ -12,6 +10,8 @@ from steelyard.base import Draws
 from steelyard.base.draws import Array
 
 __all__ = [
+    "MANY_CHAINS",
+    "agreement",
     "chains_p_value",
     "contributions_of",
     "degrees_of",
@@ -19,6 +19,7 @@ __all__ = [
     "relative_efficiency",
     "standard_error",
     "tail_of",
+    "variance_and_efficiency",
 ]
 
 # Shorter chains, or chains of fewer effective draws, know too little of their own errors.
@@ -33,7 +34,7 @@ _DRAWS_A_DEGREE = 40.0
 
 
 # From this many chains on, chains taken as independent units estimate a variance well enough.
-_MANY_CHAINS = 20
+MANY_CHAINS = 20
 
 
 def long_run_variance(z: Array, draws: Draws, ordered: bool) -> Array:
@@ -50,7 +51,7 @@ def long_run_variance(z: Array, draws: Draws, ordered: bool) -> Array:
             return _core.mean_square(z)
         return _grouped(z - z.mean(axis=0), groups)
     lrv = _core.long_run_variance(z, draws.starts, True)
-    if draws.chains < _MANY_CHAINS:
+    if draws.chains < MANY_CHAINS:
         return lrv
     lengths = np.diff(draws.starts)
     means = np.add.reduceat(z, draws.starts[:-1], axis=0) / lengths[:, None]
@@ -95,13 +96,7 @@ def contributions_of(z: Array, efficiency: Array, draws: Draws, ordered: bool) -
     ----------
     .. [1] Cochran (1977), Sampling Techniques, section 2.15.
     """
-    z = _together(z, draws, ordered)
-    z = z - z.mean(axis=0)
-    top = np.abs(z).max(axis=0)
-    z = z / np.where(top > 0, top, 1.0)
-    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
-        count = (z**2).sum(axis=0) ** 3 / (z**3).sum(axis=0) ** 2
-    return np.asarray(np.where(top == 0, np.inf, np.sqrt(efficiency) * count))
+    return np.asarray(np.sqrt(efficiency) * _core.contributions(_together(z, draws, ordered)))
 
 
 def degrees_of(contributions: Array, efficiency: Array, draws: Draws) -> Array:
@@ -118,13 +113,21 @@ def degrees_of(contributions: Array, efficiency: Array, draws: Draws) -> Array:
 
 def relative_efficiency(z: Array, draws: Draws, ordered: bool) -> Array:
     """``min(1, var/LRV)`` of each column, in (0, 1]; 1 for a constant."""
+    return variance_and_efficiency(z, draws, True)[1] if ordered else np.ones(z.shape[1])
+
+
+def variance_and_efficiency(z: Array, draws: Draws, ordered: bool) -> tuple[Array, Array]:
+    """Variance of each column, every draw counted once, and its `relative_efficiency`."""
     if not ordered:
-        return np.ones(z.shape[1])
-    variance = _core.mean_square(z)
-    lrv = long_run_variance(z, draws, ordered)
+        return _core.mean_square(z), np.ones(z.shape[1])
+    if draws.chains < MANY_CHAINS:
+        variance, lrv = _core.variances(z, draws.starts, True)
+    else:
+        variance, lrv = _core.mean_square(z), long_run_variance(z, draws, ordered)
     with np.errstate(invalid="ignore", divide="ignore"):
         ratio = variance / lrv
-    return np.where((lrv > 0) & np.isfinite(ratio) & (ratio > 0), np.minimum(ratio, 1.0), 1.0)
+    known = (lrv > 0) & np.isfinite(ratio) & (ratio > 0)
+    return variance, np.where(known, np.minimum(ratio, 1.0), 1.0)
 
 
 def standard_error(z: Array, draws: Draws, ordered: bool) -> Array:
@@ -138,9 +141,13 @@ def standard_error(z: Array, draws: Draws, ordered: bool) -> Array:
     return np.sqrt(long_run_variance(z, draws, ordered) / draws.size)
 
 
-def chains_p_value(f: Array, weights: Array, draws: Draws) -> Array:
+def chains_p_value(
+    f: Array, weights: Array | None, draws: Draws, top: Array | None = None
+) -> Array:
     """
     Whether the chains agree about weighted means: p-values, one a column of `f` ``(n, k)``.
+
+    Without weights every draw counts once. `top` is the largest magnitude in `f`, if known.
 
     ``Q = Σ_c (μ_c − μ̄)²/se_c²`` with μ̄ weighted by ``1/se_c²``, in Welch's form, since the
     errors of the chains are estimated: ``Q/(C − 1)``, corrected, against an F distribution whose
@@ -152,39 +159,44 @@ def chains_p_value(f: Array, weights: Array, draws: Draws) -> Array:
     ----------
     .. [1] Welch (1951), Biometrika 38.
     """
-    if draws.chains < 2 or int(np.diff(draws.starts).min()) < _SHORTEST:
+    if not _enough_chains(draws):
         return np.ones(f.shape[1])
-    mean = _core.weighted_mean(f, weights)
-    pooled = _core.weighted_mean((f - mean) ** 2, weights)
+    if top is None:
+        top = np.maximum(f.max(axis=0), -f.min(axis=0))
+    chains = _core.chain_means(f, weights, draws.starts)
+    weighs = chains[0, :, 0] > 0
+    mass, mean, *_, variance = chains[:, weighs]
+    share = mass / mass.sum(axis=0)
+    overall = (share * mean).sum(axis=0)
+    pooled = (share * (variance + (mean - overall) ** 2)).sum(axis=0)
+    return agreement(chains, pooled, top, draws)
+
+
+def agreement(chains: Array, pooled: Array, top: Array, draws: Draws) -> Array:
+    """
+    P-values of `chains_p_value` from figures of the chains.
+
+    `chains` is what the kernel `chain_means` tells, ``(5, chains, k)``; `pooled` the variance of
+    a draw, and `top` the largest magnitude, ``(k,)``.
+    """
+    if not _enough_chains(draws):
+        return np.ones(len(pooled))
+    weighs = chains[0, :, 0] > 0
+    if weighs.sum() < 2:
+        return np.ones(len(pooled))
+    _, mu, lrv, squares, _ = chains[:, weighs]
+    count = np.diff(draws.starts)[weighs, None].astype(np.float64)
     # Differences in the last digits are rounding, not chains that disagree.
-    rounding = (1e-10 * np.abs(f).max(axis=0)) ** 2
-    found = [
-        _one_chain(f[start:stop], weights[start:stop], pooled, rounding)
-        for start, stop in pairwise(draws.starts.tolist())
-        if weights[start:stop].sum() > 0
-    ]
-    if len(found) < 2:
-        return np.ones(f.shape[1])
-    mu, precision, freedom = (np.array(part) for part in zip(*found, strict=True))
+    variance = np.maximum(lrv / count, np.maximum(pooled * squares, (1e-10 * top) ** 2))
+    safe = np.where(variance > 0, variance, 1.0)
+    precision = np.where(variance > 0, 1 / safe, 0.0)
+    freedom = np.maximum(np.where(variance > 0, pooled / safe, count) / _FREEDOM, 1.0)
     enough = np.median(freedom, axis=0) * _FREEDOM >= _FEWEST
     return np.where(enough, _welch(mu, precision, freedom), 1.0)
 
 
-def _one_chain(
-    f: Array, weights: Array, pooled: Array, rounding: Array
-) -> tuple[Array, Array, Array]:
-    """Mean, ``1/se²`` and degrees of freedom of one chain."""
-    w = weights / weights.sum()
-    mu = _core.weighted_mean(f, w)
-    count = len(w)
-    z = np.where(w[:, None] > 0, count * w[:, None] * (f - mu), 0.0)
-    lrv = _core.long_run_variance(z, np.array([0, count], dtype=np.int64), True)
-    least = np.maximum(pooled * float((w**2).sum()), rounding)
-    variance = np.maximum(lrv / count, least)
-    precision = np.where(variance > 0, 1 / np.where(variance > 0, variance, 1.0), 0.0)
-    with np.errstate(invalid="ignore", divide="ignore"):
-        effective = np.where(variance > 0, pooled / variance, float(count))
-    return mu, precision, np.maximum(effective / _FREEDOM, 1.0)
+def _enough_chains(draws: Draws) -> bool:
+    return draws.chains > 1 and int(np.diff(draws.starts).min()) >= _SHORTEST
 
 
 def _welch(mu: Array, precision: Array, freedom: Array) -> Array:
