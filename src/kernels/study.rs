@@ -108,6 +108,17 @@ impl Stretch<'_> {
     }
 }
 
+impl Stretch<'_> {
+    /// Entries of z of a chain alone, `scale w (ψ − mean)`.
+    fn form_alone(&self, mean: f64, scale: f64, range: Range<usize>, out: &mut [f64]) {
+        for (target, draw) in out.iter_mut().zip(range) {
+            let (w, psi) = (self.w[draw], self.f[draw] - self.centre);
+            let z = scale * w * (psi - mean);
+            *target = if w == 0.0 { 0.0 } else { z };
+        }
+    }
+}
+
 /// Both passes over the halves of all chains.
 struct Passes<'a> {
     all: Stretch<'a>,
@@ -175,16 +186,7 @@ impl<'a> Passes<'a> {
                 .collect();
             let (scale, mean) = (known[0].scale, known[0].chain_mean);
             let part = self.all.part(chain.start, chain.end);
-            let fill = |range: Range<usize>, out: &mut [f64]| {
-                for (target, draw) in out.iter_mut().zip(range) {
-                    let (w, psi) = (part.w[draw], part.f[draw] - part.centre);
-                    *target = if w == 0.0 {
-                        0.0
-                    } else {
-                        scale * w * (psi - mean)
-                    };
-                }
-            };
+            let fill = |range, out: &mut [f64]| part.form_alone(mean, scale, range, out);
             let series = Summary::from_looks(Source::Made(&fill), &halves, chain.len(), looks);
             means.push(ChainMean {
                 mass,
