@@ -9,7 +9,7 @@ use crate::kernels::largest::largest as largest_of;
 use crate::kernels::sorting;
 
 /// Indices of the `count` largest entries of `x`, `(n,)`, in ascending order of entry, and the next
-/// largest entry; nothing unless there are more entries than `count`. NaN must not occur.
+/// largest entry; nothing unless there are more entries than `count`. NaN is passed over.
 #[pyfunction]
 pub fn largest<'py>(
     py: Python<'py>,

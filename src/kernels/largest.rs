@@ -15,8 +15,7 @@ const MOST_INSERTED: u32 = 32;
 pub type Ranked = (f64, u32);
 
 /// The `count` largest of `sign · values` in ascending order, and the next largest value; nothing
-/// unless there are more values than `count`. Equal values rank in input order. Values must not be
-/// NaN.
+/// unless there are more values than `count`. Equal values rank in input order; NaN is passed over.
 pub fn largest(values: &[f64], sign: f64, count: usize) -> Option<(Vec<Ranked>, f64)> {
     if count >= values.len() {
         return None;
@@ -34,6 +33,9 @@ pub fn largest(values: &[f64], sign: f64, count: usize) -> Option<(Vec<Ranked>, 
             sign,
             least: f64::NEG_INFINITY,
         });
+        if found.len() < needed {
+            return None; // NaN is no value that could be ranked
+        }
         let below = found.len() - needed;
         found.select_nth_unstable_by(below, |a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1)));
         found.drain(..below);
