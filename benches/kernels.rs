@@ -4,7 +4,9 @@
 
 use std::hint::black_box;
 
+use _core::kernels::chain_means::chain_means;
 use _core::kernels::columns::{map_columns, map_columns_into};
+use _core::kernels::extremes::extremes;
 use _core::kernels::influence::influence;
 use _core::kernels::interval::shortest_interval;
 use _core::kernels::long_run::{chains, long_run_variance};
@@ -16,7 +18,9 @@ use _core::kernels::resample::{Method, resample};
 use _core::kernels::signed_tail::signed_tail_shape;
 use _core::kernels::smooth::{smooth, tail_shape};
 use _core::kernels::sorting::order;
+use _core::kernels::study::{Weighted, study};
 use _core::kernels::vector::exp::exp_slice;
+use _core::kernels::weigh::weigh;
 use _core::kernels::weight_sums::form;
 use criterion::{Criterion, criterion_group, criterion_main};
 use ndarray::Array2;
@@ -150,5 +154,40 @@ fn series(c: &mut Criterion) {
     });
 }
 
-criterion_group!(kernels, reductions, tails, resampling, quantities, series);
+fn influence_series(c: &mut Criterion) {
+    let (f, never) = (normal(LONG), Interrupt::never());
+    let w: Vec<f64> = f.iter().map(|f| (0.3 * f).exp() / LONG as f64).collect();
+    let starts = [0, LONG as i64 / 2, LONG as i64];
+    let whole = chains(&starts, LONG, false).unwrap();
+    let halves = chains(&starts, LONG, true).unwrap();
+    let of = Weighted {
+        w: &w,
+        raw: &w,
+        chains: &whole,
+        halves: &halves,
+    };
+    c.bench_function("study of a weighted mean", |b| {
+        b.iter(|| study(black_box(&f), 0.3, of, &never));
+    });
+    c.bench_function("means of chains", |b| {
+        b.iter(|| chain_means(black_box(&f), 0.3, &w, &whole, &never));
+    });
+    let mut out = vec![0.0; LONG];
+    c.bench_function("normalise and describe", |b| {
+        b.iter(|| weigh(black_box(&f), &mut out, &never));
+    });
+    c.bench_function("extremes", |b| {
+        b.iter(|| extremes(black_box(&f), &never));
+    });
+}
+
+criterion_group!(
+    kernels,
+    reductions,
+    tails,
+    resampling,
+    quantities,
+    series,
+    influence_series
+);
 criterion_main!(kernels);

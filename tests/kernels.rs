@@ -6,6 +6,7 @@
 
 mod kernels {
     mod chain_means;
+    mod chains;
     mod columns;
     mod correlation;
     mod deletion;
@@ -15,6 +16,7 @@ mod kernels {
     mod densities_tails;
     mod effective;
     mod error;
+    mod extremes;
     mod f_tail;
     mod influence;
     mod interval;
@@ -36,6 +38,8 @@ mod kernels {
     mod smooth;
     mod special;
     mod spectrum;
+    mod study;
     mod support;
     mod vector;
+    mod weigh;
 }

@@ -10,14 +10,17 @@ _Numbers: TypeAlias = npt.NDArray[np.float64] | npt.NDArray[np.float32]
 
 __all__ = [
     "beta_tails",
+    "chain_means",
     "contributions",
     "delete",
     "describe",
     "digamma",
     "effective_size",
+    "extremes",
     "f_tail",
     "gamma_tails",
     "influence",
+    "largest",
     "largest_share",
     "ln_gamma",
     "log_beta",
@@ -40,9 +43,12 @@ __all__ = [
     "skew_normal_tails",
     "smooth",
     "sort_order",
+    "study",
     "study_nodes",
     "tail_shape",
     "threads",
+    "variances",
+    "weigh",
     "weighted_covariance",
     "weighted_mean",
     "weighted_moments",
@@ -172,3 +178,25 @@ def multi_sample(
     start: npt.NDArray[np.float64],
     solve: bool,
 ) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64], npt.NDArray[np.float64], float]: ...
+def extremes(x: npt.NDArray[np.float64]) -> tuple[float, float]: ...
+def weigh(
+    x: npt.NDArray[np.float64], out: npt.NDArray[np.float64]
+) -> tuple[float, float, float, float]: ...
+def largest(
+    x: npt.NDArray[np.float64], count: int
+) -> tuple[npt.NDArray[np.int64], float] | None: ...
+def variances(
+    z: npt.NDArray[np.float64], starts: npt.NDArray[np.int64], split: bool
+) -> npt.NDArray[np.float64]: ...
+def chain_means(
+    f: npt.NDArray[np.float64],
+    w: npt.NDArray[np.float64] | None,
+    starts: npt.NDArray[np.int64],
+) -> npt.NDArray[np.float64]: ...
+def study(
+    f: npt.NDArray[np.float64],
+    centre: npt.NDArray[np.float64],
+    w: npt.NDArray[np.float64],
+    raw: npt.NDArray[np.float64],
+    starts: npt.NDArray[np.int64],
+) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64]]: ...

@@ -2,12 +2,15 @@
 
 mod arrays;
 mod deletion;
+mod chain_means;
 mod densities;
 mod effective;
 mod errors;
+mod extremes;
 mod f_tail;
 mod influence;
 mod interval;
+mod largest;
 mod log_sum;
 mod long_run;
 mod mean;
@@ -20,6 +23,8 @@ mod resample;
 mod signed_tail;
 mod smooth;
 mod special;
+mod study;
+mod weigh;
 
 use pyo3::prelude::*;
 
@@ -28,11 +33,15 @@ mod _core {
     #[pymodule_export]
     use super::deletion::delete;
     #[pymodule_export]
+    use super::chain_means::chain_means;
+    #[pymodule_export]
     use super::densities::{
         beta_tails, digamma, gamma_tails, log_beta, log_density, log_normal_cdf, skew_normal_tails,
     };
     #[pymodule_export]
     use super::effective::{describe, effective_size, largest_share};
+    #[pymodule_export]
+    use super::extremes::extremes;
     #[pymodule_export]
     use super::f_tail::f_tail;
     #[pymodule_export]
@@ -40,9 +49,11 @@ mod _core {
     #[pymodule_export]
     use super::interval::shortest_interval;
     #[pymodule_export]
+    use super::largest::largest;
+    #[pymodule_export]
     use super::log_sum::{log_sum_exp, normalise};
     #[pymodule_export]
-    use super::long_run::long_run_variance;
+    use super::long_run::{long_run_variance, variances};
     #[pymodule_export]
     use super::mean::{
         contributions, mean_square, weighted_covariance, weighted_mean, weighted_moments,
@@ -65,4 +76,8 @@ mod _core {
     use super::smooth::{smooth, tail_shape};
     #[pymodule_export]
     use super::special::{ln_gamma, normal_cdf, normal_quantile};
+    #[pymodule_export]
+    use super::study::study;
+    #[pymodule_export]
+    use super::weigh::weigh;
 }

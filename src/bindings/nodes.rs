@@ -6,7 +6,7 @@ use pyo3::prelude::*;
 
 use super::arrays::{matrix, matrix_mut, vector};
 use super::errors::detached;
-use crate::kernels::chain_means::Chains;
+use crate::kernels::chains::Chains;
 use crate::kernels::columns::expect_shape;
 use crate::kernels::error::KernelError;
 use crate::kernels::long_run;

@@ -16,8 +16,7 @@ const FOLLOW: f64 = 0.125;
 pub type Ranked = (f64, u32);
 
 /// The `count` largest of `sign · values` in ascending order, and the next largest value; nothing
-/// unless there are more values than `count`. Equal values rank in input order. Values must not be
-/// NaN.
+/// unless there are more values than `count`. Equal values rank in input order; NaN is passed over.
 pub fn largest(values: &[f64], sign: f64, count: usize) -> Option<(Vec<Ranked>, f64)> {
     let mut finder = Finder::default();
     let cutoff = finder.find(values, sign, count, None)?;
@@ -67,6 +66,9 @@ impl Finder {
         if !enough.contains(&self.ranked.len()) {
             self.collect(values, sign, f64::NEG_INFINITY);
             let found = &mut self.ranked;
+            if found.len() < needed {
+                return None; // NaN is no value that could be ranked
+            }
             let below = found.len() - needed;
             found.select_nth_unstable_by(below, |a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1)));
             found.drain(..below);
@@ -197,6 +199,9 @@ pub fn largest_values(values: &[f64], sign: f64, count: usize) -> Option<(Vec<f6
     let mut found = values_at_least(values, sign, guess(values, sign, needed));
     if found.len() < needed || found.len() > 4 * needed {
         found = values_at_least(values, sign, f64::NEG_INFINITY);
+        if found.len() < needed {
+            return None; // NaN is no value that could be ranked
+        }
     }
     let below = found.len() - needed;
     let (_, &mut cutoff, upper) = found.select_nth_unstable_by(below, f64::total_cmp);

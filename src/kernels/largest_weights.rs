@@ -1,6 +1,6 @@
 //! The largest weights of a node: what they hold, and from how many excursions they stem.
 
-use super::chain_means::Chains;
+use super::chains::Chains;
 use super::largest::largest;
 use super::node_series::weight_moments;
 use super::tail::tail_length;

@@ -4,23 +4,15 @@ use std::ops::Range;
 
 use super::correlation::Spectrum;
 use super::error::KernelError;
-use super::mean::{mean, mean_square};
-use super::ordered::{Interrupt, map_tasks, sum_by};
-use super::vector::dot::lagged;
-use super::vector::{Arithmetic, Work, dispatch};
+use super::ordered::{Interrupt, map_tasks};
+use super::summary::{Entries, Source, Summary, TOGETHER, parts, products};
 
 /// Fewest draws of a chain that is split in two.
-const FEWEST_SPLIT: usize = 8;
+pub(super) const FEWEST_SPLIT: usize = 8;
 
 /// Lags that are formed a few after the other; beyond, all at once. Chains that mix end before;
 /// chains that do not, or that disagree, would go on to the last lag.
 const DIRECT_LAGS: usize = 256;
-
-/// Lags that are formed together.
-const TOGETHER: usize = 4;
-
-/// Draws of a task that forms some lags.
-const TASK: usize = 65_536;
 
 /// Below this mean length chains are units without an inner structure.
 const SHORT: f64 = 4.0;
@@ -78,7 +70,7 @@ fn edges(starts: &[i64], draws: usize) -> Result<Vec<usize>, KernelError> {
 /// unlimited credit (this bound is ours). The between-chain part `B` stays in at every lag.
 ///
 /// Chains of fewer than 4 draws on average are independent units:
-/// `LRV = n̄ M/(M−1) Σ n_m (z̄_m − z̄)² / n`, or [`mean_square`] when there is one. Constant `z` has
+/// `LRV = n̄ M/(M−1) Σ n_m (z̄_m − z̄)² / n`, or the mean square when there is one. Constant `z` has
 /// exactly 0; no draw, NaN or an infinite entry gives NaN.
 ///
 /// From lag 256 on all `a_t` come from one Fourier transform, error about `1e-15 a_0`, so that
@@ -93,40 +85,58 @@ pub fn long_run_variance(
     chains: &[Range<usize>],
     interrupt: &Interrupt<'_>,
 ) -> Result<f64, KernelError> {
-    if z.is_empty() || !is_finite(z) {
+    of_summary(
+        &Summary::new(Source::Given(z), chains, z.len(), interrupt)?,
+        interrupt,
+    )
+}
+
+/// [`long_run_variance`] of a series that has been looked at.
+///
+/// # Errors
+/// As there.
+pub fn of_summary(summary: &Summary<'_>, interrupt: &Interrupt<'_>) -> Result<f64, KernelError> {
+    let looks = &summary.looks;
+    if looks.is_empty() || !looks.iter().all(|look| look.mean.is_finite()) {
         return Ok(f64::NAN);
     }
     interrupt.check()?;
-    let mean_length = z.len() as f64 / chains.len() as f64;
-    let means: Vec<f64> = chains.iter().map(|range| mean(&z[range.clone()])).collect();
-    let between = between(&means, chains, z.len());
+    let mean_length = summary.draws as f64 / summary.chains.len() as f64;
+    let between = summary.between();
     if mean_length >= SHORT {
-        let lags = Lags::new(z, chains, &means);
-        return within_chains(lags, mean_length, between, interrupt);
+        return within_chains(&mut Lags::new(summary), mean_length, between, interrupt);
     }
-    if chains.len() == 1 {
-        return Ok(mean_square(z));
+    if summary.chains.len() == 1 {
+        return Ok(summary.mean_square());
     }
     Ok(mean_length * between)
 }
 
-/// `M/(M−1) Σ n_m (z̄_m − z̄)² / n`; 0 for one chain.
-fn between(means: &[f64], chains: &[Range<usize>], draws: usize) -> f64 {
-    let Some(&first) = means.first().filter(|_| means.len() > 1) else {
-        return 0.0;
-    };
-    let (count, draws) = (chains.len() as f64, draws as f64);
-    let share = |m: usize| chains[m].len() as f64 / draws;
-    // From the first mean on, so that equal means have no spread at all.
-    let overall = first + sum_by(means.len(), |m| share(m) * (means[m] - first));
-    let spread = sum_by(means.len(), |m| {
-        share(m) * (means[m] - overall) * (means[m] - overall)
-    });
-    count / (count - 1.0) * spread
+/// Mean square about the mean, and long-run variance, of the series `z` over `chains`.
+///
+/// # Errors
+/// As [`long_run_variance`].
+pub fn variances(
+    z: &[f64],
+    chains: &[Range<usize>],
+    interrupt: &Interrupt<'_>,
+) -> Result<[f64; 2], KernelError> {
+    let summary = Summary::new(Source::Given(z), chains, z.len(), interrupt)?;
+    Ok([summary.mean_square(), of_summary(&summary, interrupt)?])
+}
+
+/// `min(1, var/LRV)` from [`variances`], in (0, 1]; 1 for a constant and where there is none.
+pub fn efficiency([square, long_run]: [f64; 2]) -> f64 {
+    let ratio = square / long_run;
+    if long_run > 0.0 && ratio.is_finite() && ratio > 0.0 {
+        ratio.min(1.0)
+    } else {
+        1.0
+    }
 }
 
 fn within_chains(
-    mut lags: Lags<'_>,
+    lags: &mut Lags<'_>,
     mean_length: f64,
     between: f64,
     interrupt: &Interrupt<'_>,
@@ -150,46 +160,28 @@ fn within_chains(
         least = gamma.min(least);
         total += least;
     }
-    let floor = variance / (lags.z.len() as f64).max(10.0).log10();
+    let floor = variance / (lags.summary.draws as f64).max(10.0).log10();
     Ok((2.0 * total - variance).max(floor))
-}
-
-fn is_finite(z: &[f64]) -> bool {
-    dispatch(IsFinite(z))
-}
-
-struct IsFinite<'a>(&'a [f64]);
-
-impl Work for IsFinite<'_> {
-    type Output = bool;
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) -> bool {
-        // The largest exponent is that of infinities and NaN.
-        let magnitude = |entry: &f64| entry.to_bits() & (u64::MAX >> 1);
-        let most = self.0.iter().map(magnitude).fold(0, u64::max);
-        most < f64::INFINITY.to_bits()
-    }
 }
 
 /// The autocovariances `a_t` of [`long_run_variance`], formed when they are asked for.
 struct Lags<'a> {
-    z: &'a [f64],
-    chains: &'a [Range<usize>],
-    means: &'a [f64],
+    summary: &'a Summary<'a>,
+    entries: Option<Entries<'a>>,
     longest: usize,
     known: Vec<f64>,
 }
 
 impl<'a> Lags<'a> {
-    fn new(z: &'a [f64], chains: &'a [Range<usize>], means: &'a [f64]) -> Self {
-        let longest = chains.iter().map(Range::len).max().unwrap_or(0);
+    fn new(summary: &'a Summary<'a>) -> Self {
+        let longest = summary.chains.iter().map(Range::len).max().unwrap_or(0);
+        let looks = summary.looks.iter().enumerate();
+        let sums = looks.flat_map(|(m, look)| look.products.iter().map(move |sums| (m, *sums)));
         Self {
-            z,
-            chains,
-            means,
+            summary,
+            entries: None,
             longest,
-            known: Vec::new(),
+            known: weighted(summary, sums).to_vec(),
         }
     }
 
@@ -197,83 +189,80 @@ impl<'a> Lags<'a> {
     fn at(&mut self, lag: usize, interrupt: &Interrupt<'_>) -> Result<f64, KernelError> {
         if lag >= self.known.len() {
             interrupt.check()?;
+            let summary = self.summary;
+            let z = self.entries.get_or_insert_with(|| summary.entries());
             if lag < DIRECT_LAGS {
-                let next = self.next(lag, interrupt)?;
+                let next = next(summary, z, lag, interrupt)?;
                 self.known.extend(next);
             } else {
-                self.known = self.all(interrupt)?;
+                self.known = all(summary, z, self.longest, interrupt)?;
             }
         }
         Ok(self.known[lag])
     }
+}
 
-    /// `a_t` for [`TOGETHER`] lags from `lag` on.
-    fn next(&self, lag: usize, interrupt: &Interrupt<'_>) -> Result<[f64; TOGETHER], KernelError> {
-        let mut tasks = Vec::new();
-        for (m, range) in self.chains.iter().enumerate() {
-            for from in range.clone().step_by(TASK) {
-                tasks.push((m, from..range.end.min(from + TASK)));
-            }
-        }
-        let sums = map_tasks(tasks, interrupt, |(m, part)| {
-            Ok((m, self.products(m, part, lag)))
-        })?;
-        let mut next = [0.0; TOGETHER];
-        for (m, sums) in sums {
-            for (next, sum) in next.iter_mut().zip(sums) {
-                *next += self.weight(m) * sum;
-            }
-        }
-        Ok(next)
-    }
+/// `a_t` for [`TOGETHER`] lags from `lag` on.
+fn next(
+    summary: &Summary<'_>,
+    z: &[f64],
+    lag: usize,
+    interrupt: &Interrupt<'_>,
+) -> Result<[f64; TOGETHER], KernelError> {
+    let chains = summary.chains.iter().enumerate();
+    let tasks: Vec<_> = chains
+        .flat_map(|(m, chain)| parts(chain).map(move |part| (m, part)))
+        .collect();
+    let sums = map_tasks(tasks, interrupt, |(m, part)| {
+        let (chain, centre) = (summary.chains[m].clone(), summary.looks[m].mean);
+        Ok((m, products(z, chain, part, lag, centre)))
+    })?;
+    Ok(weighted(summary, sums))
+}
 
-    /// Sums of products of `part` of chain `m` with what follows it in the chain.
-    fn products(&self, m: usize, part: Range<usize>, lag: usize) -> [f64; TOGETHER] {
-        let (end, centre) = (self.chains[m].end, self.means[m]);
-        // Up to here every draw has a partner at all lags.
-        let whole = part
-            .end
-            .min((end + 1).saturating_sub(lag + TOGETHER))
-            .max(part.start);
-        let mut sums = [0.0; TOGETHER];
-        if whole > part.start {
-            sums = lagged(self.z, part.start, whole, lag, centre);
+/// Sums of products of parts of chains, weighted by `n_m / (n (n_m − 1))`.
+fn weighted<const N: usize>(
+    summary: &Summary<'_>,
+    sums: impl IntoIterator<Item = (usize, [f64; N])>,
+) -> [f64; N] {
+    let mut total = [0.0; N];
+    for (m, sums) in sums {
+        for (total, sum) in total.iter_mut().zip(sums) {
+            *total += weight(summary, m) * sum;
         }
-        for i in whole..part.end {
-            for (t, sum) in sums.iter_mut().enumerate() {
-                if i + lag + t < end {
-                    *sum += (self.z[i] - centre) * (self.z[i + lag + t] - centre);
-                }
-            }
-        }
-        sums
     }
+    total
+}
 
-    /// `n_m / (n (n_m − 1))`; 0 for a chain of one draw.
-    fn weight(&self, m: usize) -> f64 {
-        let (count, length) = (self.z.len() as f64, self.chains[m].len() as f64);
-        if length < 2.0 {
-            return 0.0;
-        }
-        length / (count * (length - 1.0))
+/// `n_m / (n (n_m − 1))`; 0 for a chain of one draw.
+fn weight(summary: &Summary<'_>, m: usize) -> f64 {
+    let (length, count) = (summary.chains[m].len() as f64, summary.draws as f64);
+    if length < 2.0 {
+        return 0.0;
     }
+    length / (count * (length - 1.0))
+}
 
-    /// `a_t` for every lag below the longest chain.
-    fn all(&self, interrupt: &Interrupt<'_>) -> Result<Vec<f64>, KernelError> {
-        let scaled = |m: usize| -> Vec<f64> {
-            let (root, centre) = (self.weight(m).sqrt(), self.means[m]);
-            let chain = &self.z[self.chains[m].clone()];
-            chain.iter().map(|entry| root * (entry - centre)).collect()
-        };
-        let chains: Vec<usize> = (0..self.chains.len()).collect();
-        let mut spectrum = Spectrum::new(self.longest)?;
-        for two in chains.chunks(2) {
-            let first = scaled(two[0]);
-            let second = two.get(1).map(|&m| scaled(m)).unwrap_or_default();
-            spectrum.add(&first, &second, interrupt)?;
-        }
-        let mut all = spectrum.correlations(interrupt)?;
-        all.resize(self.longest + 1, 0.0);
-        Ok(all)
+/// `a_t` for every lag below the longest chain.
+fn all(
+    summary: &Summary<'_>,
+    z: &[f64],
+    longest: usize,
+    interrupt: &Interrupt<'_>,
+) -> Result<Vec<f64>, KernelError> {
+    let scaled = |m: usize| -> Vec<f64> {
+        let (root, centre) = (weight(summary, m).sqrt(), summary.looks[m].mean);
+        let chain = &z[summary.chains[m].clone()];
+        chain.iter().map(|entry| root * (entry - centre)).collect()
+    };
+    let chains: Vec<usize> = (0..summary.chains.len()).collect();
+    let mut spectrum = Spectrum::new(longest)?;
+    for two in chains.chunks(2) {
+        let first = scaled(two[0]);
+        let second = two.get(1).map(|&m| scaled(m)).unwrap_or_default();
+        spectrum.add(&first, &second, interrupt)?;
     }
+    let mut all = spectrum.correlations(interrupt)?;
+    all.resize(longest + 1, 0.0);
+    Ok(all)
 }

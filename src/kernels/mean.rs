@@ -68,19 +68,19 @@ pub fn contributions(z: &[f64]) -> f64 {
         return f64::INFINITY;
     }
     // In units of the largest no power overflows, and that of the largest is 1.
-    let blocks = z.len().div_ceil(BLOCK);
+    let (squares, cubes) = powers(z, centre, 1.0 / top);
+    squares * squares * squares / (cubes * cubes)
+}
+
+/// `Σ c²` and `Σ c³` for `c = (z − centre) · unit`.
+pub(super) fn powers(z: &[f64], centre: f64, unit: f64) -> (f64, f64) {
     let (mut squares, mut cubes) = (0.0, 0.0);
-    for block in 0..blocks {
-        let range = block * BLOCK..z.len().min((block + 1) * BLOCK);
-        let found = dispatch(Cubes {
-            z: &z[range],
-            centre,
-            unit: 1.0 / top,
-        });
+    for z in z.chunks(BLOCK) {
+        let found = dispatch(Cubes { z, centre, unit });
         squares += found.0;
         cubes += found.1;
     }
-    squares * squares * squares / (cubes * cubes)
+    (squares, cubes)
 }
 
 struct Cubes<'a> {
@@ -108,7 +108,7 @@ pub(super) enum Power {
 }
 
 /// `Σ w (f − centre)^power` without the draws of weight 0; without weights each counts once.
-fn sum_blocks(f: &[f64], w: &[f64], centre: f64, power: Power) -> f64 {
+pub(super) fn sum_blocks(f: &[f64], w: &[f64], centre: f64, power: Power) -> f64 {
     let blocks = f.len().div_ceil(BLOCK);
     sum_by(blocks, |block| {
         let range = block * BLOCK..f.len().min((block + 1) * BLOCK);

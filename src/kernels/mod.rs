@@ -5,6 +5,7 @@
 
 mod blocks;
 pub mod chain_means;
+pub mod chains;
 pub mod columns;
 pub mod correlation;
 pub mod cumulated;
@@ -24,6 +25,7 @@ pub mod densities;
 pub mod effective;
 pub mod entry;
 pub mod error;
+pub mod extremes;
 pub mod f_tail;
 pub mod influence;
 pub mod interrupt;
@@ -53,7 +55,12 @@ pub mod smooth;
 pub mod sorting;
 pub mod special;
 pub mod spectrum;
+pub mod study;
+pub mod study_blocks;
+pub mod study_sums;
+pub mod summary;
 pub mod tail;
 pub mod vector;
+pub mod weigh;
 pub mod weight_sums;
 pub mod weight_tiles;

@@ -5,7 +5,7 @@
 
 use std::ops::Range;
 
-use super::chain_means::{Chains, Test};
+use super::chains::{Chains, Test};
 use super::error::KernelError;
 use super::largest_weights::LargestWeights;
 use super::lease::Lease;

@@ -1,4 +1,4 @@
-use _core::kernels::chain_means::Chains;
+use _core::kernels::chains::Chains;
 use _core::kernels::effective::{effective_size, entropy_size, largest_share};
 use _core::kernels::log_sum::log_sum_exp;
 use _core::kernels::long_run::{chains, long_run_variance};

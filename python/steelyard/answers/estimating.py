@@ -15,9 +15,11 @@ from steelyard.answers.estimate import Estimate
 from steelyard.answers.quantities import Quantity
 from steelyard.arrays import in_unit
 from steelyard.base import Base
-from steelyard.base.draws import Array
+from steelyard.base.draws import Array, Draws
 from steelyard.verdicts import Finding, Verdict, judge
 from steelyard.weighing.series import (
+    MANY_CHAINS,
+    agreement,
     chains_p_value,
     contributions_of,
     degrees_of,
@@ -107,6 +109,8 @@ def study(
     draws, ordered = scale.base.draws, scale.base.ordered
     w = scale.weights.linear if weights is None else weights
     r = scale.weights.raw if raw is None else raw
+    if _by_one_kernel(draws, ordered):
+        return _study_at_once(psi, np.zeros(psi.shape[1]), w, r, draws)[0]
     z = draws.size * w[:, None] * psi
     z_raw = draws.size * r[:, None] * psi
     efficiency = relative_efficiency(z_raw, draws, ordered)
@@ -121,11 +125,46 @@ def study(
     )
 
 
+def _by_one_kernel(draws: Draws, ordered: bool) -> bool:
+    return ordered and draws.chains < MANY_CHAINS and draws.pooling is None
+
+
+def _study_at_once(
+    f: Array, centre: Array, w: Array, raw: Array, draws: Draws
+) -> tuple[Series, Array]:
+    """The study of ``f − centre`` by one kernel, which forms no series as an array; ``Σ w ψ²``."""
+    figures, chains = _core.study(f, centre, w, raw, draws.starts)
+    spread, long_run, efficiency, shape, own, carried, top = figures
+    # About the mean under these weights, which is the centre but for rounding.
+    pooled = np.maximum(spread - (chains[0] * np.nan_to_num(chains[1])).sum(axis=0) ** 2, 0.0)
+    carried = np.sqrt(efficiency) * carried
+    series = Series(
+        np.sqrt(long_run / draws.size),
+        shape,
+        agreement(chains, pooled, top, draws.starts),
+        own,
+        carried,
+        degrees_of(carried, efficiency, draws),
+    )
+    return series, spread
+
+
+def _study_about_mean(scale: Scale, f: Array) -> tuple[Array, Series, Array]:
+    """Weighted means of the columns of `f`, their series, and the variance of a draw."""
+    weights, draws = scale.weights, scale.base.draws
+    if _by_one_kernel(draws, scale.base.ordered):
+        mean = _core.weighted_mean(f, weights.linear)
+        series, spread = _study_at_once(f, mean, weights.linear, weights.raw, draws)
+        return mean, series, spread
+    mean, sd = moments(scale, f)
+    return mean, study(scale, f - mean), sd**2
+
+
 def moments(scale: Scale, f: Array, weights: Array | None = None) -> tuple[Array, Array]:
     """Weighted mean and standard deviation of the columns of `f`."""
     w = scale.weights.linear if weights is None else weights
-    mean = _core.weighted_mean(f, w)
-    return mean, np.sqrt(_core.weighted_mean((f - mean) ** 2, w))
+    mean, square = _core.weighted_moments(f, w)
+    return mean, np.sqrt(square)
 
 
 def mean_of(scale: Scale, quantity: Quantity) -> Estimate:
@@ -133,9 +172,8 @@ def mean_of(scale: Scale, quantity: Quantity) -> Estimate:
 
     def work(f: Array) -> tuple[Array, Series, Array]:
         f, unit = in_unit(f)
-        mean, sd = moments(scale, f)
-        series = study(scale, f - mean)
-        return mean * unit, series.times(unit), sd * unit
+        mean, series, spread = _study_about_mean(scale, f)
+        return mean * unit, series.times(unit), np.sqrt(spread) * unit
 
     return _over_columns(scale, quantity, work)
 
@@ -191,7 +229,7 @@ def _over_columns(
     for part, f in column_blocks(columns):
         value[part], series, spread[part] = work(f)
         parts.append(series)
-    return finish(scale, quantity, value, joined(parts), spread)
+    return finish(scale, quantity, value, joined(parts), spread, whole=True)
 
 
 def joined(parts: list[Series]) -> Series:
@@ -221,6 +259,7 @@ def finish(
     lead: tuple[int, ...] = (),
     extra: tuple[Finding, ...] = (),
     lead_labels: Mapping[str, Array | npt.NDArray[Any]] | None = None,
+    whole: bool = False,
     **fields: Any,
 ) -> Estimate:
     """
@@ -228,7 +267,8 @@ def finish(
 
     `spread` is the sd of the influence of one draw; without it effective draws are NaN. Figures
     in `extra` come flat and are shaped here; `lead` are axes in front of the quantity's own, with
-    their labels in `lead_labels` by the names of their dimensions.
+    their labels in `lead_labels` by the names of their dimensions. `whole` says that the series is
+    that of a mean or an sd, not a difference, whose shape is large where two series nearly cancel.
     """
     shape = (*lead, *quantity.shape)
 
@@ -243,7 +283,7 @@ def finish(
         )
     unknown = np.full(value.shape, math.inf)
     carried = unknown if series.contributions is None else series.contributions
-    enough = np.where(series.shape >= WILD, MANY_WILD, MANY)
+    enough = np.where((series.shape >= WILD) & whole, MANY_WILD, MANY)
     own = [
         judge("quantity_shape", series.shape, spoken=~(carried >= enough)),
         judge("few_contributions", carried),

@@ -99,9 +99,10 @@ def _padded(weights: Weights, front: int, back: int) -> Weights:
 
     return replace(
         weights,
-        log=wide(weights.log, -math.inf),
+        total=wide(weights.log, -math.inf),
         linear=wide(weights.linear, 0.0),
         raw=wide(weights.raw, 0.0),
+        is_smoothed=False,
     )
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import re
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field, replace
@@ -15,6 +16,7 @@ from steelyard.arrays import plain_array
 from steelyard.base import Base
 from steelyard.base.draws import Array, element
 from steelyard.base.predictive import refuse_withheld
+from steelyard.base.ratios import extremes_of
 from steelyard.base.shapes import stacked
 from steelyard.errors import ArgumentTypeError, QuantityError
 
@@ -154,6 +156,9 @@ def _named(text: str, base: Base, argument: str) -> Quantity:
 
 
 def _refuse_bad_values(values: Array, base: Base, argument: str) -> None:
+    low, high = extremes_of(values)
+    if -math.inf < low and high < math.inf:
+        return
     bad = np.isnan(values) | np.isinf(values)
     if bad.any():
         rows = np.flatnonzero(bad.reshape(len(values), -1).any(axis=1))

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
@@ -11,6 +12,7 @@ import numpy as np
 
 from steelyard.base.draws import Array, Draws
 from steelyard.base.names import Reference, close_names
+from steelyard.base.ratios import extremes_of
 from steelyard.base.shapes import draw_rows
 from steelyard.densities import Distribution
 from steelyard.errors import ArgumentTypeError, PriorError, UnknownNameError
@@ -83,6 +85,8 @@ class PriorTerm:
             out = density.log_density(value, look_up=draws.look_up)
         else:
             out = _frozen_log_density(density, value, f"prior[{self.label!r}]")
+        if out.ndim == 1:
+            return np.asarray(out)
         flat = out.reshape(draws.size, -1)
         # +inf beside −inf has no sum, and a row with it is reported as +inf.
         unbounded = (flat == np.inf).any(axis=1)
@@ -90,7 +94,12 @@ class PriorTerm:
 
     def log_density_checked(self, draws: Draws) -> Array:
         """The same, refusing NaN and +inf, which no density has at a draw."""
-        out = self.log_density(draws)
+        return self.checked(self.log_density(draws), draws)
+
+    def checked(self, out: Array, draws: Draws) -> Array:
+        """Log densities of the term, unless one is NaN or +inf."""
+        if extremes_of(out)[1] < math.inf:
+            return out
         bad = np.isnan(out) | (out == np.inf)
         if bad.any():
             first = int(np.argmax(bad))

@@ -2,16 +2,26 @@
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 
+from steelyard import _core
 from steelyard.base.draws import Array, Draws
 from steelyard.errors import RatioError
 
-__all__ = ["refuse_bad_ratio"]
+__all__ = ["extremes_of", "refuse_bad_ratio"]
+
+
+def extremes_of(values: Array) -> tuple[float, float]:
+    """Smallest and largest entry of float64 values of any shape; both NaN if any entry is."""
+    return _core.extremes(np.require(values, np.float64, ["C", "A"]).reshape(-1))
 
 
 def refuse_bad_ratio(log_ratio: Array, draws: Draws, argument: str) -> None:
     """NaN and +inf are errors, and so is −inf everywhere."""
+    if math.isfinite(extremes_of(log_ratio)[1]):
+        return
     bad = np.isnan(log_ratio) | (log_ratio == np.inf)
     if bad.any():
         first = int(np.argmax(bad))

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
@@ -12,8 +13,8 @@ import numpy.typing as npt
 
 from steelyard.arrays import Frozen, ReadOnly
 from steelyard.base import Base
-from steelyard.base.draws import Array
-from steelyard.base.ratios import refuse_bad_ratio
+from steelyard.base.draws import Array, Draws
+from steelyard.base.ratios import extremes_of, refuse_bad_ratio
 from steelyard.base.shapes import stacked
 from steelyard.changes.edits import Change
 from steelyard.changes.merging import LoglikTarget, PriorTarget, merge
@@ -66,15 +67,16 @@ def form_target(base: Base, change: Change) -> Target:
     ratios = sorted((_given_ratio(source, base) for source in draft.ratios), key=np.ndarray.tobytes)
     for number, ratio in enumerate(ratios, start=1):
         _put(terms, "log ratio" if number == 1 else f"log ratio {number}", ratio, base)
-    total = np.zeros(base.draws.size)
     # A fixed order of summation: a & b and b & a agree to the last bit.
-    for label in sorted(terms):
+    first, *rest = sorted(terms) or [""]
+    total = terms[first] if first in terms else np.zeros(base.draws.size)
+    for label in rest:
         total = total + terms[label]
     if terms and base.draws.pooling is not None:
         for label, gone in base.draws.pooling.impossible.items():
             if label not in draft.prior or not draft.prior[label].is_swapped:
                 total = np.where(gone, -np.inf, total)
-    if not total.any():
+    if len(terms) != 1 and not total.any():
         terms = {}  # edits that cancel are no change
     return Target(
         draft.prior, draft.loglik, ReadOnly(terms), total, len(draft.ratios), draft.withheld
@@ -91,11 +93,14 @@ def _weighs(base: Base) -> npt.NDArray[np.bool_]:
 def _put(terms: dict[str, Array], label: str, delta: Array | None, base: Base) -> None:
     if delta is None:
         return
-    # A draw without base weight has none in the target either, whatever its ratio.
-    delta = np.where(_weighs(base), delta, 0.0)
-    if not np.any(delta):
+    if base.log_weights is not None:
+        # A draw without base weight has none in the target either, whatever its ratio.
+        delta = np.where(_weighs(base), delta, 0.0)
+    low, high = extremes_of(delta)
+    if low == high == 0:
         return
-    refuse_bad_ratio(delta, base.draws, label)
+    if not math.isfinite(high):
+        refuse_bad_ratio(delta, base.draws, label)
     delta.flags.writeable = False
     terms[label] = delta
 
@@ -104,25 +109,41 @@ def _prior_delta(target: PriorTarget, base: Base) -> Array | None:
     factor = target.factor
     if not target.is_swapped and factor == 1:
         return None
-    old = target.base.log_density_checked(base.draws)
-    new = target.density.log_density_checked(base.draws) if target.is_swapped else old
-    pooling = base.draws.pooling
-    if pooling is not None and target.base.label in pooling.impossible:
+    draws, stated, pooling = base.draws, target.base, base.draws.pooling
+    plain = factor == 1 and pooling is None
+    if plain and stated.is_distribution and target.density.is_distribution:
+        delta = _quick_delta(target, draws)
+        if delta is not None:
+            return delta
+    old = stated.log_density_checked(draws)
+    new = old if not target.is_swapped else None
+    if pooling is not None and stated.label in pooling.impossible:
         # Other fits of the pool may reach where this one does not.
         old = np.where(old == -np.inf, 0.0, old)
     impossible = (old == -np.inf) & _weighs(base)
     if impossible.any():
         first = int(np.argmax(impossible))
         raise RatioError(
-            f"prior: {target.base.label}",
+            f"prior: {stated.label}",
             "draws inside the support of the stated prior",
-            f"log density −inf at {base.draws.where(first)}",
+            f"log density −inf at {draws.where(first)}",
             "The draws did not come from this prior: state the one that was fitted.",
         )
+    if new is None:
+        new = target.density.log_density_checked(draws)
     with np.errstate(invalid="ignore", over="ignore"):
         # To the power 0 a prior is flat on its own support, and still nothing outside of it.
         raised = np.where(new > -np.inf, 0.0, -np.inf) if factor == 0 else factor * new
         return np.asarray(raised - old)
+
+
+def _quick_delta(target: PriorTarget, draws: Draws) -> Array | None:
+    """New minus old log density where every difference is finite, as both are then; else None."""
+    old, new = target.base.log_density(draws), target.density.log_density(draws)
+    with np.errstate(invalid="ignore", over="ignore"):
+        delta = np.subtract(new, old, out=new if new.flags.writeable else None)
+    low, high = extremes_of(delta)
+    return delta if -math.inf < low and high < math.inf else None
 
 
 def _loglik_delta(target: LoglikTarget, base: Base) -> Array | None:

@@ -100,6 +100,7 @@ class Gathered:
             lead=shared.lead,
             extra=extra,
             lead_labels=shared.labels,
+            whole=not self.is_shift and not self.quantity.is_event,
         )
 
 

@@ -9,6 +9,7 @@ from typing import Any
 
 import numpy as np
 
+from steelyard import _core
 from steelyard.arrays import in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
@@ -19,7 +20,7 @@ from steelyard.changes.target import Target
 from steelyard.densities import Distribution, Normal
 from steelyard.densities.tails import Tail
 from steelyard.verdicts import Finding, judge
-from steelyard.weighing.series import relative_efficiency
+from steelyard.weighing.series import variance_and_efficiency
 from steelyard.weighing.supports import support_findings
 from steelyard.weighing.weigh import base_weights
 
@@ -202,21 +203,24 @@ def _root_covariance(values: Array, base: Base) -> tuple[Array | None, Array]:
     """
     weights = base_weights(base)
     values, power = in_unit(values)
-    mean = weights.linear @ values
-    sd = np.sqrt(weights.linear @ (values - mean) ** 2)
-    unit = np.where(sd > 0, sd, 1.0)
     size, count = values.shape[1], weights.effective_size
-    if base.ordered:
-        count *= float(np.median(relative_efficiency(values, base.draws, True)))
-    own = unit * power
+    own, efficiency = variance_and_efficiency(values, base.draws, base.ordered)
+    count *= float(np.median(efficiency))
+    weighted = base.log_weights is not None
+    square = _core.weighted_moments(values, weights.linear)[1] if weighted else own
+    unit = np.where(square > 0, np.sqrt(square), 1.0)
+    natural = unit * power
     with np.errstate(over="ignore", under="ignore"):
-        squares = own**2
+        squares = natural**2
     if size > min(_MOST_PARAMETERS, count / 40) or not (np.isfinite(squares) & (squares > 0)).all():
-        return None, own
-    scaled = (values - mean) / unit
-    eigenvalues, vectors = np.linalg.eigh((scaled * weights.linear[:, None]).T @ scaled)
-    unbiased = 1 - float((weights.linear**2).sum())
-    return vectors * np.sqrt(np.maximum(eigenvalues, 0.0) / unbiased), own
+        return None, natural
+    covariance = np.diag(square)
+    if size > 1:
+        covariance = _core.weighted_covariance(values, weights.linear)
+    covariance = covariance / np.outer(unit, unit)
+    eigenvalues, vectors = np.linalg.eigh(covariance)
+    unbiased = 1 - 1 / weights.effective_size
+    return vectors * np.sqrt(np.maximum(eigenvalues, 0.0) / unbiased), natural
 
 
 def _gamma_or_beta_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:

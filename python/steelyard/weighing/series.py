@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from itertools import pairwise
-
 import numpy as np
 import numpy.typing as npt
 
@@ -14,6 +12,8 @@ from steelyard.base.draws import Array
 from steelyard.base.pooling import Pooling
 
 __all__ = [
+    "MANY_CHAINS",
+    "agreement",
     "carried",
     "chains_p_value",
     "contributions_of",
@@ -22,6 +22,7 @@ __all__ = [
     "relative_efficiency",
     "standard_error",
     "tail_of",
+    "variance_and_efficiency",
 ]
 
 # Shorter chains, or chains of fewer effective draws, know too little of their own errors.
@@ -36,7 +37,7 @@ _DRAWS_A_DEGREE = 40.0
 
 
 # From this many chains on, chains taken as independent units estimate a variance well enough.
-_MANY_CHAINS = 20
+MANY_CHAINS = 20
 
 
 def long_run_variance(z: Array, draws: Draws, ordered: bool) -> Array:
@@ -72,7 +73,7 @@ def _of_chains(
         return _grouped(z - z.mean(axis=0), groups)
     lrv = _core.long_run_variance(z, starts, True)
     size, chains = int(starts[-1]), len(starts) - 1
-    if chains < _MANY_CHAINS:
+    if chains < MANY_CHAINS:
         return lrv
     lengths = np.diff(starts)
     means = np.add.reduceat(z, starts[:-1], axis=0) / lengths[:, None]
@@ -119,13 +120,7 @@ def contributions_of(z: Array, efficiency: Array, draws: Draws, ordered: bool) -
     """
     if draws.pooling is not None:
         z = draws.pooling.centred(z)
-    z = _together(z, draws, ordered)
-    z = z - z.mean(axis=0)
-    top = np.abs(z).max(axis=0)
-    z = z / np.where(top > 0, top, 1.0)
-    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
-        count = (z**2).sum(axis=0) ** 3 / (z**3).sum(axis=0) ** 2
-    return np.asarray(np.where(top == 0, np.inf, np.sqrt(efficiency) * count))
+    return np.asarray(np.sqrt(efficiency) * _core.contributions(_together(z, draws, ordered)))
 
 
 def degrees_of(contributions: Array, efficiency: Array, draws: Draws) -> Array:
@@ -142,13 +137,22 @@ def degrees_of(contributions: Array, efficiency: Array, draws: Draws) -> Array:
 
 def relative_efficiency(z: Array, draws: Draws, ordered: bool) -> Array:
     """``min(1, var/LRV)`` of each column, in (0, 1]; 1 for a constant."""
+    return variance_and_efficiency(z, draws, True)[1] if ordered else np.ones(z.shape[1])
+
+
+def variance_and_efficiency(z: Array, draws: Draws, ordered: bool) -> tuple[Array, Array]:
+    """Variance of each column, every draw counted once, and its `relative_efficiency`."""
     if not ordered:
-        return np.ones(z.shape[1])
-    variance = _core.mean_square(z if draws.pooling is None else draws.pooling.centred(z))
-    lrv = long_run_variance(z, draws, ordered)
+        return _core.mean_square(z), np.ones(z.shape[1])
+    if draws.chains < MANY_CHAINS and draws.pooling is None:
+        variance, lrv = _core.variances(z, draws.starts, True)
+    else:
+        variance = _core.mean_square(z if draws.pooling is None else draws.pooling.centred(z))
+        lrv = long_run_variance(z, draws, ordered)
     with np.errstate(invalid="ignore", divide="ignore"):
         ratio = variance / lrv
-    return np.where((lrv > 0) & np.isfinite(ratio) & (ratio > 0), np.minimum(ratio, 1.0), 1.0)
+    known = (lrv > 0) & np.isfinite(ratio) & (ratio > 0)
+    return variance, np.where(known, np.minimum(ratio, 1.0), 1.0)
 
 
 def standard_error(z: Array, draws: Draws, ordered: bool) -> Array:
@@ -167,9 +171,13 @@ def carried(z: Array, draws: Draws) -> Array:
     return z if draws.pooling is None else draws.pooling.carried(z)
 
 
-def chains_p_value(f: Array, weights: Array, draws: Draws) -> Array:
+def chains_p_value(
+    f: Array, weights: Array | None, draws: Draws, top: Array | None = None
+) -> Array:
     """
     Whether the chains agree about weighted means: p-values, one a column of `f` ``(n, k)``.
+
+    Without weights every draw counts once. `top` is the largest magnitude in `f`, if known.
 
     ``Q = Σ_c (μ_c − μ̄)²/se_c²`` with μ̄ weighted by ``1/se_c²``, in Welch's form, since the
     errors of the chains are estimated: ``Q/(C − 1)``, corrected, against an F distribution whose
@@ -182,8 +190,9 @@ def chains_p_value(f: Array, weights: Array, draws: Draws) -> Array:
     .. [1] Welch (1951), Biometrika 38.
     """
     if draws.pooling is not None:
-        return _of_fits(f, weights, draws, draws.pooling)
-    return _of_one_fit(f, weights, draws.starts)
+        equal = np.full(draws.size, 1 / draws.size) if weights is None else weights
+        return _of_fits(f, equal, draws, draws.pooling)
+    return _of_one_fit(f, weights, draws.starts, top)
 
 
 # Chains of a fit that carries less of the weight than this are not compared.
@@ -203,43 +212,50 @@ def _of_fits(f: Array, weights: Array, draws: Draws, pooling: Pooling) -> Array:
     return np.minimum(compared * least, 1.0) if compared else least
 
 
-def _of_one_fit(f: Array, weights: Array, starts: npt.NDArray[np.int64]) -> Array:
-    if len(starts) < 3 or int(np.diff(starts).min()) < _SHORTEST:
+def _of_one_fit(
+    f: Array, weights: Array | None, starts: npt.NDArray[np.int64], top: Array | None = None
+) -> Array:
+    if not _enough_chains(starts):
         return np.ones(f.shape[1])
-    f, _ = in_unit(f)
-    mean = _core.weighted_mean(f, weights)
-    pooled = _core.weighted_mean((f - mean) ** 2, weights)
+    if top is None:
+        f, _ = in_unit(f)
+        top = np.maximum(f.max(axis=0), -f.min(axis=0))
+    chains = _core.chain_means(f, weights, starts)
+    weighs = chains[0, :, 0] > 0
+    mass, mean, *_, variance = chains[:, weighs]
+    share = mass / mass.sum(axis=0)
+    overall = (share * mean).sum(axis=0)
+    pooled = (share * (variance + (mean - overall) ** 2)).sum(axis=0)
+    return agreement(chains, pooled, top, starts)
+
+
+def agreement(chains: Array, pooled: Array, top: Array, starts: npt.NDArray[np.int64]) -> Array:
+    """
+    P-values of `chains_p_value` from figures of the chains.
+
+    `chains` is what the kernel `chain_means` tells, ``(5, chains, k)``; `pooled` the variance of
+    a draw, and `top` the largest magnitude, ``(k,)``.
+    """
+    if not _enough_chains(starts):
+        return np.ones(len(pooled))
+    weighs = chains[0, :, 0] > 0
+    if weighs.sum() < 2:
+        return np.ones(len(pooled))
+    _, mu, lrv, squares, _ = chains[:, weighs]
+    count = np.diff(starts)[weighs, None].astype(np.float64)
     # Differences in the last digits are rounding, not chains that disagree.
-    rounding = (1e-10 * np.abs(f).max(axis=0)) ** 2
-    found = [
-        _one_chain(f[start:stop], weights[start:stop], pooled, rounding)
-        for start, stop in pairwise(starts.tolist())
-        if weights[start:stop].sum() > 0
-    ]
-    if len(found) < 2:
-        return np.ones(f.shape[1])
-    mu, precision, freedom = (np.array(part) for part in zip(*found, strict=True))
+    variance = np.maximum(lrv / count, np.maximum(pooled * squares, (1e-10 * top) ** 2))
+    # A variance whose reciprocal would overflow is none.
+    known = variance > 1e-290
+    safe = np.where(known, variance, 1.0)
+    precision = np.where(known, 1 / safe, 0.0)
+    freedom = np.maximum(np.where(known, pooled / safe, count) / _FREEDOM, 1.0)
     enough = np.median(freedom, axis=0) * _FREEDOM >= _FEWEST
     return np.where(enough, _welch(mu, precision, freedom), 1.0)
 
 
-def _one_chain(
-    f: Array, weights: Array, pooled: Array, rounding: Array
-) -> tuple[Array, Array, Array]:
-    """Mean, ``1/se²`` and degrees of freedom of one chain."""
-    w = weights / weights.sum()
-    mu = _core.weighted_mean(f, w)
-    count = len(w)
-    z = np.where(w[:, None] > 0, count * w[:, None] * (f - mu), 0.0)
-    lrv = _core.long_run_variance(z, np.array([0, count], dtype=np.int64), True)
-    least = np.maximum(pooled * float((w**2).sum()), rounding)
-    variance = np.maximum(lrv / count, least)
-    # A variance whose reciprocal would overflow is none.
-    known = variance > 1e-290
-    precision = np.where(known, 1 / np.where(known, variance, 1.0), 0.0)
-    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
-        effective = np.where(variance > 0, pooled / variance, float(count))
-    return mu, precision, np.maximum(effective / _FREEDOM, 1.0)
+def _enough_chains(starts: npt.NDArray[np.int64]) -> bool:
+    return len(starts) > 2 and int(np.diff(starts).min()) >= _SHORTEST
 
 
 def _welch(mu: Array, precision: Array, freedom: Array) -> Array:

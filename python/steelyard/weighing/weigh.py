@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
 from steelyard import _core
-from steelyard.arrays import Frozen
+from steelyard.arrays import Frozen, frozen
 from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.base.ratios import refuse_bad_ratio
@@ -24,10 +25,10 @@ class Weights(Frozen):
 
     Attributes
     ----------
-    log : numpy.ndarray
-        Smoothed, normalised log weights ``(n,)``, base weights included.
+    total : numpy.ndarray
+        Log weights up to a constant, before smoothing, base weights included, ``(n,)``.
     linear : numpy.ndarray
-        Their exponentials.
+        Smoothed, normalised weights.
     raw : numpy.ndarray
         Normalised weights before smoothing, ``(n,)``.
     log_mean_ratio : float
@@ -36,9 +37,15 @@ class Weights(Frozen):
         Tail shape of the raw weights.
     effective_size, entropy_size, largest_share : float
         Of the smoothed weights.
+    raw_size : float
+        Effective size of the raw weights.
+    efficiency : float
+        Relative efficiency of the draws for the raw weights.
+    is_smoothed : bool
+        Whether the largest weights were smoothed.
     """
 
-    log: Array
+    total: Array
     linear: Array
     raw: Array
     log_mean_ratio: float
@@ -46,6 +53,20 @@ class Weights(Frozen):
     effective_size: float
     entropy_size: float
     largest_share: float
+    raw_size: float
+    efficiency: float
+    is_smoothed: bool
+
+    @cached_property
+    def log(self) -> Array:
+        """Smoothed, normalised log weights, base weights included, ``(n,)``."""
+        column = np.ascontiguousarray(self.total)[:, None]
+        out = np.empty(column.shape)
+        if self.is_smoothed:
+            _core.smooth(column, np.array([self.efficiency]), out)
+        else:
+            _core.normalise(column, out)
+        return frozen(out[:, 0])
 
 
 def base_weights(base: Base) -> Weights:
@@ -56,12 +77,45 @@ def base_weights(base: Base) -> Weights:
     """
     draws, given = base.draws, base.log_weights
     if given is None:
-        return _describe(np.zeros(draws.size), np.zeros(draws.size), draws, -math.inf, 0.0)
+        return _equal(draws.size)
     if base.is_approximate:
         return weigh_ratio(given, None, draws, ordered=base.ordered)
-    efficiency = relative_efficiency(np.exp(given - given.max())[:, None], draws, base.ordered)
-    shape = float(_core.tail_shape(np.ascontiguousarray(given)[:, None], efficiency)[0])
-    return _describe(given, given, draws, shape, 0.0)
+    raw, figures = _raw_weights(given)
+    efficiency = float(relative_efficiency(raw[:, None], draws, base.ordered)[0])
+    column = np.ascontiguousarray(given)[:, None]
+    shape = float(_core.tail_shape(column, np.array([efficiency]))[0])
+    _, size, entropy, largest = figures
+    return Weights(
+        given, raw, raw, 0.0, shape, size, entropy, largest, size, efficiency, is_smoothed=False
+    )
+
+
+def _raw_weights(total: Array) -> tuple[Array, tuple[float, ...]]:
+    """Normalised weights before smoothing, and log-sum-exp, both sizes and largest share."""
+    raw = np.empty(total.shape)
+    figures = _core.weigh(total, raw)
+    with np.errstate(over="ignore"):  # −inf is then what is meant
+        np.exp(raw, out=raw)
+    return raw, figures
+
+
+def _equal(count: int) -> Weights:
+    # Arrays of one repeated number, which take no memory.
+    equal = np.exp(np.array([-math.log(count)]))
+    entropy = math.exp(math.log(count))
+    return Weights(
+        np.broadcast_to(np.zeros(1), (count,)),
+        np.broadcast_to(equal, (count,)),
+        np.broadcast_to(equal, (count,)),
+        0.0,
+        -math.inf,
+        float(count),
+        entropy,
+        1 / count,
+        float(count),
+        1.0,
+        is_smoothed=False,
+    )
 
 
 def weigh_ratio(
@@ -96,33 +150,32 @@ def weigh_ratio(
     Weights
         The weights.
     """
-    refuse_bad_ratio(log_ratio, draws, "log ratio")
     total = log_ratio if log_weights is None else log_ratio + log_weights
-    refuse_bad_ratio(total, draws, "log ratio with base weights")
+    raw, figures = _raw_weights(total)
+    log_sum, raw_size, *_ = figures
+    if log_weights is not None or not math.isfinite(log_sum):
+        refuse_bad_ratio(log_ratio, draws, "log ratio")
+        refuse_bad_ratio(total, draws, "log ratio with base weights")
     base = log_weights if base_weights is None else base_weights
     base_sum = math.log(draws.size) if base is None else float(_core.log_sum_exp(base[:, None])[0])
-    log_mean = float(_core.log_sum_exp(total[:, None])[0]) - base_sum
-    with np.errstate(over="ignore"):  # −inf is then what is meant
-        raw = np.exp(total - total.max())
     efficiency = relative_efficiency(raw[:, None], draws, ordered)
-    out = np.empty((draws.size, 1))
-    shape = float(_core.smooth(np.ascontiguousarray(total)[:, None], efficiency, out)[0])
-    return _describe(out[:, 0] if smooth else total, total, draws, shape, log_mean)
-
-
-def _describe(log: Array, total: Array, draws: Draws, shape: float, log_mean: float) -> Weights:
-    column = np.empty((draws.size, 1))
-    _core.normalise(np.ascontiguousarray(log)[:, None], column)
-    raw = np.empty((draws.size, 1))
-    _core.normalise(np.ascontiguousarray(total)[:, None], raw)
-    linear = np.exp(column[:, 0])
+    linear = np.empty(draws.size)
+    column = np.ascontiguousarray(total)[:, None]
+    shape = float(_core.smooth(column, efficiency, linear[:, None])[0])
+    if smooth:
+        figures = tuple(_core.describe(linear[:, None])[:, 0].tolist())
+        np.exp(linear, out=linear)
+    _, size, entropy, largest = figures
     return Weights(
-        column[:, 0],
-        linear,
-        np.exp(raw[:, 0]),
-        log_mean,
+        frozen(total),
+        linear if smooth else raw,
+        raw,
+        log_sum - base_sum,
         shape,
-        float(_core.effective_size(column, False)[0]),
-        float(_core.effective_size(column, True)[0]),
-        float(_core.largest_share(column)[0]),
+        size,
+        entropy,
+        largest,
+        raw_size,
+        float(efficiency[0]),
+        is_smoothed=bool(smooth),
     )
