@@ -179,6 +179,24 @@ impl Work for Below<'_> {
 }
 
 impl Sorted<'_> {
+    /// Lane after lane, equal values sharing a step.
+    fn one_by_one(
+        &self,
+        weights: &Weights,
+        probs: &[f64],
+        mut write: impl FnMut(usize, usize, f64),
+    ) {
+        let mut out = vec![0.0; probs.len()];
+        for lane in 0..LANES {
+            let w = weights.lane(lane);
+            let levels = probs.iter().copied();
+            quantile(self.x, &w, Some(self.order), levels, &mut out);
+            for (level, &value) in out.iter().enumerate() {
+                write(lane, level, value);
+            }
+        }
+    }
+
     fn quantiles(
         &self,
         weights: &Weights,
@@ -187,15 +205,7 @@ impl Sorted<'_> {
         mut write: impl FnMut(usize, usize, f64),
     ) {
         if !self.distinct {
-            let mut out = vec![0.0; probs.len()];
-            for lane in 0..LANES {
-                let w = weights.lane(lane);
-                let levels = probs.iter().copied();
-                quantile(self.x, &w, Some(self.order), levels, &mut out);
-                for (level, &value) in out.iter().enumerate() {
-                    write(lane, level, value);
-                }
-            }
+            self.one_by_one(weights, probs, write);
             return;
         }
         let totals = sums.last().copied().unwrap_or([0.0; LANES]);

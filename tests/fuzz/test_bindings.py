@@ -165,3 +165,12 @@ def test_a_layout_changes_no_bit(x: np.ndarray) -> None:
             return
         assert found.tobytes() == kernel(plain).tobytes(), name
         assert found.tobytes() == kernel(np.asfortranarray(plain)).tobytes(), name
+
+
+@pytest.mark.parametrize("shape", [(5, 0), (0, 5), (0, 0)])
+@pytest.mark.parametrize("order", ["C", "F"])
+def test_an_array_without_entries_does_not_overlap_itself(
+    shape: tuple[int, int], order: Any
+) -> None:
+    out = np.zeros(shape, order=order)
+    assert _core.normalise(np.zeros(shape), out).shape == (shape[1],)
