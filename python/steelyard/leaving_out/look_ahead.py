@@ -91,7 +91,8 @@ def _run(
         held = -np.concatenate([added[:, None], before[:, :-1]], axis=1)
         ahead = np.lib.stride_tricks.sliding_window_view(values, steps, axis=1).sum(axis=2)
         figures, series = delete_columns(setting, held, ahead)
-        asks = ranks_of(_verdict(figures, base), figures.score.shape) <= bad
+        verdict = _verdict(figures, base, last - from_)
+        asks = ranks_of(verdict, figures.score.shape) <= bad
         if first_due is None and asks.any():
             first_due = start + int(np.argmax(asks))
         if refit is not None and first_due is not None and first_due > begin:
@@ -108,9 +109,9 @@ def _run(
     return totals, last if first_due is None else first_due, first_due is not None
 
 
-def _verdict(found: Deleted, base: Base) -> Verdict:
+def _verdict(found: Deleted, base: Base, tests: int) -> Verdict:
     shape = found.score.shape
-    return Verdict(group_findings(found, base.draws.size, shape), shape)
+    return Verdict(group_findings(found, base.draws.size, shape, tests), shape)
 
 
 def _result(
@@ -123,7 +124,7 @@ def _result(
     is_forecast: bool,
 ) -> LookAhead:
     points = np.arange(from_, from_ + len(found.score))
-    verdict = _verdict(found, base)
+    verdict = _verdict(found, base, len(found.score))
     ranks = ranks_of(verdict, found.score.shape)
     by_point = Estimate(
         found.score,
