@@ -137,14 +137,7 @@ def _result(
         dims=("point",),
         labels={"point": points},
     )
-    joint = Series(
-        math.hypot(*(run.error for run in runs), float(found.unseen.sum())),
-        max(run.tail_shape for run in runs),
-        min(run.p_value for run in runs),
-        min(run.effective_draws for run in runs),
-        min(run.contributions for run in runs),
-        min(run.degrees for run in runs),
-    )
+    joint = _joint(runs, float(found.unseen.sum()))
     findings = [judge("base_unverified"), *level_counts(ranks, "points ahead")]
     total = of_total(float(found.score.sum()), joint, findings, f"log score {steps} ahead")
     end = from_ + len(points)
@@ -158,6 +151,18 @@ def _result(
         needed,
         is_forecast and bool(due),
         found.effective_size,
+    )
+
+
+def _joint(runs: list[Series], unseen: float) -> Series:
+    """What the sum over all runs shows: its error adds up, the rest is that of the worst."""
+    return Series(
+        math.hypot(*(run.error for run in runs), unseen),
+        max(run.tail_shape for run in runs),
+        min(run.p_value for run in runs),
+        min(run.effective_draws for run in runs),
+        min(run.contributions for run in runs),
+        min(run.degrees for run in runs),
     )
 
 
