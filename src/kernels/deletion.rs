@@ -23,8 +23,10 @@ use super::ordered::{Interrupt, map_tasks};
 /// depend on how many threads there are.
 const COLUMNS: usize = 128;
 
-/// Columns of a task that are gathered together.
+/// Columns of a task that are gathered together; more where there are quantities, whose powers are
+/// read once for all of them.
 const TOGETHER: usize = 32;
+const WITH_QUANTITIES: usize = 64;
 
 /// Most entries of a task's buffer, 32 MiB, unless a single column is longer.
 const BUFFER: usize = 4 << 20;
@@ -171,7 +173,12 @@ fn one_task<E: Entry>(
     let mut work = ColumnWork::new(shared, !panels.is_empty());
     let mut figures = Vec::with_capacity(range.len());
     let mut shifts = Shifts::none(panels);
-    let together = (BUFFER / draws.max(1)).clamp(1, TOGETHER);
+    let most = if panels.is_empty() {
+        TOGETHER
+    } else {
+        WITH_QUANTITIES
+    };
+    let together = (BUFFER / draws.max(1)).clamp(1, most);
     for start in range.clone().step_by(together) {
         let block = start..range.end.min(start + together);
         let mut buffer = gathered(held, block.clone(), interrupt)?;

@@ -45,8 +45,7 @@ def _twin(setting: Setting, held: Array, scored: Array) -> dict[str, Array]:
     density = np.exp(scored - score)
     z = n * w * (density - 1)
     of_raw = v if held is scored else share * np.exp(scored - _log_mean(scored, share))
-    f = setting.quantities
-    shift = w.T @ f
+    f, shift = setting.quantities, w.T @ setting.quantities
     series = np.empty((held.shape[1], f.shape[1]))
     for i, m in enumerate(shift):
         own = w[:, i, None] * (f - m) - v * f - v * m * (f**2 - 1) / 2
@@ -55,7 +54,7 @@ def _twin(setting: Setting, held: Array, scored: Array) -> dict[str, Array]:
     if ordered:
         chains = chains_p_value(raw, np.full(n, 1 / n), draws)
     carried = contributions_of(z, efficiency, draws, ordered)
-    inside = _log_mean(scored, v * np.ones_like(w))
+    inside = _log_mean(scored, v)
     return {
         "score": score,
         "in_sample": inside,

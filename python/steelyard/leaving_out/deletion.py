@@ -267,8 +267,15 @@ def log_ratio_of(setting: Setting, held: Array) -> Array:
     return total
 
 
-def group_findings(found: Deleted, draws: int, shape: tuple[int, ...]) -> list[Finding]:
-    """What the weights of every group say about trust, in the shape of the groups."""
+def group_findings(
+    found: Deleted, draws: int, shape: tuple[int, ...], tests: int | None = None
+) -> list[Finding]:
+    """
+    What the weights of every group say about trust, in the shape of the groups.
+
+    `tests` is how many groups are judged in all, where `found` holds only some of them.
+    """
+    tests = found.score.size if tests is None else tests
 
     def shaped(figure: Array) -> Array:
         return figure.reshape(shape)
@@ -282,5 +289,5 @@ def group_findings(found: Deleted, draws: int, shape: tuple[int, ...]) -> list[F
         judge("few_carry", shaped(found.largest_share)),
         judge("saturated_divergence", shaped(divergence)),
         # As many tests as groups: p-values are held against limits as those of one.
-        judge("chain_share", shaped(np.minimum(found.chain_share * found.score.size, 1.0))),
+        judge("chain_share", shaped(np.minimum(found.chain_share * tests, 1.0))),
     ]

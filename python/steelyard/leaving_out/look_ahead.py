@@ -91,7 +91,8 @@ def _run(
         held = -np.concatenate([added[:, None], before[:, :-1]], axis=1)
         ahead = np.lib.stride_tricks.sliding_window_view(values, steps, axis=1).sum(axis=2)
         figures, series = delete_columns(setting, held, ahead)
-        asks = ranks_of(_verdict(figures, base), figures.score.shape) <= bad
+        verdict = _verdict(figures, base, last - from_)
+        asks = ranks_of(verdict, figures.score.shape) <= bad
         if first_due is None and asks.any():
             first_due = start + int(np.argmax(asks))
         if refit is not None and first_due is not None and first_due > begin:
@@ -108,9 +109,9 @@ def _run(
     return totals, last if first_due is None else first_due, first_due is not None
 
 
-def _verdict(found: Deleted, base: Base) -> Verdict:
+def _verdict(found: Deleted, base: Base, tests: int) -> Verdict:
     shape = found.score.shape
-    return Verdict(group_findings(found, base.draws.size, shape), shape)
+    return Verdict(group_findings(found, base.draws.size, shape, tests), shape)
 
 
 def _result(
@@ -123,7 +124,7 @@ def _result(
     is_forecast: bool,
 ) -> LookAhead:
     points = np.arange(from_, from_ + len(found.score))
-    verdict = _verdict(found, base)
+    verdict = _verdict(found, base, len(found.score))
     ranks = ranks_of(verdict, found.score.shape)
     by_point = Estimate(
         found.score,
@@ -136,14 +137,7 @@ def _result(
         dims=("point",),
         labels={"point": points},
     )
-    joint = Series(
-        math.hypot(*(run.error for run in runs), float(found.unseen.sum())),
-        max(run.tail_shape for run in runs),
-        min(run.p_value for run in runs),
-        min(run.effective_draws for run in runs),
-        min(run.contributions for run in runs),
-        min(run.degrees for run in runs),
-    )
+    joint = _joint(runs, float(found.unseen.sum()))
     findings = [judge("base_unverified"), *level_counts(ranks, "points ahead")]
     total = of_total(float(found.score.sum()), joint, findings, f"log score {steps} ahead")
     end = from_ + len(points)
@@ -157,6 +151,18 @@ def _result(
         needed,
         is_forecast and bool(due),
         found.effective_size,
+    )
+
+
+def _joint(runs: list[Series], unseen: float) -> Series:
+    """What the sum over all runs shows: its error adds up, the rest is that of the worst."""
+    return Series(
+        math.hypot(*(run.error for run in runs), unseen),
+        max(run.tail_shape for run in runs),
+        min(run.p_value for run in runs),
+        min(run.effective_draws for run in runs),
+        min(run.contributions for run in runs),
+        min(run.degrees for run in runs),
     )
 
 
