@@ -106,3 +106,26 @@ def test_what_is_no_toml_and_what_has_no_scenario_is_refused() -> None:
         read_plan('steelyard_plan = 1\ndecision = 3\n[[scenario]]\nname = "a"\ndrop = "b"\n')
     with pytest.raises(UnknownNameError, match="line 4"):
         read_plan('steelyard_plan = 1\n[[scenario]]\nname = "a"\ndorp = "b"\n')
+
+
+STATED = """steelyard_plan = 1
+[prior]
+tau = { HalfNormal = { scale = 0.05 } }
+"mu,nu" = { MultivariateNormal = { mean = [0, 0], covariance = [[1, 0], [0, 1]] } }
+[[scenario]]
+name = "a"
+swap_prior = { tau = { HalfNormal = { scale = 0.1 } } }
+power = { prior = { "mu, nu" = 0.5 } }
+"""
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "line"),
+    [("swap_prior = { tau", "swap_prior = { tua", 7), ('"mu, nu" = 0.5', "tua = 0.5", 8)],
+)
+def test_a_term_that_the_files_own_prior_lacks_is_told_with_its_line(
+    old: str, new: str, line: int
+) -> None:
+    assert len(read_plan(STATED).plan.scenarios) == 1
+    with pytest.raises(UnknownNameError, match=f"plan, line {line}: tua.*'tau'"):
+        read_plan(STATED.replace(old, new))

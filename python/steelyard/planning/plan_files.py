@@ -105,6 +105,8 @@ class _Reader:
             i for i, line in enumerate(self.lines) if re.match(r"\s*\[\[\s*scenario\s*\]\]", line)
         ]
         self.within = (0, len(self.lines))
+        # Prior terms that the file states; none where the fit states them.
+        self.stated: tuple[str, ...] = ()
 
     def read(self) -> PlanFile:
         self.keys(self.content, _TOP)
@@ -119,6 +121,7 @@ class _Reader:
         decision = self.table(self.content.get("decision", {}), "decision")
         self.keys(decision, _DECISION)
         prior = self.priors(self.content.get("prior", {}), "prior")
+        self.stated = tuple(prior)
         listed = self.content.get("scenario", [])
         if not isinstance(listed, list) or not listed:
             self.refuse("scenario", "at least one [[scenario]]", "none", "State what is asked.")
@@ -160,6 +163,7 @@ class _Reader:
 
     def part(self, key: str, value: Any) -> Change:
         if key == "swap_prior":
+            self.terms(value)
             return self.guarded(key, lambda: swap_prior(self.priors(value, key)))
         if key == "drop":
             names = [value] if isinstance(value, str) else value
@@ -169,6 +173,7 @@ class _Reader:
         table = self.table(value, key)
         if key == "power":
             self.keys(table, _POWER)
+            self.terms(table.get("prior"))
             return self.guarded(key, lambda: power(**table))
         if key == "weigh_data":
             return self.guarded(key, lambda: weigh_data(table))
@@ -177,6 +182,13 @@ class _Reader:
         if missing:
             self.refuse(key, f"{', '.join(_NOISE)}", f"no {missing[0]}", "State all three.")
         return self.guarded(key, lambda: raise_noise(**table))
+
+    def terms(self, named: Any) -> None:
+        """Refuse prior terms that the file's own prior does not state."""
+        stated = {re.sub(r"\s*,\s*", ", ", name) for name in self.stated}
+        for name in named if isinstance(named, dict) and stated else ():
+            if re.sub(r"\s*,\s*", ", ", name) not in stated:
+                self.unknown(name, "a term stated under [prior]", self.stated)
 
     def priors(self, content: Any, key: str) -> dict[Any, Any]:
         table = self.table(content, key)
