@@ -289,3 +289,35 @@ def test_the_plot_shows_every_rung() -> None:
     assert [t.get_text() for t in ax.get_yticklabels()] == ["smoothing", "moment matching"]
     assert len(ax.patches) == 2
     pyplot.close("all")
+
+
+def test_a_target_beyond_the_support_of_the_base_is_reached_from_its_own_prior() -> None:
+    """Half-normal to normal: no weight can do it, and no map."""
+    readings = np.random.default_rng(3).normal(-0.05, 0.3, size=12)
+    rng = np.random.default_rng(SEED)
+
+    def loglik(d: Draws) -> Array:
+        return np.asarray(-0.5 * ((readings - d["bias"][:, None]) / 0.3) ** 2)
+
+    precision = 12 / 0.09 + 1 / 0.15**2
+    mean = readings.sum() / 0.09 / precision
+    # The base posterior is the normal one cut off at 0.
+    whole = rng.normal(mean, precision**-0.5, size=40_000)
+    bias = whole[whole > 0][:4000].reshape(4, 1000)
+    fit = sy.Fit({"bias": bias}, {"bias": sy.HalfNormal(0.15)}, loglik)
+    answer = fit.repair(sy.swap_prior(bias=sy.Normal(0, 0.15)), rng=2)
+    assert [r.name for r in answer.ladder] == ["smoothing", "moment matching", "tempering"]
+    assert answer.ladder["moment matching"].evaluations == 0
+    assert answer.verdict.is_sound
+    for estimate, truth in (
+        (answer.mean("bias"), mean),
+        (answer.sd("bias"), precision**-0.5),
+        (answer.shift("bias"), mean - bias.mean()),
+    ):
+        assert estimate.verdict.is_sound
+        assert abs(estimate.value - truth) <= 4 * estimate.error
+    with pytest.raises(ChangeError, match="log_evidence_ratio"):
+        _ = answer.log_evidence_ratio
+    # A flat prior cannot be drawn from.
+    change = sy.swap_prior(bias=sy.Flat())
+    assert "not possible" in fit.repair(change).ladder["tempering"].stopped

@@ -76,6 +76,11 @@ class Climb:
         made.spent = self.purse.spent
         return made
 
+    @property
+    def has_gap(self) -> bool:
+        """Whether the target reaches beyond the base's support."""
+        return any(finding.code == "support_gap" for finding in self.plain._findings)
+
     @cached_property
     def start(self) -> Array:
         """Coordinates of the base draws; an error names one that has none."""

@@ -13,7 +13,7 @@ from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.base.shapes import stacked
 from steelyard.changes import Change
-from steelyard.changes.merging import LoglikTarget, PriorTarget, merge
+from steelyard.changes.merging import Draft, LoglikTarget, PriorTarget, merge
 from steelyard.errors import DrawsError, RatioError, ShapeError
 from steelyard.repair.fixed import refuse_fixed, values_at
 from steelyard.repair.space import Points, Space, space_of
@@ -56,6 +56,8 @@ class Evaluator:
         The unconstrained space.
     spent : Spent
         Points and batches evaluated so far. A point at which both densities are found counts once.
+    from_prior : bool
+        Whether the prior of the target stands in the place of the base.
 
     Notes
     -----
@@ -66,6 +68,7 @@ class Evaluator:
     change: Change
     space: Space
     spent: Spent = field(default_factory=Spent)
+    from_prior: bool = False
 
     def __post_init__(self) -> None:
         self._draft = merge(self.record, self.change)
@@ -133,7 +136,9 @@ class Evaluator:
         self.spent.batches += 1
         with _naming_what_is_lost(self.record):
             base, target = self._priors(draws)
+            prior = target.copy()
             self._likelihoods(draws, base, target)
+            base = prior if self.from_prior else base
             for source in self._draft.ratios:
                 target += _ratio(source, draws)
         return base + log_jacobian, target + log_jacobian
@@ -186,6 +191,11 @@ class Evaluator:
         names = () if draws is None else draws.chain_names
         made = Draws(points.values_by_name, starts, chain_axis, points.dims, points.labels, names)
         return at_draws(self.record, made)
+
+    @property
+    def draft(self) -> Draft:
+        """The change, merged into the target."""
+        return self._draft
 
     def _priors(self, draws: Points) -> tuple[Array, Array]:
         base, target = np.zeros(draws.size), np.zeros(draws.size)

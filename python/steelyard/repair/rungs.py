@@ -22,9 +22,11 @@ from steelyard.errors import (
     SteelyardError,
 )
 from steelyard.repair.collapsing import collapse, collapse_plan
-from steelyard.repair.evaluating import at_draws
+from steelyard.repair.evaluating import Evaluator, at_draws
 from steelyard.repair.matching import match_moments, probe_plain
 from steelyard.repair.pooling import pool_records
+from steelyard.repair.prior_start import prior_draws, target_prior
+from steelyard.repair.space import space_of
 from steelyard.repair.tempered import Tempered
 from steelyard.repair.tempering import temper
 from steelyard.verdicts import Finding, judge
@@ -102,6 +104,8 @@ def smoothing_cost(climb: Climb) -> int:
 
 def moment_matching(climb: Climb) -> Outcome:
     """The draws moved by affine maps."""
+    if climb.has_gap:
+        return Outcome(None, "no map of the base's draws leaves its support")
     evaluator = climb.evaluator
     matched = match_moments(climb.record, climb.start, evaluator.both, climb.purse)
     if matched is None:
@@ -159,17 +163,24 @@ _EFFICIENCIES = (0.9, 0.97)
 
 def tempering(climb: Climb) -> Outcome:
     """The draws moved by temperatures."""
-    record, evaluator, purse = climb.record, climb.evaluator, climb.purse
+    record, purse = climb.record, climb.purse
+    try:
+        evaluator = _beyond(climb) if climb.has_gap else climb.evaluator
+    except PriorError as error:
+        if climb.is_explicit:
+            raise
+        return Outcome(None, not_possible(error))
     particles = max(record.draws.size, _LEAST_PARTICLES)
     if not purse.allows(particles):
         return Outcome(None)
-    run = _run(climb, _EFFICIENCIES[0], particles)
+    run = _run(climb, evaluator, _EFFICIENCIES[0], particles)
     if run.finished and not run.verdict.is_sound and purse.allows(particles):
         # Once more with temperatures that lie closer; the better run counts.
-        again = _run(climb, _EFFICIENCIES[1], particles)
+        again = _run(climb, evaluator, _EFFICIENCIES[1], particles)
         run = again if again.finished and again.verdict.level > run.verdict.level else run
     answer = run.answer()
-    how = f"tempered over {len(run.history)} temperatures in {run.islands} islands"
+    start = " from the target's prior" if climb.has_gap else ""
+    how = f"tempered{start} over {len(run.history)} temperatures in {run.islands} islands"
     moved = replace(evaluator.at(run.points, run.draws), ordered=True)
     made = moved_answer(
         climb,
@@ -179,7 +190,7 @@ def tempering(climb: Climb) -> Outcome:
         how,
         answer._findings,
         is_paired=False,
-        log_constant=run.bridged_constant if run.finished else run.log_constant,
+        log_constant=None if climb.has_gap else _constant(run),
     )
     said = "" if run.finished else INTERRUPTED if run.stopped == "Ctrl-C" else EMPTY
     return Outcome(made, said)
@@ -209,14 +220,31 @@ def _record_of(fit: Any) -> Base:
     return record
 
 
-def _run(climb: Climb, efficiency: float, particles: int) -> Tempered:
+def _constant(run: Tempered) -> Estimate:
+    return run.bridged_constant if run.finished else run.log_constant
+
+
+def _beyond(climb: Climb) -> Evaluator:
+    """Prior and target of a target that reaches beyond the base's support, in its own space."""
+    draft = climb.evaluator.draft
+    terms = target_prior(climb.record, draft)
+    space = space_of(climb.record, terms, climb.ascending)
+    return Evaluator(climb.record, climb.change, space, climb.purse.spent, from_prior=True)
+
+
+def _run(climb: Climb, evaluator: Evaluator, efficiency: float, particles: int) -> Tempered:
     """One run from the base draws to the target, within the limits."""
-    purse = climb.purse
+    purse, record = climb.purse, climb.record
+
+    def sampled(size: int, generator: np.random.Generator) -> Array:
+        terms = target_prior(record, evaluator.draft)
+        return evaluator.space.free(prior_draws(record, terms, size, generator))
+
     run = temper(
-        climb.start,
-        climb.evaluator.base,
-        climb.evaluator.target,
-        start_log_weights=climb.record.log_weights,
+        sampled if climb.has_gap else climb.start,
+        evaluator.base,
+        evaluator.target,
+        start_log_weights=None if climb.has_gap else record.log_weights,
         size=particles,
         efficiency=efficiency,
         most_evaluations=particles,
@@ -250,7 +278,9 @@ def moved_answer(
     own = base_weights(climb.record)
     origin = Scale(climb.record, own, own, ())
     target = climb.plain._target
-    supports = () if target is None else support_findings(climb.record, target)
+    # Draws that started from the target's own prior leave nothing of its support out.
+    reached = target is None or "target's prior" in how
+    supports = () if target is None or reached else support_findings(climb.record, target)
     notes = [f for f in climb.plain._findings if f.code in ("base_unverified", "support_unknown")]
     found = (*findings, *supports, *notes, judge("draws_moved", how=how))
     unique = {(f.code, tuple(f.words.items())): f for f in found}
