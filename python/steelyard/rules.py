@@ -322,6 +322,15 @@ RULES: Mapping[str, Rule] = {
         "Bring more particles with size=, or raise efficiency= so that temperatures lie closer.",
         "ours",
     ),
+    "sides_disagree": Rule(
+        1.0,
+        3.0,
+        "above",
+        "Looking back from the moved particles the constant is {figure} errors away, above "
+        "{limit}: the mean weight misses part of the target.",
+        "Read bridged_constant, or start from a broader source.",
+        "ours: on targets of known constant this separates Student-t tails from all others",
+    ),
     "moves_stuck": Rule(
         0.3,
         0.03,

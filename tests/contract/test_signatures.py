@@ -62,6 +62,10 @@ SIGNATURES = {
     "weights.resample": "(log_weights, size, method='systematic', *, rng=None)",
     "weights.quantile": "(x, log_weights, probs)",
     "weights.influence": "(loglik, quantities)",
+    "temper": "(start, source, target, *, start_log_weights=None, source_gradient=None, "
+    "target_gradient=None, efficiency=0.9, scheme='systematic', move='mixed', "
+    "waste_free=False, islands=20, size=None, names=None, most_evaluations=None, rng=None, "
+    "progress=None)",
     "Normal": "(mean, sd)",
     "StudentT": "(df, location, scale)",
     "HalfNormal": "(scale)",

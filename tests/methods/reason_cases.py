@@ -194,9 +194,10 @@ def left_behind(variance: float) -> sy.Answer:
 def _run(most_evaluations: int | None = None) -> sy.Tempered:
     """Normal draws moved a little, in 20 islands."""
     return sy.temper(
-        noise(31, N, 1),
+        lambda size, rng: rng.normal(size=(size, 1)),
         lambda x: -0.5 * x[:, 0] ** 2,
         lambda x: -0.5 * (x[:, 0] - 1.5) ** 2,
+        size=N,
         most_evaluations=most_evaluations,
         rng=SEED,
     )
@@ -208,6 +209,15 @@ def tempered(**figures: float) -> sy.Tempered:
     steps = list(run._state.steps)
     steps[1] = replace(steps[1], tail_share=0.5, **figures)
     return replace(run, _state=replace(run._state, steps=tuple(steps)))
+
+
+def sided(errors: float) -> sy.Estimate:
+    """A log constant so many errors from what is seen looking back."""
+    run = _run()
+    steps, constant = list(run._state.steps), run.log_constant
+    off = errors * constant.error - (constant.value - run.bridged_constant.value)
+    steps[0] = replace(steps[0], bridged=steps[0].bridged - off)
+    return replace(run, _state=replace(run._state, steps=tuple(steps))).log_constant
 
 
 def stranded(islands: int) -> sy.Tempered:

@@ -90,6 +90,14 @@ CASES: dict[str, tuple[dict[str, Any], type[SteelyardError], str]] = {
         RatioError,
         "−inf at every start point",
     ),
+    "outside of the target wherever there is weight": (
+        {
+            "target": lambda x: np.where(x[:, 0] > 0, -np.inf, moved(x)),
+            "start_log_weights": np.where(START[:, 0] > 0, 0.0, -np.inf),
+        },
+        RatioError,
+        "start point with weight",
+    ),
     "a scheme nearly right": ({"scheme": "stratifed"}, ArgumentError, "Did you mean 'stratified'"),
     "a scheme that is none": ({"scheme": 3}, ArgumentError, "scheme.*systematic"),
     "a move nearly right": ({"move": "random wak"}, ArgumentError, "Did you mean 'random walk'"),

@@ -10,7 +10,7 @@ import pytest
 
 import steelyard as sy
 from steelyard.repair.bridging import bridge
-from steelyard.repair.islands import lineage_variance
+from steelyard.repair.islands import Islands, lineage_variance
 from steelyard.repair.moves import cloud_of
 from steelyard.repair.moves.cloud import times
 from steelyard.repair.schedule import conditional_share, next_temperature
@@ -92,6 +92,15 @@ def test_the_variance_from_lineages_by_hand() -> None:
     two = np.array([1, 1, 1, 3])
     assert lineage_variance(logs, two, 1) == pytest.approx(1 - 16 / 9 * (1 - 0.52), rel=1e-12)
     assert lineage_variance(np.zeros(4), eve, 3) == 0.0
+
+
+def test_the_variance_between_islands_by_hand() -> None:
+    added = np.array([1.0, 0.5, -0.5, -1.0] + [0.0] * 6)
+    assert Islands(10, 5, "systematic").variance(added) == pytest.approx(10 / 9 * 2.5, rel=1e-14)
+    # Neighbours: 0.5 − 0.25 + 0.5 = 0.75, counted twice; a negative covariance is not counted.
+    chained = Islands(10, 5, "systematic", neighbours=True)
+    assert chained.variance(added) == pytest.approx(10 / 9 * 4.0, rel=1e-14)
+    assert chained.variance(np.array([1.0, -1.0] * 5)) == pytest.approx(10 / 9 * 10, rel=1e-14)
 
 
 def test_the_conditional_share_and_the_step_by_hand() -> None:

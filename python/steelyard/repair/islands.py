@@ -26,15 +26,30 @@ class Islands:
         Number of islands, and of particles in each.
     scheme : str
         How each is resampled.
+    neighbours : bool
+        Whether neighbours may be alike, since they begin with successive draws of a chain.
     """
 
     count: int
     size: int
     scheme: str
+    neighbours: bool = False
 
     @property
     def particles(self) -> int:
         return self.count * self.size
+
+    def variance(self, added: Array) -> float:
+        """
+        Variance of a sum to which each island adds so much, centred.
+
+        As for independent islands; where neighbours may be alike, with their covariance if it is
+        positive. Draws whose autocorrelation reaches further make islands alike beyond that.
+        """
+        squares = float((added**2).sum())
+        if self.neighbours:
+            squares += 2 * max(0.0, float((added[1:] * added[:-1]).sum()))
+        return self.count / (self.count - 1) * squares
 
     def resample(self, log_weights: Array, many: int, generator: np.random.Generator) -> Rows:
         """`many` rows of each island, drawn by weight within it; ascending."""

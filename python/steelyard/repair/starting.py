@@ -153,8 +153,8 @@ def _weights(log_weights: Any, count: int) -> Array:
     return np.asarray(array - array.max())
 
 
-def refuse_bad_start(points: Points) -> None:
-    """Start draws without density under the source, or all of them without under the target."""
+def refuse_bad_start(points: Points, log_weights: Array) -> None:
+    """Start draws without density under the source, or all with weight without under the target."""
     outside = points.source == -np.inf
     if outside.any():
         first = int(np.argmax(outside))
@@ -163,12 +163,13 @@ def refuse_bad_start(points: Points) -> None:
             "draws of the source",
             f"{int(outside.sum())} of {len(outside)} points where source is −inf, the first at "
             f"{points.x[first, :8]}",
-            "Pass the density that the draws came from, in the same parameterisation.",
+            "Pass the density that the draws came from, in the same parameterisation; leave out "
+            "draws of no weight that lie elsewhere.",
         )
-    if (points.target == -np.inf).all():
+    if not ((points.target > -np.inf) & (log_weights > -np.inf)).any():
         raise RatioError(
             "target",
-            "a positive density at one start point at least",
-            "−inf at every start point",
+            "a positive density at one start point with weight at least",
+            "−inf at every start point that has some",
             "Start from draws that overlap the target's support, or mend target.",
         )

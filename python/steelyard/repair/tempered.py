@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
 from html import escape
@@ -18,10 +18,11 @@ from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.base.reading import read_draws
 from steelyard.digits import rounded, short
-from steelyard.errors import ArgumentError, ArgumentTypeError, ShapeError
-from steelyard.repair.islands import lineage_variance, log_masses
+from steelyard.errors import ArgumentTypeError, ShapeError
+from steelyard.repair.islands import log_masses
 from steelyard.repair.particles import Particles, Step
 from steelyard.repair.points import Densities, Points
+from steelyard.repair.run_constants import bridged_constant, mean_weight_constant, run_findings
 from steelyard.repair.sweeping import Setting
 from steelyard.table import Table
 from steelyard.verdicts import Finding, Verdict, judge
@@ -32,9 +33,6 @@ if TYPE_CHECKING:
     from steelyard.show.tempering_plots import TemperingPlots
 
 __all__ = ["Tempered"]
-
-# Step weights whose tail holds less of Σ w² than this are not judged by its shape.
-_IDLE_TAIL = 0.01
 
 
 @dataclass(frozen=True, eq=False)
@@ -184,27 +182,10 @@ class Tempered:
         """
         Natural log of the target's normalising constant over the source's.
 
-        Its error comes from the islands, with Student's t of one degree less than there are; for a
-        single island from the lineages of its particles.
+        The sum of the logs of mean weights. Its error comes from the islands, with Student's t of
+        one degree less than there are; for a single island from the lineages of its particles.
         """
-        logs = self._target_logs
-        value = float(_core.log_sum_exp(logs[:, None])[0])
-        relative, degrees = self._relative_variance(logs)
-        error = math.sqrt(relative)
-        findings = [*self._findings, judge("constant_spread", error)]
-        # Moves mend the draws of a step whose weights have a heavy tail, but not its mean weight.
-        spoken = [step.tail_shape for step in self.history if step.tail_share >= _IDLE_TAIL]
-        if spoken:
-            findings.append(judge("step_shape", max(spoken)))
-        return Estimate(
-            value,
-            error,
-            max((step.tail_shape for step in self.history), default=-math.inf),
-            Verdict(findings),
-            math.nan,
-            degrees=degrees,
-            label="log constant of target over source",
-        )
+        return mean_weight_constant(self)
 
     @cached_property
     def bridged_constant(self) -> Estimate:
@@ -220,60 +201,16 @@ class Tempered:
         ArgumentError
             For a run that has not reached the target, or of a single island.
         """
-        if not self.finished or self.islands == 1:
-            raise ArgumentError(
-                "bridged_constant",
-                "a finished run of several islands",
-                "one island" if self.finished else "a run that stopped early",
-                "Use log_constant.",
-            )
-        count, added = self.islands, self._state.bridged
-        error = math.sqrt(count / (count - 1) * float((added**2).sum()))
-        return Estimate(
-            sum(step.bridged for step in self.history),
-            error,
-            -math.inf,
-            Verdict([*self._findings, judge("constant_spread", error)]),
-            math.nan,
-            degrees=count - 1.0,
-            label="bridged log constant of target over source",
-        )
-
-    def _relative_variance(self, logs: Array) -> tuple[float, float]:
-        """Variance of the ratio of constants over its square, and degrees of freedom."""
-        count = self.islands
-        if count > 1:
-            off = self._shares(logs) - self._state.start_masses
-            return float(count / (count - 1) * (off**2).sum()), count - 1.0
-        variance = self._state.lineage
-        if self._remaining is not None:
-            variance = lineage_variance(logs, self._state.eve, self._state.resampled)
-        return variance, math.inf
-
-    def _shares(self, logs: Array) -> Array:
-        masses = log_masses(logs, self.islands)
-        return np.asarray(np.exp(masses - masses.max()) / np.exp(masses - masses.max()).sum())
+        return bridged_constant(self)
 
     @property
     def verdict(self) -> Verdict:
-        """What may be said of the run as a whole."""
+        """What may be said of the draws; that of a constant is its own."""
         return Verdict(self._findings)
 
     @cached_property
     def _findings(self) -> tuple[Finding, ...]:
-        return tuple(self._judged())
-
-    def _judged(self) -> Iterator[Finding]:
-        steps = [step for step in self.history if step.sweeps > 0]
-        if self.islands > 1:
-            yield judge("few_islands", 1 / float((self._shares(self._target_logs) ** 2).sum()))
-        if steps:
-            yield judge("moves_stuck", min(step.jump for step in steps))
-        beyond = sum(step.beyond for step in steps)
-        if beyond:
-            yield judge("beyond_source", beyond)
-        if not self.finished:
-            yield judge("tempering_unfinished", 1 - self.temperature, why=self.stopped)
+        return tuple(run_findings(self))
 
     def answer(self, named: Callable[[Array], Mapping[str, Any]] | None = None) -> Answer:
         """

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import sys
 from collections.abc import Callable, Iterable
 from dataclasses import replace
 from typing import Any
@@ -10,10 +9,17 @@ from typing import Any
 import numpy as np
 
 from steelyard.base.draws import Array
-from steelyard.base.names import close_names
-from steelyard.errors import ArgumentError, ArgumentTypeError
+from steelyard.errors import ArgumentError
+from steelyard.repair.arguments import (
+    read_chain_length,
+    read_families,
+    read_islands,
+    read_limit,
+    read_share,
+    refuse_no_gradient,
+    teller,
+)
 from steelyard.repair.islands import Islands, log_masses
-from steelyard.repair.moves import MOVES, Family
 from steelyard.repair.particles import Particles
 from steelyard.repair.points import Densities, refuse_no_function
 from steelyard.repair.starting import (
@@ -28,12 +34,6 @@ from steelyard.repair.tempered import Tempered
 from steelyard.weighing.arrays import seed_key
 
 __all__ = ["go_on", "temper"]
-
-SCHEMES = ("systematic", "stratified", "residual", "multinomial")
-# States that a waste-free run keeps of each resampled particle, unless told.
-_CHAIN_LENGTH = 20
-# Fewer islands know too little of their own spread.
-_LEAST_ISLANDS = 10
 
 Density = Callable[[Array], Any]
 
@@ -142,14 +142,16 @@ def temper(
     drawn = read_start(start)
     for name, function in (("source", source), ("target", target)):
         refuse_no_function(function, name)
-    length = _chain_length(waste_free)
-    count = _islands(islands, scheme, length)
-    layout = Islands(count, start_size(drawn, size, count, length), scheme)
+    length = read_chain_length(waste_free)
+    count = read_islands(islands, scheme, length)
+    layout = Islands(
+        count, start_size(drawn, size, count, length), scheme, neighbours=not callable(drawn)
+    )
     densities = Densities(source, target, source_gradient, target_gradient)
-    families = _families(move, densities)
-    setting = Setting(densities, layout, families, _share(efficiency), length)
-    limit = _limit(most_evaluations)
-    tell = _teller(progress)
+    families = read_families(move, densities)
+    setting = Setting(densities, layout, families, read_share(efficiency), length)
+    limit = read_limit(most_evaluations)
+    tell = teller(progress)
     generator = np.random.default_rng(list(seed_key(rng)))
     state = _begin(drawn, start_log_weights, setting, generator, limit)
     labels = read_names(names, state.points.x.shape[1])
@@ -174,7 +176,7 @@ def _begin(
         )
     x, logs, eve = place_start(start, log_weights, layout, generator)
     points = setting.densities.at(x, gradients=setting.gradients)
-    refuse_bad_start(points)
+    refuse_bad_start(points, logs)
     dimension, many = x.shape[1], len(setting.families)
     return Particles(
         points,
@@ -215,7 +217,7 @@ def go_on(
     run: Tempered, functions: tuple[Density | None, ...], most_evaluations: Any, progress: Any
 ) -> Tempered:
     """Resume a run; see ``Tempered.resume``."""
-    setting, limit, tell = run._setting, _limit(most_evaluations), _teller(progress)
+    setting, limit, tell = run._setting, read_limit(most_evaluations), teller(progress)
     known = setting.densities
     held = (known.source, known.target, known.source_gradient, known.target_gradient)
     merged = [new if new is not None else old for new, old in zip(functions, held, strict=True)]
@@ -229,105 +231,7 @@ def go_on(
             )
     densities = Densities(*merged)
     if setting.gradients and not densities.has_gradients:
-        _refuse_no_gradient()
+        refuse_no_gradient()
     if run.finished:
         return run
     return _run(run._state, replace(setting, densities=densities), run.names, limit, tell)
-
-
-def _families(move: Any, densities: Densities) -> tuple[Family, ...]:
-    if not isinstance(move, str) or move.lower() not in MOVES:
-        near = close_names(move.lower(), MOVES) if isinstance(move, str) else "Name one."
-        raise ArgumentError("move", f"one of {', '.join(MOVES)}", repr(move), near)
-    families = MOVES[move.lower()]
-    if any(family.cost > 1 for family in families):
-        for name in ("source_gradient", "target_gradient"):
-            if getattr(densities, name) is not None:
-                refuse_no_function(getattr(densities, name), name)
-        if not densities.has_gradients:
-            _refuse_no_gradient()
-    return families
-
-
-def _refuse_no_gradient() -> None:
-    raise ArgumentError(
-        "source_gradient, target_gradient",
-        "both, for Langevin moves",
-        "none or one of them",
-        "Pass the gradients of both log densities, or choose move='mixed'.",
-    )
-
-
-def _chain_length(waste_free: Any) -> int:
-    if isinstance(waste_free, bool | np.bool_):
-        return _CHAIN_LENGTH if waste_free else 1
-    if not isinstance(waste_free, int | np.integer):
-        raise ArgumentTypeError(
-            "waste_free", "True, False or a number of states", repr(waste_free), "Say which."
-        )
-    if not 2 <= waste_free <= 10_000:
-        raise ArgumentError(
-            "waste_free", "from 2 to 10,000 states", str(waste_free), "Write True for the default."
-        )
-    return int(waste_free)
-
-
-def _islands(islands: Any, scheme: Any, chain_length: int) -> int:
-    if not isinstance(scheme, str) or scheme not in SCHEMES:
-        near = close_names(scheme, SCHEMES) if isinstance(scheme, str) else "Name one."
-        raise ArgumentError("scheme", f"one of {', '.join(SCHEMES)}", repr(scheme), near)
-    if isinstance(islands, bool) or not isinstance(islands, int | np.integer):
-        raise ArgumentTypeError("islands", "an integer", repr(islands), "Say how many.")
-    single = scheme == "multinomial" and chain_length == 1
-    if islands < _LEAST_ISLANDS and not (islands == 1 and single):
-        raise ArgumentError(
-            "islands",
-            f"at least {_LEAST_ISLANDS}, or 1 with scheme='multinomial' and no waste-free moves",
-            str(islands),
-            "The error of the constant comes from them: take 20.",
-        )
-    return int(islands)
-
-
-def _share(efficiency: Any) -> float:
-    if isinstance(efficiency, bool) or not isinstance(efficiency, int | float | np.floating):
-        raise ArgumentTypeError("efficiency", "a number in (0, 1)", repr(efficiency), "Write 0.9.")
-    if not 0 < efficiency < 1:
-        raise ArgumentError("efficiency", "a number in (0, 1)", repr(efficiency), "Write 0.9.")
-    return float(efficiency)
-
-
-def _limit(most_evaluations: Any) -> int | None:
-    if most_evaluations is None:
-        return None
-    if isinstance(most_evaluations, bool) or not isinstance(most_evaluations, int | np.integer):
-        raise ArgumentTypeError(
-            "most_evaluations", "an integer", repr(most_evaluations), "Say how many points."
-        )
-    if most_evaluations < 1:
-        raise ArgumentError(
-            "most_evaluations", "a positive number", str(most_evaluations), "Say how many points."
-        )
-    return int(most_evaluations)
-
-
-def _teller(progress: Any) -> Callable[[Particles], None]:
-    if progress is None or progress is False:
-        return lambda state: None
-    if progress is True:
-
-        def write(state: Particles) -> None:
-            end = "\n" if state.finished else ""
-            at = f"{state.temperature:.4g}, {state.evaluations:,} evaluations"
-            sys.stderr.write(f"\rtemperature {at}{end}")
-            sys.stderr.flush()
-
-        return write
-    if callable(progress):
-        return lambda state: progress(state.temperature, state.evaluations)
-    raise ArgumentTypeError(
-        "progress",
-        "True, or a callable of (temperature, evaluations)",
-        repr(progress),
-        "Leave it out for none.",
-    )

@@ -46,10 +46,9 @@ class TemperingPlots:
         ax, run = axes(ax), self.tempered
         steps = run.history
         at = np.arange(1, len(steps) + 1)
-        risen = [0.0, *(step.temperature for step in steps)]
-        ax.fill_between(
-            np.arange(len(risen)) + 0.5, risen, step="post", color=BASE, alpha=0.45, lw=0
-        )
+        risen = [step.temperature for step in steps]
+        edges, held = np.arange(len(risen) + 1) + 0.5, [*risen, *risen[-1:]] or [0.0]
+        ax.fill_between(edges, held, step="post", color=BASE, alpha=0.45, lw=0)
         size = len(run.points)
         lines = {
             "effective size": ([s.effective_size / size for s in steps], TARGET, "-"),
