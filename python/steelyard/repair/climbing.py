@@ -20,14 +20,8 @@ from steelyard.changes import Change
 from steelyard.errors import ArgumentError, ArgumentTypeError, SteelyardError
 from steelyard.repair.evaluating import Evaluator, evaluator_of
 from steelyard.repair.ladder import Ladder, Rung
-from steelyard.repair.rungs import (
-    EMPTY,
-    INTERRUPTED,
-    MOVING,
-    RUNGS,
-    Outcome,
-    not_possible,
-)
+from steelyard.repair.outcomes import Outcome, not_possible
+from steelyard.repair.rungs import EMPTY, INTERRUPTED, MOVING, RUNGS
 from steelyard.repair.spending import Purse, read_purse
 from steelyard.verdicts import Level
 from steelyard.weighing.arrays import seed_key
@@ -107,11 +101,11 @@ def repair(
     """Climb the ladder; see ``Fit.repair``."""
     names = _names(rungs)
     purse = read_purse(most_evaluations, most_seconds, progress)
-    ordered = (ascending,) if isinstance(ascending, str) else tuple(ascending)
+    given = _several(fits, "fits", "fits"), _several(ascending, "ascending", "names of vectors")
     seeds = seed_key(rng)
     began = time.monotonic()
     plain = reweigh(record, change)
-    climb = Climb(record, change, plain, purse, seeds, tuple(fits), ordered, rungs is not None)
+    climb = Climb(record, change, plain, purse, seeds, *given, rungs is not None)
     _level(climb.plain, quantities)  # a quantity that cannot be read is an error before any cost
     outcome, first = _try(climb, "smoothing", quantities)
     tried = [replace(first, seconds=time.monotonic() - began)]
@@ -125,14 +119,18 @@ def repair(
             if answer is not None and _better(answer, best, quantities):
                 chosen, best = name, answer
             elif answer is not None:
-                kept = f"no better than {chosen}, which was kept"
-                early = rung.stopped in (INTERRUPTED, EMPTY)
-                tried[-1] = replace(rung, stopped=f"{rung.stopped}; {kept}" if early else kept)
+                tried[-1] = replace(rung, stopped=_kept(rung, chosen))
         if tried[-1].stopped.startswith(INTERRUPTED):
             break
         if name == chosen and _level(best, quantities) == "sound":
             break
     return replace(best, ladder=Ladder(tuple(tried), chosen))
+
+
+def _kept(rung: Rung, chosen: str) -> str:
+    """Why an answer that a rung gave was not taken."""
+    kept = f"no better than {chosen}, which was kept"
+    return f"{rung.stopped}; {kept}" if rung.stopped in (INTERRUPTED, EMPTY) else kept
 
 
 def _try(climb: Climb, name: str, quantities: Any) -> tuple[Outcome, Rung]:
@@ -210,6 +208,14 @@ def _better(answer: Answer, best: Answer, quantities: Any) -> bool:
         return _level(one, quantities), -tail, one.effective_size
 
     return worth(answer) > worth(best)
+
+
+def _several(value: Any, argument: str, what: str) -> tuple[Any, ...]:
+    if isinstance(value, str):
+        return (value,)
+    if not isinstance(value, Iterable):
+        raise ArgumentTypeError(argument, f"a list of {what}", repr(value), "Pass a list.")
+    return tuple(value)
 
 
 def _names(rungs: Any) -> list[str]:

@@ -3,14 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from steelyard.answers import Answer, Estimate, reweigh
-from steelyard.answers.estimating import Scale
-from steelyard.answers.moved import Moved
+from steelyard.answers import Estimate, reweigh
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.base.ratios import refuse_bad_ratio
@@ -24,15 +22,15 @@ from steelyard.errors import (
 from steelyard.repair.collapsing import collapse, collapse_plan
 from steelyard.repair.evaluating import Evaluator, at_draws
 from steelyard.repair.matching import match_moments, probe_plain
+from steelyard.repair.outcomes import Outcome, moved_answer, not_possible
 from steelyard.repair.pooling import pool_records
 from steelyard.repair.prior_start import prior_draws, target_prior
 from steelyard.repair.space import space_of
 from steelyard.repair.tempered import Tempered
 from steelyard.repair.tempering import temper
-from steelyard.verdicts import Finding, judge
-from steelyard.weighing.supports import support_findings
+from steelyard.verdicts import judge
 from steelyard.weighing.trust import shared_findings, weight_findings
-from steelyard.weighing.weigh import Weights, base_weights, weigh_ratio
+from steelyard.weighing.weigh import weigh_ratio
 
 if TYPE_CHECKING:
     from steelyard.repair.climbing import Climb
@@ -42,9 +40,6 @@ __all__ = [
     "INTERRUPTED",
     "MOVING",
     "RUNGS",
-    "Outcome",
-    "moved_answer",
-    "not_possible",
     "smoothing_cost",
 ]
 
@@ -54,21 +49,6 @@ INTERRUPTED = "stopped by Ctrl-C"
 EMPTY = "the limit was reached"
 # Fewer are too few for the islands that the errors come from.
 _LEAST_PARTICLES = 1000
-
-
-@dataclass(frozen=True, eq=False)
-class Outcome:
-    """
-    What a rung gave: an answer, or why there is none.
-
-    `evaluations` are those that the shared counter does not know of; `applies` is False for a rung
-    that has nothing to do with the change.
-    """
-
-    answer: Answer | None
-    stopped: str = ""
-    evaluations: int = 0
-    applies: bool = True
 
 
 def smoothing(climb: Climb) -> Outcome:
@@ -148,11 +128,6 @@ def collapsing(climb: Climb) -> Outcome:
     )
     how = f"effects {found.name!r} integrated out and drawn anew"
     return Outcome(moved_answer(climb, moved, weights, found.ratio, how, findings, is_paired=True))
-
-
-def not_possible(error: SteelyardError) -> str:
-    """What bars a rung, in a line."""
-    return f"not possible: {error.argument} is {error.came}"
 
 
 # Batches between two looks at the clock.
@@ -261,39 +236,6 @@ def _run(climb: Climb, evaluator: Evaluator, efficiency: float, particles: int) 
             purse.is_empty = True
             break
     return run
-
-
-def moved_answer(
-    climb: Climb,
-    record: Base,
-    weights: Weights,
-    log_ratio: Array,
-    how: str,
-    findings: tuple[Finding, ...],
-    *,
-    is_paired: bool,
-    log_constant: Estimate | None = None,
-) -> Answer:
-    """The answer of draws that are not the base's own."""
-    own = base_weights(climb.record)
-    origin = Scale(climb.record, own, own, ())
-    target = climb.plain._target
-    # Draws that started from the target's own prior leave nothing of its support out.
-    reached = target is None or "target's prior" in how
-    supports = () if target is None or reached else support_findings(climb.record, target)
-    notes = [f for f in climb.plain._findings if f.code in ("base_unverified", "support_unknown")]
-    found = (*findings, *supports, *notes, judge("draws_moved", how=how))
-    unique = {(f.code, tuple(f.words.items())): f for f in found}
-    base = own if is_paired else weights
-    return Answer(
-        record,
-        weights,
-        base,
-        tuple(unique.values()),
-        climb.change,
-        target,
-        Moved(origin, is_paired, np.array(log_ratio), log_constant),
-    )
 
 
 RUNGS: Mapping[str, Callable[[Climb], Outcome]] = {
