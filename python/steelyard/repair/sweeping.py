@@ -131,9 +131,9 @@ def _sweep(state: Particles, setting: Setting) -> Particles:
     assert moving is not None
     chosen = _chosen(state, generator)
     proposed = _proposed(state, moving.cloud, chosen, setting, generator)
-    accepted = np.log(generator.random(len(points.x))) < _log_chance(
-        state, proposed, moving.cloud, chosen, setting
-    )
+    chance = _log_chance(state, proposed, moving.cloud, chosen, setting)
+    with np.errstate(over="ignore"):  # +inf is then what is meant
+        accepted = generator.random(len(points.x)) < np.exp(chance)
     after = points.where(accepted, proposed)
     step = np.where(accepted, (moving.cloud.whiten(after.x - points.x) ** 2).sum(axis=1), 0.0)
     scales, shares = _steered(state, chosen, accepted, step, setting)
