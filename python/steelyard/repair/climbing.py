@@ -203,8 +203,8 @@ def _better(answer: Answer, best: Answer, quantities: Any) -> bool:
 
     def worth(one: Answer) -> tuple[Level, float, float]:
         shape = one.tail_shape
-        # Below one half all errors are finite, and lighter is no better.
-        tail = 0.5 if math.isnan(shape) else max(shape, 0.5)
+        # Below one half all errors are finite, and a shape is not known to better than a tenth.
+        tail = 0.5 if math.isnan(shape) else round(max(shape, 0.5), 1)
         return _level(one, quantities), -tail, one.effective_size
 
     return worth(answer) > worth(best)
