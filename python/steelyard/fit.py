@@ -256,8 +256,10 @@ class Fit:
         Notes
         -----
         New points need a prior term for every parameter and callables for all likelihood terms; the
-        unconstrained space follows from the supports of the priors. On Ctrl-C the best answer so
-        far is returned.
+        unconstrained space follows from the supports of the priors. A target that reaches beyond
+        the base's support is tempered from its own prior. Answers of smoothing and of maps are held
+        against draws further out before they are called sound; a mode that neither the base's draws
+        nor moves from them reach is seen by no rung. On Ctrl-C the best answer so far is returned.
 
         References
         ----------
