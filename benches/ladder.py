@@ -90,7 +90,7 @@ PROBLEMS = (
     student("Student-t 3, moved by 3", 1, 3.0, 3.0),
     student("Student-t 3, moved by 2", 2, 3.0, 2.0),
     student("Student-t 3, moved by 1", 10, 3.0, 1.0),
-    student("Student-t 3", 50, 3.0, 0.0),
+    student("Student-t 3, moved by 0.5", 50, 3.0, 0.5),
 )
 LABELS = ("mean", "sd", "q0.05", "q0.95", "tail", "shift", "log ratio")
 

@@ -313,7 +313,7 @@ def constants(runs: int, seed: int, only: str) -> bool:
     """The cases that have to hold; whether they do."""
     settings: dict[str, dict[str, Any]] = {
         "default": {},
-        "waste-free": {"waste_free": True},
+        "waste-free": {"waste_free": True, "size": 4 * SIZE},
         "lineages": {"islands": 1, "scheme": "multinomial"},
     }
     held = True

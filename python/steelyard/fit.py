@@ -202,6 +202,102 @@ class Fit:
         """
         return reweigh(self._record, change, smooth=smooth)
 
+    def repair(
+        self,
+        change: Change,
+        *,
+        rungs: Any = None,
+        quantities: Any = None,
+        most_evaluations: int | None = None,
+        most_seconds: float | None = None,
+        ascending: Iterable[str] = (),
+        fits: Iterable[Any] = (),
+        rng: Any = None,
+        progress: Any = None,
+    ) -> Answer:
+        """
+        The answer under a change, by the cheapest way that is sound.
+
+        Parameters
+        ----------
+        change : Change
+            What is changed.
+        rungs : str or iterable of str, optional
+            Which ways to try, in this order, from ``"smoothing"``, ``"collapse"``,
+            ``"moment matching"``, ``"pooling"`` and ``"tempering"``; by default all of them.
+        quantities : str, callable, list or mapping, optional
+            Quantities and events that have to be sound as well.
+        most_evaluations : int, optional
+            How many points may be evaluated on all rungs.
+        most_seconds : float, optional
+            How long all rungs may take; held against between batches.
+        ascending : str or iterable of str, optional
+            Names of vectors that the model keeps in ascending order.
+        fits : iterable of Fit, optional
+            Other fits of the same data to pool with.
+        rng : None, int or numpy.random.Generator, optional
+            Seed or generator (SPEC 7).
+        progress : bool or callable, optional
+            True writes to standard error; a callable gets ``(points evaluated, rung)``.
+
+        Returns
+        -------
+        Answer
+            Of the first sound rung, else of the best one; its ``ladder`` says what each cost and
+            why it stopped. The later rungs bring new draws: see ``answer.draws``.
+
+        Raises
+        ------
+        PriorError, LikelihoodError, RatioError
+            Where a rung that was named cannot move a parameter or evaluate a term at new points,
+            and for densities that are NaN, with the point.
+        ChangeError, UnknownNameError, ArgumentError, ArgumentTypeError
+            As for :meth:`reweigh`, and for unusable limits and names.
+
+        Notes
+        -----
+        New points need a prior term for every parameter and callables for all likelihood terms; the
+        unconstrained space follows from the supports of the priors. A target that reaches beyond
+        the base's support is tempered from its own prior. Answers of smoothing and of maps are held
+        against draws further out before they are called sound; a mode that neither the base's draws
+        nor moves from them reach is seen by no rung. On Ctrl-C the best answer so far is returned.
+
+        References
+        ----------
+        .. [1] Paananen, Piironen, Bürkner, Vehtari (2021), Statistics and Computing 31.
+        .. [2] Del Moral, Doucet, Jasra (2006), JRSS B 68.
+
+        Examples
+        --------
+        >>> import numpy as np, steelyard as sy
+        >>> rng = np.random.default_rng(4)
+        >>> readings = rng.normal(0.10, 0.03, size=20)
+        >>> rate = rng.normal(readings.mean(), 0.03 / np.sqrt(20), size=(4, 500))
+        >>> def gauge(draws):
+        ...     return -0.5 * ((readings - draws["rate"][:, None]) / 0.03) ** 2
+        >>> fit = sy.Fit({"rate": rate}, {"rate": sy.Flat()}, gauge)
+        >>> change = sy.raise_noise("likelihood", 3.0, sd=0.03)
+        >>> str(fit.reweigh(change).verdict.level)
+        'strained'
+        >>> answer = fit.repair(change)
+        >>> str(answer.verdict.level), answer.ladder.chosen
+        ('sound', 'moment matching')
+        """
+        from steelyard.repair import repair
+
+        return repair(
+            self._record,
+            change,
+            rungs=rungs,
+            quantities=quantities,
+            most_evaluations=most_evaluations,
+            most_seconds=most_seconds,
+            ascending=ascending,
+            fits=fits,
+            rng=rng,
+            progress=progress,
+        )
+
     def local(self, quantities: Any = None, *, of: str = "mean") -> Local:
         """
         Derivative of each quantity in every hyperparameter of every prior term.
@@ -767,100 +863,6 @@ class Fit:
         from steelyard.planning import Arrival
 
         return Arrival(self._record) if saved is None else Arrival.load(saved, self)
-
-    def repair(
-        self,
-        change: Change,
-        *,
-        rungs: Any = None,
-        quantities: Any = None,
-        most_evaluations: int | None = None,
-        most_seconds: float | None = None,
-        ascending: Iterable[str] = (),
-        fits: Iterable[Any] = (),
-        rng: Any = None,
-        progress: Any = None,
-    ) -> Answer:
-        """
-        The answer under a change, by the cheapest way that is sound.
-
-        Parameters
-        ----------
-        change : Change
-            What is changed.
-        rungs : str or iterable of str, optional
-            Which ways to try, in this order, from ``"smoothing"``, ``"collapse"``,
-            ``"moment matching"``, ``"pooling"`` and ``"tempering"``; by default all of them.
-        quantities : str, callable, list or mapping, optional
-            Quantities and events that have to be sound as well.
-        most_evaluations : int, optional
-            How many points may be evaluated on all rungs.
-        most_seconds : float, optional
-            How long all rungs may take; held against between batches.
-        ascending : str or iterable of str, optional
-            Names of vectors that the model keeps in ascending order.
-        fits : iterable of Fit, optional
-            Other fits of the same data to pool with.
-        rng : None, int or numpy.random.Generator, optional
-            Seed or generator (SPEC 7).
-        progress : bool or callable, optional
-            True writes to standard error; a callable gets ``(points evaluated, rung)``.
-
-        Returns
-        -------
-        Answer
-            Of the first sound rung, else of the best one; its ``ladder`` says what each cost and
-            why it stopped. The later rungs bring new draws: see ``answer.draws``.
-
-        Raises
-        ------
-        PriorError, LikelihoodError, RatioError
-            Where a rung that was named cannot move a parameter or evaluate a term at new points,
-            and for densities that are NaN, with the point.
-        ChangeError, UnknownNameError, ArgumentError, ArgumentTypeError
-            As for :meth:`reweigh`, and for unusable limits and names.
-
-        Notes
-        -----
-        New points need a prior term for every parameter and callables for all likelihood terms; the
-        unconstrained space follows from the supports of the priors. On Ctrl-C the best answer so
-        far is returned.
-
-        References
-        ----------
-        .. [1] Paananen, Piironen, Bürkner, Vehtari (2021), Statistics and Computing 31.
-        .. [2] Del Moral, Doucet, Jasra (2006), JRSS B 68.
-
-        Examples
-        --------
-        >>> import numpy as np, steelyard as sy
-        >>> rng = np.random.default_rng(4)
-        >>> readings = rng.normal(0.10, 0.03, size=20)
-        >>> rate = rng.normal(readings.mean(), 0.03 / np.sqrt(20), size=(4, 500))
-        >>> def gauge(draws):
-        ...     return -0.5 * ((readings - draws["rate"][:, None]) / 0.03) ** 2
-        >>> fit = sy.Fit({"rate": rate}, {"rate": sy.Flat()}, gauge)
-        >>> change = sy.raise_noise("likelihood", 3.0, sd=0.03)
-        >>> str(fit.reweigh(change).verdict.level)
-        'strained'
-        >>> answer = fit.repair(change)
-        >>> str(answer.verdict.level), answer.ladder.chosen
-        ('sound', 'moment matching')
-        """
-        from steelyard.repair import repair
-
-        return repair(
-            self._record,
-            change,
-            rungs=rungs,
-            quantities=quantities,
-            most_evaluations=most_evaluations,
-            most_seconds=most_seconds,
-            ascending=ascending,
-            fits=fits,
-            rng=rng,
-            progress=progress,
-        )
 
     def leave_out(
         self,

@@ -252,6 +252,8 @@ BAD: dict[str, tuple[dict[str, Any], type[Exception], str]] = {
     "a text as progress": ({"progress": "yes"}, ArgumentTypeError, "progress"),
     "a text as rng": ({"rng": "1"}, ArgumentTypeError, "rng"),
     "an unknown ascending name": ({"ascending": "wall"}, UnknownNameError, "ascending"),
+    "a number as fits": ({"fits": 3}, ArgumentTypeError, "fits"),
+    "a number as ascending": ({"ascending": 3}, ArgumentTypeError, "ascending"),
     "fits that are none": ({"fits": [3], "rungs": "pooling"}, ArgumentTypeError, "fits"),
 }
 
@@ -289,3 +291,63 @@ def test_the_plot_shows_every_rung() -> None:
     assert [t.get_text() for t in ax.get_yticklabels()] == ["smoothing", "moment matching"]
     assert len(ax.patches) == 2
     pyplot.close("all")
+
+
+def test_a_target_beyond_the_support_of_the_base_is_reached_from_its_own_prior() -> None:
+    """Half-normal to normal: no weight can do it, and no map."""
+    readings = np.random.default_rng(3).normal(-0.05, 0.3, size=12)
+    rng = np.random.default_rng(SEED)
+
+    def loglik(d: Draws) -> Array:
+        return np.asarray(-0.5 * ((readings - d["bias"][:, None]) / 0.3) ** 2)
+
+    precision = 12 / 0.09 + 1 / 0.15**2
+    mean = readings.sum() / 0.09 / precision
+    # The base posterior is the normal one cut off at 0.
+    whole = rng.normal(mean, precision**-0.5, size=40_000)
+    bias = whole[whole > 0][:4000].reshape(4, 1000)
+    fit = sy.Fit({"bias": bias}, {"bias": sy.HalfNormal(0.15)}, loglik)
+    answer = fit.repair(sy.swap_prior(bias=sy.Normal(0, 0.15)), rng=2)
+    assert [r.name for r in answer.ladder] == ["smoothing", "moment matching", "tempering"]
+    assert answer.ladder["moment matching"].evaluations == 0
+    assert answer.verdict.is_sound
+    for estimate, truth in (
+        (answer.mean("bias"), mean),
+        (answer.sd("bias"), precision**-0.5),
+        (answer.shift("bias"), mean - bias.mean()),
+    ):
+        assert estimate.verdict.is_sound
+        assert abs(estimate.value - truth) <= 4 * estimate.error
+    with pytest.raises(ChangeError, match="log_evidence_ratio"):
+        _ = answer.log_evidence_ratio
+    # A flat prior cannot be drawn from.
+    change = sy.swap_prior(bias=sy.Flat())
+    assert "not possible" in fit.repair(change).ladder["tempering"].stopped
+
+
+def test_other_fits_of_the_same_data_are_pooled() -> None:
+    """A normal prior far away; another fit was made under it, and its draws reach the target."""
+    readings = np.random.default_rng(5).normal(0.10, 0.03, size=20)
+
+    def loglik(d: Draws) -> Array:
+        return np.asarray(-0.5 * ((readings - d["rate"][:, None]) / 0.03) ** 2)
+
+    def fitted(mean: float, sd: float, seed: int) -> tuple[sy.Fit, float]:
+        precision = 20 / 0.03**2 + 1 / sd**2
+        centre = (readings.sum() / 0.03**2 + mean / sd**2) / precision
+        rate = np.random.default_rng(seed).normal(centre, precision**-0.5, size=(4, 500))
+        return sy.Fit({"rate": rate}, {"rate": sy.Normal(mean, sd)}, loglik), centre
+
+    base, _ = fitted(0.10, 0.1, 1)
+    other, _ = fitted(0.14, 0.007, 2)
+    _, truth = fitted(0.145, 0.006, 3)
+    change = sy.swap_prior(rate=sy.Normal(0.145, 0.006))
+    answer = base.repair(change, fits=[other], rungs="pooling")
+    assert answer.ladder.chosen == "pooling"
+    assert answer.ladder["smoothing"].level < "sound"
+    assert answer.verdict.is_sound
+    mean = answer.mean("rate")
+    assert abs(mean.value - truth) <= 4 * mean.error
+    with pytest.raises(QuantityError, match="moved"):
+        answer.mean(base.draws["rate"])
+    assert "pooling" not in [r.name for r in base.repair(change).ladder]

@@ -133,6 +133,11 @@ CASES: dict[str, tuple[dict[str, Any], type[SteelyardError], str]] = {
     ),
     "no islands": ({"islands": True}, ArgumentTypeError, "islands"),
     "few particles": ({"size": 199}, ArgumentError, "from 200 particles.*199"),
+    "few particles for chains": (
+        {"size": 3999, "waste_free": True},
+        ArgumentError,
+        "from 4,000 particles.*3999",
+    ),
     "negative particles": ({"size": -1}, ArgumentError, "-1"),
     "particles in words": ({"size": "many"}, ArgumentTypeError, "'many'"),
     "half a chain": ({"waste_free": 0.5}, ArgumentTypeError, "waste_free"),

@@ -85,7 +85,7 @@ class _Interrupting:
 def test_an_interrupted_run_returns_what_there_is_and_resumes_bit_for_bit(
     at: int, waste_free: Any
 ) -> None:
-    settings = {"size": 400, "rng": SEED, "waste_free": waste_free}
+    settings = {"size": 1000, "rng": SEED, "waste_free": waste_free}
     whole = EASY.temper(**settings)
     stopped = temper(EASY.start, EASY.source, _Interrupting(at), **settings)
     assert not stopped.finished

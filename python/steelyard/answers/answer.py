@@ -23,6 +23,7 @@ from steelyard.answers.estimating import Scale, mean_of, sd_of
 from steelyard.answers.moved import (
     Moved,
     both_of,
+    constant_of_moved,
     divergence_of_moved,
     joined_values,
     refuse_moved,
@@ -518,8 +519,8 @@ class Answer:
     def divergence(self) -> Estimate:
         """Kullback–Leibler divergence of the target from the base, in natural units."""
         if self._moved is not None:
-            given = self._moved.log_constant
-            constant = log_evidence_ratio_of(self._scale, None) if given is None else given
+            own = log_evidence_ratio_of(self._scale, None)
+            constant = constant_of_moved(self._moved, own)
             return divergence_of_moved(self._scale, self._moved, constant)
         return divergence_of(self._scale)
 
@@ -538,8 +539,7 @@ class Answer:
             Where a changed prior term is improper, or taken to a power.
         """
         own = log_evidence_ratio_of(self._scale, self._target)
-        given = None if self._moved is None else self._moved.log_constant
-        return own if given is None else given
+        return own if self._moved is None else constant_of_moved(self._moved, own)
 
     def table(
         self,

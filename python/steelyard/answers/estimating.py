@@ -54,12 +54,17 @@ _WIDTH = 64
 
 @dataclass(frozen=True, eq=False)
 class Scale:
-    """What an estimate is weighed with: the base, its own weights, and the target's."""
+    """
+    What an estimate is weighed with: the base, its own weights, and the target's.
+
+    `is_joined` says that base and target have draws of their own, one after the other.
+    """
 
     base: Base
     weights: Weights
     base_weights: Weights
     findings: tuple[Finding, ...]
+    is_joined: bool = False
 
     @property
     def count(self) -> int:
@@ -210,6 +215,8 @@ def study_pair(scale: Scale, psi_target: Array, psi_base: Array) -> Series:
     efficiency = relative_efficiency(z_raw, draws, ordered)
     carried = contributions_of(z, efficiency, draws, ordered)
     equal = np.full(count, 1 / count)
+    if scale.is_joined:  # what the target's influence is at draws of the base says nothing of it
+        psi_target = np.where(scale.weights.raw[:, None] > 0, psi_target, 0.0)
     return Series(
         standard_error(z, draws, ordered),
         tail_of(z_raw, efficiency, draws, ordered),

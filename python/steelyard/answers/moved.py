@@ -18,7 +18,14 @@ from steelyard.base.draws import Array, Draws
 from steelyard.errors import ChangeError
 from steelyard.weighing.weigh import Weights
 
-__all__ = ["Moved", "divergence_of_moved", "refuse_moved", "shift_of_moved", "with_both"]
+__all__ = [
+    "Moved",
+    "constant_of_moved",
+    "divergence_of_moved",
+    "refuse_moved",
+    "shift_of_moved",
+    "with_both",
+]
 
 
 @dataclass(frozen=True, eq=False)
@@ -90,7 +97,8 @@ def both_of(scale: Scale, moved: Moved) -> Scale:
     starts = np.concatenate([old.starts, old.size + new.starts[1:]])
     base = replace(scale.base, draws=Draws({}, starts), ordered=scale.base.ordered)
     target = _padded(scale.weights, old.size, 0)
-    return Scale(base, target, _padded(moved.origin.base_weights, 0, new.size), scale.findings)
+    own = _padded(moved.origin.base_weights, 0, new.size)
+    return Scale(base, target, own, scale.findings, is_joined=True)
 
 
 def _padded(weights: Weights, front: int, back: int) -> Weights:
@@ -109,6 +117,17 @@ def _padded(weights: Weights, front: int, back: int) -> Weights:
 def joined_values(after: Quantity, before: Quantity) -> Quantity:
     """A quantity at the draws of the base, then at those of the answer."""
     return replace(after, values=np.concatenate([before.values, after.values]))
+
+
+def constant_of_moved(moved: Moved, own: Estimate) -> Estimate:
+    """Log ratio of constants: that of the weights, for draws made from the base's one by one."""
+    if moved.log_constant is not None:
+        return moved.log_constant
+    if not moved.is_paired:
+        refuse_moved(
+            "log_evidence_ratio", "Draws of the target's prior say nothing of the base's constant."
+        )
+    return own
 
 
 def divergence_of_moved(scale: Scale, moved: Moved, log_constant: Estimate) -> Estimate:

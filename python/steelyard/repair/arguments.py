@@ -55,6 +55,7 @@ def refuse_no_gradient() -> None:
 
 
 def read_chain_length(waste_free: Any) -> int:
+    """States kept of each resampled particle; 1 for none but the last."""
     if isinstance(waste_free, bool | np.bool_):
         return _CHAIN_LENGTH if waste_free else 1
     if not isinstance(waste_free, int | np.integer):
@@ -68,13 +69,14 @@ def read_chain_length(waste_free: Any) -> int:
     return int(waste_free)
 
 
-def read_islands(islands: Any, scheme: Any, chain_length: int) -> int:
+def read_islands(islands: Any, scheme: Any, waste_free: Any) -> int:
+    """Number of islands."""
     if not isinstance(scheme, str) or scheme not in SCHEMES:
         near = close_names(scheme, SCHEMES) if isinstance(scheme, str) else "Name one."
         raise ArgumentError("scheme", f"one of {', '.join(SCHEMES)}", repr(scheme), near)
     if isinstance(islands, bool) or not isinstance(islands, int | np.integer):
         raise ArgumentTypeError("islands", "an integer", repr(islands), "Say how many.")
-    single = scheme == "multinomial" and chain_length == 1
+    single = scheme == "multinomial" and not waste_free
     if islands < _LEAST_ISLANDS and not (islands == 1 and single):
         raise ArgumentError(
             "islands",

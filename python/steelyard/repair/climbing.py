@@ -20,14 +20,8 @@ from steelyard.changes import Change
 from steelyard.errors import ArgumentError, ArgumentTypeError, SteelyardError
 from steelyard.repair.evaluating import Evaluator, evaluator_of
 from steelyard.repair.ladder import Ladder, Rung
-from steelyard.repair.rungs import (
-    EMPTY,
-    INTERRUPTED,
-    MOVING,
-    RUNGS,
-    Outcome,
-    not_possible,
-)
+from steelyard.repair.outcomes import Outcome, not_possible
+from steelyard.repair.rungs import EMPTY, INTERRUPTED, MOVING, RUNGS
 from steelyard.repair.spending import Purse, read_purse
 from steelyard.verdicts import Level
 from steelyard.weighing.arrays import seed_key
@@ -76,6 +70,11 @@ class Climb:
         made.spent = self.purse.spent
         return made
 
+    @property
+    def has_gap(self) -> bool:
+        """Whether the target reaches beyond the base's support."""
+        return any(finding.code == "support_gap" for finding in self.plain._findings)
+
     @cached_property
     def start(self) -> Array:
         """Coordinates of the base draws; an error names one that has none."""
@@ -102,11 +101,11 @@ def repair(
     """Climb the ladder; see ``Fit.repair``."""
     names = _names(rungs)
     purse = read_purse(most_evaluations, most_seconds, progress)
-    ordered = (ascending,) if isinstance(ascending, str) else tuple(ascending)
+    given = _several(fits, "fits", "fits"), _several(ascending, "ascending", "names of vectors")
     seeds = seed_key(rng)
     began = time.monotonic()
     plain = reweigh(record, change)
-    climb = Climb(record, change, plain, purse, seeds, tuple(fits), ordered, rungs is not None)
+    climb = Climb(record, change, plain, purse, seeds, *given, rungs is not None)
     _level(climb.plain, quantities)  # a quantity that cannot be read is an error before any cost
     outcome, first = _try(climb, "smoothing", quantities)
     tried = [replace(first, seconds=time.monotonic() - began)]
@@ -120,14 +119,18 @@ def repair(
             if answer is not None and _better(answer, best, quantities):
                 chosen, best = name, answer
             elif answer is not None:
-                kept = f"no better than {chosen}, which was kept"
-                early = rung.stopped in (INTERRUPTED, EMPTY)
-                tried[-1] = replace(rung, stopped=f"{rung.stopped}; {kept}" if early else kept)
+                tried[-1] = replace(rung, stopped=_kept(rung, chosen))
         if tried[-1].stopped.startswith(INTERRUPTED):
             break
         if name == chosen and _level(best, quantities) == "sound":
             break
     return replace(best, ladder=Ladder(tuple(tried), chosen))
+
+
+def _kept(rung: Rung, chosen: str) -> str:
+    """Why an answer that a rung gave was not taken."""
+    kept = f"no better than {chosen}, which was kept"
+    return f"{rung.stopped}; {kept}" if rung.stopped in (INTERRUPTED, EMPTY) else kept
 
 
 def _try(climb: Climb, name: str, quantities: Any) -> tuple[Outcome, Rung]:
@@ -200,11 +203,19 @@ def _better(answer: Answer, best: Answer, quantities: Any) -> bool:
 
     def worth(one: Answer) -> tuple[Level, float, float]:
         shape = one.tail_shape
-        # Below one half all errors are finite, and lighter is no better.
-        tail = 0.5 if math.isnan(shape) else max(shape, 0.5)
+        # Below one half all errors are finite, and a shape is not known to better than a tenth.
+        tail = 0.5 if math.isnan(shape) else round(max(shape, 0.5), 1)
         return _level(one, quantities), -tail, one.effective_size
 
     return worth(answer) > worth(best)
+
+
+def _several(value: Any, argument: str, what: str) -> tuple[Any, ...]:
+    if isinstance(value, str):
+        return (value,)
+    if not isinstance(value, Iterable):
+        raise ArgumentTypeError(argument, f"a list of {what}", repr(value), "Pass a list.")
+    return tuple(value)
 
 
 def _names(rungs: Any) -> list[str]:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable
+from collections.abc import Iterable
 from dataclasses import dataclass, field, replace
 from types import MappingProxyType
 from typing import Any
@@ -13,9 +13,8 @@ from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.base.shapes import stacked
 from steelyard.changes import Change
-from steelyard.changes.merging import LoglikTarget, PriorTarget, merge
-from steelyard.errors import DrawsError, RatioError, ShapeError
-from steelyard.repair.fixed import refuse_fixed, values_at
+from steelyard.changes.merging import Draft, LoglikTarget, PriorTarget, merge
+from steelyard.repair.fixed import naming_what_is_lost, ratio_at, refuse_fixed, values_at
 from steelyard.repair.space import Points, Space, space_of
 
 __all__ = ["Evaluator", "Spent", "at_draws", "evaluator_of"]
@@ -56,6 +55,8 @@ class Evaluator:
         The unconstrained space.
     spent : Spent
         Points and batches evaluated so far. A point at which both densities are found counts once.
+    from_prior : bool
+        Whether the prior of the target stands in the place of the base.
 
     Notes
     -----
@@ -66,6 +67,7 @@ class Evaluator:
     change: Change
     space: Space
     spent: Spent = field(default_factory=Spent)
+    from_prior: bool = False
 
     def __post_init__(self) -> None:
         self._draft = merge(self.record, self.change)
@@ -131,11 +133,13 @@ class Evaluator:
                 base[usable], target[usable] = self._batch(x[usable])
             return base, target
         self.spent.batches += 1
-        with _naming_what_is_lost(self.record):
+        with naming_what_is_lost(self.record):
             base, target = self._priors(draws)
+            prior = target.copy()
             self._likelihoods(draws, base, target)
+            base = prior if self.from_prior else base
             for source in self._draft.ratios:
-                target += _ratio(source, draws)
+                target += ratio_at(source, draws)
         return base + log_jacobian, target + log_jacobian
 
     def moved(self, x: Array) -> tuple[Points, Array]:
@@ -186,6 +190,11 @@ class Evaluator:
         names = () if draws is None else draws.chain_names
         made = Draws(points.values_by_name, starts, chain_axis, points.dims, points.labels, names)
         return at_draws(self.record, made)
+
+    @property
+    def draft(self) -> Draft:
+        """The change, merged into the target."""
+        return self._draft
 
     def _priors(self, draws: Points) -> tuple[Array, Array]:
         base, target = np.zeros(draws.size), np.zeros(draws.size)
@@ -287,48 +296,3 @@ def _new_prior(edited: PriorTarget, old: Array, draws: Draws) -> Array:
     if edited.factor == 0:
         return np.where(new > -np.inf, 0.0, -np.inf)
     return edited.factor * new
-
-
-def _ratio(source: Callable[..., Any], draws: Points) -> Array:
-    rows = stacked(source(MappingProxyType(dict(draws.values_by_name))), draws, "log_ratio")
-    if rows.ndim != 1:
-        raise ShapeError(
-            "log_ratio",
-            f"one number a draw, shape ({draws.size},)",
-            str(rows.shape),
-            "Sum the log ratio over its trailing axes first.",
-        )
-    out = np.array(rows, dtype=np.float64)
-    bad = np.isnan(out) | (out == np.inf)
-    if bad.any():
-        row = int(np.argmax(bad))
-        raise RatioError(
-            "log_ratio",
-            "log ratios that are finite or −inf",
-            f"{out[row]} at {draws.where(row)}",
-            "Mend the log ratio there; −inf is a weight of zero.",
-        )
-    return out
-
-
-class _naming_what_is_lost:  # noqa: N801 — read as a statement
-    """Turns the KeyError of a callable that asks for something that did not move into words."""
-
-    def __init__(self, record: Base) -> None:
-        self._lost = {
-            **{k: "derived" for k, recipe in record.derived.items() if recipe is None},
-            **dict.fromkeys(record.predictive, "predictive"),
-        }
-
-    def __enter__(self) -> None:
-        return None
-
-    def __exit__(self, kind: object, error: BaseException | None, trace: object) -> None:
-        if isinstance(error, KeyError) and error.args and error.args[0] in self._lost:
-            name = error.args[0]
-            raise DrawsError(
-                f"{self._lost[name]} {name!r}",
-                "quantities that can be recomputed where draws move",
-                "values at the base draws only",
-                f"Pass derived={{{name!r}: callable}} to Fit, or compute it inside the callable.",
-            ) from error

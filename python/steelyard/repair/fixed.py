@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
+from types import MappingProxyType
+from typing import Any
 
 import numpy as np
 
@@ -10,11 +12,12 @@ from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.base.likelihood import LoglikTerm
 from steelyard.base.priors import PriorTerm
+from steelyard.base.shapes import stacked
 from steelyard.changes.merging import Draft
 from steelyard.changes.noise import NoisyTerm, raised
-from steelyard.errors import LikelihoodError, PriorError, RatioError
+from steelyard.errors import DrawsError, LikelihoodError, PriorError, RatioError, ShapeError
 
-__all__ = ["refuse_fixed", "values_at"]
+__all__ = ["naming_what_is_lost", "ratio_at", "refuse_fixed", "values_at"]
 
 
 def values_at(term: LoglikTerm, draws: Draws) -> Iterator[tuple[slice, Array]]:
@@ -79,3 +82,49 @@ def _refuse_array_prior(term: PriorTerm, argument: str) -> None:
 def _refuse_fixed_sd(term: LoglikTerm, name: str) -> None:
     if isinstance(term, NoisyTerm) and term.plain is not None:
         _refuse_array(term.plain, f"loglik[{name!r}]")
+
+
+def ratio_at(source: Callable[..., Any], draws: Draws) -> Array:
+    """A given log ratio at points, checked."""
+    rows = stacked(source(MappingProxyType(dict(draws.values_by_name))), draws, "log_ratio")
+    if rows.ndim != 1:
+        raise ShapeError(
+            "log_ratio",
+            f"one number a draw, shape ({draws.size},)",
+            str(rows.shape),
+            "Sum the log ratio over its trailing axes first.",
+        )
+    out = np.array(rows, dtype=np.float64)
+    bad = np.isnan(out) | (out == np.inf)
+    if bad.any():
+        row = int(np.argmax(bad))
+        raise RatioError(
+            "log_ratio",
+            "log ratios that are finite or −inf",
+            f"{out[row]} at {draws.where(row)}",
+            "Mend the log ratio there; −inf is a weight of zero.",
+        )
+    return out
+
+
+class naming_what_is_lost:  # noqa: N801 — read as a statement
+    """Turns the KeyError of a callable that asks for something that did not move into words."""
+
+    def __init__(self, record: Base) -> None:
+        self._lost = {
+            **{k: "derived" for k, recipe in record.derived.items() if recipe is None},
+            **dict.fromkeys(record.predictive, "predictive"),
+        }
+
+    def __enter__(self) -> None:
+        return None
+
+    def __exit__(self, kind: object, error: BaseException | None, trace: object) -> None:
+        if isinstance(error, KeyError) and error.args and error.args[0] in self._lost:
+            name = error.args[0]
+            raise DrawsError(
+                f"{self._lost[name]} {name!r}",
+                "quantities that can be recomputed where draws move",
+                "values at the base draws only",
+                f"Pass derived={{{name!r}: callable}} to Fit, or compute it inside the callable.",
+            ) from error

@@ -9,10 +9,10 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from steelyard import _core
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.repair.affine import Affine, Moments, identity, moments_of, rematched
+from steelyard.repair.powers import partial_power
 from steelyard.repair.probing import Mapped, probe, probe_behind, probe_cost
 from steelyard.repair.spending import Purse
 from steelyard.verdicts import Finding, Verdict
@@ -21,8 +21,6 @@ from steelyard.weighing.weigh import Weights, base_weights, weigh_ratio
 
 __all__ = ["Densities", "Matched", "match_moments", "probe_plain", "rank"]
 
-# Share of the draws that the weights, or a power of them, keep while a map is estimated.
-_SHARE = 0.25
 _MOST_STEPS = 40
 # Falls of the tail shape below this are noise of its fit.
 _LEAST_FALL = 0.01
@@ -224,7 +222,7 @@ def _settled(state: _State, record: Base) -> bool:
 
 
 def _enough(state: _State, record: Base) -> bool:
-    return rank(state.weights, record)[0] == 2 and _partial(state.log_ratio, record)[0] == 1
+    return rank(state.weights, record)[0] == 2 and partial_power(state.log_ratio, record)[0] == 1
 
 
 def _halves(record: Base) -> tuple[Rows, Rows]:
@@ -238,7 +236,7 @@ def _halves(record: Base) -> tuple[Rows, Rows]:
 
 def _step(problem: _Problem, state: _State) -> tuple[str, _State] | None:
     """The first kind of map that is accepted."""
-    power, wanted = _partial(state.log_ratio, problem.record)
+    power, wanted = partial_power(state.log_ratio, problem.record)
     aims = [moments_of(state.x[rows], wanted[rows]) for rows in problem.halves]
     # On the way to the target the full map saves steps; at the target the published order holds.
     arriving = min(power, state.power) < 1
@@ -256,7 +254,7 @@ def _step(problem: _Problem, state: _State) -> tuple[str, _State] | None:
         if moved is None:
             continue
         falls = moved.weights.tail_shape < state.weights.tail_shape - _LEAST_FALL
-        nearer = power < 1 and _partial(moved.log_ratio, problem.record)[0] > 1.02 * power
+        nearer = power < 1 and partial_power(moved.log_ratio, problem.record)[0] > 1.02 * power
         if falls or nearer or (arriving and power == 1 and _enough(moved, problem.record)):
             return kind, moved
     return None
@@ -290,33 +288,6 @@ def _weights(record: Base, log_ratio: Array) -> Weights | None:
     if np.isnan(total).any() or not (total > -np.inf).any() or (total == np.inf).any():
         return None
     return weigh_ratio(log_ratio, record.log_weights, record.draws, ordered=record.ordered)
-
-
-def _partial(log_ratio: Array, record: Base) -> tuple[float, Array]:
-    """The largest power of the weights at which enough draws count, and those weights."""
-    v = record.log_weights
-    floor = _SHARE * _size(np.zeros(len(log_ratio)), v, 0.0)
-    if _size(log_ratio, v, 1.0) >= floor:
-        return 1.0, np.exp(_logs(log_ratio, v, 1.0))
-    low, high = 0.0, 1.0
-    for _ in range(40):
-        middle = (low + high) / 2
-        if _size(log_ratio, v, middle) >= floor:
-            low = middle
-        else:
-            high = middle
-    return low, np.exp(_logs(log_ratio, v, low))
-
-
-def _logs(log_ratio: Array, log_weights: Array | None, power: float) -> Array:
-    total = np.where(log_ratio > -np.inf, power * log_ratio, -np.inf)
-    if log_weights is not None:
-        total = total + log_weights
-    return np.asarray(total - _core.log_sum_exp(np.ascontiguousarray(total)[:, None])[0])
-
-
-def _size(log_ratio: Array, log_weights: Array | None, power: float) -> float:
-    return float(_core.effective_size(_logs(log_ratio, log_weights, power)[:, None], False)[0])
 
 
 def _split(problem: _Problem, first: _State, state: _State) -> tuple[Array, Weights, Array] | None:

@@ -3,14 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from steelyard.answers import Answer, Estimate, reweigh
-from steelyard.answers.estimating import Scale
-from steelyard.answers.moved import Moved
+from steelyard.answers import Estimate, reweigh
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.base.ratios import refuse_bad_ratio
@@ -22,15 +20,17 @@ from steelyard.errors import (
     SteelyardError,
 )
 from steelyard.repair.collapsing import collapse, collapse_plan
-from steelyard.repair.evaluating import at_draws
+from steelyard.repair.evaluating import Evaluator, at_draws
 from steelyard.repair.matching import match_moments, probe_plain
+from steelyard.repair.outcomes import Outcome, moved_answer, not_possible
 from steelyard.repair.pooling import pool_records
+from steelyard.repair.prior_start import prior_draws, target_prior
+from steelyard.repair.space import space_of
 from steelyard.repair.tempered import Tempered
 from steelyard.repair.tempering import temper
-from steelyard.verdicts import Finding, judge
-from steelyard.weighing.supports import support_findings
+from steelyard.verdicts import judge
 from steelyard.weighing.trust import shared_findings, weight_findings
-from steelyard.weighing.weigh import Weights, base_weights, weigh_ratio
+from steelyard.weighing.weigh import weigh_ratio
 
 if TYPE_CHECKING:
     from steelyard.repair.climbing import Climb
@@ -40,9 +40,6 @@ __all__ = [
     "INTERRUPTED",
     "MOVING",
     "RUNGS",
-    "Outcome",
-    "moved_answer",
-    "not_possible",
     "smoothing_cost",
 ]
 
@@ -52,21 +49,6 @@ INTERRUPTED = "stopped by Ctrl-C"
 EMPTY = "the limit was reached"
 # Fewer are too few for the islands that the errors come from.
 _LEAST_PARTICLES = 1000
-
-
-@dataclass(frozen=True, eq=False)
-class Outcome:
-    """
-    What a rung gave: an answer, or why there is none.
-
-    `evaluations` are those that the shared counter does not know of; `applies` is False for a rung
-    that has nothing to do with the change.
-    """
-
-    answer: Answer | None
-    stopped: str = ""
-    evaluations: int = 0
-    applies: bool = True
 
 
 def smoothing(climb: Climb) -> Outcome:
@@ -102,6 +84,8 @@ def smoothing_cost(climb: Climb) -> int:
 
 def moment_matching(climb: Climb) -> Outcome:
     """The draws moved by affine maps."""
+    if climb.has_gap:
+        return Outcome(None, "no map of the base's draws leaves its support")
     evaluator = climb.evaluator
     matched = match_moments(climb.record, climb.start, evaluator.both, climb.purse)
     if matched is None:
@@ -146,11 +130,6 @@ def collapsing(climb: Climb) -> Outcome:
     return Outcome(moved_answer(climb, moved, weights, found.ratio, how, findings, is_paired=True))
 
 
-def not_possible(error: SteelyardError) -> str:
-    """What bars a rung, in a line."""
-    return f"not possible: {error.argument} is {error.came}"
-
-
 # Batches between two looks at the clock.
 _BATCHES = 10
 # Conditional effective size that a temperature keeps: at first, and where that was too little.
@@ -159,17 +138,24 @@ _EFFICIENCIES = (0.9, 0.97)
 
 def tempering(climb: Climb) -> Outcome:
     """The draws moved by temperatures."""
-    record, evaluator, purse = climb.record, climb.evaluator, climb.purse
+    record, purse = climb.record, climb.purse
+    try:
+        evaluator = _beyond(climb) if climb.has_gap else climb.evaluator
+    except PriorError as error:
+        if climb.is_explicit:
+            raise
+        return Outcome(None, not_possible(error))
     particles = max(record.draws.size, _LEAST_PARTICLES)
     if not purse.allows(particles):
         return Outcome(None)
-    run = _run(climb, _EFFICIENCIES[0], particles)
+    run = _run(climb, evaluator, _EFFICIENCIES[0], particles)
     if run.finished and not run.verdict.is_sound and purse.allows(particles):
         # Once more with temperatures that lie closer; the better run counts.
-        again = _run(climb, _EFFICIENCIES[1], particles)
+        again = _run(climb, evaluator, _EFFICIENCIES[1], particles)
         run = again if again.finished and again.verdict.level > run.verdict.level else run
     answer = run.answer()
-    how = f"tempered over {len(run.history)} temperatures in {run.islands} islands"
+    start = " from the target's prior" if climb.has_gap else ""
+    how = f"tempered{start} over {len(run.history)} temperatures in {run.islands} islands"
     moved = replace(evaluator.at(run.points, run.draws), ordered=True)
     made = moved_answer(
         climb,
@@ -179,7 +165,7 @@ def tempering(climb: Climb) -> Outcome:
         how,
         answer._findings,
         is_paired=False,
-        log_constant=run.bridged_constant if run.finished else run.log_constant,
+        log_constant=None if climb.has_gap else _constant(run),
     )
     said = "" if run.finished else INTERRUPTED if run.stopped == "Ctrl-C" else EMPTY
     return Outcome(made, said)
@@ -209,14 +195,31 @@ def _record_of(fit: Any) -> Base:
     return record
 
 
-def _run(climb: Climb, efficiency: float, particles: int) -> Tempered:
+def _constant(run: Tempered) -> Estimate:
+    return run.bridged_constant if run.finished else run.log_constant
+
+
+def _beyond(climb: Climb) -> Evaluator:
+    """Prior and target of a target that reaches beyond the base's support, in its own space."""
+    draft = climb.evaluator.draft
+    terms = target_prior(climb.record, draft)
+    space = space_of(climb.record, terms, climb.ascending)
+    return Evaluator(climb.record, climb.change, space, climb.purse.spent, from_prior=True)
+
+
+def _run(climb: Climb, evaluator: Evaluator, efficiency: float, particles: int) -> Tempered:
     """One run from the base draws to the target, within the limits."""
-    purse = climb.purse
+    purse, record = climb.purse, climb.record
+
+    def sampled(size: int, generator: np.random.Generator) -> Array:
+        terms = target_prior(record, evaluator.draft)
+        return evaluator.space.free(prior_draws(record, terms, size, generator))
+
     run = temper(
-        climb.start,
-        climb.evaluator.base,
-        climb.evaluator.target,
-        start_log_weights=climb.record.log_weights,
+        sampled if climb.has_gap else climb.start,
+        evaluator.base,
+        evaluator.target,
+        start_log_weights=None if climb.has_gap else record.log_weights,
         size=particles,
         efficiency=efficiency,
         most_evaluations=particles,
@@ -233,37 +236,6 @@ def _run(climb: Climb, efficiency: float, particles: int) -> Tempered:
             purse.is_empty = True
             break
     return run
-
-
-def moved_answer(
-    climb: Climb,
-    record: Base,
-    weights: Weights,
-    log_ratio: Array,
-    how: str,
-    findings: tuple[Finding, ...],
-    *,
-    is_paired: bool,
-    log_constant: Estimate | None = None,
-) -> Answer:
-    """The answer of draws that are not the base's own."""
-    own = base_weights(climb.record)
-    origin = Scale(climb.record, own, own, ())
-    target = climb.plain._target
-    supports = () if target is None else support_findings(climb.record, target)
-    notes = [f for f in climb.plain._findings if f.code in ("base_unverified", "support_unknown")]
-    found = (*findings, *supports, *notes, judge("draws_moved", how=how))
-    unique = {(f.code, tuple(f.words.items())): f for f in found}
-    base = own if is_paired else weights
-    return Answer(
-        record,
-        weights,
-        base,
-        tuple(unique.values()),
-        climb.change,
-        target,
-        Moved(origin, is_paired, np.array(log_ratio), log_constant),
-    )
 
 
 RUNGS: Mapping[str, Callable[[Climb], Outcome]] = {

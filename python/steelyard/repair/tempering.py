@@ -80,7 +80,8 @@ def temper(
         How particles move; ``"mixed"`` takes independence and random walk, in the proportion in
         which they lead far.
     waste_free : bool or int, optional
-        Whether all states of the moves are kept; a number says how many of each particle.
+        Whether all states of the moves are kept; a number says how many of each particle, by
+        default 20. It takes ten times as many particles in each island.
     islands : int, optional
         Groups that are resampled each by itself: at least 10, since their spread is the error. Or
         1 with multinomial resampling, whose lineages give the variance.
@@ -142,11 +143,10 @@ def temper(
     drawn = read_start(start)
     for name, function in (("source", source), ("target", target)):
         refuse_no_function(function, name)
+    count = read_islands(islands, scheme, waste_free)
     length = read_chain_length(waste_free)
-    count = read_islands(islands, scheme, length)
-    layout = Islands(
-        count, start_size(drawn, size, count, length), scheme, neighbours=not callable(drawn)
-    )
+    each = start_size(drawn, size, count, length)
+    layout = Islands(count, each, scheme, neighbours=not callable(drawn))
     densities = Densities(source, target, source_gradient, target_gradient)
     families = read_families(move, densities)
     setting = Setting(densities, layout, families, read_share(efficiency), length)
