@@ -80,7 +80,7 @@ pub fn multi_sample(
     expect_shape("counts", &[draws], &[counts.len()])?;
     expect_shape("sizes", &[densities], &[sizes.len()])?;
     expect_shape("start", &[densities], &[start.len()])?;
-    if let Some(&found) = sizes.iter().find(|&&size| !(size > 0.0)) {
+    if let Some(&found) = sizes.iter().find(|&&size| size.is_nan() || size <= 0.0) {
         return Err(KernelError::Range {
             argument: "sizes",
             expected: "positive sizes",
@@ -115,7 +115,7 @@ fn roughly(
 ) -> Result<Vec<f64>, KernelError> {
     let counts: Vec<f64> = counts.iter().copied().step_by(EVERY).collect();
     let share = sum(&counts) / sum(sizes);
-    if !(share > 0.0) {
+    if share.is_nan() || share <= 0.0 {
         return Ok(start.to_vec());
     }
     let sizes: Vec<f64> = sizes.iter().map(|size| size * share).collect();

@@ -199,12 +199,12 @@ impl Work for Scale<'_> {
                 *top = if value > *top { value } else { *top };
             }
         }
-        for row in 0..TILE {
-            self.units[row] = tops[row];
-            if tops[row] == f64::NEG_INFINITY {
+        self.units.copy_from_slice(&tops);
+        for (top, count) in tops.iter_mut().zip(&mut *self.counts) {
+            if *top == f64::NEG_INFINITY {
                 // Padding, or a draw that no density knows: any share, and no weight.
-                self.counts[row] = 0.0;
-                tops[row] = 0.0;
+                *count = 0.0;
+                *top = 0.0;
             }
         }
         for column in self.scaled.chunks_exact_mut(TILE) {
