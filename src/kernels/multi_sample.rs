@@ -273,7 +273,8 @@ impl Search<'_> {
         sums: &Sums,
         interrupt: &Interrupt<'_>,
     ) -> Result<(Vec<f64>, Sums), KernelError> {
-        let own = |k: usize| libm::log(self.sizes[k] / sums.firsts[k].max(f64::MIN_POSITIVE));
+        let log = |x: f64| libm::log(x.max(f64::MIN_POSITIVE));
+        let own = |k: usize| log(self.sizes[k]) - log(sums.firsts[k]);
         let moved: Vec<f64> = (0..self.sizes.len())
             .map(|k| self.moved[k] + (own(k) - own(0)).clamp(-10.0 * FAR, 10.0 * FAR))
             .collect();
