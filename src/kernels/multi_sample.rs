@@ -100,8 +100,12 @@ pub fn multi_sample(
         tiles: Vec::new(),
         moved: vec![0.0; densities],
     };
-    search.scale(interrupt)?;
-    let last_step = if solve { search.run(interrupt)? } else { 0.0 };
+    let sums = search.scale(interrupt)?;
+    let last_step = if solve {
+        search.run(sums, interrupt)?
+    } else {
+        0.0
+    };
     search.finish(last_step, interrupt)
 }
 
@@ -115,7 +119,7 @@ fn roughly(
 ) -> Result<Vec<f64>, KernelError> {
     let counts: Vec<f64> = counts.iter().copied().step_by(EVERY).collect();
     let share = sum(&counts) / sum(sizes);
-    if !(share > 0.0) {
+    if share.is_nan() || share <= 0.0 {
         return Ok(start.to_vec());
     }
     let sizes: Vec<f64> = sizes.iter().map(|size| size * share).collect();
@@ -135,8 +139,8 @@ struct Search<'a> {
 }
 
 impl Search<'_> {
-    /// Takes the exponentials of the densities at the constants reached.
-    fn scale(&mut self, interrupt: &Interrupt<'_>) -> Result<(), KernelError> {
+    /// Takes the exponentials of the densities at the constants reached, and the sums there.
+    fn scale(&mut self, interrupt: &Interrupt<'_>) -> Result<Sums, KernelError> {
         for (constant, moved) in self.constants.iter_mut().zip(&mut self.moved) {
             *constant += *moved;
             *moved = 0.0;
@@ -152,27 +156,38 @@ impl Search<'_> {
             .axis_chunks_iter(Axis(0), ROWS)
             .zip(self.counts.chunks(ROWS))
             .collect();
-        self.tiles = map_tasks(tasks, interrupt, |(rows, counts)| {
-            Ok(Tiles::new(rows, counts, &shift))
+        let still = Constants::new(&self.moved);
+        let parts = map_tasks(tasks, interrupt, |(rows, counts)| {
+            // Summed while they are near.
+            let tiles = Tiles::new(rows, counts, &shift);
+            let sums = tiles.sums(&still);
+            Ok((tiles, sums))
         })?;
-        Ok(())
+        let (tiles, sums): (Vec<Tiles>, Vec<Sums>) = parts.into_iter().unzip();
+        self.tiles = tiles;
+        Ok(self.added(&sums))
     }
 
     fn sums(&self, moved: &[f64], interrupt: &Interrupt<'_>) -> Result<Sums, KernelError> {
         let constants = Constants::new(moved);
         let tasks: Vec<&Tiles> = self.tiles.iter().collect();
         let parts = map_tasks(tasks, interrupt, |tiles| Ok(tiles.sums(&constants)))?;
+        Ok(self.added(&parts))
+    }
+
+    /// Sums of the tasks added in their order.
+    fn added(&self, parts: &[Sums]) -> Sums {
         let added =
             |entry: &(dyn Fn(&Sums) -> f64 + Sync)| sum_by(parts.len(), |part| entry(&parts[part]));
         let entries = |length: usize, of: fn(&Sums) -> &[f64]| {
             (0..length).map(|i| added(&|part| of(part)[i])).collect()
         };
         let densities = self.sizes.len();
-        Ok(Sums {
+        Sums {
             logs: added(&|part| part.logs),
             firsts: entries(densities, |part| &part.firsts),
             products: entries(densities * (densities + 1) / 2, |part| &part.products),
-        })
+        }
     }
 
     /// `Σ c log Σ_l n_l exp(f_l) q_l − Σ n_l f_l`, up to what is fixed by the scaling.
@@ -180,8 +195,7 @@ impl Search<'_> {
         sums.logs - sum_by(moved.len(), |k| self.sizes[k] * moved[k])
     }
 
-    fn run(&mut self, interrupt: &Interrupt<'_>) -> Result<f64, KernelError> {
-        let mut sums = self.sums(&self.moved, interrupt)?;
+    fn run(&mut self, mut sums: Sums, interrupt: &Interrupt<'_>) -> Result<f64, KernelError> {
         let mut length = 0.0;
         for _ in 0..MOST_STEPS {
             let step = self.newton(&sums);
@@ -200,8 +214,7 @@ impl Search<'_> {
             self.moved = moved;
             sums = found;
             if longest(&self.moved) > FAR {
-                self.scale(interrupt)?;
-                sums = self.sums(&self.moved, interrupt)?;
+                sums = self.scale(interrupt)?;
             }
         }
         Ok(length)
@@ -273,7 +286,8 @@ impl Search<'_> {
         sums: &Sums,
         interrupt: &Interrupt<'_>,
     ) -> Result<(Vec<f64>, Sums), KernelError> {
-        let own = |k: usize| libm::log(self.sizes[k] / sums.firsts[k].max(f64::MIN_POSITIVE));
+        let log = |x: f64| libm::log(x.max(f64::MIN_POSITIVE));
+        let own = |k: usize| log(self.sizes[k]) - log(sums.firsts[k]);
         let moved: Vec<f64> = (0..self.sizes.len())
             .map(|k| self.moved[k] + (own(k) - own(0)).clamp(-10.0 * FAR, 10.0 * FAR))
             .collect();

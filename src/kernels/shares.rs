@@ -10,7 +10,7 @@ use super::vector::{Arithmetic, Work, dispatch};
 /// Draws of a tile; one a lane.
 const TILE: usize = 256;
 
-const LANES: usize = 8;
+const LANES: usize = 16;
 
 /// Products formed with one reading of a column.
 const TOGETHER: usize = 4;
@@ -191,20 +191,36 @@ impl Work for Scale<'_> {
     fn run<A: Arithmetic>(self) {
         let rows = self.part.nrows();
         let mut tops = [f64::NEG_INFINITY; TILE];
-        let columns = self.scaled.chunks_exact_mut(TILE).zip(self.shift);
-        for (entries, (column, shift)) in self.part.columns().into_iter().zip(columns) {
-            for ((into, entry), top) in column.iter_mut().zip(entries).zip(&mut tops) {
-                let value = entry + shift;
-                *into = value;
-                *top = if value > *top { value } else { *top };
+        let densities = self.shift.len();
+        match self.part.as_slice() {
+            Some(entries) => {
+                for (row, (entries, top)) in
+                    entries.chunks_exact(densities).zip(&mut tops).enumerate()
+                {
+                    for (k, (entry, shift)) in entries.iter().zip(self.shift).enumerate() {
+                        let value = entry + shift;
+                        self.scaled[k * TILE + row] = value;
+                        *top = if value > *top { value } else { *top };
+                    }
+                }
+            }
+            None => {
+                let columns = self.scaled.chunks_exact_mut(TILE).zip(self.shift);
+                for (entries, (column, shift)) in self.part.columns().into_iter().zip(columns) {
+                    for ((into, entry), top) in column.iter_mut().zip(entries).zip(&mut tops) {
+                        let value = entry + shift;
+                        *into = value;
+                        *top = if value > *top { value } else { *top };
+                    }
+                }
             }
         }
-        for row in 0..TILE {
-            self.units[row] = tops[row];
-            if tops[row] == f64::NEG_INFINITY {
+        self.units.copy_from_slice(&tops);
+        for (top, count) in tops.iter_mut().zip(&mut *self.counts) {
+            if *top == f64::NEG_INFINITY {
                 // Padding, or a draw that no density knows: any share, and no weight.
-                self.counts[row] = 0.0;
-                tops[row] = 0.0;
+                *count = 0.0;
+                *top = 0.0;
             }
         }
         for column in self.scaled.chunks_exact_mut(TILE) {
@@ -324,7 +340,7 @@ fn dots<A: Arithmetic, const N: usize>(weighted: &[f64; TILE], columns: &[f64]) 
 
 #[inline(always)]
 fn tree(mut lanes: [f64; LANES]) -> f64 {
-    for half in [4, 2, 1] {
+    for half in [8, 4, 2, 1] {
         for lane in 0..half {
             lanes[lane] += lanes[lane + half];
         }

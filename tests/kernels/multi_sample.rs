@@ -106,7 +106,7 @@ fn fifteen_draws_of_three_wells() {
         -0.5 * wells[k].0 * f64::powi(x[s] - wells[k].1, 2)
     });
     let found = solved(&log_q, &[1.0; 15], &[5.0; 3], &[0.0; 3]);
-    let expected = [0.0, 0.238_935_025_542_407_99, 0.514_010_266_823_190_6];
+    let expected = [0.0, 0.238_935_025_542_408, 0.514_010_266_823_190_6];
     assert_close(&found.constants, &expected, 1e-13);
 }
 

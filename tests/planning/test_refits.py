@@ -108,6 +108,10 @@ def test_a_scenario_out_of_reach_is_refitted_itself_and_counted_on_for_no_other(
     assert found.efficiency.verdict[0].is_sound
     assert found.from_base.verdict[0].level == "refit"
     assert "out of reach" in str(found)
+    assert found.broadest == "far"
+    # One that is broader than the base shows more than one that is only far.
+    wide = {**far, "wide": sy.swap_prior(mu=sy.Normal(0, 1.5))}
+    assert fit.plan_refits(wide, efficiency=0.4).broadest == "wide"
 
 
 def test_a_support_gap_is_out_of_reach_though_no_weight_shows_it() -> None:

@@ -80,17 +80,19 @@ class Problem:
         """
         The base that serves the worst served scenario best.
 
-        Of several scenarios out of reach the one whose weights spread the draws most, since of
-        them no more can be seen from here.
+        Where scenarios are out of reach little can be seen from here: then the one that spreads
+        the draws most, if that is more than now; else the most spread of those out of reach.
         """
-        far = np.flatnonzero(self.far)
-        if len(far):
-            return self.names[int(far[np.argmax([self._spread(int(place)) for place in far])])]
+        if self.far.any():
+            spreads = np.array([self._spread(column) for column in range(len(self.names) + 1)])
+            wider = spreads[1:] > spreads[0]
+            held = np.flatnonzero(wider if wider.any() else self.far)
+            return self.names[int(held[np.argmax(spreads[1:][held])])]
         row = int(np.argmax(self.between().min(axis=1)))
         return BASE if row == 0 else self.names[row - 1]
 
-    def _spread(self, place: int) -> float:
-        draws, w = self.base.draws, self.weights[:, 1 + place]
+    def _spread(self, column: int) -> float:
+        draws, w = self.base.draws, self.weights[:, column]
         held = [draws[name].reshape(draws.size, -1) for name in self.base.parameters]
         columns = np.concatenate(held, axis=1)
         variance = w @ (columns - w @ columns) ** 2

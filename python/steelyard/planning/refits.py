@@ -87,10 +87,15 @@ class RefitPlan(Frozen):
         """What to do first, in one sentence."""
         if not self.refits:
             return "No refit is needed: the base draws answer every scenario."
-        if len(self.out_of_reach) > 1:
+        if self.out_of_reach:
+            why = (
+                "nothing can be predicted of it from here"
+                if self.broadest in self.out_of_reach
+                else "its draws reach further than these"
+            )
             return (
-                f"Refit {self.broadest!r} first and plan again from its draws: of the other "
-                "scenarios out of reach some may then be answered without a refit."
+                f"Refit {self.broadest!r} first, pool it and plan again: {why}, and fewer refits "
+                "may then do."
             )
         least = self.between.min(axis=1)
         row = 0 if self.broadest == BASE else 1 + self.names.index(self.broadest)
