@@ -137,7 +137,9 @@ class Study:
             else float(_core.log_sum_exp(given[:, None])[0])
         )
         series = plain_nodes.SERIES
-        rest = found[:, plain_nodes.ABOUT :].reshape(len(found), len(self.columns.rows), -1)
+        width = series * (2 if self.shift else 1) + len(self.edges) - 1
+        shape = (len(found), len(self.columns.rows), width)
+        rest = found[:, plain_nodes.ABOUT :].reshape(shape)
         shift = rest[:, :, series : 2 * series] if self.shift else None
         if shift is not None:
             # Effective draws on the sides of an event are those of its probability.
