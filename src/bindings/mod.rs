@@ -1,8 +1,8 @@
 //! The module `steelyard._core`: convert, detach from the interpreter, call a kernel, map errors.
 
 mod arrays;
-mod deletion;
 mod chain_means;
+mod deletion;
 mod densities;
 mod effective;
 mod errors;
@@ -31,9 +31,9 @@ use pyo3::prelude::*;
 #[pymodule]
 mod _core {
     #[pymodule_export]
-    use super::deletion::delete;
-    #[pymodule_export]
     use super::chain_means::chain_means;
+    #[pymodule_export]
+    use super::deletion::delete;
     #[pymodule_export]
     use super::densities::{
         beta_tails, digamma, gamma_tails, log_beta, log_density, log_normal_cdf, skew_normal_tails,
