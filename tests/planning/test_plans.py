@@ -167,8 +167,12 @@ def test_bands_are_wider_than_single_intervals_and_sides_are_told(fit: Any) -> N
         assert row["high"] - row["low"] == pytest.approx(2 * half)
         if row["quantity"] == EVENT:
             assert row["side"] == ("above" if row["value"] > 0.6 else "not above")
+            answer = fit.reweigh(SCENARIOS[row["scenario"]])
+            told = answer.prob(EVENT, level=0.6).decision.right
+            assert row["right_side"] == pytest.approx(told, nan_ok=True)
         else:
             assert row["side"] == ""
+            assert row["right_side"] is None
 
 
 def test_a_change_that_changes_nothing_moves_nothing(fit: Any) -> None:

@@ -14,6 +14,7 @@ from steelyard import _core
 from steelyard.answers.bands import batch_edges, critical_value
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.quantities import Quantity, event_mask
+from steelyard.answers.student import student_cdf
 from steelyard.answers.tabulate import element_names
 from steelyard.arrays import Frozen, ReadOnly
 from steelyard.base import Base
@@ -74,10 +75,17 @@ class Triage(Frozen):
         """
         One row for each scenario and element of a quantity; failed scenarios have a row too.
 
-        ``low`` and ``high`` are the simultaneous 95 % band of the shift.
+        ``low`` and ``high`` are the simultaneous 95 % band of the shift; ``right_side`` is the
+        Monte Carlo probability that the deciding event's probability is on the ``side`` where it
+        seems to be, NaN where it is not sound.
         """
         names = ["scenario", "planned", "quantity", "value", "error", "shift", "shift_error"]
-        names += ["low", "high", *self._quantile_names(), *(["side"] if self.decision else [])]
+        names += [
+            "low",
+            "high",
+            *self._quantile_names(),
+            *(["side", "right_side"] if self.decision else []),
+        ]
         names += ["level", "shift_level", "reasons"]
         rows = [row for s in self.plan.scenarios for row in self._rows(s.name, s.later)]
         columns = {name: [row[name] for row in rows] for name in names}
@@ -96,7 +104,7 @@ class Triage(Frozen):
             figures = ("value", "error", "shift", "shift_error", "low", "high")
             blank = dict.fromkeys((*figures, *self._quantile_names()), math.nan)
             told = {"level": "failed", "shift_level": "failed", "reasons": self.failed[name]}
-            yield {**first, "quantity": "", **blank, "side": "", **told}
+            yield {**first, "quantity": "", **blank, "side": "", "right_side": None, **told}
             return
         place = self.names.index(name)
         for label, estimate in self.value.items():
@@ -124,6 +132,7 @@ class Triage(Frozen):
             "high": shift + half,
             **self._quantiles_at(label, at),
             "side": self._side(label, value),
+            "right_side": self._right_side(label, at),
             "level": str(verdicts[0].level),
             "shift_level": str(verdicts[1].level),
             "reasons": ", ".join(codes),
@@ -138,6 +147,15 @@ class Triage(Frozen):
         if label != self.decision or self.plan.level is None or math.isnan(value):
             return ""
         return "above" if value > self.plan.level else "not above"
+
+    def _right_side(self, label: str, at: tuple[int, ...]) -> float | None:
+        if label != self.decision or self.plan.level is None:
+            return None
+        found = self.value[label]
+        if not found.verdict[at].is_sound or not found.error[at] > 0:
+            return math.nan
+        apart = np.abs(found.value[at] - self.plan.level) / found.error[at]
+        return float(student_cdf(np.array([apart]), np.array([found.degrees[at]]))[0])
 
     @property
     def plot(self) -> TriagePlots:
