@@ -5,6 +5,7 @@ use ndarray::{ArrayView2, ArrayViewMut2, Axis};
 use super::lease::Lease;
 use super::vector::exp::exp;
 use super::vector::ln::{is_ordinary, ln};
+use super::vector::transpose::{LINE, columns_to_rows, rows_to_columns};
 use super::vector::{Arithmetic, Work, dispatch};
 
 /// Draws of a tile; one a lane.
@@ -39,35 +40,42 @@ pub struct Sums {
     pub products: Vec<f64>,
 }
 
-/// Densities of some draws, each draw in a unit of its own in which the largest is 1.
+/// Draws with those that fill the last tile.
+pub fn padded(draws: usize) -> usize {
+    draws.next_multiple_of(TILE)
+}
+
+/// Some draws, each with a unit of its own in which its largest density is 1; the densities in
+/// these units are kept elsewhere, tile after tile, column after column.
 pub struct Tiles {
-    densities: usize,
-    /// Tile after tile, column after column.
-    scaled: Vec<f64>,
     /// Log of each draw's unit.
     units: Vec<f64>,
     counts: Vec<f64>,
 }
 
 impl Tiles {
-    /// `Q_k = exp(log q_k + shift_k − unit)`; draws on which all vanish count nothing.
-    pub fn new(log_densities: ArrayView2<'_, f64>, counts: &[f64], shift: &[f64]) -> Self {
-        let (rows, densities) = log_densities.dim();
-        let whole = rows.next_multiple_of(TILE);
+    /// `Q_k = exp(log q_k + shift_k − unit)`, written into `scaled`; draws on which all vanish count
+    /// nothing.
+    pub fn new(
+        log_densities: ArrayView2<'_, f64>,
+        counts: &[f64],
+        shift: &[f64],
+        scaled: &mut [f64],
+    ) -> Self {
+        let whole = padded(log_densities.nrows());
         let mut tiles = Self {
-            densities,
-            scaled: vec![0.0; whole * densities],
             units: vec![0.0; whole],
             counts: counts.to_vec(),
         };
         tiles.counts.resize(whole, 0.0);
         let parts = log_densities.axis_chunks_iter(Axis(0), TILE);
-        for (tile, part) in parts.enumerate() {
+        let scaled = scaled.chunks_mut(TILE * shift.len());
+        for (tile, (part, scaled)) in parts.zip(scaled).enumerate() {
             let first = tile * TILE;
             dispatch(Scale {
                 part,
                 shift,
-                scaled: &mut tiles.scaled[first * densities..][..TILE * densities],
+                scaled,
                 units: &mut tiles.units[first..][..TILE],
                 counts: &mut tiles.counts[first..][..TILE],
             });
@@ -75,23 +83,37 @@ impl Tiles {
         tiles
     }
 
-    /// The sums over the draws of these tiles.
-    pub fn sums(&self, constants: &Constants) -> Sums {
-        let densities = self.densities;
+    /// The sums over the draws of these tiles; the first ones alone unless `all` are asked for.
+    pub fn sums(&self, scaled: &[f64], constants: &Constants, all: bool) -> Sums {
+        let densities = constants.factors.len();
         let mut sums = Sums {
             logs: 0.0,
             firsts: vec![0.0; densities],
             products: vec![0.0; densities * (densities + 1) / 2],
         };
         let mut shares = Lease::new(TILE * densities);
-        for (tile, counts) in self.counts.chunks(TILE).enumerate() {
-            dispatch(Add {
-                scaled: &self.scaled[tile * TILE * densities..][..TILE * densities],
-                factors: &constants.factors,
-                counts,
-                shares: &mut shares,
-                sums: &mut sums,
-            });
+        let tiles = self
+            .counts
+            .chunks(TILE)
+            .zip(scaled.chunks(TILE * densities));
+        for (counts, scaled) in tiles {
+            let factors = &constants.factors;
+            if all {
+                dispatch(Add {
+                    scaled,
+                    factors,
+                    counts,
+                    shares: &mut shares,
+                    sums: &mut sums,
+                });
+            } else {
+                dispatch(AddFirsts {
+                    scaled,
+                    factors,
+                    counts,
+                    firsts: &mut sums.firsts,
+                });
+            }
         }
         sums
     }
@@ -99,16 +121,21 @@ impl Tiles {
     /// Writes the shares, and the logs of the mixture.
     pub fn deliver(
         &self,
+        scaled: &[f64],
         constants: &Constants,
         mut shares: ArrayViewMut2<'_, f64>,
         logs: &mut [f64],
     ) {
+        let whole = TILE * constants.factors.len();
+        let mut columns = Lease::new(whole);
         let parts = shares.axis_chunks_iter_mut(Axis(0), TILE);
-        for (tile, (into, logs)) in parts.zip(logs.chunks_mut(TILE)).enumerate() {
+        let parts = parts.zip(logs.chunks_mut(TILE)).zip(scaled.chunks(whole));
+        for (((into, logs), scaled), units) in parts.zip(self.units.chunks(TILE)) {
             dispatch(Deliver {
-                scaled: &self.scaled[tile * TILE * self.densities..][..TILE * self.densities],
+                scaled,
                 factors: &constants.factors,
-                units: &self.units[tile * TILE..][..TILE],
+                units,
+                columns: &mut columns,
                 shares: into,
                 logs,
             });
@@ -120,6 +147,7 @@ struct Deliver<'a> {
     scaled: &'a [f64],
     factors: &'a [f64],
     units: &'a [f64],
+    columns: &'a mut [f64],
     shares: ArrayViewMut2<'a, f64>,
     logs: &'a mut [f64],
 }
@@ -140,25 +168,59 @@ impl Work for Deliver<'_> {
                 };
             *total = if known { 1.0 / *total } else { 0.0 };
         }
-        let densities = self.factors.len();
-        let columns = self.scaled.chunks_exact(TILE).zip(self.factors);
+        let from = self.scaled.chunks_exact(TILE).zip(self.factors);
+        for (column, (entries, factor)) in self.columns.chunks_exact_mut(TILE).zip(from) {
+            for row in 0..TILE {
+                column[row] = factor * entries[row] * total[row];
+            }
+        }
         match self.shares.as_slice_mut() {
-            Some(rows) => {
-                for (k, (column, factor)) in columns.enumerate() {
-                    let places = rows[k..].iter_mut().step_by(densities);
-                    for ((place, entry), total) in places.zip(column).zip(&total) {
-                        *place = factor * entry * total;
+            Some(rows) => turn_back(self.columns, rows, self.factors.len()),
+            None => {
+                let columns = self.columns.chunks_exact(TILE);
+                for (mut into, column) in self.shares.columns_mut().into_iter().zip(columns) {
+                    for (place, entry) in into.iter_mut().zip(column) {
+                        *place = *entry;
                     }
                 }
             }
-            None => {
-                for (mut into, (column, factor)) in
-                    self.shares.columns_mut().into_iter().zip(columns)
-                {
-                    for ((place, entry), total) in into.iter_mut().zip(column).zip(&total) {
-                        *place = factor * entry * total;
-                    }
-                }
+        }
+    }
+}
+
+/// Writes the columns of a tile as rows of `densities` entries.
+#[inline(always)]
+fn turn_back(columns: &[f64], rows: &mut [f64], densities: usize) {
+    for (eight, rows) in rows.chunks_mut(LINE * densities).enumerate() {
+        let first = eight * LINE;
+        let mut done = 0;
+        if rows.len() == LINE * densities {
+            let mut lines = rows.chunks_exact_mut(densities);
+            let lines = [(); LINE].map(|()| lines.next().unwrap_or_default());
+            done = columns_to_rows(&columns[first..], TILE, lines);
+        }
+        for (row, line) in rows.chunks_exact_mut(densities).enumerate() {
+            for (k, entry) in line.iter_mut().enumerate().skip(done) {
+                *entry = columns[k * TILE + first + row];
+            }
+        }
+    }
+}
+
+/// Writes rows of `densities` entries as the columns of a tile.
+#[inline(always)]
+fn turn(rows: &[f64], columns: &mut [f64], densities: usize) {
+    for (eight, rows) in rows.chunks(LINE * densities).enumerate() {
+        let first = eight * LINE;
+        let mut done = 0;
+        if rows.len() == LINE * densities {
+            let mut lines = rows.chunks_exact(densities);
+            let lines = [(); LINE].map(|()| lines.next().unwrap_or_default());
+            done = rows_to_columns(lines, &mut columns[first..], TILE);
+        }
+        for (row, line) in rows.chunks_exact(densities).enumerate() {
+            for (k, entry) in line.iter().enumerate().skip(done) {
+                columns[k * TILE + first + row] = *entry;
             }
         }
     }
@@ -191,28 +253,22 @@ impl Work for Scale<'_> {
     fn run<A: Arithmetic>(self) {
         let rows = self.part.nrows();
         let mut tops = [f64::NEG_INFINITY; TILE];
-        let densities = self.shift.len();
         match self.part.as_slice() {
-            Some(entries) => {
-                for (row, (entries, top)) in
-                    entries.chunks_exact(densities).zip(&mut tops).enumerate()
-                {
-                    for (k, (entry, shift)) in entries.iter().zip(self.shift).enumerate() {
-                        let value = entry + shift;
-                        self.scaled[k * TILE + row] = value;
-                        *top = if value > *top { value } else { *top };
+            Some(entries) => turn(entries, self.scaled, self.shift.len()),
+            None => {
+                let columns = self.scaled.chunks_exact_mut(TILE);
+                for (entries, column) in self.part.columns().into_iter().zip(columns) {
+                    for (into, entry) in column.iter_mut().zip(entries) {
+                        *into = *entry;
                     }
                 }
             }
-            None => {
-                let columns = self.scaled.chunks_exact_mut(TILE).zip(self.shift);
-                for (entries, (column, shift)) in self.part.columns().into_iter().zip(columns) {
-                    for ((into, entry), top) in column.iter_mut().zip(entries).zip(&mut tops) {
-                        let value = entry + shift;
-                        *into = value;
-                        *top = if value > *top { value } else { *top };
-                    }
-                }
+        }
+        for (column, shift) in self.scaled.chunks_exact_mut(TILE).zip(self.shift) {
+            column[rows..].fill(f64::NEG_INFINITY);
+            for (entry, top) in column.iter_mut().zip(&mut tops) {
+                *entry += shift;
+                *top = if *entry > *top { *entry } else { *top };
             }
         }
         self.units.copy_from_slice(&tops);
@@ -272,6 +328,35 @@ impl Work for Add<'_> {
                 products::<A>(&weighted, four, &mut self.sums.products[place..]);
                 place += four.len() / TILE;
             }
+        }
+    }
+}
+
+struct AddFirsts<'a> {
+    scaled: &'a [f64],
+    factors: &'a [f64],
+    counts: &'a [f64],
+    firsts: &'a mut [f64],
+}
+
+impl Work for AddFirsts<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let mut weights = totals::<A>(self.scaled, self.factors);
+        for (weight, count) in weights.iter_mut().zip(self.counts) {
+            *weight = count / *weight;
+        }
+        let mut found = 0;
+        for four in self.scaled.chunks(TOGETHER * TILE) {
+            let count = four.len() / TILE;
+            let mut sums = [0.0; TOGETHER];
+            products::<A>(&weights, four, &mut sums);
+            for (k, sum) in (found..found + count).zip(sums) {
+                self.firsts[k] += self.factors[k] * sum;
+            }
+            found += count;
         }
     }
 }
