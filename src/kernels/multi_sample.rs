@@ -282,7 +282,7 @@ impl<'a> Search<'a> {
         Sums {
             logs: added(&|part| part.logs),
             firsts: entries(densities, |part| &part.firsts),
-            products: entries(densities * (densities + 1) / 2, |part| &part.products),
+            products: entries(densities * (densities - 1) / 2, |part| &part.products),
         }
     }
 
@@ -363,7 +363,7 @@ impl<'a> Search<'a> {
         for i in 0..free {
             slope[i] = self.sizes[i + 1] - sums.firsts[i + 1];
             for j in 0..=i {
-                let product = sums.products[(i + 1) * (i + 2) / 2 + j + 1];
+                let product = sums.products[i * (i + 1) / 2 + j];
                 let entry = if i == j { sums.firsts[i + 1] } else { 0.0 } - product;
                 matrix[i * free + j] = entry;
                 matrix[j * free + i] = entry;

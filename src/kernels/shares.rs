@@ -36,7 +36,7 @@ pub struct Sums {
     pub logs: f64,
     /// `Σ c P_k`.
     pub firsts: Vec<f64>,
-    /// `Σ c P_j P_k` for `k ≤ j`, row after row.
+    /// `Σ c P_j P_k` for `k ≤ j`, row after row, without the first density: it is held.
     pub products: Vec<f64>,
 }
 
@@ -89,7 +89,12 @@ impl Tiles {
         let mut sums = Sums {
             logs: 0.0,
             firsts: vec![0.0; densities],
-            products: vec![0.0; densities * (densities + 1) / 2],
+            products: Vec::new(),
+        };
+        let mut lanes = Lanes {
+            logs: [0.0; LANES],
+            firsts: vec![[0.0; LANES]; densities],
+            products: vec![[0.0; LANES]; densities * (densities - 1) / 2],
         };
         let mut shares = Lease::new(TILE * densities);
         let tiles = self
@@ -104,17 +109,25 @@ impl Tiles {
                     factors,
                     counts,
                     shares: &mut shares,
-                    sums: &mut sums,
+                    lanes: &mut lanes,
                 });
             } else {
                 dispatch(AddFirsts {
                     scaled,
                     factors,
                     counts,
-                    firsts: &mut sums.firsts,
+                    firsts: &mut lanes.firsts,
                 });
             }
         }
+        sums.logs = tree(lanes.logs);
+        sums.firsts = lanes.firsts.into_iter().map(tree).collect();
+        if !all {
+            for (first, factor) in sums.firsts.iter_mut().zip(&constants.factors) {
+                *first *= factor;
+            }
+        }
+        sums.products = lanes.products.into_iter().map(tree).collect();
         sums
     }
 
@@ -195,8 +208,10 @@ fn turn_back(columns: &[f64], rows: &mut [f64], densities: usize) {
         let first = eight * LINE;
         let mut done = 0;
         if rows.len() == LINE * densities {
-            let mut lines = rows.chunks_exact_mut(densities);
-            let lines = [(); LINE].map(|()| lines.next().unwrap_or_default());
+            let mut lines: [&mut [f64]; LINE] = Default::default();
+            for (line, row) in lines.iter_mut().zip(rows.chunks_exact_mut(densities)) {
+                *line = row;
+            }
             done = columns_to_rows(&columns[first..], TILE, lines);
         }
         for (row, line) in rows.chunks_exact_mut(densities).enumerate() {
@@ -214,8 +229,10 @@ fn turn(rows: &[f64], columns: &mut [f64], densities: usize) {
         let first = eight * LINE;
         let mut done = 0;
         if rows.len() == LINE * densities {
-            let mut lines = rows.chunks_exact(densities);
-            let lines = [(); LINE].map(|()| lines.next().unwrap_or_default());
+            let mut lines: [&[f64]; LINE] = Default::default();
+            for (line, row) in lines.iter_mut().zip(rows.chunks_exact(densities)) {
+                *line = row;
+            }
             done = rows_to_columns(lines, &mut columns[first..], TILE);
         }
         for (row, line) in rows.chunks_exact(densities).enumerate() {
@@ -292,12 +309,19 @@ impl Work for Scale<'_> {
     }
 }
 
+/// [`Sums`] of which every lane has its part: to add them up costs as much as to form them.
+struct Lanes {
+    logs: [f64; LANES],
+    firsts: Vec<[f64; LANES]>,
+    products: Vec<[f64; LANES]>,
+}
+
 struct Add<'a> {
     scaled: &'a [f64],
     factors: &'a [f64],
     counts: &'a [f64],
     shares: &'a mut [f64],
-    sums: &'a mut Sums,
+    lanes: &'a mut Lanes,
 }
 
 impl Work for Add<'_> {
@@ -306,7 +330,7 @@ impl Work for Add<'_> {
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
         let mut total = totals::<A>(self.scaled, self.factors);
-        self.sums.logs += logs::<A>(&total, self.counts);
+        add(&mut self.lanes.logs, &logs::<A>(&total, self.counts));
         for total in &mut total {
             *total = 1.0 / *total;
         }
@@ -322,12 +346,10 @@ impl Work for Add<'_> {
             for row in 0..TILE {
                 weighted[row] = self.counts[row] * own[row];
             }
-            self.sums.firsts[j] += lanes_sum(&weighted);
-            let others = &self.shares[..(j + 1) * TILE];
-            for four in others.chunks(TOGETHER * TILE) {
-                products::<A>(&weighted, four, &mut self.sums.products[place..]);
-                place += four.len() / TILE;
-            }
+            add(&mut self.lanes.firsts[j], &weighted);
+            let others = &self.shares[TILE.min(j * TILE)..][..j * TILE];
+            products::<A>(&weighted, others, &mut self.lanes.products[place..]);
+            place += j;
         }
     }
 }
@@ -336,7 +358,7 @@ struct AddFirsts<'a> {
     scaled: &'a [f64],
     factors: &'a [f64],
     counts: &'a [f64],
-    firsts: &'a mut [f64],
+    firsts: &'a mut [[f64; LANES]],
 }
 
 impl Work for AddFirsts<'_> {
@@ -348,22 +370,13 @@ impl Work for AddFirsts<'_> {
         for (weight, count) in weights.iter_mut().zip(self.counts) {
             *weight = count / *weight;
         }
-        let mut found = 0;
-        for four in self.scaled.chunks(TOGETHER * TILE) {
-            let count = four.len() / TILE;
-            let mut sums = [0.0; TOGETHER];
-            products::<A>(&weights, four, &mut sums);
-            for (k, sum) in (found..found + count).zip(sums) {
-                self.firsts[k] += self.factors[k] * sum;
-            }
-            found += count;
-        }
+        products::<A>(&weights, self.scaled, self.firsts);
     }
 }
 
-/// `Σ c log total`; draws that count nothing add nothing.
+/// `c log total`; 0 for draws that count nothing.
 #[inline(always)]
-fn logs<A: Arithmetic>(total: &[f64; TILE], counts: &[f64]) -> f64 {
+fn logs<A: Arithmetic>(total: &[f64; TILE], counts: &[f64]) -> [f64; TILE] {
     let mut terms = [0.0; TILE];
     let mut all = true;
     for row in 0..TILE {
@@ -380,37 +393,42 @@ fn logs<A: Arithmetic>(total: &[f64; TILE], counts: &[f64]) -> f64 {
             };
         }
     }
-    lanes_sum(&terms)
+    terms
 }
 
 #[inline(always)]
-fn lanes_sum(values: &[f64; TILE]) -> f64 {
+fn add(lanes: &mut [f64; LANES], values: &[f64; TILE]) {
     let mut sums = [0.0; LANES];
     for chunk in values.as_chunks::<LANES>().0 {
         for lane in 0..LANES {
             sums[lane] += chunk[lane];
         }
     }
-    tree(sums)
+    for lane in 0..LANES {
+        lanes[lane] += sums[lane];
+    }
 }
 
-/// Adds `Σ w P_k` for up to four columns to the first entries of `into`.
+/// Adds `Σ w P_k` to the entry of each column.
 #[inline(always)]
-fn products<A: Arithmetic>(weighted: &[f64; TILE], columns: &[f64], into: &mut [f64]) {
-    if columns.len() == TOGETHER * TILE {
-        let found = dots::<A, TOGETHER>(weighted, columns);
-        for (into, found) in into.iter_mut().zip(found) {
-            *into += found;
+fn products<A: Arithmetic>(weighted: &[f64; TILE], columns: &[f64], into: &mut [[f64; LANES]]) {
+    let parts = columns.chunks(TOGETHER * TILE);
+    for (into, columns) in into.chunks_mut(TOGETHER).zip(parts) {
+        match columns.len() / TILE {
+            1 => dots::<A, 1>(weighted, columns, into),
+            2 => dots::<A, 2>(weighted, columns, into),
+            3 => dots::<A, 3>(weighted, columns, into),
+            _ => dots::<A, TOGETHER>(weighted, columns, into),
         }
-        return;
-    }
-    for (into, column) in into.iter_mut().zip(columns.chunks_exact(TILE)) {
-        *into += dots::<A, 1>(weighted, column)[0];
     }
 }
 
 #[inline(always)]
-fn dots<A: Arithmetic, const N: usize>(weighted: &[f64; TILE], columns: &[f64]) -> [f64; N] {
+fn dots<A: Arithmetic, const N: usize>(
+    weighted: &[f64; TILE],
+    columns: &[f64],
+    into: &mut [[f64; LANES]],
+) {
     let mut sums = [[0.0; LANES]; N];
     for (place, chunk) in weighted.as_chunks::<LANES>().0.iter().enumerate() {
         for (column, sums) in sums.iter_mut().enumerate() {
@@ -420,10 +438,13 @@ fn dots<A: Arithmetic, const N: usize>(weighted: &[f64; TILE], columns: &[f64]) 
             }
         }
     }
-    sums.map(tree)
+    for (into, sums) in into.iter_mut().zip(sums) {
+        for lane in 0..LANES {
+            into[lane] += sums[lane];
+        }
+    }
 }
 
-#[inline(always)]
 fn tree(mut lanes: [f64; LANES]) -> f64 {
     for half in [8, 4, 2, 1] {
         for lane in 0..half {
