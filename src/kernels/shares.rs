@@ -86,16 +86,7 @@ impl Tiles {
     /// The sums over the draws of these tiles; the first ones alone unless `all` are asked for.
     pub fn sums(&self, scaled: &[f64], constants: &Constants, all: bool) -> Sums {
         let densities = constants.factors.len();
-        let mut sums = Sums {
-            logs: 0.0,
-            firsts: vec![0.0; densities],
-            products: Vec::new(),
-        };
-        let mut lanes = Lanes {
-            logs: [0.0; LANES],
-            firsts: vec![[0.0; LANES]; densities],
-            products: vec![[0.0; LANES]; densities * (densities - 1) / 2],
-        };
+        let mut lanes = Lanes::new(densities);
         let mut shares = Lease::new(TILE * densities);
         let tiles = self
             .counts
@@ -120,14 +111,12 @@ impl Tiles {
                 });
             }
         }
-        sums.logs = tree(lanes.logs);
-        sums.firsts = lanes.firsts.into_iter().map(tree).collect();
+        let mut sums = lanes.sums();
         if !all {
             for (first, factor) in sums.firsts.iter_mut().zip(&constants.factors) {
                 *first *= factor;
             }
         }
-        sums.products = lanes.products.into_iter().map(tree).collect();
         sums
     }
 
@@ -314,6 +303,24 @@ struct Lanes {
     logs: [f64; LANES],
     firsts: Vec<[f64; LANES]>,
     products: Vec<[f64; LANES]>,
+}
+
+impl Lanes {
+    fn new(densities: usize) -> Self {
+        Self {
+            logs: [0.0; LANES],
+            firsts: vec![[0.0; LANES]; densities],
+            products: vec![[0.0; LANES]; densities * (densities - 1) / 2],
+        }
+    }
+
+    fn sums(self) -> Sums {
+        Sums {
+            logs: tree(self.logs),
+            firsts: self.firsts.into_iter().map(tree).collect(),
+            products: self.products.into_iter().map(tree).collect(),
+        }
+    }
 }
 
 struct Add<'a> {
