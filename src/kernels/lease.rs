@@ -28,11 +28,16 @@ pub struct Lease {
 impl Lease {
     /// An array of `length` entries.
     pub fn new(length: usize) -> Self {
-        let spare = SPARE.with(|spare| spare.borrow_mut().pop());
-        let mut room = spare.unwrap_or_default();
-        if room.len() < length + LINE {
-            room.resize(length + LINE, 0.0);
-        }
+        let room = if length + LINE > MOST_KEPT {
+            vec![0.0; length + LINE]
+        } else {
+            let spare = SPARE.with(|spare| spare.borrow_mut().pop());
+            let mut room = spare.unwrap_or_default();
+            if room.len() < length + LINE {
+                room.resize(length + LINE, 0.0);
+            }
+            room
+        };
         let over = room.as_ptr().addr() / size_of::<f64>() % LINE;
         Self {
             start: (LINE - over) % LINE,

@@ -1,12 +1,13 @@
 //! Relative constants of several unnormalised densities from draws of each.
 
-use ndarray::{Array2, ArrayView2, Axis, s};
+use ndarray::{Array2, ArrayView2, ArrayViewMut2, Axis, s};
 
 use super::columns::expect_shape;
 use super::error::KernelError;
+use super::lease::Lease;
 use super::ordered::{Interrupt, map_tasks, sum, sum_by};
 use super::positive::solve;
-use super::shares::{Constants, Sums, Tiles};
+use super::shares::{Constants, Sums, Tiles, padded};
 
 /// Draws of one task.
 const ROWS: usize = 4096;
@@ -19,6 +20,15 @@ const MOST_HALVINGS: usize = 40;
 
 /// A step shorter than this is the last: the one after it would be about its square.
 const SHORT: f64 = 1e-7;
+
+/// With some of the draws only the search ends sooner: they miss the constants by more than this.
+const SHORT_ROUGHLY: f64 = 1e-2;
+
+/// After a step shorter than this the next one needs no curvature of its own.
+const NEAR: f64 = 1e-3;
+
+/// What may be left of a step taken with the curvature of the place before.
+const LEFT: f64 = 5e-13;
 
 /// From so many draws on the search begins with some of them.
 const MANY: usize = 8192;
@@ -71,15 +81,68 @@ pub fn multi_sample(
     solve: bool,
     interrupt: &Interrupt<'_>,
 ) -> Result<Solution, KernelError> {
-    let (draws, densities) = log_densities.dim();
+    let mut shares = Array2::zeros(log_densities.dim());
+    let mut log_mixture = vec![0.0; log_densities.nrows()];
+    let problem = Problem {
+        log_densities,
+        counts,
+        sizes,
+    };
+    let delivery = Delivery {
+        shares: shares.view_mut(),
+        log_mixture: &mut log_mixture,
+    };
+    let (constants, last_step) = multi_sample_into(problem, start, solve, delivery, interrupt)?;
+    Ok(Solution {
+        constants,
+        shares,
+        log_mixture,
+        last_step,
+    })
+}
+
+/// The arguments of [`multi_sample`] of these names.
+#[derive(Clone, Copy)]
+pub struct Problem<'a> {
+    /// Shape `(n, K)`.
+    pub log_densities: ArrayView2<'a, f64>,
+    /// Shape `(n,)`.
+    pub counts: &'a [f64],
+    /// Shape `(K,)`.
+    pub sizes: &'a [f64],
+}
+
+/// Where the fields of [`Solution`] of these names are written.
+pub struct Delivery<'a> {
+    /// Shape `(n, K)`.
+    pub shares: ArrayViewMut2<'a, f64>,
+    /// Shape `(n,)`.
+    pub log_mixture: &'a mut [f64],
+}
+
+/// As [`multi_sample`], with the constants and the length of the last step as its result.
+///
+/// # Errors
+/// Also [`KernelError::Shape`] for a delivery of another shape.
+pub fn multi_sample_into(
+    problem: Problem<'_>,
+    start: &[f64],
+    solve: bool,
+    delivery: Delivery<'_>,
+    interrupt: &Interrupt<'_>,
+) -> Result<(Vec<f64>, f64), KernelError> {
+    let (draws, densities) = problem.log_densities.dim();
     if densities == 0 || draws == 0 {
         return Err(KernelError::Empty {
             argument: "log_densities",
         });
     }
-    expect_shape("counts", &[draws], &[counts.len()])?;
+    let sizes = problem.sizes;
+    expect_shape("counts", &[draws], &[problem.counts.len()])?;
     expect_shape("sizes", &[densities], &[sizes.len()])?;
     expect_shape("start", &[densities], &[start.len()])?;
+    expect_shape("shares", &[draws, densities], delivery.shares.shape())?;
+    expect_shape("log_mixture", &[draws], &[delivery.log_mixture.len()])?;
     if let Some(&found) = sizes.iter().find(|&&size| size.is_nan() || size <= 0.0) {
         return Err(KernelError::Range {
             argument: "sizes",
@@ -88,43 +151,47 @@ pub fn multi_sample(
         });
     }
     let constants = if solve && draws >= MANY {
-        roughly(log_densities, counts, sizes, start, interrupt)?
+        roughly(problem, start, interrupt)?
     } else {
         start.to_vec()
     };
-    let mut search = Search {
-        log_densities,
-        counts,
-        sizes,
-        constants,
-        tiles: Vec::new(),
-        moved: vec![0.0; densities],
-    };
+    let mut search = Search::new(problem, constants);
     let sums = search.scale(interrupt)?;
     let last_step = if solve {
-        search.run(sums, interrupt)?
+        search.run(sums, SHORT, interrupt)?
     } else {
         0.0
     };
-    search.finish(last_step, interrupt)
+    search.deliver(delivery, interrupt)?;
+    Ok((search.reached(), last_step))
 }
 
 /// The constants by some of the draws, evenly spread.
 fn roughly(
-    log_densities: ArrayView2<'_, f64>,
-    counts: &[f64],
-    sizes: &[f64],
+    problem: Problem<'_>,
     start: &[f64],
     interrupt: &Interrupt<'_>,
 ) -> Result<Vec<f64>, KernelError> {
-    let counts: Vec<f64> = counts.iter().copied().step_by(EVERY).collect();
-    let share = sum(&counts) / sum(sizes);
+    let counts: Vec<f64> = problem.counts.iter().copied().step_by(EVERY).collect();
+    let share = sum(&counts) / sum(problem.sizes);
     if share.is_nan() || share <= 0.0 {
         return Ok(start.to_vec());
     }
-    let sizes: Vec<f64> = sizes.iter().map(|size| size * share).collect();
-    let rows = log_densities.slice(s![..;EVERY, ..]);
-    Ok(multi_sample(rows, &counts, &sizes, start, true, interrupt)?.constants)
+    let sizes: Vec<f64> = problem.sizes.iter().map(|size| size * share).collect();
+    let some = Problem {
+        log_densities: problem.log_densities.slice(s![..;EVERY, ..]),
+        counts: &counts,
+        sizes: &sizes,
+    };
+    let start = if counts.len() >= MANY {
+        roughly(some, start, interrupt)?
+    } else {
+        start.to_vec()
+    };
+    let mut search = Search::new(some, start);
+    let sums = search.scale(interrupt)?;
+    search.run(sums, SHORT_ROUGHLY, interrupt)?;
+    Ok(search.reached())
 }
 
 struct Search<'a> {
@@ -134,11 +201,26 @@ struct Search<'a> {
     /// Where the densities were scaled last.
     constants: Vec<f64>,
     tiles: Vec<Tiles>,
+    /// The densities of the tiles, task after task.
+    scaled: Lease,
     /// How far the constants have moved since.
     moved: Vec<f64>,
 }
 
-impl Search<'_> {
+impl<'a> Search<'a> {
+    fn new(problem: Problem<'a>, constants: Vec<f64>) -> Self {
+        let (draws, densities) = problem.log_densities.dim();
+        Self {
+            log_densities: problem.log_densities,
+            counts: problem.counts,
+            sizes: problem.sizes,
+            constants,
+            tiles: Vec::new(),
+            scaled: Lease::new(padded(draws) * densities),
+            moved: vec![0.0; densities],
+        }
+    }
+
     /// Takes the exponentials of the densities at the constants reached, and the sums there.
     fn scale(&mut self, interrupt: &Interrupt<'_>) -> Result<Sums, KernelError> {
         for (constant, moved) in self.constants.iter_mut().zip(&mut self.moved) {
@@ -155,12 +237,13 @@ impl Search<'_> {
             .log_densities
             .axis_chunks_iter(Axis(0), ROWS)
             .zip(self.counts.chunks(ROWS))
+            .zip(self.scaled.chunks_mut(ROWS * self.sizes.len()))
             .collect();
         let still = Constants::new(&self.moved);
-        let parts = map_tasks(tasks, interrupt, |(rows, counts)| {
+        let parts = map_tasks(tasks, interrupt, |((rows, counts), scaled)| {
             // Summed while they are near.
-            let tiles = Tiles::new(rows, counts, &shift);
-            let sums = tiles.sums(&still);
+            let tiles = Tiles::new(rows, counts, &shift, scaled);
+            let sums = tiles.sums(scaled, &still, true);
             Ok((tiles, sums))
         })?;
         let (tiles, sums): (Vec<Tiles>, Vec<Sums>) = parts.into_iter().unzip();
@@ -168,11 +251,24 @@ impl Search<'_> {
         Ok(self.added(&sums))
     }
 
-    fn sums(&self, moved: &[f64], interrupt: &Interrupt<'_>) -> Result<Sums, KernelError> {
+    /// The sums at constants that moved so far; on demand without products and logs.
+    fn sums(
+        &self,
+        moved: &[f64],
+        all: bool,
+        interrupt: &Interrupt<'_>,
+    ) -> Result<Sums, KernelError> {
         let constants = Constants::new(moved);
-        let tasks: Vec<&Tiles> = self.tiles.iter().collect();
-        let parts = map_tasks(tasks, interrupt, |tiles| Ok(tiles.sums(&constants)))?;
+        let parts = map_tasks(self.parts(), interrupt, |(tiles, scaled)| {
+            Ok(tiles.sums(scaled, &constants, all))
+        })?;
         Ok(self.added(&parts))
+    }
+
+    /// The tiles of each task with their densities.
+    fn parts(&self) -> Vec<(&Tiles, &[f64])> {
+        let scaled = self.scaled.chunks(ROWS * self.sizes.len());
+        self.tiles.iter().zip(scaled).collect()
     }
 
     /// Sums of the tasks added in their order.
@@ -186,7 +282,7 @@ impl Search<'_> {
         Sums {
             logs: added(&|part| part.logs),
             firsts: entries(densities, |part| &part.firsts),
-            products: entries(densities * (densities + 1) / 2, |part| &part.products),
+            products: entries(densities * (densities - 1) / 2, |part| &part.products),
         }
     }
 
@@ -195,14 +291,25 @@ impl Search<'_> {
         sums.logs - sum_by(moved.len(), |k| self.sizes[k] * moved[k])
     }
 
-    fn run(&mut self, mut sums: Sums, interrupt: &Interrupt<'_>) -> Result<f64, KernelError> {
+    /// Searches until a step is shorter than `short`, and takes that one.
+    fn run(
+        &mut self,
+        mut sums: Sums,
+        short: f64,
+        interrupt: &Interrupt<'_>,
+    ) -> Result<f64, KernelError> {
         let mut length = 0.0;
         for _ in 0..MOST_STEPS {
             let step = self.newton(&sums);
             length = longest(&step);
-            let (moved, found) = if length >= SHORT {
+            if (short..NEAR).contains(&length)
+                && let Some(last) = self.nearly(&mut sums, &step, interrupt)?
+            {
+                return Ok(last);
+            }
+            let (moved, found) = if length >= short {
                 self.descend(&sums, &step, interrupt)?
-            } else if self.imbalance(&sums) > UNBALANCED {
+            } else if self.imbalance(&sums) > UNBALANCED.max(10.0 * short) {
                 length = FAR;
                 self.balance(&sums, interrupt)?
             } else {
@@ -220,6 +327,34 @@ impl Search<'_> {
         Ok(length)
     }
 
+    /// Takes a short step, and with the curvature before it the next, the length of which is
+    /// returned; nothing, with neither taken, where that would not be the end.
+    fn nearly(
+        &mut self,
+        sums: &mut Sums,
+        step: &[f64],
+        interrupt: &Interrupt<'_>,
+    ) -> Result<Option<f64>, KernelError> {
+        let add = |one: &[f64], other: &[f64]| -> Vec<f64> {
+            one.iter()
+                .zip(other)
+                .map(|(one, other)| one + other)
+                .collect()
+        };
+        let moved = add(&self.moved, step);
+        let found = self.sums(&moved, false, interrupt)?;
+        let balanced = self.imbalance(&found) <= UNBALANCED;
+        let before = std::mem::replace(&mut sums.firsts, found.firsts);
+        let last = self.newton(sums);
+        let length = longest(&last);
+        if balanced && length * longest(step) < LEFT {
+            self.moved = add(&moved, &last);
+            return Ok(Some(length));
+        }
+        sums.firsts = before;
+        Ok(None)
+    }
+
     /// Newton's step, with the first constant held.
     fn newton(&self, sums: &Sums) -> Vec<f64> {
         let free = self.sizes.len() - 1;
@@ -228,7 +363,7 @@ impl Search<'_> {
         for i in 0..free {
             slope[i] = self.sizes[i + 1] - sums.firsts[i + 1];
             for j in 0..=i {
-                let product = sums.products[(i + 1) * (i + 2) / 2 + j + 1];
+                let product = sums.products[i * (i + 1) / 2 + j];
                 let entry = if i == j { sums.firsts[i + 1] } else { 0.0 } - product;
                 matrix[i * free + j] = entry;
                 matrix[j * free + i] = entry;
@@ -262,7 +397,7 @@ impl Search<'_> {
             let moved: Vec<f64> = (self.moved.iter().zip(step))
                 .map(|(moved, step)| moved + share * step)
                 .collect();
-            let found = self.sums(&moved, interrupt)?;
+            let found = self.sums(&moved, true, interrupt)?;
             let slope = sum_by(step.len(), |k| (sums.firsts[k] - self.sizes[k]) * step[k]);
             if self.height(&found, &moved) <= before + 1e-4 * share * slope.min(0.0) + slack {
                 return Ok((moved, found));
@@ -291,32 +426,30 @@ impl Search<'_> {
         let moved: Vec<f64> = (0..self.sizes.len())
             .map(|k| self.moved[k] + (own(k) - own(0)).clamp(-10.0 * FAR, 10.0 * FAR))
             .collect();
-        let found = self.sums(&moved, interrupt)?;
+        let found = self.sums(&moved, true, interrupt)?;
         Ok((moved, found))
     }
 
-    fn finish(self, last_step: f64, interrupt: &Interrupt<'_>) -> Result<Solution, KernelError> {
+    fn deliver(
+        &self,
+        mut delivery: Delivery<'_>,
+        interrupt: &Interrupt<'_>,
+    ) -> Result<(), KernelError> {
         let reached = Constants::new(&self.moved);
-        let mut shares = Array2::zeros(self.log_densities.dim());
-        let mut log_mixture = vec![0.0; self.counts.len()];
-        let tasks: Vec<_> = self
-            .tiles
-            .iter()
-            .zip(shares.axis_chunks_iter_mut(Axis(0), ROWS))
-            .zip(log_mixture.chunks_mut(ROWS))
-            .collect();
-        map_tasks(tasks, interrupt, |((tiles, shares), logs)| {
-            tiles.deliver(&reached, shares, logs);
+        let into = delivery.shares.axis_chunks_iter_mut(Axis(0), ROWS);
+        let logs = delivery.log_mixture.chunks_mut(ROWS);
+        let tasks: Vec<_> = self.parts().into_iter().zip(into.zip(logs)).collect();
+        map_tasks(tasks, interrupt, |((tiles, scaled), (shares, logs))| {
+            tiles.deliver(scaled, &reached, shares, logs);
             Ok(())
         })?;
+        Ok(())
+    }
+
+    /// The constants reached, with the first at 0.
+    fn reached(&self) -> Vec<f64> {
         let own = |k: usize| self.constants[k] + self.moved[k];
-        let constants = (0..self.sizes.len()).map(|k| own(k) - own(0)).collect();
-        Ok(Solution {
-            constants,
-            shares,
-            log_mixture,
-            last_step,
-        })
+        (0..self.sizes.len()).map(|k| own(k) - own(0)).collect()
     }
 }
 

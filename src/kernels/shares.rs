@@ -5,6 +5,7 @@ use ndarray::{ArrayView2, ArrayViewMut2, Axis};
 use super::lease::Lease;
 use super::vector::exp::exp;
 use super::vector::ln::{is_ordinary, ln};
+use super::vector::transpose::{LINE, columns_to_rows, rows_to_columns};
 use super::vector::{Arithmetic, Work, dispatch};
 
 /// Draws of a tile; one a lane.
@@ -35,39 +36,46 @@ pub struct Sums {
     pub logs: f64,
     /// `Σ c P_k`.
     pub firsts: Vec<f64>,
-    /// `Σ c P_j P_k` for `k ≤ j`, row after row.
+    /// `Σ c P_j P_k` for `k ≤ j`, row after row, without the first density: it is held.
     pub products: Vec<f64>,
 }
 
-/// Densities of some draws, each draw in a unit of its own in which the largest is 1.
+/// Draws with those that fill the last tile.
+pub fn padded(draws: usize) -> usize {
+    draws.next_multiple_of(TILE)
+}
+
+/// Some draws, each with a unit of its own in which its largest density is 1; the densities in
+/// these units are kept elsewhere, tile after tile, column after column.
 pub struct Tiles {
-    densities: usize,
-    /// Tile after tile, column after column.
-    scaled: Vec<f64>,
     /// Log of each draw's unit.
     units: Vec<f64>,
     counts: Vec<f64>,
 }
 
 impl Tiles {
-    /// `Q_k = exp(log q_k + shift_k − unit)`; draws on which all vanish count nothing.
-    pub fn new(log_densities: ArrayView2<'_, f64>, counts: &[f64], shift: &[f64]) -> Self {
-        let (rows, densities) = log_densities.dim();
-        let whole = rows.next_multiple_of(TILE);
+    /// `Q_k = exp(log q_k + shift_k − unit)`, written into `scaled`; draws on which all vanish count
+    /// nothing.
+    pub fn new(
+        log_densities: ArrayView2<'_, f64>,
+        counts: &[f64],
+        shift: &[f64],
+        scaled: &mut [f64],
+    ) -> Self {
+        let whole = padded(log_densities.nrows());
         let mut tiles = Self {
-            densities,
-            scaled: vec![0.0; whole * densities],
             units: vec![0.0; whole],
             counts: counts.to_vec(),
         };
         tiles.counts.resize(whole, 0.0);
         let parts = log_densities.axis_chunks_iter(Axis(0), TILE);
-        for (tile, part) in parts.enumerate() {
+        let scaled = scaled.chunks_mut(TILE * shift.len());
+        for (tile, (part, scaled)) in parts.zip(scaled).enumerate() {
             let first = tile * TILE;
             dispatch(Scale {
                 part,
                 shift,
-                scaled: &mut tiles.scaled[first * densities..][..TILE * densities],
+                scaled,
                 units: &mut tiles.units[first..][..TILE],
                 counts: &mut tiles.counts[first..][..TILE],
             });
@@ -75,23 +83,39 @@ impl Tiles {
         tiles
     }
 
-    /// The sums over the draws of these tiles.
-    pub fn sums(&self, constants: &Constants) -> Sums {
-        let densities = self.densities;
-        let mut sums = Sums {
-            logs: 0.0,
-            firsts: vec![0.0; densities],
-            products: vec![0.0; densities * (densities + 1) / 2],
-        };
+    /// The sums over the draws of these tiles; the first ones alone unless `all` are asked for.
+    pub fn sums(&self, scaled: &[f64], constants: &Constants, all: bool) -> Sums {
+        let densities = constants.factors.len();
+        let mut lanes = Lanes::new(densities);
         let mut shares = Lease::new(TILE * densities);
-        for (tile, counts) in self.counts.chunks(TILE).enumerate() {
-            dispatch(Add {
-                scaled: &self.scaled[tile * TILE * densities..][..TILE * densities],
-                factors: &constants.factors,
-                counts,
-                shares: &mut shares,
-                sums: &mut sums,
-            });
+        let tiles = self
+            .counts
+            .chunks(TILE)
+            .zip(scaled.chunks(TILE * densities));
+        for (counts, scaled) in tiles {
+            let factors = &constants.factors;
+            if all {
+                dispatch(Add {
+                    scaled,
+                    factors,
+                    counts,
+                    shares: &mut shares,
+                    lanes: &mut lanes,
+                });
+            } else {
+                dispatch(AddFirsts {
+                    scaled,
+                    factors,
+                    counts,
+                    firsts: &mut lanes.firsts,
+                });
+            }
+        }
+        let mut sums = lanes.sums();
+        if !all {
+            for (first, factor) in sums.firsts.iter_mut().zip(&constants.factors) {
+                *first *= factor;
+            }
         }
         sums
     }
@@ -99,16 +123,21 @@ impl Tiles {
     /// Writes the shares, and the logs of the mixture.
     pub fn deliver(
         &self,
+        scaled: &[f64],
         constants: &Constants,
         mut shares: ArrayViewMut2<'_, f64>,
         logs: &mut [f64],
     ) {
+        let whole = TILE * constants.factors.len();
+        let mut columns = Lease::new(whole);
         let parts = shares.axis_chunks_iter_mut(Axis(0), TILE);
-        for (tile, (into, logs)) in parts.zip(logs.chunks_mut(TILE)).enumerate() {
+        let parts = parts.zip(logs.chunks_mut(TILE)).zip(scaled.chunks(whole));
+        for (((into, logs), scaled), units) in parts.zip(self.units.chunks(TILE)) {
             dispatch(Deliver {
-                scaled: &self.scaled[tile * TILE * self.densities..][..TILE * self.densities],
+                scaled,
                 factors: &constants.factors,
-                units: &self.units[tile * TILE..][..TILE],
+                units,
+                columns: &mut columns,
                 shares: into,
                 logs,
             });
@@ -120,6 +149,7 @@ struct Deliver<'a> {
     scaled: &'a [f64],
     factors: &'a [f64],
     units: &'a [f64],
+    columns: &'a mut [f64],
     shares: ArrayViewMut2<'a, f64>,
     logs: &'a mut [f64],
 }
@@ -140,25 +170,63 @@ impl Work for Deliver<'_> {
                 };
             *total = if known { 1.0 / *total } else { 0.0 };
         }
-        let densities = self.factors.len();
-        let columns = self.scaled.chunks_exact(TILE).zip(self.factors);
+        let from = self.scaled.chunks_exact(TILE).zip(self.factors);
+        for (column, (entries, factor)) in self.columns.chunks_exact_mut(TILE).zip(from) {
+            for row in 0..TILE {
+                column[row] = factor * entries[row] * total[row];
+            }
+        }
         match self.shares.as_slice_mut() {
-            Some(rows) => {
-                for (k, (column, factor)) in columns.enumerate() {
-                    let places = rows[k..].iter_mut().step_by(densities);
-                    for ((place, entry), total) in places.zip(column).zip(&total) {
-                        *place = factor * entry * total;
+            Some(rows) => turn_back(self.columns, rows, self.factors.len()),
+            None => {
+                let columns = self.columns.chunks_exact(TILE);
+                for (mut into, column) in self.shares.columns_mut().into_iter().zip(columns) {
+                    for (place, entry) in into.iter_mut().zip(column) {
+                        *place = *entry;
                     }
                 }
             }
-            None => {
-                for (mut into, (column, factor)) in
-                    self.shares.columns_mut().into_iter().zip(columns)
-                {
-                    for ((place, entry), total) in into.iter_mut().zip(column).zip(&total) {
-                        *place = factor * entry * total;
-                    }
-                }
+        }
+    }
+}
+
+/// Writes the columns of a tile as rows of `densities` entries.
+#[inline(always)]
+fn turn_back(columns: &[f64], rows: &mut [f64], densities: usize) {
+    for (eight, rows) in rows.chunks_mut(LINE * densities).enumerate() {
+        let first = eight * LINE;
+        let mut done = 0;
+        if rows.len() == LINE * densities {
+            let mut lines: [&mut [f64]; LINE] = Default::default();
+            for (line, row) in lines.iter_mut().zip(rows.chunks_exact_mut(densities)) {
+                *line = row;
+            }
+            done = columns_to_rows(&columns[first..], TILE, lines);
+        }
+        for (row, line) in rows.chunks_exact_mut(densities).enumerate() {
+            for (k, entry) in line.iter_mut().enumerate().skip(done) {
+                *entry = columns[k * TILE + first + row];
+            }
+        }
+    }
+}
+
+/// Writes rows of `densities` entries as the columns of a tile.
+#[inline(always)]
+fn turn(rows: &[f64], columns: &mut [f64], densities: usize) {
+    for (eight, rows) in rows.chunks(LINE * densities).enumerate() {
+        let first = eight * LINE;
+        let mut done = 0;
+        if rows.len() == LINE * densities {
+            let mut lines: [&[f64]; LINE] = Default::default();
+            for (line, row) in lines.iter_mut().zip(rows.chunks_exact(densities)) {
+                *line = row;
+            }
+            done = rows_to_columns(lines, &mut columns[first..], TILE);
+        }
+        for (row, line) in rows.chunks_exact(densities).enumerate() {
+            for (k, entry) in line.iter().enumerate().skip(done) {
+                columns[k * TILE + first + row] = *entry;
             }
         }
     }
@@ -191,28 +259,22 @@ impl Work for Scale<'_> {
     fn run<A: Arithmetic>(self) {
         let rows = self.part.nrows();
         let mut tops = [f64::NEG_INFINITY; TILE];
-        let densities = self.shift.len();
         match self.part.as_slice() {
-            Some(entries) => {
-                for (row, (entries, top)) in
-                    entries.chunks_exact(densities).zip(&mut tops).enumerate()
-                {
-                    for (k, (entry, shift)) in entries.iter().zip(self.shift).enumerate() {
-                        let value = entry + shift;
-                        self.scaled[k * TILE + row] = value;
-                        *top = if value > *top { value } else { *top };
+            Some(entries) => turn(entries, self.scaled, self.shift.len()),
+            None => {
+                let columns = self.scaled.chunks_exact_mut(TILE);
+                for (entries, column) in self.part.columns().into_iter().zip(columns) {
+                    for (into, entry) in column.iter_mut().zip(entries) {
+                        *into = *entry;
                     }
                 }
             }
-            None => {
-                let columns = self.scaled.chunks_exact_mut(TILE).zip(self.shift);
-                for (entries, (column, shift)) in self.part.columns().into_iter().zip(columns) {
-                    for ((into, entry), top) in column.iter_mut().zip(entries).zip(&mut tops) {
-                        let value = entry + shift;
-                        *into = value;
-                        *top = if value > *top { value } else { *top };
-                    }
-                }
+        }
+        for (column, shift) in self.scaled.chunks_exact_mut(TILE).zip(self.shift) {
+            column[rows..].fill(f64::NEG_INFINITY);
+            for (entry, top) in column.iter_mut().zip(&mut tops) {
+                *entry += shift;
+                *top = if *entry > *top { *entry } else { *top };
             }
         }
         self.units.copy_from_slice(&tops);
@@ -236,12 +298,37 @@ impl Work for Scale<'_> {
     }
 }
 
+/// [`Sums`] of which every lane has its part: to add them up costs as much as to form them.
+struct Lanes {
+    logs: [f64; LANES],
+    firsts: Vec<[f64; LANES]>,
+    products: Vec<[f64; LANES]>,
+}
+
+impl Lanes {
+    fn new(densities: usize) -> Self {
+        Self {
+            logs: [0.0; LANES],
+            firsts: vec![[0.0; LANES]; densities],
+            products: vec![[0.0; LANES]; densities * (densities - 1) / 2],
+        }
+    }
+
+    fn sums(self) -> Sums {
+        Sums {
+            logs: tree(self.logs),
+            firsts: self.firsts.into_iter().map(tree).collect(),
+            products: self.products.into_iter().map(tree).collect(),
+        }
+    }
+}
+
 struct Add<'a> {
     scaled: &'a [f64],
     factors: &'a [f64],
     counts: &'a [f64],
     shares: &'a mut [f64],
-    sums: &'a mut Sums,
+    lanes: &'a mut Lanes,
 }
 
 impl Work for Add<'_> {
@@ -250,7 +337,7 @@ impl Work for Add<'_> {
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
         let mut total = totals::<A>(self.scaled, self.factors);
-        self.sums.logs += logs::<A>(&total, self.counts);
+        add(&mut self.lanes.logs, &logs::<A>(&total, self.counts));
         for total in &mut total {
             *total = 1.0 / *total;
         }
@@ -266,19 +353,37 @@ impl Work for Add<'_> {
             for row in 0..TILE {
                 weighted[row] = self.counts[row] * own[row];
             }
-            self.sums.firsts[j] += lanes_sum(&weighted);
-            let others = &self.shares[..(j + 1) * TILE];
-            for four in others.chunks(TOGETHER * TILE) {
-                products::<A>(&weighted, four, &mut self.sums.products[place..]);
-                place += four.len() / TILE;
-            }
+            add(&mut self.lanes.firsts[j], &weighted);
+            let others = &self.shares[TILE.min(j * TILE)..][..j * TILE];
+            products::<A>(&weighted, others, &mut self.lanes.products[place..]);
+            place += j;
         }
     }
 }
 
-/// `Σ c log total`; draws that count nothing add nothing.
+struct AddFirsts<'a> {
+    scaled: &'a [f64],
+    factors: &'a [f64],
+    counts: &'a [f64],
+    firsts: &'a mut [[f64; LANES]],
+}
+
+impl Work for AddFirsts<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let mut weights = totals::<A>(self.scaled, self.factors);
+        for (weight, count) in weights.iter_mut().zip(self.counts) {
+            *weight = count / *weight;
+        }
+        products::<A>(&weights, self.scaled, self.firsts);
+    }
+}
+
+/// `c log total`; 0 for draws that count nothing.
 #[inline(always)]
-fn logs<A: Arithmetic>(total: &[f64; TILE], counts: &[f64]) -> f64 {
+fn logs<A: Arithmetic>(total: &[f64; TILE], counts: &[f64]) -> [f64; TILE] {
     let mut terms = [0.0; TILE];
     let mut all = true;
     for row in 0..TILE {
@@ -295,37 +400,42 @@ fn logs<A: Arithmetic>(total: &[f64; TILE], counts: &[f64]) -> f64 {
             };
         }
     }
-    lanes_sum(&terms)
+    terms
 }
 
 #[inline(always)]
-fn lanes_sum(values: &[f64; TILE]) -> f64 {
+fn add(lanes: &mut [f64; LANES], values: &[f64; TILE]) {
     let mut sums = [0.0; LANES];
     for chunk in values.as_chunks::<LANES>().0 {
         for lane in 0..LANES {
             sums[lane] += chunk[lane];
         }
     }
-    tree(sums)
+    for lane in 0..LANES {
+        lanes[lane] += sums[lane];
+    }
 }
 
-/// Adds `Σ w P_k` for up to four columns to the first entries of `into`.
+/// Adds `Σ w P_k` to the entry of each column.
 #[inline(always)]
-fn products<A: Arithmetic>(weighted: &[f64; TILE], columns: &[f64], into: &mut [f64]) {
-    if columns.len() == TOGETHER * TILE {
-        let found = dots::<A, TOGETHER>(weighted, columns);
-        for (into, found) in into.iter_mut().zip(found) {
-            *into += found;
+fn products<A: Arithmetic>(weighted: &[f64; TILE], columns: &[f64], into: &mut [[f64; LANES]]) {
+    let parts = columns.chunks(TOGETHER * TILE);
+    for (into, columns) in into.chunks_mut(TOGETHER).zip(parts) {
+        match columns.len() / TILE {
+            1 => dots::<A, 1>(weighted, columns, into),
+            2 => dots::<A, 2>(weighted, columns, into),
+            3 => dots::<A, 3>(weighted, columns, into),
+            _ => dots::<A, TOGETHER>(weighted, columns, into),
         }
-        return;
-    }
-    for (into, column) in into.iter_mut().zip(columns.chunks_exact(TILE)) {
-        *into += dots::<A, 1>(weighted, column)[0];
     }
 }
 
 #[inline(always)]
-fn dots<A: Arithmetic, const N: usize>(weighted: &[f64; TILE], columns: &[f64]) -> [f64; N] {
+fn dots<A: Arithmetic, const N: usize>(
+    weighted: &[f64; TILE],
+    columns: &[f64],
+    into: &mut [[f64; LANES]],
+) {
     let mut sums = [[0.0; LANES]; N];
     for (place, chunk) in weighted.as_chunks::<LANES>().0.iter().enumerate() {
         for (column, sums) in sums.iter_mut().enumerate() {
@@ -335,10 +445,13 @@ fn dots<A: Arithmetic, const N: usize>(weighted: &[f64; TILE], columns: &[f64]) 
             }
         }
     }
-    sums.map(tree)
+    for (into, sums) in into.iter_mut().zip(sums) {
+        for lane in 0..LANES {
+            into[lane] += sums[lane];
+        }
+    }
 }
 
-#[inline(always)]
 fn tree(mut lanes: [f64; LANES]) -> f64 {
     for half in [8, 4, 2, 1] {
         for lane in 0..half {
