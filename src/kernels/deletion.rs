@@ -171,7 +171,6 @@ fn one_task<E: Entry>(
     let draws = held.nrows();
     let apart = distance(draws);
     let mut work = ColumnWork::new(shared, !panels.is_empty());
-    let mut figures = Vec::with_capacity(range.len());
     let mut shifts = Shifts::none(panels);
     let most = if panels.is_empty() {
         TOGETHER
@@ -190,15 +189,15 @@ fn one_task<E: Entry>(
             interrupt.check()?;
             let column = &mut buffer[index * apart..][..draws];
             let scored = other.as_ref().map(|other| &other[index * apart..][..draws]);
-            figures.push(work.column(column, scored, interrupt)?);
+            work.column(column, scored, interrupt)?;
         }
-        let of_block = &figures[figures.len() - block.len()..];
-        let shares = of_block.iter().map(|figures: &[f64; FIGURES]| figures[6]);
+        let shares = work.largest_shares(block.len());
         panels.add_shifts(&buffer, apart, shares, &mut shifts, interrupt)?;
     }
+    let (figures, totals) = work.finish();
     Ok(Part {
         figures,
-        totals: work.totals(),
+        totals,
         shifts,
     })
 }

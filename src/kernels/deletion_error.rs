@@ -8,16 +8,13 @@ use super::ordered::Interrupt;
 use super::vector::dispatch;
 
 impl Work<'_> {
-    /// Monte Carlo error and contributions of the series `n z`, which is added to the total.
+    /// Monte Carlo error and contributions of the series `n z`.
     pub(super) fn error(
         &mut self,
         efficiency: f64,
         interrupt: &Interrupt<'_>,
     ) -> Result<(f64, f64), KernelError> {
-        let mut powers = dispatch(Powers {
-            z: &self.series,
-            to: &mut self.left_out,
-        });
+        let mut powers = dispatch(Powers { z: &self.series });
         let count = self.series.len() as f64;
         if let Order::Repeated(repeats) = self.shared.order {
             let mut sums = vec![0.0; self.series.len()];
@@ -26,10 +23,7 @@ impl Work<'_> {
                     *sum += entry;
                 }
             }
-            powers = dispatch(Powers {
-                z: &sums,
-                to: &mut [],
-            });
+            powers = dispatch(Powers { z: &sums });
         }
         // The series is the influence over n, and its mean is 0.
         let variance = match &mut self.lagged {
@@ -44,7 +38,7 @@ impl Work<'_> {
 }
 
 /// `(Σ z²)³/(Σ z³)²`; `+inf` for a symmetric series.
-fn contributions((squares, cubes): (f64, f64)) -> f64 {
+pub(super) fn contributions((squares, cubes): (f64, f64)) -> f64 {
     if squares == 0.0 || cubes == 0.0 {
         return f64::INFINITY;
     }
