@@ -42,6 +42,7 @@ __all__ = [
     "signed_tail_shape",
     "skew_normal_tails",
     "smooth",
+    "smooth_weights",
     "sort_order",
     "study",
     "study_nodes",
