@@ -36,6 +36,7 @@ mod kernels {
     mod resample;
     mod signed_tail;
     mod smooth;
+    mod smooth_weights;
     mod special;
     mod spectrum;
     mod study;

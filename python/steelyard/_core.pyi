@@ -42,6 +42,7 @@ __all__ = [
     "signed_tail_shape",
     "skew_normal_tails",
     "smooth",
+    "smooth_weights",
     "sort_order",
     "study",
     "study_nodes",
@@ -181,7 +182,14 @@ def multi_sample(
 def extremes(x: npt.NDArray[np.float64]) -> tuple[float, float]: ...
 def weigh(
     x: npt.NDArray[np.float64], out: npt.NDArray[np.float64]
-) -> tuple[float, float, float, float]: ...
+) -> tuple[tuple[float, float, float, float], tuple[float, float, float, float]]: ...
+def smooth_weights(
+    x: npt.NDArray[np.float64],
+    raw: npt.NDArray[np.float64],
+    sums: tuple[float, float, float, float],
+    relative_efficiency: float,
+    out: npt.NDArray[np.float64],
+) -> tuple[float, tuple[float, float, float, float]]: ...
 def largest(
     x: npt.NDArray[np.float64], count: int
 ) -> tuple[npt.NDArray[np.int64], float] | None: ...

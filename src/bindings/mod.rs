@@ -79,5 +79,5 @@ mod _core {
     #[pymodule_export]
     use super::study::study;
     #[pymodule_export]
-    use super::weigh::weigh;
+    use super::weigh::{smooth_weights, weigh};
 }

@@ -54,6 +54,7 @@ pub mod resample;
 pub mod shares;
 pub mod signed_tail;
 pub mod smooth;
+pub mod smooth_weights;
 pub mod sorting;
 pub mod special;
 pub mod spectrum;

@@ -158,7 +158,7 @@ pub fn tail_shape(x: &[f64], relative_efficiency: f64) -> f64 {
 }
 
 /// The tail of `x`, whose maximum is finite.
-fn tail_of(
+pub(super) fn tail_of(
     x: &[f64],
     largest: f64,
     spread: Option<Spread>,

@@ -1,4 +1,4 @@
-//! Log weights that sum to one, with everything that one pass says of them.
+//! Weights that sum to one, with everything that one pass says of them.
 
 use ndarray::{ArrayView1, Axis};
 
@@ -6,14 +6,18 @@ use super::columns::expect_shape;
 use super::error::KernelError;
 use super::ordered::{Interrupt, map_tasks};
 use super::reductions::column_sums;
+use super::vector::exp::{LEAST, exp};
 use super::vector::{Arithmetic, Work, dispatch};
 use super::weight_sums::{Sums, form};
 
 /// Entries of a task.
-const TASK: usize = 65_536;
+pub(super) const TASK: usize = 65_536;
 
-/// Writes `x_s − log Σ exp(x)` of log weights `x` into `out`, both of shape `(n,)`, and returns the
-/// sums of `x`; the bits are those of [`super::log_sum::normalise`].
+/// Entries looked at together.
+const BLOCK: usize = 1024;
+
+/// Writes `exp(x_s − log Σ exp(x))` of log weights `x` into `out`, both of shape `(n,)`, and returns
+/// the sums of `x`; the exponents are those of [`super::log_sum::normalise`].
 ///
 /// # Errors
 /// [`KernelError::Shape`] for different lengths; [`KernelError::Interrupted`].
@@ -22,34 +26,61 @@ pub fn weigh(x: &[f64], out: &mut [f64], interrupt: &Interrupt<'_>) -> Result<Su
     let column = ArrayView1::from(x).insert_axis(Axis(1));
     let found = column_sums::<f64, { form::ALL }>(column, interrupt)?;
     let sums = found.first().copied().unwrap_or(Sums::NONE);
-    let (maximum, log_total) = sums.offsets();
-    let tasks = x.chunks(TASK).zip(out.chunks_mut(TASK)).collect();
-    map_tasks(tasks, interrupt, |(x, out)| {
-        dispatch(Write {
-            x,
-            out,
-            maximum,
-            log_total,
-        });
-        Ok(())
-    })?;
+    exponentials(x, sums.offsets(), out, interrupt)?;
     Ok(sums)
 }
 
+/// Writes `exp((x − first) − second)` into `out`, of equal length.
+///
+/// # Errors
+/// [`KernelError::Interrupted`].
+pub(super) fn exponentials(
+    x: &[f64],
+    offsets: (f64, f64),
+    out: &mut [f64],
+    interrupt: &Interrupt<'_>,
+) -> Result<(), KernelError> {
+    let tasks = x.chunks(TASK).zip(out.chunks_mut(TASK)).collect();
+    map_tasks(tasks, interrupt, |(x, out)| {
+        for (x, out) in x.chunks(BLOCK).zip(out.chunks_mut(BLOCK)) {
+            if dispatch(Write { x, out, offsets }) {
+                by_themselves(x, out, offsets);
+            }
+        }
+        Ok(())
+    })?;
+    Ok(())
+}
+
+/// As [`Write`], subnormal weights too: one that is not 0 counts as a draw that is not lost.
+fn by_themselves(x: &[f64], out: &mut [f64], (first, second): (f64, f64)) {
+    for (target, entry) in out.iter_mut().zip(x) {
+        let exponent = (entry - first) - second;
+        if exponent < LEAST {
+            *target = exponent.exp();
+        }
+    }
+}
+
+/// Writes exponentials, those below the normal numbers as 0; whether there are any.
 struct Write<'a> {
     x: &'a [f64],
     out: &'a mut [f64],
-    maximum: f64,
-    log_total: f64,
+    offsets: (f64, f64),
 }
 
 impl Work for Write<'_> {
-    type Output = ();
+    type Output = bool;
 
     #[inline(always)]
-    fn run<A: Arithmetic>(self) {
+    fn run<A: Arithmetic>(self) -> bool {
+        let (first, second) = self.offsets;
+        let mut any = false;
         for (target, entry) in self.out.iter_mut().zip(self.x) {
-            *target = (entry - self.maximum) - self.log_total;
+            let exponent = (entry - first) - second;
+            any |= exponent < LEAST;
+            *target = exp::<A>(exponent);
         }
+        any
     }
 }

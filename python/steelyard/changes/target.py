@@ -61,7 +61,8 @@ def form_target(base: Base, change: Change) -> Target:
     draft = merge(base, change)
     terms: dict[str, Array] = {}
     for label, prior in draft.prior.items():
-        _put(terms, f"prior: {label}", _prior_delta(prior, base), base)
+        delta, extremes = _prior_delta(prior, base)
+        _put(terms, f"prior: {label}", delta, base, extremes)
     for name, loglik in draft.loglik.items():
         _put(terms, f"likelihood: {name}", _loglik_delta(loglik, base), base)
     ratios = sorted((_given_ratio(source, base) for source in draft.ratios), key=np.ndarray.tobytes)
@@ -90,13 +91,20 @@ def _weighs(base: Base) -> npt.NDArray[np.bool_]:
     return np.asarray(base.reference > -np.inf)
 
 
-def _put(terms: dict[str, Array], label: str, delta: Array | None, base: Base) -> None:
+def _put(
+    terms: dict[str, Array],
+    label: str,
+    delta: Array | None,
+    base: Base,
+    extremes: tuple[float, float] | None = None,
+) -> None:
+    """Keep Δ of a term unless it is 0 throughout; `extremes` are its own, where known."""
     if delta is None:
         return
     if base.log_weights is not None:
         # A draw without base weight has none in the target either, whatever its ratio.
-        delta = np.where(_weighs(base), delta, 0.0)
-    low, high = extremes_of(delta)
+        delta, extremes = np.where(_weighs(base), delta, 0.0), None
+    low, high = extremes_of(delta) if extremes is None else extremes
     if low == high == 0:
         return
     if not math.isfinite(high):
@@ -105,16 +113,19 @@ def _put(terms: dict[str, Array], label: str, delta: Array | None, base: Base) -
     terms[label] = delta
 
 
-def _prior_delta(target: PriorTarget, base: Base) -> Array | None:
+def _prior_delta(
+    target: PriorTarget, base: Base
+) -> tuple[Array | None, tuple[float, float] | None]:
+    """Δ of a prior term, None where it is unchanged; and its extremes where they are known."""
     factor = target.factor
     if not target.is_swapped and factor == 1:
-        return None
+        return None, None
     draws, stated, pooling = base.draws, target.base, base.draws.pooling
     plain = factor == 1 and pooling is None
     if plain and stated.is_distribution and target.density.is_distribution:
-        delta = _quick_delta(target, draws)
+        delta, extremes = _quick_delta(target, draws)
         if delta is not None:
-            return delta
+            return delta, extremes
     old = stated.log_density_checked(draws)
     new = old if not target.is_swapped else None
     if pooling is not None and stated.label in pooling.impossible:
@@ -134,16 +145,19 @@ def _prior_delta(target: PriorTarget, base: Base) -> Array | None:
     with np.errstate(invalid="ignore", over="ignore"):
         # To the power 0 a prior is flat on its own support, and still nothing outside of it.
         raised = np.where(new > -np.inf, 0.0, -np.inf) if factor == 0 else factor * new
-        return np.asarray(raised - old)
+        return np.asarray(raised - old), None
 
 
-def _quick_delta(target: PriorTarget, draws: Draws) -> Array | None:
-    """New minus old log density where every difference is finite, as both are then; else None."""
+def _quick_delta(
+    target: PriorTarget, draws: Draws
+) -> tuple[Array | None, tuple[float, float] | None]:
+    """New minus old log density, and its extremes, where all are finite, as both are then."""
     old, new = target.base.log_density(draws), target.density.log_density(draws)
     with np.errstate(invalid="ignore", over="ignore"):
         delta = np.subtract(new, old, out=new if new.flags.writeable else None)
     low, high = extremes_of(delta)
-    return delta if -math.inf < low and high < math.inf else None
+    is_finite = -math.inf < low and high < math.inf
+    return (delta, (low, high)) if is_finite else (None, None)
 
 
 def _loglik_delta(target: LoglikTarget, base: Base) -> Array | None:

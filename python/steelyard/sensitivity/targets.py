@@ -252,7 +252,7 @@ def _label(swap: Swap) -> str:
 def _alone(base: Base, term: PriorTerm, density: Distribution) -> Array | None:
     """One Δ; NaN stands for what `form_target` refuses."""
     try:
-        return _prior_delta(PriorTarget(term, PriorTerm(term.key, density)), base)
+        return _prior_delta(PriorTarget(term, PriorTerm(term.key, density)), base)[0]
     except ValueError:
         return np.array([np.nan])
 

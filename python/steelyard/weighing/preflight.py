@@ -165,7 +165,9 @@ def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Findi
         labels.append(label)
     if not values or not np.any(np.concatenate(loosened) > 0):
         return []
-    root, unit = _root_covariance(np.concatenate(values, axis=1), base)
+    # One alone needs no copy.
+    together = values[0] if len(values) == 1 else np.concatenate(values, axis=1)
+    root, unit = _root_covariance(together, base)
     if root is None:
         return []
     fall = root.T @ ((np.concatenate(loosened) * unit**2)[:, None] * root)

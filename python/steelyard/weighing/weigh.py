@@ -80,7 +80,8 @@ def base_weights(base: Base) -> Weights:
         return _equal(draws.size)
     if base.is_approximate:
         return weigh_ratio(given, None, draws, ordered=base.ordered)
-    raw, figures = _raw_weights(given)
+    raw = np.empty(given.shape)
+    figures, _ = _core.weigh(given, raw)
     efficiency = float(relative_efficiency(raw[:, None], draws, base.ordered)[0])
     column = np.ascontiguousarray(given)[:, None]
     shape = float(_core.tail_shape(column, np.array([efficiency]))[0])
@@ -88,15 +89,6 @@ def base_weights(base: Base) -> Weights:
     return Weights(
         given, raw, raw, 0.0, shape, size, entropy, largest, size, efficiency, is_smoothed=False
     )
-
-
-def _raw_weights(total: Array) -> tuple[Array, tuple[float, ...]]:
-    """Normalised weights before smoothing, and log-sum-exp, both sizes and largest share."""
-    raw = np.empty(total.shape)
-    figures = _core.weigh(total, raw)
-    with np.errstate(over="ignore"):  # −inf is then what is meant
-        np.exp(raw, out=raw)
-    return raw, figures
 
 
 def _equal(count: int) -> Weights:
@@ -151,20 +143,19 @@ def weigh_ratio(
         The weights.
     """
     total = log_ratio if log_weights is None else log_ratio + log_weights
-    raw, figures = _raw_weights(total)
+    raw = np.empty(total.shape)
+    figures, sums = _core.weigh(total, raw)
     log_sum, raw_size, *_ = figures
     if log_weights is not None or not math.isfinite(log_sum):
         refuse_bad_ratio(log_ratio, draws, "log ratio")
         refuse_bad_ratio(total, draws, "log ratio with base weights")
     base = log_weights if base_weights is None else base_weights
     base_sum = math.log(draws.size) if base is None else float(_core.log_sum_exp(base[:, None])[0])
-    efficiency = relative_efficiency(raw[:, None], draws, ordered)
+    efficiency = float(relative_efficiency(raw[:, None], draws, ordered)[0])
     linear = np.empty(draws.size)
-    column = np.ascontiguousarray(total)[:, None]
-    shape = float(_core.smooth(column, efficiency, linear[:, None])[0])
+    shape, smoothed = _core.smooth_weights(total, raw, sums, efficiency, linear)
     if smooth:
-        figures = tuple(_core.describe(linear[:, None])[:, 0].tolist())
-        np.exp(linear, out=linear)
+        figures = smoothed
     _, size, entropy, largest = figures
     return Weights(
         frozen(total),
@@ -176,6 +167,6 @@ def weigh_ratio(
         entropy,
         largest,
         raw_size,
-        float(efficiency[0]),
+        efficiency,
         is_smoothed=bool(smooth),
     )
