@@ -171,6 +171,7 @@ fn one_task<E: Entry>(
     let draws = held.nrows();
     let apart = distance(draws);
     let mut work = ColumnWork::new(shared, !panels.is_empty());
+    let mut figures = Vec::with_capacity(range.len());
     let mut shifts = Shifts::none(panels);
     let most = if panels.is_empty() {
         TOGETHER
@@ -189,15 +190,15 @@ fn one_task<E: Entry>(
             interrupt.check()?;
             let column = &mut buffer[index * apart..][..draws];
             let scored = other.as_ref().map(|other| &other[index * apart..][..draws]);
-            work.column(column, scored, interrupt)?;
+            figures.push(work.column(column, scored, interrupt)?);
         }
-        let shares = work.largest_shares(block.len());
+        let of_block = &figures[figures.len() - block.len()..];
+        let shares = of_block.iter().map(|figures: &[f64; FIGURES]| figures[6]);
         panels.add_shifts(&buffer, apart, shares, &mut shifts, interrupt)?;
     }
-    let (figures, totals) = work.finish();
     Ok(Part {
         figures,
-        totals,
+        totals: work.totals(),
         shifts,
     })
 }

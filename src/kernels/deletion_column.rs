@@ -1,17 +1,12 @@
 //! One column left out: weights, smoothed, and what follows from them while they lie in the cache.
 
 use super::deletion::{Base, FIGURES, Order, fault};
-use super::deletion_alone::Pending;
 use super::deletion_lags::{Lagged, Layout};
-use super::deletion_loops::{Scaled, Sums};
-use super::deletion_survey::{Finite, Glance, Ratios, Survey};
+use super::deletion_loops::{AddBoth, Density, Exponentials, Scaled, Sums, Weighed};
+use super::deletion_survey::{Finite, Ratios, Survey};
 use super::error::KernelError;
 use super::ordered::Interrupt;
 use super::vector::dispatch;
-
-/// Log ratios that lie further apart than this do not all have exponentials with all their digits,
-/// nor squares.
-const MOST_APART: f64 = 300.0;
 
 /// What all columns share.
 pub struct Shared<'a> {
@@ -59,12 +54,6 @@ pub struct Work<'a> {
     pub(super) tail: Vec<Replaced>,
     pub(super) ratios: Vec<f64>,
     pub(super) keeps_weights: bool,
-    /// Columns whose series are still to be added.
-    pub(super) pending: Vec<Pending>,
-    /// Room for more of them.
-    pub(super) spare: Vec<(Vec<f64>, Vec<f64>)>,
-    /// Figures of the columns so far.
-    pub(super) figures: Vec<[f64; FIGURES]>,
 }
 
 /// What is known of a column once its weights are smoothed.
@@ -83,11 +72,10 @@ pub(super) struct Smoothed {
     pub(super) top: f64,
 }
 
-/// A draw of the tail, its smoothed weight over its raw one, and the latter.
+/// A draw of the tail, and its smoothed weight over its raw one.
 pub(super) struct Replaced {
     pub(super) index: usize,
     pub(super) ratio: f64,
-    pub(super) raw: f64,
 }
 
 /// Scores of a column; `series` of [`Work`] then holds the influence of the left-out one.
@@ -113,50 +101,21 @@ impl<'a> Work<'a> {
             tail: Vec::new(),
             ratios: Vec::new(),
             keeps_weights,
-            pending: Vec::new(),
-            spare: Vec::new(),
-            figures: Vec::new(),
         }
     }
 
-    /// Figures of the columns done, and the series summed over them: left-out score, raw weights,
-    /// in-sample score.
-    pub fn finish(mut self) -> (Vec<[f64; FIGURES]>, [Vec<f64>; 3]) {
-        self.add_pending();
+    /// Series summed over the columns done: left-out score, raw weights, in-sample score.
+    pub fn totals(self) -> [Vec<f64>; 3] {
         let count = self.left_out.len() as f64;
-        let totals = [self.left_out, self.raw, self.in_sample]
-            .map(|sums| sums.into_iter().map(|sum| count * sum).collect());
-        (self.figures, totals)
+        [self.left_out, self.raw, self.in_sample]
+            .map(|sums| sums.into_iter().map(|sum| count * sum).collect())
     }
 
-    /// Largest weights of the last columns.
-    pub fn largest_shares(&self, columns: usize) -> impl ExactSizeIterator<Item = f64> {
-        let first = self.figures.len() - columns;
-        self.figures[first..].iter().map(|figures| figures[6])
-    }
-
-    /// Takes a column of log densities, which is overwritten.
+    /// Figures of a column of log densities, which is overwritten.
     ///
     /// # Errors
     /// [`KernelError::Interrupted`], [`KernelError::Memory`].
     pub fn column(
-        &mut self,
-        held: &mut [f64],
-        scored: Option<&[f64]>,
-        interrupt: &Interrupt<'_>,
-    ) -> Result<(), KernelError> {
-        if scored.is_none() && self.shared.log_weights.is_none() {
-            let (survey, least) = dispatch(Glance(held));
-            if survey.is_finite() && survey.largest - least < MOST_APART {
-                return self.alone(held, survey, interrupt);
-            }
-        }
-        let found = self.other(held, scored, interrupt)?;
-        self.figures.push(found);
-        Ok(())
-    }
-
-    fn other(
         &mut self,
         held: &mut [f64],
         scored: Option<&[f64]>,
@@ -181,22 +140,34 @@ impl<'a> Work<'a> {
             held.fill(f64::NAN);
             return Ok(found);
         }
-        let (smoothed, scores) = self.general(held, scored, survey, interrupt)?;
+        let (smoothed, scores) = match (scored, self.shared.log_weights) {
+            (None, None) => self.alone(held, survey, interrupt)?,
+            _ => self.general(held, scored, survey, interrupt)?,
+        };
         let (error, contributions) = self.error(smoothed.efficiency, interrupt)?;
-        self.keep_weights(smoothed.sums.total, held);
-        found[..11].copy_from_slice(&smoothed.figures(&scores, error, contributions));
-        Ok(found)
-    }
-
-    pub(super) fn keep_weights(&self, total: f64, out: &mut [f64]) {
         if self.keeps_weights {
             dispatch(Scaled {
                 weights: &self.weights,
                 base: &self.shared.base,
-                total,
-                out,
+                total: smoothed.sums.total,
+                out: held,
             });
         }
+        let sums = &smoothed.sums;
+        found[..11].copy_from_slice(&[
+            scores.score,
+            error,
+            scores.in_sample,
+            smoothed.shape,
+            sums.total * sums.total / sums.squares,
+            (sums.total.ln() - sums.spread / sums.total).exp(),
+            smoothed.top.exp() / sums.total,
+            scores.spread,
+            contributions,
+            smoothed.efficiency,
+            smoothed.p_value,
+        ]);
+        Ok(found)
     }
 
     fn faults(&self, x: &[f64]) -> u8 {
@@ -222,30 +193,56 @@ impl<'a> Work<'a> {
             log_weights: self.shared.log_weights,
         })
     }
-}
 
-impl Smoothed {
-    /// All figures but the faults.
-    pub(super) fn figures(
-        &self,
-        scores: &Scored,
-        error: f64,
-        contributions: f64,
-    ) -> [f64; FIGURES - 1] {
-        let sums = &self.sums;
-        [
-            scores.score,
-            error,
-            scores.in_sample,
-            self.shape,
-            sums.total * sums.total / sums.squares,
-            (sums.total.ln() - sums.spread / sums.total).exp(),
-            self.top.exp() / sums.total,
-            scores.spread,
-            contributions,
-            self.efficiency,
-            self.p_value,
-        ]
+    /// Equal base weights, and what is scored is what is deleted. A draw whose weight is not replaced
+    /// has `w exp(L)` the same as any other such draw: only the tail is looked at.
+    fn alone(
+        &mut self,
+        x: &mut [f64],
+        survey: Survey,
+        interrupt: &Interrupt<'_>,
+    ) -> Result<(Smoothed, Scored), KernelError> {
+        let (count, largest) = (x.len() as f64, survey.largest);
+        let (raw_total, least) = dispatch(Exponentials {
+            x,
+            largest,
+            weights: &mut self.weights,
+        });
+        let density = dispatch(Density {
+            x,
+            least,
+            density: &mut self.density,
+        });
+        dispatch(AddBoth {
+            weights: (&self.weights, raw_total),
+            density: (&self.density, density),
+            raw: &mut self.raw,
+            in_sample: &mut self.in_sample,
+        });
+        let smoothed = self.smoothed(x, survey.spread(), interrupt)?;
+        let body = smoothed.unit * (count - self.tail.len() as f64);
+        let scale = body + self.tail.iter().map(|draw| draw.ratio).sum::<f64>();
+        let total = smoothed.sums.total;
+        let extra = |draw: &Replaced| (draw.ratio - smoothed.unit) * self.density[draw.index];
+        let squares = smoothed.unit * density + self.tail.iter().map(extra).sum::<f64>();
+        let lift = smoothed.lift;
+        let rest = lift - largest - smoothed.shift;
+        let scores = Scored {
+            score: rest + scale.ln() - total.ln(),
+            in_sample: -(largest + least) + (density / count).ln(),
+            spread: spread(smoothed.shift - lift - least, squares * total, scale),
+        };
+        dispatch(Weighed {
+            weights: &self.weights,
+            constant: smoothed.unit / scale,
+            factor: 1.0 / total,
+            out: &mut self.series,
+        });
+        for draw in &self.tail {
+            let weight = self.weights[draw.index] / total;
+            self.series[draw.index] = draw.ratio / scale - weight;
+        }
+        Ok((smoothed, scores))
     }
 }
 

@@ -8,13 +8,16 @@ use super::ordered::Interrupt;
 use super::vector::dispatch;
 
 impl Work<'_> {
-    /// Monte Carlo error and contributions of the series `n z`.
+    /// Monte Carlo error and contributions of the series `n z`, which is added to the total.
     pub(super) fn error(
         &mut self,
         efficiency: f64,
         interrupt: &Interrupt<'_>,
     ) -> Result<(f64, f64), KernelError> {
-        let mut powers = dispatch(Powers { z: &self.series });
+        let mut powers = dispatch(Powers {
+            z: &self.series,
+            to: &mut self.left_out,
+        });
         let count = self.series.len() as f64;
         if let Order::Repeated(repeats) = self.shared.order {
             let mut sums = vec![0.0; self.series.len()];
@@ -23,7 +26,10 @@ impl Work<'_> {
                     *sum += entry;
                 }
             }
-            powers = dispatch(Powers { z: &sums });
+            powers = dispatch(Powers {
+                z: &sums,
+                to: &mut [],
+            });
         }
         // The series is the influence over n, and its mean is 0.
         let variance = match &mut self.lagged {
@@ -38,7 +44,7 @@ impl Work<'_> {
 }
 
 /// `(Σ z²)³/(Σ z³)²`; `+inf` for a symmetric series.
-pub(super) fn contributions((squares, cubes): (f64, f64)) -> f64 {
+fn contributions((squares, cubes): (f64, f64)) -> f64 {
     if squares == 0.0 || cubes == 0.0 {
         return f64::INFINITY;
     }

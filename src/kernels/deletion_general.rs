@@ -36,7 +36,7 @@ impl Work<'_> {
         for ((sum, share), weight) in self.raw.iter_mut().zip(shares).zip(&self.weights) {
             *sum += share - weight / raw_total;
         }
-        let smoothed = self.smoothed(x, survey.spread(), None, interrupt)?;
+        let smoothed = self.smoothed(x, survey.spread(), interrupt)?;
         let (top, joint) = self.joint(x, &own);
         let highest = maximum_of(&own);
         for (target, value) in self.density.iter_mut().zip(&own) {
@@ -51,9 +51,6 @@ impl Work<'_> {
         let total = smoothed.sums.total;
         for (entry, weight) in self.series.iter_mut().zip(&self.weights) {
             *entry = *entry / joint - weight / total;
-        }
-        for (sum, entry) in self.left_out.iter_mut().zip(&self.series) {
-            *sum += entry;
         }
         let scores = Scored {
             score: top + joint.ln() - total.ln(),
@@ -77,15 +74,8 @@ impl Work<'_> {
 
     /// Writes `exp(x + own)` over its largest into `series`; that largest logarithm, and the sum.
     fn joint(&mut self, x: &[f64], own: &[f64]) -> (f64, f64) {
-        let equal = self.shared.log_weights.is_none();
         for ((target, ratio), value) in self.series.iter_mut().zip(x).zip(own) {
-            // A density that is infinite, and so has no weight, still has its share of the product.
-            let boundless = *ratio == f64::NEG_INFINITY && *value == f64::INFINITY;
-            *target = if boundless && equal {
-                0.0
-            } else {
-                ratio + value
-            };
+            *target = ratio + value;
         }
         let top = maximum_of(&self.series);
         self.series.iter_mut().for_each(|target| *target -= top);

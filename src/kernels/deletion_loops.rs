@@ -6,7 +6,7 @@ use super::vector::{Arithmetic, Work};
 use super::weight_sums::larger;
 
 pub(super) const LANES: usize = 16;
-pub(super) const BLOCK: usize = 4096;
+const BLOCK: usize = 4096;
 
 /// Takes `largest` off `x` and writes the exponentials; their sum, and the least `x`.
 pub struct Exponentials<'a> {
@@ -50,8 +50,71 @@ impl Work for Exponentials<'_> {
     }
 }
 
+/// Writes `exp(least − x)`: the density where the weight is its inverse. The sum.
+pub struct Density<'a> {
+    /// Log weights.
+    pub x: &'a [f64],
+    /// The least of them.
+    pub least: f64,
+    /// Where the density goes.
+    pub density: &'a mut [f64],
+}
+
+impl Work for Density<'_> {
+    type Output = f64;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> f64 {
+        let (mut total, least) = (0.0, self.least);
+        for (x, y) in self.x.chunks(BLOCK).zip(self.density.chunks_mut(BLOCK)) {
+            let mut lanes = [0.0; LANES];
+            let ((x, x_rest), (y, y_rest)) = (x.as_chunks::<LANES>(), y.as_chunks_mut::<LANES>());
+            for (x, y) in x.iter().zip(y) {
+                for lane in 0..LANES {
+                    y[lane] = exp::<A>(least - x[lane]);
+                    lanes[lane] += y[lane];
+                }
+            }
+            let mut rest = [0.0; LANES];
+            for (sum, (x, y)) in rest.iter_mut().zip(x_rest.iter().zip(y_rest)) {
+                *y = exp::<A>(least - x);
+                *sum = *y;
+            }
+            total += tree(plus(lanes, rest));
+        }
+        total
+    }
+}
+
+/// `raw += 1/n − weight/total` and `in_sample += density/total − 1/n`.
+pub struct AddBoth<'a> {
+    /// Weights and their sum.
+    pub weights: (&'a [f64], f64),
+    /// Densities and their sum.
+    pub density: (&'a [f64], f64),
+    /// The first total.
+    pub raw: &'a mut [f64],
+    /// The second one.
+    pub in_sample: &'a mut [f64],
+}
+
+impl Work for AddBoth<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let equal = 1.0 / self.raw.len() as f64;
+        let (of_weights, of_density) = (1.0 / self.weights.1, 1.0 / self.density.1);
+        for (sum, weight) in self.raw.iter_mut().zip(self.weights.0) {
+            *sum += A::mul_add(-of_weights, *weight, equal);
+        }
+        for (sum, density) in self.in_sample.iter_mut().zip(self.density.0) {
+            *sum += A::mul_add(of_density, *density, -equal);
+        }
+    }
+}
+
 /// Sums of weights `r = exp(x)`.
-#[derive(Clone, Copy, Default)]
 pub struct Sums {
     /// `Σ r`.
     pub total: f64,
@@ -59,15 +122,6 @@ pub struct Sums {
     pub squares: f64,
     /// `Σ r x`, with `0 · −inf = 0`.
     pub spread: f64,
-}
-
-impl Sums {
-    /// Adds, or with the sign −1 takes off, one weight and its logarithm.
-    pub fn add(&mut self, sign: f64, weight: f64, log: f64) {
-        self.total += sign * weight;
-        self.squares += sign * (weight * weight);
-        self.spread += sign * (weight * log);
-    }
 }
 
 /// Forms [`Sums`].
@@ -160,10 +214,12 @@ impl Work for Scaled<'_> {
     }
 }
 
-/// `Σ z²` and `Σ z³` of a series.
+/// `Σ z²` and `Σ z³` of a series, which is added to a total where there is one.
 pub struct Powers<'a> {
     /// The series.
     pub z: &'a [f64],
+    /// To what it is added; as long as the series, or empty.
+    pub to: &'a mut [f64],
 }
 
 impl Work for Powers<'_> {
@@ -171,6 +227,9 @@ impl Work for Powers<'_> {
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) -> (f64, f64) {
+        for (sum, z) in self.to.iter_mut().zip(self.z) {
+            *sum += z;
+        }
         let mut found = (0.0, 0.0);
         for z in self.z.chunks(BLOCK) {
             let (mut squares, mut cubes) = ([0.0; LANES], [0.0; LANES]);

@@ -1,7 +1,7 @@
 //! Smoothing one column where it lies, weights and logarithms at once.
 
 use super::deletion_column::{Replaced, Smoothed, Work};
-use super::deletion_loops::{Exponentials, Moments, Sums};
+use super::deletion_loops::{Exponentials, Moments};
 use super::deletion_survey::maximum_of;
 use super::error::KernelError;
 use super::largest::{Ranked, Spread};
@@ -18,17 +18,12 @@ const FAR_BELOW: f64 = -20.0;
 /// this.
 const FAR_ABOVE: f64 = 300.0;
 
-/// The part of a sum from which on what was taken off it costs no more than a few digits.
-const KEPT: f64 = 1e-2;
-
 impl Work<'_> {
-    /// Smooths the logarithms `x`, largest 0, and the weights; with their sums, from those of the raw
-    /// weights where these are known.
+    /// Smooths the logarithms `x`, largest 0, and the weights; with their sums.
     pub(super) fn smoothed(
         &mut self,
         x: &mut [f64],
         spread: Option<Spread>,
-        raw: Option<&Sums>,
         interrupt: &Interrupt<'_>,
     ) -> Result<Smoothed, KernelError> {
         let (mut efficiency, mut p_value) = (1.0, 1.0);
@@ -38,7 +33,6 @@ impl Work<'_> {
             p_value = lagged.chains_p_value(&self.weights, 1.0, interrupt)?;
         }
         let (mut top, mut shift, mut lift) = (0.0, 0.0, 0.0);
-        let mut known = raw.copied();
         self.tail.clear();
         let (weights, tail, ratios) = (&mut self.weights, &mut self.tail, &mut self.ratios);
         let shape = with_room(|room| {
@@ -54,39 +48,26 @@ impl Work<'_> {
             let (smooth, ratios) = ratios.split_at(logs.len());
             for (rank, &(_, index)) in ranked.iter().enumerate() {
                 let index = index as usize;
-                let replaced = Replaced {
-                    index,
-                    ratio: ratios[rank],
-                    raw: weights[index],
-                };
-                if let Some(known) = &mut known {
-                    known.add(-1.0, replaced.raw, x[index]);
-                    known.add(1.0, smooth[rank], logs[rank]);
-                }
                 x[index] = logs[rank];
                 weights[index] = smooth[rank];
-                tail.push(replaced);
+                let ratio = ratios[rank];
+                tail.push(Replaced { index, ratio });
             }
             fitted.shape()
         });
         if shift != 0.0 {
-            known = None;
             dispatch(Exponentials {
                 x,
                 largest: shift,
                 weights: &mut self.weights,
             });
         }
-        let known = known.filter(|sums| raw.is_some_and(|raw| keeps_digits(sums, raw)));
-        let anew = || {
-            dispatch(Moments {
-                x,
-                weights: &self.weights,
-            })
-        };
         Ok(Smoothed {
             shift,
-            sums: known.unwrap_or_else(anew),
+            sums: dispatch(Moments {
+                x,
+                weights: &self.weights,
+            }),
             lift,
             unit: (-lift).exp(),
             shape,
@@ -95,11 +76,6 @@ impl Work<'_> {
             top: top - shift,
         })
     }
-}
-
-/// Whether sums from which much was taken off are still as good as sums formed anew.
-fn keeps_digits(sums: &Sums, raw: &Sums) -> bool {
-    sums.total > KEPT * raw.total && sums.squares > KEPT * raw.squares
 }
 
 /// Writes the exponentials of the smoothed logarithms and, behind them, of what they are above the

@@ -44,47 +44,6 @@ impl Survey {
     }
 }
 
-/// What the log ratios `−x` of log densities look like, and the least of them.
-pub struct Glance<'a>(pub &'a [f64]);
-
-impl Work for Glance<'_> {
-    type Output = (Survey, f64);
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) -> (Survey, f64) {
-        let first = self.0.first().copied().unwrap_or(0.0);
-        let mut most = [[f64::NEG_INFINITY; LANES]; 2];
-        let [mut sums, mut squares] = [[0.0; LANES]; 2];
-        let (chunks, rest) = self.0.as_chunks::<LANES>();
-        for chunk in chunks {
-            for lane in 0..LANES {
-                let distance = first - chunk[lane];
-                most[0][lane] = larger(-chunk[lane], most[0][lane]);
-                most[1][lane] = larger(chunk[lane], most[1][lane]);
-                sums[lane] += distance;
-                squares[lane] = A::mul_add(distance, distance, squares[lane]);
-            }
-        }
-        let [mut last, mut most] = [
-            [0.0; 2],
-            most.map(|lanes| lanes.into_iter().fold(f64::NEG_INFINITY, f64::max)),
-        ];
-        for &x in rest {
-            most = [larger(-x, most[0]), larger(x, most[1])];
-            last[0] += first - x;
-            last[1] += (first - x) * (first - x);
-        }
-        let survey = Survey {
-            count: self.0.len() as f64,
-            origin: -first,
-            largest: most[0],
-            sum: tree(sums) + last[0],
-            squares: tree(squares) + last[1],
-        };
-        (survey, -most[1])
-    }
-}
-
 /// Log densities to log ratios `log v − x`, in place. A draw without base weight has none.
 pub struct Ratios<'a> {
     /// Log densities.

@@ -10,8 +10,6 @@ pub mod columns;
 pub mod correlation;
 pub mod cumulated;
 pub mod deletion;
-mod deletion_alone;
-mod deletion_alone_loops;
 mod deletion_column;
 mod deletion_error;
 mod deletion_general;

@@ -62,32 +62,6 @@ pub fn exp<A: Arithmetic>(x: f64) -> f64 {
     if x < LEAST { 0.0 } else { value }
 }
 
-/// `exp x` and `exp −x` for `|x| ≤ 700`: both have the even and the odd part of the polynomial.
-#[inline(always)]
-pub fn exp_both<A: Arithmetic>(x: f64) -> (f64, f64) {
-    let shifted = A::mul_add(x, LOG2_E, ROUND);
-    let k = shifted - ROUND;
-    let r = A::mul_add(k, -LN_2_LOW, A::mul_add(k, -LN_2_HIGH, x));
-    let u = r * r;
-    let v = u * u;
-    let part = |i: usize| {
-        let low = A::mul_add(u, Q[i + 2], Q[i]);
-        A::mul_add(
-            v,
-            A::mul_add(v, Q[i + 8], A::mul_add(u, Q[i + 6], Q[i + 4])),
-            low,
-        )
-    };
-    let (even, odd) = (u * part(0), A::mul_add(r * u, part(1), r));
-    let one = 1.0_f64.to_bits();
-    let power = f64::from_bits(one.wrapping_add(shifted.to_bits() << 52));
-    let inverse = f64::from_bits(one.wrapping_sub(shifted.to_bits() << 52));
-    (
-        A::mul_add(power, even + odd, power),
-        A::mul_add(inverse, even - odd, inverse),
-    )
-}
-
 /// `exp x − 1` for `x ≤ 709`; NaN for NaN.
 #[inline(always)]
 pub fn exp_m1<A: Arithmetic>(x: f64) -> f64 {
