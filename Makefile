@@ -62,7 +62,9 @@ bench: $(VENV)/bin/pip ## speed and memory against plain NumPy/SciPy scripts, ve
 
 honesty: $(VENV)/bin/pip ## do error intervals and verdicts hold: a battery of problems with known answers
 	$(RUN) -m pip install --quiet --group test ".[all]"
+	mkdir -p target
 	$(RUN) benches/honesty/run.py --picture target/honesty.png
+	$(RUN) benches/honesty/base_checks.py
 
 wheels: ## build sdist and wheel, look through both, test the wheel under each of PYTHONS
 	$(PYTHON) .ci/wheels $(PYTHONS)
