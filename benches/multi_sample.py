@@ -19,27 +19,33 @@ def cases(small: bool) -> list[Case]:
     log_q = -0.5 * precision * (x[:, None] - centre) ** 2
     counts, sizes = np.ones(len(x)), np.full(fits, float(draws))
 
-    def twin() -> Array:
+    def shares_at(f: Array) -> tuple[Array, Array]:
+        terms = log_q + f + np.log(sizes)
+        top = terms.max(axis=1, keepdims=True)
+        shares = np.exp(terms - top)
+        total = shares.sum(axis=1, keepdims=True)
+        shares /= total
+        return shares, (top + np.log(total))[:, 0]
+
+    def twin() -> tuple[Array, Array, Array]:
+        """Constants, and at them what weights are made of: shares and the mixture's density."""
         f = np.zeros(fits)
         for _ in range(100):
-            terms = log_q + f + np.log(sizes)
-            top = terms.max(axis=1, keepdims=True)
-            shares = np.exp(terms - top)
-            shares /= shares.sum(axis=1, keepdims=True)
+            shares, _ = shares_at(f)
             slope = shares.sum(axis=0) - sizes
             curve = np.diag(shares.sum(axis=0)) - shares.T @ shares
             step = np.linalg.solve(curve[1:, 1:], -slope[1:])
             f[1:] += step
             if np.abs(step).max() < 1e-9:
                 break
-        return f
+        return f, *shares_at(f)
 
     return [
         Case(
             "multi-sample constants",
             f"{fits} fits of {draws}",
             twin,
-            lambda: _core.multi_sample(log_q, counts, sizes, np.zeros(fits), True)[0],
+            lambda: _core.multi_sample(log_q, counts, sizes, np.zeros(fits), True)[:3],
             1e-9,
             "both stop at a step of 1e-9",
             (10.0, None),
