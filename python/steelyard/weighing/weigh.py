@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cached_property, lru_cache
 
 import numpy as np
 
@@ -91,9 +91,17 @@ def base_weights(base: Base) -> Weights:
     )
 
 
+@lru_cache(maxsize=64)
+def _equal_weight(count: int) -> float:
+    """The weight of ratios that are all the same, to the last bit."""
+    raw = np.empty(count)
+    _core.weigh(np.zeros(count), raw)
+    return float(raw[0])
+
+
 def _equal(count: int) -> Weights:
     # Arrays of one repeated number, which take no memory.
-    equal = np.exp(np.array([-math.log(count)]))
+    equal = np.array([_equal_weight(count)])
     entropy = math.exp(math.log(count))
     return Weights(
         np.broadcast_to(np.zeros(1), (count,)),
