@@ -38,7 +38,7 @@ def best_shares(squares: Array, weights: Array) -> tuple[Array, Array]:
 
     The costs are convex in the shares. Scenarios are weighed by multipliers that grow where the
     cost is high, and shares move by the square root of their use: a rule that never raises the
-    weighed sum (Torsney 1983, Lecture Notes in Economics and Mathematical Systems 215; Yu 2010,
+    weighed sum (Silvey, Titterington, Torsney 1978, Communications in Statistics A 7; Yu 2010,
     Annals of Statistics 38).
     """
     count = weights.shape[1]
