@@ -8,15 +8,15 @@ from typing import Any, ClassVar
 
 import numpy as np
 
-from steelyard.densities.cumulative import Elementwise
 from steelyard.densities.hyperparameters import Array, Hyperparameter
+from steelyard.densities.location_scale import LocationScale
 from steelyard.densities.tails import Tails, infinite
 
 __all__ = ["Cauchy", "cauchy_rise"]
 
 
 @dataclass(frozen=True, repr=False)
-class Cauchy(Elementwise):
+class Cauchy(LocationScale):
     """
     Cauchy distribution.
 
@@ -48,18 +48,9 @@ class Cauchy(Elementwise):
     domains: ClassVar = {"location": "real", "scale": "positive"}
     family: ClassVar = "cauchy"
 
-    def _gradient(self, x: Array, *hyper: Array) -> Array:
-        location, scale = hyper
-        return cauchy_rise((x - location) / scale) / scale
-
-    def _slopes(self, x: Array, *hyper: Array) -> dict[str, Array]:
-        location, scale = hyper
-        z = (x - location) / scale
-        rise = cauchy_rise(z)
-        return {"location": -rise / scale, "scale": -(1 + z * rise) / scale}
-
-    def _support(self, *hyper: Array) -> tuple[Any, Any]:
-        return -math.inf, math.inf
+    @staticmethod
+    def _rise(z: Array) -> Array:
+        return cauchy_rise(z)
 
     def _tails(self, *hyper: Array) -> Tails:
         return Tails(infinite(-1, 0, 0.0, -2.0), infinite(1, 0, 0.0, -2.0))
@@ -71,10 +62,6 @@ class Cauchy(Elementwise):
         z = (x - hyper[0]) / hyper[1]
         # The angle is small, not a difference, on the side of the small tail.
         return np.log(np.arctan2(1, -z) / math.pi), np.log(np.arctan2(1, z) / math.pi)
-
-    def _flows(self, x: Array, *hyper: Array) -> dict[str, Array]:
-        z = (x - hyper[0]) / hyper[1]
-        return {"location": np.ones_like(z), "scale": z}
 
 
 def cauchy_rise(z: Array) -> Array:

@@ -8,8 +8,8 @@ from typing import Any, ClassVar
 
 import numpy as np
 
-from steelyard.densities.cumulative import Elementwise
 from steelyard.densities.hyperparameters import Array, Hyperparameter
+from steelyard.densities.location_scale import LocationScale
 from steelyard.densities.special import log_complement
 from steelyard.densities.tails import Tails, infinite
 
@@ -17,7 +17,7 @@ __all__ = ["Gumbel"]
 
 
 @dataclass(frozen=True, repr=False)
-class Gumbel(Elementwise):
+class Gumbel(LocationScale):
     """
     Gumbel distribution of largest values.
 
@@ -49,18 +49,9 @@ class Gumbel(Elementwise):
     domains: ClassVar = {"location": "real", "scale": "positive"}
     family: ClassVar = "gumbel"
 
-    def _gradient(self, x: Array, *hyper: Array) -> Array:
-        location, scale = hyper
-        return _rise((x - location) / scale) / scale
-
-    def _slopes(self, x: Array, *hyper: Array) -> dict[str, Array]:
-        location, scale = hyper
-        z = (x - location) / scale
-        rise = _rise(z)
-        return {"location": -rise / scale, "scale": -(1 + z * rise) / scale}
-
-    def _support(self, *hyper: Array) -> tuple[Any, Any]:
-        return -math.inf, math.inf
+    @staticmethod
+    def _rise(z: Array) -> Array:
+        return np.expm1(-z)
 
     def _tails(self, *hyper: Array) -> Tails:
         # Downwards exp(−e^(−z)) beats every exponential power.
@@ -74,12 +65,3 @@ class Gumbel(Elementwise):
         fall = np.exp(-z)
         # Far out 1 − exp(−fall) is the fall itself, long after that has underflowed.
         return -fall, np.where(z > 40, -z, log_complement(-fall))
-
-    def _flows(self, x: Array, *hyper: Array) -> dict[str, Array]:
-        z = (x - hyper[0]) / hyper[1]
-        return {"location": np.ones_like(z), "scale": z}
-
-
-def _rise(z: Array) -> Array:
-    """Derivative of the standard log density."""
-    return np.expm1(-z)

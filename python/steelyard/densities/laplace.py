@@ -8,8 +8,8 @@ from typing import Any, ClassVar
 
 import numpy as np
 
-from steelyard.densities.cumulative import Elementwise
 from steelyard.densities.hyperparameters import Array, Hyperparameter
+from steelyard.densities.location_scale import LocationScale
 from steelyard.densities.special import log_complement
 from steelyard.densities.tails import Tails, infinite
 
@@ -17,7 +17,7 @@ __all__ = ["Laplace"]
 
 
 @dataclass(frozen=True, repr=False)
-class Laplace(Elementwise):
+class Laplace(LocationScale):
     """
     Laplace (double exponential) distribution.
 
@@ -50,18 +50,9 @@ class Laplace(Elementwise):
     domains: ClassVar = {"location": "real", "scale": "positive"}
     family: ClassVar = "laplace"
 
-    def _gradient(self, x: Array, *hyper: Array) -> Array:
-        location, scale = hyper
-        return _rise((x - location) / scale) / scale
-
-    def _slopes(self, x: Array, *hyper: Array) -> dict[str, Array]:
-        location, scale = hyper
-        z = (x - location) / scale
-        rise = _rise(z)
-        return {"location": -rise / scale, "scale": -(1 + z * rise) / scale}
-
-    def _support(self, *hyper: Array) -> tuple[Any, Any]:
-        return -math.inf, math.inf
+    @staticmethod
+    def _rise(z: Array) -> Array:
+        return -np.sign(z)
 
     def _tails(self, *hyper: Array) -> Tails:
         speed = 1 / hyper[1]
@@ -75,10 +66,6 @@ class Laplace(Elementwise):
         outer, inner = -np.abs(z) - math.log(2), np.log1p(-0.5 * np.exp(-np.abs(z)))
         return np.where(z > 0, inner, outer), np.where(z > 0, outer, inner)
 
-    def _flows(self, x: Array, *hyper: Array) -> dict[str, Array]:
-        z = (x - hyper[0]) / hyper[1]
-        return {"location": np.ones_like(z), "scale": z}
-
     def _log_mass(self, lower: Array, upper: Array, *hyper: Array) -> Array:
         # The density has a kink at its location, so each side is taken by itself: half of
         # e^(−a) (1 − e^(a − b)) between the distances a and b.
@@ -89,8 +76,3 @@ class Laplace(Elementwise):
         ]
         left, right = (np.where(a < b, log_complement(a - b) - a, -np.inf) for a, b in sides)
         return np.asarray(np.logaddexp(left, right) - math.log(2))
-
-
-def _rise(z: Array) -> Array:
-    """Derivative of the standard log density."""
-    return -np.sign(z)

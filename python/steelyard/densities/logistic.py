@@ -2,21 +2,20 @@
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 from typing import Any, ClassVar
 
 import numpy as np
 
-from steelyard.densities.cumulative import Elementwise
 from steelyard.densities.hyperparameters import Array, Hyperparameter
+from steelyard.densities.location_scale import LocationScale
 from steelyard.densities.tails import Tails, infinite
 
 __all__ = ["Logistic"]
 
 
 @dataclass(frozen=True, repr=False)
-class Logistic(Elementwise):
+class Logistic(LocationScale):
     """
     Logistic distribution.
 
@@ -48,18 +47,9 @@ class Logistic(Elementwise):
     domains: ClassVar = {"location": "real", "scale": "positive"}
     family: ClassVar = "logistic"
 
-    def _gradient(self, x: Array, *hyper: Array) -> Array:
-        location, scale = hyper
-        return _rise((x - location) / scale) / scale
-
-    def _slopes(self, x: Array, *hyper: Array) -> dict[str, Array]:
-        location, scale = hyper
-        z = (x - location) / scale
-        rise = _rise(z)
-        return {"location": -rise / scale, "scale": -(1 + z * rise) / scale}
-
-    def _support(self, *hyper: Array) -> tuple[Any, Any]:
-        return -math.inf, math.inf
+    @staticmethod
+    def _rise(z: Array) -> Array:
+        return -np.tanh(z / 2)
 
     def _tails(self, *hyper: Array) -> Tails:
         speed = 1 / hyper[1]
@@ -71,12 +61,3 @@ class Logistic(Elementwise):
     def _log_tails(self, x: Array, *hyper: Array) -> tuple[Array, Array]:
         z = (x - hyper[0]) / hyper[1]
         return -np.logaddexp(0.0, -z), -np.logaddexp(0.0, z)
-
-    def _flows(self, x: Array, *hyper: Array) -> dict[str, Array]:
-        z = (x - hyper[0]) / hyper[1]
-        return {"location": np.ones_like(z), "scale": z}
-
-
-def _rise(z: Array) -> Array:
-    """Derivative of the standard log density."""
-    return -np.tanh(z / 2)
