@@ -9,7 +9,7 @@ import numpy as np
 
 from steelyard.densities.cumulative import Elementwise
 from steelyard.densities.hyperparameters import Array, Hyperparameter
-from steelyard.densities.special import beta_tails, digamma
+from steelyard.densities.special import beta_tails, digamma, tail_flows
 from steelyard.densities.tails import Tails, bounded
 
 __all__ = ["Beta"]
@@ -72,8 +72,6 @@ class Beta(Elementwise):
         return below, above
 
     def _flows(self, x: Array, *hyper: Array) -> dict[str, Array]:
-        below, above, *slopes = beta_tails(hyper[0], hyper[1], x, 1 - x)
-        in_lower = below < above
-        ratio = np.exp(np.where(in_lower, below, above) - self._log_density(x, *hyper))
-        by_a, by_b = (np.where(in_lower, -slopes[i], slopes[i + 2]) for i in (0, 1))
-        return {"a": by_a * ratio, "b": by_b * ratio}
+        tails = beta_tails(hyper[0], hyper[1], x, 1 - x)
+        by_a, by_b = tail_flows(tails, self._log_density(x, *hyper))
+        return {"a": by_a, "b": by_b}

@@ -7,16 +7,16 @@ from typing import Any, ClassVar
 
 import numpy as np
 
-from steelyard.densities.cumulative import Elementwise
+from steelyard.densities.counts import Counts
 from steelyard.densities.hyperparameters import Array, Hyperparameter
-from steelyard.densities.special import beta_tails, digamma
+from steelyard.densities.special import beta_tails, digamma, tail_flows
 from steelyard.densities.tails import Tails, bounded
 
 __all__ = ["Binomial"]
 
 
 @dataclass(frozen=True, repr=False)
-class Binomial(Elementwise):
+class Binomial(Counts):
     """
     Binomial distribution: successes in n trials.
 
@@ -49,14 +49,6 @@ class Binomial(Elementwise):
     domains: ClassVar = {"n": "count", "p": "share"}
     family: ClassVar = "binomial"
 
-    @property
-    def is_discrete(self) -> bool:
-        """Whether the distribution is one of whole numbers: it is."""
-        return True
-
-    def _gradient(self, x: Array, *hyper: Array) -> Array:
-        return np.full_like(x, np.nan)
-
     def _slopes(self, x: Array, *hyper: Array) -> dict[str, Array]:
         n, p = hyper
         failures = n - x
@@ -81,10 +73,8 @@ class Binomial(Elementwise):
 
     def _flows(self, x: Array, *hyper: Array) -> dict[str, Array]:
         n, p = hyper
-        below, above, by_n, _, by_n_above, _ = self._beta(x, *hyper)
-        in_lower = below < above
-        ratio = np.exp(np.where(in_lower, below, above) - self._log_density(x, *hyper))
-        return {"n": np.where(in_lower, -by_n, by_n_above) * ratio, "p": (n - x) / (1 - p)}
+        by_n, _ = tail_flows(self._beta(x, *hyper), self._log_density(x, *hyper))
+        return {"n": by_n, "p": (n - x) / (1 - p)}
 
     @staticmethod
     def _beta(x: Array, n: Array, p: Array) -> Array:

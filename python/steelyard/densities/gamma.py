@@ -10,7 +10,7 @@ import numpy as np
 
 from steelyard.densities.cumulative import Elementwise
 from steelyard.densities.hyperparameters import Array, Hyperparameter
-from steelyard.densities.special import digamma, gamma_tails
+from steelyard.densities.special import digamma, gamma_tails, tail_flows
 from steelyard.densities.tails import Tails, bounded, infinite
 
 __all__ = ["Gamma"]
@@ -73,9 +73,6 @@ class Gamma(Elementwise):
 
     def _flows(self, x: Array, *hyper: Array) -> dict[str, Array]:
         shape, rate = hyper
-        below, above, by_shape, by_shape_above = gamma_tails(shape, rate * x)
         log_p = self._log_density(x, *hyper)
-        in_lower = below < above
-        ratio = np.exp(np.where(in_lower, below, above) - log_p)
-        by_shape = np.where(in_lower, -by_shape, by_shape_above) * ratio
+        (by_shape,) = tail_flows(gamma_tails(shape, rate * x), log_p)
         return {"shape": by_shape, "rate": -x / rate}

@@ -10,7 +10,7 @@ import numpy as np
 
 from steelyard.densities.cumulative import Elementwise
 from steelyard.densities.hyperparameters import Array, Hyperparameter
-from steelyard.densities.special import digamma, gamma_tails
+from steelyard.densities.special import digamma, gamma_tails, tail_flows
 from steelyard.densities.tails import Tails, bounded, infinite
 
 __all__ = ["InverseGamma"]
@@ -75,8 +75,6 @@ class InverseGamma(Elementwise):
     def _flows(self, x: Array, *hyper: Array) -> dict[str, Array]:
         shape, scale = hyper
         above, below, by_shape_above, by_shape = gamma_tails(shape, scale / x)
-        log_p = self._log_density(x, *hyper)
-        in_lower = below < above
-        ratio = np.exp(np.where(in_lower, below, above) - log_p)
-        by_shape = np.where(in_lower, -by_shape, by_shape_above) * ratio
+        tails = np.stack([below, above, by_shape, by_shape_above])
+        (by_shape,) = tail_flows(tails, self._log_density(x, *hyper))
         return {"shape": by_shape, "scale": x / scale}

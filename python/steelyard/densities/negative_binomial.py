@@ -8,16 +8,16 @@ from typing import Any, ClassVar
 
 import numpy as np
 
-from steelyard.densities.cumulative import Elementwise
+from steelyard.densities.counts import Counts
 from steelyard.densities.hyperparameters import Array, Hyperparameter
-from steelyard.densities.special import beta_tails, digamma
+from steelyard.densities.special import beta_tails, digamma, tail_flows
 from steelyard.densities.tails import Tails, bounded, infinite
 
 __all__ = ["NegativeBinomial"]
 
 
 @dataclass(frozen=True, repr=False)
-class NegativeBinomial(Elementwise):
+class NegativeBinomial(Counts):
     """
     Negative binomial distribution: a Poisson distribution whose rate is gamma distributed.
 
@@ -50,14 +50,6 @@ class NegativeBinomial(Elementwise):
     domains: ClassVar = {"mean": "positive", "dispersion": "positive"}
     family: ClassVar = "negative_binomial"
 
-    @property
-    def is_discrete(self) -> bool:
-        """Whether the distribution is one of whole numbers: it is."""
-        return True
-
-    def _gradient(self, x: Array, *hyper: Array) -> Array:
-        return np.full_like(x, np.nan)
-
     def _slopes(self, x: Array, *hyper: Array) -> dict[str, Array]:
         mean, d = hyper
         whole = mean + d
@@ -84,11 +76,8 @@ class NegativeBinomial(Elementwise):
 
     def _flows(self, x: Array, *hyper: Array) -> dict[str, Array]:
         mean, d = hyper
-        below, above, by_d, _, by_d_above, _ = self._beta(x, *hyper)
-        in_lower = below < above
-        ratio = np.exp(np.where(in_lower, below, above) - self._log_density(x, *hyper))
         moved = (x + d) / (d + mean)
-        by_shape = np.where(in_lower, -by_d, by_d_above) * ratio
+        by_shape, _ = tail_flows(self._beta(x, *hyper), self._log_density(x, *hyper))
         return {"mean": moved, "dispersion": by_shape - moved * mean / d}
 
     @staticmethod

@@ -8,7 +8,7 @@ from typing import Any, ClassVar
 
 import numpy as np
 
-from steelyard.densities.cumulative import Elementwise
+from steelyard.densities.counts import Counts
 from steelyard.densities.hyperparameters import Array, Hyperparameter
 from steelyard.densities.special import gamma_tails
 from steelyard.densities.tails import Tails, bounded, infinite
@@ -17,7 +17,7 @@ __all__ = ["Poisson"]
 
 
 @dataclass(frozen=True, repr=False)
-class Poisson(Elementwise):
+class Poisson(Counts):
     """
     Poisson distribution of whole numbers from 0.
 
@@ -45,14 +45,6 @@ class Poisson(Elementwise):
     rate: Hyperparameter
     domains: ClassVar = {"rate": "positive"}
     family: ClassVar = "poisson"
-
-    @property
-    def is_discrete(self) -> bool:
-        """Whether the distribution is one of whole numbers: it is."""
-        return True
-
-    def _gradient(self, x: Array, *hyper: Array) -> Array:
-        return np.full_like(x, np.nan)
 
     def _slopes(self, x: Array, *hyper: Array) -> dict[str, Array]:
         return {"rate": x / hyper[0] - 1}

@@ -20,6 +20,7 @@ __all__ = [
     "log_normal_cdf",
     "log_sum",
     "skew_normal_tails",
+    "tail_flows",
     "times",
 ]
 
@@ -60,6 +61,20 @@ def skew_normal_tails(z: npt.ArrayLike, slant: npt.ArrayLike) -> tuple[Array, Ar
     """Logs of both tails of the standard skew-normal distribution."""
     below, above = _apply(_core.skew_normal_tails, z, slant)
     return below, above
+
+
+def tail_flows(tails: Array, log_p: Array) -> tuple[Array, ...]:
+    """
+    Speeds of a quantile from log tails and their slopes, as `gamma_tails` and `beta_tails` tell.
+
+    Each of the smaller tail: the slope of the other one is a difference of nearly equal numbers.
+    """
+    below, above, *slopes = tails
+    in_lower = below < above
+    ratio = np.exp(np.where(in_lower, below, above) - log_p)
+    half = len(slopes) // 2
+    pairs = zip(slopes[:half], slopes[half:], strict=True)
+    return tuple(np.where(in_lower, -lower, upper) * ratio for lower, upper in pairs)
 
 
 def log_complement(v: Array) -> Array:
