@@ -11,7 +11,7 @@ import numpy as np
 
 from steelyard import _core
 from steelyard.answers.estimate import Estimate
-from steelyard.answers.estimating import Scale, Series, finish
+from steelyard.answers.estimating import Scale, Series, finish, series_of
 from steelyard.answers.quantities import Quantity
 from steelyard.answers.shifts import shift_of
 from steelyard.arrays import Frozen, ReadOnly, in_unit, plain_array
@@ -22,14 +22,7 @@ from steelyard.changes import Target
 from steelyard.changes.merging import LoglikTarget
 from steelyard.errors import ArgumentTypeError, ChangeError, ShapeError, UnknownNameError
 from steelyard.table import Table
-from steelyard.weighing.series import (
-    chains_p_value,
-    contributions_of,
-    degrees_of,
-    relative_efficiency,
-    standard_error,
-    tail_of,
-)
+from steelyard.weighing.series import standard_error
 
 if TYPE_CHECKING:
     from steelyard.show.shift_plots import AttributionPlots
@@ -173,11 +166,10 @@ def _along_the_path(
         before, after = _core.weighted_mean(f, v), _core.weighted_mean(f, start)
         values = np.concatenate([values, (after - before)[None]])
         rows.append(count * (start[:, None] * (f - after) - v[:, None] * (f - before)))
-    series = [_series(scale, row, f).times(unit) for row in rows]
     w = scale.weights.linear
-    whole = w[:, None] * (f - _core.weighted_mean(f, w)) - v[:, None] * (
-        f - _core.weighted_mean(f, v)
-    )
+    about = f - _core.weighted_mean(f, w)
+    series = [series_of(scale.base, np.ascontiguousarray(row), about).times(unit) for row in rows]
+    whole = w[:, None] * about - v[:, None] * (f - _core.weighted_mean(f, v))
     left = np.ascontiguousarray(count * whole - np.sum(rows, axis=0))
     unsure = standard_error(left, scale.base.draws, scale.base.ordered)
     return values * unit, series, unsure * unit
@@ -198,22 +190,6 @@ def _at(place: float, log_ratio: Array, start: Array, kept: Any) -> Array:
     # The largest product counts, not the largest ratio: that one's draw may weigh nothing.
     w = np.exp(logs - logs.max())
     return np.asarray(w / w.sum())
-
-
-def _series(scale: Scale, z: Array, f: Array) -> Series:
-    draws, ordered = scale.base.draws, scale.base.ordered
-    z = np.ascontiguousarray(z)
-    equal = np.full(scale.count, 1 / scale.count)
-    efficiency = relative_efficiency(z, draws, ordered)
-    carried = contributions_of(z, efficiency, draws, ordered)
-    return Series(
-        standard_error(z, draws, ordered),
-        tail_of(z, efficiency, draws, ordered),
-        chains_p_value(z, equal, draws) if ordered else np.ones(z.shape[1]),
-        relative_efficiency(f - _core.weighted_mean(f, scale.weights.linear), draws, ordered),
-        carried,
-        degrees_of(carried, efficiency, draws),
-    )
 
 
 def _grouped(parts: Mapping[str, Array], groups: Any) -> dict[str, Array]:

@@ -34,11 +34,14 @@ __all__ = [
     "Series",
     "column_blocks",
     "finish",
+    "joined",
     "mean_of",
     "moments",
     "sd_of",
+    "series_of",
     "study",
     "study_pair",
+    "study_pair_and_spread",
 ]
 
 # From so many contributions on a heavy fitted shape says nothing more (`make honesty`), ours.
@@ -118,12 +121,30 @@ def study(
         return _study_at_once(psi, np.zeros(psi.shape[1]), w, r, draws)[0]
     z = draws.size * w[:, None] * psi
     z_raw = draws.size * r[:, None] * psi
+    p_value = chains_p_value(psi, w, draws) if ordered else np.ones(psi.shape[1])
+    return series_of(scale.base, z, psi, z_raw, p_value)
+
+
+def series_of(
+    base: Base, z: Array, psi: Array, z_raw: Array | None = None, p_value: Array | None = None
+) -> Series:
+    """
+    What influence series `z` ``(n, k)`` show, of a quantity with influence `psi` without weights.
+
+    `z_raw` are the series before smoothing, `p_value` says whether the chains agree, if both are
+    not those of `z` itself.
+    """
+    draws, ordered = base.draws, base.ordered
+    z_raw = z if z_raw is None else z_raw
+    if p_value is None:
+        equal = np.full(draws.size, 1 / draws.size)
+        p_value = chains_p_value(z, equal, draws) if ordered else np.ones(z.shape[1])
     efficiency = relative_efficiency(z_raw, draws, ordered)
     carried = contributions_of(z, efficiency, draws, ordered)
     return Series(
         standard_error(z, draws, ordered),
         tail_of(z_raw, efficiency, draws, ordered),
-        chains_p_value(psi, w, draws) if ordered else np.ones(psi.shape[1]),
+        p_value,
         relative_efficiency(psi, draws, ordered),
         carried,
         degrees_of(carried, efficiency, draws),
@@ -205,26 +226,20 @@ def study_pair(scale: Scale, psi_target: Array, psi_base: Array) -> Series:
 
     One series for the pair, ``S w ψ₁ − S v ψ₀``: the noise that both share cancels.
     """
-    draws, ordered, count = scale.base.draws, scale.base.ordered, scale.count
-    base = scale.base_weights
+    return study_pair_and_spread(scale, psi_target, psi_base)[0]
+
+
+def study_pair_and_spread(scale: Scale, psi_target: Array, psi_base: Array) -> tuple[Series, Array]:
+    """The same, and the sd of the influence of one draw."""
+    count, base = scale.count, scale.base_weights
 
     def pair(w: Array, v: Array) -> Array:
         return count * (w[:, None] * psi_target - v[:, None] * psi_base)
 
     z, z_raw = pair(scale.weights.linear, base.linear), pair(scale.weights.raw, base.raw)
-    efficiency = relative_efficiency(z_raw, draws, ordered)
-    carried = contributions_of(z, efficiency, draws, ordered)
-    equal = np.full(count, 1 / count)
     if scale.is_joined:  # what the target's influence is at draws of the base says nothing of it
         psi_target = np.where(scale.weights.raw[:, None] > 0, psi_target, 0.0)
-    return Series(
-        standard_error(z, draws, ordered),
-        tail_of(z_raw, efficiency, draws, ordered),
-        chains_p_value(z, equal, draws) if ordered else np.ones(z.shape[1]),
-        relative_efficiency(psi_target, draws, ordered),
-        carried,
-        degrees_of(carried, efficiency, draws),
-    )
+    return series_of(scale.base, z, psi_target, z_raw), np.sqrt(_core.mean_square(z))
 
 
 def _over_columns(

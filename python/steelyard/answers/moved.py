@@ -20,8 +20,10 @@ from steelyard.weighing.weigh import Weights
 
 __all__ = [
     "Moved",
+    "both_of",
     "constant_of_moved",
     "divergence_of_moved",
+    "joined_values",
     "refuse_moved",
     "shift_of_moved",
     "with_both",
@@ -95,7 +97,7 @@ def both_of(scale: Scale, moved: Moved) -> Scale:
     """
     old, new = moved.origin.base.draws, scale.base.draws
     starts = np.concatenate([old.starts, old.size + new.starts[1:]])
-    base = replace(scale.base, draws=Draws({}, starts), ordered=scale.base.ordered)
+    base = replace(scale.base, draws=Draws({}, starts))
     target = _padded(scale.weights, old.size, 0)
     own = _padded(moved.origin.base_weights, 0, new.size)
     return Scale(base, target, own, scale.findings, is_joined=True)
@@ -139,6 +141,3 @@ def divergence_of_moved(scale: Scale, moved: Moved, log_constant: Estimate) -> E
         value=mean.value - log_constant.value,
         error=math.hypot(float(mean.error), float(log_constant.error)),
     )
-
-
-__all__ += ["both_of", "joined_values"]

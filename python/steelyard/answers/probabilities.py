@@ -19,7 +19,7 @@ from steelyard.errors import ArgumentError
 from steelyard.verdicts import Finding, judge
 from steelyard.weighing.series import relative_efficiency
 
-__all__ = ["draws_within", "event_findings", "probability_of"]
+__all__ = ["draws_either_side", "draws_within", "event_findings", "probability_of"]
 
 Mask = npt.NDArray[np.bool_]
 

@@ -18,7 +18,7 @@ from steelyard.answers.estimating import (
     joined,
     moments,
     study,
-    study_pair,
+    study_pair_and_spread,
 )
 from steelyard.answers.probabilities import draws_either_side, event_findings
 from steelyard.answers.quantities import Quantity
@@ -80,19 +80,11 @@ def _read_kind(of: Any) -> Any:
     )
 
 
-def _pair(scale: Scale, psi1: Array, psi0: Array) -> tuple[Series, Array]:
-    series = study_pair(scale, psi1, psi0)
-    z = scale.count * (
-        scale.weights.linear[:, None] * psi1 - scale.base_weights.linear[:, None] * psi0
-    )
-    return series, np.sqrt(_core.mean_square(z))
-
-
 def _mean_shift(scale: Scale, f: Array, own: Array) -> tuple[Array, Series, Array]:
     f, own, unit = _in_one_unit(f, own)
     one, _ = moments(scale, f)
     zero, _ = moments(scale, own, scale.base_weights.linear)
-    series, spread = _pair(scale, f - one, own - zero)
+    series, spread = study_pair_and_spread(scale, f - one, own - zero)
     return _times(one - zero, unit), series.times(unit), _times(spread, unit)
 
 
@@ -111,7 +103,7 @@ def _sd_shift(scale: Scale, f: Array, own: Array) -> tuple[Array, Series, Array]
     f, own, unit = _in_one_unit(f, own)
     one = moments(scale, f)
     zero = moments(scale, own, scale.base_weights.linear)
-    series, spread = _pair(scale, psi(f, *one), psi(own, *zero))
+    series, spread = study_pair_and_spread(scale, psi(f, *one), psi(own, *zero))
     return _times(one[1] - zero[1], unit), series.times(unit), _times(spread, unit)
 
 
@@ -144,7 +136,7 @@ def _quantile_shift(scale: Scale, f: Array, own: Array, p: float) -> tuple[Array
             slopes.append((high / 2 - low / 2) / ((probs[1] - probs[0]) / 2))
         influences.append(-psi)
     both, unit = in_unit(np.stack(slopes))
-    series, spread = _pair(scale, both[0] * influences[0], both[1] * influences[1])
+    series, spread = study_pair_and_spread(scale, both[0] * influences[0], both[1] * influences[1])
     constant = (f == f[:1]).all(axis=0)
     error = np.where(reached | constant, series.times(unit).error, math.inf)
     with np.errstate(over="ignore"):
@@ -157,7 +149,7 @@ def log_evidence_ratio_of(scale: Scale, target: Target | None) -> Estimate:
     if target is not None:
         _refuse_improper(target)
     ones = np.ones((scale.count, 1))
-    series, spread = _pair(scale, ones, ones)
+    series, spread = study_pair_and_spread(scale, ones, ones)
     quantity = Quantity("log evidence ratio", ones[:, 0])
     return finish(scale, quantity, np.array([scale.weights.log_mean_ratio]), series, spread)
 

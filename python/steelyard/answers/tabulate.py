@@ -214,7 +214,7 @@ def _pair(estimate: Estimate, place: tuple[int, ...]) -> tuple[float, float]:
 
 
 def _worst(verdicts: list[Verdict]) -> dict[str, str]:
-    worst = min(verdicts, key=lambda v: ("refit", "strained", "sound").index(str(v.level)))
+    worst = min(verdicts, key=lambda v: v.level)
     codes = {r.code: None for v in verdicts for r in v.reasons if r.level < "sound"}
     return {"level": str(worst.level), "reasons": ", ".join(codes)}
 
