@@ -19,7 +19,6 @@ MU = RNG.normal(size=(CHAINS, DRAWS))
 TAU = RNG.gamma(2, size=(CHAINS, DRAWS))
 CHAIN = np.repeat(np.arange(CHAINS), DRAWS)
 COLUMNS = {"mu": MU.ravel(), "tau": TAU.ravel()}
-STACKED = np.stack([MU.ravel(), TAU.ravel()], axis=1)
 
 
 class Exporter:

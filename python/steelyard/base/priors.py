@@ -17,7 +17,15 @@ from steelyard.base.shapes import draw_rows
 from steelyard.densities import Distribution
 from steelyard.errors import ArgumentTypeError, PriorError, UnknownNameError
 
-__all__ = ["PriorTerm", "read_prior"]
+__all__ = [
+    "PriorTerm",
+    "callable_or_array",
+    "known_term",
+    "read_prior",
+    "read_term",
+    "same_density",
+    "stated_prior",
+]
 
 Key = str | tuple[str, ...]
 
@@ -266,6 +274,3 @@ def same_density(one: Any, other: Any) -> bool:
     if one is other:
         return True
     return isinstance(one, Distribution) and isinstance(other, Distribution) and one == other
-
-
-__all__ += ["known_term", "read_term", "same_density", "stated_prior"]
