@@ -69,6 +69,7 @@ honesty: $(VENV)/bin/pip ## do error intervals and verdicts hold: a battery of p
 wheels: ## build sdist and wheel, look through both, test the wheel under each of PYTHONS
 	$(PYTHON) .ci/wheels $(PYTHONS)
 
-fuzz: ## a million calls of the public API, then every kernel target for SECONDS_EACH
+fuzz: $(VENV)/bin/pip ## a million calls of the public API, then every kernel target for SECONDS_EACH
+	$(RUN) -m pip install --quiet --group test ".[all]"
 	STEELYARD_FUZZ_CALLS=1000000 $(RUN) -m pytest -q tests/fuzz
 	fuzz/run $(SECONDS_EACH)
