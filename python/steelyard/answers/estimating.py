@@ -332,15 +332,9 @@ def _shaped(finding: Finding, shape: tuple[int, ...]) -> Finding:
     size = math.prod(shape)
 
     def put(values: Any) -> Any:
+        if not shape:
+            return values.reshape(())
         return values.reshape(shape) if values.size == size and values.ndim else values
 
-    return Finding(
-        finding.code,
-        put(finding.figure) if shape else finding.figure.reshape(()),
-        finding.strained,
-        finding.refit,
-        finding.words,
-        finding.spoken
-        if finding.spoken is None
-        else (put(finding.spoken) if shape else finding.spoken.reshape(())),
-    )
+    spoken = None if finding.spoken is None else put(finding.spoken)
+    return replace(finding, figure=put(finding.figure), spoken=spoken)
