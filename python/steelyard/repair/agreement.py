@@ -11,7 +11,7 @@ from steelyard import _core
 from steelyard.base import Draws
 from steelyard.base.draws import Array
 from steelyard.base.pooling import Pooling
-from steelyard.repair.constants import solve
+from steelyard.repair.multi_sample import solve
 from steelyard.rules import RULES
 from steelyard.weighing.series import long_run_variance
 

@@ -21,7 +21,7 @@ from steelyard.base.priors import PriorTerm
 from steelyard.base.stacking import stack_draws
 from steelyard.errors import ArgumentError, RatioError, ShapeError, SteelyardError
 from steelyard.repair.agreement import contradictions, linked
-from steelyard.repair.constants import Solved, solve
+from steelyard.repair.multi_sample import Solved, solve
 from steelyard.repair.pooled import Pooled, constants_of
 from steelyard.repair.pooled_terms import (
     Common,
