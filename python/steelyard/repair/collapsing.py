@@ -19,7 +19,7 @@ from steelyard.repair.grouped import Grouped, grouped_likelihood
 from steelyard.repair.quadrature import NODES, Grid, grid_of
 from steelyard.repair.spending import Purse
 
-__all__ = ["Collapsed", "Plan", "collapse", "collapse_cost", "collapse_plan"]
+__all__ = ["Collapsed", "Plan", "collapse", "collapse_plan"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -55,7 +55,7 @@ class Collapsed:
     name: str
 
 
-def collapse_cost(count: int) -> int:
+def _collapse_cost(count: int) -> int:
     """Points that a collapse of so many draws evaluates: slopes, nodes, and the new effects."""
     return (NODES + 4) * count
 
@@ -110,7 +110,7 @@ def collapse(plan: Plan, purse: Purse, generator: np.random.Generator) -> Collap
     """
     record, draft, label, edited = plan.record, plan.draft, plan.label, plan.edited
     name = str(edited.base.key)
-    if not purse.allows(collapse_cost(record.draws.size)):
+    if not purse.allows(_collapse_cost(record.draws.size)):
         return None
     purse.tell()
 
@@ -134,7 +134,7 @@ def collapse(plan: Plan, purse: Purse, generator: np.random.Generator) -> Collap
     joint = found.target + _log_prior(new, draws, edited.factor)
     own = found.base + _log_prior(old, draws, 1.0)
     shared = _others(record, draft, label) + found.target_rest - found.base_rest
-    purse.spent.points += collapse_cost(record.draws.size)
+    purse.spent.points += _collapse_cost(record.draws.size)
     each = joint - log_density - grid.log_integral(log_old)
     axes = tuple(range(1, effects.ndim))
     with np.errstate(invalid="ignore"):
