@@ -32,7 +32,7 @@ def linked(pooling: Pooling) -> Array:
     Two fits share ``Σ c P_j P_k`` draws: one over it is the variance of their log ratio of
     constants, up to what their sizes take off. A chain is as strong as its weakest link.
     """
-    shared = (pooling.shares.T * pooling.counts) @ pooling.shares
+    shared = pooling.shared_draws
     count = len(shared)
     best = np.zeros(count)
     best[0] = np.inf
