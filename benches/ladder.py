@@ -180,6 +180,28 @@ def sampler_evaluations(problem: Problem, error: float, seed: int) -> float:
     return variance / error**2
 
 
+def covered_where_sound(rows: list[Row]) -> list[bool]:
+    """Whether each interval covers, of quantities called sound."""
+    return [c for row in rows for s, c in zip(row.sound, row.covered, strict=True) if s]
+
+
+def line(problem: Problem, rows: list[Row], seed: int) -> str:
+    """One row of the table."""
+    if not rows:
+        return f"{problem.name:28}{problem.d:>3}      0"
+    sound = np.mean([row.level == "sound" for row in rows])
+    cost = float(np.median([row.evaluations for row in rows]))
+    error = float(np.median([row.error for row in rows]))
+    walk = sampler_evaluations(problem, error, seed)
+    matched = np.mean([row.rung == "moment matching" for row in rows])
+    took = np.median([row.seconds for row in rows])
+    return (
+        f"{problem.name:28}{problem.d:>3} {len(rows):>6} {sound:>6.2f} "
+        f"{np.mean(covered_where_sound(rows)):>6.3f} {matched:>8.2f} {cost:>12,.0f} {took:>6.2f} "
+        f"{error:>8.4f} {walk:>12,.0f}"
+    )
+
+
 def main(arguments: list[str] | None = None) -> int:
     """Run and print; 0 where both bounds are met."""
     parser = argparse.ArgumentParser(description=__doc__.splitlines()[1])
@@ -201,29 +223,13 @@ def main(arguments: list[str] | None = None) -> int:
             found = list(pool.map(asked, tasks))
     head = f"{'target':28}{'d':>3} {'refit':>6} {'sound':>6} {'cover':>6} {'matched':>8}"
     print(f"{head} {'evaluations':>12} {'s':>6} {'error':>8} {'random walk':>12}")
-    levels: list[bool] = []
-    hits: list[bool] = []
     for number, problem in enumerate(PROBLEMS):
         rows = [r for t, r in zip(tasks, found, strict=True) if t[0] == number and r is not None]
-        if not rows:
-            print(f"{problem.name:28}{problem.d:>3}      0")
-            continue
-        own = [r.level == "sound" for r in rows]
-        inside = [c for r in rows for s, c in zip(r.sound, r.covered, strict=True) if s]
-        levels, hits = levels + own, hits + inside
-        cost = float(np.median([r.evaluations for r in rows]))
-        error = float(np.median([r.error for r in rows]))
-        walk = sampler_evaluations(problem, error, options.seed)
-        matched = np.mean([r.rung == "moment matching" for r in rows])
-        took = np.median([r.seconds for r in rows])
-        print(
-            f"{problem.name:28}{problem.d:>3} {len(rows):>6} {np.mean(own):>6.2f} "
-            f"{np.mean(inside):>6.3f} {matched:>8.2f} {cost:>12,.0f} {took:>6.2f} {error:>8.4f} "
-            f"{walk:>12,.0f}"
-        )
+        print(line(problem, rows, options.seed))
+    every = [row for row in found if row is not None]
+    levels, hits = [row.level == "sound" for row in every], covered_where_sound(every)
     by_quantity = {
-        label: [r.covered[i] for r in found if r is not None and r.sound[i]]
-        for i, label in enumerate(LABELS)
+        label: [row.covered[i] for row in every if row.sound[i]] for i, label in enumerate(LABELS)
     }
     print(
         "coverage by quantity: "

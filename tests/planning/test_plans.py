@@ -191,7 +191,7 @@ def test_without_a_plan_the_same_is_asked_directly(fit: Any) -> None:
     assert list(only.value) == [EVENT]
 
 
-def test_predictive_draws_under_another_model_fail_in_their_row_only(fit: Any) -> None:
+def test_predictive_draws_under_another_model_fail_in_their_row_only() -> None:
     x = np.random.default_rng(1).normal(size=(2, 200))
     base = sy.Fit(
         {"x": x, "again": 2 * x},
@@ -240,7 +240,7 @@ def test_it_is_refused_tellingly(name: str, fit: Any) -> None:
     assert caught.value.next_step.strip().endswith((".", "?"))
 
 
-def test_a_plan_file_states_the_same_plan_as_python(fit: Any) -> None:
+def test_a_plan_file_states_the_same_plan_as_python() -> None:
     text = """
 steelyard_plan = 1
 quantities = "mu"
@@ -279,7 +279,7 @@ def test_quantiles_stand_beside_the_means(fit: Any) -> None:
     assert "q0.5" not in triage(fit._record, SCENARIOS, "mu").table().columns
 
 
-def test_quantiles_belong_to_what_was_planned(tmp_path: Any) -> None:
+def test_quantiles_belong_to_what_was_planned() -> None:
     assert _plan(probs=(0.05, 0.95)).hash != _plan().hash
     assert _plan(probs=[0.05, 0.95]).hash == _plan(probs=np.array([0.05, 0.95])).hash
     text = 'steelyard_plan = 1\nprobs = [0.05, 1.5]\n[[scenario]]\nname = "a"\ndrop = ["A"]\n'

@@ -71,6 +71,13 @@ class LoglikTerm:
                 self._refuse_impossible(block, draws, part.start)
                 yield part, block
 
+    def total(self, draws: Draws) -> Array:
+        """Log likelihood of all observations together at each draw, ``(n,)``."""
+        total = np.empty(draws.size)
+        for part, block in self.blocks(draws):
+            total[part] = block.sum(axis=1)
+        return total
+
     def _read(self, draws: Draws, chain: int, begin: int, part: slice) -> Array:
         if callable(self.source):
             values: Any = _call(self.source, draws, part, self.name)

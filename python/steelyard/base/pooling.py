@@ -75,6 +75,11 @@ class Pooling(Frozen):
     reference: Array | None = None
     impossible: Mapping[str, npt.NDArray[np.bool_]] = field(default_factory=dict)
 
+    @property
+    def shared_draws(self) -> Array:
+        """Effective draws that two fits share, ``Σ c P_j P_k``, shape ``(fits, fits)``."""
+        return np.asarray((self.shares.T * self.counts) @ self.shares)
+
     def strata(self, starts: npt.NDArray[np.int64]) -> Iterator[Stratum]:
         """The fits, with the chains of the stack that each holds."""
         for (begin, end), ordered in zip(pairwise(self.edges.tolist()), self.ordered, strict=True):

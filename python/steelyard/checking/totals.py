@@ -21,13 +21,7 @@ def prior_totals(base: Base, draws: Draws | None = None) -> dict[str, Array]:
 
 def likelihood_totals(base: Base) -> dict[str, Array]:
     """Log likelihood of every term, summed over observations, ``(n,)`` each."""
-    totals = {}
-    for name, term in (base.loglik or {}).items():
-        total = np.empty(base.draws.size)
-        for part, block in term.blocks(base.draws):
-            total[part] = block.sum(axis=1)
-        totals[name] = total
-    return totals
+    return {name: term.total(base.draws) for name, term in (base.loglik or {}).items()}
 
 
 def parameter_columns(base: Base) -> tuple[list[str], Array]:

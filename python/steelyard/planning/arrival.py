@@ -143,10 +143,7 @@ class Arrival:
                 "Give new data a name of their own; data of that name are in already.",
             )
         term = read_loglik_term(name, batch, self._base.draws, "batch")
-        total = np.empty(self._base.draws.size)
-        for part, block in term.blocks(self._base.draws):
-            total[part] = block.sum(axis=1)
-        return self._take(name, total, term.observations)
+        return self._take(name, term.total(self._base.draws), term.observations)
 
     def _take(self, name: str, total: Array, observations: int) -> Answer:
         answer = reweigh(self._base, add({**self._totals, name: total}))

@@ -168,7 +168,4 @@ def _one_batch(
     stream: np.random.Generator,
 ) -> Array:
     term = read_loglik_term(_KEY, simulated(made, stream), base.draws, "simulated")
-    total = np.empty(base.draws.size)
-    for part, block in term.blocks(base.draws):
-        total[part] = block.sum(axis=1)
-    return total
+    return term.total(base.draws)

@@ -18,7 +18,7 @@ from steelyard.base.names import close_names
 from steelyard.changes import form_target
 from steelyard.digits import short
 from steelyard.errors import ArgumentError, ArgumentTypeError, UnknownNameError
-from steelyard.levels import LEVELS
+from steelyard.levels import rank_of
 from steelyard.planning.predicting import BASE, Problem
 from steelyard.planning.scenarios import Plan, read_scenarios
 from steelyard.table import Table
@@ -74,7 +74,7 @@ class RefitPlan(Frozen):
     @property
     def verdict(self) -> Verdict:
         """Whether the predictions can be relied on: that of the worst scenario."""
-        levels = [LEVELS.index(str(level)) for level in self.efficiency.verdict.level]
+        levels = [rank_of(level) for level in self.efficiency.verdict.level]
         return self.efficiency.verdict[int(np.argmin(levels))]
 
     @property

@@ -11,7 +11,7 @@ from steelyard import _core
 from steelyard.base import Draws
 from steelyard.base.draws import Array
 from steelyard.base.pooling import Pooling
-from steelyard.repair.constants import solve
+from steelyard.repair.multi_sample import solve
 from steelyard.rules import RULES
 from steelyard.weighing.series import long_run_variance
 
@@ -32,7 +32,7 @@ def linked(pooling: Pooling) -> Array:
     Two fits share ``Σ c P_j P_k`` draws: one over it is the variance of their log ratio of
     constants, up to what their sizes take off. A chain is as strong as its weakest link.
     """
-    shared = (pooling.shares.T * pooling.counts) @ pooling.shares
+    shared = pooling.shared_draws
     count = len(shared)
     best = np.zeros(count)
     best[0] = np.inf

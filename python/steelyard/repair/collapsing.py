@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from types import MappingProxyType
 from typing import Any
 
 import numpy as np
@@ -11,17 +10,16 @@ import numpy as np
 from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.base.priors import PriorTerm
-from steelyard.base.shapes import stacked
 from steelyard.changes import Change
 from steelyard.changes.merging import Draft, PriorTarget, merge
 from steelyard.densities import Normal, StudentT
 from steelyard.errors import ChangeError
-from steelyard.repair.fixed import refuse_fixed
+from steelyard.repair.fixed import prior_at, refuse_fixed, with_derived
 from steelyard.repair.grouped import Grouped, grouped_likelihood
 from steelyard.repair.quadrature import NODES, Grid, grid_of
 from steelyard.repair.spending import Purse
 
-__all__ = ["Collapsed", "Plan", "collapse", "collapse_cost", "collapse_plan"]
+__all__ = ["Collapsed", "Plan", "collapse", "collapse_plan"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -57,7 +55,7 @@ class Collapsed:
     name: str
 
 
-def collapse_cost(count: int) -> int:
+def _collapse_cost(count: int) -> int:
     """Points that a collapse of so many draws evaluates: slopes, nodes, and the new effects."""
     return (NODES + 4) * count
 
@@ -112,7 +110,7 @@ def collapse(plan: Plan, purse: Purse, generator: np.random.Generator) -> Collap
     """
     record, draft, label, edited = plan.record, plan.draft, plan.label, plan.edited
     name = str(edited.base.key)
-    if not purse.allows(collapse_cost(record.draws.size)):
+    if not purse.allows(_collapse_cost(record.draws.size)):
         return None
     purse.tell()
 
@@ -136,7 +134,7 @@ def collapse(plan: Plan, purse: Purse, generator: np.random.Generator) -> Collap
     joint = found.target + _log_prior(new, draws, edited.factor)
     own = found.base + _log_prior(old, draws, 1.0)
     shared = _others(record, draft, label) + found.target_rest - found.base_rest
-    purse.spent.points += collapse_cost(record.draws.size)
+    purse.spent.points += _collapse_cost(record.draws.size)
     each = joint - log_density - grid.log_integral(log_old)
     axes = tuple(range(1, effects.ndim))
     with np.errstate(invalid="ignore"):
@@ -188,21 +186,10 @@ def _is_group(record: Base, edited: PriorTarget) -> bool:
 
 def _with_effects(record: Base, name: str, effects: Array) -> Draws:
     """The base draws with other effects, derived quantities recomputed."""
-    lost = {k for k, recipe in record.derived.items() if recipe is None} | set(record.predictive)
-    computed = {k for k, recipe in record.derived.items() if recipe is not None}
-    values: dict[str, Any] = {
-        k: v for k, v in record.draws.values_by_name.items() if k not in lost | computed
-    }
+    left = {*record.derived, *record.predictive}
+    values: dict[str, Any] = {k: v for k, v in record.draws.values_by_name.items() if k not in left}
     values[name] = effects
-    moved = replace(record.draws, values_by_name=values)
-    if not computed:
-        return moved
-    plain = MappingProxyType(dict(moved.values_by_name))
-    for k, recipe in record.derived.items():
-        if recipe is not None:
-            rows = stacked(recipe(plain), moved, f"derived[{k!r}]")
-            values[k] = np.require(rows, np.float64, ["C", "A"])
-    return replace(moved, values_by_name=values)
+    return with_derived(record, replace(record.draws, values_by_name=values))
 
 
 def _log_prior(term: PriorTerm, draws: Draws, factor: float) -> Array:
@@ -255,9 +242,5 @@ def _others(record: Base, draft: Draft, label: str) -> Array:
         if other == label:
             continue
         old = edited.base.log_density_checked(record.draws)
-        new = old if edited.given is None else edited.given.log_density_checked(record.draws)
-        raised = (
-            np.where(new > -np.inf, 0.0, -np.inf) if edited.factor == 0 else edited.factor * new
-        )
-        total = total + raised - old
+        total = total + prior_at(edited, old, record.draws) - old
     return np.asarray(total)

@@ -21,6 +21,7 @@ from steelyard.repair.pooled_terms import (
     refuse_other_parameters,
 )
 from steelyard.repair.pooling import assemble
+from steelyard.repair.transforms import to_line
 from steelyard.verdicts import judge
 from steelyard.weighing.weigh import base_weights
 
@@ -151,18 +152,13 @@ def _on_the_line(record: Base, draws: Draws) -> tuple[Array, Array]:
     for name in record.parameters:
         x = draws[name].reshape(draws.size, -1)
         low, high = (np.broadcast_to(e, x.shape[1:]) for e in limits.get(name, (-np.inf, np.inf)))
-        out, slope = x.copy(), np.zeros_like(x)
+        line = to_line(x, low, high)
+        has_low, has_high = np.isfinite(low), np.isfinite(high)
         with np.errstate(divide="ignore", invalid="ignore"):
-            below, above = np.log(x - low), np.log(high - x)
-            both = np.isfinite(low) & np.isfinite(high)
-            only_low, only_high = np.isfinite(low) & ~both, np.isfinite(high) & ~both
-            out[:, both] = (below - above)[:, both]
-            slope[:, both] = (np.log(high - low) - below - above)[:, both]
-            out[:, only_low] = below[:, only_low]
-            slope[:, only_low] = -below[:, only_low]
-            out[:, only_high] = above[:, only_high]
-            slope[:, only_high] = -above[:, only_high]
-        columns.append(out)
+            between = np.log(high - low) - np.log(x - low) - np.log(high - x)
+            beyond_one = np.where(has_low | has_high, -line, 0.0)
+        slope = np.where(has_low & has_high, between, beyond_one)
+        columns.append(line)
         jacobian += np.where(np.isfinite(slope), slope, 0.0).sum(axis=1)
     return np.concatenate(columns, axis=1), jacobian
 

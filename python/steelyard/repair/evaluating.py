@@ -4,17 +4,22 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 from dataclasses import dataclass, field, replace
-from types import MappingProxyType
 from typing import Any
 
 import numpy as np
 
 from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
-from steelyard.base.shapes import stacked
 from steelyard.changes import Change
-from steelyard.changes.merging import Draft, LoglikTarget, PriorTarget, merge
-from steelyard.repair.fixed import naming_what_is_lost, ratio_at, refuse_fixed, values_at
+from steelyard.changes.merging import Draft, LoglikTarget, merge
+from steelyard.repair.fixed import (
+    naming_what_is_lost,
+    prior_at,
+    ratio_at,
+    refuse_fixed,
+    values_at,
+    with_derived,
+)
 from steelyard.repair.space import Points, Space, space_of
 
 __all__ = ["Evaluator", "Spent", "at_draws", "evaluator_of"]
@@ -157,16 +162,8 @@ class Evaluator:
             Quantities of which only values are known, and predictive draws, are left out.
         """
         points, log_jacobian = self.space.points(x)
-        recipes = {k: r for k, r in self.record.derived.items() if r is not None}
-        if not recipes:
-            return points, log_jacobian
-        plain = MappingProxyType(dict(points.values_by_name))
-        values: dict[str, Any] = dict(points.values_by_name)
         with np.errstate(all="ignore"):
-            for name, recipe in recipes.items():
-                rows = stacked(recipe(plain), points, f"derived[{name!r}]")
-                values[name] = np.require(rows, np.float64, ["C", "A"])
-        return replace(points, values_by_name=values), log_jacobian
+            return with_derived(self.record, points), log_jacobian
 
     def at(self, x: Array, draws: Draws | None = None) -> Base:
         """
@@ -202,7 +199,7 @@ class Evaluator:
             old = term.log_density_checked(draws)
             base += old
             edited = self._draft.prior.get(label)
-            new = old if edited is None else _new_prior(edited, old, draws)
+            new = old if edited is None else prior_at(edited, old, draws)
             target += new
         return base, target
 
@@ -289,10 +286,3 @@ def _add(edited: LoglikTarget, draws: Draws, target: Array) -> None:
         return
     for part, block in values_at(edited.density, draws):
         target[part] += _weighted(block, edited)
-
-
-def _new_prior(edited: PriorTarget, old: Array, draws: Draws) -> Array:
-    new = old if edited.given is None else edited.given.log_density_checked(draws)
-    if edited.factor == 0:
-        return np.where(new > -np.inf, 0.0, -np.inf)
-    return edited.factor * new

@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
+from dataclasses import replace
 from types import MappingProxyType
-from typing import Any
+from typing import Any, TypeVar
 
 import numpy as np
 
@@ -13,11 +14,21 @@ from steelyard.base.draws import Array
 from steelyard.base.likelihood import LoglikTerm
 from steelyard.base.priors import PriorTerm
 from steelyard.base.shapes import stacked
-from steelyard.changes.merging import Draft
+from steelyard.changes.merging import Draft, PriorTarget
 from steelyard.changes.noise import NoisyTerm, raised
 from steelyard.errors import DrawsError, LikelihoodError, PriorError, RatioError, ShapeError
 
-__all__ = ["naming_what_is_lost", "ratio_at", "refuse_fixed", "values_at"]
+__all__ = [
+    "naming_what_is_lost",
+    "prior_at",
+    "ratio_at",
+    "refuse_fixed",
+    "values_at",
+    "with_derived",
+]
+
+# Draws of whichever class.
+AnyDraws = TypeVar("AnyDraws", bound=Draws)
 
 
 def values_at(term: LoglikTerm, draws: Draws) -> Iterator[tuple[slice, Array]]:
@@ -25,6 +36,28 @@ def values_at(term: LoglikTerm, draws: Draws) -> Iterator[tuple[slice, Array]]:
     if isinstance(term, NoisyTerm) and term.plain is not None:
         term = raised(term.plain, term.noise_factor, term.sd, draws)
     return term.blocks(draws)
+
+
+def prior_at(edited: PriorTarget, old: Array, draws: Draws) -> Array:
+    """Log density of an edited prior term, where that of the term before is `old`."""
+    new = old if edited.given is None else edited.given.log_density_checked(draws)
+    if edited.factor == 0:
+        # To the power 0 a prior is flat on its own support, and still nothing outside of it.
+        return np.where(new > -np.inf, 0.0, -np.inf)
+    return edited.factor * new
+
+
+def with_derived(record: Base, draws: AnyDraws) -> AnyDraws:
+    """The draws with every derived quantity that has a recipe, computed from them."""
+    recipes = {name: recipe for name, recipe in record.derived.items() if recipe is not None}
+    if not recipes:
+        return draws
+    plain = MappingProxyType(dict(draws.values_by_name))
+    values: dict[str, Any] = dict(draws.values_by_name)
+    for name, recipe in recipes.items():
+        rows = stacked(recipe(plain), draws, f"derived[{name!r}]")
+        values[name] = np.require(rows, np.float64, ["C", "A"])
+    return replace(draws, values_by_name=values)
 
 
 def refuse_fixed(record: Base, draft: Draft) -> None:

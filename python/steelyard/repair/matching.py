@@ -3,32 +3,29 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
-import numpy.typing as npt
 
 from steelyard.base import Base
 from steelyard.base.draws import Array
+from steelyard.levels import rank_of
 from steelyard.repair.affine import Affine, Moments, identity, moments_of, rematched
+from steelyard.repair.outcomes import trust_findings
+from steelyard.repair.points import Rows
 from steelyard.repair.powers import partial_power
-from steelyard.repair.probing import Mapped, probe, probe_behind, probe_cost
+from steelyard.repair.probing import DensityPair, Mapped, probe, probe_behind, probe_cost
 from steelyard.repair.spending import Purse
 from steelyard.verdicts import Finding, Verdict
-from steelyard.weighing.trust import shared_findings, weight_findings
 from steelyard.weighing.weigh import Weights, base_weights, weigh_ratio
 
-__all__ = ["Densities", "Matched", "match_moments", "probe_plain", "rank"]
+__all__ = ["Matched", "match_moments", "probe_plain"]
 
 _MOST_STEPS = 40
 # Falls of the tail shape below this are noise of its fit.
 _LEAST_FALL = 0.01
 _ON_THE_WAY = ("mean and covariance", "mean and scale", "mean")
 _AT_THE_TARGET = ("mean", "mean and scale", "mean and covariance")
-
-Densities = Callable[[Array], tuple[Array, Array]]
-Rows = npt.NDArray[np.int64]
 
 
 @dataclass(frozen=True, eq=False)
@@ -67,7 +64,7 @@ class _Problem:
     base: Array
     halves: tuple[Rows, Rows]
     moments: tuple[Moments, Moments]
-    densities: Densities
+    densities: DensityPair
     purse: Purse
 
 
@@ -87,17 +84,14 @@ class _State:
     power: float = 1.0
 
 
-def rank(weights: Weights, record: Base) -> tuple[int, float]:
-    """What weights are worth: their level, then how light their tail is."""
-    findings = (
-        *weight_findings(weights, record.draws, record.ordered),
-        *shared_findings(weights, record.draws, record.ordered),
-    )
-    level = Verdict(findings).level
-    return ("refit", "strained", "sound").index(str(level)), -weights.tail_shape
+def _weights_rank(weights: Weights, record: Base) -> int:
+    """The level of weights by themselves, as a number."""
+    return rank_of(Verdict(trust_findings(weights, record)).level)
 
 
-def match_moments(record: Base, start: Array, densities: Densities, purse: Purse) -> Matched | None:
+def match_moments(
+    record: Base, start: Array, densities: DensityPair, purse: Purse
+) -> Matched | None:
     """
     Map draws until their weights are sound, or nothing helps any more.
 
@@ -164,19 +158,20 @@ def match_moments(record: Base, start: Array, densities: Densities, purse: Purse
         if split is not None:
             # Half of the draws stay where they were: nothing is left behind.
             kept = Matched(*split, (*steps, "split"), beside[:1])
-            if (_level(kept, record), _rank(kept)) > (_level(best, record), _rank(best)):
+            if _worth(kept, record) > _worth(best, record):
                 best = kept
     return best
+
+
+def _worth(matched: Matched, record: Base) -> tuple[int, float]:
+    """What draws are worth: their level, then how light the tail of their weights is."""
+    return _level(matched, record), -matched.weights.tail_shape
 
 
 def _level(matched: Matched, record: Base) -> int:
     """The level of the weights and of what is known beside them, as a number."""
     own = min((int(f.rank.min()) for f in matched.findings), default=2)
-    return min(rank(matched.weights, record)[0], own)
-
-
-def _rank(matched: Matched) -> float:
-    return -matched.weights.tail_shape
+    return min(_weights_rank(matched.weights, record), own)
 
 
 def _probed(problem: _Problem, first: _State, state: _State) -> tuple[Finding, ...]:
@@ -193,7 +188,7 @@ def _probed(problem: _Problem, first: _State, state: _State) -> tuple[Finding, .
     return probe(mapped), probe_behind(mapped)
 
 
-def probe_plain(record: Base, start: Array, densities: Densities, purse: Purse) -> Finding | None:
+def probe_plain(record: Base, start: Array, densities: DensityPair, purse: Purse) -> Finding | None:
     """
     The probe of the base's own draws; None where it costs more than may be spent.
     """
@@ -222,7 +217,8 @@ def _settled(state: _State, record: Base) -> bool:
 
 
 def _enough(state: _State, record: Base) -> bool:
-    return rank(state.weights, record)[0] == 2 and partial_power(state.log_ratio, record)[0] == 1
+    is_sound = _weights_rank(state.weights, record) == 2
+    return is_sound and partial_power(state.log_ratio, record)[0] == 1
 
 
 def _halves(record: Base) -> tuple[Rows, Rows]:

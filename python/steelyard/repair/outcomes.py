@@ -15,12 +15,13 @@ from steelyard.base.draws import Array
 from steelyard.errors import SteelyardError
 from steelyard.verdicts import Finding, judge
 from steelyard.weighing.supports import support_findings
+from steelyard.weighing.trust import shared_findings, weight_findings
 from steelyard.weighing.weigh import Weights, base_weights
 
 if TYPE_CHECKING:
     from steelyard.repair.climbing import Climb
 
-__all__ = ["Outcome", "moved_answer", "not_possible"]
+__all__ = ["Outcome", "moved_answer", "not_possible", "trust_findings"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -36,6 +37,14 @@ class Outcome:
     stopped: str = ""
     evaluations: int = 0
     applies: bool = True
+
+
+def trust_findings(weights: Weights, record: Base) -> tuple[Finding, ...]:
+    """What weights of draws in the order of a record say about trust."""
+    return (
+        *weight_findings(weights, record.draws, record.ordered),
+        *shared_findings(weights, record.draws, record.ordered),
+    )
 
 
 def not_possible(error: SteelyardError) -> str:

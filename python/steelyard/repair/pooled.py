@@ -16,7 +16,7 @@ from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.checking import Findings, check
 from steelyard.repair.agreement import linked
-from steelyard.repair.constants import Solved
+from steelyard.repair.multi_sample import Solved
 from steelyard.table import Table
 from steelyard.verdicts import Finding, Verdict, judge
 from steelyard.weighing.series import (

@@ -172,10 +172,7 @@ def _likelihood(
     rows = np.flatnonzero(possible)
     there = draws if len(rows) == draws.size else draws.take(rows)
     values = np.zeros(draws.size)
-    found = np.empty(there.size)
-    for part, block in term.blocks(there):
-        found[part] = block.sum(axis=1)
-    values[rows] = found
+    values[rows] = term.total(there)
     if len(rows) == draws.size:
         known.append((term.source, values))
     return values
@@ -186,8 +183,7 @@ def likelihood_at(record: Base, draws: Draws, common: Common) -> Array:
     out = np.zeros(draws.size)
     for name, term in (record.loglik or {}).items():
         if name not in common.likelihood:
-            for part, block in term.blocks(draws):
-                out[part] += block.sum(axis=1)
+            out += term.total(draws)
     return out
 
 

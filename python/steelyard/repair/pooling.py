@@ -21,7 +21,7 @@ from steelyard.base.priors import PriorTerm
 from steelyard.base.stacking import stack_draws
 from steelyard.errors import ArgumentError, RatioError, ShapeError, SteelyardError
 from steelyard.repair.agreement import contradictions, linked
-from steelyard.repair.constants import Solved, solve
+from steelyard.repair.multi_sample import Solved, solve
 from steelyard.repair.pooled import Pooled, constants_of
 from steelyard.repair.pooled_terms import (
     Common,
@@ -33,9 +33,7 @@ from steelyard.repair.pooled_terms import (
     refuse_other_parameters,
 )
 from steelyard.verdicts import Finding, judge
-from steelyard.weighing.series import (
-    relative_efficiency,
-)
+from steelyard.weighing.series import relative_efficiency
 from steelyard.weighing.weigh import base_weights
 
 __all__ = ["assemble", "pool_records"]
@@ -127,7 +125,7 @@ def assemble(
         ordered=any(record.ordered for record in records),
         is_approximate=False,
     )
-    mass = (pooling.shares.T * pooling.counts) @ pooling.shares / sizes[:, None]
+    mass = pooling.shared_draws / sizes[:, None]
     estimate = constants_of(solved, record, found, labels, given)
     return Pooled(record, tuple(labels), estimate, mass, sizes, tuple(records))
 
@@ -245,7 +243,7 @@ def _efficiency(record: Base, own: Array, shares: Array) -> float:
 
 def _findings(
     pooling: Pooling,
-    draws: Any,
+    draws: Draws,
     sizes: Array,
     labels: Sequence[str],
     log_q: Array,

@@ -10,10 +10,10 @@ from steelyard.repair.disjoint import pool_disjoint
 from steelyard.repair.pooled import Pooled
 from steelyard.repair.pooling import pool_records
 
-__all__ = ["pool_fits", "read_fits"]
+__all__ = ["pool_fits"]
 
 
-def read_fits(fits: Any) -> tuple[tuple[str, ...], list[Any]]:
+def _read_fits(fits: Any) -> tuple[tuple[str, ...], list[Any]]:
     """Names and fits, from a sequence or a mapping; at least two."""
     if isinstance(fits, Mapping):
         labels, held = tuple(str(name) for name in fits), list(fits.values())
@@ -33,7 +33,7 @@ def read_fits(fits: Any) -> tuple[tuple[str, ...], list[Any]]:
 
 def pool_fits(fits: Any, kind: type, data: Any, common: Any, log_constants: Any) -> Pooled:
     """Fits pooled into one record; `kind` is the class that a fit must have."""
-    labels, held = read_fits(fits)
+    labels, held = _read_fits(fits)
     for label, fit in zip(labels, held, strict=True):
         if not isinstance(fit, kind):
             raise ArgumentTypeError(

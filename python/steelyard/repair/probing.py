@@ -7,15 +7,17 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
-import numpy.typing as npt
 
 from steelyard import _core
 from steelyard.base.draws import Array
 from steelyard.repair.affine import Affine
+from steelyard.repair.points import Rows
 from steelyard.verdicts import Finding, judge
 
-__all__ = ["Mapped", "probe", "probe_behind", "probe_cost"]
+__all__ = ["DensityPair", "Mapped", "probe", "probe_behind", "probe_cost"]
 
+# Log densities of base and target at coordinates.
+DensityPair = Callable[[Array], tuple[Array, Array]]
 # Draws that are pushed outwards, as a share of all, and at least so many.
 _SHARE = 4
 _LEAST = 500
@@ -59,11 +61,11 @@ class Mapped:
     log_ratio: Array
     log_weights: Array | None
     maps: tuple[Affine, Affine]
-    halves: tuple[npt.NDArray[np.int64], npt.NDArray[np.int64]]
-    densities: Callable[[Array], tuple[Array, Array]]
+    halves: tuple[Rows, Rows]
+    densities: DensityPair
 
     @property
-    def v(self) -> Array:
+    def base_log_weights(self) -> Array:
         """Base log weights, 0 where there are none."""
         return np.zeros(len(self.start)) if self.log_weights is None else self.log_weights
 
@@ -79,7 +81,7 @@ def probe(mapped: Mapped) -> Finding:
     reach and that their tail shape does not show (*derived*). The factor c is ``1 + 1/√d``: further
     out too few of the pushed draws would count.
     """
-    start, v = mapped.start, mapped.v
+    start, v = mapped.start, mapped.base_log_weights
     size = start.shape[1]
     factor = 1 + 1 / math.sqrt(size)
     rows = np.linspace(0, len(start) - 1, _probed(len(start))).astype(np.int64)
@@ -109,7 +111,7 @@ def probe_behind(mapped: Mapped) -> Finding:
     mass at base draws from which the map moved away, such as another mode. The heaviest of these
     stand for all, which makes the figure a lower bound.
     """
-    start, target, v = mapped.start, mapped.target, mapped.v
+    start, target, v = mapped.start, mapped.target, mapped.base_log_weights
     raw = np.where(v > -np.inf, target - mapped.base, -np.inf)
     rows = np.sort(np.argsort(-raw, kind="stable")[: _probed(len(start))])
     back, log_determinant = np.empty((len(rows), start.shape[1])), np.empty(len(rows))

@@ -22,26 +22,19 @@ from steelyard.errors import (
 from steelyard.repair.collapsing import collapse, collapse_plan
 from steelyard.repair.evaluating import Evaluator, at_draws
 from steelyard.repair.matching import match_moments, probe_plain
-from steelyard.repair.outcomes import Outcome, moved_answer, not_possible
+from steelyard.repair.outcomes import Outcome, moved_answer, not_possible, trust_findings
 from steelyard.repair.pooling import pool_records
 from steelyard.repair.prior_start import prior_draws, target_prior
 from steelyard.repair.space import space_of
 from steelyard.repair.tempered import Tempered
 from steelyard.repair.tempering import temper
 from steelyard.verdicts import judge
-from steelyard.weighing.trust import shared_findings, weight_findings
 from steelyard.weighing.weigh import weigh_ratio
 
 if TYPE_CHECKING:
     from steelyard.repair.climbing import Climb
 
-__all__ = [
-    "EMPTY",
-    "INTERRUPTED",
-    "MOVING",
-    "RUNGS",
-    "smoothing_cost",
-]
+__all__ = ["EMPTY", "INTERRUPTED", "MOVING", "RUNGS"]
 
 # Weights of a lighter tail than this have finite third moments: nothing can hide in it.
 _IDLE_SHAPE = 0.3
@@ -59,7 +52,7 @@ def smoothing(climb: Climb) -> Outcome:
     is code to evaluate these.
     """
     plain = climb.plain
-    cost = smoothing_cost(climb)
+    cost = _smoothing_cost(climb)
     if not plain.verdict.is_sound or plain.tail_shape < _IDLE_SHAPE:
         return Outcome(plain, "", cost)
     try:
@@ -72,7 +65,7 @@ def smoothing(climb: Climb) -> Outcome:
     return Outcome(plain, "", cost)
 
 
-def smoothing_cost(climb: Climb) -> int:
+def _smoothing_cost(climb: Climb) -> int:
     """Draws at which a callable term of the change was evaluated."""
     target = climb.plain._target
     called = target is not None and any(
@@ -92,11 +85,7 @@ def moment_matching(climb: Climb) -> Outcome:
         return Outcome(None, "" if climb.purse.is_empty else "no map made the tail lighter")
     record = evaluator.at(matched.x, climb.record.draws)
     how = f"mapped by {len(matched.steps)} affine maps, {matched.steps[-1]} last"
-    findings = (
-        *weight_findings(matched.weights, record.draws, record.ordered),
-        *shared_findings(matched.weights, record.draws, record.ordered),
-        *matched.findings,
-    )
+    findings = (*trust_findings(matched.weights, record), *matched.findings)
     return Outcome(
         moved_answer(climb, record, matched.weights, matched.ratio, how, findings, is_paired=True)
     )
@@ -122,10 +111,7 @@ def collapsing(climb: Climb) -> Outcome:
     refuse_bad_ratio(found.log_ratio, found.draws, "collapse")
     weights = weigh_ratio(found.log_ratio, record.log_weights, record.draws, ordered=record.ordered)
     moved = at_draws(record, found.draws)
-    findings = (
-        *weight_findings(weights, record.draws, record.ordered),
-        *shared_findings(weights, record.draws, record.ordered),
-    )
+    findings = trust_findings(weights, record)
     how = f"effects {found.name!r} integrated out and drawn anew"
     return Outcome(moved_answer(climb, moved, weights, found.ratio, how, findings, is_paired=True))
 

@@ -22,8 +22,8 @@ from steelyard.errors import ArgumentTypeError, ShapeError
 from steelyard.repair.islands import log_masses
 from steelyard.repair.particles import Particles, Step
 from steelyard.repair.points import Densities, Points
-from steelyard.repair.run_constants import bridged_constant, mean_weight_constant, run_findings
 from steelyard.repair.sweeping import Setting
+from steelyard.repair.tempered_constants import bridged_constant, mean_weight_constant, run_findings
 from steelyard.table import Table
 from steelyard.verdicts import Finding, Verdict, judge
 from steelyard.weighing.trust import weight_findings

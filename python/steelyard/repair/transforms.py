@@ -12,7 +12,19 @@ import numpy.typing as npt
 
 from steelyard.base.draws import Array
 
-__all__ = ["Ascending", "Block", "Columns", "Correlation", "Interval", "LookUp", "Simplex"]
+__all__ = [
+    "Ascending",
+    "Block",
+    "Columns",
+    "Correlation",
+    "Interval",
+    "Limits",
+    "LookUp",
+    "Simplex",
+    "constant_limits",
+    "from_line",
+    "to_line",
+]
 
 Columns = npt.NDArray[np.int64]
 LookUp = Callable[[str], Array]
@@ -235,6 +247,3 @@ def constant_limits(lower: Any, upper: Any) -> Limits:
     low = np.atleast_2d(np.asarray(lower, dtype=np.float64))
     high = np.atleast_2d(np.asarray(upper, dtype=np.float64))
     return lambda look_up, count: (low, high)
-
-
-__all__ += ["Limits", "constant_limits", "from_line", "to_line"]

@@ -12,7 +12,7 @@ from steelyard.answers.quantities import Quantity, read_quantity
 from steelyard.digits import short
 from steelyard.errors import QuantityError
 from steelyard.rules import RULES
-from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes
+from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes, title
 
 if TYPE_CHECKING:
     from steelyard.answers import Answer
@@ -64,12 +64,7 @@ class AnswerPlots:
         ax.set_ylim(0, 1.02)
         ax.set_xlabel("heaviest draws, counted from the heaviest")
         ax.set_ylabel("share of all weight they hold")
-        ax.set_title(
-            f"{self.answer.verdict.level}: heaviest draw holds {short(w[0])}",
-            loc="left",
-            fontsize=10,
-            color=INK,
-        )
+        title(ax, f"{self.answer.verdict.level}: heaviest draw holds {short(w[0])}")
         return ax
 
     def marginal(self, quantity: Any, *, ax: Any = None) -> Any:
@@ -109,7 +104,7 @@ class AnswerPlots:
         ax.set_ylim(0, 1)
         ax.set_xlabel(read.label)
         ax.set_ylabel("probability of no more")
-        ax.set_title(str(mean), loc="left", fontsize=10, color=INK)
+        title(ax, str(mean))
         ax.legend(frameon=False, loc="lower right")
         return ax
 
@@ -166,7 +161,7 @@ class AnswerPlots:
         ax.set_ylim(bottom=0.9)
         ax.set_xlabel(read.label)
         ax.set_ylabel("effective draws at or beyond")
-        ax.set_title("how far the draws reach", loc="left", fontsize=10, color=INK)
+        title(ax, "how far the draws reach")
         ax.legend(frameon=False, loc="lower center")
         return ax
 

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from steelyard.digits import short
-from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes
+from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes, title
 
 if TYPE_CHECKING:
     from steelyard.repair import Ladder, Rung
@@ -57,12 +57,10 @@ class LadderPlots:
         ax.xaxis.grid(visible=True, color=GUIDE, lw=0.6)
         ax.set_axisbelow(True)
         ax.set_xlabel("points at which the densities were evaluated")
-        ax.set_title(
+        title(
+            ax,
             f"answered by {self.ladder.chosen} after {self.ladder.evaluations:,} evaluations, "
             f"{short(float(f'{self.ladder.seconds:.2g}'))} s",
-            loc="left",
-            fontsize=10,
-            color=INK,
         )
         return ax
 

@@ -10,7 +10,7 @@ import numpy.typing as npt
 
 from steelyard.digits import short
 from steelyard.rules import RULES
-from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes
+from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes, title
 
 if TYPE_CHECKING:
     from steelyard.leaving_out import Calibration, Contrast, LeaveOut, LookAhead
@@ -71,7 +71,7 @@ class LeaveOutPlots:
         ax.set_xlabel("log score that a group owes to its own data")
         ax.set_ylabel("draws its weights are worth")
         total = left.log_score
-        ax.set_title(f"{total} ", loc="left", fontsize=10, color=INK)
+        title(ax, f"{total} ")
         ax.legend(frameon=False, loc="upper right", fontsize=8)
         return ax
 
@@ -118,7 +118,7 @@ class LeaveOutPlots:
         ax.set_xlabel("groups, from the one that moves it most")
         ax.set_ylabel("shifts added up (base sd)")
         name = found.labels["quantity"][0]
-        ax.set_title(f"what drives {name}", loc="left", fontsize=10, color=INK)
+        title(ax, f"what drives {name}")
         return ax
 
 
@@ -162,7 +162,7 @@ class CalibrationPlots:
         ax.set_xlim(0, 1)
         ax.set_xlabel("predicted quantile, the observation left out")
         ax.set_ylabel("observations too many below it")
-        ax.set_title(c.sentence.split(":")[0], loc="left", fontsize=10, color=INK)
+        title(ax, c.sentence.split(":")[0])
         return ax
 
 
@@ -216,7 +216,7 @@ class ContrastPlots:
         )
         ax.set_xlabel("groups, from the one on which the models differ most")
         ax.set_ylabel("differences in log score added up")
-        ax.set_title(c.sentence.split(":")[0], loc="left", fontsize=10, color=INK)
+        title(ax, c.sentence.split(":")[0])
         return ax
 
 
@@ -256,7 +256,7 @@ class LookAheadPlots:
         ax.set_yscale("log")
         ax.set_xlabel("position in the series")
         ax.set_ylabel("draws the weights are worth")
-        ax.set_title(ahead.sentence, loc="left", fontsize=10, color=INK)
+        title(ax, ahead.sentence)
         return ax
 
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes
+from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes, line_names
 
 if TYPE_CHECKING:
     from steelyard.planning.arrival import Arrival
@@ -50,8 +50,7 @@ class RefitPlots:
             mark = "s" if name in plan.refits else "o"
             ax.plot(after, line, mark, ms=6, color=TARGET, mfc=TARGET if sound else "white")
         labels = [n + (" (out of reach)" if n in plan.out_of_reach else "") for n in plan.names]
-        ax.set_yticks(range(len(labels)), labels)
-        ax.set_ylim(len(labels) - 0.5, -0.5)
+        line_names(ax, labels)
         ax.set_xlim(0, 1.02)
         ax.set_xlabel("effective draws to one draw: from the base (bar), from the pool (mark)")
         return ax

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes
+from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes, line_names
 
 if TYPE_CHECKING:
     from steelyard.repair.pooled import Pooled
@@ -50,8 +50,7 @@ class PoolPlots:
                     text = f"{mass[line, column]:.2f}"
                     ax.text(middle, line, text, ha="center", va="center", fontsize=8, color="white")
             left += mass[:, column]
-        ax.set_yticks(range(len(labels)), labels)
-        ax.set_ylim(len(labels) - 0.5, -0.5)
+        line_names(ax, labels)
         ax.set_xlim(0, 1)
         ax.set_xlabel("share of a fit's mass where the draws of each fit lie")
         ax.legend(fontsize=8, frameon=False, loc="upper left", bbox_to_anchor=(1, 1))
@@ -80,7 +79,6 @@ class PoolPlots:
         for line in range(len(self.pool.labels)):
             ax.plot([low[line], high[line]], [line, line], color=TARGET, lw=3, alpha=0.6)
             ax.plot(found.value[line], line, "o", ms=5, color=INK)
-        ax.set_yticks(range(len(self.pool.labels)), self.pool.labels)
-        ax.set_ylim(len(self.pool.labels) - 0.5, -0.5)
+        line_names(ax, self.pool.labels)
         ax.set_xlabel(f"log normalising constant against {self.pool.labels[0]}")
         return ax

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from steelyard.errors import ArgumentError, UnknownNameError
-from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes
+from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes, line_names, title
 
 if TYPE_CHECKING:
     from steelyard.answers.attribution import Attribution
@@ -72,13 +72,10 @@ class TriagePlots:
             colour = TARGET if sound else BASE
             ax.plot([value - half, value + half], [line] * 2, color=colour, lw=3, alpha=0.6)
             ax.plot(value, line, "o", ms=6, color=colour, mfc=colour if sound else "white")
-        ax.set_yticks(
-            range(len(scenarios)), [s.name + (" (later)" if s.later else "") for s in scenarios]
-        )
-        ax.set_ylim(len(scenarios) - 0.5, -0.5)
+        line_names(ax, [s.name + (" (later)" if s.later else "") for s in scenarios])
         ax.tick_params(axis="y", length=0)
         ax.set_xlabel(f"shift of {label}; bands hold together, 95 %")
-        ax.set_title("filled: sound; hollow: not", loc="left", fontsize=10, color=INK)
+        title(ax, "filled: sound; hollow: not")
         return ax
 
 

@@ -1,4 +1,4 @@
-"""Plots of sweeps, tipping points, perturbed priors, plans and attributions."""
+"""Plots of sweeps, tipping points and perturbed priors."""
 
 from __future__ import annotations
 
@@ -9,7 +9,7 @@ import numpy as np
 
 from steelyard.digits import rounded, short
 from steelyard.errors import ArgumentError
-from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes
+from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes, title
 
 if TYPE_CHECKING:
     from steelyard.sensitivity import Perturbation, Sweep, TippingPoint
@@ -74,11 +74,9 @@ class SweepPlots:
         ax.set_xlim(at[0], at[-1])
         ax.set_xlabel(name)
         ax.set_ylabel(estimate.label)
-        ax.set_title(
+        title(
+            ax,
             f"{int(sound.sum())} of {sound.size} nodes sound; band holds the whole curve, 95 %",
-            loc="left",
-            fontsize=10,
-            color=INK,
         )
         return ax
 
@@ -100,12 +98,7 @@ class SweepPlots:
             ax.plot(at[x], other[y], ls="", marker=".", ms=2, color=BASE)
         ax.set_xlabel(first)
         ax.set_ylabel(second)
-        ax.set_title(
-            f"{estimate.label}: lines of equal value, drawn where sound",
-            loc="left",
-            fontsize=10,
-            color=INK,
-        )
+        title(ax, f"{estimate.label}: lines of equal value, drawn where sound")
         return ax
 
 
@@ -158,7 +151,7 @@ class TippingPlots:
         _limits(ax, np.append(value[sound], found.level), np.empty((2, 0)))
         ax.set_xlabel(found.name)
         ax.set_ylabel(f"P({found.event})")
-        ax.set_title(_sentence(found), loc="left", fontsize=10, color=INK)
+        title(ax, _sentence(found))
         return ax
 
 
@@ -218,12 +211,10 @@ class PerturbationPlots:
         ax.set_xlabel(shape.parameter)
         ax.set_ylabel("prior density")
         divergence = self.perturbation.divergence
-        ax.set_title(
+        title(
+            ax,
             f"least prior with {self.perturbation.quantity} at {self.perturbation.target:g}: "
             f"divergence {short(float(divergence.value))} ({divergence.verdict.level})",
-            loc="left",
-            fontsize=10,
-            color=INK,
         )
         return ax
 

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from steelyard.digits import rounded
-from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes
+from steelyard.show.style import BASE, GUIDE, INK, TARGET, axes, title
 
 if TYPE_CHECKING:
     from steelyard.repair import Tempered
@@ -63,7 +63,7 @@ class TemperingPlots:
         ax.set_ylim(0, 1.04)
         ax.set_xlabel("step")
         ax.set_ylabel("share of the particles; temperature as ground")
-        ax.set_title(_sentence(run), loc="left", fontsize=10, color=INK)
+        title(ax, _sentence(run))
         return ax
 
 

@@ -1,4 +1,4 @@
-"""The constant of a run, its error, and what the run shows of trust."""
+"""The constant of a tempered run, its error, and what the run shows of trust."""
 
 from __future__ import annotations
 

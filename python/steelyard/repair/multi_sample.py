@@ -1,4 +1,4 @@
-"""Relative constants of unnormalised densities from draws of each, with their influence series."""
+"""The multi-sample equations: relative constants from draws of each density, and their series."""
 
 from __future__ import annotations
 
