@@ -15,7 +15,7 @@ from steelyard.answers.reweigh import base_answer
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.base.priors import PriorTerm
-from steelyard.sensitivity.prior_perturbation import _term
+from steelyard.sensitivity.prior_perturbation import one_number_prior
 from steelyard.verdicts import judge
 from steelyard.weighing.series import relative_efficiency
 
@@ -64,7 +64,7 @@ def contaminated(
     ``((1 − ε) E f + ε m(φ) D(φ))/((1 − ε) + ε m(φ))``; its influence at the extreme φ is that of
     the ratio with φ held, since it is stationary there.
     """
-    term = _term(base, parameter)
+    term = one_number_prior(base, parameter)
     phi = np.ascontiguousarray(term.value(base.draws))
     v, f = base_answer(base)._weights.linear, np.ascontiguousarray(asked.columns[:, 0])
     smoother = _Ratio(phi, _width(base, phi, v), term)

@@ -23,7 +23,7 @@ from steelyard.sensitivity.bounds import weighed_by
 from steelyard.sensitivity.tilting import find_root
 from steelyard.weighing.series import relative_efficiency
 
-__all__ = ["LeastPrior", "PriorShape", "least_in_prior"]
+__all__ = ["LeastPrior", "PriorShape", "least_in_prior", "one_number_prior"]
 
 # Nodes at which the leverage is smoothed, and reach of the grid of the prior in posterior sds.
 _NODES = 400
@@ -86,7 +86,7 @@ def least_in_prior(base: Base, asked: Quantity, goal: float, parameter: str) -> 
     from one kernel smoothing on the prior's probability scale, reflected at its ends. The error
     of the divergence is a batch jackknife's.
     """
-    term = _term(base, parameter)
+    term = one_number_prior(base, parameter)
     phi = (
         term.value(base.draws)[:, 0] if term.value(base.draws).ndim > 1 else term.value(base.draws)
     )
@@ -106,7 +106,7 @@ def least_in_prior(base: Base, asked: Quantity, goal: float, parameter: str) -> 
     )
 
 
-def _term(base: Base, parameter: str) -> PriorTerm:
+def one_number_prior(base: Base, parameter: str) -> PriorTerm:
     stated = stated_prior(base.prior, "prior_of")
     known_term(parameter, stated, "prior_of", "prior")
     term = stated[parameter].resolved(base.draws)

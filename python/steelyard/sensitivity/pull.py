@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 
 from steelyard import _core
-from steelyard.answers.distances import _jensen_shannon, _marginal
+from steelyard.answers.distances import jensen_shannon, marginal_of
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, Series, finish
 from steelyard.answers.quantities import Quantity
@@ -166,7 +166,7 @@ def _pull_of(
     z = np.zeros_like(columns)
     for scale in scales:
         for column in range(columns.shape[1]):
-            found, (one, zero), end = _jensen_shannon(scale, _marginal(scale, columns[:, column]))
+            found, (one, zero), end = jensen_shannon(scale, marginal_of(scale, columns[:, column]))
             value[column] += unit * found
             ends[column] += unit * end
             w, v = scale.weights.linear, scale.base_weights.linear

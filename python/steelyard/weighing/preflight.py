@@ -24,7 +24,13 @@ from steelyard.weighing.series import variance_and_efficiency
 from steelyard.weighing.supports import support_findings
 from steelyard.weighing.weigh import base_weights
 
-__all__ = ["preflight"]
+__all__ = [
+    "distance_from_mean",
+    "gamma_or_beta_widened",
+    "preflight",
+    "root_covariance",
+    "tail_precision",
+]
 
 # Above this many parameters the covariance of the draws is too costly to be worth it.
 _MOST_PARAMETERS = 500
@@ -44,7 +50,7 @@ def _algebra(base: Base, target: Target) -> list[Finding]:
     if exact is not None:
         return exact
     findings = _normal_widened(base, target.prior)
-    findings += _gamma_or_beta_widened(base, target.prior)
+    findings += gamma_or_beta_widened(base, target.prior)
     if loss is not None:
         # How far the data dominate is not known, so that this figure is an upper one: it never
         # condemns an answer by itself.
@@ -108,7 +114,7 @@ def _normal_throughout(base: Base, target: Target, loss: Loss | None) -> list[Fi
         if not isinstance(old, Normal) or not isinstance(term.key, str) or old.names:
             return None
         value = prior.base.value(base.draws)
-        precisions = [_tail_precision(d, value, base) for d in (old, new)]
+        precisions = [tail_precision(d, value, base) for d in (old, new)]
         if precisions[0] is None or precisions[1] is None:
             return None
         values.append(value.reshape(base.draws.size, -1))
@@ -118,7 +124,7 @@ def _normal_throughout(base: Base, target: Target, loss: Loss | None) -> list[Fi
     if named != set(base.parameters):
         return None
     stacked = np.concatenate(values, axis=1)
-    root, unit = _root_covariance(stacked, base)
+    root, unit = root_covariance(stacked, base)
     if root is None:
         return None
     p0, p1 = np.concatenate(before) * unit**2, np.concatenate(after) * unit**2
@@ -127,7 +133,7 @@ def _normal_throughout(base: Base, target: Target, loss: Loss | None) -> list[Fi
     return [_loosened(loss, float(np.linalg.eigvalsh(fall)[-1]))]
 
 
-def _tail_precision(density: Any, value: Array, base: Base) -> Array | None:
+def tail_precision(density: Any, value: Array, base: Base) -> Array | None:
     """
     Precision of the slower of a density's tails: 0 for heavier than normal ones.
 
@@ -153,11 +159,11 @@ def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Findi
     """
     values, loosened, labels = [], [], []
     for label, prior in priors.items():
-        about = _distance_from_mean(prior, base)
+        about = distance_from_mean(prior, base)
         if about is None:
             continue
-        before = _tail_precision(prior.base.density, about, base)
-        after = _tail_precision(prior.density.density, about, base)
+        before = tail_precision(prior.base.density, about, base)
+        after = tail_precision(prior.density.density, about, base)
         if before is None or after is None:
             continue
         values.append(about.reshape(base.draws.size, -1))
@@ -167,7 +173,7 @@ def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Findi
         return []
     # One alone needs no copy.
     together = values[0] if len(values) == 1 else np.concatenate(values, axis=1)
-    root, unit = _root_covariance(together, base)
+    root, unit = root_covariance(together, base)
     if root is None:
         return []
     fall = root.T @ ((np.concatenate(loosened) * unit**2)[:, None] * root)
@@ -175,7 +181,7 @@ def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Findi
     return [judge("prior_widened", figure, term=", ".join(labels), posterior="normal")]
 
 
-def _distance_from_mean(prior: PriorTarget, base: Base) -> Array | None:
+def distance_from_mean(prior: PriorTarget, base: Base) -> Array | None:
     """
     What a normal prior is about, without a mean that is itself a parameter.
 
@@ -196,7 +202,7 @@ def _distance_from_mean(prior: PriorTarget, base: Base) -> Array | None:
     return np.asarray(value - mean.reshape(mean.shape + (1,) * (value.ndim - mean.ndim)))
 
 
-def _root_covariance(values: Array, base: Base) -> tuple[Array | None, Array]:
+def root_covariance(values: Array, base: Base) -> tuple[Array | None, Array]:
     """
     Root of the covariance of the draws in units of their sds, and these; None if not estimable.
 
@@ -225,7 +231,7 @@ def _root_covariance(values: Array, base: Base) -> tuple[Array | None, Array]:
     return vectors * np.sqrt(np.maximum(eigenvalues, 0.0) / unbiased), natural
 
 
-def _gamma_or_beta_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:
+def gamma_or_beta_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:
     """
     The same for gamma and beta priors, whose posterior is matched by its mean and variance.
 
