@@ -35,9 +35,13 @@ class SwapPrior(Edit):
     key: Any
     density: Any
 
+    @property
+    def label(self) -> str:
+        """The key as text."""
+        return self.key if isinstance(self.key, str) else ", ".join(map(str, self.key))
+
     def __str__(self) -> str:
-        key = self.key if isinstance(self.key, str) else ", ".join(map(str, self.key))
-        return f"prior of {key} becomes {_text(self.density)}"
+        return f"prior of {self.label} becomes {_text(self.density)}"
 
 
 @dataclass(frozen=True, eq=False)

@@ -14,7 +14,7 @@ from steelyard import _core
 from steelyard.answers.distances import jensen_shannon, marginal_of
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, Series, finish
-from steelyard.answers.quantities import Quantity
+from steelyard.answers.quantities import Quantity, asked_for
 from steelyard.answers.reweigh import base_answer, reweigh
 from steelyard.answers.tabulate import element_names
 from steelyard.arrays import Frozen, ReadOnly, in_unit
@@ -22,7 +22,6 @@ from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.changes import Change, power
 from steelyard.errors import ChangeError
-from steelyard.sensitivity.sweep import asked_for
 from steelyard.table import Table
 from steelyard.weighing.series import (
     chains_p_value,
@@ -90,7 +89,7 @@ class Pull(Frozen):
             columns[label] = [float(v) for v in estimate.value]
             errors[label] = [float(v) for v in estimate.error]
         levels = [
-            min((e.verdict[i].level for e in shown.values()), default="sound", key=_rank)
+            min((e.verdict[i].level for e in shown.values()), default="sound")
             for i in range(len(self.elements))
         ]
         columns["level"] = [str(level) for level in levels]
@@ -105,10 +104,6 @@ class Pull(Frozen):
 
     def _repr_html_(self) -> str:
         return self.table()._repr_html_() + f"<p>{escape('pulls from 0.05 on are counted')}</p>"
-
-
-def _rank(level: str) -> int:
-    return ("refit", "strained", "sound").index(str(level))
 
 
 def pull(base: Base, quantities: Any = None) -> Pull:

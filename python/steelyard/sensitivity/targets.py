@@ -132,10 +132,9 @@ class Targets:
         for edit in change.edits:
             if type(edit) is not SwapPrior or not isinstance(edit.density, Distribution):
                 return None
-            label = edit.key if isinstance(edit.key, str) else ", ".join(map(str, edit.key))
-            if label not in stated or not stated[label].is_distribution:
+            if edit.label not in stated or not stated[edit.label].is_distribution:
                 return None
-            found.append((label, edit.density))
+            found.append((edit.label, edit.density))
         if len(found) > 1 and len({label for label, _ in found}) < len(found):
             return None
         return tuple(found)
@@ -287,7 +286,7 @@ def _spoken(told: Sequence[tuple[int, Finding]], count: int) -> list[Finding]:
     figures: dict[tuple[str, str], Array] = {}
     spoken: dict[tuple[str, str], npt.NDArray[np.bool_]] = {}
     for place, finding in told:
-        key = (finding.code, str(sorted(finding.words.items())))
+        key = finding.wording
         if key not in firsts:
             firsts[key] = finding
             figures[key] = np.full(count, np.nan)
