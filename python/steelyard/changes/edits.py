@@ -140,8 +140,9 @@ class Change:
     A change of prior, likelihood or data.
 
     Made by :func:`steelyard.swap_prior`, :func:`steelyard.swap_loglik`, :func:`steelyard.drop`,
-    :func:`steelyard.add`, :func:`steelyard.weigh_data`, :func:`steelyard.power` and
-    :func:`steelyard.log_ratio`, and combined with ``&``. The order of the parts does not matter.
+    :func:`steelyard.add`, :func:`steelyard.weigh_data`, :func:`steelyard.power`,
+    :func:`steelyard.raise_noise` and :func:`steelyard.log_ratio`, and combined with ``&``. The
+    order of the parts does not matter.
 
     Attributes
     ----------

@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass
-from html import escape
 from typing import Any
 
 import numpy as np
@@ -103,7 +102,7 @@ class Pull(Frozen):
         return str(self)
 
     def _repr_html_(self) -> str:
-        return self.table()._repr_html_() + f"<p>{escape('pulls from 0.05 on are counted')}</p>"
+        return self.table()._repr_html_() + f"<p>pulls from {LIMIT:g} on are counted</p>"
 
 
 def pull(base: Base, quantities: Any = None) -> Pull:
