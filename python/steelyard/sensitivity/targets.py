@@ -17,7 +17,7 @@ from steelyard.changes import Change, Target, form_target
 from steelyard.changes.edits import SwapPrior
 from steelyard.changes.merging import PriorTarget
 from steelyard.changes.target import has_weight, prior_delta
-from steelyard.densities import Distribution, Normal
+from steelyard.densities import Distribution
 from steelyard.densities.cumulative import Elementwise
 from steelyard.densities.distribution import _quiet
 from steelyard.errors import SteelyardError
@@ -25,9 +25,9 @@ from steelyard.verdicts import Finding, judge
 from steelyard.weighing.preflight import (
     distance_from_mean,
     gamma_or_beta_widened,
+    precision_lost,
     preflight,
     root_covariance,
-    tail_precision,
 )
 from steelyard.weighing.supports import support_findings
 
@@ -165,15 +165,8 @@ class Targets:
         one = PriorTarget(term, PriorTerm(term.key, density))
         widened = gamma_or_beta_widened(base, {term.label: one})
         findings = (*self._gap(one, density), *widened)
-        if not isinstance(term.density, Normal):
-            return _Swapped(delta, findings, None)
-        about = distance_from_mean(one, base)
-        if about is None:
-            return _Swapped(delta, findings, None)
-        precisions = [tail_precision(d, about, base) for d in (term.density, density)]
-        if precisions[0] is None or precisions[1] is None:
-            return _Swapped(delta, findings, None)
-        return _Swapped(delta, findings, (precisions[0] - precisions[1]).reshape(-1))
+        lost = precision_lost(one, base)
+        return _Swapped(delta, findings, None if lost is None else lost[1])
 
     def _gap(self, one: PriorTarget, density: Distribution) -> tuple[Finding, ...]:
         """Findings about supports, which depend on the new density's limits alone."""

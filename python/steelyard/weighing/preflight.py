@@ -27,9 +27,9 @@ from steelyard.weighing.weigh import base_weights
 __all__ = [
     "distance_from_mean",
     "gamma_or_beta_widened",
+    "precision_lost",
     "preflight",
     "root_covariance",
-    "tail_precision",
 ]
 
 # Above this many parameters the covariance of the draws is too costly to be worth it.
@@ -114,7 +114,7 @@ def _normal_throughout(base: Base, target: Target, loss: Loss | None) -> list[Fi
         if not isinstance(old, Normal) or not isinstance(term.key, str) or old.names:
             return None
         value = prior.base.value(base.draws)
-        precisions = [tail_precision(d, value, base) for d in (old, new)]
+        precisions = [_tail_precision(d, value, base) for d in (old, new)]
         if precisions[0] is None or precisions[1] is None:
             return None
         values.append(value.reshape(base.draws.size, -1))
@@ -133,7 +133,7 @@ def _normal_throughout(base: Base, target: Target, loss: Loss | None) -> list[Fi
     return [_loosened(loss, float(np.linalg.eigvalsh(fall)[-1]))]
 
 
-def tail_precision(density: Any, value: Array, base: Base) -> Array | None:
+def _tail_precision(density: Any, value: Array, base: Base) -> Array | None:
     """
     Precision of the slower of a density's tails: 0 for heavier than normal ones.
 
@@ -159,15 +159,11 @@ def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Findi
     """
     values, loosened, labels = [], [], []
     for label, prior in priors.items():
-        about = distance_from_mean(prior, base)
-        if about is None:
+        found = precision_lost(prior, base)
+        if found is None:
             continue
-        before = tail_precision(prior.base.density, about, base)
-        after = tail_precision(prior.density.density, about, base)
-        if before is None or after is None:
-            continue
-        values.append(about.reshape(base.draws.size, -1))
-        loosened.append((before - prior.factor * after).reshape(-1))
+        values.append(found[0].reshape(base.draws.size, -1))
+        loosened.append(found[1])
         labels.append(label)
     if not values or not np.any(np.concatenate(loosened) > 0):
         return []
@@ -179,6 +175,18 @@ def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Findi
     fall = root.T @ ((np.concatenate(loosened) * unit**2)[:, None] * root)
     figure = float(np.linalg.eigvalsh(fall)[-1])
     return [judge("prior_widened", figure, term=", ".join(labels), posterior="normal")]
+
+
+def precision_lost(prior: PriorTarget, base: Base) -> tuple[Array, Array] | None:
+    """What a normal prior is about, and the tail precision that it loses; None where not known."""
+    about = distance_from_mean(prior, base)
+    if about is None:
+        return None
+    before = _tail_precision(prior.base.density, about, base)
+    after = _tail_precision(prior.density.density, about, base)
+    if before is None or after is None:
+        return None
+    return about, (before - prior.factor * after).reshape(-1)
 
 
 def distance_from_mean(prior: PriorTarget, base: Base) -> Array | None:
