@@ -65,6 +65,11 @@ class Finding:
     spoken: npt.NDArray[np.bool_] | None = None
 
     @property
+    def wording(self) -> tuple[str, str]:
+        """Code and words: findings of several targets that share it are one finding."""
+        return self.code, str(sorted(self.words.items()))
+
+    @property
     def rank(self) -> npt.NDArray[np.int8]:
         worse = RULES[self.code].worse
         rank = np.full(self.figure.shape, 2, dtype=np.int8)

@@ -47,7 +47,7 @@ def test_a_planted_fault_is_found(
 
 @pytest.mark.parametrize("make", [hierarchy, regression])
 def test_clean_fits_raise_no_alarm(make: Callable[[int], sy.Fit]) -> None:
-    # Limits of 1e-5 a test, six tests, twenty fits: false alarms once in a thousand runs.
+    # Limits of 1e-5 a test, six tests, twelve fits: a false alarm in one of 1,400 runs.
     for seed in range(100, 100 + FITS):
         assert "found" not in _statuses(make(seed)).values()
 

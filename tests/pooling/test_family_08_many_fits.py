@@ -25,7 +25,7 @@ def _cases(name: str) -> dict[str, dict[str, Any]]:
 
 
 def case(identifier: str) -> tuple[dict[str, Any], dict[str, Any]]:
-    name = "family_08_many_fits.json" if identifier[1] == "8" else "pooling_family_09.json"
+    name = "family_08_many_fits.json" if identifier[1] == "8" else "family_09_tempering.json"
     found = _cases(name)[identifier]
     values = {k: v["value"] for k, v in found["expected"].items() if "value" in v}
     return found["inputs"], values or found["expected"]

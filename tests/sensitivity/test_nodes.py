@@ -177,7 +177,7 @@ def test_the_kernel_is_the_plain_code(name: str, shift: bool) -> None:
 
 
 def _asked(base: Any) -> dict[str, Any]:
-    from steelyard.sensitivity.sweep import asked_for
+    from steelyard.answers.quantities import asked_for
 
     return asked_for(QUANTITIES, base)
 

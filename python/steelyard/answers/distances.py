@@ -17,7 +17,14 @@ from steelyard.arrays import Frozen, in_unit
 from steelyard.base.draws import Array
 from steelyard.verdicts import judge
 
-__all__ = ["Distance", "distance_of", "divergence_of"]
+__all__ = [
+    "Distance",
+    "Marginal",
+    "distance_of",
+    "divergence_of",
+    "jensen_shannon",
+    "marginal_of",
+]
 
 _LN2 = math.log(2.0)
 
@@ -56,7 +63,7 @@ class Distance(Frozen):
 
 
 @dataclass(frozen=True, eq=False)
-class _Marginal:
+class Marginal:
     """One column, sorted, with its distribution functions under target and base."""
 
     x: Array
@@ -76,25 +83,26 @@ class _Marginal:
         return out[0], out[1]
 
 
-def _marginal(scale: Scale, x: Array) -> _Marginal:
+def marginal_of(scale: Scale, x: Array) -> Marginal:
+    """One column under the weights of target and base."""
     order = np.argsort(x, kind="stable")
     f1, f0 = (
         np.minimum(np.cumsum(weights.linear[order])[:-1], 1.0)
         for weights in (scale.weights, scale.base_weights)
     )
-    return _Marginal(x, order, np.diff(x[order]), f1, f0)
+    return Marginal(x, order, np.diff(x[order]), f1, f0)
 
 
 def distance_of(scale: Scale, quantity: Quantity) -> Distance:
     """Three distances of each element's marginal under the target from that under the base."""
     estimates = [
-        _estimate(scale, quantity, work) for work in (_wasserstein, _largest_gap, _jensen_shannon)
+        _estimate(scale, quantity, work) for work in (_wasserstein, _largest_gap, jensen_shannon)
     ]
     return Distance(*estimates)
 
 
 def _estimate(
-    scale: Scale, quantity: Quantity, work: Callable[[Scale, _Marginal], tuple[float, Pair, float]]
+    scale: Scale, quantity: Quantity, work: Callable[[Scale, Marginal], tuple[float, Pair, float]]
 ) -> Estimate:
     width = quantity.columns.shape[1]
     values, ends = np.empty(width), np.empty(width)
@@ -102,7 +110,7 @@ def _estimate(
     for part, f in column_blocks(quantity.columns):
         # None of these distances depends on the unit.
         f, _ = in_unit(f)
-        rows = [work(scale, _marginal(scale, f[:, column])) for column in range(f.shape[1])]
+        rows = [work(scale, marginal_of(scale, f[:, column])) for column in range(f.shape[1])]
         values[part], ends[part] = [row[0] for row in rows], [row[2] for row in rows]
         psi1, psi0 = (np.stack([row[1][which] for row in rows], axis=1) for which in (0, 1))
         parts.append(study_pair(scale, psi1, -psi0))
@@ -111,7 +119,7 @@ def _estimate(
     return finish(scale, quantity, values, series, None)
 
 
-def _wasserstein(scale: Scale, marginal: _Marginal) -> tuple[float, Pair, float]:
+def _wasserstein(scale: Scale, marginal: Marginal) -> tuple[float, Pair, float]:
     """``∫ |F₁ − F₀| dx`` over the base sd, whose own noise counts."""
     v = scale.base_weights.linear
     centred = marginal.x - float(_core.weighted_mean(marginal.x[:, None], v)[0])
@@ -124,7 +132,7 @@ def _wasserstein(scale: Scale, marginal: _Marginal) -> tuple[float, Pair, float]
     return value, (psi1, psi0 - value * (centred**2 - sd**2) / (2 * sd**2)), 0.0
 
 
-def _largest_gap(scale: Scale, marginal: _Marginal) -> tuple[float, Pair, float]:
+def _largest_gap(scale: Scale, marginal: Marginal) -> tuple[float, Pair, float]:
     """Kolmogorov's gap, and its influence at the place where it stands."""
     n = scale.count
     # Between equal values the distribution functions have no place of their own.
@@ -137,7 +145,7 @@ def _largest_gap(scale: Scale, marginal: _Marginal) -> tuple[float, Pair, float]
     return float(abs(gap[at])), pair, 0.0
 
 
-def _jensen_shannon(scale: Scale, marginal: _Marginal) -> tuple[float, Pair, float]:
+def jensen_shannon(scale: Scale, marginal: Marginal) -> tuple[float, Pair, float]:
     """
     Nguyen & Vreeken's distance for x and for −x; the larger counts.
 

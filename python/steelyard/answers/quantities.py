@@ -20,7 +20,7 @@ from steelyard.base.ratios import extremes_of
 from steelyard.base.shapes import stacked
 from steelyard.errors import ArgumentTypeError, QuantityError
 
-__all__ = ["Quantity", "event_mask", "labelled", "read_quantity"]
+__all__ = ["Quantity", "asked_for", "event_mask", "labelled", "read_quantity"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -80,6 +80,15 @@ def labelled(quantity: Any, base: Base, *, events: bool = False) -> dict[str, Qu
             for label, one in quantity.items()
         }
     return None
+
+
+def asked_for(quantities: Any, base: Base) -> dict[str, Quantity]:
+    """Quantities and events by label, also for one alone."""
+    several = labelled(quantities, base, events=True)
+    if several is not None:
+        return several
+    one = read_quantity(quantities, base, events=True)
+    return {one.label: one}
 
 
 def read_quantity(

@@ -22,7 +22,7 @@ from steelyard.weighing.preflight import preflight
 from steelyard.weighing.trust import shared_findings, weight_findings
 from steelyard.weighing.weigh import base_weights, weigh_ratio
 
-__all__ = ["base_answer", "reweigh", "weigh"]
+__all__ = ["base_answer", "reweigh", "unknown_supports", "weigh"]
 
 
 def base_answer(base: Base) -> Answer:
@@ -42,7 +42,7 @@ def reweigh(base: Base, change: Change, *, smooth: bool = True) -> Answer:
     target = form_target(base, change)
     base = replace(base, withheld=target.withheld)
     own = base_weights(base)
-    notes = [judge("base_unverified"), *_unknown_supports(target)]
+    notes = [judge("base_unverified"), *unknown_supports(target)]
     if not target.terms:
         unchanged = base_answer(base)
         # A swap that equals the base on these draws may still reach beyond them.
@@ -121,7 +121,7 @@ def weigh(log_ratio: Any, draws: Any = None, *, smooth: bool = True) -> Answer:
     return Answer(base, weights, base_weights(base), (*own, *shared), change)
 
 
-def _unknown_supports(target: Target) -> Iterator[Finding]:
+def unknown_supports(target: Target) -> Iterator[Finding]:
     """Likelihoods and ratios may vanish where nobody can see it from their values."""
     for name, term in target.loglik.items():
         if not (

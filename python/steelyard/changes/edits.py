@@ -35,9 +35,13 @@ class SwapPrior(Edit):
     key: Any
     density: Any
 
+    @property
+    def label(self) -> str:
+        """The key as text."""
+        return self.key if isinstance(self.key, str) else ", ".join(map(str, self.key))
+
     def __str__(self) -> str:
-        key = self.key if isinstance(self.key, str) else ", ".join(map(str, self.key))
-        return f"prior of {key} becomes {_text(self.density)}"
+        return f"prior of {self.label} becomes {_text(self.density)}"
 
 
 @dataclass(frozen=True, eq=False)
@@ -136,8 +140,9 @@ class Change:
     A change of prior, likelihood or data.
 
     Made by :func:`steelyard.swap_prior`, :func:`steelyard.swap_loglik`, :func:`steelyard.drop`,
-    :func:`steelyard.add`, :func:`steelyard.weigh_data`, :func:`steelyard.power` and
-    :func:`steelyard.log_ratio`, and combined with ``&``. The order of the parts does not matter.
+    :func:`steelyard.add`, :func:`steelyard.weigh_data`, :func:`steelyard.power`,
+    :func:`steelyard.raise_noise` and :func:`steelyard.log_ratio`, and combined with ``&``. The
+    order of the parts does not matter.
 
     Attributes
     ----------

@@ -107,7 +107,7 @@ def merge(base: Base, change: Change) -> Draft:
 
 def _merge_swap_prior(draft: Draft, edit: SwapPrior) -> None:
     stated = stated_prior(draft.base.prior, "swap_prior")
-    label = edit.key if isinstance(edit.key, str) else ", ".join(map(str, edit.key))
+    label = edit.label
     known_term(label, stated, "swap_prior", "prior")
     if label in draft.prior:
         raise ChangeError(

@@ -20,7 +20,7 @@ from steelyard.changes.edits import Change
 from steelyard.changes.merging import LoglikTarget, PriorTarget, merge
 from steelyard.errors import ArgumentTypeError, RatioError, ShapeError
 
-__all__ = ["Target", "form_target"]
+__all__ = ["Target", "form_target", "has_weight", "prior_delta"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -61,7 +61,7 @@ def form_target(base: Base, change: Change) -> Target:
     draft = merge(base, change)
     terms: dict[str, Array] = {}
     for label, prior in draft.prior.items():
-        delta, extremes = _prior_delta(prior, base)
+        delta, extremes = prior_delta(prior, base)
         _put(terms, f"prior: {label}", delta, base, extremes)
     for name, loglik in draft.loglik.items():
         _put(terms, f"likelihood: {name}", _loglik_delta(loglik, base), base)
@@ -84,7 +84,7 @@ def form_target(base: Base, change: Change) -> Target:
     )
 
 
-def _weighs(base: Base) -> npt.NDArray[np.bool_]:
+def has_weight(base: Base) -> npt.NDArray[np.bool_]:
     """Draws with a base weight above zero."""
     if base.reference is None:
         return np.ones(base.draws.size, dtype=np.bool_)
@@ -103,7 +103,7 @@ def _put(
         return
     if base.log_weights is not None:
         # A draw without base weight has none in the target either, whatever its ratio.
-        delta, extremes = np.where(_weighs(base), delta, 0.0), None
+        delta, extremes = np.where(has_weight(base), delta, 0.0), None
     low, high = extremes_of(delta) if extremes is None else extremes
     if low == high == 0:
         return
@@ -113,9 +113,7 @@ def _put(
     terms[label] = delta
 
 
-def _prior_delta(
-    target: PriorTarget, base: Base
-) -> tuple[Array | None, tuple[float, float] | None]:
+def prior_delta(target: PriorTarget, base: Base) -> tuple[Array | None, tuple[float, float] | None]:
     """Δ of a prior term, None where it is unchanged; and its extremes where they are known."""
     factor = target.factor
     if not target.is_swapped and factor == 1:
@@ -131,7 +129,7 @@ def _prior_delta(
     if pooling is not None and stated.label in pooling.impossible:
         # Other fits of the pool may reach where this one does not.
         old = np.where(old == -np.inf, 0.0, old)
-    impossible = (old == -np.inf) & _weighs(base)
+    impossible = (old == -np.inf) & has_weight(base)
     if impossible.any():
         first = int(np.argmax(impossible))
         raise RatioError(

@@ -240,5 +240,5 @@ def _weighted(left: LeaveOut, term: LoglikTerm) -> Any:
     """Weights of each block of groups beside values of the same groups."""
     setting = setting_of(left._base)
     for part, held, _ in left._groups.blocks(left._base.draws, left._chosen):
-        log_weights, _, _ = deletion_weights(setting, held)
+        log_weights, _ = deletion_weights(setting, held)
         yield part, np.exp(log_weights), _columns(term, left._base, left._chosen[part])

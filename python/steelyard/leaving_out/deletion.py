@@ -13,7 +13,7 @@ from steelyard import _core
 from steelyard.base import Base, Draws
 from steelyard.base.draws import Array
 from steelyard.errors import RatioError
-from steelyard.verdicts import Finding, judge, shape_limit
+from steelyard.verdicts import Finding, judge
 from steelyard.weighing.series import (
     chains_p_value,
     contributions_of,
@@ -21,9 +21,7 @@ from steelyard.weighing.series import (
     relative_efficiency,
     standard_error,
 )
-
-# Place of the faults among the figures of the kernel.
-_FAULTS = 11
+from steelyard.weighing.trust import figure_findings
 
 __all__ = [
     "Deleted",
@@ -34,7 +32,11 @@ __all__ = [
     "group_findings",
     "log_ratio_of",
     "setting_of",
+    "unseen_mass",
 ]
+
+# Place of the faults among the figures of the kernel.
+_FAULTS = 11
 
 
 @dataclass(frozen=True, eq=False)
@@ -95,10 +97,6 @@ class Deleted:
         """Write the figures of a block."""
         for f in fields(self):
             getattr(self, f.name)[part] = getattr(block, f.name)
-
-    def take(self, groups: Array) -> Deleted:
-        """The figures of some groups."""
-        return Deleted(*(getattr(self, f.name)[groups] for f in fields(self)))
 
 
 @dataclass(frozen=True, eq=False)
@@ -176,16 +174,16 @@ def delete_columns(
         log_ratio_of(setting, np.asarray(held, dtype=np.float64))
     found = _deleted(setting, figures, shift, square)
     if draws.pooling is not None:
-        found = _of_pool(setting, found, held, scored)
+        found = _within_fits(setting, found, held, scored)
     return found, Totals(*totals)
 
 
-def _of_pool(
+def _within_fits(
     setting: Setting, found: Deleted, held: npt.NDArray[Any], scored: npt.NDArray[Any]
 ) -> Deleted:
     """Figures that rest on chains, from what varies within the fits of a pool, in plain code."""
     draws, ordered = setting.draws, setting.ordered
-    log_weights, raw, _ = deletion_weights(setting, np.asarray(held, dtype=np.float64))
+    log_weights, raw = deletion_weights(setting, np.asarray(held, dtype=np.float64))
     scaled = draws.size * np.exp(log_weights)
     reached = np.exp(np.asarray(scored, dtype=np.float64) - found.score) - 1
     z, z_raw = scaled * reached, draws.size * raw * reached
@@ -233,19 +231,19 @@ def unseen_mass(shape: Array, share: Array) -> Array:
     error, estimated from the same draws, does not know of it: a log score is then too high.
     *Derived*; from k = 1 on no allowance is enough.
     """
-    room = np.where(shape < 1, 1 - shape, np.nan)
-    return np.where(shape >= 1, np.inf, np.where(shape > 0.5, share / room, 0.0))
+    rest = np.where(shape < 1, 1 - shape, np.nan)
+    return np.where(shape >= 1, np.inf, np.where(shape > 0.5, share / rest, 0.0))
 
 
-def deletion_weights(setting: Setting, held: Array) -> tuple[Array, Array, Array]:
-    """Smoothed log weights and raw weights ``(n, k)``, both normalised, and tail shapes."""
+def deletion_weights(setting: Setting, held: Array) -> tuple[Array, Array]:
+    """Smoothed log weights and raw weights ``(n, k)``, both normalised."""
     log_ratio = log_ratio_of(setting, held)
     raw = np.exp(log_ratio - log_ratio.max(axis=0))
     efficiency = relative_efficiency(raw, setting.draws, setting.ordered)
     log_weights = np.empty_like(log_ratio)
-    shape = _core.smooth(log_ratio, efficiency, log_weights)
+    _core.smooth(log_ratio, efficiency, log_weights)
     raw /= raw.sum(axis=0)
-    return log_weights, raw, shape
+    return log_weights, raw
 
 
 def log_ratio_of(setting: Setting, held: Array) -> Array:
@@ -283,11 +281,13 @@ def group_findings(
     with np.errstate(divide="ignore", invalid="ignore"):
         divergence = np.maximum(np.log(draws / found.entropy_size), 0.0) / np.log(draws)
     return [
-        judge("weight_shape", shaped(found.tail_shape), strained=shape_limit(draws)),
-        judge("few_effective", shaped(found.effective_size)),
-        judge("few_effective_entropy", shaped(found.entropy_size)),
-        judge("few_carry", shaped(found.largest_share)),
-        judge("saturated_divergence", shaped(divergence)),
+        *figure_findings(
+            draws,
+            shaped(found.tail_shape),
+            (shaped(found.effective_size), shaped(found.entropy_size)),
+            shaped(found.largest_share),
+            shaped(divergence),
+        ),
         # As many tests as groups: p-values are held against limits as those of one.
         judge("chain_share", shaped(np.minimum(found.chain_share * tests, 1.0))),
     ]

@@ -8,12 +8,12 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from steelyard.answers import Estimate
-from steelyard.answers.quantities import labelled, read_quantity
+from steelyard.answers.quantities import asked_for
 from steelyard.answers.tabulate import element_names
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.errors import ArgumentError, QuantityError
-from steelyard.leaving_out.deletion import delete_columns, group_findings, setting_of
+from steelyard.leaving_out.deletion import Setting, delete_columns, group_findings, setting_of
 from steelyard.table import Table
 from steelyard.verdicts import Verdict, judge
 
@@ -35,22 +35,18 @@ class Held:
 
 def read_quantities(base: Base, quantities: Any) -> Held:
     """Quantities and events as columns, one name an element."""
-    several = labelled(quantities, base, events=True)
-    if several is None:
-        one = read_quantity(quantities, base, events=True)
-        several = {one.label: one}
-    names: list[str] = []
-    for label, quantity in several.items():
-        names += element_names(label, quantity)
-    columns = np.concatenate([q.columns for q in several.values()], axis=1)
-    return Held(tuple(names), columns)
+    asked = asked_for(quantities, base)
+    names = tuple(name for label, q in asked.items() for name in element_names(label, q))
+    return Held(names, np.concatenate([q.columns for q in asked.values()], axis=1))
 
 
 def influence(left: LeaveOut, quantities: Any = None) -> Estimate:
     """Groups by quantities; see ``LeaveOut.influence``."""
-    held = _found(left, read_quantities(left._base, quantities))
+    asked = read_quantities(left._base, quantities)
+    setting = setting_of(left._base, asked.columns)
+    held = _found(left, asked, setting)
     shape = (*left.shape, len(held.names))
-    verdict = _verdict(left, held, shape)
+    verdict = _verdict(left, setting, shape)
     dims, labels = left._axes
     return Estimate(
         np.reshape(held.shift, shape),  # type: ignore[arg-type]
@@ -64,7 +60,7 @@ def influence(left: LeaveOut, quantities: Any = None) -> Estimate:
     )
 
 
-def _found(left: LeaveOut, held: Held) -> Held:
+def _found(left: LeaveOut, held: Held, setting: Setting) -> Held:
     """Shifts from the pass that made `left` where they are there, else from a new one."""
     known = left._held
     if known is not None and known.shift is not None and known.error is not None:
@@ -74,7 +70,6 @@ def _found(left: LeaveOut, held: Held) -> Held:
             columns = []
         if columns and np.array_equal(known.columns[:, columns], held.columns):
             return replace(held, shift=known.shift[:, columns], error=known.error[:, columns])
-    setting = setting_of(left._base, held.columns)
     rows, width = len(left._chosen), len(held.names)
     shift, error = np.empty((rows, width)), np.empty((rows, width))
     for part, deleted, scored in left._groups.blocks(left._base.draws, left._chosen, checked=False):
@@ -83,8 +78,7 @@ def _found(left: LeaveOut, held: Held) -> Held:
     return replace(held, shift=shift, error=error)
 
 
-def _verdict(left: LeaveOut, held: Held, shape: tuple[int, ...]) -> Verdict:
-    setting = setting_of(left._base, held.columns)
+def _verdict(left: LeaveOut, setting: Setting, shape: tuple[int, ...]) -> Verdict:
     wide = (*left.shape, 1)
     findings = group_findings(left._found, left._base.draws.size, wide)
     effective = left.effective_size[..., None] * setting.efficiency

@@ -18,7 +18,13 @@ from steelyard.leaving_out.influence import Held, read_quantities
 from steelyard.leaving_out.latents import own_latents
 from steelyard.leaving_out.progress import Teller, teller
 from steelyard.leaving_out.result import LeaveOut
-from steelyard.leaving_out.sampling import Sampled, choose, generator_of, surrogate_of
+from steelyard.leaving_out.sampling import (
+    Sampled,
+    choose,
+    generator_of,
+    raw_surrogate,
+    surrogate_of,
+)
 from steelyard.verdicts import Finding, judge
 
 __all__ = ["leave_out", "leave_out_groups"]
@@ -72,7 +78,10 @@ def _sampled(
     found, totals = _pass(setting, groups, chosen, tell)
     factor = groups.count / len(chosen)
     drawn = cheap.values[chosen]
-    own = _series_of_drawn(base, groups, setting, chosen) if surrogate is None else 0.0
+    own: Any = 0.0
+    if surrogate is None:
+        # What the exact scores of the groups drawn take the place of.
+        own = raw_surrogate(groups, chosen, setting, lambda done: None).series
     shared = cheap.series - factor * own
     totals = Totals(
         factor * totals.left_out + shared,
@@ -91,25 +100,6 @@ def _sampled(
 
 def _sums(values: Array) -> tuple[float, float]:
     return float(values.sum()), float((values**2).sum())
-
-
-def _series_of_drawn(base: Base, groups: Groups, setting: Setting, chosen: Positions) -> Any:
-    """The surrogate's influence series summed over the groups drawn."""
-    taken = _Some(groups, chosen)
-    return surrogate_of(base, taken, setting, None, lambda done: None).series
-
-
-class _Some(Groups):
-    """Some of the groups, as a set of groups of its own."""
-
-    def __init__(self, groups: Groups, chosen: Positions) -> None:
-        super().__init__(
-            groups.term,
-            (len(chosen),),
-            ("",),
-            {},
-            tuple(groups.observations_of(int(g)) for g in chosen),
-        )
 
 
 def _pass(

@@ -19,7 +19,7 @@ from steelyard.leaving_out.groups import Groups, Positions
 from steelyard.leaving_out.progress import Teller
 from steelyard.weighing.arrays import seed_key
 
-__all__ = ["Sampled", "Surrogate", "choose", "generator_of", "surrogate_of"]
+__all__ = ["Sampled", "Surrogate", "choose", "generator_of", "raw_surrogate", "surrogate_of"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -163,8 +163,13 @@ def surrogate_of(
         if not np.isfinite(values).all():
             raise ArgumentError("surrogate", "finite values", "NaN or infinite ones", "Mend them.")
         return Surrogate(values.reshape(-1), np.zeros(base.draws.size))
-    values, series = np.empty(groups.count), np.zeros(base.draws.size)
-    for part, held, scored in groups.blocks(base.draws, np.arange(groups.count)):
+    return raw_surrogate(groups, np.arange(groups.count), setting, tell)
+
+
+def raw_surrogate(groups: Groups, chosen: Positions, setting: Setting, tell: Teller) -> Surrogate:
+    """The score by raw weights of some groups."""
+    values, series = np.empty(len(chosen)), np.zeros(setting.draws.size)
+    for part, held, scored in groups.blocks(setting.draws, chosen):
         values[part], block = _cheap(setting, held, scored)
         series += block
         tell(part.stop)

@@ -13,7 +13,7 @@ import numpy as np
 from steelyard import _core
 from steelyard.answers.bands import batch_edges, critical_value
 from steelyard.answers.estimate import Estimate
-from steelyard.answers.quantities import Quantity, event_mask
+from steelyard.answers.quantities import Quantity, asked_for, event_mask
 from steelyard.answers.student import student_cdf
 from steelyard.answers.tabulate import element_names
 from steelyard.arrays import Frozen, ReadOnly
@@ -27,7 +27,7 @@ from steelyard.sensitivity.families import remembering
 from steelyard.sensitivity.gathering import Gathered, Shared
 from steelyard.sensitivity.nodes import Columns, Study, node_blocks, own_weights, weight_findings
 from steelyard.sensitivity.resistance import read_level
-from steelyard.sensitivity.sweep import asked_for, join_findings
+from steelyard.sensitivity.sweep import join_findings
 from steelyard.sensitivity.targets import Formed, Targets
 from steelyard.table import Table
 from steelyard.verdicts import Finding, judge

@@ -105,15 +105,21 @@ def _contaminated(base: Base, asked: Quantity, share: Any, parameter: str) -> Bo
         raise ArgumentError(
             "contamination", "a share below 1", f"{share:g}", "Write 0.1 for a tenth."
         )
-    low, high = contaminated(base, asked, share, parameter)
-    return Bounds(
-        low[0],
-        high[0],
-        base.draws.shaped(low[1]),
-        base.draws.shaped(high[1]),
-        "inner bound",
-        f"priors of {parameter} that are the stated one but for a share of {share:g} of any kind",
+    described = (
+        f"priors of {parameter} that are the stated one but for a share of {share:g} of any kind"
     )
+    return _bounds(base, contaminated(base, asked, share, parameter), "inner bound", described)
+
+
+def _bounds(
+    base: Base,
+    ends: list[tuple[Estimate, Array]],
+    kind: Literal["inner bound", "bound"],
+    described: str,
+) -> Bounds:
+    """Bounds from the lower and the upper end and their log weights."""
+    (lower, low), (upper, high) = ends
+    return Bounds(lower, upper, base.draws.shaped(low), base.draws.shaped(high), kind, described)
 
 
 def _positive(value: Any, argument: str, least: float) -> float:
@@ -172,14 +178,8 @@ def _ball(base: Base, asked: Quantity, divergence: float) -> Bounds:
     """
     f, log_base = asked.columns[:, 0], log_base_of(base)
     ends = [_tilted(base, asked, f, log_base, divergence, sign) for sign in (-1.0, 1.0)]
-    return Bounds(
-        ends[0][0],
-        ends[1][0],
-        base.draws.shaped(ends[0][1]),
-        base.draws.shaped(ends[1][1]),
-        "inner bound",
-        f"targets within a divergence of {divergence:g} of the base",
-    )
+    described = f"targets within a divergence of {divergence:g} of the base"
+    return _bounds(base, ends, "inner bound", described)
 
 
 def _tilted(
@@ -224,14 +224,8 @@ def _ratio_class(base: Base, asked: Quantity, ratio: float) -> Bounds:
         value = float(_core.weighted_mean(f[:, None], weights.linear)[0])
         series = study(scale, (f - value)[:, None])
         ends.append((_estimate(scale, asked, value, series), weights.log))
-    return Bounds(
-        ends[0][0],
-        ends[1][0],
-        base.draws.shaped(ends[0][1]),
-        base.draws.shaped(ends[1][1]),
-        "bound",
-        f"targets whose density ratio to the base varies by a factor of at most {ratio:g}",
-    )
+    described = f"targets whose density ratio to the base varies by a factor of at most {ratio:g}"
+    return _bounds(base, ends, "bound", described)
 
 
 def _upper_set(f: Array, v: Array, ratio: float) -> Any:

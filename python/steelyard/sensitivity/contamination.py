@@ -7,7 +7,6 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from steelyard import _core
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, finish, study
 from steelyard.answers.quantities import Quantity
@@ -15,9 +14,8 @@ from steelyard.answers.reweigh import base_answer
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.base.priors import PriorTerm
-from steelyard.sensitivity.prior_perturbation import _term
+from steelyard.sensitivity.prior_perturbation import one_number_prior, spread_and_size
 from steelyard.verdicts import judge
-from steelyard.weighing.series import relative_efficiency
 
 __all__ = ["contaminated"]
 
@@ -64,7 +62,7 @@ def contaminated(
     ``((1 − ε) E f + ε m(φ) D(φ))/((1 − ε) + ε m(φ))``; its influence at the extreme φ is that of
     the ratio with φ held, since it is stationary there.
     """
-    term = _term(base, parameter)
+    term = one_number_prior(base, parameter)
     phi = np.ascontiguousarray(term.value(base.draws))
     v, f = base_answer(base)._weights.linear, np.ascontiguousarray(asked.columns[:, 0])
     smoother = _Ratio(phi, _width(base, phi, v), term)
@@ -86,10 +84,7 @@ def contaminated(
 
 
 def _width(base: Base, phi: Array, v: Array) -> float:
-    spread = math.sqrt(float(_core.weighted_mean(((phi - v @ phi) ** 2)[:, None], v)[0]))
-    effective = 1 / float((v**2).sum())
-    if base.ordered:
-        effective *= float(relative_efficiency((phi - phi.mean())[:, None], base.draws, True)[0])
+    spread, effective = spread_and_size(base, phi, v)
     # The normal rule for a kernel of fourth order (Silverman 1986, section 3.6).
     return float(1.08 * spread * effective ** (-1 / 9))
 

@@ -23,7 +23,6 @@ __all__ = [
     "Family",
     "first_name",
     "members",
-    "named_node",
     "nodes_of",
     "read_family",
     "read_grid",
@@ -94,7 +93,7 @@ def nodes_of(grid: Mapping[str, Array]) -> list[tuple[float, ...]]:
     return [tuple(map(float, node)) for node in product(*grid.values())]
 
 
-def named_node(names: Sequence[str], node: tuple[float, ...]) -> str:
+def _named_node(names: Sequence[str], node: tuple[float, ...]) -> str:
     """A node in words, for errors."""
     return ", ".join(f"{name} = {short(value)}" for name, value in zip(names, node, strict=True))
 
@@ -106,7 +105,7 @@ def members(
     formed = targets.form([_change_at(family, names, node) for node in nodes])
     for place, error in formed.errors.items():
         raise type(error)(
-            f"family at {named_node(names, nodes[place])}: {error.argument}",
+            f"family at {_named_node(names, nodes[place])}: {error.argument}",
             error.expected,
             error.came,
             error.next_step,
@@ -120,21 +119,21 @@ def _change_at(family: Family, names: Sequence[str], node: tuple[float, ...]) ->
     except SteelyardError as error:
         # Most often a hyperparameter outside its domain, which the error names.
         raise ArgumentError(
-            f"family at {named_node(names, node)}",
+            f"family at {_named_node(names, node)}",
             f"{error.argument} to be {error.expected}",
             error.came,
             error.next_step,
         ) from error
     except Exception as error:
         raise ArgumentError(
-            f"family at {named_node(names, node)}",
+            f"family at {_named_node(names, node)}",
             "a change",
             f"{type(error).__name__}: {error}",
             "Mend the family there.",
         ) from error
     if not isinstance(change, Change):
         raise ArgumentTypeError(
-            f"family at {named_node(names, node)}",
+            f"family at {_named_node(names, node)}",
             "a change",
             type(change).__name__,
             "Return what swap_prior or the like gives.",

@@ -51,8 +51,8 @@ class Gathered:
         found, start = [], 0
         for quantity in quantities:
             width = quantity.columns.shape[1]
-            room = np.empty((count, width, SERIES))
-            found.append(cls(quantity, slice(start, start + width), room, is_shift))
+            figures = np.empty((count, width, SERIES))
+            found.append(cls(quantity, slice(start, start + width), figures, is_shift))
             start += width
         return found
 

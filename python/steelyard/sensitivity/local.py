@@ -12,7 +12,7 @@ import numpy as np
 from steelyard import _core
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, finish, joined, moments, study
-from steelyard.answers.quantities import Quantity
+from steelyard.answers.quantities import Quantity, asked_for
 from steelyard.answers.reweigh import base_answer
 from steelyard.answers.tabulate import element_names
 from steelyard.arrays import Frozen, ReadOnly, in_unit
@@ -21,7 +21,6 @@ from steelyard.base.draws import Array
 from steelyard.base.priors import PriorTerm, stated_prior
 from steelyard.densities import Distribution
 from steelyard.errors import ArgumentError, PriorError
-from steelyard.sensitivity.sweep import asked_for
 from steelyard.table import Table
 
 __all__ = ["Local", "local"]

@@ -16,9 +16,9 @@ from steelyard.arrays import in_unit
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.sensitivity import plain_nodes
-from steelyard.verdicts import Finding, judge, shape_limit
+from steelyard.verdicts import Finding, judge
 from steelyard.weighing.series import relative_efficiency
-from steelyard.weighing.trust import _IDLE_TAIL
+from steelyard.weighing.trust import figure_findings
 from steelyard.weighing.weigh import Weights, base_weights, weigh_ratio
 
 __all__ = ["Columns", "Figures", "Study", "node_blocks", "own_weights", "weight_findings"]
@@ -178,13 +178,8 @@ def weight_findings(about: Array, base: Base) -> list[Finding]:
     shape, size, entropy, largest, tail, apart, share, lost = about[:, 1:9].T
     with np.errstate(divide="ignore"):
         divergence = np.log(count / entropy)
-    found = [
-        judge("weight_shape", shape, strained=shape_limit(count), spoken=~(tail < _IDLE_TAIL)),
-        judge("few_effective", size),
-        judge("few_effective_entropy", entropy),
-        judge("few_carry", largest),
-        judge("saturated_divergence", np.maximum(divergence, 0.0) / math.log(count)),
-    ]
+    divergence = np.maximum(divergence, 0.0) / math.log(count)
+    found = figure_findings(count, shape, (size, entropy), largest, divergence, tail)
     if base.draws.pooling is not None:
         found += [_of_every_node(f, len(about)) for f in base.draws.pooling.findings]
     if base.ordered:

@@ -23,7 +23,7 @@ from steelyard.sensitivity.bounds import weighed_by
 from steelyard.sensitivity.tilting import find_root
 from steelyard.weighing.series import relative_efficiency
 
-__all__ = ["LeastPrior", "PriorShape", "least_in_prior"]
+__all__ = ["LeastPrior", "PriorShape", "least_in_prior", "one_number_prior", "spread_and_size"]
 
 # Nodes at which the leverage is smoothed, and reach of the grid of the prior in posterior sds.
 _NODES = 400
@@ -86,10 +86,8 @@ def least_in_prior(base: Base, asked: Quantity, goal: float, parameter: str) -> 
     from one kernel smoothing on the prior's probability scale, reflected at its ends. The error
     of the divergence is a batch jackknife's.
     """
-    term = _term(base, parameter)
-    phi = (
-        term.value(base.draws)[:, 0] if term.value(base.draws).ndim > 1 else term.value(base.draws)
-    )
+    term = one_number_prior(base, parameter)
+    phi = term.value(base.draws)
     grid, cdf, density = _prior_grid(term, np.ascontiguousarray(phi), parameter)
     u = np.interp(phi, grid, cdf)
     f, v = asked.columns[:, 0], base_answer(base)._weights.linear
@@ -106,7 +104,7 @@ def least_in_prior(base: Base, asked: Quantity, goal: float, parameter: str) -> 
     )
 
 
-def _term(base: Base, parameter: str) -> PriorTerm:
+def one_number_prior(base: Base, parameter: str) -> PriorTerm:
     stated = stated_prior(base.prior, "prior_of")
     known_term(parameter, stated, "prior_of", "prior")
     term = stated[parameter].resolved(base.draws)
@@ -141,7 +139,7 @@ def _prior_grid(term: PriorTerm, phi: Array, parameter: str) -> tuple[Array, Arr
     grid = np.unique(grid[(grid >= low) & (grid <= high)])
     density = np.exp(term.density.log_density(grid))
     density = np.where(np.isfinite(density), density, 0.0)
-    pieces = np.diff(grid) * (density[1:] + density[:-1]) / 2
+    pieces = _trapezia(grid, density)
     total = float(pieces.sum())
     if not 0.99 < total < 1.01:
         raise ArgumentError(
@@ -153,11 +151,24 @@ def _prior_grid(term: PriorTerm, phi: Array, parameter: str) -> tuple[Array, Arr
     return grid, np.concatenate([[0.0], np.cumsum(pieces) / total]), density / total
 
 
-def _smooth(base: Base, u: Array, gap: Array, v: Array) -> _Leverage:
-    spread = math.sqrt(float(_core.weighted_mean(((u - v @ u) ** 2)[:, None], v)[0]))
+def _trapezia(x: Array, y: Array) -> Array:
+    """Areas under y between neighbours in x."""
+    return np.diff(x) * (y[1:] + y[:-1]) / 2
+
+
+def spread_and_size(base: Base, values: Array, v: Array) -> tuple[float, float]:
+    """Sd of values under weights v, and how many independent draws they are worth."""
+    square = (values - v @ values) ** 2
+    spread = math.sqrt(float(_core.weighted_mean(square[:, None], v)[0]))
     effective = 1 / float((v**2).sum())
     if base.ordered:
-        effective *= float(relative_efficiency((u - u.mean())[:, None], base.draws, True)[0])
+        centred = (values - values.mean())[:, None]
+        effective *= float(relative_efficiency(centred, base.draws, True)[0])
+    return spread, effective
+
+
+def _smooth(base: Base, u: Array, gap: Array, v: Array) -> _Leverage:
+    spread, effective = spread_and_size(base, u, v)
     width = 1.06 * spread * effective**-0.2
     inner = np.quantile(u, np.linspace(0, 1, _NODES // 2))
     nodes = np.unique(np.concatenate([np.linspace(0, 1, _NODES // 2), inner]))
@@ -193,7 +204,7 @@ def _divergence(nodes: Array, log_factor: Array) -> float:
     """``KL(p'‖p)`` on the probability scale, where p is uniform."""
 
     def over(values: Array) -> float:
-        return float((np.diff(nodes) * (values[1:] + values[:-1]) / 2).sum())
+        return float(_trapezia(nodes, values).sum())
 
     shifted = np.exp(log_factor - log_factor.max())
     constant = over(shifted)
@@ -240,5 +251,5 @@ def _shape(
     shown = (cdf > 5e-4) & (cdf < 1 - 5e-4)
     log_factor = eta * np.interp(cdf, leverage.nodes, leverage.at_nodes)
     implied = density * np.exp(log_factor - log_factor.max())
-    implied = implied / float((np.diff(grid) * (implied[1:] + implied[:-1]) / 2).sum())
+    implied = implied / float(_trapezia(grid, implied).sum())
     return PriorShape(parameter, grid[shown], density[shown], implied[shown])

@@ -5,16 +5,15 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass
-from html import escape
 from typing import Any
 
 import numpy as np
 
 from steelyard import _core
-from steelyard.answers.distances import _jensen_shannon, _marginal
+from steelyard.answers.distances import jensen_shannon, marginal_of
 from steelyard.answers.estimate import Estimate
 from steelyard.answers.estimating import Scale, Series, finish
-from steelyard.answers.quantities import Quantity
+from steelyard.answers.quantities import Quantity, asked_for
 from steelyard.answers.reweigh import base_answer, reweigh
 from steelyard.answers.tabulate import element_names
 from steelyard.arrays import Frozen, ReadOnly, in_unit
@@ -22,7 +21,6 @@ from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.changes import Change, power
 from steelyard.errors import ChangeError
-from steelyard.sensitivity.sweep import asked_for
 from steelyard.table import Table
 from steelyard.weighing.series import (
     chains_p_value,
@@ -90,7 +88,7 @@ class Pull(Frozen):
             columns[label] = [float(v) for v in estimate.value]
             errors[label] = [float(v) for v in estimate.error]
         levels = [
-            min((e.verdict[i].level for e in shown.values()), default="sound", key=_rank)
+            min((e.verdict[i].level for e in shown.values()), default="sound")
             for i in range(len(self.elements))
         ]
         columns["level"] = [str(level) for level in levels]
@@ -104,11 +102,7 @@ class Pull(Frozen):
         return str(self)
 
     def _repr_html_(self) -> str:
-        return self.table()._repr_html_() + f"<p>{escape('pulls from 0.05 on are counted')}</p>"
-
-
-def _rank(level: str) -> int:
-    return ("refit", "strained", "sound").index(str(level))
+        return self.table()._repr_html_() + f"<p>pulls from {LIMIT:g} on are counted</p>"
 
 
 def pull(base: Base, quantities: Any = None) -> Pull:
@@ -166,7 +160,7 @@ def _pull_of(
     z = np.zeros_like(columns)
     for scale in scales:
         for column in range(columns.shape[1]):
-            found, (one, zero), end = _jensen_shannon(scale, _marginal(scale, columns[:, column]))
+            found, (one, zero), end = jensen_shannon(scale, marginal_of(scale, columns[:, column]))
             value[column] += unit * found
             ends[column] += unit * end
             w, v = scale.weights.linear, scale.base_weights.linear

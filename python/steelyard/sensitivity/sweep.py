@@ -12,7 +12,7 @@ import numpy.typing as npt
 
 from steelyard.answers.bands import batch_edges, critical_value
 from steelyard.answers.estimate import Estimate
-from steelyard.answers.quantities import Quantity, labelled, read_quantity
+from steelyard.answers.quantities import Quantity, asked_for
 from steelyard.answers.tabulate import element_names
 from steelyard.arrays import Frozen, ReadOnly
 from steelyard.base import Base
@@ -35,7 +35,7 @@ from steelyard.verdicts import Finding, judge
 if TYPE_CHECKING:
     from steelyard.show.sweep_plots import SweepPlots
 
-__all__ = ["Sweep", "asked_for", "sweep"]
+__all__ = ["Sweep", "join_findings", "sweep"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -158,15 +158,6 @@ def _like(estimate: Estimate, lead: int) -> Quantity:
     return Quantity(estimate.label, values, estimate.dims[lead:], estimate.labels)
 
 
-def asked_for(quantities: Any, base: Base) -> dict[str, Quantity]:
-    """Quantities and events by label, also for one alone."""
-    several = labelled(quantities, base, events=True)
-    if several is not None:
-        return several
-    one = read_quantity(quantities, base, events=True)
-    return {one.label: one}
-
-
 def sweep(base: Base, family: Family, grid: Any, quantities: Any = None) -> Sweep:
     """Answers of a family of changes over a grid; see ``Fit.sweep``."""
     axes = read_grid(family, grid)
@@ -227,12 +218,12 @@ def join_findings(blocks: list[list[Finding]], widths: list[int]) -> list[Findin
     keys: dict[tuple[str, str], Finding] = {}
     for block in blocks:
         for finding in block:
-            keys.setdefault((finding.code, str(sorted(finding.words.items()))), finding)
+            keys.setdefault(finding.wording, finding)
     joined = []
     for key, first in keys.items():
         figures, spoken = [], []
         for block, width in zip(blocks, widths, strict=True):
-            here = [f for f in block if (f.code, str(sorted(f.words.items()))) == key]
+            here = [f for f in block if f.wording == key]
             figures.append(here[0].figure if here else np.full(width, np.nan))
             told = np.zeros(width, dtype=np.bool_)
             if here:

@@ -8,7 +8,7 @@ from dataclasses import dataclass, field
 import numpy as np
 import numpy.typing as npt
 
-from steelyard.answers.reweigh import _unknown_supports
+from steelyard.answers.reweigh import unknown_supports
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.base.priors import PriorTerm
@@ -16,18 +16,18 @@ from steelyard.base.ratios import refuse_bad_ratio
 from steelyard.changes import Change, Target, form_target
 from steelyard.changes.edits import SwapPrior
 from steelyard.changes.merging import PriorTarget
-from steelyard.changes.target import _prior_delta, _weighs
-from steelyard.densities import Distribution, Normal
+from steelyard.changes.target import has_weight, prior_delta
+from steelyard.densities import Distribution
 from steelyard.densities.cumulative import Elementwise
 from steelyard.densities.distribution import _quiet
 from steelyard.errors import SteelyardError
 from steelyard.verdicts import Finding, judge
 from steelyard.weighing.preflight import (
-    _distance_from_mean,
-    _gamma_or_beta_widened,
-    _root_covariance,
-    _tail_precision,
+    distance_from_mean,
+    gamma_or_beta_widened,
+    precision_lost,
     preflight,
+    root_covariance,
 )
 from steelyard.weighing.supports import support_findings
 
@@ -132,10 +132,9 @@ class Targets:
         for edit in change.edits:
             if type(edit) is not SwapPrior or not isinstance(edit.density, Distribution):
                 return None
-            label = edit.key if isinstance(edit.key, str) else ", ".join(map(str, edit.key))
-            if label not in stated or not stated[label].is_distribution:
+            if edit.label not in stated or not stated[edit.label].is_distribution:
                 return None
-            found.append((label, edit.density))
+            found.append((edit.label, edit.density))
         if len(found) > 1 and len({label for label, _ in found}) < len(found):
             return None
         return tuple(found)
@@ -162,19 +161,12 @@ class Targets:
     def _described(self, term: PriorTerm, density: Distribution, delta: Array | None) -> _Swapped:
         base = self.base
         if delta is not None and base.log_weights is not None:
-            delta = np.where(_weighs(base), delta, 0.0)
+            delta = np.where(has_weight(base), delta, 0.0)
         one = PriorTarget(term, PriorTerm(term.key, density))
-        widened = _gamma_or_beta_widened(base, {term.label: one})
+        widened = gamma_or_beta_widened(base, {term.label: one})
         findings = (*self._gap(one, density), *widened)
-        if not isinstance(term.density, Normal):
-            return _Swapped(delta, findings, None)
-        about = _distance_from_mean(one, base)
-        if about is None:
-            return _Swapped(delta, findings, None)
-        precisions = [_tail_precision(d, about, base) for d in (term.density, density)]
-        if precisions[0] is None or precisions[1] is None:
-            return _Swapped(delta, findings, None)
-        return _Swapped(delta, findings, (precisions[0] - precisions[1]).reshape(-1))
+        lost = precision_lost(one, base)
+        return _Swapped(delta, findings, None if lost is None else lost[1])
 
     def _gap(self, one: PriorTarget, density: Distribution) -> tuple[Finding, ...]:
         """Findings about supports, which depend on the new density's limits alone."""
@@ -196,7 +188,7 @@ class Targets:
             if one is None:
                 continue
             if isinstance(one, Target):
-                found = (*preflight(self.base, one), *_unknown_supports(one))
+                found = (*preflight(self.base, one), *unknown_supports(one))
                 told += [(place, finding) for finding in found]
                 continue
             told += [(place, f) for swap in one for f in self._swaps[swap].findings]
@@ -238,10 +230,10 @@ class Targets:
             values = []
             for label in labels:
                 term = base.prior[label]  # type: ignore[index]
-                about = _distance_from_mean(PriorTarget(term, term), base)
+                about = distance_from_mean(PriorTarget(term, term), base)
                 if about is not None:
                     values.append(about.reshape(base.draws.size, -1))
-            self._roots[labels] = _root_covariance(np.concatenate(values, axis=1), base)
+            self._roots[labels] = root_covariance(np.concatenate(values, axis=1), base)
         return self._roots[labels]
 
 
@@ -252,7 +244,7 @@ def _label(swap: Swap) -> str:
 def _alone(base: Base, term: PriorTerm, density: Distribution) -> Array | None:
     """One Δ; NaN stands for what `form_target` refuses."""
     try:
-        return _prior_delta(PriorTarget(term, PriorTerm(term.key, density)), base)[0]
+        return prior_delta(PriorTarget(term, PriorTerm(term.key, density)), base)[0]
     except ValueError:
         return np.array([np.nan])
 
@@ -268,7 +260,7 @@ def _together(
     if value.ndim != 1 or not all(isinstance(v, float) for row in rows for v in row):
         return None
     old = term.log_density_checked(base.draws)
-    if not np.isfinite(old[_weighs(base)]).all():
+    if not np.isfinite(old[has_weight(base)]).all():
         return None
     hyper = [np.array(column)[:, None] for column in zip(*rows, strict=True)]
     x = np.broadcast_to(np.ascontiguousarray(value), (len(densities), len(value)))
@@ -287,7 +279,7 @@ def _spoken(told: Sequence[tuple[int, Finding]], count: int) -> list[Finding]:
     figures: dict[tuple[str, str], Array] = {}
     spoken: dict[tuple[str, str], npt.NDArray[np.bool_]] = {}
     for place, finding in told:
-        key = (finding.code, str(sorted(finding.words.items())))
+        key = finding.wording
         if key not in firsts:
             firsts[key] = finding
             figures[key] = np.full(count, np.nan)

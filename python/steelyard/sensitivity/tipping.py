@@ -130,7 +130,7 @@ def tipping_point(
     held = remembering(base)
     own = own_weights(held)
     path = Path(held, family, first_name(family), event, mask, level, limits, own)
-    grid = path_grid(path)
+    grid = _path_grid(path)
     origin = _read_start(start, limits)
     grid = sorted({*grid, origin}) if origin is not None else grid
     places = path.visit(grid)
@@ -165,7 +165,7 @@ def _read_start(start: Any, limits: tuple[float, float]) -> float | None:
     return float(start)
 
 
-def path_grid(path: Path) -> list[float]:
+def _path_grid(path: Path) -> list[float]:
     """Values at even steps over the whole range."""
     low, high = (path.step(v) for v in path.between)
     inner = [path.value(s) for s in np.linspace(low, high, _GRID)]

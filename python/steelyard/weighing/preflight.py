@@ -24,7 +24,13 @@ from steelyard.weighing.series import variance_and_efficiency
 from steelyard.weighing.supports import support_findings
 from steelyard.weighing.weigh import base_weights
 
-__all__ = ["preflight"]
+__all__ = [
+    "distance_from_mean",
+    "gamma_or_beta_widened",
+    "precision_lost",
+    "preflight",
+    "root_covariance",
+]
 
 # Above this many parameters the covariance of the draws is too costly to be worth it.
 _MOST_PARAMETERS = 500
@@ -44,7 +50,7 @@ def _algebra(base: Base, target: Target) -> list[Finding]:
     if exact is not None:
         return exact
     findings = _normal_widened(base, target.prior)
-    findings += _gamma_or_beta_widened(base, target.prior)
+    findings += gamma_or_beta_widened(base, target.prior)
     if loss is not None:
         # How far the data dominate is not known, so that this figure is an upper one: it never
         # condemns an answer by itself.
@@ -118,7 +124,7 @@ def _normal_throughout(base: Base, target: Target, loss: Loss | None) -> list[Fi
     if named != set(base.parameters):
         return None
     stacked = np.concatenate(values, axis=1)
-    root, unit = _root_covariance(stacked, base)
+    root, unit = root_covariance(stacked, base)
     if root is None:
         return None
     p0, p1 = np.concatenate(before) * unit**2, np.concatenate(after) * unit**2
@@ -153,21 +159,17 @@ def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Findi
     """
     values, loosened, labels = [], [], []
     for label, prior in priors.items():
-        about = _distance_from_mean(prior, base)
-        if about is None:
+        found = precision_lost(prior, base)
+        if found is None:
             continue
-        before = _tail_precision(prior.base.density, about, base)
-        after = _tail_precision(prior.density.density, about, base)
-        if before is None or after is None:
-            continue
-        values.append(about.reshape(base.draws.size, -1))
-        loosened.append((before - prior.factor * after).reshape(-1))
+        values.append(found[0].reshape(base.draws.size, -1))
+        loosened.append(found[1])
         labels.append(label)
     if not values or not np.any(np.concatenate(loosened) > 0):
         return []
     # One alone needs no copy.
     together = values[0] if len(values) == 1 else np.concatenate(values, axis=1)
-    root, unit = _root_covariance(together, base)
+    root, unit = root_covariance(together, base)
     if root is None:
         return []
     fall = root.T @ ((np.concatenate(loosened) * unit**2)[:, None] * root)
@@ -175,7 +177,19 @@ def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Findi
     return [judge("prior_widened", figure, term=", ".join(labels), posterior="normal")]
 
 
-def _distance_from_mean(prior: PriorTarget, base: Base) -> Array | None:
+def precision_lost(prior: PriorTarget, base: Base) -> tuple[Array, Array] | None:
+    """What a normal prior is about, and the tail precision that it loses; None where not known."""
+    about = distance_from_mean(prior, base)
+    if about is None:
+        return None
+    before = _tail_precision(prior.base.density, about, base)
+    after = _tail_precision(prior.density.density, about, base)
+    if before is None or after is None:
+        return None
+    return about, (before - prior.factor * after).reshape(-1)
+
+
+def distance_from_mean(prior: PriorTarget, base: Base) -> Array | None:
     """
     What a normal prior is about, without a mean that is itself a parameter.
 
@@ -196,7 +210,7 @@ def _distance_from_mean(prior: PriorTarget, base: Base) -> Array | None:
     return np.asarray(value - mean.reshape(mean.shape + (1,) * (value.ndim - mean.ndim)))
 
 
-def _root_covariance(values: Array, base: Base) -> tuple[Array | None, Array]:
+def root_covariance(values: Array, base: Base) -> tuple[Array | None, Array]:
     """
     Root of the covariance of the draws in units of their sds, and these; None if not estimable.
 
@@ -225,7 +239,7 @@ def _root_covariance(values: Array, base: Base) -> tuple[Array | None, Array]:
     return vectors * np.sqrt(np.maximum(eigenvalues, 0.0) / unbiased), natural
 
 
-def _gamma_or_beta_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:
+def gamma_or_beta_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:
     """
     The same for gamma and beta priors, whose posterior is matched by its mean and variance.
 

@@ -16,7 +16,7 @@ from steelyard.verdicts import Finding, judge, shape_limit
 from steelyard.weighing.series import chains_p_value, relative_efficiency
 from steelyard.weighing.weigh import Weights
 
-__all__ = ["excursions", "shared_findings", "tail_share", "weight_findings"]
+__all__ = ["excursions", "figure_findings", "shared_findings", "tail_share", "weight_findings"]
 
 # Positions of the largest weights, lightest first, and the next largest weight.
 Tail = tuple[npt.NDArray[np.int64], float]
@@ -32,19 +32,41 @@ def weight_findings(weights: Weights, draws: Draws, ordered: bool) -> Iterator[F
     varies = weights.raw_size < count or np.ptp(raw) > 0
     # One search for the largest weights serves both that look at them.
     tail = _core.largest(raw, _tail_length(count, weights.efficiency))
-    yield judge(
-        "weight_shape",
-        weights.tail_shape,
-        strained=shape_limit(count),
-        spoken=np.asarray(not tail_share(raw, weights.raw_size, tail) < _IDLE_TAIL),
-    )
-    yield judge("few_effective", weights.effective_size)
-    yield judge("few_effective_entropy", weights.entropy_size)
-    yield judge("few_carry", weights.largest_share)
     divergence = math.log(count / weights.entropy_size) if weights.entropy_size > 0 else math.inf
-    yield judge("saturated_divergence", max(divergence, 0.0) / math.log(count))
+    yield from figure_findings(
+        count,
+        weights.tail_shape,
+        (weights.effective_size, weights.entropy_size),
+        weights.largest_share,
+        max(divergence, 0.0) / math.log(count),
+        tail_share(raw, weights.raw_size, tail),
+    )
     if ordered and varies:
         yield judge("autocorrelated_tail", excursions(raw, draws, weights.efficiency, tail))
+
+
+def figure_findings(
+    count: int,
+    tail_shape: npt.ArrayLike,
+    sizes: tuple[npt.ArrayLike, npt.ArrayLike],
+    largest_share: npt.ArrayLike,
+    divergence: npt.ArrayLike,
+    tail: npt.ArrayLike | None = None,
+) -> list[Finding]:
+    """
+    Figures of weights held against their rules, for one answer or for many at once.
+
+    `sizes` are the effective and the entropy size, `divergence` is a share of the log of `count`;
+    `tail` is the `tail_share`, without which every tail is judged by its shape.
+    """
+    spoken = None if tail is None else np.asarray(~(np.asarray(tail) < _IDLE_TAIL))
+    return [
+        judge("weight_shape", tail_shape, strained=shape_limit(count), spoken=spoken),
+        judge("few_effective", sizes[0]),
+        judge("few_effective_entropy", sizes[1]),
+        judge("few_carry", largest_share),
+        judge("saturated_divergence", divergence),
+    ]
 
 
 def _tail_length(count: int, efficiency: float) -> int:
