@@ -183,7 +183,7 @@ fn add(a: &[f64; LANES], sum: &mut [f64; LANES]) {
     }
 }
 
-/// `Σ w f`, or `(Σ w, Σ w f, Σ w²)` where they are wanted together.
+/// `Σ w`, `Σ w f` and `Σ w²`.
 pub fn weight_moments(f: &[f64], w: &[f64]) -> [f64; 3] {
     dispatch(WeightMoments { f, w })
 }
