@@ -52,7 +52,7 @@ impl Chains {
     }
 
     /// Whether two draws, the first below the second, belong to different chains.
-    pub fn parts(&self, first: u32, second: u32) -> bool {
+    pub fn separate(&self, first: u32, second: u32) -> bool {
         let chain = |draw: u32| {
             self.whole
                 .partition_point(|range| range.end <= draw as usize)

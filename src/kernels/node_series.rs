@@ -298,6 +298,7 @@ impl Work for BatchSums<'_> {
     }
 }
 
+/// As [`super::vector::tree`], with which, here and in [`super::spectrum`], a node took 7 % longer.
 #[inline(always)]
 fn tree(mut lanes: [f64; LANES]) -> f64 {
     for half in [4, 2, 1] {

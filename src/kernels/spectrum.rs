@@ -277,6 +277,7 @@ impl Work for Products<'_> {
     }
 }
 
+/// As [`super::vector::tree`], with which, here and in [`super::node_series`], a node took 7 % longer.
 #[inline(always)]
 fn tree(mut lanes: [f64; LANES]) -> f64 {
     for half in [8, 4, 2, 1] {
