@@ -22,7 +22,6 @@ __all__ = [
     "influence",
     "largest",
     "largest_share",
-    "ln_gamma",
     "log_beta",
     "log_density",
     "log_normal_cdf",
@@ -120,7 +119,6 @@ def f_tail(
 ) -> npt.NDArray[np.float64]: ...
 def normal_cdf(x: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
 def normal_quantile(p: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
-def ln_gamma(x: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]: ...
 def log_density(
     family: str,
     x: npt.NDArray[np.float64],

@@ -7,10 +7,11 @@ use pyo3::prelude::*;
 
 use super::arrays::vector;
 use super::errors::detached;
+use super::special::each;
 use crate::kernels::densities::hyper::Hyper;
 use crate::kernels::densities::{Kind, incomplete_beta, incomplete_gamma, normal_tail, stirling};
 use crate::kernels::error::KernelError;
-use crate::kernels::ordered::{map_slice, map_tasks};
+use crate::kernels::ordered::map_tasks;
 
 /// Writes the log density of `family` at every `x` into `out`, both contiguous, `(n,)`.
 ///
@@ -46,7 +47,7 @@ pub fn digamma<'py>(
     py: Python<'py>,
     x: PyReadonlyArray1<'py, f64>,
 ) -> PyResult<Bound<'py, PyArray1<f64>>> {
-    each(py, x, stirling::digamma)
+    each(py, "x", &x, stirling::digamma)
 }
 
 /// Log of the standard normal distribution function at every `x`.
@@ -55,7 +56,7 @@ pub fn log_normal_cdf<'py>(
     py: Python<'py>,
     x: PyReadonlyArray1<'py, f64>,
 ) -> PyResult<Bound<'py, PyArray1<f64>>> {
-    each(py, x, normal_tail::log_normal_cdf)
+    each(py, "x", &x, normal_tail::log_normal_cdf)
 }
 
 /// Log of the beta function at every pair: `(1, n)`.
@@ -109,16 +110,6 @@ pub fn skew_normal_tails<'py>(
         let (lower, upper) = normal_tail::skew_normal_tails(z, slant);
         [lower, upper]
     })
-}
-
-fn each<'py>(
-    py: Python<'py>,
-    x: PyReadonlyArray1<'py, f64>,
-    function: fn(f64) -> f64,
-) -> PyResult<Bound<'py, PyArray1<f64>>> {
-    let entries = vector("x", &x)?;
-    let values = detached(py, |interrupt| map_slice(&entries, interrupt, function))?;
-    Ok(values.into_pyarray(py))
 }
 
 /// A function of `N` numbers with `M` results, at every entry of arrays of equal length: `(M, n)`.

@@ -1,12 +1,14 @@
 //! Means.
 
-use ndarray::Array2;
+use ndarray::{Array2, ArrayView2};
 use numpy::{IntoPyArray, PyArray1, PyArray2, PyReadonlyArray1, PyReadonlyArray2};
 use pyo3::prelude::*;
 
 use super::arrays::{matrix, vector};
 use super::errors::detached;
 use crate::kernels::columns::map_columns;
+use crate::kernels::error::KernelError;
+use crate::kernels::ordered::Interrupt;
 use crate::kernels::{mean, moments};
 
 /// Mean square about the mean of every column of `z`, `(n, k)`: `(k,)`.
@@ -42,9 +44,7 @@ pub fn weighted_mean<'py>(
     f: PyReadonlyArray2<'py, f64>,
     w: PyReadonlyArray1<'py, f64>,
 ) -> PyResult<Bound<'py, PyArray1<f64>>> {
-    let f = matrix("f", &f)?;
-    let w = vector("w", &w)?;
-    let means = detached(py, |interrupt| moments::weighted_means(f, &w, interrupt))?;
+    let means = weighted(py, &f, &w, moments::weighted_means)?;
     Ok(means.into_pyarray(py))
 }
 
@@ -55,9 +55,7 @@ pub fn weighted_moments<'py>(
     f: PyReadonlyArray2<'py, f64>,
     w: PyReadonlyArray1<'py, f64>,
 ) -> PyResult<Bound<'py, PyArray2<f64>>> {
-    let f = matrix("f", &f)?;
-    let w = vector("w", &w)?;
-    let (means, squares) = detached(py, |interrupt| moments::weighted_moments(f, &w, interrupt))?;
+    let (means, squares) = weighted(py, &f, &w, moments::weighted_moments)?;
     let out = Array2::from_shape_fn((2, means.len()), |(moment, column)| {
         if moment == 0 {
             means[column]
@@ -75,8 +73,16 @@ pub fn weighted_covariance<'py>(
     f: PyReadonlyArray2<'py, f64>,
     w: PyReadonlyArray1<'py, f64>,
 ) -> PyResult<Bound<'py, PyArray2<f64>>> {
-    let f = matrix("f", &f)?;
-    let w = vector("w", &w)?;
-    let out = detached(py, |interrupt| moments::covariance(f, &w, interrupt))?;
+    let out = weighted(py, &f, &w, moments::covariance)?;
     Ok(out.into_pyarray(py))
+}
+
+fn weighted<'py, T: Send>(
+    py: Python<'py>,
+    f: &PyReadonlyArray2<'py, f64>,
+    w: &PyReadonlyArray1<'py, f64>,
+    kernel: impl Fn(ArrayView2<'_, f64>, &[f64], &Interrupt<'_>) -> Result<T, KernelError> + Sync,
+) -> PyResult<T> {
+    let (f, w) = (matrix("f", f)?, vector("w", w)?);
+    detached(py, |interrupt| kernel(f, &w, interrupt))
 }

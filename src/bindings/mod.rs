@@ -75,7 +75,7 @@ mod _core {
     #[pymodule_export]
     use super::smooth::{smooth, tail_shape};
     #[pymodule_export]
-    use super::special::{ln_gamma, normal_cdf, normal_quantile};
+    use super::special::{normal_cdf, normal_quantile};
     #[pymodule_export]
     use super::study::study;
     #[pymodule_export]

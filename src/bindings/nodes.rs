@@ -1,6 +1,6 @@
 //! Nodes: many targets over the same draws.
 
-use ndarray::{Array2, ArrayView2, ArrayViewMut2, Axis};
+use ndarray::{Array2, ArrayView2, ArrayViewMut2, Axis, CowArray, Ix2};
 use numpy::{IntoPyArray, PyArray2, PyReadonlyArray1, PyReadonlyArray2, PyReadwriteArray2};
 use pyo3::prelude::*;
 
@@ -50,16 +50,13 @@ pub fn study_nodes<'py>(
         expect_shape("weights", ratios.shape(), weights.shape())?;
     }
     let (columns, own) = (columns.as_standard_layout(), own.as_standard_layout());
-    let rows = |array: &'_ ndarray::CowArray<'_, f64, ndarray::Ix2>| -> Vec<Vec<f64>> {
-        array.outer_iter().map(|row| row.to_vec()).collect()
-    };
     let (columns, own) = (rows(&columns), rows(&own));
     let batches = long_run::chains(&vector("batches", &batches)?, draws, false)?;
     let common = Common {
-        columns: columns.iter().map(Vec::as_slice).collect(),
+        columns,
         events: events.to_vec(),
-        own: &own[0],
-        own_raw: &own[1],
+        own: own[0],
+        own_raw: own[1],
         equal_base,
         chains: Chains::new(&vector("starts", &starts)?, draws)?,
         ordered,
@@ -68,6 +65,14 @@ pub fn study_nodes<'py>(
     };
     let figures = detached(py, |interrupt| each(ratios, &common, weights, interrupt))?;
     Ok(figures.into_pyarray(py))
+}
+
+/// The rows of an array in C order.
+fn rows<'a>(array: &'a CowArray<'_, f64, Ix2>) -> Vec<&'a [f64]> {
+    array
+        .outer_iter()
+        .map(|row| row.to_slice().unwrap_or_default())
+        .collect()
 }
 
 fn each(

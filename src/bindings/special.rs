@@ -26,16 +26,8 @@ pub fn normal_quantile<'py>(
     each(py, "p", &p, special::normal_quantile)
 }
 
-/// `log Γ` at every `x`.
-#[pyfunction]
-pub fn ln_gamma<'py>(
-    py: Python<'py>,
-    x: PyReadonlyArray1<'py, f64>,
-) -> PyResult<Bound<'py, PyArray1<f64>>> {
-    each(py, "x", &x, special::ln_gamma)
-}
-
-fn each<'py>(
+/// `function` at every entry of `array`.
+pub(super) fn each<'py>(
     py: Python<'py>,
     argument: &'static str,
     array: &PyReadonlyArray1<'py, f64>,

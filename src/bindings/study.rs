@@ -11,12 +11,14 @@ use crate::kernels::columns::{expect_shape, map_columns};
 use crate::kernels::long_run;
 use crate::kernels::study::{Study, Weighted, study as study_of};
 
+/// Figures of columns, and of their chains.
+type Figures<'py> = (Bound<'py, PyArray2<f64>>, Bound<'py, PyArray3<f64>>);
+
 /// Spread, long-run variance, efficiency and tail shape on raw weights, efficiency of the draws
 /// themselves, contributions and largest deviation of every column of `f`, `(n, k)`, about its
 /// entry of `centre`, `(k,)`: `(7, k)`; and its chains, as `chain_means` tells them.
 #[pyfunction]
 #[pyo3(signature = (f, centre, w, raw, starts))]
-#[allow(clippy::type_complexity)]
 pub fn study<'py>(
     py: Python<'py>,
     f: PyReadonlyArray2<'py, f64>,
@@ -24,7 +26,7 @@ pub fn study<'py>(
     w: PyReadonlyArray1<'py, f64>,
     raw: PyReadonlyArray1<'py, f64>,
     starts: PyReadonlyArray1<'py, i64>,
-) -> PyResult<(Bound<'py, PyArray2<f64>>, Bound<'py, PyArray3<f64>>)> {
+) -> PyResult<Figures<'py>> {
     let f = matrix("f", &f)?;
     let centre = vector("centre", &centre)?;
     let (w, raw) = (vector("w", &w)?, vector("raw", &raw)?);

@@ -12,14 +12,14 @@ use super::ordered::Interrupt;
 use super::spectrum::{self, Spread};
 
 /// Shorter chains, or chains of fewer effective draws, know too little of their own errors.
-const SHORTEST: usize = 50;
-const FEWEST: f64 = 20.0;
+pub(super) const SHORTEST: usize = 50;
+pub(super) const FEWEST: f64 = 20.0;
 
 /// A spectral estimate from `n` effective draws varies like a chi-square of about a third as many.
-const FREEDOM: f64 = 3.0;
+pub(super) const FREEDOM: f64 = 3.0;
 
 /// From this many chains on, chains taken as independent units estimate a variance well enough.
-const MANY: usize = 20;
+pub(super) const MANY: usize = 20;
 
 /// Chains, their halves, and the halves of each by itself.
 pub struct Chains {
@@ -52,7 +52,7 @@ impl Chains {
     }
 
     /// Whether two draws, the first below the second, belong to different chains.
-    pub fn parts(&self, first: u32, second: u32) -> bool {
+    pub fn separate(&self, first: u32, second: u32) -> bool {
         let chain = |draw: u32| {
             self.whole
                 .partition_point(|range| range.end <= draw as usize)

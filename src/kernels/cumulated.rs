@@ -3,7 +3,7 @@
 
 use super::error::KernelError;
 use super::quantile::Compensated;
-use super::vector::{Arithmetic, Work, dispatch};
+use super::vector::{Arithmetic, Work, dispatch, tree};
 
 /// Weights whose sum is formed before their running sums.
 const BLOCK: usize = 64;
@@ -298,15 +298,10 @@ impl Work for BlockSum<'_> {
             *sum += weight * self.scale;
             *most = weight.to_bits().max(*most);
         }
-        for half in [8, 4, 2, 1] {
-            for lane in 0..half {
-                sum[lane] += sum[lane + half];
-            }
-        }
         // Bits of numbers that are not negative rise with them; all others lie above.
         let most = most.iter().copied().fold(0, u64::max);
         Found {
-            sum: sum[0],
+            sum: tree(sum),
             most: f64::from_bits(most),
         }
     }

@@ -1,8 +1,8 @@
 //! The loops over the halves of chains of [`super::deletion_lags`].
 
 use super::deletion_lags::{Layout, TOGETHER};
-use super::deletion_loops::{LANES, plus, tree};
-use super::vector::{Arithmetic, Work};
+use super::deletion_loops::{LANES, plus};
+use super::vector::{Arithmetic, Work, tree};
 
 /// Writes `z − z̄_m` of every half into its place.
 pub(super) struct Centre<'a> {

@@ -7,11 +7,12 @@
 
 use std::ops::Range;
 
+use super::chains::{FREEDOM, MANY, SHORTEST};
 use super::deletion_lag_loops::{Centre, Products};
 use super::deletion_loops::LANES;
-use super::deletion_welch::{FREEDOM, SHORTEST, welch};
+use super::deletion_welch::welch;
 use super::error::KernelError;
-use super::long_run::long_run_variance;
+use super::long_run::{efficiency, long_run_variance};
 use super::ordered::Interrupt;
 use super::vector::dispatch;
 
@@ -26,9 +27,6 @@ const GAP: usize = TOGETHER * BATCHES + LANES;
 
 /// Shorter halves are left to [`long_run_variance`].
 const SHORTEST_HALF: usize = 16;
-
-/// From this many chains on, chains as independent units estimate a variance well enough.
-const MANY_CHAINS: usize = 20;
 
 /// Chains and their halves.
 pub struct Layout {
@@ -169,7 +167,7 @@ impl<'a> Lagged<'a> {
             None => long_run_variance(z, &self.layout.halves, interrupt)?,
         };
         let chains = self.layout.chains.len();
-        if chains < MANY_CHAINS {
+        if chains < MANY {
             return Ok(found);
         }
         let centre = self.mean(0..self.layout.halves.len());
@@ -241,15 +239,13 @@ impl<'a> Lagged<'a> {
         long_run_variance(&z[range], &halves, interrupt)
     }
 
-    /// `min(1, var/LRV)`; 1 for a constant.
+    /// As [`super::long_run::efficiency`].
     ///
     /// # Errors
     /// As [`Self::long_run`].
     pub fn efficiency(&mut self, z: &[f64], interrupt: &Interrupt<'_>) -> Result<f64, KernelError> {
         let long_run = self.long_run(z, interrupt)?;
-        let ratio = self.mean_square() / long_run;
-        let known = long_run > 0.0 && ratio.is_finite() && ratio > 0.0;
-        Ok(if known { ratio.min(1.0) } else { 1.0 })
+        Ok(efficiency([self.mean_square(), long_run]))
     }
 
     /// Whether the chains agree about the mean of the series `z` of positive numbers: a p-value by

@@ -2,7 +2,7 @@
 //! of 4096 draws.
 
 use super::vector::exp::exp;
-use super::vector::{Arithmetic, Work};
+use super::vector::{Arithmetic, Work, tree};
 use super::weight_sums::larger;
 
 pub(super) const LANES: usize = 16;
@@ -257,14 +257,4 @@ impl Work for Powers<'_> {
 #[inline(always)]
 pub(super) fn plus(a: [f64; LANES], b: [f64; LANES]) -> [f64; LANES] {
     std::array::from_fn(|lane| a[lane] + b[lane])
-}
-
-#[inline(always)]
-pub(super) fn tree(mut lanes: [f64; LANES]) -> f64 {
-    for half in [8, 4, 2, 1] {
-        for lane in 0..half {
-            lanes[lane] += lanes[lane + half];
-        }
-    }
-    lanes[0]
 }

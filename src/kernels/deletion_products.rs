@@ -1,8 +1,8 @@
 //! Products of weights with powers of quantities, over a few hundred draws at a time.
 
-use super::deletion_loops::{LANES as SUM_LANES, tree};
+use super::deletion_loops::LANES as SUM_LANES;
 use super::deletion_shift::{DRAWS, LANES, TOGETHER, WIDE};
-use super::vector::{Arithmetic, Work};
+use super::vector::{Arithmetic, Work, tree};
 
 /// Some draws of the weights of a block of columns, and sums over all draws so far.
 pub(super) struct Block {

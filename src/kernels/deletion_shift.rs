@@ -171,9 +171,7 @@ impl Panels {
         let square = target - both + m * m * self.own[quantity];
         (m, square.max(0.0) / (self.draws as f64).powi(2))
     }
-}
 
-impl Panels {
     /// The squares of one column, series by series.
     fn sum_anew(&self, x: &[f64], found: &mut [(f64, f64)]) {
         let panels = self.first.chunks(self.draws);

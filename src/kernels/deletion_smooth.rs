@@ -6,7 +6,8 @@ use super::deletion_survey::maximum_of;
 use super::error::KernelError;
 use super::largest::{Ranked, Spread};
 use super::ordered::Interrupt;
-use super::tail::{Found, Room, Scale, tail_length, with_room};
+use super::smooth::tail_of;
+use super::tail::{Found, with_room};
 use super::vector::dispatch;
 use super::vector::exp::exp_slice;
 
@@ -36,7 +37,7 @@ impl Work<'_> {
         self.tail.clear();
         let (weights, tail, ratios) = (&mut self.weights, &mut self.tail, &mut self.ratios);
         let shape = with_room(|room| {
-            let fitted = tail_of(x, spread, efficiency, room);
+            let fitted = tail_of(x, 0.0, spread, efficiency, room);
             let Found::Fitted { cutoff, fit } = fitted else {
                 return fitted.shape();
             };
@@ -90,20 +91,4 @@ fn exponentials(ranked: &[Ranked], logs: &[f64], into: &mut Vec<f64>) -> f64 {
     ratios.iter_mut().for_each(|ratio| *ratio -= unit);
     exp_slice(into);
     unit
-}
-
-/// The tail of log weights whose largest is 0, as [`super::smooth::smooth`] finds it.
-fn tail_of(x: &[f64], spread: Option<Spread>, efficiency: f64, room: &mut Room) -> Found {
-    let length = tail_length(x.len(), efficiency);
-    let tail = room.fit(x, length, Scale::Log(0.0), spread);
-    match tail {
-        Found::Fitted { cutoff, .. } if cutoff > -700.0 => return tail,
-        Found::Constant => return tail,
-        _ => {}
-    }
-    let positive = x.iter().filter(|&&x| x.exp() > 0.0).count();
-    if positive > length {
-        return tail;
-    }
-    room.fit(x, positive.saturating_sub(1), Scale::Log(0.0), None)
 }

@@ -1,7 +1,7 @@
 //! What the log ratios of one column look like.
 
-use super::deletion_loops::{LANES, tree};
-use super::vector::{Arithmetic, Work, dispatch};
+use super::deletion_loops::LANES;
+use super::vector::{Arithmetic, Work, dispatch, tree};
 use super::weight_sums::larger;
 
 /// Whether all entries are finite.

@@ -1,13 +1,7 @@
 //! Whether chains agree, by Welch's test (1951, Biometrika 38).
 
+use super::chains::{FEWEST, FREEDOM};
 use super::f_tail::f_tail;
-
-/// Shorter chains, or chains of fewer effective draws, know too little of their own errors.
-pub(super) const SHORTEST: usize = 50;
-const FEWEST: f64 = 20.0;
-
-/// A spectral estimate from n effective draws varies like a chi-square of about a third as many.
-pub(super) const FREEDOM: f64 = 3.0;
 
 /// The p-value of means, their variances and degrees of freedom.
 pub(super) fn welch(chains: &[(f64, f64, f64)]) -> f64 {

@@ -1,13 +1,11 @@
 //! The largest values of a column in order, without sorting the column.
 
+use super::sorting::distribute;
 use super::vector::select::at_least;
-use super::vector::{Arithmetic, Work, dispatch};
+use super::vector::{Arithmetic, TWO_52, Work, dispatch};
 
 /// Rank at which the cut of the sample is aimed: its count varies by a fifth.
 const SAMPLE_RANK: usize = 24;
-
-/// Most values of a bucket that are sorted by insertion.
-const MOST_INSERTED: u32 = 32;
 
 /// How fast the habit of columns follows the last one.
 const FOLLOW: f64 = 0.125;
@@ -107,46 +105,17 @@ impl Finder {
             count,
             buckets: &mut self.buckets,
         });
-        if !spread || !self.distribute(count) {
-            self.ranked.sort_by(|a, b| a.0.total_cmp(&b.0));
-        }
-    }
-
-    /// Whether no bucket was too full, and then the values are sorted.
-    fn distribute(&mut self, count: usize) -> bool {
         let (starts, sorted) = (&mut self.starts, &mut self.spare);
         starts.clear();
         starts.resize(count + 1, 0);
-        for &bucket in &self.buckets {
-            starts[bucket as usize % count + 1] += 1;
-        }
-        let (mut start, mut most) = (0, 0);
-        for place in starts.iter_mut() {
-            most = most.max(*place);
-            start += *place;
-            *place = start;
-        }
-        if most > MOST_INSERTED {
-            return false;
-        }
         sorted.clear();
         sorted.resize(self.ranked.len(), (0.0, 0));
-        for (&one, &bucket) in self.ranked.iter().zip(&self.buckets) {
-            let start = &mut starts[bucket as usize % count];
-            sorted[*start as usize] = one;
-            *start += 1;
+        let ranked = self.ranked.iter().copied();
+        if spread && distribute(ranked, &self.buckets, starts, sorted) {
+            std::mem::swap(&mut self.ranked, sorted);
+        } else {
+            self.ranked.sort_by(|a, b| a.0.total_cmp(&b.0));
         }
-        for end in 1..sorted.len() {
-            let one = sorted[end];
-            let mut place = end;
-            while place > 0 && sorted[place - 1].0 > one.0 {
-                sorted[place] = sorted[place - 1];
-                place -= 1;
-            }
-            sorted[place] = one;
-        }
-        std::mem::swap(&mut self.ranked, sorted);
-        true
     }
 }
 
@@ -262,8 +231,7 @@ impl Work for Buckets<'_> {
             return false;
         }
         for (bucket, &(value, _)) in self.buckets.iter_mut().zip(self.ranked) {
-            // An integer below 2^52 added to it is in the last bits.
-            *bucket = ((value - low) * scale + 4_503_599_627_370_496.0).to_bits() as u32;
+            *bucket = ((value - low) * scale + TWO_52).to_bits() as u32;
         }
         true
     }

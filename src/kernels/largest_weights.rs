@@ -65,7 +65,7 @@ impl LargestWeights {
             return f64::INFINITY;
         }
         let gap = ((1.0 / efficiency) as u32).max(1);
-        let apart = |pair: &[u32]| pair[1] - pair[0] > gap || chains.parts(pair[0], pair[1]);
+        let apart = |pair: &[u32]| pair[1] - pair[0] > gap || chains.separate(pair[0], pair[1]);
         1.0 + self.places.windows(2).filter(|pair| apart(pair)).count() as f64
     }
 }

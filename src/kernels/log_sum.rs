@@ -28,16 +28,6 @@ pub fn normalise(x: &[f64], out: &mut [f64]) -> f64 {
     sums.log_sum()
 }
 
-/// As [`normalise`], in place.
-pub fn normalise_in_place(x: &mut [f64]) -> f64 {
-    let sums = slice_sums::<{ form::TOTAL }>(x);
-    let (maximum, log_total) = sums.offsets();
-    for entry in x.iter_mut() {
-        *entry = (*entry - maximum) - log_total;
-    }
-    sums.log_sum()
-}
-
 /// Largest entry; NaN if any entry is NaN; `−inf` without entries.
 pub fn maximum(x: &[f64]) -> f64 {
     dispatch(Maximum(x))

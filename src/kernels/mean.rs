@@ -3,7 +3,7 @@
 
 use super::log_sum::range;
 use super::ordered::sum_by;
-use super::vector::{Arithmetic, Work, dispatch};
+use super::vector::{Arithmetic, Work, dispatch, tree};
 
 /// Draws of a block.
 pub(super) const BLOCK: usize = 4096;
@@ -167,10 +167,5 @@ fn lane_sum(f: &[f64], w: &[f64], term: impl Fn(f64, f64) -> f64) -> f64 {
     for (sum, (f, w)) in sums.iter_mut().zip(f_rest.iter().zip(w_rest)) {
         *sum += term(*f, *w);
     }
-    for half in [8, 4, 2, 1] {
-        for lane in 0..half {
-            sums[lane] += sums[lane + half];
-        }
-    }
-    sums[0]
+    tree(sums)
 }

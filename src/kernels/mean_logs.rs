@@ -3,16 +3,13 @@
 use std::f64::consts::LN_2;
 
 use super::vector::ln::ln_slice;
-use super::vector::{Arithmetic, Work, dispatch};
+use super::vector::{Arithmetic, TWO_52, Work, dispatch};
 
 /// Below this `|b|` the mean of `log1p(−b x)` is formed by its series.
 const SMALL: f64 = 0.03;
 
 /// Terms of that series: the rest is below `SMALL^12`.
 const TERMS: usize = 11;
-
-/// Added to an integer below it, leaves that integer in the last bits.
-const TWO_52: f64 = 4_503_599_627_370_496.0;
 
 /// `mean log1p(−b x)` for every `b`, exceedances `x` in `[0, 1]`.
 pub fn mean_logs<const N: usize>(x: &[f64], b: [f64; N]) -> [f64; N] {

@@ -183,7 +183,7 @@ fn add(a: &[f64; LANES], sum: &mut [f64; LANES]) {
     }
 }
 
-/// `Σ w f`, or `(Σ w, Σ w f, Σ w²)` where they are wanted together.
+/// `Σ w`, `Σ w f` and `Σ w²`.
 pub fn weight_moments(f: &[f64], w: &[f64]) -> [f64; 3] {
     dispatch(WeightMoments { f, w })
 }
@@ -298,6 +298,7 @@ impl Work for BatchSums<'_> {
     }
 }
 
+/// As [`super::vector::tree`], with which, here and in [`super::spectrum`], a node took 7 % longer.
 #[inline(always)]
 fn tree(mut lanes: [f64; LANES]) -> f64 {
     for half in [4, 2, 1] {

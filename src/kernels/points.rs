@@ -8,13 +8,10 @@ use super::error::KernelError;
 use super::ordered::Interrupt;
 use super::quantile::Compensated;
 use super::vector::ln::ln;
-use super::vector::{Arithmetic, Work, dispatch};
+use super::vector::{Arithmetic, TWO_52, Work, dispatch};
 
 /// Numbers that are made or worked on together.
 pub(super) const BLOCK: usize = 256;
-
-/// Added to an integer below it, leaves that integer in the last bits.
-const TWO_52: f64 = 4_503_599_627_370_496.0;
 
 /// Copies of an index that are written whether needed or not: most counts are at most this, and a
 /// loop without a branch is worth the idle copies. Room for them is kept behind the result.

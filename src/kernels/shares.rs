@@ -6,7 +6,7 @@ use super::lease::Lease;
 use super::vector::exp::exp;
 use super::vector::ln::{is_ordinary, ln};
 use super::vector::transpose::{LINE, columns_to_rows, rows_to_columns};
-use super::vector::{Arithmetic, Work, dispatch};
+use super::vector::{Arithmetic, Work, dispatch, tree};
 
 /// Draws of a tile; one a lane.
 const TILE: usize = 256;
@@ -450,13 +450,4 @@ fn dots<A: Arithmetic, const N: usize>(
             into[lane] += sums[lane];
         }
     }
-}
-
-fn tree(mut lanes: [f64; LANES]) -> f64 {
-    for half in [8, 4, 2, 1] {
-        for lane in 0..half {
-            lanes[lane] += lanes[lane + half];
-        }
-    }
-    lanes[0]
 }

@@ -4,7 +4,7 @@ use super::largest::{Ranked, Spread};
 use super::reductions::slice_sums;
 use super::tail::{Found, Room, Scale, tail_length, with_room};
 use super::vector::exp::exp;
-use super::vector::{Arithmetic, Work, dispatch};
+use super::vector::{Arithmetic, Work, dispatch, tree};
 use super::weight_sums::{form, larger};
 
 /// Sums that are formed side by side.
@@ -137,12 +137,7 @@ fn lane_sum(x: &[f64], term: impl Fn(f64) -> f64) -> f64 {
     for (sum, x) in sums.iter_mut().zip(last) {
         *sum += term(x);
     }
-    for half in [16, 8, 4, 2, 1] {
-        for lane in 0..half {
-            sums[lane] += sums[lane + half];
-        }
-    }
-    sums[0]
+    tree(sums)
 }
 
 /// Tail shape that [`smooth`] returns, without the smoothed weights.

@@ -4,7 +4,7 @@
 use super::error::KernelError;
 use super::log_sum::range;
 use super::ordered::Interrupt;
-use super::vector::{Arithmetic, Work, dispatch};
+use super::vector::{Arithmetic, TWO_52, Work, dispatch};
 
 /// Bits of a digit: a table of counters of this size stays in the nearest cache.
 const DIGIT: u32 = 11;
@@ -15,7 +15,7 @@ const DIGITS: usize = 6;
 /// Most values that are sorted by buckets first: beyond, these leave the caches.
 const MOST_IN_BUCKETS: usize = 65_536;
 
-/// Most values of a bucket.
+/// Most values of a bucket that are sorted by insertion.
 const MOST_INSERTED: u32 = 32;
 
 /// Indices of `x` in ascending order of value; equal values keep their order, `−0` comes before
@@ -74,23 +74,38 @@ fn by_buckets(x: &[f64]) -> Option<Vec<u32>> {
     }) {
         return None;
     }
-    let mut starts = vec![0_u32; count + 1];
-    for &bucket in &buckets {
+    let keyed = x.iter().zip(0..).map(|(&x, index)| (rank(x), index));
+    let (mut starts, mut sorted) = (vec![0; count + 1], vec![(0, 0); x.len()]);
+    distribute(keyed, &buckets, &mut starts, &mut sorted)
+        .then(|| sorted.iter().map(|pair| pair.1).collect())
+}
+
+/// Writes `values` in ascending order of their keys into `sorted`, of as many entries; equal keys
+/// keep their order. Each comes with its bucket, and keys of one bucket lie below those of the next.
+/// False, and nothing written, where a bucket is too full. `starts` holds zeros, one more than there
+/// are buckets, which are a power of two.
+pub(super) fn distribute<K: Copy + PartialOrd>(
+    values: impl Iterator<Item = (K, u32)>,
+    buckets: &[u32],
+    starts: &mut [u32],
+    sorted: &mut [(K, u32)],
+) -> bool {
+    let count = starts.len() - 1;
+    for &bucket in buckets {
         starts[bucket as usize % count + 1] += 1;
     }
     let (mut start, mut most) = (0, 0);
-    for place in &mut starts {
+    for place in starts.iter_mut() {
         most = most.max(*place);
         start += *place;
         *place = start;
     }
     if most > MOST_INSERTED {
-        return None;
+        return false;
     }
-    let mut sorted = vec![(0, 0); x.len()];
-    for ((&x, &bucket), index) in x.iter().zip(&buckets).zip(0..) {
+    for (one, &bucket) in values.zip(buckets) {
         let start = &mut starts[bucket as usize % count];
-        sorted[*start as usize] = (rank(x), index);
+        sorted[*start as usize] = one;
         *start += 1;
     }
     for end in 1..sorted.len() {
@@ -102,7 +117,7 @@ fn by_buckets(x: &[f64]) -> Option<Vec<u32>> {
         }
         sorted[place] = one;
     }
-    Some(sorted.iter().map(|pair| pair.1).collect())
+    true
 }
 
 /// The bucket of every value; whether all are numbers.
@@ -121,8 +136,7 @@ impl Work for Buckets<'_> {
         let mut numbers = true;
         for (bucket, &x) in self.buckets.iter_mut().zip(self.x) {
             numbers &= !x.is_nan();
-            // An integer below 2^52 added to it is in the last bits.
-            *bucket = ((x - self.low) * self.scale + 4_503_599_627_370_496.0).to_bits() as u32;
+            *bucket = ((x - self.low) * self.scale + TWO_52).to_bits() as u32;
         }
         numbers
     }

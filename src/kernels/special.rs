@@ -1,4 +1,4 @@
-//! Special functions that the Python side needs on arrays.
+//! Special functions of the standard normal distribution and of densities.
 
 use std::f64::consts::{FRAC_1_SQRT_2, PI, SQRT_2};
 

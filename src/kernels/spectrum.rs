@@ -6,7 +6,7 @@
 use std::ops::Range;
 
 use super::error::KernelError;
-use super::long_run::long_run_variance;
+use super::long_run::{efficiency, long_run_variance};
 use super::mean::mean_square;
 use super::ordered::Interrupt;
 use super::vector::{Arithmetic, Work, dispatch};
@@ -41,14 +41,9 @@ pub struct Spread {
 }
 
 impl Spread {
-    /// `min(1, variance/LRV)` in (0, 1]; 1 for a constant.
+    /// As [`super::long_run::efficiency`].
     pub fn efficiency(&self) -> f64 {
-        let ratio = self.variance / self.long_run;
-        if self.long_run > 0.0 && ratio.is_finite() && ratio > 0.0 {
-            ratio.min(1.0)
-        } else {
-            1.0
-        }
+        efficiency([self.variance, self.long_run])
     }
 }
 
@@ -282,6 +277,7 @@ impl Work for Products<'_> {
     }
 }
 
+/// As [`super::vector::tree`], with which, here and in [`super::node_series`], a node took 7 % longer.
 #[inline(always)]
 fn tree(mut lanes: [f64; LANES]) -> f64 {
     for half in [8, 4, 2, 1] {

@@ -106,9 +106,7 @@ impl Stretch<'_> {
             };
         }
     }
-}
 
-impl Stretch<'_> {
     /// Entries of z of a chain alone, `scale w (ψ − mean)`.
     fn form_alone(&self, mean: f64, scale: f64, range: Range<usize>, out: &mut [f64]) {
         for (target, draw) in out.iter_mut().zip(range) {

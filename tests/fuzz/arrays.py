@@ -117,7 +117,6 @@ def bindings(wild: Wild, explorer: Explorer) -> None:
         "f_tail": (of.draws(), wild.mostly(wild.positive), of.draws()),
         "normal_cdf": (of.draws(),),
         "normal_quantile": (of.draws(),),
-        "ln_gamma": (of.draws(),),
         "weighted_moments": (of.matrix(), of.draws()),
         "weighted_covariance": (of.matrix(), of.draws()),
         "log_density": of.density(),

@@ -1,6 +1,6 @@
 //! Sums of products of slices, in one fixed order: 16 lanes over 4096 entries, then the blocks.
 
-use super::{Arithmetic, Work, dispatch};
+use super::{Arithmetic, Work, dispatch, tree};
 
 /// Entries of a block.
 const BLOCK: usize = 4096;
@@ -79,14 +79,4 @@ impl<const N: usize> Work for Dots<'_, N> {
         }
         sums.map(tree)
     }
-}
-
-#[inline(always)]
-fn tree(mut lanes: [f64; LANES]) -> f64 {
-    for half in [8, 4, 2, 1] {
-        for lane in 0..half {
-            lanes[lane] += lanes[lane + half];
-        }
-    }
-    lanes[0]
 }

@@ -35,8 +35,8 @@ pub trait Arithmetic {
     }
 }
 
-/// `2^52`, whose last bit is worth one: or-ed onto an integer below it, the two add.
-const TWO_52: f64 = 4_503_599_627_370_496.0;
+/// `2^52`, whose last bit is worth one: an integer below it, added or or-ed, is in the last bits.
+pub const TWO_52: f64 = 4_503_599_627_370_496.0;
 
 /// One rounding, by an instruction of the processor.
 pub struct Fused;
@@ -96,6 +96,19 @@ pub trait Work {
 
     /// Runs the loop.
     fn run<A: Arithmetic>(self) -> Self::Output;
+}
+
+/// The sum of the lanes, a power of two of them up to 32, half upon half.
+#[inline(always)]
+pub fn tree<const N: usize>(mut lanes: [f64; N]) -> f64 {
+    for half in [16, 8, 4, 2, 1] {
+        if half < N {
+            for lane in 0..half {
+                lanes[lane] += lanes[lane + half];
+            }
+        }
+    }
+    lanes[0]
 }
 
 /// Runs `work` with the best instruction set of this processor.
