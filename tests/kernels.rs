@@ -20,12 +20,15 @@ mod kernels {
     mod f_tail;
     mod influence;
     mod interval;
+    mod lane_series;
+    mod lanes;
     mod largest;
     mod log_sum;
     mod long_run;
     mod mean;
     mod moments;
     mod multi_sample;
+    mod node_batches;
     mod node_series;
     mod nodes;
     mod ordered;
@@ -38,7 +41,7 @@ mod kernels {
     mod smooth;
     mod smooth_weights;
     mod special;
-    mod spectrum;
+
     mod study;
     mod support;
     mod vector;

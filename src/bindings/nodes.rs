@@ -9,12 +9,11 @@ use super::errors::detached;
 use crate::kernels::chains::Chains;
 use crate::kernels::columns::expect_shape;
 use crate::kernels::error::KernelError;
-use crate::kernels::long_run;
-use crate::kernels::nodes::{Common, Room, study};
+use crate::kernels::nodes::{Asked, Common, Room, study};
 use crate::kernels::ordered::{Interrupt, map_tasks};
 
 /// Nodes of one task.
-const NODES: usize = 4;
+const NODES: usize = 8;
 
 /// Figures of every node, log ratios `(B, n)` in C order, for quantities `(q, n)` in C order:
 /// `(B, width)`. Smoothed weights go to `weights`, `(B, n)`, where it is given.
@@ -51,18 +50,16 @@ pub fn study_nodes<'py>(
     }
     let (columns, own) = (columns.as_standard_layout(), own.as_standard_layout());
     let (columns, own) = (rows(&columns), rows(&own));
-    let batches = long_run::chains(&vector("batches", &batches)?, draws, false)?;
-    let common = Common {
-        columns,
-        events: events.to_vec(),
-        own: own[0],
-        own_raw: own[1],
-        equal_base,
-        chains: Chains::new(&vector("starts", &starts)?, draws)?,
-        ordered,
-        batches,
-        shift,
-    };
+    let common = Common::new(
+        columns.into_iter().zip(events.iter().copied()),
+        Chains::new(&vector("starts", &starts)?, draws, ordered)?,
+        Asked {
+            own: [own[0], own[1]],
+            equal_base,
+            batches: &vector("batches", &batches)?,
+            shift,
+        },
+    )?;
     let figures = detached(py, |interrupt| each(ratios, &common, weights, interrupt))?;
     Ok(figures.into_pyarray(py))
 }
@@ -77,7 +74,7 @@ fn rows<'a>(array: &'a CowArray<'_, f64, Ix2>) -> Vec<&'a [f64]> {
 
 fn each(
     ratios: ArrayView2<'_, f64>,
-    common: &Common<'_>,
+    common: &Common,
     mut weights: Option<ArrayViewMut2<'_, f64>>,
     interrupt: &Interrupt<'_>,
 ) -> Result<Array2<f64>, KernelError> {

@@ -4,12 +4,10 @@ use std::ops::Range;
 
 use super::error::KernelError;
 use super::f_tail::f_tail;
-use super::log_sum::range;
+use super::lane_series::{Series, Spread};
+use super::lanes::Layout;
 use super::long_run;
-use super::mean::mean;
-use super::node_series::{influence, weight_moments};
 use super::ordered::Interrupt;
-use super::spectrum::{self, Spread};
 
 /// Shorter chains, or chains of fewer effective draws, know too little of their own errors.
 pub(super) const SHORTEST: usize = 50;
@@ -21,34 +19,55 @@ pub(super) const FREEDOM: f64 = 3.0;
 /// From this many chains on, chains taken as independent units estimate a variance well enough.
 pub(super) const MANY: usize = 20;
 
-/// Chains, their halves, and the halves of each by itself.
+/// Chains and their halves, in the rows of a layout.
 pub struct Chains {
     whole: Vec<Range<usize>>,
+    /// Which halves are a chain's.
     halves: Vec<Range<usize>>,
-    own_halves: Vec<Vec<Range<usize>>>,
+    layout: Layout,
+    ordered: bool,
 }
 
 impl Chains {
-    /// Chains of `draws` draws that begin at `starts`, which ends with `draws`.
+    /// Chains of `draws` draws that begin at `starts`, which ends with `draws`; `ordered` if the order
+    /// of the draws is one of time.
     ///
     /// # Errors
     /// [`KernelError::Starts`] when `starts` does not rise from 0 to `draws`.
-    pub fn new(starts: &[i64], draws: usize) -> Result<Self, KernelError> {
+    pub fn new(starts: &[i64], draws: usize, ordered: bool) -> Result<Self, KernelError> {
         let whole = long_run::chains(starts, draws, false)?;
-        let own_halves = whole
+        let split = long_run::chains(starts, draws, true)?;
+        let half_at = |draw: usize| split.partition_point(|half| half.end <= draw);
+        let halves = whole
             .iter()
-            .map(|range| long_run::chains(&[0, range.len() as i64], range.len(), true))
-            .collect::<Result<_, _>>()?;
+            .map(|range| half_at(range.start)..half_at(range.end))
+            .collect();
+        let layout = if ordered {
+            Layout::new(split)
+        } else {
+            Layout::unordered(draws)
+        };
         Ok(Self {
             whole,
-            halves: long_run::chains(starts, draws, true)?,
-            own_halves,
+            halves,
+            layout,
+            ordered,
         })
     }
 
     /// How many there are.
     pub fn count(&self) -> usize {
         self.whole.len()
+    }
+
+    /// Whether the order of the draws is one of time.
+    pub fn ordered(&self) -> bool {
+        self.ordered
+    }
+
+    /// Where the draws lie.
+    pub fn layout(&self) -> &Layout {
+        &self.layout
     }
 
     /// Whether two draws, the first below the second, belong to different chains.
@@ -65,33 +84,51 @@ impl Chains {
     /// autocorrelation.
     ///
     /// # Errors
-    /// As [`spectrum::spread`].
-    pub fn spread(
-        &self,
-        z: &[f64],
-        room: &mut Vec<f64>,
-        interrupt: &Interrupt<'_>,
-    ) -> Result<Spread, KernelError> {
-        let found = spectrum::spread(z, &self.halves, room, interrupt)?;
+    /// As [`Series::spread`].
+    pub fn spread(&self, z: &mut Series, interrupt: &Interrupt<'_>) -> Result<Spread, KernelError> {
+        let found = z.spread(0..self.layout.halves().len(), &self.layout, interrupt)?;
         if self.count() < MANY {
             return Ok(found);
         }
-        let (overall, count) = (mean(z), self.count() as f64);
-        let apart = |range: &Range<usize>| {
-            let apart = mean(&z[range.clone()]) - overall;
-            range.len() as f64 * apart * apart
+        let overall = z.totals.iter().sum::<f64>() / self.layout.draws() as f64;
+        let apart = |chain: usize| {
+            let length = self.whole[chain].len() as f64;
+            let apart = self.sum(chain, &z.totals) / length - overall;
+            length * apart * apart
         };
-        let units = self.whole.iter().map(apart).sum::<f64>() / (count - 1.0);
+        let units = (0..self.count()).map(apart).sum::<f64>() / (self.count() as f64 - 1.0);
         Ok(Spread {
             long_run: found.long_run.max(units),
             ..found
         })
     }
 
+    /// Sum over the halves of a chain.
+    fn sum(&self, chain: usize, of_halves: &[f64]) -> f64 {
+        of_halves[self.halves[chain].clone()].iter().sum()
+    }
+
     /// Whether chains are long enough to know their own errors.
-    fn tell(&self) -> bool {
+    pub fn tell(&self) -> bool {
         let shortest = self.whole.iter().map(Range::len).min().unwrap_or(0);
-        self.count() > 1 && shortest >= SHORTEST
+        self.ordered && self.count() > 1 && shortest >= SHORTEST
+    }
+
+    /// For every half, the weighted mean of its chain, and the draws of the chain over its weight, 0
+    /// without any; from the sums `Σ w f` and `Σ w` of the halves.
+    pub fn alone(&self, moments: &[f64], masses: &[f64]) -> [Vec<f64>; 2] {
+        let (mut means, mut scales) = (Vec::new(), Vec::new());
+        for (chain, (range, halves)) in self.whole.iter().zip(&self.halves).enumerate() {
+            let mass = self.sum(chain, masses);
+            let (mean, scale) = if mass > 0.0 {
+                (self.sum(chain, moments) / mass, range.len() as f64 / mass)
+            } else {
+                (0.0, 0.0)
+            };
+            means.resize(means.len() + halves.len(), mean);
+            scales.resize(scales.len() + halves.len(), scale);
+        }
+        [means, scales]
     }
 
     /// p-value of the hypothesis that the chains agree about a weighted mean: Welch's test of the
@@ -99,88 +136,90 @@ impl Chains {
     /// many independent draws as the chain's weights are worth. 1 with fewer than two chains that
     /// have weight, or where chains are too short or too slow to know their errors.
     ///
+    /// `alone` is the series of each chain's own mean.
+    ///
     /// # Errors
-    /// As [`spectrum::spread`].
+    /// As [`Series::spread`].
     ///
     /// Source: Welch (1951), Biometrika 38, 330-336.
     pub fn agreement(
         &self,
+        alone: &mut Series,
         test: &Test<'_>,
-        w: &[f64],
-        [series, room]: [&mut Vec<f64>; 2],
         interrupt: &Interrupt<'_>,
     ) -> Result<f64, KernelError> {
         if !self.tell() {
             return Ok(1.0);
         }
-        let rounding = test.rounding();
         let mut opinions = Vec::with_capacity(self.count());
-        for (range, halves) in self.whole.iter().zip(&self.own_halves) {
-            let (f, w) = (&test.f[range.clone()], &w[range.clone()]);
-            let [mass, moment, squares] = weight_moments(f, w);
+        for (chain, range) in self.whole.iter().enumerate() {
+            let [mass, moment, squares] =
+                [test.masses, test.moments, test.squares].map(|sums| self.sum(chain, sums));
             if mass > 0.0 {
-                series.resize(f.len(), 0.0);
-                let count = f.len() as f64;
-                influence(f, w, moment / mass, count / mass, series);
-                let found = spectrum::spread(series, halves, room, interrupt)?;
+                let halves = self.halves[chain].clone();
+                let found = alone.spread(halves, &self.layout, interrupt)?;
+                let count = range.len() as f64;
                 let worth = test.pooled * (squares / (mass * mass));
-                let variance = (found.long_run / count).max(worth).max(rounding);
+                let variance = (found.long_run / count).max(worth).max(test.rounding());
                 opinions.push(Opinion::new(moment / mass, variance, test.pooled, count));
             }
         }
         Ok(welch(&opinions))
     }
 
-    /// [`Self::agreement`] about the plain mean of `z`, whose variance is `pooled`.
+    /// [`Self::agreement`] about the plain mean of `z`, whose variance is `pooled` and whose largest
+    /// absolute value is `largest`.
     ///
     /// # Errors
     /// As that.
     pub fn equal_agreement(
         &self,
-        z: &[f64],
+        z: &mut Series,
         pooled: f64,
-        room: &mut Vec<f64>,
+        largest: f64,
         interrupt: &Interrupt<'_>,
     ) -> Result<f64, KernelError> {
         if !self.tell() {
             return Ok(1.0);
         }
-        let test = Test {
-            f: z,
-            moved: 0.0,
-            pooled,
-        };
-        let rounding = test.rounding();
         let mut opinions = Vec::with_capacity(self.count());
-        for (range, halves) in self.whole.iter().zip(&self.own_halves) {
-            let part = &z[range.clone()];
-            let count = part.len() as f64;
-            let found = spectrum::spread(part, halves, room, interrupt)?;
-            let variance = (found.long_run / count).max(pooled / count).max(rounding);
-            opinions.push(Opinion::new(mean(part), variance, pooled, count));
+        for (chain, range) in self.whole.iter().enumerate() {
+            let count = range.len() as f64;
+            let mean = self.sum(chain, &z.totals) / count;
+            let found = z.spread(self.halves[chain].clone(), &self.layout, interrupt)?;
+            let variance = (found.long_run / count)
+                .max(pooled / count)
+                .max(rounding(largest));
+            opinions.push(Opinion::new(mean, variance, pooled, count));
         }
         Ok(welch(&opinions))
     }
 }
 
-/// What the chains are asked about: the weighted mean `moved` of `f`, whose weighted mean square
-/// about it is `pooled`.
+/// What the chains are asked about: a weighted mean, about which the weighted mean square is `pooled`
+/// and the largest distance `largest`; and sums over halves.
 pub struct Test<'a> {
-    /// Values, shape `(n,)`.
-    pub f: &'a [f64],
-    /// Their weighted mean.
-    pub moved: f64,
-    /// Their weighted variance.
+    /// `Σ w`.
+    pub masses: &'a [f64],
+    /// `Σ w f`.
+    pub moments: &'a [f64],
+    /// `Σ w²`.
+    pub squares: &'a [f64],
+    /// Weighted variance.
     pub pooled: f64,
+    /// Largest `|f − m|`.
+    pub largest: f64,
 }
 
 impl Test<'_> {
-    /// Variance of a chain's mean below which differences are rounding, not chains that disagree.
     fn rounding(&self) -> f64 {
-        let (low, high) = range(self.f);
-        let largest = (high - self.moved).max(self.moved - low);
-        1e-20 * (largest * largest)
+        rounding(self.largest)
     }
+}
+
+/// Variance of a chain's mean below which differences are rounding, not chains that disagree.
+fn rounding(largest: f64) -> f64 {
+    1e-20 * (largest * largest)
 }
 
 /// What one chain says of a weighted mean.

@@ -158,40 +158,6 @@ impl Habit {
     }
 }
 
-/// The `count` largest of `sign · values` in any order, and the next largest value; as
-/// [`largest`].
-pub fn largest_values(values: &[f64], sign: f64, count: usize) -> Option<(Vec<f64>, f64)> {
-    if count >= values.len() {
-        return None;
-    }
-    let needed = count + 1;
-    let mut found = values_at_least(values, sign, guess(values, sign, needed));
-    if found.len() < needed || found.len() > 4 * needed {
-        found = values_at_least(values, sign, f64::NEG_INFINITY);
-        if found.len() < needed {
-            return None; // NaN is no value that could be ranked
-        }
-    }
-    let below = found.len() - needed;
-    let (_, &mut cutoff, upper) = found.select_nth_unstable_by(below, f64::total_cmp);
-    Some((upper.to_vec(), cutoff))
-}
-
-/// Values of at least `least`, in input order, without a branch.
-fn values_at_least(values: &[f64], sign: f64, least: f64) -> Vec<f64> {
-    let mut found = vec![0.0; values.len()];
-    let mut count = 0;
-    for value in values {
-        let value = sign * value;
-        if let Some(target) = found.get_mut(count) {
-            *target = value;
-        }
-        count += usize::from(value >= least);
-    }
-    found.truncate(count);
-    found
-}
-
 /// A value that between `needed` and three times as many values are likely to reach.
 fn guess(values: &[f64], sign: f64, needed: usize) -> f64 {
     let draws = values.len();

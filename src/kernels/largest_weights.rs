@@ -2,8 +2,8 @@
 
 use super::chains::Chains;
 use super::largest::largest;
-use super::node_series::weight_moments;
 use super::tail::tail_length;
+use super::vector::dot::dot;
 
 /// Fewest draws of a tail whose excursions are counted.
 const FEWEST_EXCURSIONS: usize = 10;
@@ -41,7 +41,7 @@ impl LargestWeights {
         let unit = ranked.last().map_or(1.0, |ranked| ranked.0);
         let square = |w: f64| (w / unit) * (w / unit);
         let above = |place: &(f64, u32)| square(place.0) - square(below);
-        let all = weight_moments(raw, raw)[2] / (unit * unit);
+        let all = dot(raw, raw) / (unit * unit);
         let share = ranked[from..].iter().map(above).sum::<f64>() / all;
         let beyond = |ranked: &&(f64, u32)| ranked.0 > cutoff;
         let mut places: Vec<u32> = ranked

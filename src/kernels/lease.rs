@@ -47,6 +47,12 @@ impl Lease {
     }
 }
 
+impl Default for Lease {
+    fn default() -> Self {
+        Self::new(0)
+    }
+}
+
 impl Drop for Lease {
     fn drop(&mut self) {
         if self.room.capacity() > MOST_KEPT {

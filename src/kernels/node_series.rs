@@ -1,12 +1,12 @@
-//! Influence series of a weighted mean: formed, and all its sums taken, in one pass each.
+//! Influence series of weighted means in the rows of a [`Layout`]: formed, and all their sums taken, in
+//! one pass each.
 
-use std::ops::Range;
-
+use super::lane_series::{Series, rows_of, rows_of_mut};
+use super::lanes::{LANES, Layout, Row};
 use super::vector::{Arithmetic, Work, dispatch};
+use super::weight_sums::larger;
 
-const LANES: usize = 8;
-
-const ZERO: [f64; LANES] = [0.0; LANES];
+const ZERO: Row = [0.0; LANES];
 
 /// Sums of a series `z` in one pass.
 #[derive(Debug, Clone, Copy, Default)]
@@ -17,6 +17,8 @@ pub struct Moments {
     third: f64,
     /// `Σ z ψ` of the pass that formed it.
     pub beside: f64,
+    /// The largest `|z|`.
+    pub largest: f64,
 }
 
 impl Moments {
@@ -46,173 +48,303 @@ impl Moments {
     }
 }
 
-/// Writes `z = scale w (f − moved)`; its sums, `Σ z (f − moved)` among them.
-pub fn influence(f: &[f64], w: &[f64], moved: f64, scale: f64, z: &mut [f64]) -> Moments {
-    dispatch(Influence {
-        f,
-        w,
-        moved,
-        scale,
-        z,
-    })
+/// How many values of a series lie above 0 and below.
+#[derive(Debug, Clone, Copy, Default)]
+pub struct Sides {
+    /// Whether all values are numbers; a false alarm is possible where they are huge.
+    pub finite: bool,
+    /// Above.
+    pub above: usize,
+    /// Below.
+    pub below: usize,
+}
+
+/// `Σ w f` over each half.
+pub fn half_sums(f: &[f64], w: &[f64], layout: &Layout) -> Vec<f64> {
+    let mut sums = Vec::with_capacity(layout.halves().len());
+    for group in layout.groups() {
+        let found = dispatch(WeightedSums {
+            f: rows_of(f, group),
+            w: rows_of(w, group),
+        });
+        sums.extend_from_slice(&found[..group.halves.len()]);
+    }
+    sums
+}
+
+struct WeightedSums<'a> {
+    f: &'a [Row],
+    w: &'a [Row],
+}
+
+impl Work for WeightedSums<'_> {
+    type Output = Row;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> Row {
+        let mut sums = [ZERO; 4];
+        let (f, f_rest) = self.f.as_chunks::<4>();
+        let (w, w_rest) = self.w.as_chunks::<4>();
+        for (f, w) in f.iter().zip(w) {
+            for ((sum, f), w) in sums.iter_mut().zip(f).zip(w) {
+                add_product::<A>(w, f, sum);
+            }
+        }
+        for ((sum, f), w) in sums.iter_mut().zip(f_rest).zip(w_rest) {
+            add_product::<A>(w, f, sum);
+        }
+        each(|lane| (sums[0][lane] + sums[1][lane]) + (sums[2][lane] + sums[3][lane]))
+    }
+}
+
+/// A node's weights, and what of them a column is weighed by.
+#[derive(Clone, Copy)]
+pub struct Weighing<'a> {
+    /// Weights, in rows.
+    pub w: &'a [f64],
+    /// The same before smoothing.
+    pub raw: &'a [f64],
+    /// The weighted mean.
+    pub moved: f64,
+    /// For every half, its chain's own weighted mean.
+    pub own_means: &'a [f64],
+    /// And the draws of its chain over the weight of the chain, 0 without any.
+    pub own_scales: &'a [f64],
+}
+
+/// The series of a weighted mean.
+#[derive(Default)]
+pub struct Formed {
+    /// `z = n w (f − m)`.
+    pub z: Series,
+    /// The same from unsmoothed weights.
+    pub raw: Series,
+    /// The series of the mean of each chain alone.
+    pub alone: Series,
+}
+
+impl Sides {
+    /// No values but 0.
+    pub const NONE: Self = Self {
+        finite: true,
+        above: 0,
+        below: 0,
+    };
+}
+
+impl Formed {
+    /// Forms all of them for the column `f`; the sums of z, and the sides of its twin.
+    pub fn influence(&mut self, f: &[f64], by: Weighing<'_>, layout: &Layout) -> (Moments, Sides) {
+        let mut found = Found::NONE;
+        for series in [&mut self.z, &mut self.raw, &mut self.alone] {
+            series.begin(layout);
+        }
+        for group in layout.groups() {
+            let of_lanes = |of_halves: &[f64]| {
+                let mut row = ZERO;
+                let part = of_halves.get(group.halves.clone()).unwrap_or_default();
+                row[..part.len()].copy_from_slice(part);
+                row
+            };
+            let sums = dispatch(Influence {
+                weights: [
+                    rows_of(f, group),
+                    rows_of(by.w, group),
+                    rows_of(by.raw, group),
+                ],
+                into: [&mut self.z, &mut self.raw, &mut self.alone]
+                    .map(|series| rows_of_mut(&mut series.entries, group)),
+                moved: by.moved,
+                scale: layout.draws() as f64,
+                own_means: of_lanes(by.own_means),
+                own_scales: of_lanes(by.own_scales),
+            });
+            self.z.add(group, &sums.first);
+            self.raw.add(group, &sums.raw);
+            self.alone.add(group, &sums.alone);
+            found.merge(&sums);
+        }
+        found.told(layout.draws())
+    }
+
+    /// Takes `n v f` off z, and the same with unsmoothed base weights off its twin.
+    pub fn take_base(&mut self, f: &[f64], v: [&[f64]; 2], layout: &Layout) -> (Moments, Sides) {
+        let mut found = Found::NONE;
+        for series in [&mut self.z, &mut self.raw] {
+            series.begin(layout);
+        }
+        for group in layout.groups() {
+            let sums = dispatch(TakeBase {
+                f: rows_of(f, group),
+                v: v.map(|v| rows_of(v, group)),
+                scale: layout.draws() as f64,
+                into: [&mut self.z, &mut self.raw]
+                    .map(|series| rows_of_mut(&mut series.entries, group)),
+            });
+            self.z.add(group, &sums.first);
+            self.raw.add(group, &sums.raw);
+            found.merge(&sums);
+        }
+        found.told(layout.draws())
+    }
+
+    /// Makes z and its twin nothing at all.
+    pub fn clear(&mut self, layout: &Layout) {
+        for series in [&mut self.z, &mut self.raw] {
+            series.entries.fill(0.0);
+            series.begin(layout);
+            for group in layout.groups() {
+                series.add(group, &ZERO);
+            }
+        }
+    }
+}
+
+/// Sums over a group, lane by lane.
+struct Found {
+    first: Row,
+    second: Row,
+    third: Row,
+    beside: Row,
+    largest: Row,
+    raw: Row,
+    above: Row,
+    below: Row,
+    alone: Row,
+}
+
+impl Found {
+    const NONE: Self = Self {
+        first: ZERO,
+        second: ZERO,
+        third: ZERO,
+        beside: ZERO,
+        largest: ZERO,
+        raw: ZERO,
+        above: ZERO,
+        below: ZERO,
+        alone: ZERO,
+    };
+
+    fn merge(&mut self, other: &Self) {
+        add(&other.first, &mut self.first);
+        add(&other.second, &mut self.second);
+        add(&other.third, &mut self.third);
+        add(&other.beside, &mut self.beside);
+        add(&other.above, &mut self.above);
+        add(&other.below, &mut self.below);
+        add(&other.raw, &mut self.raw);
+        self.largest = each(|lane| larger(other.largest[lane], self.largest[lane]));
+    }
+
+    fn told(self, draws: usize) -> (Moments, Sides) {
+        let moments = Moments {
+            count: draws as f64,
+            first: tree(self.first),
+            second: tree(self.second),
+            third: tree(self.third),
+            beside: tree(self.beside),
+            largest: self.largest.into_iter().fold(0.0, f64::max),
+        };
+        let sides = Sides {
+            finite: tree(self.raw).is_finite(),
+            above: tree(self.above) as usize,
+            below: tree(self.below) as usize,
+        };
+        (moments, sides)
+    }
+
+    /// Adds a row of z.
+    #[inline(always)]
+    fn add_value<A: Arithmetic>(&mut self, z: &Row) {
+        let square = each(|lane| z[lane] * z[lane]);
+        add(z, &mut self.first);
+        add(&square, &mut self.second);
+        add_product::<A>(&square, z, &mut self.third);
+    }
+
+    /// Adds a row of the twin of z.
+    #[inline(always)]
+    fn add_raw(&mut self, raw: &Row) {
+        add(raw, &mut self.raw);
+        add(
+            &each(|lane| if raw[lane] > 0.0 { 1.0 } else { 0.0 }),
+            &mut self.above,
+        );
+        add(
+            &each(|lane| if raw[lane] < 0.0 { 1.0 } else { 0.0 }),
+            &mut self.below,
+        );
+    }
 }
 
 struct Influence<'a> {
-    f: &'a [f64],
-    w: &'a [f64],
+    weights: [&'a [Row]; 3],
+    into: [&'a mut [Row]; 3],
     moved: f64,
     scale: f64,
-    z: &'a mut [f64],
+    own_means: Row,
+    own_scales: Row,
 }
 
 impl Work for Influence<'_> {
-    type Output = Moments;
+    type Output = Found;
 
     #[inline(always)]
-    fn run<A: Arithmetic>(self) -> Moments {
-        let (mut first, mut second, mut third, mut beside) = (ZERO, ZERO, ZERO, ZERO);
-        let (f, f_rest) = self.f.as_chunks::<LANES>();
-        let (w, w_rest) = self.w.as_chunks::<LANES>();
-        let (z, z_rest) = self.z.as_chunks_mut::<LANES>();
-        for ((f, w), z) in f.iter().zip(w).zip(z) {
+    fn run<A: Arithmetic>(self) -> Found {
+        let mut sums = Found::NONE;
+        let [f, w, raw] = self.weights;
+        let [z, z_raw, z_alone] = self.into;
+        let into = z.iter_mut().zip(z_raw).zip(z_alone);
+        for (((f, w), raw), ((z, z_raw), z_alone)) in f.iter().zip(w).zip(raw).zip(into) {
             // Formed apart from memory: a store that is read again would stand in the way.
-            let (mut psi, mut value, mut square) = (ZERO, ZERO, ZERO);
-            for lane in 0..LANES {
-                psi[lane] = f[lane] - self.moved;
-            }
-            for lane in 0..LANES {
-                value[lane] = self.scale * w[lane] * psi[lane];
-            }
-            for lane in 0..LANES {
-                square[lane] = value[lane] * value[lane];
-            }
-            *z = value;
-            add(&value, &mut first);
-            add(&square, &mut second);
-            add_product::<A>(&square, &value, &mut third);
-            add_product::<A>(&value, &psi, &mut beside);
+            let psi = each(|lane| f[lane] - self.moved);
+            let value = each(|lane| self.scale * w[lane] * psi[lane]);
+            let twin = each(|lane| self.scale * raw[lane] * psi[lane]);
+            let alone =
+                each(|lane| self.own_scales[lane] * w[lane] * (f[lane] - self.own_means[lane]));
+            (*z, *z_raw, *z_alone) = (value, twin, alone);
+            sums.add_value::<A>(&value);
+            add_product::<A>(&value, &psi, &mut sums.beside);
+            sums.add_raw(&twin);
+            add(&alone, &mut sums.alone);
         }
-        for ((f, w), z) in f_rest.iter().zip(w_rest).zip(z_rest) {
-            let psi = f - self.moved;
-            *z = self.scale * w * psi;
-            first[0] += *z;
-            second[0] += *z * *z;
-            third[0] += *z * *z * *z;
-            beside[0] += *z * psi;
-        }
-        Moments {
-            count: self.f.len() as f64,
-            first: tree(first),
-            second: tree(second),
-            third: tree(third),
-            beside: tree(beside),
-        }
+        sums
     }
-}
-
-/// Takes `scale v f` off `z`; the sums of what is left.
-pub fn take_base(f: &[f64], v: &[f64], scale: f64, z: &mut [f64]) -> Moments {
-    dispatch(TakeBase { f, v, scale, z })
 }
 
 struct TakeBase<'a> {
-    f: &'a [f64],
-    v: &'a [f64],
+    f: &'a [Row],
+    v: [&'a [Row]; 2],
     scale: f64,
-    z: &'a mut [f64],
+    into: [&'a mut [Row]; 2],
 }
 
 impl Work for TakeBase<'_> {
-    type Output = Moments;
+    type Output = Found;
 
     #[inline(always)]
-    fn run<A: Arithmetic>(self) -> Moments {
-        let (mut first, mut second, mut third) = (ZERO, ZERO, ZERO);
-        let (f, f_rest) = self.f.as_chunks::<LANES>();
-        let (v, v_rest) = self.v.as_chunks::<LANES>();
-        let (z, z_rest) = self.z.as_chunks_mut::<LANES>();
-        for ((f, v), z) in f.iter().zip(v).zip(z) {
-            let (mut value, mut square) = (ZERO, ZERO);
-            for lane in 0..LANES {
-                value[lane] = z[lane] - self.scale * v[lane] * f[lane];
-            }
-            for lane in 0..LANES {
-                square[lane] = value[lane] * value[lane];
-            }
-            *z = value;
-            add(&value, &mut first);
-            add(&square, &mut second);
-            add_product::<A>(&square, &value, &mut third);
+    fn run<A: Arithmetic>(self) -> Found {
+        let mut sums = Found::NONE;
+        let ([v, v_raw], [z, z_raw]) = (self.v, self.into);
+        let weights = v.iter().zip(v_raw);
+        for ((f, (v, v_raw)), (z, z_raw)) in self.f.iter().zip(weights).zip(z.iter_mut().zip(z_raw))
+        {
+            let value = each(|lane| z[lane] - self.scale * v[lane] * f[lane]);
+            let twin = each(|lane| z_raw[lane] - self.scale * v_raw[lane] * f[lane]);
+            (*z, *z_raw) = (value, twin);
+            sums.add_value::<A>(&value);
+            let size = each(|lane| value[lane].abs());
+            sums.largest = each(|lane| larger(size[lane], sums.largest[lane]));
+            sums.add_raw(&twin);
         }
-        for ((f, v), z) in f_rest.iter().zip(v_rest).zip(z_rest) {
-            *z -= self.scale * v * f;
-            first[0] += *z;
-            second[0] += *z * *z;
-            third[0] += *z * *z * *z;
-        }
-        Moments {
-            count: self.f.len() as f64,
-            first: tree(first),
-            second: tree(second),
-            third: tree(third),
-            beside: 0.0,
-        }
-    }
-}
-
-/// Lanes of which one is in use.
-#[inline(always)]
-fn one(value: f64) -> [f64; LANES] {
-    let mut lanes = ZERO;
-    lanes[0] = value;
-    lanes
-}
-
-/// `sum + a b`, lane by lane. One loop for each sum: several in one are not vectorised.
-#[inline(always)]
-fn add_product<A: Arithmetic>(a: &[f64; LANES], b: &[f64; LANES], sum: &mut [f64; LANES]) {
-    for lane in 0..LANES {
-        sum[lane] = A::mul_add(a[lane], b[lane], sum[lane]);
+        sums
     }
 }
 
 #[inline(always)]
-fn add(a: &[f64; LANES], sum: &mut [f64; LANES]) {
-    for lane in 0..LANES {
-        sum[lane] += a[lane];
-    }
-}
-
-/// `Σ w`, `Σ w f` and `Σ w²`.
-pub fn weight_moments(f: &[f64], w: &[f64]) -> [f64; 3] {
-    dispatch(WeightMoments { f, w })
-}
-
-struct WeightMoments<'a> {
-    f: &'a [f64],
-    w: &'a [f64],
-}
-
-impl Work for WeightMoments<'_> {
-    type Output = [f64; 3];
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) -> [f64; 3] {
-        let (mut mass, mut moment, mut squares) = (ZERO, ZERO, ZERO);
-        let (f, f_rest) = self.f.as_chunks::<LANES>();
-        let (w, w_rest) = self.w.as_chunks::<LANES>();
-        for (f, w) in f.iter().zip(w) {
-            add(w, &mut mass);
-            add_product::<A>(w, f, &mut moment);
-            add_product::<A>(w, w, &mut squares);
-        }
-        for (f, w) in f_rest.iter().zip(w_rest) {
-            add(&one(*w), &mut mass);
-            add_product::<A>(&one(*w), &one(*f), &mut moment);
-            add_product::<A>(&one(*w), &one(*w), &mut squares);
-        }
-        [tree(mass), tree(moment), tree(squares)]
-    }
+fn each(entry: impl Fn(usize) -> f64) -> Row {
+    std::array::from_fn(entry)
 }
 
 /// Effective draws `(Σ w)²/Σ w²` where `f > least`, and where not.
@@ -268,33 +400,26 @@ impl EitherSide<'_> {
     }
 }
 
-/// Sums of `z` over batches.
-pub fn batch_sums(z: &[f64], batches: &[Range<usize>], sums: &mut [f64]) {
-    dispatch(BatchSums { z, batches, sums });
+/// Lanes of which one is in use.
+#[inline(always)]
+fn one(value: f64) -> [f64; LANES] {
+    let mut lanes = ZERO;
+    lanes[0] = value;
+    lanes
 }
 
-struct BatchSums<'a> {
-    z: &'a [f64],
-    batches: &'a [Range<usize>],
-    sums: &'a mut [f64],
+/// `sum + a b`, lane by lane. One loop for each sum: several in one are not vectorised.
+#[inline(always)]
+fn add_product<A: Arithmetic>(a: &[f64; LANES], b: &[f64; LANES], sum: &mut [f64; LANES]) {
+    for lane in 0..LANES {
+        sum[lane] = A::mul_add(a[lane], b[lane], sum[lane]);
+    }
 }
 
-impl Work for BatchSums<'_> {
-    type Output = ();
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) {
-        for (sum, batch) in self.sums.iter_mut().zip(self.batches) {
-            let mut lanes = ZERO;
-            let (chunks, rest) = self.z[batch.clone()].as_chunks::<LANES>();
-            for chunk in chunks {
-                add(chunk, &mut lanes);
-            }
-            for z in rest {
-                lanes[0] += z;
-            }
-            *sum = tree(lanes);
-        }
+#[inline(always)]
+fn add(a: &[f64; LANES], sum: &mut [f64; LANES]) {
+    for lane in 0..LANES {
+        sum[lane] += a[lane];
     }
 }
 

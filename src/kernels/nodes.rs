@@ -3,21 +3,20 @@
 //!
 //! The figures are those of the single kernels, which this one calls on contiguous columns.
 
-use std::ops::Range;
-
 use super::chains::{Chains, Test};
 use super::error::KernelError;
+use super::lane_series::Series;
 use super::largest_weights::LargestWeights;
 use super::lease::Lease;
-use super::log_sum::{log_sum_exp, range};
+use super::log_sum::range;
+use super::long_run;
 use super::mean::contributions;
-use super::node_series::{Moments, batch_sums, either_side, influence, take_base, weight_moments};
+use super::node_batches::Batches;
+use super::node_series::{Formed, Moments, Sides, Weighing, either_side, half_sums};
 use super::ordered::Interrupt;
-use super::reductions::slice_sums;
-use super::signed_tail::signed_tail_shape;
-use super::smooth::smooth;
-use super::vector::exp::exp_slice;
-use super::weight_sums::form;
+use super::signed_tail::{sides_shape, signed_tail_shape};
+use super::smooth_weights::{Weighed, smooth_weights};
+use super::weigh::weigh;
 
 /// Figures of the weights of a node.
 pub const WEIGHT_FIGURES: usize = 10;
@@ -26,39 +25,94 @@ pub const WEIGHT_FIGURES: usize = 10;
 pub const SERIES_FIGURES: usize = 9;
 
 /// What all nodes share.
-pub struct Common<'a> {
-    /// Quantities, `(n,)` each, with their base mean taken off.
-    pub columns: Vec<&'a [f64]>,
-    /// Whether each of these is an event, 0 and 1, and then its base mean; else NaN.
-    pub events: Vec<f64>,
-    /// Weights of the base, smoothed and not, normalised.
-    pub own: &'a [f64],
-    /// As `own`, unsmoothed.
-    pub own_raw: &'a [f64],
+pub struct Common {
+    columns: Vec<Column>,
+    /// Weights of the base, smoothed and not, in rows.
+    own: [Lease; 2],
+    equal_base: bool,
+    chains: Chains,
+    batches: Batches,
+    shift: bool,
+}
+
+/// A quantity with its base mean taken off.
+struct Column {
+    /// In rows.
+    entries: Lease,
+    low: f64,
+    high: f64,
+    /// Base mean of an event, 0 and 1; else NaN.
+    event: f64,
+    /// Mean under the smoothed weights of the base.
+    own: f64,
+}
+
+/// What is asked of all nodes.
+#[derive(Clone, Copy)]
+pub struct Asked<'a> {
+    /// Weights of the base, smoothed and not, normalised, `(n,)`.
+    pub own: [&'a [f64]; 2],
     /// Whether draws without a weight of the base's own move nothing when all ratios are equal.
     pub equal_base: bool,
-    /// The chains.
-    pub chains: Chains,
-    /// Whether the order of the draws is one of time.
-    pub ordered: bool,
-    /// Batches of draws over which the last series of a column is added up.
-    pub batches: Vec<Range<usize>>,
+    /// Where batches of draws begin and, last, end, over which the last series of a column is added up.
+    pub batches: &'a [i64],
     /// Whether differences from the base are studied too.
     pub shift: bool,
 }
 
-impl Common<'_> {
+impl Common {
+    /// For quantities of `(n,)` each, with their base mean taken off, and whether each of these is an
+    /// event, 0 and 1, and then its base mean; else NaN.
+    ///
+    /// # Errors
+    /// [`KernelError::Starts`] when batches do not rise from 0 to the number of draws.
+    pub fn new<'a>(
+        columns: impl Iterator<Item = (&'a [f64], f64)>,
+        chains: Chains,
+        asked: Asked<'_>,
+    ) -> Result<Self, KernelError> {
+        let layout = chains.layout();
+        let in_rows = |series: &[f64]| {
+            let mut entries = Lease::new(layout.entries());
+            layout.place(series, &mut entries);
+            entries
+        };
+        let own = asked.own.map(in_rows);
+        let columns = columns.map(|(f, event)| {
+            let (low, high) = range(f);
+            let entries = in_rows(f);
+            Column {
+                own: half_sums(&entries, &own[0], layout).iter().sum(),
+                entries,
+                low,
+                high,
+                event,
+            }
+        });
+        let batches = long_run::chains(asked.batches, layout.draws(), false)?;
+        Ok(Self {
+            columns: columns.collect(),
+            own,
+            equal_base: asked.equal_base,
+            batches: Batches::new(&batches, layout),
+            shift: asked.shift,
+            chains,
+        })
+    }
+
     /// Numbers that [`study`] writes.
     pub fn width(&self) -> usize {
         let series = SERIES_FIGURES * (1 + usize::from(self.shift));
-        WEIGHT_FIGURES + self.columns.len() * (series + self.batches.len())
+        WEIGHT_FIGURES + self.columns.len() * (series + self.batches.count())
     }
 }
 
-/// Weights of a node, smoothed and not.
+/// Weights of a node, smoothed and not, in rows, and their sums over halves.
+#[derive(Default)]
 struct Weights {
-    linear: Lease,
-    raw: Lease,
+    linear: Series,
+    raw: Series,
+    squares: Vec<f64>,
     varies: bool,
 }
 
@@ -74,192 +128,201 @@ struct Weights {
 /// [`KernelError::Interrupted`]; [`KernelError::Memory`].
 pub fn study(
     x: &[f64],
-    common: &Common<'_>,
+    common: &Common,
     weights: &mut [f64],
     out: &mut [f64],
     room: &mut Room,
     interrupt: &Interrupt<'_>,
 ) -> Result<(), KernelError> {
     let (about, rest) = out.split_at_mut(WEIGHT_FIGURES);
-    let node = weigh(x, common, about, room, interrupt)?;
-    if !weights.is_empty() {
-        weights.copy_from_slice(&node.linear);
-    }
+    weigh_node(x, common, weights, about, room, interrupt)?;
     let series = SERIES_FIGURES * (1 + usize::from(common.shift));
-    let each = series + common.batches.len();
-    let columns = common.columns.iter().zip(&common.events);
-    for ((f, event), out) in columns.zip(rest.chunks_mut(each.max(1))) {
+    let each = series + common.batches.count();
+    for (column, out) in common.columns.iter().zip(rest.chunks_mut(each.max(1))) {
         interrupt.check()?;
         let (figures, sums) = out.split_at_mut(series);
         let (of_value, of_shift) = figures.split_at_mut(SERIES_FIGURES);
-        study_column(f, &node, common, of_value, room, interrupt)?;
-        if !event.is_nan() {
-            [of_value[7], of_value[8]] = either_side(f, 0.5 - event, &node.linear);
+        study_column(column, common, of_value, room, interrupt)?;
+        if !column.event.is_nan() {
+            let linear = &room.node.linear.entries;
+            [of_value[7], of_value[8]] = either_side(&column.entries, 0.5 - column.event, linear);
         }
         if common.shift {
-            study_shift(f, &node, common, of_shift, room, interrupt)?;
+            study_shift(column, common, of_value[0], of_shift, room, interrupt)?;
         }
-        batch_sums(&room.z, &common.batches, sums);
+        common
+            .batches
+            .sums(&room.formed.z, common.chains.layout(), sums);
     }
     Ok(())
 }
 
-fn weigh(
+fn weigh_node(
     x: &[f64],
-    common: &Common<'_>,
+    common: &Common,
+    weights: &mut [f64],
     about: &mut [f64],
     room: &mut Room,
     interrupt: &Interrupt<'_>,
-) -> Result<Weights, KernelError> {
-    let draws = x.len();
-    let mut raw = Lease::new(draws);
-    let log_sum = log_sum_exp(x);
-    shifted(x, log_sum, &mut raw);
-    exp_slice(&mut raw);
+) -> Result<(), KernelError> {
+    let (draws, chains, node) = (x.len(), &common.chains, &mut room.node);
+    let [mut raw, mut linear] = [Lease::new(draws), Lease::new(draws)];
+    let raw_sums = weigh(x, &mut raw, interrupt)?;
     let (least, most) = range(&raw);
+    node.varies = most > least;
+    node.raw.put(&raw, chains.layout());
     let mut efficiency = 1.0;
-    if common.ordered && most > least {
-        let found = common.chains.spread(&raw, &mut room.spectrum, interrupt)?;
-        efficiency = found.efficiency();
+    if chains.ordered() && node.varies {
+        efficiency = chains.spread(&mut node.raw, interrupt)?.efficiency();
     }
-    let mut linear = Lease::new(draws);
-    let shape = smooth(x, efficiency, &mut linear);
-    let sums = slice_sums::<{ form::ALL }>(&linear);
-    let sizes = [
-        sums.effective_size(),
-        sums.entropy_size(),
-        sums.largest_share(),
-    ];
-    exp_slice(&mut linear);
-    let node = Weights {
-        linear,
-        raw,
-        varies: most > least,
+    let weighed = Weighed {
+        x,
+        raw: &raw,
+        sums: raw_sums,
     };
-    let mut share = 1.0;
-    if common.ordered && common.chains.count() > 1 {
-        let w = weight_moments(&node.linear, &node.linear);
-        let pooled = (w[2] - w[0] * w[0] / draws as f64) / draws as f64;
-        let (w, spectrum) = (&node.linear, &mut room.spectrum);
-        share = common
-            .chains
-            .equal_agreement(w, pooled, spectrum, interrupt)?;
+    let (shape, sums) = smooth_weights(weighed, efficiency, &mut linear, interrupt)?;
+    if !weights.is_empty() {
+        weights.copy_from_slice(&linear);
     }
-    let tail = LargestWeights::new(&node.raw, efficiency);
-    let apart = if common.ordered && node.varies {
-        tail.excursions(&common.chains, efficiency)
+    node.linear.put(&linear, chains.layout());
+    let entries = &node.linear.entries;
+    node.squares = half_sums(entries, entries, chains.layout());
+    let mut share = 1.0;
+    if chains.ordered() && chains.count() > 1 {
+        let total: f64 = node.linear.totals.iter().sum();
+        let squares: f64 = node.squares.iter().sum();
+        let pooled = (squares - total * total / draws as f64) / draws as f64;
+        let largest = range(&linear).1;
+        share = chains.equal_agreement(&mut node.linear, pooled, largest, interrupt)?;
+    }
+    let tail = LargestWeights::new(&raw, efficiency);
+    let apart = if chains.ordered() && node.varies {
+        tail.excursions(chains, efficiency)
     } else {
         f64::INFINITY
     };
-    let lost = node.raw.iter().filter(|w| **w == 0.0).count() as f64 / draws as f64;
+    let lost = raw.iter().filter(|w| **w == 0.0).count() as f64 / draws as f64;
     let varies = f64::from(u8::from(node.varies));
-    let figures = [
-        log_sum, shape, sizes[0], sizes[1], sizes[2], tail.share, apart, share, lost, varies,
-    ];
-    about.copy_from_slice(&figures);
-    Ok(node)
-}
-
-fn shifted(x: &[f64], by: f64, out: &mut [f64]) {
-    for (out, x) in out.iter_mut().zip(x) {
-        *out = x - by;
-    }
+    about.copy_from_slice(&[
+        raw_sums.log_sum(),
+        shape,
+        sums.effective_size(),
+        sums.entropy_size(),
+        sums.largest_share(),
+        tail.share,
+        apart,
+        share,
+        lost,
+        varies,
+    ]);
+    Ok(())
 }
 
 /// Work arrays that a task keeps for all its nodes.
 #[derive(Default)]
 pub struct Room {
-    z: Vec<f64>,
-    z_raw: Vec<f64>,
-    chain: Vec<f64>,
-    spectrum: Vec<f64>,
+    node: Weights,
+    formed: Formed,
 }
 
 fn study_column(
-    f: &[f64],
-    node: &Weights,
-    common: &Common<'_>,
+    column: &Column,
+    common: &Common,
     figures: &mut [f64],
     room: &mut Room,
     interrupt: &Interrupt<'_>,
 ) -> Result<(), KernelError> {
-    let scale = f.len() as f64;
-    room.z.resize(f.len(), 0.0);
-    room.z_raw.resize(f.len(), 0.0);
-    let moved = weight_moments(f, &node.linear)[1];
-    let of_z = influence(f, &node.linear, moved, scale, &mut room.z);
-    influence(f, &node.raw, moved, scale, &mut room.z_raw);
+    let (chains, layout, node) = (&common.chains, common.chains.layout(), &room.node);
+    let moments = half_sums(&column.entries, &node.linear.entries, layout);
+    let moved: f64 = moments.iter().sum();
+    let tell = chains.tell();
+    let [own_means, own_scales] = if tell {
+        chains.alone(&moments, &node.linear.totals)
+    } else {
+        [Vec::new(), Vec::new()]
+    };
+    let by = Weighing {
+        w: &node.linear.entries,
+        raw: &node.raw.entries,
+        moved,
+        own_means: &own_means,
+        own_scales: &own_scales,
+    };
+    let (of_z, sides) = room.formed.influence(&column.entries, by, layout);
     figures[0] = moved;
-    figures[1] = of_z.beside / scale;
+    figures[1] = of_z.beside / layout.draws() as f64;
     figures[2] = 1.0;
-    if common.ordered {
+    if tell {
         let test = Test {
-            f,
-            moved,
+            masses: &node.linear.totals,
+            moments: &moments,
+            squares: &node.squares,
             pooled: figures[1],
+            largest: (column.high - moved).max(moved - column.low),
         };
-        let rooms = [&mut room.chain, &mut room.spectrum];
-        figures[2] = common
-            .chains
-            .agreement(&test, &node.linear, rooms, interrupt)?;
+        figures[2] = chains.agreement(&mut room.formed.alone, &test, interrupt)?;
     }
-    study_series(&of_z, common, figures, room, interrupt)
+    study_series((&of_z, sides), chains, figures, &mut room.formed, interrupt)
 }
 
 /// The same of the shift, from what [`study_column`] left in `room`.
 fn study_shift(
-    f: &[f64],
-    node: &Weights,
-    common: &Common<'_>,
+    column: &Column,
+    common: &Common,
+    moved: f64,
     figures: &mut [f64],
     room: &mut Room,
     interrupt: &Interrupt<'_>,
 ) -> Result<(), KernelError> {
-    let scale = f.len() as f64;
-    let mut of_z = Moments::default();
-    if common.equal_base && !node.varies {
+    let (chains, layout) = (&common.chains, common.chains.layout());
+    let mut found = (Moments::default(), Sides::NONE);
+    if common.equal_base && !room.node.varies {
         // Ratios that are all the same move nothing, rounding or not.
-        room.z.fill(0.0);
-        room.z_raw.fill(0.0);
+        room.formed.clear(layout);
         figures[..2].fill(0.0);
     } else {
-        take_base(f, common.own_raw, scale, &mut room.z_raw);
-        of_z = take_base(f, common.own, scale, &mut room.z);
-        let moments = [&node.linear, common.own].map(|w| weight_moments(f, w)[1]);
-        figures[0] = moments[0] - moments[1];
-        figures[1] = of_z.variance();
+        let own = common.own.each_ref().map(|own| &own[..]);
+        found = room.formed.take_base(&column.entries, own, layout);
+        figures[0] = moved - column.own;
+        figures[1] = found.0.variance();
     }
     figures[2] = 1.0;
-    if common.ordered {
-        let (z, spectrum) = (&room.z, &mut room.spectrum);
-        figures[2] = common
-            .chains
-            .equal_agreement(z, figures[1], spectrum, interrupt)?;
+    if chains.ordered() {
+        let (variance, largest) = (figures[1], found.0.largest);
+        let z = &mut room.formed.z;
+        figures[2] = chains.equal_agreement(z, variance, largest, interrupt)?;
     }
-    study_series(&of_z, common, figures, room, interrupt)
+    study_series(
+        (&found.0, found.1),
+        chains,
+        figures,
+        &mut room.formed,
+        interrupt,
+    )
 }
 
-/// Fills entries 3 and on of the figures of a series: long-run variance of `z`; efficiency and tail
-/// shape of `z_raw`, its twin from unsmoothed weights; contributions of `z`.
+/// Fills entries 3 and on of the figures of a series: long-run variance of z; efficiency and tail
+/// shape of its twin from unsmoothed weights; contributions of z.
 fn study_series(
-    of_z: &Moments,
-    common: &Common<'_>,
+    (of_z, sides): (&Moments, Sides),
+    chains: &Chains,
     figures: &mut [f64],
-    room: &mut Room,
+    formed: &mut Formed,
     interrupt: &Interrupt<'_>,
 ) -> Result<(), KernelError> {
-    let (chains, spectrum) = (&common.chains, &mut room.spectrum);
     (figures[3], figures[4]) = (of_z.variance(), 1.0);
-    if common.ordered {
-        figures[3] = chains.spread(&room.z, spectrum, interrupt)?.long_run;
-        figures[4] = chains
-            .spread(&room.z_raw, spectrum, interrupt)?
-            .efficiency();
+    if chains.ordered() {
+        figures[3] = chains.spread(&mut formed.z, interrupt)?.long_run;
+        figures[4] = chains.spread(&mut formed.raw, interrupt)?.efficiency();
     }
-    figures[5] = signed_tail_shape(&room.z_raw, figures[4]);
+    figures[5] = if sides.finite {
+        sides_shape(&formed.raw.entries, [sides.above, sides.below], figures[4])
+    } else {
+        signed_tail_shape(&formed.raw.entries, figures[4])
+    };
     let carried = of_z.contributions();
     figures[6] = if carried.is_nan() {
-        contributions(&room.z)
+        contributions(&chains.layout().restored(&formed.z.entries))
     } else {
         carried
     };

@@ -1,10 +1,11 @@
 //! The generalised Pareto distribution: its fit to exceedances, and its quantiles.
 
-use super::log_sum::maximum;
+use super::log_sum::{maximum, range};
 use super::mean_logs::mean_logs;
 use super::ordered::{sum, sum_by};
 use super::vector::exp::{MOST, exp_m1, exp_slice};
 use super::vector::ln::{ln, ln_slice};
+use super::vector::rank::nth_largest;
 use super::vector::{Arithmetic, Work, dispatch};
 
 /// Fewest exceedances that are fitted.
@@ -152,33 +153,14 @@ pub fn fit(x: &[f64]) -> Pareto {
     fit_sorted(&sorted)
 }
 
-/// As [`fit`], which it is but for the order of sums; `x` comes out in another order. Only the
-/// extremes and the quartile have to be in their places.
-pub fn fit_any(x: &mut [f64]) -> Pareto {
-    let last = x.len().saturating_sub(1);
+/// As [`fit`], which it is but for the order of sums: nothing is sorted.
+pub fn fit_any(x: &[f64]) -> Pareto {
     let rank = (x.len() + 2) / 4;
-    if rank == 0 || rank > last {
-        return fit(x);
+    let (least, largest) = range(x);
+    match nth_largest(x, (x.len() + 1).saturating_sub(rank)) {
+        Some(quartile) if quartile > 0.0 && rank > 0 => fit_between(x, [least, quartile, largest]),
+        _ => fit(x),
     }
-    let (below, &mut quartile, above) = x.select_nth_unstable_by(rank - 1, f64::total_cmp);
-    if quartile <= 0.0 {
-        return fit(x);
-    }
-    let place = |part: &[f64], better: fn(f64, f64) -> bool| {
-        (1..part.len()).fold(
-            0,
-            |best, i| if better(part[i], part[best]) { i } else { best },
-        )
-    };
-    let most = rank + place(above, |a, b| a > b);
-    let least = if below.is_empty() {
-        0
-    } else {
-        place(below, |a, b| a < b)
-    };
-    x.swap(most, last);
-    x.swap(least, 0);
-    fit_sorted(x)
 }
 
 /// As [`fit`], for exceedances in ascending order.
@@ -186,6 +168,11 @@ pub fn fit_sorted(x: &[f64]) -> Pareto {
     let (Some(&least), Some(&largest)) = (x.first(), x.last()) else {
         return Pareto::UNDEFINED;
     };
+    fit_between(x, [least, quartile(x), largest])
+}
+
+/// As [`fit`], the least, the quartile and the largest being known.
+fn fit_between(x: &[f64], [least, quartile, largest]: [f64; 3]) -> Pareto {
     let legal = least >= 0.0 && largest.is_finite() && !x.iter().any(|entry| entry.is_nan());
     if x.len() < FEWEST || !legal {
         return Pareto::UNDEFINED;
@@ -198,7 +185,7 @@ pub fn fit_sorted(x: &[f64]) -> Pareto {
     }
     // In units of the largest no grid point can overflow, and the shape has no unit.
     let unit: Vec<f64> = x.iter().map(|entry| entry / largest).collect();
-    let b = likely_b(&unit);
+    let b = likely_b(&unit, (quartile / largest).max(LEAST_QUARTILE));
     let [shape] = mean_logs(&unit, [b]);
     let scale = if b == 0.0 { mean(&unit) } else { -shape / b };
     Pareto {
@@ -207,10 +194,9 @@ pub fn fit_sorted(x: &[f64]) -> Pareto {
     }
 }
 
-/// Likelihood-weighted mean of the grid `b_j` for sorted exceedances whose largest is 1.
-fn likely_b(x: &[f64]) -> f64 {
+/// Likelihood-weighted mean of the grid `b_j` for exceedances whose largest is 1.
+fn likely_b(x: &[f64], quartile: f64) -> f64 {
     let count = x.len() as f64;
-    let quartile = quartile(x);
     let points = GRID + x.len().isqrt();
     let mut grid: Vec<f64> = (1..=points)
         .map(|j| 1.0 + (1.0 - (points as f64 / (j as f64 - 0.5)).sqrt()) / (3.0 * quartile))
@@ -237,16 +223,14 @@ fn likely_b(x: &[f64]) -> f64 {
     sum_by(points, |j| weights[j] * grid[j]) / sum(&weights)
 }
 
-/// The exceedance of rank `⌊n/4 + ½⌋`, or the smallest positive one if that is 0.
+/// The exceedance of rank `⌊n/4 + ½⌋`, or the smallest positive one if that is 0; in ascending order.
 fn quartile(x: &[f64]) -> f64 {
     let rank = (x.len() + 2) / 4;
     let at_rank = x.get(rank.saturating_sub(1)).copied().unwrap_or(0.0);
-    let positive = if at_rank > 0.0 {
-        at_rank
-    } else {
-        x.iter().copied().find(|&entry| entry > 0.0).unwrap_or(1.0)
-    };
-    positive.max(LEAST_QUARTILE)
+    if at_rank > 0.0 {
+        return at_rank;
+    }
+    x.iter().copied().find(|&entry| entry > 0.0).unwrap_or(1.0)
 }
 
 fn mean(x: &[f64]) -> f64 {

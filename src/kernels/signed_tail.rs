@@ -1,11 +1,15 @@
 //! The tail shape of influence values, which may be heavy on either side.
 
-use super::largest::largest_values;
 use super::pareto::{self, FEWEST};
-use super::tail::tail_length;
+use super::tail::{Room, tail_length, with_room};
+use super::vector::rank::{count_at_least, nth_largest};
+use super::vector::select::beyond;
 use super::vector::{Arithmetic, Work, dispatch};
 
 const LANES: usize = 8;
+
+/// Rank at which the bounds of the sample are aimed: their counts vary by a fifth.
+const SAMPLE_RANK: usize = 24;
 
 /// Tail shape of influence values `z`, shape `(n,)`, natural scale, any sign.
 ///
@@ -15,13 +19,97 @@ const LANES: usize = 8;
 /// shape of the sides that count, `−inf` if none does. It does not change with the unit of `z`.
 /// NaN or an infinite entry gives NaN.
 pub fn signed_tail_shape(z: &[f64], relative_efficiency: f64) -> f64 {
-    let sides = dispatch(Sides(z));
-    if sides.zero.is_nan() {
+    let found = dispatch(CountSides(z));
+    if found.zero.is_nan() {
         return f64::NAN;
     }
-    let upper = side_shape(z, 1.0, sides.above as usize, relative_efficiency);
-    let lower = side_shape(z, -1.0, sides.below as usize, relative_efficiency);
-    upper.max(lower)
+    sides_shape(
+        z,
+        [found.above as usize, found.below as usize],
+        relative_efficiency,
+    )
+}
+
+/// The same where `sides` values are known to lie above 0 and below, and all to be finite.
+pub(super) fn sides_shape(z: &[f64], sides: [usize; 2], relative_efficiency: f64) -> f64 {
+    let lengths = sides.map(|side| {
+        let length = tail_length(side, relative_efficiency);
+        if length < FEWEST { 0 } else { length }
+    });
+    if lengths == [0, 0] {
+        return f64::NEG_INFINITY;
+    }
+    with_room(|room| {
+        let Room {
+            sample,
+            beyond: found,
+            exceedances,
+            ..
+        } = room;
+        let [low, high] = bounds(z, lengths, sample);
+        beyond(z, low, high, found);
+        let upper = side_shape(z, 1.0, lengths[0], (found, high), exceedances);
+        found.iter_mut().for_each(|value| *value = -*value);
+        let lower = side_shape(z, -1.0, lengths[1], (found, -low), exceedances);
+        upper.max(lower)
+    })
+}
+
+/// Values of both signs beyond which a few more lie than are sought; 0 where a sample cannot tell.
+fn bounds(z: &[f64], lengths: [usize; 2], sample: &mut Vec<f64>) -> [f64; 2] {
+    let most = lengths[0].max(lengths[1]) + 1;
+    let size = SAMPLE_RANK * z.len() / (2 * most);
+    if size < 2 * SAMPLE_RANK || 4 * size > z.len() {
+        return [0.0; 2];
+    }
+    sample.clear();
+    sample.extend(z.iter().step_by(z.len() / size));
+    // Twice what is sought of the longer tail; of the other as much more as a small sample needs.
+    let rank = |length: usize| {
+        (SAMPLE_RANK * (length + 1))
+            .div_ceil(most)
+            .max(SAMPLE_RANK / 3)
+    };
+    let mut bound = |length: usize| {
+        let bound = if length == 0 {
+            f64::INFINITY
+        } else {
+            nth_largest(sample, rank(length)).unwrap_or(0.0).max(0.0)
+        };
+        sample.iter_mut().for_each(|value| *value = -*value);
+        bound
+    };
+    let high = bound(lengths[0]);
+    [-bound(lengths[1]), high]
+}
+
+/// Shape of the `length` largest of `sign · z`; those of at least `bound` are among `found`.
+fn side_shape(
+    z: &[f64],
+    sign: f64,
+    length: usize,
+    (found, bound): (&mut Vec<f64>, f64),
+    exceedances: &mut Vec<f64>,
+) -> f64 {
+    if length == 0 {
+        return f64::NEG_INFINITY;
+    }
+    let needed = length + 1;
+    let mut all = Vec::new();
+    let mut values = &found[..];
+    if bound == 0.0 || count_at_least(values, bound) < needed {
+        all.extend(z.iter().map(|z| sign * z).filter(|z| *z > 0.0));
+        values = &all;
+    }
+    // At most a fifth of the side, so that the cut-off is one of its values.
+    let Some(cutoff) = nth_largest(values, needed) else {
+        return f64::INFINITY;
+    };
+    beyond(values, f64::NEG_INFINITY, cutoff.next_up(), exceedances);
+    exceedances.iter_mut().for_each(|value| *value -= cutoff);
+    // What ties with the cut-off does not exceed it.
+    exceedances.resize(length, 0.0);
+    pareto::fit_any(exceedances).shrunk(length).shape
 }
 
 /// Values above and below 0; 0, or NaN where a value is not finite.
@@ -31,9 +119,9 @@ struct Found {
     zero: f64,
 }
 
-struct Sides<'a>(&'a [f64]);
+struct CountSides<'a>(&'a [f64]);
 
-impl Work for Sides<'_> {
+impl Work for CountSides<'_> {
     type Output = Found;
 
     #[inline(always)]
@@ -60,17 +148,4 @@ impl Work for Sides<'_> {
             zero: zero.iter().sum(),
         }
     }
-}
-
-fn side_shape(z: &[f64], sign: f64, side: usize, relative_efficiency: f64) -> f64 {
-    let length = tail_length(side, relative_efficiency);
-    if length < FEWEST {
-        return f64::NEG_INFINITY;
-    }
-    // At most a fifth of the side, so that the cut-off has the same sign.
-    let Some((mut tail, cutoff)) = largest_values(z, sign, length) else {
-        return f64::INFINITY;
-    };
-    tail.iter_mut().for_each(|value| *value -= cutoff);
-    pareto::fit_any(&mut tail).shrunk(length).shape
 }

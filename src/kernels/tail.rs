@@ -91,7 +91,9 @@ impl Found {
 #[derive(Default)]
 pub(super) struct Room {
     pub(super) finder: Finder,
-    exceedances: Vec<f64>,
+    pub(super) exceedances: Vec<f64>,
+    pub(super) sample: Vec<f64>,
+    pub(super) beyond: Vec<f64>,
     pub(super) quantiles: Quantiles,
 }
 

@@ -1,7 +1,10 @@
 use _core::kernels::chains::{Chains, Test};
 use _core::kernels::f_tail::f_tail;
+use _core::kernels::lane_series::Series;
+use _core::kernels::lease::Lease;
 use _core::kernels::long_run::long_run_variance;
 use _core::kernels::mean::weighted_moments;
+use _core::kernels::node_series::{Formed, Weighing, half_sums};
 use _core::kernels::ordered::Interrupt;
 
 use super::support::{Stream, close};
@@ -23,12 +26,40 @@ fn starts() -> Vec<i64> {
 }
 
 fn found(f: &[f64], w: &[f64]) -> f64 {
+    agreement(f, w, &starts())
+}
+
+fn agreement(f: &[f64], w: &[f64], starts: &[i64]) -> f64 {
     let (moved, pooled) = weighted_moments(f, w);
-    let chains = Chains::new(&starts(), f.len()).unwrap();
-    let test = Test { f, moved, pooled };
-    let rooms = [&mut Vec::new(), &mut Vec::new()];
+    let chains = Chains::new(starts, f.len(), true).unwrap();
+    let layout = chains.layout();
+    let [f_rows, w_rows] = [f, w].map(|series| {
+        let mut rows = Lease::new(layout.entries());
+        layout.place(series, &mut rows);
+        rows
+    });
+    let ones = vec![1.0; layout.entries()];
+    let [masses, moments, squares] =
+        [&ones[..], &f_rows, &w_rows].map(|by| half_sums(by, &w_rows, layout));
+    let [own_means, own_scales] = chains.alone(&moments, &masses);
+    let by = Weighing {
+        w: &w_rows,
+        raw: &w_rows,
+        moved,
+        own_means: &own_means,
+        own_scales: &own_scales,
+    };
+    let mut formed = Formed::default();
+    formed.influence(&f_rows, by, layout);
+    let test = Test {
+        masses: &masses,
+        moments: &moments,
+        squares: &squares,
+        pooled,
+        largest: f.iter().fold(0.0, |most, f| (f - moved).abs().max(most)),
+    };
     chains
-        .agreement(&test, w, rooms, &Interrupt::never())
+        .agreement(&mut formed.alone, &test, &Interrupt::never())
         .unwrap()
 }
 
@@ -91,9 +122,11 @@ fn equal_weights_are_the_plain_means() {
     let (f, _) = draws(2);
     let equal = vec![1.0 / f.len() as f64; f.len()];
     let (_, pooled) = weighted_moments(&f, &equal);
-    let chains = Chains::new(&starts(), f.len()).unwrap();
+    let chains = Chains::new(&starts(), f.len(), true).unwrap();
+    let mut z = Series::default();
+    z.put(&f, chains.layout());
     let plain = chains
-        .equal_agreement(&f, pooled, &mut Vec::new(), &Interrupt::never())
+        .equal_agreement(&mut z, pooled, 1.0, &Interrupt::never())
         .unwrap();
     assert!(close(plain, found(&f, &equal), 1e-9));
 }
@@ -102,17 +135,7 @@ fn equal_weights_are_the_plain_means() {
 fn one_chain_and_short_chains_say_nothing() {
     let (f, w) = draws(3);
     for starts in [vec![0, f.len() as i64], (0..=40).map(|c| c * 20).collect()] {
-        let (moved, pooled) = weighted_moments(&f, &w);
-        let chains = Chains::new(&starts, f.len()).unwrap();
-        let test = Test {
-            f: &f,
-            moved,
-            pooled,
-        };
-        let rooms = [&mut Vec::new(), &mut Vec::new()];
-        let p = chains
-            .agreement(&test, &w, rooms, &Interrupt::never())
-            .unwrap();
+        let p = agreement(&f, &w, &starts);
         assert_eq!(p.to_bits(), 1.0_f64.to_bits());
     }
 }

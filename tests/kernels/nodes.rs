@@ -3,7 +3,7 @@ use _core::kernels::effective::{effective_size, entropy_size, largest_share};
 use _core::kernels::log_sum::log_sum_exp;
 use _core::kernels::long_run::{chains, long_run_variance};
 use _core::kernels::mean::{contributions, mean_square, weighted_mean};
-use _core::kernels::nodes::{Common, Room, SERIES_FIGURES, WEIGHT_FIGURES, study};
+use _core::kernels::nodes::{Asked, Common, Room, SERIES_FIGURES, WEIGHT_FIGURES, study};
 use _core::kernels::ordered::Interrupt;
 use _core::kernels::signed_tail::signed_tail_shape;
 use _core::kernels::smooth::smooth;
@@ -43,6 +43,18 @@ fn series(z: &[f64], z_raw: &[f64]) -> Vec<f64> {
     ]
 }
 
+fn common(f: &[f64], event: f64, batches: &[i64]) -> Common {
+    let own = vec![1.0 / DRAWS as f64; DRAWS];
+    let asked = Asked {
+        own: [&own, &own],
+        equal_base: true,
+        batches,
+        shift: true,
+    };
+    let chains = Chains::new(&STARTS, DRAWS, true).unwrap();
+    Common::new(std::iter::once((f, event)), chains, asked).unwrap()
+}
+
 #[test]
 fn figures_are_those_of_the_single_kernels() {
     let x: Vec<f64> = uniform(1).iter().map(|u| -2.0 * (1.0 - u).ln()).collect();
@@ -52,18 +64,7 @@ fn figures_are_those_of_the_single_kernels() {
             .map(|u| f64::from(u8::from(*u > 0.6)))
             .collect(),
     );
-    let own = vec![1.0 / DRAWS as f64; DRAWS];
-    let common = Common {
-        columns: vec![&f],
-        events: vec![mean],
-        own: &own,
-        own_raw: &own,
-        equal_base: true,
-        chains: Chains::new(&STARTS, DRAWS).unwrap(),
-        ordered: true,
-        batches: vec![0..300, 300..600],
-        shift: true,
-    };
+    let common = common(&f, mean, &[0, 300, 600]);
     let mut out = vec![f64::NAN; common.width()];
     let mut weights = vec![f64::NAN; DRAWS];
     let mut room = Room::default();
@@ -130,18 +131,7 @@ fn figures_are_those_of_the_single_kernels() {
 #[test]
 fn equal_ratios_move_nothing() {
     let (f, _) = centred(uniform(5));
-    let own = vec![1.0 / DRAWS as f64; DRAWS];
-    let common = Common {
-        columns: vec![&f],
-        events: vec![f64::NAN],
-        own: &own,
-        own_raw: &own,
-        equal_base: true,
-        chains: Chains::new(&STARTS, DRAWS).unwrap(),
-        ordered: true,
-        batches: Vec::new(),
-        shift: true,
-    };
+    let common = common(&f, f64::NAN, &[0, 600]);
     let mut out = vec![f64::NAN; common.width()];
     let x = vec![0.7; DRAWS];
     study(

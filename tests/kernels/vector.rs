@@ -1,7 +1,8 @@
 use _core::kernels::ordered::sum_by;
 use _core::kernels::vector::dot::{dot, lagged};
 use _core::kernels::vector::exp::{ExpSlice, LEAST, MOST, exp_m1, exp_slice};
-use _core::kernels::vector::select::{AtLeast, at_least};
+use _core::kernels::vector::rank::{Halving, count_at_least, nth_largest};
+use _core::kernels::vector::select::{AtLeast, at_least, beyond};
 use _core::kernels::vector::stream::{copy_past, fence};
 use _core::kernels::vector::transpose::{LINE, columns_to_rows, rows_to_columns};
 use _core::kernels::vector::{Fused, Separate, dispatch_plain};
@@ -183,4 +184,54 @@ fn the_places_of_large_values_are_those_of_a_plain_search() {
             assert_eq!(found, expected);
         }
     }
+}
+
+#[test]
+fn values_beyond_bounds_are_found_in_order() {
+    let mut stream = Stream::new(31);
+    for count in [0, 1, 7, 8, 9, 511, 512, 513, 3000] {
+        let values: Vec<f64> = (0..count).map(|_| stream.normal()).collect();
+        for (low, high) in [(-1.0, 1.0), (0.0, 0.0), (f64::NEG_INFINITY, 2.0)] {
+            let expected: Vec<f64> = values
+                .iter()
+                .copied()
+                .filter(|&value| value >= high || value <= low)
+                .collect();
+            let mut found = vec![f64::NAN; 3];
+            beyond(&values, low, high, &mut found);
+            assert_eq!(found, expected);
+        }
+    }
+}
+
+proptest! {
+    #![proptest_config(fixed(300))]
+
+    #[test]
+    fn a_rank_is_that_of_a_full_sort(
+        values in prop::collection::vec(
+            prop_oneof![4 => -3.0..3.0, 1 => Just(0.5), 1 => 1e3..1e300, 1 => -1e-300..1e-300], 1..400
+        ),
+        share in 0.0..1.0,
+    ) {
+        let rank = 1 + (share * values.len() as f64) as usize;
+        let mut sorted: Vec<f64> = values.clone();
+        sorted.sort_by(|a: &f64, b: &f64| b.total_cmp(a));
+        let expected = sorted.get(rank - 1).copied();
+        prop_assert_eq!(nth_largest(&values, rank), expected);
+        let plain = dispatch_plain(Halving { values: &values, rank });
+        prop_assert!(plain.is_none() || plain == expected);
+        let least = sorted[sorted.len() / 2];
+        prop_assert_eq!(
+            count_at_least(&values, least), values.iter().filter(|value| **value >= least).count()
+        );
+    }
+}
+
+#[test]
+fn ranks_that_are_not_there_are_none() {
+    assert_eq!(nth_largest(&[], 1), None);
+    assert_eq!(nth_largest(&[1.0, 2.0], 0), None);
+    assert_eq!(nth_largest(&[1.0, 2.0], 3), None);
+    assert_eq!(nth_largest(&[1.0; 40], 17), Some(1.0));
 }

@@ -59,13 +59,29 @@ impl Work for AtLeast<'_> {
     }
 }
 
+/// Replaces `found` by the values of at least `high` or at most `low`, in order.
+pub fn beyond(values: &[f64], low: f64, high: f64, found: &mut Vec<f64>) {
+    found.clear();
+    #[cfg(target_arch = "x86_64")]
+    if is_x86_feature_detected!("avx512f") {
+        // SAFETY: the feature that the function is compiled for was found just above.
+        unsafe { x86::beyond(values, low, high, found) };
+        return;
+    }
+    found.extend(
+        values
+            .iter()
+            .filter(|value| **value >= high || **value <= low),
+    );
+}
+
 #[cfg(target_arch = "x86_64")]
 mod x86 {
     use super::CHUNK;
     use std::arch::x86_64::{
-        _CMP_GE_OQ, _mm512_add_epi32, _mm512_cmp_pd_mask, _mm512_loadu_pd,
-        _mm512_maskz_compress_epi32, _mm512_mul_pd, _mm512_set1_epi32, _mm512_set1_pd,
-        _mm512_setr_epi32, _mm512_storeu_si512,
+        _CMP_GE_OQ, _CMP_LE_OQ, _mm512_add_epi32, _mm512_cmp_pd_mask, _mm512_loadu_pd,
+        _mm512_maskz_compress_epi32, _mm512_maskz_compress_pd, _mm512_mul_pd, _mm512_set1_epi32,
+        _mm512_set1_pd, _mm512_setr_epi32, _mm512_storeu_pd, _mm512_storeu_si512,
     };
 
     /// Values between two looks at the room that is left.
@@ -104,6 +120,34 @@ mod x86 {
                     found.push(index);
                 }
             }
+        }
+    }
+
+    /// Values of a vector.
+    const LANES: usize = 8;
+
+    #[target_feature(enable = "avx512f")]
+    pub(super) fn beyond(values: &[f64], low: f64, high: f64, found: &mut Vec<f64>) {
+        let (lows, highs) = (_mm512_set1_pd(low), _mm512_set1_pd(high));
+        for values in values.chunks(PART) {
+            found.reserve(PART + LANES);
+            let (chunks, rest) = values.as_chunks::<LANES>();
+            let mut length = found.len();
+            for chunk in chunks {
+                // SAFETY: all of an array of eight.
+                let row = unsafe { _mm512_loadu_pd(chunk.as_ptr()) };
+                let mask = _mm512_cmp_pd_mask::<_CMP_GE_OQ>(row, highs)
+                    | _mm512_cmp_pd_mask::<_CMP_LE_OQ>(row, lows);
+                let chosen = _mm512_maskz_compress_pd(mask, row);
+                // SAFETY: room for a whole chunk behind all that this part can add was reserved; the
+                // first entries of `chosen`, as many as `mask` has bits, are values.
+                unsafe { _mm512_storeu_pd(found.as_mut_ptr().add(length), chosen) };
+                length += mask.count_ones() as usize;
+            }
+            // SAFETY: the entries up to `length` were written just above, within the room reserved.
+            unsafe { found.set_len(length) };
+            let beyond = |value: &&f64| **value >= high || **value <= low;
+            found.extend(rest.iter().filter(beyond));
         }
     }
 }

@@ -1,16 +1,21 @@
+use _core::kernels::lane_series::{Series, Spread};
+use _core::kernels::lanes::Layout;
 use _core::kernels::long_run::{chains, long_run_variance};
 use _core::kernels::mean::mean_square;
 use _core::kernels::ordered::Interrupt;
-use _core::kernels::spectrum::{Spread, spread};
 use proptest::prelude::*;
 
 use super::support::{Stream, close, fixed};
 
 fn found(z: &[f64], starts: &[i64]) -> Spread {
-    let chains = chains(starts, z.len(), true).unwrap();
+    let layout = Layout::new(chains(starts, z.len(), true).unwrap());
+    let mut series = Series::default();
     // Whatever the work array held before must not show.
-    let mut room = vec![f64::NAN; 7];
-    spread(z, &chains, &mut room, &Interrupt::never()).unwrap()
+    series.begin(&layout);
+    series.entries.fill(f64::NAN);
+    series.put(z, &layout);
+    let all = 0..layout.halves().len();
+    series.spread(all, &layout, &Interrupt::never()).unwrap()
 }
 
 fn twin(z: &[f64], starts: &[i64]) -> Spread {
@@ -52,6 +57,26 @@ proptest! {
         let unit = theirs.variance.max(1e-300);
         prop_assert!(close(ours.variance / unit, theirs.variance / unit, 1e-9));
         prop_assert!(close(ours.long_run / unit, theirs.long_run / unit, 1e-9));
+    }
+}
+
+#[test]
+fn a_chain_alone_has_its_own() {
+    let lengths = [90, 1, 700, 33, 64, 3];
+    let (z, starts) = series(0.6, 2.0, &lengths, 11);
+    let halves = chains(&starts, z.len(), true).unwrap();
+    let layout = Layout::new(halves.clone());
+    let mut placed = Series::default();
+    placed.put(&z, &layout);
+    for pair in starts.windows(2) {
+        let (from, to) = (pair[0] as usize, pair[1] as usize);
+        let first = halves.iter().position(|half| half.start == from).unwrap();
+        let last = halves.iter().position(|half| half.end == to).unwrap();
+        let ours = placed.spread(first..last + 1, &layout, &Interrupt::never());
+        let theirs = twin(&z[from..to], &[0, (to - from) as i64]);
+        let ours = ours.unwrap();
+        assert!(close(ours.variance, theirs.variance, 1e-12));
+        assert!(close(ours.long_run, theirs.long_run, 1e-12));
     }
 }
 
