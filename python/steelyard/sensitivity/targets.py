@@ -22,12 +22,14 @@ from steelyard.densities.cumulative import Elementwise
 from steelyard.densities.distribution import _quiet
 from steelyard.errors import SteelyardError
 from steelyard.verdicts import Finding, judge
+from steelyard.weighing.matched import Matched, gamma_or_beta_widened, may_match
 from steelyard.weighing.preflight import (
     distance_from_mean,
-    gamma_or_beta_widened,
     precision_lost,
     preflight,
     root_covariance,
+    slower_precision,
+    tail_precision,
 )
 from steelyard.weighing.supports import support_findings
 
@@ -78,6 +80,7 @@ class Targets:
     _swaps: dict[Swap, _Swapped] = field(default_factory=dict)
     _gaps: dict[tuple[str, float, float], tuple[Finding, ...]] = field(default_factory=dict)
     _roots: dict[tuple[str, ...], tuple[Array | None, Array]] = field(default_factory=dict)
+    _matched: dict[str, Matched | None] = field(default_factory=dict)
 
     def form(self, changes: Sequence[Change]) -> Formed:
         """Log ratios of several changes, the same to the last bit as those of `form_target`."""
@@ -152,11 +155,50 @@ class Targets:
             for start in range(0, len(densities), _WIDTH):
                 part = densities[start : start + _WIDTH]
                 deltas = _together(self.base, term, family, part)
-                for i, density in enumerate(part):
-                    delta = _alone(self.base, term, density) if deltas is None else deltas[i]
+                if deltas is not None:
+                    described = self._described_together(term, part, deltas)
+                else:
+                    alone = [_alone(self.base, term, density) for density in part]
+                    described = [
+                        self._described(term, *one) for one in zip(part, alone, strict=True)
+                    ]
+                for density, one in zip(part, described, strict=True):
                     # What is not a ratio is refused, with words, where the target is formed.
-                    if delta is None or delta.max() < np.inf:
-                        self._swaps[label, density] = self._described(term, density, delta)
+                    if one.delta is None or one.delta.max() < np.inf:
+                        self._swaps[label, density] = one
+
+    def _described_together(
+        self, term: PriorTerm, densities: Sequence[Distribution], deltas: Array
+    ) -> list[_Swapped]:
+        """`_described` of densities of one family whose hyperparameters are numbers."""
+        base, label = self.base, term.label
+        if base.log_weights is not None:
+            deltas = np.where(has_weight(base), deltas, 0.0)
+        many = type(densities[0])(*(hyper[:, 0] for hyper in _columns(densities)))
+        tails = many.tails((len(densities),))
+        if label not in self._matched:
+            self._matched[label] = Matched.of(base, term)
+        matched = self._matched[label] if may_match(many) else None
+        shapes = np.full(len(densities), -np.inf)
+        if matched is not None:
+            shapes[:] = matched.tail_shape(tails, 1.0)
+        lost = np.full(len(densities), np.nan)
+        one = PriorTarget(term, PriorTerm(term.key, densities[0]))
+        about = distance_from_mean(one, base)
+        before = None if about is None else tail_precision(term.density, about, base)
+        if before is not None:
+            after = slower_precision(tails)
+            lost[:] = np.where(np.isfinite(after), before - after, np.nan)
+        limits = [np.broadcast_to(limit, len(densities)).tolist() for limit in many.support()]
+        found = []
+        for i, density in enumerate(densities):
+            one = PriorTarget(term, PriorTerm(term.key, density))
+            findings = self._gap_at(one, (limits[0][i], limits[1][i]))
+            if matched is not None and shapes[i] > 0:
+                findings += (matched.finding(label, float(shapes[i])),)
+            known = None if np.isnan(lost[i]) else lost[i : i + 1]
+            found.append(_Swapped(deltas[i], findings, known))
+        return found
 
     def _described(self, term: PriorTerm, density: Distribution, delta: Array | None) -> _Swapped:
         base = self.base
@@ -170,13 +212,17 @@ class Targets:
 
     def _gap(self, one: PriorTarget, density: Distribution) -> tuple[Finding, ...]:
         """Findings about supports, which depend on the new density's limits alone."""
-        swapped = Target({one.base.label: one}, {}, {}, np.empty(0))
         hyper = [getattr(density, name) for name in density.numbers]
         if not isinstance(density, Elementwise) or not all(isinstance(h, float) for h in hyper):
+            swapped = Target({one.base.label: one}, {}, {}, np.empty(0))
             return tuple(support_findings(self.base, swapped))
-        limits = density._support(*map(np.float64, hyper))
-        key = (one.base.label, float(limits[0]), float(limits[1]))
+        lower, upper = density._support(*map(np.float64, hyper))
+        return self._gap_at(one, (float(lower), float(upper)))
+
+    def _gap_at(self, one: PriorTarget, limits: tuple[float, float]) -> tuple[Finding, ...]:
+        key = (one.base.label, *limits)
         if key not in self._gaps:
+            swapped = Target({one.base.label: one}, {}, {}, np.empty(0))
             self._gaps[key] = tuple(support_findings(self.base, swapped))
         return self._gaps[key]
 
@@ -256,13 +302,13 @@ def _together(
     if len(densities) < 2 or not issubclass(family, Elementwise):
         return None
     value = term.value(base.draws)
-    rows = [[getattr(d, name) for name in d.numbers] for d in densities]
-    if value.ndim != 1 or not all(isinstance(v, float) for row in rows for v in row):
+    rows = [getattr(d, name) for d in densities for name in d.numbers]
+    if value.ndim != 1 or not all(isinstance(v, float) for v in rows):
         return None
     old = term.log_density_checked(base.draws)
     if not np.isfinite(old[has_weight(base)]).all():
         return None
-    hyper = [np.array(column)[:, None] for column in zip(*rows, strict=True)]
+    hyper = _columns(densities)
     x = np.broadcast_to(np.ascontiguousarray(value), (len(densities), len(value)))
     with _quiet():
         new = densities[0]._log_density(x, *hyper)
@@ -271,6 +317,12 @@ def _together(
         if density == term.density:
             out[i] = 0.0  # no change at all, rounding or not
     return out
+
+
+def _columns(densities: Sequence[Distribution]) -> list[Array]:
+    """Each hyperparameter of all densities, as a column."""
+    names = densities[0].numbers
+    return [np.array([getattr(d, name) for d in densities])[:, None] for name in names]
 
 
 def _spoken(told: Sequence[tuple[int, Finding]], count: int) -> list[Finding]:

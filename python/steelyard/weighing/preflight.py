@@ -18,18 +18,20 @@ from steelyard.changes.merging import PriorTarget
 from steelyard.changes.noise import NoisyTerm
 from steelyard.changes.target import Target
 from steelyard.densities import Distribution, Normal
-from steelyard.densities.tails import Tail
+from steelyard.densities.tails import Tails
 from steelyard.verdicts import Finding, judge
+from steelyard.weighing.matched import gamma_or_beta_widened
 from steelyard.weighing.series import variance_and_efficiency
 from steelyard.weighing.supports import support_findings
 from steelyard.weighing.weigh import base_weights
 
 __all__ = [
     "distance_from_mean",
-    "gamma_or_beta_widened",
     "precision_lost",
     "preflight",
     "root_covariance",
+    "slower_precision",
+    "tail_precision",
 ]
 
 # Above this many parameters the covariance of the draws is too costly to be worth it.
@@ -114,7 +116,7 @@ def _normal_throughout(base: Base, target: Target, loss: Loss | None) -> list[Fi
         if not isinstance(old, Normal) or not isinstance(term.key, str) or old.names:
             return None
         value = prior.base.value(base.draws)
-        precisions = [_tail_precision(d, value, base) for d in (old, new)]
+        precisions = [tail_precision(d, value, base) for d in (old, new)]
         if precisions[0] is None or precisions[1] is None:
             return None
         values.append(value.reshape(base.draws.size, -1))
@@ -133,7 +135,7 @@ def _normal_throughout(base: Base, target: Target, loss: Loss | None) -> list[Fi
     return [_loosened(loss, float(np.linalg.eigvalsh(fall)[-1]))]
 
 
-def _tail_precision(density: Any, value: Array, base: Base) -> Array | None:
+def tail_precision(density: Any, value: Array, base: Base) -> Array | None:
     """
     Precision of the slower of a density's tails: 0 for heavier than normal ones.
 
@@ -141,12 +143,16 @@ def _tail_precision(density: Any, value: Array, base: Base) -> Array | None:
     """
     if not isinstance(density, Distribution):
         return None
-    tails = density.tails(value.shape, look_up=base.draws.look_up)
-    slower = np.minimum(tails.lower.precision, tails.upper.precision)
+    slower = slower_precision(density.tails(value.shape, look_up=base.draws.look_up))
     if (slower.ndim == value.ndim and slower.shape[0] > 1) or not np.isfinite(slower).all():
         return None
     along = np.broadcast_shapes(slower.shape, (1, *value.shape[1:]))
     return np.asarray(np.broadcast_to(slower, along)[0])
+
+
+def slower_precision(tails: Tails) -> Array:
+    """Precision of the slower of two tails."""
+    return np.minimum(tails.lower.precision, tails.upper.precision)
 
 
 def _normal_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:
@@ -182,8 +188,8 @@ def precision_lost(prior: PriorTarget, base: Base) -> tuple[Array, Array] | None
     about = distance_from_mean(prior, base)
     if about is None:
         return None
-    before = _tail_precision(prior.base.density, about, base)
-    after = _tail_precision(prior.density.density, about, base)
+    before = tail_precision(prior.base.density, about, base)
+    after = tail_precision(prior.density.density, about, base)
     if before is None or after is None:
         return None
     return about, (before - prior.factor * after).reshape(-1)
@@ -237,64 +243,6 @@ def root_covariance(values: Array, base: Base) -> tuple[Array | None, Array]:
     eigenvalues, vectors = np.linalg.eigh(covariance)
     unbiased = 1 - 1 / weights.effective_size
     return vectors * np.sqrt(np.maximum(eigenvalues, 0.0) / unbiased), natural
-
-
-def gamma_or_beta_widened(base: Base, priors: Mapping[str, PriorTarget]) -> list[Finding]:
-    """
-    The same for gamma and beta priors, whose posterior is matched by its mean and variance.
-
-    A gamma posterior (A, B) whose prior loses a in shape and b in rate has weights of tail shape
-    ``max(a/A, b/B)``; a beta posterior (A, B) whose prior loses a and b the same. Exact where the
-    prior is conjugate, and then derived in one line from the density of the weights.
-    """
-    findings = []
-    for label, prior in priors.items():
-        shape, posterior = _matched_shape(base, prior)
-        if np.any(shape > 0):
-            figure = float(np.max(shape))
-            findings.append(judge("prior_widened", figure, term=label, posterior=posterior))
-    return findings
-
-
-def _matched_shape(base: Base, prior: PriorTarget) -> tuple[Array, str]:
-    """Tail shape under the matched posterior, and that one's name; −inf where there is none."""
-    none = np.asarray(-math.inf), ""
-    old, new = prior.base.density, prior.density.density
-    if not (isinstance(old, Distribution) and isinstance(new, Distribution)):
-        return none
-    if old.names or new.names or old.event_axes or old.is_discrete or new.is_discrete:
-        return none
-    value = prior.base.value(base.draws)
-    before, after = old.tails(value.shape[1:]), new.tails(value.shape[1:])
-    rate = before.upper.rate
-    is_gamma = np.all(np.isfinite(rate) & (rate > 0))
-    is_beta = np.all(np.isfinite(before.upper.limit) & (before.upper.order == 0))
-    if not np.all(np.isfinite(before.lower.limit) & (before.lower.order == 0)):
-        return none
-    if not (is_gamma or is_beta):
-        return none
-    weights = base_weights(base).linear
-    mean = np.average(value, axis=0, weights=weights) - before.lower.limit
-    with np.errstate(over="ignore"):
-        variance = np.average((value - mean - before.lower.limit) ** 2, axis=0, weights=weights)
-        square = mean**2
-    if not np.all((variance > 0) & np.isfinite(variance) & (square > 0) & np.isfinite(square)):
-        return none
-    lost = _power_lost(before.lower, after.lower, prior.factor)
-    if is_gamma:
-        slower = rate - (prior.factor * after.upper.rate if prior.factor else 0.0)
-        return np.maximum(lost / (square / variance), slower / (mean / variance)), "gamma"
-    width = before.upper.limit - before.lower.limit
-    mean, variance = mean / width, variance / width**2
-    size = mean * (1 - mean) / variance - 1
-    above = _power_lost(before.upper, after.upper, prior.factor)
-    return np.maximum(lost / (size * mean), above / (size * (1 - mean))), "beta"
-
-
-def _power_lost(before: Tail, after: Tail, factor: Any) -> Array:
-    """How much less steeply the target rises from a limit than the base; −inf where it cuts."""
-    lost = before.power - factor * after.power
-    return np.where((before.limit == after.limit) & (after.order == 0), lost, -np.inf)
 
 
 @dataclass(frozen=True)
