@@ -195,9 +195,7 @@ class Verdict:
     @property
     def level(self) -> Any:
         """The level, or an array of levels."""
-        rank = np.full(self._shape, 2, dtype=np.int8)
-        for finding in self._findings:
-            rank = np.minimum(rank, finding.rank)
+        rank = self._rank()
         if not self._shape:
             return Level(LEVELS[int(rank)])
         levels = np.array([Level(name) for name in LEVELS], dtype=object)
@@ -206,7 +204,15 @@ class Verdict:
     @property
     def is_sound(self) -> Any:
         """Whether the level is ``"sound"``; an array of bool for an array of levels."""
-        return self.level == "sound"
+        sound = self._rank() == LEVELS.index("sound")
+        return sound if self._shape else bool(sound)
+
+    def _rank(self) -> npt.NDArray[np.int8]:
+        """The place of each level among `LEVELS`."""
+        rank = np.full(self._shape, len(LEVELS) - 1, dtype=np.int8)
+        for finding in self._findings:
+            rank = np.minimum(rank, finding.rank)
+        return rank
 
     @property
     def reasons(self) -> tuple[Reason, ...]:

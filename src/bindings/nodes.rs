@@ -96,22 +96,19 @@ fn each(
     }
     map_tasks(tasks, interrupt, |nodes| {
         let (mut room, mut found) = (Room::default(), vec![0.0; common.width()]);
+        let mut linear = Vec::new();
         for (ratio, mut out, into) in nodes {
-            let given = ratio.to_vec();
-            let mut linear = vec![0.0; into.as_ref().map_or(0, |into| into.len())];
-            study(
-                &given,
-                common,
-                &mut linear,
-                &mut found,
-                &mut room,
-                interrupt,
-            )?;
+            let given = ratio.as_standard_layout();
+            let given = given.as_slice().unwrap_or_default();
+            linear.resize(into.as_ref().map_or(0, |into| into.len()), 0.0);
+            study(given, common, &mut linear, &mut found, &mut room, interrupt)?;
             out.iter_mut()
                 .zip(&found)
                 .for_each(|(out, found)| *out = *found);
             if let Some(mut into) = into {
-                into.iter_mut().zip(linear).for_each(|(into, w)| *into = w);
+                into.iter_mut()
+                    .zip(&linear)
+                    .for_each(|(into, w)| *into = *w);
             }
         }
         Ok(())

@@ -327,14 +327,18 @@ impl Products<'_> {
     /// A row, 0 where a half has no draw.
     #[inline(always)]
     fn centred(&self, place: usize) -> Row {
-        let mut centred = [0.0; LANES];
-        if let Some(row) = self.rows.get(place) {
-            for lane in 0..LANES {
-                if place < self.group.lengths[lane] {
-                    centred[lane] = row[lane] - self.means[lane];
-                }
-            }
+        let Some(row) = self.rows.get(place) else {
+            return [0.0; LANES];
+        };
+        if place < self.group.full {
+            return std::array::from_fn(|lane| row[lane] - self.means[lane]);
         }
-        centred
+        std::array::from_fn(|lane| {
+            if place < self.group.lengths[lane] {
+                row[lane] - self.means[lane]
+            } else {
+                0.0
+            }
+        })
     }
 }

@@ -159,7 +159,7 @@ impl Habit {
 }
 
 /// A value that between `needed` and three times as many values are likely to reach.
-fn guess(values: &[f64], sign: f64, needed: usize) -> f64 {
+pub(super) fn guess(values: &[f64], sign: f64, needed: usize) -> f64 {
     let draws = values.len();
     let size = SAMPLE_RANK * draws / (2 * needed);
     if size < 2 * SAMPLE_RANK || 4 * size > draws {

@@ -1,9 +1,11 @@
 //! The largest weights of a node: what they hold, and from how many excursions they stem.
 
 use super::chains::Chains;
-use super::largest::largest;
+use super::largest::guess;
 use super::tail::tail_length;
 use super::vector::dot::dot;
+use super::vector::rank::nth_largest;
+use super::vector::select::at_least;
 
 /// Fewest draws of a tail whose excursions are counted.
 const FEWEST_EXCURSIONS: usize = 10;
@@ -24,34 +26,35 @@ impl LargestWeights {
             tail_length(raw.len(), efficiency),
             tail_length(raw.len(), 1.0),
         );
-        let Some((ranked, cutoff)) = largest(raw, 1.0, length.max(plain)) else {
-            return Self {
-                share: f64::NAN,
-                places: Vec::new(),
-                length,
-            };
+        let without = Self {
+            share: f64::NAN,
+            places: Vec::new(),
+            length,
         };
-        // The shorter tail is the upper part of the longer one.
-        let from = ranked.len() - plain;
-        let below = if from == 0 {
-            cutoff
-        } else {
-            ranked[from - 1].0
+        let needed = length.max(plain) + 1;
+        if needed > raw.len() {
+            return without;
+        }
+        let mut places = Vec::new();
+        at_least(raw, 1.0, guess(raw, 1.0, needed), &mut places);
+        if places.len() < needed {
+            places.clear();
+            at_least(raw, 1.0, f64::NEG_INFINITY, &mut places);
+        }
+        let weight = |place: &u32| raw[*place as usize];
+        let values: Vec<f64> = places.iter().map(weight).collect();
+        let [Some(cutoff), Some(below), Some(unit)] =
+            [needed, plain + 1, 1].map(|rank| nth_largest(&values, rank))
+        else {
+            return without;
         };
-        let unit = ranked.last().map_or(1.0, |ranked| ranked.0);
         let square = |w: f64| (w / unit) * (w / unit);
-        let above = |place: &(f64, u32)| square(place.0) - square(below);
-        let all = dot(raw, raw) / (unit * unit);
-        let share = ranked[from..].iter().map(above).sum::<f64>() / all;
-        let beyond = |ranked: &&(f64, u32)| ranked.0 > cutoff;
-        let mut places: Vec<u32> = ranked
-            .iter()
-            .filter(beyond)
-            .map(|ranked| ranked.1)
-            .collect();
-        places.sort_unstable();
+        // The shorter tail is the upper part of the longer one; what ties with its end adds nothing.
+        let above = values.iter().filter(|w| **w > below);
+        let above: f64 = above.map(|w| square(*w) - square(below)).sum();
+        places.retain(|place| weight(place) > cutoff);
         Self {
-            share,
+            share: above / (dot(raw, raw) / (unit * unit)),
             places,
             length,
         }

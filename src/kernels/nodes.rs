@@ -168,8 +168,7 @@ fn weigh_node(
     let (draws, chains, node) = (x.len(), &common.chains, &mut room.node);
     let [mut raw, mut linear] = [Lease::new(draws), Lease::new(draws)];
     let raw_sums = weigh(x, &mut raw, interrupt)?;
-    let (least, most) = range(&raw);
-    node.varies = most > least;
+    node.varies = raw.iter().any(|w| *w != raw[0]);
     node.raw.put(&raw, chains.layout());
     let mut efficiency = 1.0;
     if chains.ordered() && node.varies {
@@ -192,7 +191,7 @@ fn weigh_node(
         let total: f64 = node.linear.totals.iter().sum();
         let squares: f64 = node.squares.iter().sum();
         let pooled = (squares - total * total / draws as f64) / draws as f64;
-        let largest = range(&linear).1;
+        let largest = sums.largest_share();
         share = chains.equal_agreement(&mut node.linear, pooled, largest, interrupt)?;
     }
     let tail = LargestWeights::new(&raw, efficiency);

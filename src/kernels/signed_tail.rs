@@ -2,7 +2,7 @@
 
 use super::pareto::{self, FEWEST};
 use super::tail::{Room, tail_length, with_room};
-use super::vector::rank::{count_at_least, nth_largest};
+use super::vector::rank::nth_largest;
 use super::vector::select::beyond;
 use super::vector::{Arithmetic, Work, dispatch};
 
@@ -94,15 +94,16 @@ fn side_shape(
     if length == 0 {
         return f64::NEG_INFINITY;
     }
-    let needed = length + 1;
     let mut all = Vec::new();
     let mut values = &found[..];
-    if bound == 0.0 || count_at_least(values, bound) < needed {
+    let mut cutoff = nth_largest(values, length + 1);
+    if bound == 0.0 || !cutoff.is_some_and(|cutoff| cutoff >= bound) {
         all.extend(z.iter().map(|z| sign * z).filter(|z| *z > 0.0));
         values = &all;
+        cutoff = nth_largest(values, length + 1);
     }
     // At most a fifth of the side, so that the cut-off is one of its values.
-    let Some(cutoff) = nth_largest(values, needed) else {
+    let Some(cutoff) = cutoff else {
         return f64::INFINITY;
     };
     beyond(values, f64::NEG_INFINITY, cutoff.next_up(), exceedances);

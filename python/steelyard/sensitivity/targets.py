@@ -53,8 +53,8 @@ class _Swapped:
     loosened: Array | None
 
 
-# What a change becomes: swaps put together, or a target formed by itself.
-Made = Target | tuple[Swap, ...]
+# What a change becomes: swaps put together, each with its label, or a target formed by itself.
+Made = Target | tuple[tuple[str, _Swapped], ...]
 
 
 @dataclass(frozen=True, eq=False)
@@ -100,16 +100,20 @@ class Targets:
         return Formed(ratios, made, errors)
 
     def _form(self, change: Change, key: tuple[Swap, ...] | None, out: Array) -> Made:
-        if key is None or any(swap not in self._swaps for swap in key):
+        swapped = [] if key is None else [self._swaps.get(swap) for swap in key]
+        if key is None or None in swapped:
             target = form_target(self.base, change)
             out[:] = target.log_ratio
             return target
-        # In the order of `form_target`: the same bits.
-        for swap in sorted(key, key=_label) if len(key) > 1 else key:
-            delta = self._swaps[swap].delta
-            if delta is not None:
-                out += delta
-        return key
+        made = [(swap[0], one) for swap, one in zip(key, swapped, strict=True) if one is not None]
+        if len(made) > 1:
+            made.sort(key=_label)  # the order of `form_target`: the same bits
+        for place, (_, one) in enumerate(made):
+            if one.delta is not None and place:
+                out += one.delta
+            elif one.delta is not None:
+                out[:] = one.delta
+        return tuple(made)
 
     def _refuse_empty(
         self, ratios: Array, made: list[Made | None], errors: dict[int, SteelyardError]
@@ -237,10 +241,10 @@ class Targets:
                 found = (*preflight(self.base, one), *unknown_supports(one))
                 told += [(place, finding) for finding in found]
                 continue
-            told += [(place, f) for swap in one for f in self._swaps[swap].findings]
-            known = [label for label, d in one if self._swaps[label, d].loosened is not None]
+            told += [(place, f) for _, swapped in one for f in swapped.findings]
+            known = tuple([label for label, swapped in one if swapped.loosened is not None])
             if known:
-                widened.setdefault(tuple(sorted(known)), []).append(place)
+                widened.setdefault(known, []).append(place)
         for labels, places in widened.items():
             told += self._widened(labels, places, made)
         return _spoken(told, len(made))
@@ -267,7 +271,7 @@ class Targets:
 
     def _loosened(self, labels: tuple[str, ...], one: Made | None) -> Array:
         by_label = dict(one) if isinstance(one, tuple) else {}
-        parts = [self._swaps[label, by_label[label]].loosened for label in labels]
+        parts = [by_label[label].loosened for label in labels]
         return np.concatenate([part for part in parts if part is not None])
 
     def _root(self, labels: tuple[str, ...]) -> tuple[Array | None, Array]:
@@ -283,8 +287,8 @@ class Targets:
         return self._roots[labels]
 
 
-def _label(swap: Swap) -> str:
-    return swap[0]
+def _label(one: tuple[str, _Swapped]) -> str:
+    return one[0]
 
 
 def _alone(base: Base, term: PriorTerm, density: Distribution) -> Array | None:
