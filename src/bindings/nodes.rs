@@ -9,7 +9,8 @@ use super::errors::detached;
 use crate::kernels::chains::Chains;
 use crate::kernels::columns::expect_shape;
 use crate::kernels::error::KernelError;
-use crate::kernels::nodes::{Asked, Common, Room, study};
+use crate::kernels::node_common::{Asked, Common};
+use crate::kernels::nodes::{Room, study};
 use crate::kernels::ordered::{Interrupt, map_tasks};
 
 /// Nodes of one task.

@@ -3,99 +3,11 @@
 
 use super::lane_series::{Series, rows_of, rows_of_mut};
 use super::lanes::{LANES, Layout, Row};
+use super::node_moments::{Moments, Sides};
 use super::vector::{Arithmetic, Work, dispatch};
 use super::weight_sums::larger;
 
-const ZERO: Row = [0.0; LANES];
-
-/// Sums of a series `z` in one pass.
-#[derive(Debug, Clone, Copy, Default)]
-pub struct Moments {
-    count: f64,
-    first: f64,
-    second: f64,
-    third: f64,
-    /// `Σ z ψ` of the pass that formed it.
-    pub beside: f64,
-    /// The largest `|z|`.
-    pub largest: f64,
-}
-
-impl Moments {
-    /// `Σ (z − z̄)²/n`; 0 without entries.
-    pub fn variance(&self) -> f64 {
-        if self.count == 0.0 {
-            return 0.0;
-        }
-        (self.second - self.first * (self.first / self.count)) / self.count
-    }
-
-    /// `(Σ c²)³/(Σ c³)²` of the centred series, as [`super::mean::contributions`]: exact enough
-    /// since such a series is centred already, but for rounding. `+inf` for a constant series; NaN
-    /// where a power leaves the range of numbers.
-    pub fn contributions(&self) -> f64 {
-        let mean = self.first / self.count;
-        let second = self.second - self.first * mean;
-        if self.second == 0.0 {
-            return f64::INFINITY;
-        }
-        let third = self.third - mean * (3.0 * self.second - 2.0 * self.first * mean);
-        if !(third.is_finite() && second > f64::MIN_POSITIVE) {
-            return f64::NAN;
-        }
-        let ratio = second / third;
-        second * ratio * ratio
-    }
-}
-
-/// How many values of a series lie above 0 and below.
-#[derive(Debug, Clone, Copy, Default)]
-pub struct Sides {
-    /// Whether all values are numbers; a false alarm is possible where they are huge.
-    pub finite: bool,
-    /// Above.
-    pub above: usize,
-    /// Below.
-    pub below: usize,
-}
-
-/// `Σ w f` over each half.
-pub fn half_sums(f: &[f64], w: &[f64], layout: &Layout) -> Vec<f64> {
-    let mut sums = Vec::with_capacity(layout.halves().len());
-    for group in layout.groups() {
-        let found = dispatch(WeightedSums {
-            f: rows_of(f, group),
-            w: rows_of(w, group),
-        });
-        sums.extend_from_slice(&found[..group.halves.len()]);
-    }
-    sums
-}
-
-struct WeightedSums<'a> {
-    f: &'a [Row],
-    w: &'a [Row],
-}
-
-impl Work for WeightedSums<'_> {
-    type Output = Row;
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) -> Row {
-        let mut sums = [ZERO; 4];
-        let (f, f_rest) = self.f.as_chunks::<4>();
-        let (w, w_rest) = self.w.as_chunks::<4>();
-        for (f, w) in f.iter().zip(w) {
-            for ((sum, f), w) in sums.iter_mut().zip(f).zip(w) {
-                add_product::<A>(w, f, sum);
-            }
-        }
-        for ((sum, f), w) in sums.iter_mut().zip(f_rest).zip(w_rest) {
-            add_product::<A>(w, f, sum);
-        }
-        each(|lane| (sums[0][lane] + sums[1][lane]) + (sums[2][lane] + sums[3][lane]))
-    }
-}
+pub(super) const ZERO: Row = [0.0; LANES];
 
 /// A node's weights, and what of them a column is weighed by.
 #[derive(Clone, Copy)]
@@ -121,15 +33,6 @@ pub struct Formed {
     pub raw: Series,
     /// The series of the mean of each chain alone.
     pub alone: Series,
-}
-
-impl Sides {
-    /// No values but 0.
-    pub const NONE: Self = Self {
-        finite: true,
-        above: 0,
-        below: 0,
-    };
 }
 
 impl Formed {
@@ -343,81 +246,24 @@ impl Work for TakeBase<'_> {
 }
 
 #[inline(always)]
-fn each(entry: impl Fn(usize) -> f64) -> Row {
+pub(super) fn each(entry: impl Fn(usize) -> f64) -> Row {
     std::array::from_fn(entry)
-}
-
-/// Effective draws `(Σ w)²/Σ w²` where `f > least`, and where not.
-pub fn either_side(f: &[f64], least: f64, w: &[f64]) -> [f64; 2] {
-    dispatch(EitherSide { f, least, w }).map(|[total, squares]| {
-        if squares > 0.0 {
-            total * total / squares
-        } else {
-            0.0
-        }
-    })
-}
-
-struct EitherSide<'a> {
-    f: &'a [f64],
-    least: f64,
-    w: &'a [f64],
-}
-
-impl Work for EitherSide<'_> {
-    type Output = [[f64; 2]; 2];
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) -> [[f64; 2]; 2] {
-        let mut sums = [ZERO; 4];
-        let (f, f_rest) = self.f.as_chunks::<LANES>();
-        let (w, w_rest) = self.w.as_chunks::<LANES>();
-        for (f, w) in f.iter().zip(w) {
-            self.add::<A>(f, w, &mut sums);
-        }
-        for (f, w) in f_rest.iter().zip(w_rest) {
-            self.add::<A>(&one(*f), &one(*w), &mut sums);
-        }
-        let [a, b, c, d] = sums.map(tree);
-        [[a, b], [c, d]]
-    }
-}
-
-impl EitherSide<'_> {
-    #[inline(always)]
-    fn add<A: Arithmetic>(&self, f: &[f64; LANES], w: &[f64; LANES], sums: &mut [[f64; LANES]; 4]) {
-        let (mut inside, mut outside) = (ZERO, ZERO);
-        for lane in 0..LANES {
-            inside[lane] = if f[lane] > self.least { w[lane] } else { 0.0 };
-        }
-        for lane in 0..LANES {
-            outside[lane] = w[lane] - inside[lane];
-        }
-        add(&inside, &mut sums[0]);
-        add_product::<A>(&inside, &inside, &mut sums[1]);
-        add(&outside, &mut sums[2]);
-        add_product::<A>(&outside, &outside, &mut sums[3]);
-    }
-}
-
-/// Lanes of which one is in use.
-#[inline(always)]
-fn one(value: f64) -> [f64; LANES] {
-    let mut lanes = ZERO;
-    lanes[0] = value;
-    lanes
 }
 
 /// `sum + a b`, lane by lane. One loop for each sum: several in one are not vectorised.
 #[inline(always)]
-fn add_product<A: Arithmetic>(a: &[f64; LANES], b: &[f64; LANES], sum: &mut [f64; LANES]) {
+pub(super) fn add_product<A: Arithmetic>(
+    a: &[f64; LANES],
+    b: &[f64; LANES],
+    sum: &mut [f64; LANES],
+) {
     for lane in 0..LANES {
         sum[lane] = A::mul_add(a[lane], b[lane], sum[lane]);
     }
 }
 
 #[inline(always)]
-fn add(a: &[f64; LANES], sum: &mut [f64; LANES]) {
+pub(super) fn add(a: &[f64; LANES], sum: &mut [f64; LANES]) {
     for lane in 0..LANES {
         sum[lane] += a[lane];
     }
@@ -425,7 +271,7 @@ fn add(a: &[f64; LANES], sum: &mut [f64; LANES]) {
 
 /// As [`super::vector::tree`], with which, here and in [`super::spectrum`], a node took 7 % longer.
 #[inline(always)]
-fn tree(mut lanes: [f64; LANES]) -> f64 {
+pub(super) fn tree(mut lanes: [f64; LANES]) -> f64 {
     for half in [4, 2, 1] {
         for lane in 0..half {
             lanes[lane] += lanes[lane + half];

@@ -8,11 +8,11 @@ use super::error::KernelError;
 use super::lane_series::Series;
 use super::largest_weights::LargestWeights;
 use super::lease::Lease;
-use super::log_sum::range;
-use super::long_run;
 use super::mean::contributions;
-use super::node_batches::Batches;
-use super::node_series::{Formed, Moments, Sides, Weighing, either_side, half_sums};
+use super::node_common::{Column, Common};
+use super::node_moments::{Moments, Sides};
+use super::node_series::{Formed, Weighing};
+use super::node_sums::{either_side, half_sums};
 use super::ordered::Interrupt;
 use super::signed_tail::{sides_shape, signed_tail_shape};
 use super::smooth_weights::{Weighed, smooth_weights};
@@ -23,89 +23,6 @@ pub const WEIGHT_FIGURES: usize = 10;
 
 /// Figures of a quantity, or of its shift, at a node.
 pub const SERIES_FIGURES: usize = 9;
-
-/// What all nodes share.
-pub struct Common {
-    columns: Vec<Column>,
-    /// Weights of the base, smoothed and not, in rows.
-    own: [Lease; 2],
-    equal_base: bool,
-    chains: Chains,
-    batches: Batches,
-    shift: bool,
-}
-
-/// A quantity with its base mean taken off.
-struct Column {
-    /// In rows.
-    entries: Lease,
-    low: f64,
-    high: f64,
-    /// Base mean of an event, 0 and 1; else NaN.
-    event: f64,
-    /// Mean under the smoothed weights of the base.
-    own: f64,
-}
-
-/// What is asked of all nodes.
-#[derive(Clone, Copy)]
-pub struct Asked<'a> {
-    /// Weights of the base, smoothed and not, normalised, `(n,)`.
-    pub own: [&'a [f64]; 2],
-    /// Whether draws without a weight of the base's own move nothing when all ratios are equal.
-    pub equal_base: bool,
-    /// Where batches of draws begin and, last, end, over which the last series of a column is added up.
-    pub batches: &'a [i64],
-    /// Whether differences from the base are studied too.
-    pub shift: bool,
-}
-
-impl Common {
-    /// For quantities of `(n,)` each, with their base mean taken off, and whether each of these is an
-    /// event, 0 and 1, and then its base mean; else NaN.
-    ///
-    /// # Errors
-    /// [`KernelError::Starts`] when batches do not rise from 0 to the number of draws.
-    pub fn new<'a>(
-        columns: impl Iterator<Item = (&'a [f64], f64)>,
-        chains: Chains,
-        asked: Asked<'_>,
-    ) -> Result<Self, KernelError> {
-        let layout = chains.layout();
-        let in_rows = |series: &[f64]| {
-            let mut entries = Lease::new(layout.entries());
-            layout.place(series, &mut entries);
-            entries
-        };
-        let own = asked.own.map(in_rows);
-        let columns = columns.map(|(f, event)| {
-            let (low, high) = range(f);
-            let entries = in_rows(f);
-            Column {
-                own: half_sums(&entries, &own[0], layout).iter().sum(),
-                entries,
-                low,
-                high,
-                event,
-            }
-        });
-        let batches = long_run::chains(asked.batches, layout.draws(), false)?;
-        Ok(Self {
-            columns: columns.collect(),
-            own,
-            equal_base: asked.equal_base,
-            batches: Batches::new(&batches, layout),
-            shift: asked.shift,
-            chains,
-        })
-    }
-
-    /// Numbers that [`study`] writes.
-    pub fn width(&self) -> usize {
-        let series = SERIES_FIGURES * (1 + usize::from(self.shift));
-        WEIGHT_FIGURES + self.columns.len() * (series + self.batches.count())
-    }
-}
 
 /// Weights of a node, smoothed and not, in rows, and their sums over halves.
 #[derive(Default)]

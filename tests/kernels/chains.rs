@@ -4,7 +4,8 @@ use _core::kernels::lane_series::Series;
 use _core::kernels::lease::Lease;
 use _core::kernels::long_run::long_run_variance;
 use _core::kernels::mean::weighted_moments;
-use _core::kernels::node_series::{Formed, Weighing, half_sums};
+use _core::kernels::node_series::{Formed, Weighing};
+use _core::kernels::node_sums::half_sums;
 use _core::kernels::ordered::Interrupt;
 
 use super::support::{Stream, close};
