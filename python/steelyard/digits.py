@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 
-__all__ = ["rounded", "short"]
+__all__ = ["chance", "rounded", "short"]
 
 
 def short(value: float) -> str:
@@ -16,6 +16,11 @@ def short(value: float) -> str:
     if 1000 <= abs(value) < 1e9:
         return f"{float(f'{value:.3g}'):,.0f}"
     return f"{value:.3g}"
+
+
+def chance(probability: float) -> str:
+    """A Monte Carlo probability of being right, which no number of draws makes a certainty."""
+    return "over 0.999" if probability > 0.999 else short(probability)
 
 
 def decimals_of(error: float) -> int | None:

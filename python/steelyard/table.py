@@ -13,7 +13,7 @@ from pathlib import Path
 from typing import Any, Literal
 
 from steelyard.arrays import ReadOnly
-from steelyard.digits import rounded, short
+from steelyard.digits import chance, rounded, short
 from steelyard.errors import ArgumentError, MissingExtraError, ShapeError, UnknownNameError
 
 __all__ = ["Table"]
@@ -36,6 +36,8 @@ class Table:
         the error supports. Full precision stays in the columns.
     title : str
         Printed above the table.
+    chances : sequence of str
+        Columns of probabilities of being right, which never print as a certainty.
 
     Examples
     --------
@@ -48,6 +50,7 @@ class Table:
     columns: Mapping[str, Sequence[Any]]
     errors: Mapping[str, Sequence[float]] = field(default_factory=dict)
     title: str = ""
+    chances: Sequence[str] = ()
 
     def __post_init__(self) -> None:
         columns = ReadOnly({name: tuple(column) for name, column in self.columns.items()})
@@ -142,7 +145,8 @@ class Table:
                 pairs = zip(column, error, strict=True)
                 cells.append(["" if v is None else rounded(v, e) for v, e in pairs])
             elif is_number:
-                cells.append(["" if v is None else short(v) for v in column])
+                text = chance if name in self.chances else short
+                cells.append(["" if v is None else text(v) for v in column])
             else:
                 cells.append([str(v) for v in column])
         return cells, numeric

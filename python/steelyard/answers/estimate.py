@@ -14,7 +14,7 @@ import numpy.typing as npt
 from steelyard.answers.student import student_quantile
 from steelyard.arrays import Frozen
 from steelyard.base.names import label_texts
-from steelyard.digits import rounded, short
+from steelyard.digits import chance, rounded, short
 from steelyard.errors import ArgumentError, TruthValueError
 from steelyard.verdicts import Level, Verdict
 
@@ -47,8 +47,8 @@ class Decision(Frozen):
         side = "above" if self.above else "not above"
         if math.isnan(self.right):
             return f"{side} {self.level:g}, how surely is not known"
-        right = "over 0.999" if self.right > 0.999 else short(self.right)
-        return f"{side} {self.level:g}, right with Monte Carlo probability {right}"
+        sure = chance(self.right)
+        return f"{side} {self.level:g}, right with Monte Carlo probability {sure}"
 
 
 @dataclass(frozen=True, eq=False)

@@ -69,7 +69,7 @@ def tabulate(
     # Each figure prints the digits that its own error supports.
     measured = {n for row in rows for n in row.errors}
     errors = {n: [row.errors.get(n, math.nan) for row in rows] for n in names if n in measured}
-    return Table(columns, errors)
+    return Table(columns, errors, chances=["right_side"])
 
 
 def _refuse_twice(shown: list[str]) -> None:

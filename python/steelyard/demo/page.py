@@ -12,7 +12,7 @@ import steelyard as sy
 from steelyard.demo.model import LEVEL, load_draws
 from steelyard.demo.readings import Readings, load_readings
 from steelyard.demo.scenarios import Scenario
-from steelyard.digits import rounded
+from steelyard.digits import chance, rounded
 
 __all__ = ["CAUTIONS", "compose_page"]
 
@@ -126,7 +126,7 @@ def _cells(scenario: Scenario) -> list[str]:
     decision, answers = probability.decision, level != "refit"
     sure = "–"
     if decision is not None and level == "sound":
-        sure = "> 0.999" if decision.right > 0.999 else f"{decision.right:.3f}"
+        sure = chance(decision.right)
     tail_shape = float(probability.tail_shape)
     return [
         scenario.label,

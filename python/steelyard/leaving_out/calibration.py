@@ -228,9 +228,13 @@ def _from_cdf(left: LeaveOut, cdf: Any, cdf_below: Any) -> tuple[Array, Array]:
 def _expected(left: LeaveOut, term: LoglikTerm) -> Array:
     out = np.empty(len(left._chosen))
     for part, w, values in _weighted(left, term):
-        if (values < 0).any() or (values > 1).any():
+        outside = values[(values < 0) | (values > 1)]
+        if outside.size:
             raise ArgumentError(
-                term.name, "probabilities from 0 to 1", "others", "Pass distribution functions."
+                term.name,
+                "probabilities from 0 to 1",
+                short(float(outside[0])),
+                "Pass distribution functions.",
             )
         out[part] = (w * values).sum(axis=0)
     return np.clip(out, 0.0, 1.0)

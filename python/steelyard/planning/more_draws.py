@@ -17,7 +17,7 @@ from steelyard.arrays import Frozen
 from steelyard.base import Base
 from steelyard.base.draws import Array
 from steelyard.changes import Change
-from steelyard.digits import short
+from steelyard.digits import chance, short
 from steelyard.errors import ArgumentError, ArgumentTypeError, QuantityError
 from steelyard.sensitivity.resistance import read_level
 from steelyard.verdicts import Verdict
@@ -155,8 +155,8 @@ class RefitValue(Frozen):
                 "they may be, and only a refit can"
             )
         return (
-            f"right with Monte Carlo probability {_probability(self.right_now)} now, "
-            f"{_probability(self.right_after)} expected after a refit of {self.draws} draws; "
+            f"right with Monte Carlo probability {chance(self.right_now)} now, "
+            f"{chance(self.right_after)} expected after a refit of {self.draws} draws; "
             f"worth {short(self.value)} of probability, at most {short(self.perfect)}"
         )
 
@@ -165,10 +165,6 @@ class RefitValue(Frozen):
 
     def _repr_html_(self) -> str:
         return f"<p>{escape(str(self))}</p>"
-
-
-def _probability(p: float) -> str:
-    return "over 0.999" if p > 0.999 else short(p)
 
 
 def value_of_refit(

@@ -93,7 +93,7 @@ class Triage(Frozen):
         errors = {"value": columns["error"], "error": columns["error"]}
         errors |= dict.fromkeys(("shift", "shift_error", "low", "high"), shift_error)
         errors |= dict.fromkeys(self._quantile_names(), columns["error"])
-        return Table(columns, errors, self.plan.title)
+        return Table(columns, errors, self.plan.title, ["right_side"])
 
     def _quantile_names(self) -> list[str]:
         return [f"q{p:g}" for p in self.plan.probs or ()]

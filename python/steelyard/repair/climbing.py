@@ -232,8 +232,9 @@ def _names(rungs: Any) -> list[str]:
     for name in names:
         if not isinstance(name, str) or name not in RUNGS:
             raise ArgumentError(
-                "rungs", f"names from {', '.join(RUNGS)}", repr(name), close_names(str(name), RUNGS)
+                "rungs", "names of rungs", repr(name), close_names(str(name), RUNGS)
             )
     if len(set(names)) < len(names):
-        raise ArgumentError("rungs", "each rung once", ", ".join(names), "Name it once.")
+        twice = next(name for name in names if names.count(name) > 1)
+        raise ArgumentError("rungs", "each rung once", f"{twice} twice", "Name it once.")
     return names

@@ -64,6 +64,13 @@ def read_grid(family: Any, grid: Any) -> dict[str, Array]:
 
 def _axis(values: Any, argument: str) -> Array:
     axis = plain_array(values, argument, "fiu").astype(np.float64)
+    if axis.ndim == 2:
+        raise ArgumentError(
+            argument,
+            "at least two nodes in a row",
+            f"{len(axis)} rows",
+            "Give two hyperparameters as a mapping of their names to their nodes.",
+        )
     if axis.ndim != 1 or axis.size < 2:
         raise ArgumentError(
             argument,
@@ -73,9 +80,11 @@ def _axis(values: Any, argument: str) -> Array:
         )
     if not np.isfinite(axis).all():
         raise ArgumentError(argument, "finite nodes", "NaN or infinite ones", "Leave them out.")
-    if not (np.diff(axis) > 0).all():
+    falls = np.flatnonzero(~(np.diff(axis) > 0))
+    if len(falls):
+        came = f"{short(axis[falls[0] + 1])} after {short(axis[falls[0]])}"
         raise ArgumentError(
-            argument, "nodes in ascending order, each once", "others", "Sort them (numpy.unique)."
+            argument, "nodes in ascending order, each once", came, "Sort them (numpy.unique)."
         )
     return axis
 

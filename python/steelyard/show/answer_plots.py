@@ -162,7 +162,8 @@ class AnswerPlots:
         ax.set_xlabel(read.label)
         ax.set_ylabel("effective draws at or beyond")
         title(ax, "how far the draws reach")
-        ax.legend(frameon=False, loc="lower center")
+        # Above the axes: below stand the words of the rule, and curves fill the rest.
+        ax.legend(frameon=False, loc="lower right", bbox_to_anchor=(1, 1), ncols=2, fontsize=8)
         return ax
 
 
