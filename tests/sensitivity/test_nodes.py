@@ -58,6 +58,20 @@ def _many_short() -> sy.Fit:
     return sy.Fit({"x": x, "y": x**2}, {"x": sy.Normal(0, 2), "y": sy.Normal(0, 9)})
 
 
+def _pooled() -> sy.Fit:
+    """The exact posterior of five readings with mean 1 and sd 1 under two priors."""
+    fits = []
+    for number, scale in enumerate((0.5, 1.0)):
+        precision = 5 + scale**-2
+        x = 5 / precision + precision**-0.5 * np.random.default_rng(SEED + number).normal(
+            size=(4, 500)
+        )
+        loglik = {"readings": -2.5 * (x - 1) ** 2}
+        prior = {"x": sy.Normal(0, scale), "y": sy.Normal(0, 9)}
+        fits.append(sy.Fit({"x": x, "y": x**2}, prior, loglik=loglik))
+    return sy.pool(fits, data="same", common="readings")
+
+
 def _bounded() -> sy.Fit:
     x = np.random.default_rng(SEED).beta(2, 5, size=(4, 300))
     return sy.Fit({"x": x, "y": 1e150 * x}, {"x": sy.Beta(2, 5), "y": sy.Flat()})
@@ -83,6 +97,7 @@ CASES: dict[str, tuple[Callable[[], sy.Fit], Any, list[float]]] = {
     "unordered": (_unordered, _sd, [0.3, 1.5, 2.0]),
     "weighted": (_weighted, _sd, [0.5, 1.5, 2.0]),
     "many short chains": (_many_short, _sd, [0.5, 1.5]),
+    "pooled": (_pooled, _sd, [0.4, 1.0, 3.0, 30.0]),
     "widened beyond": (lambda: _normal(1.9), _sd, [1.5, 4.0, 50.0]),
     "supports": (_bounded, lambda t: sy.swap_prior(x=sy.Flat(0, t)), [0.4, 1.0, 1.5]),
     "betas": (_bounded, lambda a: sy.swap_prior(x=sy.Beta(a, 5)), [0.5, 2.0, 6.0]),
@@ -122,6 +137,16 @@ def test_a_node_is_a_single_answer_in_everything(name: str) -> None:
             told = {(r.code, str(r.level)) for r in single.verdict.reasons if r.level < "sound"}
             many_told = estimate.verdict[place].reasons
             assert {(r.code, str(r.level)) for r in many_told if r.level < "sound"} == told
+            np.testing.assert_allclose(
+                _widened(estimate.verdict[place]), _widened(single.verdict), rtol=1e-9
+            )
+
+
+def _widened(verdict: Any) -> list[float]:
+    """What algebra says of widened priors, figure by figure."""
+    found = [f for f in verdict.findings if f.code == "prior_widened"]
+    figures = [float(np.max(f.figure)) for f in found]
+    return sorted(figure for figure in figures if not np.isnan(figure))
 
 
 def test_the_cases_let_the_rules_speak() -> None:

@@ -134,6 +134,8 @@ class Targets:
 
     def _swaps_of(self, change: Change) -> tuple[Swap, ...] | None:
         """The swaps of a change that has no other edits; else None."""
+        if self.base.draws.pooling is not None:
+            return None  # what algebra says depends on which of the fits reaches furthest
         stated = self.base.prior or {}
         found: list[Swap] = []
         for edit in change.edits:
