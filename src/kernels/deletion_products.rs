@@ -64,6 +64,7 @@ pub(super) fn add<T: Copy + Into<f64>, const W: usize>(sums: &mut [[f64; W]], te
 pub(super) struct Fill<'a> {
     pub(super) x: &'a [f64],
     pub(super) apart: usize,
+    pub(super) scales: &'a [(f64, f64)],
     pub(super) start: usize,
     pub(super) base: &'a [f64],
     pub(super) block: &'a mut Block,
@@ -79,9 +80,11 @@ impl Work for Fill<'_> {
             let source = &self.x[column * self.apart + self.start..][..length];
             let x = &mut self.block.x[column];
             *x = [0.0; DRAWS];
-            x[..length].copy_from_slice(source);
             let mut b = [0.0; DRAWS];
             b[..length].copy_from_slice(&self.base[..length]);
+            for ((x, weight), b) in x.iter_mut().zip(source).zip(&b) {
+                *x = A::mul_add(self.scales[column].0, *weight, -b);
+            }
             let (xx, xb) = (&mut self.block.xx[column], &mut self.block.xb[column]);
             let [mut squares, mut products] = [[0.0; SUM_LANES]; 2];
             for start in (0..DRAWS).step_by(SUM_LANES) {
@@ -150,6 +153,7 @@ impl Work for Single<'_> {
 pub(super) struct Anew<'a> {
     pub(super) f: &'a [[f64; LANES]],
     pub(super) x: &'a [f64],
+    pub(super) scale: f64,
     pub(super) base: &'a [f64],
     pub(super) m: [f64; LANES],
 }
@@ -160,7 +164,8 @@ impl Work for Anew<'_> {
     #[inline(always)]
     fn run<A: Arithmetic>(self) -> Self::Output {
         let mut sums = [0.0; LANES];
-        for ((f, &x), &b) in self.f.iter().zip(self.x).zip(self.base) {
+        for ((f, &weight), &b) in self.f.iter().zip(self.x).zip(self.base) {
+            let x = A::mul_add(self.scale, weight, -b);
             for lane in 0..LANES {
                 let (f, m) = (f[lane], self.m[lane]);
                 let z = x * (f - m) - b * m * (A::mul_add(f, f, 1.0) / 2.0);

@@ -91,8 +91,8 @@ impl Panels {
         self.count == 0
     }
 
-    /// Adds the shifts under weights `w` of which `x` holds `n (w − v)`, one column every `apart`
-    /// entries; `shares` are the largest `w` of each.
+    /// Adds the shifts under weights that are those in `x`, one column every `apart` entries, times a
+    /// scale such that their mean is 1; with it comes the largest share of a draw.
     ///
     /// # Errors
     /// [`KernelError::Interrupted`].
@@ -100,33 +100,34 @@ impl Panels {
         &self,
         x: &[f64],
         apart: usize,
-        shares: impl ExactSizeIterator<Item = f64>,
+        scales: &[(f64, f64)],
         shifts: &mut Shifts,
         interrupt: &Interrupt<'_>,
     ) -> Result<(), KernelError> {
         if self.is_empty() {
             return Ok(());
         }
-        let mut block = Block::new(shares.len(), self.count);
+        let mut block = Block::new(scales.len(), self.count);
         for start in (0..self.draws).step_by(DRAWS) {
             interrupt.check()?;
             let range = start..self.draws.min(start + DRAWS);
             dispatch(Fill {
                 x,
                 apart,
+                scales,
                 start,
                 base: &self.base[range.clone()],
                 block: &mut block,
             });
             self.multiply(range, &mut block);
         }
-        for (column, share) in shares.enumerate() {
+        for (column, &(scale, share)) in scales.iter().enumerate() {
             let row = (0..self.count).map(|quantity| self.one(&block, column, quantity));
             let first = shifts.found.len();
             shifts.found.extend(row);
             if share > CARRIED {
                 let x = &x[column * apart..][..self.draws];
-                self.sum_anew(x, &mut shifts.found[first..]);
+                self.sum_anew(x, scale, &mut shifts.found[first..]);
             }
         }
         Ok(())
@@ -173,7 +174,7 @@ impl Panels {
     }
 
     /// The squares of one column, series by series.
-    fn sum_anew(&self, x: &[f64], found: &mut [(f64, f64)]) {
+    fn sum_anew(&self, x: &[f64], scale: f64, found: &mut [(f64, f64)]) {
         let panels = self.first.chunks(self.draws);
         for (f, found) in panels.zip(found.chunks_mut(LANES)) {
             let mut m = [0.0; LANES];
@@ -183,6 +184,7 @@ impl Panels {
             let sums = dispatch(Anew {
                 f,
                 x,
+                scale,
                 base: &self.base,
                 m,
             });

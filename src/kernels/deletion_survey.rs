@@ -1,6 +1,7 @@
 //! What the log ratios of one column look like.
 
 use super::deletion_loops::LANES;
+use super::vector::stream::Ahead;
 use super::vector::{Arithmetic, Work, dispatch, tree};
 use super::weight_sums::larger;
 
@@ -17,14 +18,16 @@ impl Work for Finite<'_> {
     }
 }
 
-/// What log ratios look like: their number and largest, sum and sum of squares of their distances
-/// from the first.
+/// What log ratios look like: their number, extremes, sum and sum of squares of their distances from
+/// the first.
 #[derive(Clone, Copy)]
 pub struct Survey {
     count: f64,
     origin: f64,
     /// The largest of them that is a number.
     pub largest: f64,
+    /// The least of them that is a number.
+    pub least: f64,
     sum: f64,
     squares: f64,
 }
@@ -35,12 +38,12 @@ impl Survey {
         self.sum.is_finite()
     }
 
-    /// Mean and standard deviation of the ratios below the largest.
-    pub fn spread(&self) -> Option<(f64, f64)> {
+    /// Mean and standard deviation of the ratios less `above`.
+    pub fn spread(&self, above: f64) -> Option<(f64, f64)> {
         let mean = self.sum / self.count;
         let deviation = (self.squares / self.count - mean * mean).sqrt();
         let known = mean.is_finite() && deviation > 0.0 && deviation.is_finite();
-        known.then_some((mean + (self.origin - self.largest), deviation))
+        known.then_some((mean + (self.origin - above), deviation))
     }
 }
 
@@ -50,6 +53,8 @@ pub struct Ratios<'a> {
     pub x: &'a mut [f64],
     /// Log base weights, where they are not equal.
     pub log_weights: Option<&'a [f64]>,
+    /// What is asked for meanwhile.
+    pub ahead: &'a mut Ahead,
 }
 
 impl Work for Ratios<'_> {
@@ -59,7 +64,7 @@ impl Work for Ratios<'_> {
     fn run<A: Arithmetic>(self) -> Survey {
         let first = self.x.first().copied().unwrap_or(0.0);
         match self.log_weights {
-            None => surveyed::<A>(self.x, -first, |x| -x),
+            None => surveyed::<A>(self.x, -first, self.ahead, |x| -x),
             Some(logs) => {
                 for (x, &log) in self.x.iter_mut().zip(logs) {
                     *x = if log == f64::NEG_INFINITY {
@@ -69,39 +74,50 @@ impl Work for Ratios<'_> {
                     };
                 }
                 let first = self.x.first().copied().unwrap_or(0.0);
-                surveyed::<A>(self.x, first, |x| x)
+                surveyed::<A>(self.x, first, self.ahead, |x| x)
             }
         }
     }
 }
 
 #[inline(always)]
-fn surveyed<A: Arithmetic>(x: &mut [f64], origin: f64, change: impl Fn(f64) -> f64) -> Survey {
-    let mut most = [f64::NEG_INFINITY; LANES];
+fn surveyed<A: Arithmetic>(
+    x: &mut [f64],
+    origin: f64,
+    ahead: &mut Ahead,
+    change: impl Fn(f64) -> f64,
+) -> Survey {
+    let [mut most, mut least] = [[f64::NEG_INFINITY; LANES]; 2];
     let [mut sums, mut squares] = [[0.0; LANES]; 2];
-    let count = x.len() as f64;
+    let (count, mut asked) = (x.len() as f64, *ahead);
     let (chunks, rest) = x.as_chunks_mut::<LANES>();
     for chunk in chunks {
+        asked.ask();
         for lane in 0..LANES {
             let value = change(chunk[lane]);
             chunk[lane] = value;
             most[lane] = larger(value, most[lane]);
+            least[lane] = larger(-value, least[lane]);
             sums[lane] += value - origin;
             squares[lane] = A::mul_add(value - origin, value - origin, squares[lane]);
         }
     }
-    let mut last = (f64::NEG_INFINITY, 0.0, 0.0);
+    *ahead = asked;
+    let mut last = (f64::NEG_INFINITY, f64::NEG_INFINITY, 0.0, 0.0);
     for entry in rest {
         *entry = change(*entry);
         let d = *entry - origin;
-        last = (larger(*entry, last.0), last.1 + d, last.2 + d * d);
+        last.0 = larger(*entry, last.0);
+        last.1 = larger(-*entry, last.1);
+        (last.2, last.3) = (last.2 + d, last.3 + d * d);
     }
     Survey {
         count,
         origin,
         largest: most.into_iter().fold(last.0, f64::max),
-        sum: tree(sums) + last.1,
-        squares: tree(squares) + last.2,
+        least: -least.into_iter().fold(last.1, f64::max),
+        sum: tree(sums) + last.2,
+        squares: tree(squares) + last.3,
     }
 }
 
