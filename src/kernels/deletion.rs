@@ -8,7 +8,7 @@ use std::ops::Range;
 
 use ndarray::{Array2, ArrayView2, Axis};
 
-use super::blocks::{distance, gather, has_contiguous_columns};
+use super::blocks::{distance, gather};
 use super::columns::expect_shape;
 use super::deletion_column::{Shared, Work as ColumnWork};
 use super::deletion_lags::Layout;
@@ -18,18 +18,10 @@ use super::error::KernelError;
 use super::lease::Lease;
 use super::long_run;
 use super::ordered::{Interrupt, map_tasks};
-use super::vector::stream::Ahead;
 
-/// Columns of a task. A fixed number: series are summed task by task, and their last digits must not
+/// Columns of a task, gathered together: of a row as much as a processor fetches well. A fixed number: series are summed task by task, and their last digits must not
 /// depend on how many threads there are.
 const COLUMNS: usize = 128;
-
-/// Columns of a task that are gathered together: two such blocks lie in the cache next to the nearest,
-/// one that is worked on and one that is asked for meanwhile.
-const TOGETHER: usize = 16;
-
-/// Most draws for which such a block lies there.
-const MOST_AHEAD: usize = 6000;
 
 /// Most entries of a task's buffer, 32 MiB, unless a single column is longer.
 const BUFFER: usize = 4 << 20;
@@ -176,7 +168,7 @@ fn one_task<E: Entry>(
     let mut work = ColumnWork::new(shared);
     let mut figures = Vec::with_capacity(range.len());
     let mut shifts = Shifts::none(panels);
-    let together = (BUFFER / draws.max(1)).clamp(1, TOGETHER);
+    let together = (BUFFER / draws.max(1)).clamp(1, COLUMNS);
     for start in range.clone().step_by(together) {
         let block = start..range.end.min(start + together);
         let mut buffer = gathered(held, block.clone(), interrupt)?;
@@ -184,7 +176,6 @@ fn one_task<E: Entry>(
             Some(scored) => Some(gathered(scored, block.clone(), interrupt)?),
             None => None,
         };
-        work.ahead = ahead(held, block.end, together);
         let mut scales = Vec::with_capacity(block.len());
         for index in 0..block.len() {
             interrupt.check()?;
@@ -216,20 +207,6 @@ fn gathered<E: Entry>(
     let view = x.slice_axis_move(Axis(1), range.into());
     gather(view, &mut buffer, interrupt)?;
     Ok(buffer)
-}
-
-/// What to ask for while columns are worked on: those from `first` on, where they fit beside them
-/// and are no streams that a processor foresees.
-fn ahead<E: Entry>(x: ArrayView2<'_, E>, first: usize, together: usize) -> Ahead {
-    let width = together.min(x.ncols().saturating_sub(first));
-    if width == 0 || together < TOGETHER || x.nrows() > MOST_AHEAD || has_contiguous_columns(x) {
-        return Ahead::NOTHING;
-    }
-    let block = x.slice_axis_move(Axis(1), (first..first + width).into());
-    if block.strides()[1] != 1 {
-        return Ahead::NOTHING;
-    }
-    Ahead::new(block.as_ptr(), block.strides()[0], width, block.nrows())
 }
 
 /// The parts in order: sums over columns are added task by task.

@@ -5,7 +5,6 @@ use super::deletion_lags::{Lagged, Layout};
 use super::deletion_loops::Sums;
 use super::deletion_tail::TailDraws;
 use super::deletion_totals::Deferred;
-use super::vector::stream::Ahead;
 use super::deletion_survey::{Finite, Ratios, Survey};
 use super::error::KernelError;
 use super::ordered::Interrupt;
@@ -59,8 +58,6 @@ pub struct Work<'a> {
     /// The same of a column of the common kind.
     pub(super) draws: TailDraws,
     pub(super) deferred: Deferred,
-    /// What is asked for while columns are worked on.
-    pub ahead: Ahead,
 }
 
 /// What is known of a column once its weights are smoothed.
@@ -112,7 +109,6 @@ impl<'a> Work<'a> {
             ratios: Vec::new(),
             draws: TailDraws::default(),
             deferred: Deferred::new(shared.draws()),
-            ahead: Ahead::NOTHING,
         }
     }
 
@@ -203,7 +199,6 @@ impl<'a> Work<'a> {
         dispatch(Ratios {
             x,
             log_weights: self.shared.log_weights,
-            ahead: &mut self.ahead,
         })
     }
 }

@@ -98,7 +98,6 @@ impl Work<'_> {
             x,
             largest,
             weights,
-            ahead: &mut self.ahead,
         });
         lagged.take(weights);
         let efficiency = lagged.efficiency(weights, interrupt)?;
@@ -131,19 +130,15 @@ impl Work<'_> {
 
     /// Log ratios to weights, but for the tail; densities beside them. Sums of both without the tail.
     fn weights_and_densities(&mut self, x: &mut [f64], largest: f64) -> (Sums, f64) {
-        for &draw in &self.draws.places {
-            x[draw] = HIDDEN;
-        }
+        put(x, &self.draws.places, |_| HIDDEN);
         let density = self.deferred.next();
         let Both { sums, density: sum } = dispatch(Pair {
             x,
             largest,
             density,
-            ahead: &mut self.ahead,
         });
-        for (&draw, value) in self.draws.places.iter().zip(self.draws.density.as_flattened()) {
-            density[draw] = *value;
-        }
+        let values = self.draws.density.as_flattened();
+        put(density, &self.draws.places, |rank| values[rank]);
         (sums, sum)
     }
 
@@ -152,26 +147,20 @@ impl Work<'_> {
     fn powers(&mut self, x: &mut [f64], total: f64, scale: f64) -> (f64, f64) {
         let (constant, factor) = (1.0 / scale, 1.0 / total);
         let draws = &self.draws;
-        let put = |x: &mut [f64], values: &dyn Fn(usize) -> f64| {
-            for (rank, &draw) in draws.places.iter().enumerate() {
-                x[draw] = values(rank);
-            }
-        };
         let weights = draws.weights.as_flattened();
         if let Order::Independent = self.shared.order {
             // What adds nothing, the tail being added apart.
-            put(x, &|_| total / scale);
+            put(x, &draws.places, |_| total / scale);
             let body = dispatch(WeighedPowers {
                 weights: x,
                 constant,
                 factor,
-                ahead: &mut self.ahead,
             });
-            put(x, &|rank| weights[rank]);
+            put(x, &draws.places, |rank| weights[rank]);
             let tail = draws.powers(constant, factor);
             return (body.0 + tail.0, body.1 + tail.1);
         }
-        put(x, &|rank| weights[rank]);
+        put(x, &draws.places, |rank| weights[rank]);
         dispatch(Weighed {
             weights: x,
             constant,
@@ -179,12 +168,19 @@ impl Work<'_> {
             out: &mut self.series,
         });
         let ratios = draws.ratios.as_flattened();
-        put(&mut self.series, &|rank| {
+        put(&mut self.series, &draws.places, |rank| {
             ratios[rank] * constant - weights[rank] * factor
         });
         dispatch(Powers {
             z: &self.series,
             to: &mut [],
         })
+    }
+}
+
+/// Writes values to some places.
+fn put(x: &mut [f64], places: &[usize], value: impl Fn(usize) -> f64) {
+    for (rank, &place) in places.iter().enumerate() {
+        x[place] = value(rank);
     }
 }

@@ -2,7 +2,6 @@
 
 use super::deletion_loops::{BLOCK, LANES, Sums, plus};
 use super::vector::exp::{LEAST, exp, exp_both};
-use super::vector::stream::Ahead;
 use super::vector::{Arithmetic, Work, tree};
 
 /// Takes `largest` off logarithms at most 708 below it and replaces them by their exponentials, with
@@ -14,8 +13,6 @@ pub struct Pair<'a> {
     pub largest: f64,
     /// Where the inverses go: densities where the weight is one over them.
     pub density: &'a mut [f64],
-    /// What is asked for meanwhile.
-    pub ahead: &'a mut Ahead,
 }
 
 /// Stands for a draw that is left out of the sums.
@@ -34,13 +31,12 @@ impl Work for Pair<'_> {
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) -> Both {
-        let (mut found, largest, mut ahead) = ([0.0; 4], self.largest, *self.ahead);
+        let (mut found, largest) = ([0.0; 4], self.largest);
         for (x, y) in self.x.chunks_mut(BLOCK).zip(self.density.chunks_mut(BLOCK)) {
             let [mut total, mut squares, mut spread, mut density] = [[0.0; LANES]; 4];
             let ((x, x_rest), (y, y_rest)) =
                 (x.as_chunks_mut::<LANES>(), y.as_chunks_mut::<LANES>());
             for (x, y) in x.iter_mut().zip(y) {
-                ahead.ask();
                 for lane in 0..LANES {
                     let log = x[lane] - largest;
                     (x[lane], y[lane]) = weight_and_density::<A>(log);
@@ -64,7 +60,6 @@ impl Work for Pair<'_> {
                 *found += tree(plus(lanes, rest));
             }
         }
-        *self.ahead = ahead;
         let [total, squares, spread, density] = found;
         Both {
             sums: Sums {
@@ -95,8 +90,6 @@ pub struct WeighedPowers<'a> {
     pub constant: f64,
     /// Times what.
     pub factor: f64,
-    /// What is asked for meanwhile.
-    pub ahead: &'a mut Ahead,
 }
 
 impl Work for WeighedPowers<'_> {
@@ -104,12 +97,11 @@ impl Work for WeighedPowers<'_> {
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) -> (f64, f64) {
-        let (mut found, mut ahead) = ((0.0, 0.0), *self.ahead);
+        let mut found = (0.0, 0.0);
         for weights in self.weights.chunks(BLOCK) {
             let [mut squares, mut cubes] = [[0.0; LANES]; 2];
             let (chunks, rest) = weights.as_chunks::<LANES>();
             for weights in chunks {
-                ahead.ask();
                 for lane in 0..LANES {
                     let z = A::mul_add(-self.factor, weights[lane], self.constant);
                     let square = z * z;
@@ -126,7 +118,6 @@ impl Work for WeighedPowers<'_> {
             found.0 += tree(plus(squares, last[0]));
             found.1 += tree(plus(cubes, last[1]));
         }
-        *self.ahead = ahead;
         found
     }
 }
@@ -147,8 +138,6 @@ pub struct Settle<'a> {
     pub equal: f64,
     /// Totals: left-out score, raw weights, in-sample score.
     pub totals: [&'a mut [f64]; 3],
-    /// What is asked for meanwhile.
-    pub ahead: &'a mut Ahead,
 }
 
 impl Work for Settle<'_> {
@@ -156,27 +145,18 @@ impl Work for Settle<'_> {
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
-        let mut ahead = *self.ahead;
         let (equal, (of_raw, of_density)) = (self.equal, self.units);
-        let add = |[left_out, raw, in_sample]: [&mut f64; 3], weight: f64, density: f64| {
-            *left_out += A::mul_add(-self.factor, weight, self.constant);
-            *raw += A::mul_add(-of_raw, weight, equal);
-            *in_sample += A::mul_add(of_density, density, -equal);
-        };
-        let [a, b, c] = self.totals.map(|total| total.as_chunks_mut::<LANES>());
-        let (w, d) = (self.weights.as_chunks::<LANES>(), self.density.as_chunks::<LANES>());
-        let totals = a.0.iter_mut().zip(b.0.iter_mut()).zip(c.0.iter_mut());
-        for (((a, b), c), (w, d)) in totals.zip(w.0.iter().zip(d.0)) {
-            ahead.ask();
-            for lane in 0..LANES {
-                add([&mut a[lane], &mut b[lane], &mut c[lane]], w[lane], d[lane]);
-            }
+        // One simple loop for each: together they would not become whole vectors.
+        let [left_out, raw, in_sample] = self.totals;
+        for (sum, weight) in left_out.iter_mut().zip(self.weights) {
+            *sum += A::mul_add(-self.factor, *weight, self.constant);
         }
-        let totals = a.1.iter_mut().zip(b.1).zip(c.1);
-        for (((a, b), c), (w, d)) in totals.zip(w.1.iter().zip(d.1)) {
-            add([a, b, c], *w, *d);
+        for (sum, weight) in raw.iter_mut().zip(self.weights) {
+            *sum += A::mul_add(-of_raw, *weight, equal);
         }
-        *self.ahead = ahead;
+        for (sum, density) in in_sample.iter_mut().zip(self.density) {
+            *sum += A::mul_add(of_density, *density, -equal);
+        }
     }
 }
 
@@ -188,8 +168,6 @@ pub struct Raw<'a> {
     pub largest: f64,
     /// Where the exponentials go.
     pub weights: &'a mut [f64],
-    /// What is asked for meanwhile.
-    pub ahead: &'a mut Ahead,
 }
 
 impl Work for Raw<'_> {
@@ -197,13 +175,10 @@ impl Work for Raw<'_> {
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
-        let mut ahead = *self.ahead;
         for (x, weights) in self.x.chunks(LANES).zip(self.weights.chunks_mut(LANES)) {
-            ahead.ask();
             for (x, weight) in x.iter().zip(weights) {
                 *weight = exp::<A>(x - self.largest);
             }
         }
-        *self.ahead = ahead;
     }
 }

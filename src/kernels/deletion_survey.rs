@@ -1,7 +1,6 @@
 //! What the log ratios of one column look like.
 
 use super::deletion_loops::LANES;
-use super::vector::stream::Ahead;
 use super::vector::{Arithmetic, Work, dispatch, tree};
 use super::weight_sums::larger;
 
@@ -53,8 +52,6 @@ pub struct Ratios<'a> {
     pub x: &'a mut [f64],
     /// Log base weights, where they are not equal.
     pub log_weights: Option<&'a [f64]>,
-    /// What is asked for meanwhile.
-    pub ahead: &'a mut Ahead,
 }
 
 impl Work for Ratios<'_> {
@@ -64,7 +61,7 @@ impl Work for Ratios<'_> {
     fn run<A: Arithmetic>(self) -> Survey {
         let first = self.x.first().copied().unwrap_or(0.0);
         match self.log_weights {
-            None => surveyed::<A>(self.x, -first, self.ahead, |x| -x),
+            None => surveyed::<A>(self.x, -first, |x| -x),
             Some(logs) => {
                 for (x, &log) in self.x.iter_mut().zip(logs) {
                     *x = if log == f64::NEG_INFINITY {
@@ -74,7 +71,7 @@ impl Work for Ratios<'_> {
                     };
                 }
                 let first = self.x.first().copied().unwrap_or(0.0);
-                surveyed::<A>(self.x, first, self.ahead, |x| x)
+                surveyed::<A>(self.x, first, |x| x)
             }
         }
     }
@@ -84,15 +81,13 @@ impl Work for Ratios<'_> {
 fn surveyed<A: Arithmetic>(
     x: &mut [f64],
     origin: f64,
-    ahead: &mut Ahead,
     change: impl Fn(f64) -> f64,
 ) -> Survey {
     let [mut most, mut least] = [[f64::NEG_INFINITY; LANES]; 2];
     let [mut sums, mut squares] = [[0.0; LANES]; 2];
-    let (count, mut asked) = (x.len() as f64, *ahead);
+    let count = x.len() as f64;
     let (chunks, rest) = x.as_chunks_mut::<LANES>();
     for chunk in chunks {
-        asked.ask();
         for lane in 0..LANES {
             let value = change(chunk[lane]);
             chunk[lane] = value;
@@ -102,7 +97,6 @@ fn surveyed<A: Arithmetic>(
             squares[lane] = A::mul_add(value - origin, value - origin, squares[lane]);
         }
     }
-    *ahead = asked;
     let mut last = (f64::NEG_INFINITY, f64::NEG_INFINITY, 0.0, 0.0);
     for entry in rest {
         *entry = change(*entry);

@@ -101,7 +101,6 @@ impl Work<'_> {
                         &mut self.raw[range.clone()],
                         &mut self.in_sample[range.clone()],
                     ],
-                    ahead: &mut self.ahead,
                 });
             }
         }

@@ -9,6 +9,7 @@ pub const LARGE: usize = 1 << 20;
 const LINE: usize = 8;
 
 /// Its bytes.
+#[cfg(target_arch = "x86_64")]
 const LINE_BYTES: usize = 64;
 
 /// Copies `from` to `to`, of equal length, past the caches; the parts of cache lines at both ends
@@ -66,63 +67,4 @@ pub fn prefetch<T>(entries: &[T]) {
     }
     #[cfg(not(target_arch = "x86_64"))]
     let _ = entries;
-}
-
-/// Cache lines of rows that are read some time later, asked for one by one while other work goes
-/// on, as far as the cache next to the nearest: memory takes longer to answer than a few of them
-/// take to be worked on.
-#[derive(Clone, Copy)]
-pub struct Ahead {
-    row: *const u8,
-    /// Bytes from one row to the next.
-    apart: isize,
-    /// Bytes of a row, and how many of them were asked for.
-    width: usize,
-    done: usize,
-    rows: usize,
-}
-
-impl Ahead {
-    /// Nothing to ask for.
-    pub const NOTHING: Self = Self {
-        row: std::ptr::null(),
-        apart: 0,
-        width: 0,
-        done: 0,
-        rows: 0,
-    };
-
-    /// So many rows of `width` entries, the first of which begins at `first`, `apart` entries from
-    /// one to the next. The entries need not exist.
-    pub fn new<T>(first: *const T, apart: isize, width: usize, rows: usize) -> Self {
-        let size = size_of::<T>();
-        let over = first.addr() % LINE_BYTES;
-        Self {
-            row: first.cast::<u8>().wrapping_sub(over),
-            apart: apart * size as isize,
-            width: over + width * size,
-            done: 0,
-            rows,
-        }
-    }
-
-    /// Asks for the next line.
-    #[inline(always)]
-    pub fn ask(&mut self) {
-        if self.rows == 0 {
-            return;
-        }
-        #[cfg(target_arch = "x86_64")]
-        {
-            use std::arch::x86_64::{_MM_HINT_T1, _mm_prefetch};
-            // SAFETY: a hint, which may name any address; SSE belongs to every x86-64 processor.
-            unsafe { _mm_prefetch::<_MM_HINT_T1>(self.row.wrapping_add(self.done).cast()) };
-        }
-        self.done += LINE_BYTES;
-        if self.done >= self.width {
-            self.done = 0;
-            self.row = self.row.wrapping_offset(self.apart);
-            self.rows -= 1;
-        }
-    }
 }
