@@ -82,7 +82,7 @@ pub struct Deletions {
 /// score is `log Σ w exp(scored)`, its influence series `n w (exp(scored)/p − 1)` with `p` the
 /// exponential of the score; its error the root of the long-run variance over `n`. Shifts have the
 /// series `w (f − m) − v f − v m (f² − 1)/2`: target mean, base mean and base sd. Its squares are
-/// summed in single precision over 256 draws at a time: relative error about 1e-5.
+/// summed in single precision over 128 draws at a time: relative error about 1e-5.
 ///
 /// # Errors
 /// [`KernelError::Shape`], [`KernelError::Starts`], [`KernelError::Interrupted`].

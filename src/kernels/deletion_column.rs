@@ -3,9 +3,9 @@
 use super::deletion::{Base, FIGURES, Order, fault};
 use super::deletion_lags::{Lagged, Layout};
 use super::deletion_loops::Sums;
+use super::deletion_survey::{Finite, Ratios, Survey};
 use super::deletion_tail::TailDraws;
 use super::deletion_totals::Deferred;
-use super::deletion_survey::{Finite, Ratios, Survey};
 use super::error::KernelError;
 use super::ordered::Interrupt;
 use super::vector::dispatch;

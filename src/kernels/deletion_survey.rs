@@ -78,11 +78,7 @@ impl Work for Ratios<'_> {
 }
 
 #[inline(always)]
-fn surveyed<A: Arithmetic>(
-    x: &mut [f64],
-    origin: f64,
-    change: impl Fn(f64) -> f64,
-) -> Survey {
+fn surveyed<A: Arithmetic>(x: &mut [f64], origin: f64, change: impl Fn(f64) -> f64) -> Survey {
     let [mut most, mut least] = [[f64::NEG_INFINITY; LANES]; 2];
     let [mut sums, mut squares] = [[0.0; LANES]; 2];
     let count = x.len() as f64;

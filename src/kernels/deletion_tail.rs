@@ -49,7 +49,8 @@ impl TailDraws {
     pub fn fill(&mut self, ranked: &[Ranked], smooth: &[f64]) -> TailSums {
         let count = ranked.len();
         self.places.clear();
-        self.places.extend(ranked.iter().map(|draw| draw.1 as usize));
+        self.places
+            .extend(ranked.iter().map(|draw| draw.1 as usize));
         let lines = count.div_ceil(LANES);
         for room in [
             &mut self.logs,

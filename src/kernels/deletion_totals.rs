@@ -61,13 +61,19 @@ impl Work<'_> {
     pub(super) fn defer(&mut self, column: Column) {
         let draws = &self.draws;
         let ratios = draws.ratios.as_flattened().iter();
-        let weights = draws.weights.as_flattened().iter().zip(draws.raw.as_flattened());
+        let weights = draws
+            .weights
+            .as_flattened()
+            .iter()
+            .zip(draws.raw.as_flattened());
         let tail = draws.places.iter().zip(ratios.zip(weights));
-        self.deferred.extra.extend(tail.map(|(&draw, (ratio, (weight, raw)))| Extra {
-            draw,
-            left_out: (ratio - 1.0) * column.constant,
-            raw: (weight - raw) * column.units.0,
-        }));
+        self.deferred
+            .extra
+            .extend(tail.map(|(&draw, (ratio, (weight, raw)))| Extra {
+                draw,
+                left_out: (ratio - 1.0) * column.constant,
+                raw: (weight - raw) * column.units.0,
+            }));
         self.deferred.columns.push(column);
     }
 

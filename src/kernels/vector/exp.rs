@@ -74,11 +74,7 @@ pub fn exp_both<A: Arithmetic>(x: f64) -> (f64, f64) {
     let high = A::mul_add(v, Q[8], A::mul_add(u, Q[6], Q[4]));
     let even = u * A::mul_add(v, high, A::mul_add(u, Q[2], Q[0]));
     let high = A::mul_add(v, Q[9], A::mul_add(u, Q[7], Q[5]));
-    let odd = A::mul_add(
-        r * u,
-        A::mul_add(v, high, A::mul_add(u, Q[3], Q[1])),
-        r,
-    );
+    let odd = A::mul_add(r * u, A::mul_add(v, high, A::mul_add(u, Q[3], Q[1])), r);
     let power = (shifted.to_bits() << 52).wrapping_add(1.0_f64.to_bits());
     let inverse = (2 * 1.0_f64.to_bits()).wrapping_sub(power);
     let (power, inverse) = (f64::from_bits(power), f64::from_bits(inverse));
