@@ -17,6 +17,7 @@ impl Work<'_> {
         survey: Survey,
         interrupt: &Interrupt<'_>,
     ) -> Result<Known, KernelError> {
+        self.make_room();
         let (count, largest) = (x.len() as f64, survey.largest);
         let (raw_total, least) = dispatch(Exponentials {
             x,

@@ -99,9 +99,9 @@ impl<'a> Work<'a> {
         Self {
             shared,
             lagged: shared.layout.map(Lagged::new),
-            weights: zeros(),
-            density: zeros(),
-            series: zeros(),
+            weights: Vec::new(),
+            density: Vec::new(),
+            series: Vec::new(),
             left_out: zeros(),
             raw: zeros(),
             in_sample: zeros(),
@@ -109,6 +109,14 @@ impl<'a> Work<'a> {
             ratios: Vec::new(),
             draws: TailDraws::default(),
             deferred: Deferred::new(shared.draws()),
+        }
+    }
+
+    /// Room for what not every column needs.
+    pub(super) fn make_room(&mut self) {
+        let draws = self.shared.draws();
+        for room in [&mut self.weights, &mut self.density, &mut self.series] {
+            room.resize(draws, 0.0);
         }
     }
 
@@ -150,6 +158,9 @@ impl<'a> Work<'a> {
         if faults & (fault::NAN | fault::IMPOSSIBLE) != 0 {
             held.fill(f64::NAN);
             return Ok((found, f64::NAN));
+        }
+        if self.lagged.is_some() || !matches!(self.shared.order, Order::Independent) {
+            self.make_room();
         }
         let known = match (scored, self.shared.log_weights) {
             (None, None) => self.common(held, place, survey, interrupt)?,

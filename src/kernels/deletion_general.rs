@@ -18,6 +18,7 @@ impl Work<'_> {
         survey: Survey,
         interrupt: &Interrupt<'_>,
     ) -> Result<Known, KernelError> {
+        self.make_room();
         let base = &self.shared.base;
         let own = self.own(x, scored);
         let (raw_total, _) = dispatch(Exponentials {

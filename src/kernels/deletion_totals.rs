@@ -3,6 +3,7 @@
 
 use super::deletion_column::Work;
 use super::deletion_pair::Settle;
+use super::lease::Lease;
 use super::vector::dispatch;
 
 /// Columns at a time, and draws.
@@ -13,7 +14,7 @@ const DRAWS: usize = 512;
 pub(super) struct Deferred {
     draws: usize,
     /// Densities, column after column.
-    densities: Vec<f64>,
+    densities: Lease,
     columns: Vec<Column>,
     /// What the draws of their tails add to what follows from the weights.
     extra: Vec<Extra>,
@@ -40,7 +41,7 @@ impl Deferred {
     pub(super) fn new(draws: usize) -> Self {
         Self {
             draws,
-            densities: Vec::new(),
+            densities: Lease::new(COLUMNS * draws),
             columns: Vec::new(),
             extra: Vec::new(),
         }
@@ -49,9 +50,6 @@ impl Deferred {
     /// Room for the densities of the next column.
     pub(super) fn next(&mut self) -> &mut [f64] {
         let start = self.columns.len() * self.draws;
-        if self.densities.len() < start + self.draws {
-            self.densities.resize(start + self.draws, 0.0);
-        }
         &mut self.densities[start..][..self.draws]
     }
 }
