@@ -179,9 +179,10 @@ fn one_task<E: Entry>(
         let mut scales = Vec::with_capacity(block.len());
         for index in 0..block.len() {
             interrupt.check()?;
-            let column = &mut buffer[index * apart..][..draws];
+            let (column, next) = buffer[index * apart..].split_at_mut(apart);
+            let (column, next) = (&mut column[..draws], (index, &next[..draws.min(next.len())]));
             let scored = other.as_ref().map(|other| &other[index * apart..][..draws]);
-            let (found, scale) = work.column(column, index, scored, interrupt)?;
+            let (found, scale) = work.column(column, next, scored, interrupt)?;
             scales.push((scale, found[6]));
             figures.push(found);
             if work.is_full() || index + 1 == block.len() {

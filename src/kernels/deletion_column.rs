@@ -129,14 +129,14 @@ impl<'a> Work<'a> {
 
     /// Figures of a column of log densities, which is overwritten; and what its weights then have to
     /// be multiplied by to have mean 1. Totals may lack it until [`Self::settle`], for which `place`
-    /// is kept in mind.
+    /// is kept in mind. Meanwhile the `next` column is asked for.
     ///
     /// # Errors
     /// [`KernelError::Interrupted`], [`KernelError::Memory`].
     pub fn column(
         &mut self,
         held: &mut [f64],
-        place: usize,
+        (place, next): (usize, &[f64]),
         scored: Option<&[f64]>,
         interrupt: &Interrupt<'_>,
     ) -> Result<([f64; FIGURES], f64), KernelError> {
@@ -163,7 +163,7 @@ impl<'a> Work<'a> {
             self.make_room();
         }
         let known = match (scored, self.shared.log_weights) {
-            (None, None) => self.common(held, place, survey, interrupt)?,
+            (None, None) => self.common(held, (place, next), survey, interrupt)?,
             _ => None,
         };
         let (smoothed, scores, powers) = match (known, scored, self.shared.log_weights) {

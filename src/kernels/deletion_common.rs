@@ -33,7 +33,7 @@ impl Work<'_> {
     pub(super) fn common(
         &mut self,
         x: &mut [f64],
-        place: usize,
+        (place, next): (usize, &[f64]),
         survey: Survey,
         interrupt: &Interrupt<'_>,
     ) -> Result<Option<Known>, KernelError> {
@@ -47,7 +47,7 @@ impl Work<'_> {
             return Ok(None);
         }
         let (shape, top, tail) = (tail.shape, tail.top, tail.sums);
-        let (body, density) = self.weights_and_densities(x, largest);
+        let (body, density) = self.weights_and_densities(x, largest, next);
         let raw = body.total + tail.raw;
         let sums = Sums {
             total: body.total + tail.total,
@@ -129,13 +129,19 @@ impl Work<'_> {
     }
 
     /// Log ratios to weights, but for the tail; densities beside them. Sums of both without the tail.
-    fn weights_and_densities(&mut self, x: &mut [f64], largest: f64) -> (Sums, f64) {
+    fn weights_and_densities(
+        &mut self,
+        x: &mut [f64],
+        largest: f64,
+        next: &[f64],
+    ) -> (Sums, f64) {
         put(x, &self.draws.places, |_| HIDDEN);
         let density = self.deferred.next();
         let Both { sums, density: sum } = dispatch(Pair {
             x,
             largest,
             density,
+            next,
         });
         let values = self.draws.density.as_flattened();
         put(density, &self.draws.places, |rank| values[rank]);

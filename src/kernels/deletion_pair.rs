@@ -2,6 +2,7 @@
 
 use super::deletion_loops::{BLOCK, LANES, Sums, plus};
 use super::vector::exp::{LEAST, exp, exp_both};
+use super::vector::stream::prefetch_far;
 use super::vector::{Arithmetic, Work, tree};
 
 /// Takes `largest` off logarithms at most 708 below it and replaces them by their exponentials, with
@@ -13,6 +14,8 @@ pub struct Pair<'a> {
     pub largest: f64,
     /// Where the inverses go: densities where the weight is one over them.
     pub density: &'a mut [f64],
+    /// What is read after this, and is asked for meanwhile.
+    pub next: &'a [f64],
 }
 
 /// Stands for a draw that is left out of the sums.
@@ -32,11 +35,15 @@ impl Work for Pair<'_> {
     #[inline(always)]
     fn run<A: Arithmetic>(self) -> Both {
         let (mut found, largest) = ([0.0; 4], self.largest);
+        let mut next = self.next.as_chunks::<LANES>().0.iter();
         for (x, y) in self.x.chunks_mut(BLOCK).zip(self.density.chunks_mut(BLOCK)) {
             let [mut total, mut squares, mut spread, mut density] = [[0.0; LANES]; 4];
             let ((x, x_rest), (y, y_rest)) =
                 (x.as_chunks_mut::<LANES>(), y.as_chunks_mut::<LANES>());
             for (x, y) in x.iter_mut().zip(y) {
+                if let Some(next) = next.next() {
+                    prefetch_far(next);
+                }
                 for lane in 0..LANES {
                     let log = x[lane] - largest;
                     (x[lane], y[lane]) = weight_and_density::<A>(log);

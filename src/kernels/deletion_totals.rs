@@ -6,13 +6,17 @@ use super::deletion_pair::Settle;
 use super::lease::Lease;
 use super::vector::dispatch;
 
-/// Columns at a time, and draws.
+/// Most columns at a time, and numbers of all of them unless a single one has more.
 const COLUMNS: usize = 4;
+const NUMBERS: usize = 1 << 18;
+
+/// Draws at a time.
 const DRAWS: usize = 512;
 
 /// Columns that the totals lack.
 pub(super) struct Deferred {
     draws: usize,
+    most: usize,
     /// Densities, column after column.
     densities: Lease,
     columns: Vec<Column>,
@@ -39,9 +43,11 @@ struct Extra {
 
 impl Deferred {
     pub(super) fn new(draws: usize) -> Self {
+        let most = (NUMBERS / draws.max(1)).clamp(1, COLUMNS);
         Self {
             draws,
-            densities: Lease::new(COLUMNS * draws),
+            most,
+            densities: Lease::new(most * draws),
             columns: Vec::new(),
             extra: Vec::new(),
         }
@@ -77,7 +83,7 @@ impl Work<'_> {
 
     /// Whether [`Self::settle`] is due.
     pub fn is_full(&self) -> bool {
-        self.deferred.columns.len() >= COLUMNS
+        self.deferred.columns.len() >= self.deferred.most
     }
 
     /// Adds the columns that the totals lack, of which `x` holds the weights, one every `apart`
@@ -88,6 +94,7 @@ impl Work<'_> {
             densities,
             columns,
             extra,
+            ..
         } = &mut self.deferred;
         let draws = *draws;
         for start in (0..draws).step_by(DRAWS) {
