@@ -180,7 +180,10 @@ fn one_task<E: Entry>(
         for index in 0..block.len() {
             interrupt.check()?;
             let (column, next) = buffer[index * apart..].split_at_mut(apart);
-            let (column, next) = (&mut column[..draws], (index, &next[..draws.min(next.len())]));
+            let (column, next) = (
+                &mut column[..draws],
+                (index, &next[..draws.min(next.len())]),
+            );
             let scored = other.as_ref().map(|other| &other[index * apart..][..draws]);
             let (found, scale) = work.column(column, next, scored, interrupt)?;
             scales.push((scale, found[6]));

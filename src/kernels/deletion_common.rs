@@ -129,12 +129,7 @@ impl Work<'_> {
     }
 
     /// Log ratios to weights, but for the tail; densities beside them. Sums of both without the tail.
-    fn weights_and_densities(
-        &mut self,
-        x: &mut [f64],
-        largest: f64,
-        next: &[f64],
-    ) -> (Sums, f64) {
+    fn weights_and_densities(&mut self, x: &mut [f64], largest: f64, next: &[f64]) -> (Sums, f64) {
         put(x, &self.draws.places, |_| HIDDEN);
         let density = self.deferred.next();
         let Both { sums, density: sum } = dispatch(Pair {

@@ -2,6 +2,7 @@
 
 use super::deletion_loops::LANES;
 use super::vector::narrow::{self, ROW};
+use super::vector::select::at_least;
 use super::vector::{Arithmetic, Work, dispatch, tree};
 
 /// Draws of which panels and weights lie in the nearest cache together, and whose products are summed
@@ -213,6 +214,7 @@ pub(super) struct Block {
     pub(super) squares: Vec<f64>,
     /// Column, draw and `x` of draws with large shares.
     pub(super) large: Vec<(usize, usize, f64)>,
+    places: Vec<u32>,
 }
 
 impl Block {
@@ -225,6 +227,7 @@ impl Block {
             square: vec![[0.0; DRAWS]; columns],
             squares: vec![0.0; columns],
             large: Vec::new(),
+            places: Vec::new(),
         }
     }
 
@@ -261,26 +264,40 @@ impl Work for Fill<'_> {
                 *x = A::mul_add(scale, *weight, -b);
             }
             x[length..].fill(0.0);
-            let mut rest = *x;
+            let (single, square) = (&mut block.single[column], &mut block.square[column]);
             if share > CARRIED {
                 let least = LARGE * self.draws as f64 / scale;
-                for (draw, _) in weights.iter().enumerate().filter(|draw| *draw.1 > least) {
+                let mut rest = *x;
+                block.places.clear();
+                at_least(weights, 1.0, least, &mut block.places);
+                for draw in block.places.iter().map(|&place| place as usize) {
                     block.large.push((column, self.start + draw, rest[draw]));
                     rest[draw] = 0.0;
                 }
+                block.squares[column] += narrowed::<A>(&rest, single, square);
+            } else {
+                block.squares[column] += narrowed::<A>(x, single, square);
             }
-            let (single, square) = (&mut block.single[column], &mut block.square[column]);
-            for ((single, square), x) in single.iter_mut().zip(square).zip(&rest) {
-                *single = *x as f32;
-                *square = (x * x) as f32;
-            }
-            let mut squares = [0.0; LANES];
-            for x in rest.as_chunks::<LANES>().0 {
-                for lane in 0..LANES {
-                    squares[lane] = A::mul_add(x[lane], x[lane], squares[lane]);
-                }
-            }
-            block.squares[column] += tree(squares);
         }
     }
+}
+
+/// Writes `x` and `x²` in single precision; `Σ x²`.
+#[inline(always)]
+fn narrowed<A: Arithmetic>(
+    x: &[f64; DRAWS],
+    single: &mut [f32; DRAWS],
+    square: &mut [f32; DRAWS],
+) -> f64 {
+    for ((single, square), x) in single.iter_mut().zip(square).zip(x) {
+        *single = *x as f32;
+        *square = (x * x) as f32;
+    }
+    let mut squares = [0.0; LANES];
+    for x in x.as_chunks::<LANES>().0 {
+        for lane in 0..LANES {
+            squares[lane] = A::mul_add(x[lane], x[lane], squares[lane]);
+        }
+    }
+    tree(squares)
 }
