@@ -19,8 +19,9 @@ use super::lease::Lease;
 use super::long_run;
 use super::ordered::{Interrupt, map_tasks};
 
-/// Columns of a task, gathered together: of a row as much as a processor fetches well. A fixed number: series are summed task by task, and their last digits must not
-/// depend on how many threads there are.
+/// Columns of a task, gathered together: of a row as much as a processor fetches well. A fixed number:
+/// series are summed task by task, and their last digits must not depend on how many threads there
+/// are.
 const COLUMNS: usize = 128;
 
 /// Most entries of a task's buffer, 32 MiB, unless a single column is longer.

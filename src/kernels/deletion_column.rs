@@ -76,6 +76,23 @@ pub(super) struct Smoothed {
     pub(super) top: f64,
 }
 
+impl Smoothed {
+    /// Where nothing had to be shifted.
+    pub(super) fn plain(sums: Sums, shape: f64, top: f64, agreement: (f64, f64)) -> Self {
+        let (efficiency, p_value) = agreement;
+        Self {
+            shift: 0.0,
+            sums,
+            lift: 0.0,
+            unit: 1.0,
+            shape,
+            efficiency,
+            p_value,
+            top,
+        }
+    }
+}
+
 /// A draw of the tail, and its smoothed weight over its raw one.
 pub(super) struct Replaced {
     pub(super) index: usize,

@@ -46,9 +46,8 @@ impl Work<'_> {
         if tail.top < FAR_BELOW {
             return Ok(None);
         }
-        let (shape, top, tail) = (tail.shape, tail.top, tail.sums);
         let (body, density) = self.weights_and_densities(x, largest, next);
-        let raw = body.total + tail.raw;
+        let (shape, top, tail) = (tail.shape, tail.top, tail.sums);
         let sums = Sums {
             total: body.total + tail.total,
             squares: body.squares + tail.squares,
@@ -68,18 +67,9 @@ impl Work<'_> {
             place,
             constant: 1.0 / scale,
             factor: 1.0 / sums.total,
-            units: (1.0 / raw, 1.0 / density),
+            units: (1.0 / (body.total + tail.raw), 1.0 / density),
         });
-        let smoothed = Smoothed {
-            shift: 0.0,
-            sums,
-            lift: 0.0,
-            unit: 1.0,
-            shape,
-            efficiency,
-            p_value,
-            top,
-        };
+        let smoothed = Smoothed::plain(sums, shape, top, (efficiency, p_value));
         Ok(Some((smoothed, scored, powers)))
     }
 

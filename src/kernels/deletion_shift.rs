@@ -3,7 +3,8 @@
 
 use ndarray::ArrayView2;
 
-use super::deletion_products::{self as products, Block, DRAWS, Fill, Sums};
+use super::deletion_fill::{Block, Fill};
+use super::deletion_products::{self as products, DRAWS, Sums};
 use super::error::KernelError;
 use super::ordered::Interrupt;
 use super::vector::dispatch;

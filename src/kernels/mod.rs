@@ -14,6 +14,7 @@ mod deletion_alone;
 mod deletion_column;
 mod deletion_common;
 mod deletion_error;
+mod deletion_fill;
 mod deletion_general;
 mod deletion_lag_loops;
 mod deletion_lags;
