@@ -19,14 +19,10 @@ use super::lease::Lease;
 use super::long_run;
 use super::ordered::{Interrupt, map_tasks};
 
-/// Columns of a task. A fixed number: series are summed task by task, and their last digits must not
-/// depend on how many threads there are.
+/// Columns of a task, gathered together: of a row as much as a processor fetches well. A fixed number:
+/// series are summed task by task, and their last digits must not depend on how many threads there
+/// are.
 const COLUMNS: usize = 128;
-
-/// Columns of a task that are gathered together; more where there are quantities, whose powers are
-/// read once for all of them.
-const TOGETHER: usize = 32;
-const WITH_QUANTITIES: usize = 64;
 
 /// Most entries of a task's buffer, 32 MiB, unless a single column is longer.
 const BUFFER: usize = 4 << 20;
@@ -87,7 +83,7 @@ pub struct Deletions {
 /// score is `log Σ w exp(scored)`, its influence series `n w (exp(scored)/p − 1)` with `p` the
 /// exponential of the score; its error the root of the long-run variance over `n`. Shifts have the
 /// series `w (f − m) − v f − v m (f² − 1)/2`: target mean, base mean and base sd. Its squares are
-/// summed in single precision over 256 draws at a time: relative error about 1e-5.
+/// summed in single precision over 128 draws at a time: relative error about 1e-5.
 ///
 /// # Errors
 /// [`KernelError::Shape`], [`KernelError::Starts`], [`KernelError::Interrupted`].
@@ -170,15 +166,10 @@ fn one_task<E: Entry>(
 ) -> Result<Part, KernelError> {
     let draws = held.nrows();
     let apart = distance(draws);
-    let mut work = ColumnWork::new(shared, !panels.is_empty());
+    let mut work = ColumnWork::new(shared);
     let mut figures = Vec::with_capacity(range.len());
     let mut shifts = Shifts::none(panels);
-    let most = if panels.is_empty() {
-        TOGETHER
-    } else {
-        WITH_QUANTITIES
-    };
-    let together = (BUFFER / draws.max(1)).clamp(1, most);
+    let together = (BUFFER / draws.max(1)).clamp(1, COLUMNS);
     for start in range.clone().step_by(together) {
         let block = start..range.end.min(start + together);
         let mut buffer = gathered(held, block.clone(), interrupt)?;
@@ -186,15 +177,23 @@ fn one_task<E: Entry>(
             Some(scored) => Some(gathered(scored, block.clone(), interrupt)?),
             None => None,
         };
+        let mut scales = Vec::with_capacity(block.len());
         for index in 0..block.len() {
             interrupt.check()?;
-            let column = &mut buffer[index * apart..][..draws];
+            let (column, next) = buffer[index * apart..].split_at_mut(apart);
+            let (column, next) = (
+                &mut column[..draws],
+                (index, &next[..draws.min(next.len())]),
+            );
             let scored = other.as_ref().map(|other| &other[index * apart..][..draws]);
-            figures.push(work.column(column, scored, interrupt)?);
+            let (found, scale) = work.column(column, next, scored, interrupt)?;
+            scales.push((scale, found[6]));
+            figures.push(found);
+            if work.is_full() || index + 1 == block.len() {
+                work.settle(&buffer, apart);
+            }
         }
-        let of_block = &figures[figures.len() - block.len()..];
-        let shares = of_block.iter().map(|figures: &[f64; FIGURES]| figures[6]);
-        panels.add_shifts(&buffer, apart, shares, &mut shifts, interrupt)?;
+        panels.add_shifts(&buffer, apart, &scales, &mut shifts, interrupt)?;
     }
     Ok(Part {
         figures,

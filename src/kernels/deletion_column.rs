@@ -2,8 +2,10 @@
 
 use super::deletion::{Base, FIGURES, Order, fault};
 use super::deletion_lags::{Lagged, Layout};
-use super::deletion_loops::{AddBoth, Density, Exponentials, Scaled, Sums, Weighed};
+use super::deletion_loops::Sums;
 use super::deletion_survey::{Finite, Ratios, Survey};
+use super::deletion_tail::TailDraws;
+use super::deletion_totals::Deferred;
 use super::error::KernelError;
 use super::ordered::Interrupt;
 use super::vector::dispatch;
@@ -53,7 +55,9 @@ pub struct Work<'a> {
     /// Draws of the tail of the column at hand.
     pub(super) tail: Vec<Replaced>,
     pub(super) ratios: Vec<f64>,
-    pub(super) keeps_weights: bool,
+    /// The same of a column of the common kind.
+    pub(super) draws: TailDraws,
+    pub(super) deferred: Deferred,
 }
 
 /// What is known of a column once its weights are smoothed.
@@ -72,11 +76,31 @@ pub(super) struct Smoothed {
     pub(super) top: f64,
 }
 
+impl Smoothed {
+    /// Where nothing had to be shifted.
+    pub(super) fn plain(sums: Sums, shape: f64, top: f64, agreement: (f64, f64)) -> Self {
+        let (efficiency, p_value) = agreement;
+        Self {
+            shift: 0.0,
+            sums,
+            lift: 0.0,
+            unit: 1.0,
+            shape,
+            efficiency,
+            p_value,
+            top,
+        }
+    }
+}
+
 /// A draw of the tail, and its smoothed weight over its raw one.
 pub(super) struct Replaced {
     pub(super) index: usize,
     pub(super) ratio: f64,
 }
+
+/// Weights of a column, its scores, `Σ z²` and `Σ z³` of its series.
+pub(super) type Known = (Smoothed, Scored, (f64, f64));
 
 /// Scores of a column; `series` of [`Work`] then holds the influence of the left-out one.
 pub(super) struct Scored {
@@ -86,21 +110,30 @@ pub(super) struct Scored {
 }
 
 impl<'a> Work<'a> {
-    /// Room for columns of these draws; `keeps_weights` if columns are to hold `n (w − v)` at the end.
-    pub fn new(shared: &'a Shared<'a>, keeps_weights: bool) -> Self {
+    /// Room for columns of these draws.
+    pub fn new(shared: &'a Shared<'a>) -> Self {
         let zeros = || vec![0.0; shared.draws()];
         Self {
             shared,
             lagged: shared.layout.map(Lagged::new),
-            weights: zeros(),
-            density: zeros(),
-            series: zeros(),
+            weights: Vec::new(),
+            density: Vec::new(),
+            series: Vec::new(),
             left_out: zeros(),
             raw: zeros(),
             in_sample: zeros(),
             tail: Vec::new(),
             ratios: Vec::new(),
-            keeps_weights,
+            draws: TailDraws::default(),
+            deferred: Deferred::new(shared.draws()),
+        }
+    }
+
+    /// Room for what not every column needs.
+    pub(super) fn make_room(&mut self) {
+        let draws = self.shared.draws();
+        for room in [&mut self.weights, &mut self.density, &mut self.series] {
+            room.resize(draws, 0.0);
         }
     }
 
@@ -111,16 +144,19 @@ impl<'a> Work<'a> {
             .map(|sums| sums.into_iter().map(|sum| count * sum).collect())
     }
 
-    /// Figures of a column of log densities, which is overwritten.
+    /// Figures of a column of log densities, which is overwritten; and what its weights then have to
+    /// be multiplied by to have mean 1. Totals may lack it until [`Self::settle`], for which `place`
+    /// is kept in mind. Meanwhile the `next` column is asked for.
     ///
     /// # Errors
     /// [`KernelError::Interrupted`], [`KernelError::Memory`].
     pub fn column(
         &mut self,
         held: &mut [f64],
+        (place, next): (usize, &[f64]),
         scored: Option<&[f64]>,
         interrupt: &Interrupt<'_>,
-    ) -> Result<[f64; FIGURES], KernelError> {
+    ) -> Result<([f64; FIGURES], f64), KernelError> {
         let mut found = [f64::NAN; FIGURES];
         let mut faults = scored.map_or(0, |scored| self.faults(scored) & !fault::IMPOSSIBLE);
         if self.shared.log_weights.is_some() {
@@ -138,21 +174,21 @@ impl<'a> Work<'a> {
         found[11] = f64::from(faults);
         if faults & (fault::NAN | fault::IMPOSSIBLE) != 0 {
             held.fill(f64::NAN);
-            return Ok(found);
+            return Ok((found, f64::NAN));
         }
-        let (smoothed, scores) = match (scored, self.shared.log_weights) {
-            (None, None) => self.alone(held, survey, interrupt)?,
+        if self.lagged.is_some() || !matches!(self.shared.order, Order::Independent) {
+            self.make_room();
+        }
+        let known = match (scored, self.shared.log_weights) {
+            (None, None) => self.common(held, (place, next), survey, interrupt)?,
+            _ => None,
+        };
+        let (smoothed, scores, powers) = match (known, scored, self.shared.log_weights) {
+            (Some(known), _, _) => known,
+            (None, None, None) => self.alone(held, survey, interrupt)?,
             _ => self.general(held, scored, survey, interrupt)?,
         };
-        let (error, contributions) = self.error(smoothed.efficiency, interrupt)?;
-        if self.keeps_weights {
-            dispatch(Scaled {
-                weights: &self.weights,
-                base: &self.shared.base,
-                total: smoothed.sums.total,
-                out: held,
-            });
-        }
+        let (error, contributions) = self.error(powers, smoothed.efficiency, interrupt)?;
         let sums = &smoothed.sums;
         found[..11].copy_from_slice(&[
             scores.score,
@@ -167,7 +203,7 @@ impl<'a> Work<'a> {
             smoothed.efficiency,
             smoothed.p_value,
         ]);
-        Ok(found)
+        Ok((found, held.len() as f64 / sums.total))
     }
 
     fn faults(&self, x: &[f64]) -> u8 {
@@ -187,62 +223,11 @@ impl<'a> Work<'a> {
     }
 
     /// Log densities to log ratios, and what they look like.
-    fn survey(&self, x: &mut [f64]) -> Survey {
+    fn survey(&mut self, x: &mut [f64]) -> Survey {
         dispatch(Ratios {
             x,
             log_weights: self.shared.log_weights,
         })
-    }
-
-    /// Equal base weights, and what is scored is what is deleted. A draw whose weight is not replaced
-    /// has `w exp(L)` the same as any other such draw: only the tail is looked at.
-    fn alone(
-        &mut self,
-        x: &mut [f64],
-        survey: Survey,
-        interrupt: &Interrupt<'_>,
-    ) -> Result<(Smoothed, Scored), KernelError> {
-        let (count, largest) = (x.len() as f64, survey.largest);
-        let (raw_total, least) = dispatch(Exponentials {
-            x,
-            largest,
-            weights: &mut self.weights,
-        });
-        let density = dispatch(Density {
-            x,
-            least,
-            density: &mut self.density,
-        });
-        dispatch(AddBoth {
-            weights: (&self.weights, raw_total),
-            density: (&self.density, density),
-            raw: &mut self.raw,
-            in_sample: &mut self.in_sample,
-        });
-        let smoothed = self.smoothed(x, survey.spread(), interrupt)?;
-        let body = smoothed.unit * (count - self.tail.len() as f64);
-        let scale = body + self.tail.iter().map(|draw| draw.ratio).sum::<f64>();
-        let total = smoothed.sums.total;
-        let extra = |draw: &Replaced| (draw.ratio - smoothed.unit) * self.density[draw.index];
-        let squares = smoothed.unit * density + self.tail.iter().map(extra).sum::<f64>();
-        let lift = smoothed.lift;
-        let rest = lift - largest - smoothed.shift;
-        let scores = Scored {
-            score: rest + scale.ln() - total.ln(),
-            in_sample: -(largest + least) + (density / count).ln(),
-            spread: spread(smoothed.shift - lift - least, squares * total, scale),
-        };
-        dispatch(Weighed {
-            weights: &self.weights,
-            constant: smoothed.unit / scale,
-            factor: 1.0 / total,
-            out: &mut self.series,
-        });
-        for draw in &self.tail {
-            let weight = self.weights[draw.index] / total;
-            self.series[draw.index] = draw.ratio / scale - weight;
-        }
-        Ok((smoothed, scores))
     }
 }
 

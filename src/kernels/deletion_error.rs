@@ -8,16 +8,14 @@ use super::ordered::Interrupt;
 use super::vector::dispatch;
 
 impl Work<'_> {
-    /// Monte Carlo error and contributions of the series `n z`, which is added to the total.
+    /// Monte Carlo error and contributions of the series `n z` with these `Σ z²` and `Σ z³`; the
+    /// series itself is looked at where draws are not independent.
     pub(super) fn error(
         &mut self,
+        mut powers: (f64, f64),
         efficiency: f64,
         interrupt: &Interrupt<'_>,
     ) -> Result<(f64, f64), KernelError> {
-        let mut powers = dispatch(Powers {
-            z: &self.series,
-            to: &mut self.left_out,
-        });
         let count = self.series.len() as f64;
         if let Order::Repeated(repeats) = self.shared.order {
             let mut sums = vec![0.0; self.series.len()];

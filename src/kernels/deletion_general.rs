@@ -1,6 +1,6 @@
 //! One column left out under any base weights, with anything scored.
 
-use super::deletion_column::{Scored, Smoothed, Work, spread};
+use super::deletion_column::{Known, Scored, Work, spread};
 use super::deletion_loops::Exponentials;
 use super::deletion_survey::{Survey, maximum_of};
 use super::error::KernelError;
@@ -17,7 +17,8 @@ impl Work<'_> {
         scored: Option<&[f64]>,
         survey: Survey,
         interrupt: &Interrupt<'_>,
-    ) -> Result<(Smoothed, Scored), KernelError> {
+    ) -> Result<Known, KernelError> {
+        self.make_room();
         let base = &self.shared.base;
         let own = self.own(x, scored);
         let (raw_total, _) = dispatch(Exponentials {
@@ -36,7 +37,7 @@ impl Work<'_> {
         for ((sum, share), weight) in self.raw.iter_mut().zip(shares).zip(&self.weights) {
             *sum += share - weight / raw_total;
         }
-        let smoothed = self.smoothed(x, survey.spread(), interrupt)?;
+        let smoothed = self.smoothed(x, survey.spread(survey.largest), interrupt)?;
         let (top, joint) = self.joint(x, &own);
         let highest = maximum_of(&own);
         for (target, value) in self.density.iter_mut().zip(&own) {
@@ -57,7 +58,8 @@ impl Work<'_> {
             in_sample: highest + density.ln(),
             spread: spread(highest - top, squares * total, joint),
         };
-        Ok((smoothed, scores))
+        let powers = self.keep(x);
+        Ok((smoothed, scores, powers))
     }
 
     /// Log densities of what is scored; where that is what was deleted, `x` with the base weights put

@@ -6,7 +6,7 @@ use super::vector::{Arithmetic, Work, tree};
 use super::weight_sums::larger;
 
 pub(super) const LANES: usize = 16;
-const BLOCK: usize = 4096;
+pub(super) const BLOCK: usize = 4096;
 
 /// Takes `largest` off `x` and writes the exponentials; their sum, and the least `x`.
 pub struct Exponentials<'a> {
@@ -185,31 +185,6 @@ impl Work for Weighed<'_> {
     fn run<A: Arithmetic>(self) {
         for (target, weight) in self.out.iter_mut().zip(self.weights) {
             *target = A::mul_add(-self.factor, *weight, self.constant);
-        }
-    }
-}
-
-/// `n (w − v)` from weights and their sum.
-pub struct Scaled<'a> {
-    /// Weights up to a constant.
-    pub weights: &'a [f64],
-    /// Normalised base weights.
-    pub base: &'a [f64],
-    /// Sum of `weights`.
-    pub total: f64,
-    /// Where the result goes.
-    pub out: &'a mut [f64],
-}
-
-impl Work for Scaled<'_> {
-    type Output = ();
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) {
-        let count = self.base.len() as f64;
-        let factor = count / self.total;
-        for ((target, weight), v) in self.out.iter_mut().zip(self.weights).zip(self.base) {
-            *target = A::mul_add(factor, *weight, -count * v);
         }
     }
 }

@@ -1,172 +1,197 @@
-//! Products of weights with powers of quantities, over a few hundred draws at a time.
+//! Products of weights with powers of quantities, over some draws at a time.
 
-use super::deletion_loops::LANES as SUM_LANES;
-use super::deletion_shift::{DRAWS, LANES, TOGETHER, WIDE};
-use super::vector::{Arithmetic, Work, tree};
+use super::vector::narrow::{self, ROW};
+use super::vector::{Arithmetic, Work, dispatch};
 
-/// Some draws of the weights of a block of columns, and sums over all draws so far.
-pub(super) struct Block {
-    pub(super) used: usize,
-    /// `x`, `x²` and `x b` of so many columns at a time, and these of every draw.
-    pub(super) x: Vec<[f64; DRAWS]>,
-    pub(super) xx: Vec<[f32; DRAWS]>,
-    pub(super) xb: Vec<[f32; DRAWS]>,
-    /// `Σ x f`; `Σ x² f`, `Σ x² f²`; `Σ x b f` and so on to `f³`.
-    pub(super) first: Sums<LANES>,
-    pub(super) squares: Sums<WIDE>,
-    pub(super) products: Sums<WIDE>,
-    /// `Σ x²` and `Σ x b`.
-    pub(super) alone: Vec<(f64, f64)>,
+/// Draws of which panels and weights lie in the nearest cache together, and whose products are summed
+/// in single precision.
+pub(super) const DRAWS: usize = 128;
+
+/// Columns whose sums lie in registers, with a panel of one unit; half as many with one of two.
+pub(super) const TOGETHER: usize = narrow::COLUMNS;
+
+/// Bytes of half a row of a panel, which has one or two halves.
+const UNIT: usize = 64;
+
+/// A number that products are summed in.
+pub(super) trait Number: Copy + Into<f64> {
+    const ZERO: Self;
+    fn mul_add<A: Arithmetic>(a: Self, b: Self, c: Self) -> Self;
+    fn rounded(x: f64) -> Self;
+    /// Adds products with a panel of `width` entries.
+    fn add(width: usize, f: &[Self], x: &[[Self; DRAWS]], sums: &mut [f64]);
 }
 
-impl Block {
-    pub(super) fn new(used: usize, quantities: usize) -> Self {
-        let columns = used.next_multiple_of(TOGETHER);
+impl Number for f64 {
+    const ZERO: Self = 0.0;
+
+    #[inline(always)]
+    fn mul_add<A: Arithmetic>(a: Self, b: Self, c: Self) -> Self {
+        A::mul_add(a, b, c)
+    }
+
+    fn rounded(x: f64) -> Self {
+        x
+    }
+
+    fn add(width: usize, f: &[Self], x: &[[Self; DRAWS]], sums: &mut [f64]) {
+        if width == 8 {
+            each::<Self, 8, TOGETHER>(x, sums, |x| dispatch(Products { f, x }));
+        } else {
+            each::<Self, 16, { TOGETHER / 2 }>(x, sums, |x| dispatch(Products { f, x }));
+        }
+    }
+}
+
+impl Number for f32 {
+    const ZERO: Self = 0.0;
+
+    #[inline(always)]
+    fn mul_add<A: Arithmetic>(a: Self, b: Self, c: Self) -> Self {
+        A::mul_add_single(a, b, c)
+    }
+
+    fn rounded(x: f64) -> Self {
+        x as f32
+    }
+
+    fn add(width: usize, f: &[Self], x: &[[Self; DRAWS]], sums: &mut [f64]) {
+        if width == ROW {
+            let f = f.as_chunks().0;
+            each::<Self, ROW, TOGETHER>(x, sums, |x| narrow::products(f, x));
+        } else {
+            each::<Self, 32, { TOGETHER / 2 }>(x, sums, |x| dispatch(Products { f, x }));
+        }
+    }
+}
+
+/// A matrix `(n, entries)` by panels of some entries, draw after draw.
+pub(super) struct Panels<T> {
+    draws: usize,
+    /// Entries of all panels but the last, which may have fewer.
+    width: usize,
+    panels: Vec<Panel<T>>,
+}
+
+struct Panel<T> {
+    width: usize,
+    values: Vec<T>,
+}
+
+impl<T: Number> Panels<T> {
+    /// The matrix whose entries `value(draw, entry)` gives.
+    pub(super) fn new(draws: usize, entries: usize, value: impl Fn(usize, usize) -> f64) -> Self {
+        let unit = UNIT / size_of::<T>();
+        let width = 2 * unit;
+        let panel = |first: usize| {
+            let used = width.min(entries - first);
+            let padded = used.next_multiple_of(unit);
+            let mut values = vec![T::ZERO; draws * padded];
+            for (s, row) in values.chunks_mut(padded).enumerate() {
+                for (place, target) in row.iter_mut().enumerate().take(used) {
+                    *target = T::rounded(value(s, first + place));
+                }
+            }
+            Panel {
+                width: padded,
+                values,
+            }
+        };
         Self {
-            used,
-            x: vec![[0.0; DRAWS]; columns],
-            xx: vec![[0.0; DRAWS]; columns],
-            xb: vec![[0.0; DRAWS]; columns],
-            first: Sums::new(columns, quantities),
-            squares: Sums::new(columns, 2 * quantities),
-            products: Sums::new(columns, 3 * quantities),
-            alone: vec![(0.0, 0.0); columns],
+            draws,
+            width,
+            panels: (0..entries).step_by(width).map(panel).collect(),
+        }
+    }
+
+    /// Adds the products of some draws from `start` on, for every so many columns.
+    pub(super) fn multiply(&self, start: usize, x: &[[T; DRAWS]], sums: &mut Sums) {
+        let end = self.draws.min(start + DRAWS);
+        for (panel, sums) in self.panels.iter().zip(&mut sums.panels) {
+            let width = panel.width;
+            let f = &panel.values[start * width..end * width];
+            T::add(width, f, x, sums);
+        }
+    }
+
+    /// No sums yet, for so many columns.
+    pub(super) fn sums(&self, columns: usize) -> Sums {
+        let zeros = |panel: &Panel<T>| vec![0.0; panel.width * columns];
+        Sums {
+            width: self.width,
+            columns,
+            panels: self.panels.iter().map(zeros).collect(),
         }
     }
 }
 
 /// Sums over draws, panel after panel and column after column.
-pub(super) struct Sums<const W: usize> {
-    pub(super) columns: usize,
-    pub(super) lanes: Vec<[f64; W]>,
+pub(super) struct Sums {
+    width: usize,
+    columns: usize,
+    panels: Vec<Vec<f64>>,
 }
 
-impl<const W: usize> Sums<W> {
-    pub(super) fn new(columns: usize, entries: usize) -> Self {
-        Self {
-            columns,
-            lanes: vec![[0.0; W]; entries.div_ceil(W) * columns],
-        }
-    }
-
+impl Sums {
     pub(super) fn of(&self, entry: usize, column: usize) -> f64 {
-        self.lanes[entry / W * self.columns + column][entry % W]
+        let sums = &self.panels[entry / self.width];
+        sums[column * (sums.len() / self.columns) + entry % self.width]
     }
 }
 
-/// Adds sums over some draws.
-pub(super) fn add<T: Copy + Into<f64>, const W: usize>(sums: &mut [[f64; W]], terms: &[[T; W]]) {
-    for (sum, &term) in sums.iter_mut().flatten().zip(terms.iter().flatten()) {
-        *sum += term.into();
+/// Adds what `products` finds of `C` columns at a time.
+fn each<T: Number, const W: usize, const C: usize>(
+    x: &[[T; DRAWS]],
+    sums: &mut [f64],
+    products: impl Fn(&[[T; DRAWS]; C]) -> [[T; W]; C],
+) {
+    let parts = x.as_chunks::<C>().0.iter();
+    for (x, sums) in parts.zip(sums.chunks_mut(C * W)) {
+        let terms = &products(x);
+        dispatch(Add {
+            sums,
+            terms: terms.as_flattened(),
+        });
     }
 }
 
-pub(super) struct Fill<'a> {
-    pub(super) x: &'a [f64],
-    pub(super) apart: usize,
-    pub(super) start: usize,
-    pub(super) base: &'a [f64],
-    pub(super) block: &'a mut Block,
+/// `Σ x f` of `C` columns over some draws, rows of `W` entries.
+struct Products<'a, T, const W: usize, const C: usize> {
+    f: &'a [T],
+    x: &'a [[T; DRAWS]; C],
 }
 
-impl Work for Fill<'_> {
+impl<T: Number, const W: usize, const C: usize> Work for Products<'_, T, W, C> {
+    type Output = [[T; W]; C];
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> Self::Output {
+        let mut lanes = [[T::ZERO; W]; C];
+        for (s, f) in self.f.as_chunks::<W>().0.iter().enumerate() {
+            for (lanes, x) in lanes.iter_mut().zip(self.x) {
+                let x = x[s % DRAWS];
+                for lane in 0..W {
+                    lanes[lane] = T::mul_add::<A>(x, f[lane], lanes[lane]);
+                }
+            }
+        }
+        lanes
+    }
+}
+
+/// Adds terms. A loop of its own: with it in one, sums of products would not stay in registers.
+struct Add<'a, T> {
+    sums: &'a mut [f64],
+    terms: &'a [T],
+}
+
+impl<T: Number> Work for Add<'_, T> {
     type Output = ();
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
-        let length = self.base.len().min(DRAWS);
-        for column in 0..self.block.used {
-            let source = &self.x[column * self.apart + self.start..][..length];
-            let x = &mut self.block.x[column];
-            *x = [0.0; DRAWS];
-            x[..length].copy_from_slice(source);
-            let mut b = [0.0; DRAWS];
-            b[..length].copy_from_slice(&self.base[..length]);
-            let (xx, xb) = (&mut self.block.xx[column], &mut self.block.xb[column]);
-            let [mut squares, mut products] = [[0.0; SUM_LANES]; 2];
-            for start in (0..DRAWS).step_by(SUM_LANES) {
-                for lane in 0..SUM_LANES {
-                    let (x, b) = (x[start + lane], b[start + lane]);
-                    xx[start + lane] = (x * x) as f32;
-                    xb[start + lane] = (x * b) as f32;
-                    squares[lane] = A::mul_add(x, x, squares[lane]);
-                    products[lane] = A::mul_add(x, b, products[lane]);
-                }
-            }
-            self.block.alone[column].0 += tree(squares);
-            self.block.alone[column].1 += tree(products);
+        for (sum, term) in self.sums.iter_mut().zip(self.terms) {
+            *sum += (*term).into();
         }
-    }
-}
-
-/// `Σ x f` of some columns over some draws.
-pub(super) struct Double<'a> {
-    pub(super) f: &'a [[f64; LANES]],
-    pub(super) x: &'a [[f64; DRAWS]; TOGETHER],
-}
-
-impl Work for Double<'_> {
-    type Output = [[f64; LANES]; TOGETHER];
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) -> Self::Output {
-        let mut lanes = [[0.0; LANES]; TOGETHER];
-        for (s, f) in self.f.iter().enumerate() {
-            for (lanes, x) in lanes.iter_mut().zip(self.x) {
-                let x = x[s % DRAWS];
-                for lane in 0..LANES {
-                    lanes[lane] = A::mul_add(x, f[lane], lanes[lane]);
-                }
-            }
-        }
-        lanes
-    }
-}
-
-/// The same in single precision.
-pub(super) struct Single<'a> {
-    pub(super) f: &'a [[f32; WIDE]],
-    pub(super) x: &'a [[f32; DRAWS]; TOGETHER],
-}
-
-impl Work for Single<'_> {
-    type Output = [[f32; WIDE]; TOGETHER];
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) -> Self::Output {
-        let mut lanes = [[0.0; WIDE]; TOGETHER];
-        for (s, f) in self.f.iter().enumerate() {
-            for (lanes, x) in lanes.iter_mut().zip(self.x) {
-                let x = x[s % DRAWS];
-                for lane in 0..WIDE {
-                    lanes[lane] = A::mul_add_single(x, f[lane], lanes[lane]);
-                }
-            }
-        }
-        lanes
-    }
-}
-
-pub(super) struct Anew<'a> {
-    pub(super) f: &'a [[f64; LANES]],
-    pub(super) x: &'a [f64],
-    pub(super) base: &'a [f64],
-    pub(super) m: [f64; LANES],
-}
-
-impl Work for Anew<'_> {
-    type Output = [f64; LANES];
-
-    #[inline(always)]
-    fn run<A: Arithmetic>(self) -> Self::Output {
-        let mut sums = [0.0; LANES];
-        for ((f, &x), &b) in self.f.iter().zip(self.x).zip(self.base) {
-            for lane in 0..LANES {
-                let (f, m) = (f[lane], self.m[lane]);
-                let z = x * (f - m) - b * m * (A::mul_add(f, f, 1.0) / 2.0);
-                sums[lane] = A::mul_add(z, z, sums[lane]);
-            }
-        }
-        sums
     }
 }

@@ -1,42 +1,30 @@
 //! What a block of deletions does to quantities: products of their weights with the powers of the
 //! quantities, in registers.
 
-use std::ops::Range;
-
 use ndarray::ArrayView2;
 
-use super::deletion_products::{Anew, Block, Double, Fill, Single, add};
+use super::deletion_fill::{Block, Fill};
+use super::deletion_products::{self as products, DRAWS, Sums};
 use super::error::KernelError;
 use super::ordered::Interrupt;
 use super::vector::dispatch;
 
-/// Quantities of a panel in double precision, and powers of one in single precision: lanes.
-pub(super) const LANES: usize = 16;
-pub(super) const WIDE: usize = 32;
-
-/// Draws of which panels and weights lie in the nearest cache together, and whose squares are summed
-/// in single precision.
-pub(super) const DRAWS: usize = 256;
-
-/// Columns whose sums lie in registers.
-pub(super) const TOGETHER: usize = 4;
-
-/// Largest share of a draw from which on squares are summed anew in double precision: where few draws
-/// carry a shift it lies close to their own values, and sums of powers would cancel.
-const CARRIED: f64 = 0.05;
-
-/// Standardised quantities by panels, draw after draw, and their powers.
+/// Standardised quantities and their powers.
 pub struct Panels {
     count: usize,
     draws: usize,
-    /// Panel after panel: `f`.
-    first: Vec<[f64; LANES]>,
-    /// Panel after panel: all `f`, then all `f²`, then all `f³`.
-    powers: Vec<[f32; WIDE]>,
+    /// `f`.
+    first: products::Panels<f64>,
+    /// All `f`, then all `f²`.
+    powers: products::Panels<f32>,
+    /// All `n v f g`, then all `n v g`, with `g = (f² + 1)/2`.
+    of_base: products::Panels<f32>,
     /// `n v`.
     base: Vec<f64>,
-    /// `Σ (n v)² (f² + 1)²/4`.
+    /// `Σ (n v g)²`.
     own: Vec<f64>,
+    /// `f` and `n v g`, draw after draw.
+    draw_by_draw: Vec<(f64, f64)>,
 }
 
 /// Shifts of a block of columns, and the squares of their series.
@@ -60,29 +48,46 @@ impl Shifts {
     }
 }
 
+/// Sums over draws of a block of columns.
+struct Found {
+    first: Sums,
+    powers: Sums,
+    of_base: Sums,
+    squares: Vec<f64>,
+    large: Vec<(usize, usize, f64)>,
+}
+
 impl Panels {
     /// Panels of `quantities`, `(n, P)`, for base weights `(n,)`.
     pub fn new(quantities: ArrayView2<'_, f64>, weights: &[f64]) -> Self {
         let (draws, count) = quantities.dim();
-        let mut first = vec![[0.0; LANES]; count.div_ceil(LANES) * draws];
-        let mut powers = vec![[0.0; WIDE]; (3 * count).div_ceil(WIDE) * draws];
         let base: Vec<f64> = weights.iter().map(|v| draws as f64 * v).collect();
+        let middle = |f: f64| (f * f + 1.0) / 2.0;
         let mut own = vec![0.0; count];
+        let mut draw_by_draw = Vec::with_capacity(draws * count);
         for ((s, quantity), &f) in quantities.indexed_iter() {
-            first[quantity / LANES * draws + s][quantity % LANES] = f;
-            for (power, value) in [f, f * f, f * f * f].into_iter().enumerate() {
-                let place = power * count + quantity;
-                powers[place / WIDE * draws + s][place % WIDE] = value as f32;
-            }
-            own[quantity] += (base[s] * (f * f + 1.0) / 2.0).powi(2);
+            own[quantity] += (base[s] * middle(f)).powi(2);
+            draw_by_draw.push((f, base[s] * middle(f)));
         }
+        let entry = |s: usize, place: usize| {
+            let f = quantities[(s, place % count)];
+            (f, base[s] * middle(f), place < count)
+        };
         Self {
             count,
             draws,
-            first,
-            powers,
+            first: products::Panels::new(draws, count, |s, place| quantities[(s, place)]),
+            powers: products::Panels::new(draws, 2 * count, |s, place| match entry(s, place) {
+                (f, _, true) => f,
+                (f, _, false) => f * f,
+            }),
+            of_base: products::Panels::new(draws, 2 * count, |s, place| match entry(s, place) {
+                (f, g, true) => f * g,
+                (_, g, false) => g,
+            }),
             base,
             own,
+            draw_by_draw,
         }
     }
 
@@ -91,104 +96,98 @@ impl Panels {
         self.count == 0
     }
 
-    /// Adds the shifts under weights `w` of which `x` holds `n (w − v)`, one column every `apart`
-    /// entries; `shares` are the largest `w` of each.
+    /// Adds the shifts under weights that are those in `weights`, one column every `apart` entries,
+    /// times a scale such that their mean is 1; with it comes the largest share of a draw.
     ///
     /// # Errors
     /// [`KernelError::Interrupted`].
     pub fn add_shifts(
         &self,
-        x: &[f64],
+        weights: &[f64],
         apart: usize,
-        shares: impl ExactSizeIterator<Item = f64>,
+        scales: &[(f64, f64)],
         shifts: &mut Shifts,
         interrupt: &Interrupt<'_>,
     ) -> Result<(), KernelError> {
         if self.is_empty() {
             return Ok(());
         }
-        let mut block = Block::new(shares.len(), self.count);
-        for start in (0..self.draws).step_by(DRAWS) {
-            interrupt.check()?;
-            let range = start..self.draws.min(start + DRAWS);
-            dispatch(Fill {
-                x,
-                apart,
-                start,
-                base: &self.base[range.clone()],
-                block: &mut block,
-            });
-            self.multiply(range, &mut block);
+        let sums = self.sums(weights, apart, scales, interrupt)?;
+        let mut apart = vec![Vec::new(); scales.len()];
+        for &(column, draw, x) in &sums.large {
+            apart[column].push((draw, x));
         }
-        for (column, share) in shares.enumerate() {
-            let row = (0..self.count).map(|quantity| self.one(&block, column, quantity));
-            let first = shifts.found.len();
+        for (column, large) in apart.iter().enumerate() {
+            let row = (0..self.count).map(|quantity| self.one(&sums, column, quantity, large));
             shifts.found.extend(row);
-            if share > CARRIED {
-                let x = &x[column * apart..][..self.draws];
-                self.sum_anew(x, &mut shifts.found[first..]);
-            }
         }
         Ok(())
     }
 
-    /// Adds some draws to the sums of a block.
-    fn multiply(&self, range: Range<usize>, block: &mut Block) {
-        let rows = |panel: usize| {
-            let begin = panel * self.draws;
-            begin + range.start..begin + range.end
-        };
-        let columns = block.first.columns;
-        for (panel, sums) in block.first.lanes.chunks_mut(columns).enumerate() {
-            let f = &self.first[rows(panel)];
-            let parts = block.x.as_chunks().0.iter();
-            for (x, sums) in parts.zip(sums.chunks_mut(TOGETHER)) {
-                add(sums, &dispatch(Double { f, x }));
-            }
-        }
-        for (x, sums) in [
-            (&block.xx, &mut block.squares),
-            (&block.xb, &mut block.products),
-        ] {
-            for (panel, sums) in sums.lanes.chunks_mut(columns).enumerate() {
-                let f = &self.powers[rows(panel)];
-                for (x, sums) in x.as_chunks().0.iter().zip(sums.chunks_mut(TOGETHER)) {
-                    add(sums, &dispatch(Single { f, x }));
-                }
-            }
-        }
-    }
-
-    /// With `x = n (w − v)`, `b = n v` the series is `n z = x (f − m) − b m (f² + 1)/2`: in this form
-    /// nothing cancels however little the weights differ from those of the base.
-    fn one(&self, block: &Block, column: usize, quantity: usize) -> (f64, f64) {
-        let squares = |power: usize| block.squares.of(power * self.count + quantity, column);
-        let products = |power: usize| block.products.of(power * self.count + quantity, column);
-        let (xx, xb) = block.alone[column];
-        let m = block.first.of(quantity, column) / self.draws as f64;
-        let target = squares(1) - 2.0 * m * squares(0) + m * m * xx;
-        let both = m * (products(2) + products(0) - m * products(1) - m * xb);
-        let square = target - both + m * m * self.own[quantity];
-        (m, square.max(0.0) / (self.draws as f64).powi(2))
-    }
-
-    /// The squares of one column, series by series.
-    fn sum_anew(&self, x: &[f64], found: &mut [(f64, f64)]) {
-        let panels = self.first.chunks(self.draws);
-        for (f, found) in panels.zip(found.chunks_mut(LANES)) {
-            let mut m = [0.0; LANES];
-            for (m, (shift, _)) in m.iter_mut().zip(&*found) {
-                *m = *shift;
-            }
-            let sums = dispatch(Anew {
-                f,
-                x,
-                base: &self.base,
-                m,
+    fn sums(
+        &self,
+        weights: &[f64],
+        apart: usize,
+        scales: &[(f64, f64)],
+        interrupt: &Interrupt<'_>,
+    ) -> Result<Found, KernelError> {
+        let mut block = Block::new(scales.len());
+        let mut first = self.first.sums(block.columns());
+        let mut powers = self.powers.sums(block.columns());
+        let mut of_base = self.of_base.sums(block.columns());
+        for start in (0..self.draws).step_by(DRAWS) {
+            interrupt.check()?;
+            dispatch(Fill {
+                weights,
+                apart,
+                scales,
+                start,
+                draws: self.draws,
+                base: &self.base[start..self.draws.min(start + DRAWS)],
+                block: &mut block,
             });
-            for ((_, square), sum) in found.iter_mut().zip(sums) {
-                *square = sum / (self.draws as f64).powi(2);
-            }
+            self.first.multiply(start, &block.x, &mut first);
+            self.powers.multiply(start, &block.square, &mut powers);
+            self.of_base.multiply(start, &block.single, &mut of_base);
         }
+        Ok(Found {
+            first,
+            powers,
+            of_base,
+            squares: block.squares,
+            large: block.large,
+        })
+    }
+
+    /// With `x = n (w − v)` the series is `n z = x (f − m) − m n v (f² + 1)/2`: in this form nothing
+    /// cancels however little the weights differ from those of the base.
+    /// Draws with `large` shares are not in the sums of powers.
+    fn one(
+        &self,
+        sums: &Found,
+        column: usize,
+        quantity: usize,
+        large: &[(usize, f64)],
+    ) -> (f64, f64) {
+        let second = self.count + quantity;
+        let m = sums.first.of(quantity, column) / self.draws as f64;
+        let (f, f_squared) = (
+            sums.powers.of(quantity, column),
+            sums.powers.of(second, column),
+        );
+        let (f_base, base) = (
+            sums.of_base.of(quantity, column),
+            sums.of_base.of(second, column),
+        );
+        let target = f_squared - 2.0 * m * f + m * m * sums.squares[column];
+        let both = 2.0 * m * (f_base - m * base);
+        let (mut own, mut alone) = (self.own[quantity], 0.0);
+        for &(draw, x) in large {
+            let (f, g) = self.draw_by_draw[draw * self.count + quantity];
+            own -= g * g;
+            alone += (x * (f - m) - m * g).powi(2);
+        }
+        let square = (target - both + m * m * own).max(0.0) + alone;
+        (m, square / (self.draws as f64).powi(2))
     }
 }

@@ -13,11 +13,11 @@ use super::vector::exp::exp_slice;
 
 /// Weights whose largest is below `exp` of this are formed anew from it: squares of far smaller ones
 /// would vanish.
-const FAR_BELOW: f64 = -20.0;
+pub(super) const FAR_BELOW: f64 = -20.0;
 
 /// Ratios of smoothed to raw weights are taken in units of the largest where that is beyond `exp` of
 /// this.
-const FAR_ABOVE: f64 = 300.0;
+pub(super) const FAR_ABOVE: f64 = 300.0;
 
 impl Work<'_> {
     /// Smooths the logarithms `x`, largest 0, and the weights; with their sums.

@@ -17,14 +17,16 @@ impl Work for Finite<'_> {
     }
 }
 
-/// What log ratios look like: their number and largest, sum and sum of squares of their distances
-/// from the first.
+/// What log ratios look like: their number, extremes, sum and sum of squares of their distances from
+/// the first.
 #[derive(Clone, Copy)]
 pub struct Survey {
     count: f64,
     origin: f64,
     /// The largest of them that is a number.
     pub largest: f64,
+    /// The least of them that is a number.
+    pub least: f64,
     sum: f64,
     squares: f64,
 }
@@ -35,12 +37,12 @@ impl Survey {
         self.sum.is_finite()
     }
 
-    /// Mean and standard deviation of the ratios below the largest.
-    pub fn spread(&self) -> Option<(f64, f64)> {
+    /// Mean and standard deviation of the ratios less `above`.
+    pub fn spread(&self, above: f64) -> Option<(f64, f64)> {
         let mean = self.sum / self.count;
         let deviation = (self.squares / self.count - mean * mean).sqrt();
         let known = mean.is_finite() && deviation > 0.0 && deviation.is_finite();
-        known.then_some((mean + (self.origin - self.largest), deviation))
+        known.then_some((mean + (self.origin - above), deviation))
     }
 }
 
@@ -77,7 +79,7 @@ impl Work for Ratios<'_> {
 
 #[inline(always)]
 fn surveyed<A: Arithmetic>(x: &mut [f64], origin: f64, change: impl Fn(f64) -> f64) -> Survey {
-    let mut most = [f64::NEG_INFINITY; LANES];
+    let [mut most, mut least] = [[f64::NEG_INFINITY; LANES]; 2];
     let [mut sums, mut squares] = [[0.0; LANES]; 2];
     let count = x.len() as f64;
     let (chunks, rest) = x.as_chunks_mut::<LANES>();
@@ -86,22 +88,26 @@ fn surveyed<A: Arithmetic>(x: &mut [f64], origin: f64, change: impl Fn(f64) -> f
             let value = change(chunk[lane]);
             chunk[lane] = value;
             most[lane] = larger(value, most[lane]);
+            least[lane] = larger(-value, least[lane]);
             sums[lane] += value - origin;
             squares[lane] = A::mul_add(value - origin, value - origin, squares[lane]);
         }
     }
-    let mut last = (f64::NEG_INFINITY, 0.0, 0.0);
+    let mut last = (f64::NEG_INFINITY, f64::NEG_INFINITY, 0.0, 0.0);
     for entry in rest {
         *entry = change(*entry);
         let d = *entry - origin;
-        last = (larger(*entry, last.0), last.1 + d, last.2 + d * d);
+        last.0 = larger(*entry, last.0);
+        last.1 = larger(-*entry, last.1);
+        (last.2, last.3) = (last.2 + d, last.3 + d * d);
     }
     Survey {
         count,
         origin,
         largest: most.into_iter().fold(last.0, f64::max),
-        sum: tree(sums) + last.1,
-        squares: tree(squares) + last.2,
+        least: -least.into_iter().fold(last.1, f64::max),
+        sum: tree(sums) + last.2,
+        squares: tree(squares) + last.3,
     }
 }
 

@@ -1,6 +1,7 @@
 use _core::kernels::ordered::sum_by;
 use _core::kernels::vector::dot::{dot, lagged};
-use _core::kernels::vector::exp::{ExpSlice, LEAST, MOST, exp_m1, exp_slice};
+use _core::kernels::vector::exp::{ExpSlice, LEAST, MOST, exp_both, exp_m1, exp_slice};
+use _core::kernels::vector::narrow::{self, COLUMNS, ROW};
 use _core::kernels::vector::rank::{Dividing, nth_largest};
 use _core::kernels::vector::select::{AtLeast, at_least, beyond};
 use _core::kernels::vector::stream::{copy_past, fence};
@@ -48,6 +49,37 @@ fn one_less_than_the_exponential_keeps_its_digits_near_zero() {
     for x in grid() {
         for found in [exp_m1::<Fused>(x), exp_m1::<Separate>(x)] {
             assert!(ulps(found, x.exp_m1()) <= 4.0, "{x} {found}");
+        }
+    }
+}
+
+#[test]
+fn an_exponential_and_its_inverse_come_from_one_argument() {
+    // As `the_exponential_is_within_two_units_of_the_last_place`, with one more rounding.
+    for x in grid().into_iter().filter(|x| x.abs() <= -LEAST) {
+        for (up, down) in [exp_both::<Fused>(x), exp_both::<Separate>(x)] {
+            assert!(ulps(up, x.exp()) <= 3.0, "{x} {up}");
+            assert!(ulps(down, (-x).exp()) <= 3.0, "{x} {down}");
+        }
+    }
+}
+
+#[test]
+fn narrow_products_are_sums_draw_by_draw() {
+    let mut stream = Stream::new(4);
+    let mut draw = || stream.normal() as f32;
+    let f: Vec<[f32; ROW]> = (0..37).map(|_| std::array::from_fn(|_| draw())).collect();
+    let x: [[f32; 40]; COLUMNS] = std::array::from_fn(|_| std::array::from_fn(|_| draw()));
+    let one = narrow::products(&f, &x);
+    let two = dispatch_plain(narrow::Products { f: &f, x: &x });
+    for column in 0..COLUMNS {
+        for lane in 0..ROW {
+            let terms = f.iter().zip(&x[column]);
+            let exact: f64 = terms.map(|(f, x)| f64::from(f[lane]) * f64::from(*x)).sum();
+            // 37 roundings of sums below 40, each half of 2^-24 of them.
+            for found in [one[column][lane], two[column][lane]] {
+                assert!((f64::from(found) - exact).abs() < 1e-4, "{found} {exact}");
+            }
         }
     }
 }

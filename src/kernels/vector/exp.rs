@@ -62,6 +62,28 @@ pub fn exp<A: Arithmetic>(x: f64) -> f64 {
     if x < LEAST { 0.0 } else { value }
 }
 
+/// `exp x` and `exp −x` for `|x| ≤ 708`, elsewhere arbitrary numbers: both come from one argument,
+/// because `q` holds for either sign, and its even and odd powers are the same but for the sign.
+#[inline(always)]
+pub fn exp_both<A: Arithmetic>(x: f64) -> (f64, f64) {
+    let shifted = A::mul_add(x, LOG2_E, ROUND);
+    let k = shifted - ROUND;
+    let r = A::mul_add(k, -LN_2_LOW, A::mul_add(k, -LN_2_HIGH, x));
+    let u = r * r;
+    let v = u * u;
+    let high = A::mul_add(v, Q[8], A::mul_add(u, Q[6], Q[4]));
+    let even = u * A::mul_add(v, high, A::mul_add(u, Q[2], Q[0]));
+    let high = A::mul_add(v, Q[9], A::mul_add(u, Q[7], Q[5]));
+    let odd = A::mul_add(r * u, A::mul_add(v, high, A::mul_add(u, Q[3], Q[1])), r);
+    let power = (shifted.to_bits() << 52).wrapping_add(1.0_f64.to_bits());
+    let inverse = (2 * 1.0_f64.to_bits()).wrapping_sub(power);
+    let (power, inverse) = (f64::from_bits(power), f64::from_bits(inverse));
+    (
+        A::mul_add(power, even + odd, power),
+        A::mul_add(inverse, even - odd, inverse),
+    )
+}
+
 /// `exp x − 1` for `x ≤ 709`; NaN for NaN.
 #[inline(always)]
 pub fn exp_m1<A: Arithmetic>(x: f64) -> f64 {
