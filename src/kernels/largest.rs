@@ -94,8 +94,8 @@ impl Finder {
         self.ranked.extend(pairs);
     }
 
-    /// Sorts by value; equal values keep their order. Buckets of equal width, then insertion: tails
-    /// thin out evenly enough, and where they do not a general sort takes over.
+    /// Sorts by value; equal values keep their order. Buckets, then insertion: tails thin out
+    /// evenly enough, and where they do not a general sort takes over.
     fn sort(&mut self) {
         self.buckets.clear();
         self.buckets.resize(self.ranked.len(), 0);
@@ -192,12 +192,16 @@ impl Work for Buckets<'_> {
         }
         let low = low.iter().copied().fold(f64::INFINITY, f64::min);
         let high = high.iter().copied().fold(f64::NEG_INFINITY, f64::max);
-        let scale = (self.count - 1) as f64 / (high - low);
+        let (scale, most) = (1.0 / (high - low), (self.count - 1) as f64);
         if !(scale.is_finite() && low.is_finite()) {
             return false;
         }
         for (bucket, &(value, _)) in self.buckets.iter_mut().zip(self.ranked) {
-            *bucket = ((value - low) * scale + TWO_52).to_bits() as u32;
+            // Tails thin out: narrow buckets where values crowd, wide ones where they are few.
+            let rest = 1.0 - (value - low) * scale;
+            let square = rest * rest;
+            let place = most - most * (square * square);
+            *bucket = (place + TWO_52).to_bits() as u32;
         }
         true
     }

@@ -90,9 +90,10 @@ pub(super) fn distribute<K: Copy + PartialOrd>(
     starts: &mut [u32],
     sorted: &mut [(K, u32)],
 ) -> bool {
-    let count = starts.len() - 1;
+    // A division would cost more than all else here.
+    let mask = starts.len() - 2;
     for &bucket in buckets {
-        starts[bucket as usize % count + 1] += 1;
+        starts[(bucket as usize & mask) + 1] += 1;
     }
     let (mut start, mut most) = (0, 0);
     for place in starts.iter_mut() {
@@ -104,7 +105,7 @@ pub(super) fn distribute<K: Copy + PartialOrd>(
         return false;
     }
     for (one, &bucket) in values.zip(buckets) {
-        let start = &mut starts[bucket as usize % count];
+        let start = &mut starts[bucket as usize & mask];
         sorted[*start as usize] = one;
         *start += 1;
     }

@@ -1,7 +1,7 @@
 use _core::kernels::ordered::sum_by;
 use _core::kernels::vector::dot::{dot, lagged};
 use _core::kernels::vector::exp::{ExpSlice, LEAST, MOST, exp_both, exp_m1, exp_slice};
-use _core::kernels::vector::narrow::{self, COLUMNS, ROW};
+use _core::kernels::vector::panel::{COLUMNS, Number, Products};
 use _core::kernels::vector::rank::{Dividing, nth_largest};
 use _core::kernels::vector::select::{AtLeast, at_least, beyond};
 use _core::kernels::vector::stream::{copy_past, fence};
@@ -64,24 +64,34 @@ fn an_exponential_and_its_inverse_come_from_one_argument() {
     }
 }
 
-#[test]
-fn narrow_products_are_sums_draw_by_draw() {
+/// Against sums in double precision; `allowed` is a bound on the roundings.
+fn check_products<T: Number, const U: usize, const W: usize>(allowed: f64) {
     let mut stream = Stream::new(4);
-    let mut draw = || stream.normal() as f32;
-    let f: Vec<[f32; ROW]> = (0..37).map(|_| std::array::from_fn(|_| draw())).collect();
-    let x: [[f32; 40]; COLUMNS] = std::array::from_fn(|_| std::array::from_fn(|_| draw()));
-    let one = narrow::products(&f, &x);
-    let two = dispatch_plain(narrow::Products { f: &f, x: &x });
+    let mut draw = || T::rounded(stream.normal());
+    let f: Vec<[T; W]> = (0..37).map(|_| std::array::from_fn(|_| draw())).collect();
+    let x: [[T; 40]; COLUMNS] = std::array::from_fn(|_| std::array::from_fn(|_| draw()));
+    let one = T::products::<U, W, 40>(&f, &x);
+    let two = dispatch_plain(Products { f: &f, x: &x });
     for column in 0..COLUMNS {
-        for lane in 0..ROW {
+        for lane in 0..W {
             let terms = f.iter().zip(&x[column]);
-            let exact: f64 = terms.map(|(f, x)| f64::from(f[lane]) * f64::from(*x)).sum();
-            // 37 roundings of sums below 40, each half of 2^-24 of them.
+            let exact: f64 = terms.map(|(f, x)| f[lane].into() * (*x).into()).sum();
             for found in [one[column][lane], two[column][lane]] {
-                assert!((f64::from(found) - exact).abs() < 1e-4, "{found} {exact}");
+                assert!((found.into() - exact).abs() < allowed);
             }
         }
     }
+}
+
+#[test]
+fn products_with_panels_are_sums_draw_by_draw() {
+    // 37 roundings of sums below 40, each half of 2^-24, or 2^-53, of them.
+    check_products::<f32, 1, 16>(1e-4);
+    check_products::<f32, 2, 32>(1e-4);
+    check_products::<f32, 3, 48>(1e-4);
+    check_products::<f64, 1, 8>(2e-13);
+    check_products::<f64, 2, 16>(2e-13);
+    check_products::<f64, 3, 24>(2e-13);
 }
 
 #[test]

@@ -7,13 +7,13 @@
 //! last bits.
 
 // The uses of `unsafe` in the crate: calling a copy after its instruction set was detected, and the
-// loads and stores of `narrow`, `rank`, `select`, `stream` and `transpose`.
+// loads and stores of `panel`, `rank`, `select`, `stream` and `transpose`.
 #![allow(unsafe_code)]
 
 pub mod dot;
 pub mod exp;
 pub mod ln;
-pub mod narrow;
+pub mod panel;
 pub mod rank;
 pub mod select;
 pub mod stream;
