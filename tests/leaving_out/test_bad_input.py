@@ -241,7 +241,8 @@ def test_calibration_needs_one_source_of_the_right_shape() -> None:
     refused(lambda: left.calibration(None, draws), ArgumentError, "observed", "nothing")
     refused(lambda: left.calibration(np.zeros(4), draws), ShapeError, "observed", "(4,)")
     refused(lambda: left.calibration(y, _values(4)), ShapeError, "predictive", "(4,)")
-    refused(lambda: left.calibration(cdf=draws), ArgumentError, "cdf", "others")
+    outside = float(draws[(draws < 0) | (draws > 1)][0])
+    refused(lambda: left.calibration(cdf=draws), ArgumentError, "cdf", f"{outside:.3g}")
     ones = np.ones_like(draws)
     act = lambda: left.calibration(cdf=0 * ones, cdf_below=ones)  # noqa: E731
     refused(act, ArgumentError, "cdf_below", "larger")
