@@ -47,7 +47,7 @@ def scenario(log_ratio: Array, columns: Array, lean: bool) -> list[Array]:
         for part in (z_raw, z_raw - (columns - plain))
     )
     equal = np.full(count, 1.0)
-    agreement = [_agreement(equal, column, 0.0, float(column.var())) for column in moved.T]
+    agreement = [_agreement(equal, column, float(column.var())) for column in moved.T]
     return [
         means,
         errors,
@@ -63,11 +63,11 @@ def scenario(log_ratio: Array, columns: Array, lean: bool) -> list[Array]:
 
 def _agreements(w: Array, columns: Array, means: Array) -> Array:
     pooled = w @ (columns - means) ** 2
-    pairs = zip(columns.T, means, pooled, strict=True)
-    return np.array([_agreement(w, f, float(m), float(v)) for f, m, v in pairs])
+    pairs = zip(columns.T, pooled, strict=True)
+    return np.array([_agreement(w, f, float(v)) for f, v in pairs])
 
 
-def _agreement(w: Array, f: Array, centre: float, pooled: float) -> float:
+def _agreement(w: Array, f: Array, pooled: float) -> float:
     """Welch's (1951) test of the means of the chains, each with its own long-run error."""
     means, precisions, freedoms = [], [], []
     for w_chain, f_chain in zip(w.reshape(CHAINS, -1), f.reshape(CHAINS, -1), strict=True):

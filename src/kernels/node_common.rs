@@ -85,7 +85,7 @@ impl Common {
         })
     }
 
-    /// Numbers that [`study`] writes.
+    /// Numbers that [`super::nodes::study`] writes.
     pub fn width(&self) -> usize {
         let series = SERIES_FIGURES * (1 + usize::from(self.shift));
         WEIGHT_FIGURES + self.columns.len() * (series + self.batches.count())

@@ -39,23 +39,3 @@ impl Moments {
         second * ratio * ratio
     }
 }
-
-/// How many values of a series lie above 0 and below.
-#[derive(Debug, Clone, Copy, Default)]
-pub struct Sides {
-    /// Whether all values are numbers; a false alarm is possible where they are huge.
-    pub finite: bool,
-    /// Above.
-    pub above: usize,
-    /// Below.
-    pub below: usize,
-}
-
-impl Sides {
-    /// No values but 0.
-    pub const NONE: Self = Self {
-        finite: true,
-        above: 0,
-        below: 0,
-    };
-}

@@ -3,7 +3,8 @@
 
 use super::lane_series::{Series, rows_of, rows_of_mut};
 use super::lanes::{LANES, Layout, Row};
-use super::node_moments::{Moments, Sides};
+use super::node_moments::Moments;
+use super::signed_tail::Sides;
 use super::vector::{Arithmetic, Work, dispatch};
 use super::weight_sums::larger;
 
@@ -269,7 +270,7 @@ pub(super) fn add(a: &[f64; LANES], sum: &mut [f64; LANES]) {
     }
 }
 
-/// As [`super::vector::tree`], with which, here and in [`super::spectrum`], a node took 7 % longer.
+/// As [`super::vector::tree`], with which a node took 7 % longer.
 #[inline(always)]
 pub(super) fn tree(mut lanes: [f64; LANES]) -> f64 {
     for half in [4, 2, 1] {

@@ -10,11 +10,11 @@ use super::largest_weights::LargestWeights;
 use super::lease::Lease;
 use super::mean::contributions;
 use super::node_common::{Column, Common};
-use super::node_moments::{Moments, Sides};
+use super::node_moments::Moments;
 use super::node_series::{Formed, Weighing};
 use super::node_sums::{either_side, half_sums};
 use super::ordered::Interrupt;
-use super::signed_tail::{sides_shape, signed_tail_shape};
+use super::signed_tail::{Sides, sides_shape, signed_tail_shape};
 use super::smooth_weights::{Weighed, smooth_weights};
 use super::weigh::weigh;
 
@@ -232,7 +232,7 @@ fn study_series(
         figures[4] = chains.spread(&mut formed.raw, interrupt)?.efficiency();
     }
     figures[5] = if sides.finite {
-        sides_shape(&formed.raw.entries, [sides.above, sides.below], figures[4])
+        sides_shape(&formed.raw.entries, sides, figures[4])
     } else {
         signed_tail_shape(&formed.raw.entries, figures[4])
     };

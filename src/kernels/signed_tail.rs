@@ -19,20 +19,36 @@ const SAMPLE_RANK: usize = 24;
 /// shape of the sides that count, `−inf` if none does. It does not change with the unit of `z`.
 /// NaN or an infinite entry gives NaN.
 pub fn signed_tail_shape(z: &[f64], relative_efficiency: f64) -> f64 {
-    let found = dispatch(CountSides(z));
-    if found.zero.is_nan() {
+    let sides = dispatch(CountSides(z));
+    if !sides.finite {
         return f64::NAN;
     }
-    sides_shape(
-        z,
-        [found.above as usize, found.below as usize],
-        relative_efficiency,
-    )
+    sides_shape(z, sides, relative_efficiency)
 }
 
-/// The same where `sides` values are known to lie above 0 and below, and all to be finite.
-pub(super) fn sides_shape(z: &[f64], sides: [usize; 2], relative_efficiency: f64) -> f64 {
-    let lengths = sides.map(|side| {
+/// How many values of a series lie above 0 and below.
+#[derive(Debug, Clone, Copy, Default)]
+pub struct Sides {
+    /// Whether all values are numbers; a false alarm is possible where they are huge.
+    pub finite: bool,
+    /// Above.
+    pub above: usize,
+    /// Below.
+    pub below: usize,
+}
+
+impl Sides {
+    /// No values but 0.
+    pub const NONE: Self = Self {
+        finite: true,
+        above: 0,
+        below: 0,
+    };
+}
+
+/// The same where the sides are known, and all values are finite.
+pub(super) fn sides_shape(z: &[f64], sides: Sides, relative_efficiency: f64) -> f64 {
+    let lengths = [sides.above, sides.below].map(|side| {
         let length = tail_length(side, relative_efficiency);
         if length < FEWEST { 0 } else { length }
     });
@@ -113,20 +129,13 @@ fn side_shape(
     pareto::fit_any(exceedances).shrunk(length).shape
 }
 
-/// Values above and below 0; 0, or NaN where a value is not finite.
-struct Found {
-    above: f64,
-    below: f64,
-    zero: f64,
-}
-
 struct CountSides<'a>(&'a [f64]);
 
 impl Work for CountSides<'_> {
-    type Output = Found;
+    type Output = Sides;
 
     #[inline(always)]
-    fn run<A: Arithmetic>(self) -> Found {
+    fn run<A: Arithmetic>(self) -> Sides {
         let (mut above, mut below, mut zero) = ([0.0; LANES], [0.0; LANES], [0.0; LANES]);
         let (chunks, rest) = self.0.as_chunks::<LANES>();
         let mut padded = [0.0; LANES];
@@ -143,10 +152,11 @@ impl Work for CountSides<'_> {
                 zero[lane] += 0.0 * chunk[lane];
             }
         }
-        Found {
-            above: above.iter().sum(),
-            below: below.iter().sum(),
-            zero: zero.iter().sum(),
+        let count = |lanes: [f64; LANES]| lanes.iter().sum::<f64>() as usize;
+        Sides {
+            finite: !zero.iter().sum::<f64>().is_nan(),
+            above: count(above),
+            below: count(below),
         }
     }
 }

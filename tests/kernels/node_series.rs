@@ -1,9 +1,10 @@
 use _core::kernels::lanes::Layout;
 use _core::kernels::long_run::chains;
 use _core::kernels::mean::{contributions, mean_square, weighted_mean};
-use _core::kernels::node_moments::{Moments, Sides};
+use _core::kernels::node_moments::Moments;
 use _core::kernels::node_series::{Formed, Weighing};
 use _core::kernels::node_sums::{either_side, half_sums};
+use _core::kernels::signed_tail::Sides;
 use proptest::prelude::*;
 
 use super::support::{close, fixed};
