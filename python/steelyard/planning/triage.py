@@ -169,7 +169,9 @@ class Triage(Frozen):
         lines = [str(self.table()), "", f"plan {plan.hash}, {len(plan.scenarios)} scenarios"]
         if plan.locked is None:
             lines.append("not locked: nothing says that it was stated before the answers were seen")
-        lines.append(f"low to high: simultaneous 95 % band, {self.critical:.2f} errors each way")
+        if not math.isnan(self.critical):
+            each_way = f"{self.critical:.2f} errors each way"
+            lines.append(f"low to high: simultaneous 95 % band, {each_way}")
         lines.append("Sensitivity of the fitted model only; model adequacy is not assessed.")
         return "\n".join(lines)
 
